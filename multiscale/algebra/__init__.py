@@ -1,0 +1,1 @@
+"""Exact polynomials in amplitudes and parameters; knows nothing of oscillators."""

@@ -1,0 +1,1 @@
+"""Generated code: results as fast functions of plain arrays."""

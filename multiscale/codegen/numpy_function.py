@@ -1,0 +1,194 @@
+"""A generated kernel behind a thin wrapper with fixed rules for shapes and names."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+import sympy as sp
+
+from multiscale.errors import EvaluationError
+
+__all__ = ["BoundFunction", "NumpyFunction"]
+
+Array = npt.NDArray[Any]
+_SCALARS = {float, int, np.float64}
+_NUMPY = {"sin": np.sin, "cos": np.cos, "exp": np.exp, "log": np.log, "sqrt": np.sqrt, "conj": np.conjugate}
+_MATH = {"sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log, "sqrt": math.sqrt}
+
+
+@dataclass(frozen=True, repr=False)
+class NumpyFunction:
+    """f(t, y, *parameters), generated from a finished result.
+
+    Shapes: y is (n,) or (n,) + S, and with B the broadcast of t, S and the parameters the result is ``shape`` + B, also
+    where a component is constant. Values are float64 (complex128 for the complex form). Any consistent units.
+
+    Attributes
+    ----------
+    parameters : tuple of str
+        All parameters of the problem and the small parameter, sorted by name, whatever the order or form.
+    source : str
+        The kernel, the same byte for byte on every run. It takes scalars or arrays.
+
+    Examples
+    --------
+    >>> import sympy as sp, multiscale as ms
+    >>> t = sp.Symbol("t", real=True)
+    >>> eps, mu = sp.symbols("epsilon mu", positive=True)
+    >>> u = sp.Function("u")(t)
+    >>> rhs = ms.expand(ms.Problem(u.diff(t, 2) + u + 2*eps*mu*u.diff(t), u, small=eps), order=1).slow_flow.to_numpy()
+    >>> rhs.parameters
+    ('epsilon', 'mu')
+    >>> rhs.bind(epsilon=0.1, mu=0.5)(0.0, [2.0, 0.0])
+    array([-0.1, -0. ])
+    """
+
+    source: str
+    functions: tuple[str, ...]
+    parameters: tuple[str, ...]
+    size: int
+    shape: tuple[int, ...]
+    is_complex: bool = False
+    defaults: tuple[tuple[str, float], ...] = ()
+    kernel: Callable[..., tuple[Any, ...]] = field(init=False, compare=False)
+    _scalar_kernel: Callable[..., tuple[Any, ...]] | None = field(init=False, compare=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "kernel", self.compiled(_NUMPY))
+        object.__setattr__(self, "_scalar_kernel", None if self.is_complex else self.compiled(_MATH))
+
+    def compiled(self, namespace: Mapping[str, Any]) -> Callable[..., tuple[Any, ...]]:
+        """The kernel with its functions (`functions`) taken from `namespace`."""
+        scope: dict[str, Any] = {name: namespace[name] for name in self.functions}
+        exec(compile(self.source, "<multiscale kernel>", "exec"), scope)
+        return scope["kernel"]  # type: ignore[no-any-return]
+
+    @property
+    def arguments(self) -> tuple[str, ...]:
+        """("t", "y", *parameters)."""
+        return ("t", "y", *self.parameters)
+
+    def __call__(self, t: npt.ArrayLike, y: npt.ArrayLike, *parameters: npt.ArrayLike) -> Array:
+        if len(parameters) != len(self.parameters):
+            raise EvaluationError(
+                f"{len(parameters)} parameter values were given, expected {len(self.parameters)}: "
+                f"{', '.join(self.parameters)}"
+            )
+        if type(t) in _SCALARS and _SCALARS.issuperset(map(type, parameters)):
+            return self._at_scalars(t, y, parameters)
+        return self._at_arrays(t, y, parameters)
+
+    def _at_scalars(self, t: Any, y: npt.ArrayLike, parameters: tuple[Any, ...]) -> Array:
+        """One state and scalar parameters: plain Python numbers are several times faster than NumPy scalars."""
+        state = np.asarray(y)
+        if (
+            state.ndim != 1
+            or self._scalar_kernel is None
+            or state.dtype.kind not in "fiu"
+            or state.shape[0] != self.size
+        ):
+            return self._at_arrays(t, state, parameters)
+        try:
+            result = np.array(self._scalar_kernel(t, *state.tolist(), *parameters), dtype=np.float64)
+        except (ArithmeticError, ValueError):
+            # Python numbers raise where NumPy gives inf or nan; the array path answers as NumPy does.
+            return self._at_arrays(t, state, parameters)
+        return result if len(self.shape) == 1 else result.reshape(self.shape)
+
+    def _at_arrays(self, t: Any, y: Any, parameters: tuple[Any, ...]) -> Array:
+        kind = np.complex128 if self.is_complex else np.float64
+        state = _array(y, kind, "y")
+        if state.ndim < 1 or state.shape[0] != self.size:
+            raise EvaluationError(
+                f"y has shape {state.shape}: expected ({self.size},) or ({self.size},) + S, states along axis 0"
+            )
+        time = _array(t, np.float64, "t")
+        values = [_array(x, np.float64, name) for x, name in zip(parameters, self.parameters, strict=True)]
+        try:
+            batch = np.broadcast_shapes(time.shape, state.shape[1:], *(x.shape for x in values))
+        except ValueError:
+            shapes = ", ".join(
+                f"{name} {x.shape}" for name, x in zip(("t", *self.parameters), (time, *values), strict=True)
+            )
+            raise EvaluationError(f"shapes do not broadcast: states {state.shape[1:]}, {shapes}") from None
+        outputs = self.kernel(time, *state, *values)
+        result = np.empty((len(outputs), *batch), dtype=kind)
+        for row, value in zip(result, outputs, strict=True) if batch else ():
+            row[...] = value
+        if not batch:
+            result[...] = [complex(x) if self.is_complex else float(x) for x in outputs]
+        return result.reshape(self.shape + batch)
+
+    def values(self, mapping: Mapping[Any, Any] | None = None, /, **by_name: Any) -> tuple[Any, ...]:
+        """The parameter values in the order of `parameters`, for ``args=``. Keys are symbols or names."""
+        found: dict[str, Any] = {}
+        for key, value in [*(mapping or {}).items(), *by_name.items()]:
+            name = key.name if isinstance(key, sp.Symbol) else key
+            if name not in self.parameters:
+                raise EvaluationError(f"unknown parameter {name!r}: expected {', '.join(self.parameters)}")
+            if name in found:
+                raise EvaluationError(f"parameter {name!r} is given twice")
+            found[name] = value
+        found = dict(self.defaults) | found
+        if missing := [name for name in self.parameters if name not in found]:
+            raise EvaluationError(
+                f"missing parameter {', '.join(missing)}: give a value for each of {', '.join(self.parameters)}"
+            )
+        return tuple(found[name] for name in self.parameters)
+
+    def bind(self, mapping: Mapping[Any, Any] | None = None, /, **by_name: Any) -> BoundFunction:
+        """f(t, y) with all parameters fixed, picklable."""
+        values = self.values(mapping, **by_name)
+        for name, value in zip(self.parameters, values, strict=True):
+            _array(value, np.float64, name)
+        return BoundFunction(
+            self, tuple(float(x) if np.ndim(x) == 0 else np.asarray(x, dtype=np.float64) for x in values)
+        )
+
+    def __hash__(self) -> int:
+        return hash((self.source, self.parameters, self.shape))
+
+    def __repr__(self) -> str:
+        return f"NumpyFunction({', '.join(self.arguments)}) -> {self.shape} + B"
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return type(self), (
+            self.source,
+            self.functions,
+            self.parameters,
+            self.size,
+            self.shape,
+            self.is_complex,
+            self.defaults,
+        )
+
+
+@dataclass(frozen=True, eq=False)
+class BoundFunction:
+    """A `NumpyFunction` with its parameters fixed: f(t, y)."""
+
+    function: NumpyFunction
+    parameters: tuple[Any, ...]
+
+    def __call__(self, t: npt.ArrayLike, y: npt.ArrayLike) -> Array:
+        return self.function(t, y, *self.parameters)
+
+
+def _array(x: Any, kind: Any, name: str) -> Array:
+    """x as an array of the kind, refusing what would lose something."""
+    try:
+        result = np.asarray(x)
+        if result.dtype.kind == "c" and kind is np.float64:
+            raise EvaluationError(f"{name} is complex: expected real values")
+        if result.dtype.kind not in "fiucb":
+            result = result.astype(np.complex128 if kind is np.complex128 else np.float64)
+        return result.astype(kind, copy=False)
+    except (TypeError, ValueError) as error:
+        if isinstance(error, EvaluationError):
+            raise
+        raise EvaluationError(f"{name} is {x!r}: expected numbers") from None

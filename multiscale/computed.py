@@ -1,0 +1,142 @@
+"""The computed levels behind an expansion, and their finished (representation-free) form, made when asked for.
+
+`Computation` joins a canonical problem to a hierarchy: it builds the ring and the rooms that the hierarchy asks, takes
+levels further, and hands out finished coefficients: polynomials in the amplitudes z_a, z̄_a (exponents pairwise, in the
+order of the modes) with reduced coefficients, the same for every representation.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, replace
+from functools import cache, cached_property
+from typing import Any, TypeAlias
+
+from multiscale.algebra.derivation import Derivation
+from multiscale.algebra.polynomial import Frozen, freeze
+from multiscale.algebra.quotient import Coefficient, finish
+from multiscale.algebra.ring import Exponents, make_ring
+from multiscale.forces.polynomial import PolynomialForce
+from multiscale.hierarchy import Hierarchy, next_level, start
+from multiscale.linear_part import Rate
+from multiscale.linear_part.oscillators import Oscillators
+from multiscale.problem.canonical import Canonical
+from multiscale.tower import Tower
+
+__all__ = ["Computation", "Finished", "Snapshot", "begin", "restore"]
+
+Finished: TypeAlias = Mapping[Exponents, Coefficient]
+
+
+@dataclass(frozen=True)
+class Snapshot:
+    """A computation as plain data: the reciprocals in use, and per level the fields and the D_nA by name."""
+
+    reciprocals: tuple[tuple[str, Frozen], ...]
+    fields: tuple[tuple[Frozen, ...], ...]
+    changes: tuple[tuple[Frozen, ...], ...]
+
+
+@dataclass(frozen=True)
+class Computation:
+    """A canonical problem and the levels computed so far."""
+
+    canonical: Canonical
+    hierarchy: Hierarchy
+
+    @property
+    def order(self) -> int:
+        return self.hierarchy.tower.height - 1
+
+    @property
+    def modes(self) -> int:
+        return len(self.hierarchy.linear_part.modes)
+
+    def further(self) -> Computation:
+        """One more level."""
+        return replace(self, hierarchy=next_level(self.hierarchy))
+
+    def rate(self, exponents: Exponents) -> Rate:
+        return self.hierarchy.rates.rate(exponents)
+
+    def index(self, mode: int) -> int:
+        """The generator of the amplitude of a mode."""
+        return 1 + len(self.canonical.spec.roots) + 2 * mode
+
+    @cached_property
+    def _finish(self) -> Any:
+        ring, tower = self.hierarchy.tower.ring, self.hierarchy.tower
+
+        @cache
+        def finished(kind: str, level: int, index: int) -> Finished:
+            if kind == "change":
+                return finish(ring, tower.time[level].images.get(self.index(index), ring.zero))
+            return finish(ring, tower.jets[int(kind)][level][index])
+
+        return finished
+
+    def change(self, level: int, mode: int) -> Finished:
+        """D_level A_mode, written for z = A e^{iωT_0}."""
+        return self._finish("change", level, mode)  # type: ignore[no-any-return]
+
+    def field(self, level: int, unknown: int, derivative: int = 0) -> Finished:
+        """[ε^level] of an unknown or of its time derivative."""
+        return self._finish(str(derivative), level, unknown)  # type: ignore[no-any-return]
+
+    def forcing(self, level: int, unknown: int) -> tuple[Finished, Finished]:
+        """(forcing, its secular part) of L_0 U_level = forcing, from U_level and D_levelA.
+
+        The solvability conditions of the levels below are inserted; the term in D_levelA itself is left out.
+        """
+        linear, tower = self.hierarchy.linear_part, self.hierarchy.tower
+        ring = tower.ring
+        first = self.index(0)
+        indices = tuple(range(first, first + 2 * self.modes))
+        total = ring.zero
+        for rate, part in ring.split(tower.jets[0][level][unknown], indices, self.hierarchy.rates).items():
+            acted = linear.act({unknown: part}, rate)[unknown]
+            total = total + (acted + ring.conjugate(acted) if any(rate) else acted)
+        changes = {a: x for a in range(self.modes) if (x := tower.time[level].images.get(self.index(a)))}
+        secular = linear.bracket(changes).get(unknown, ring.zero)
+        secular = secular + ring.conjugate(secular)
+        return finish(ring, ring.normal(total + secular)), finish(ring, secular)
+
+    def snapshot(self) -> Snapshot:
+        tower = self.hierarchy.tower
+        ring = tower.ring
+        fields = tuple(tuple(freeze(ring.write(x)) for x in level) for level in tower.jets[0])
+        changes = tuple(
+            tuple(freeze(ring.write(d.images.get(self.index(a), ring.zero))) for a in range(self.modes))
+            for d in tower.time[1:]
+        )
+        return Snapshot(ring.spec.reciprocals, fields, changes)
+
+
+def begin(canonical: Canonical, representation: str, reciprocals: Iterable[tuple[str, Frozen]] = ()) -> Computation:
+    """Level 0 in a ring of the given representation."""
+    ring = make_ring(
+        canonical.spec.with_reciprocals([r for r in reciprocals if r not in canonical.spec.reciprocals]), representation
+    )
+    bases = canonical.bases
+    linear = Oscillators(bases.rates, [dict(b) for b in bases.values], bases.unit, ring)
+    force = PolynomialForce(canonical.force, ring)
+    first = 1 + len(ring.spec.roots)
+    i = ring.generators[0]
+    images = {
+        first + 2 * a: ring.normal(i * linear.value(m.rate) * ring.generators[first + 2 * a])
+        for a, m in enumerate(linear.modes)
+    }
+    return Computation(canonical, start(ring, linear, force, Derivation(images)))
+
+
+def restore(canonical: Canonical, snapshot: Snapshot, representation: str = "auto") -> Computation:
+    """The computation of a snapshot; time derivatives are recomputed from the fields."""
+    computation = begin(canonical, representation, snapshot.reciprocals)
+    for field, changes in zip(snapshot.fields[1:], snapshot.changes, strict=True):
+        tower: Tower = computation.hierarchy.tower
+        ring = tower.ring
+        slow = Derivation({computation.index(a): ring.read(dict(x)) for a, x in enumerate(changes)})
+        displacement = tuple(ring.read(dict(x)) for x in field)
+        tower = tower.completed(tower.pending(), displacement, slow)
+        computation = replace(computation, hierarchy=replace(computation.hierarchy, tower=tower))
+    return computation

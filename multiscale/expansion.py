@@ -1,0 +1,284 @@
+"""The finished result and the call that makes it."""
+
+from __future__ import annotations
+
+import warnings
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, field
+from functools import cached_property
+from typing import TYPE_CHECKING, Any
+
+import sympy as sp
+
+from multiscale.computed import Computation, Snapshot, begin, restore
+from multiscale.errors import MultiscaleError, OrderingWarning, ProblemError, ResonanceError
+from multiscale.level import Level, Views, polynomials_below
+from multiscale.problem import Problem
+from multiscale.remarks import incomplete_cubic, remarks
+from multiscale.slow_flow import SlowFlow, resonant_phases
+from multiscale.solution import FORMS, solution
+from multiscale.symbols import Symbols, symbols_of
+
+if TYPE_CHECKING:
+    from multiscale.codegen.numpy_function import NumpyFunction
+
+__all__ = ["Expansion", "expand", "extend"]
+
+LATEX_LENGTH = 4000
+
+
+class _Levels(Mapping[int, Level]):
+    """Levels by number, each made when it is first asked for."""
+
+    def __init__(self, views: Views, order: int) -> None:
+        self._views, self._order, self._made = views, order, dict[int, Level]()
+
+    def __getitem__(self, n: int) -> Level:
+        if n not in range(self._order + 1):
+            raise KeyError(f"level {n}: this expansion has the levels 0 … {self._order}")
+        if n not in self._made:
+            self._made[n] = self._views.level(n)
+        return self._made[n]
+
+    def __iter__(self) -> Iterator[int]:
+        return iter(range(self._order + 1))
+
+    def __len__(self) -> int:
+        return self._order + 1
+
+
+@dataclass(frozen=True, eq=False, repr=False)
+class Expansion:
+    """A multiple-scale expansion to a given order; made by `expand`.
+
+    Attributes
+    ----------
+    problem : Problem
+    order : int
+        N: the levels 0 … N, the slow derivatives D_1 … D_N.
+    amplitude : str
+        "fundamental": |2A| is the amplitude of the fundamental harmonic, to all orders.
+    """
+
+    problem: Problem
+    order: int
+    amplitude: str = "fundamental"
+    computation: Computation = field(repr=False, kw_only=True)
+
+    @cached_property
+    def _basis(self) -> Any:
+        return resonant_phases(self.computation)
+
+    @cached_property
+    def symbols(self) -> Symbols:
+        """The symbols of the result, ``symbols.A``, ``.a``, ``.beta``, … as tuples."""
+        return symbols_of(self.problem, self.computation.modes, len(self._basis.resonant), self.order)
+
+    @cached_property
+    def _views(self) -> Views:
+        return Views(self.problem, self.computation, self.symbols)
+
+    @cached_property
+    def levels(self) -> Mapping[int, Level]:
+        """``levels[n]``, n = 0 … N."""
+        return _Levels(self._views, self.order)
+
+    @cached_property
+    def slow_flow(self) -> SlowFlow:
+        return SlowFlow(self.problem, self.computation, self._views, self.symbols, self._basis)
+
+    @property
+    def relations(self) -> dict[sp.Expr, sp.Expr]:
+        """Exact relations between natural frequencies: {frequency: rational multiple of an earlier one}."""
+        bases = self.computation.canonical.bases
+        expressed = {}
+        for k, rate in enumerate(bases.rates):
+            multiples = [j for j in range(k) if _parallel(bases.rates[j], rate)]
+            if multiples:
+                j = multiples[0]
+                first = next(b for b, r in enumerate(rate) if r)
+                expressed[sp.Symbol(f"omega_{self.problem.unknowns[k].func.__name__}")] = sp.Rational(
+                    rate[first], bases.rates[j][first]
+                ) * sp.Symbol(f"omega_{self.problem.unknowns[j].func.__name__}")
+        return expressed
+
+    def _frequency_parts(self, mode: int) -> tuple[sp.Expr, ...]:
+        modes = self.computation.modes
+        if not isinstance(mode, int) or mode not in range(modes):
+            raise MultiscaleError(f"mode is {mode!r}: this expansion has the modes 0 … {modes - 1}")
+        if self._basis.resonant:
+            raise ResonanceError(
+                "the modes are in internal resonance, so the frequency depends on the phases "
+                f"{', '.join(map(str, self.slow_flow.phases.values()))}: use slow_flow.polar"
+            )
+        turns = [self.slow_flow._polar_part(n, mode)[1] for n in range(1, self.order + 1)]
+        return (self.problem.natural_frequencies[mode], *turns)
+
+    def frequency_corrections(self, mode: int = 0) -> tuple[sp.Expr, ...]:
+        """Coefficients of ω(a) = Σ εⁿ ω_n, index = power of ε; a is the amplitude of the fundamental."""
+        return self._frequency_parts(mode)
+
+    def frequency(self, mode: int = 0) -> sp.Expr:
+        """ω(a) as a series in ε, for modes not in internal resonance (`ResonanceError` otherwise)."""
+        return sp.Add(*(self.problem.small**n * w for n, w in enumerate(self._frequency_parts(mode))))
+
+    def solution(self, form: str = "polar", order: int | None = None) -> dict[sp.Expr, sp.Expr]:
+        """{unknown: U_0 + εU_1 + …} through U_order (default N) in the slow variables of `form` and time.
+
+        "polar" uses a and β, "complex" A and its conjugate, "cartesian" p and q in the rotating frame.
+        """
+        if form not in FORMS:
+            raise MultiscaleError(f"form is {form!r}: expected one of {', '.join(map(repr, FORMS))}")
+        order = self.order if order is None else order
+        if order not in range(self.order + 1):
+            raise MultiscaleError(
+                f"order is {order!r}: this expansion has the levels 0 … {self.order}; `extend` it for more"
+            )
+        return solution(self.problem, self.computation, self._views, self.symbols, form, order)
+
+    @cached_property
+    def nonresonance(self) -> tuple[sp.Expr, ...]:
+        """Divisors assumed non-zero, in slow flow and fields, that no assumption on the symbols makes positive."""
+        c = self.computation
+        finished = [c.change(n, a) for n in range(1, self.order + 1) for a in range(c.modes)]
+        finished += [c.field(n, k) for n in range(self.order + 1) for k in range(c.modes)]
+        own = {p for _, p in c.canonical.spec.reciprocals}
+        divisors = [self._views.writer.polynomial(p) for p in polynomials_below(finished) if p not in own]
+        return tuple(d for d in divisors if not d.is_positive)
+
+    @cached_property
+    def warnings(self) -> tuple[str, ...]:
+        """What a careful analyst would say about this result."""
+        return remarks(self.problem, self.computation)
+
+    def equals(self, other: Expansion) -> bool:
+        """Whether slow flow and fields are the same, coefficient by coefficient, to the same order."""
+        return self.order == other.order and self.amplitude == other.amplitude and self._finished == other._finished
+
+    @cached_property
+    def _finished(self) -> tuple[Any, ...]:
+        c = self.computation
+        changes = tuple(tuple(c.change(n, a).items()) for n in range(1, self.order + 1) for a in range(c.modes))
+        return changes, tuple(tuple(c.field(n, k).items()) for n in range(self.order + 1) for k in range(c.modes))
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, Expansion) and self.problem == other.problem and self.equals(other)
+
+    def __hash__(self) -> int:
+        return hash((self.problem, self.order, self.amplitude))
+
+    def __repr__(self) -> str:
+        unknowns = ", ".join(str(u) for u in self.problem.unknowns)
+        return f"Expansion of {unknowns} to order {self.order} in {self.problem.small}"[:199]
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return _rebuilt, (self.problem, self.order, self.amplitude, self.computation.snapshot())
+
+    def to_numpy(self, derivative: int = 0) -> NumpyFunction:
+        """The unknowns (or their first time derivative) from a slow state: f(t, y, *parameters), shape (unknowns,) + B.
+
+        y is Cartesian in the rotating frame, as in ``slow_flow.to_numpy("cartesian")``.
+        """
+        from multiscale.codegen.functions import displacement_function
+
+        if derivative not in (0, 1, 2):
+            raise MultiscaleError(f"derivative is {derivative!r}: expected 0, 1 or 2")
+        return displacement_function(self.problem, self.computation, derivative)
+
+    def frequency_to_numpy(self, mode: int = 0) -> NumpyFunction:
+        """ω at a slow state y (Cartesian in the rotating frame): f(t, y, *parameters), shape B."""
+        from multiscale.codegen.functions import frequency_function
+
+        self._frequency_parts(mode)
+        return frequency_function(self.problem, self.computation, mode)
+
+    def latex(self, full: bool = False) -> str:
+        """The slow flow in polar form as LaTeX; results that would be very long are cut unless `full`."""
+        text = self.slow_flow._repr_latex_() if full or self._size < 200 else ""
+        if text and (full or len(text) <= LATEX_LENGTH):
+            return text
+        return rf"$\text{{slow flow of order {self.order} with {self._size} terms; use latex(full=True)}}$"
+
+    @property
+    def _size(self) -> int:
+        c = self.computation
+        changes = [c.change(n, a) for n in range(1, self.order + 1) for a in range(c.modes)]
+        return sum(len(q.numerator) for f in changes for x in f.values() for q in (x.real, x.imag))
+
+    def _repr_latex_(self) -> str:
+        return self.latex()
+
+
+def _parallel(x: tuple[int, ...], y: tuple[int, ...]) -> bool:
+    return all(a * d == b * c for a, b in zip(x, y, strict=True) for c, d in zip(x, y, strict=True))
+
+
+def _rebuilt(problem: Problem, order: int, amplitude: str, snapshot: Snapshot) -> Expansion:
+    return Expansion(problem, order, amplitude, computation=restore(problem.canonical, snapshot))
+
+
+def _taken_to(
+    problem: Problem, computation: Computation, order: int, on_level: Callable[[Level], object] | None
+) -> Expansion:
+    while computation.order < order:
+        computation = computation.further()
+        if on_level is not None:
+            partial = Expansion(problem, computation.order, computation=computation)
+            if on_level(partial.levels[computation.order]) is False:
+                break
+    return Expansion(problem, computation.order, computation=computation)
+
+
+def _checked_order(order: object, least: int) -> int:
+    if isinstance(order, bool) or not isinstance(order, int) or order < least:
+        raise ProblemError(f"order is {order!r}: expected an integer ≥ {least}")
+    return order
+
+
+def expand(
+    problem: Problem, order: int, *, on_level: Callable[[Level], object] | None = None, representation: str = "auto"
+) -> Expansion:
+    """Expand a problem by the method of multiple scales to any order.
+
+    Parameters
+    ----------
+    problem : Problem
+    order : int ≥ 1
+        N: the slow flow holds D_1 … D_N, the fields U_0 … U_N, and the residual of the equations is O(ε^{N+1}).
+    on_level : callable, optional
+        Called with each finished `Level`; returning False ends the expansion there.
+    representation : "auto", "flint" or "sympy"
+        The polynomial arithmetic; all give identical results. "auto" takes FLINT when python-flint is installed.
+
+    Raises
+    ------
+    ProblemError
+        `order` is not an integer ≥ 1.
+
+    Warns
+    -----
+    OrderingWarning
+        `order=1` with quadratic terms, whose contribution to the frequency begins at the second order.
+
+    Examples
+    --------
+    >>> import sympy as sp, multiscale as ms
+    >>> t = sp.Symbol("t", real=True)
+    >>> eps, w0, a2, a3 = sp.symbols("epsilon omega_0 alpha_2 alpha_3", positive=True)
+    >>> u = sp.Function("u")(t)
+    >>> problem = ms.Problem(u.diff(t, 2) + w0**2*u + eps*a2*u**2 + eps**2*a3*u**3, u, small=eps)
+    >>> ms.expand(problem, order=2).frequency_corrections()
+    (omega_0, 0, -a**2*(10*alpha_2**2 - 9*alpha_3*omega_0**2)/(24*omega_0**3))
+    """
+    if not isinstance(problem, Problem):
+        raise ProblemError(f"expand was given a {type(problem).__name__}: state a multiscale.Problem first")
+    computation = begin(problem.canonical, representation)
+    expansion = _taken_to(problem, computation, _checked_order(order, 1), on_level)
+    if remark := incomplete_cubic(problem, expansion.computation):
+        warnings.warn(remark, OrderingWarning, stacklevel=2)
+    return expansion
+
+
+def extend(expansion: Expansion, order: int, *, on_level: Callable[[Level], object] | None = None) -> Expansion:
+    """The same expansion to a higher order; no level is computed again."""
+    return _taken_to(expansion.problem, expansion.computation, _checked_order(order, expansion.order), on_level)

@@ -1,0 +1,78 @@
+"""Finished coefficients as SymPy expressions, compact: content, common factors, factored numerator over the divisors.
+
+Equal coefficients give identical expressions. Numerators of up to `FACTOR_LIMIT` terms are factored over the rationals;
+longer ones are sums with their common monomial and content in front.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from fractions import Fraction
+
+import sympy as sp
+from sympy.polys.domains import ZZ
+from sympy.polys.orderings import lex
+from sympy.polys.rings import PolyRing
+
+from multiscale.algebra.polynomial import Frozen, Monomial, primitive
+from multiscale.algebra.quotient import Coefficient, Quotient
+
+__all__ = ["FACTOR_LIMIT", "Writer"]
+
+FACTOR_LIMIT = 40
+
+
+class Writer:
+    """Writes with `meanings`, the user's expression for each generator."""
+
+    def __init__(self, meanings: Mapping[str, sp.Expr]) -> None:
+        self._meanings = dict(meanings)
+        self._quotients: dict[Quotient, sp.Expr] = {}
+
+    def monomial(self, monomial: Monomial) -> sp.Expr:
+        return sp.Mul(*(self._meanings[name] ** e for name, e in monomial))
+
+    def polynomial(self, terms: Iterable[tuple[Monomial, Fraction]]) -> sp.Expr:
+        return sp.Add(*(sp.Rational(c.numerator, c.denominator) * self.monomial(m) for m, c in terms))
+
+    def quotient(self, q: Quotient) -> sp.Expr:
+        if q not in self._quotients:
+            below = [self.polynomial(p) ** -e for p, e in q.denominator]
+            self._quotients[q] = sp.Mul(*self._numerator(q.numerator), *below) if q else sp.Integer(0)
+        return self._quotients[q]
+
+    def coefficient(self, c: Coefficient) -> sp.Expr:
+        return self.quotient(c.real) + sp.I * self.quotient(c.imag)
+
+    def _numerator(self, terms: Frozen) -> list[sp.Expr]:
+        """Content, common monomial and the factors of the rest."""
+        content, rest = primitive(dict(terms))
+        lowest = dict(terms[0][0])
+        for m, _ in terms[1:]:
+            powers = dict(m)
+            lowest = {name: min(e, powers[name]) for name, e in lowest.items() if name in powers}
+        common = tuple(sorted(lowest.items()))
+        rest = {
+            tuple((name, e - lowest.get(name, 0)) for name, e in m if e > lowest.get(name, 0)): c
+            for m, c in rest.items()
+        }
+        return [sp.Rational(content.numerator, content.denominator), self.monomial(common), *self._factors(rest)]
+
+    def _factors(self, terms: Mapping[Monomial, Fraction]) -> list[sp.Expr]:
+        names = sorted({name for m in terms for name, _ in m})
+        if not names:
+            return []
+        if len(terms) > FACTOR_LIMIT or len(terms) == 1:
+            return [self.polynomial(terms.items())]
+        ring = PolyRing(tuple(map(sp.Symbol, names)), ZZ, lex)
+        polynomial = ring.from_dict(
+            {tuple(dict(m).get(name, 0) for name in names): ZZ(c.numerator) for m, c in terms.items()}
+        )
+        content, factors = polynomial.factor_list()
+        result = [sp.Integer(int(content))]
+        for p, power in factors:
+            named = [
+                (tuple((n, int(e)) for n, e in zip(names, m, strict=True) if e), Fraction(int(c))) for m, c in p.terms()
+            ]
+            result.append(self.polynomial(named) ** power)
+        return result

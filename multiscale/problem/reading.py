@@ -1,0 +1,200 @@
+"""From SymPy expressions to polynomials by name: every leaf of an expression becomes a generator, or an error names it.
+
+    symbols, constants such as pi, functions of parameters       opaque generators, meaning = the expression itself
+    sqrt(n)                                                      product of sqrt(prime), with the relation g**2 = prime
+    floats                                                       opaque generators, put back on output
+    1/p, p free of unknowns and of the small parameter           reciprocal generators of the irreducible factors of p
+
+Nothing is rounded and nothing dropped: anything else raises `UnsupportedTermError` with the term and the remedy.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from fractions import Fraction
+from math import isqrt, prod
+from typing import Any
+
+import sympy as sp
+
+from multiscale.algebra.polynomial import freeze
+from multiscale.algebra.quotient import reduced
+from multiscale.algebra.reciprocals import inverse, missing
+from multiscale.algebra.ring import RingSpec
+from multiscale.algebra.sympy_ring import SympyRing
+from multiscale.errors import ProblemError, UnsupportedTermError
+
+__all__ = ["Reader", "unsupported"]
+
+
+def unsupported(term: object, reason: str, remedy: str) -> UnsupportedTermError:
+    """The one form of an error about a term."""
+    return UnsupportedTermError(f"term {term}: {reason}. {remedy}")
+
+
+def _prime_roots(n: int) -> tuple[int, list[int]]:
+    """(m, primes) with sqrt(n) = m·Π sqrt(prime); a factor beyond easy reach counts as a prime."""
+    primes = sorted(int(p) for p, e in sp.factorint(n, limit=10**5).items() if e % 2)
+    return isqrt(n // prod(primes)), primes
+
+
+def _base_and_power(x: sp.Expr) -> tuple[sp.Expr, int]:
+    """(leaf, power) with an integer power: k**(3/2) = sqrt(k)**3, so that all powers of a root share one leaf."""
+    if isinstance(x, sp.Pow) and x.exp.is_Rational:
+        return x.base ** sp.Rational(1, x.exp.q), int(x.exp.p)
+    return x, 1
+
+
+def _is_root(x: sp.Expr) -> bool:
+    return isinstance(x, sp.Pow) and x.exp == sp.Rational(1, 2) and bool(x.base.is_Integer) and bool(x.base.is_positive)
+
+
+class Reader:
+    """Reads expressions over one fixed set of leaves.
+
+    Parameters: `dynamic`, the symbols of jets and of the small parameter, which may appear polynomially only; `shown`,
+    how each of them is spelled in messages; `expressions`, everything that is going to be read.
+    """
+
+    def __init__(
+        self, expressions: Iterable[sp.Expr], dynamic: Iterable[sp.Symbol], shown: Mapping[sp.Symbol, sp.Expr]
+    ) -> None:
+        self.dynamic = tuple(dynamic)
+        self._shown = dict(shown)
+        self.meanings: dict[str, sp.Expr] = {}
+        roots: dict[str, int] = {}
+        denominators: list[sp.Expr] = []
+        expressions = list(expressions)
+        for expression in expressions:
+            self._collect(expression, roots, denominators)
+        names = tuple(name for name in sorted(self.meanings) if name not in roots)
+        root_relations = tuple(
+            (name, freeze({(): Fraction(roots[name])})) for name in sorted(roots, key=lambda g: roots[g])
+        )
+        reals = (*(s.name for s in self.dynamic), *names)
+        self.ring = SympyRing(RingSpec(pairs=(), reals=reals, roots=root_relations))
+        for base in denominators:
+            # Innermost first: `_collect` appends a denominator after those inside it.
+            value = self.read(base)
+            if not value:
+                raise ProblemError(f"the denominator {base} is identically zero: write a non-zero one")
+            more = missing(self.ring, [value])
+            if more:
+                self.ring = self.ring.extended(more)
+
+    def show(self, expression: sp.Expr) -> sp.Expr:
+        """The expression as the user wrote it, derivatives and all."""
+        return expression.subs(self._shown)
+
+    def _name(self, leaf: sp.Expr) -> str:
+        name = repr(float(leaf)) if isinstance(leaf, sp.Float) and leaf._prec <= 53 else str(leaf)
+        known = self.meanings.setdefault(name, leaf)
+        if known != leaf:
+            raise ProblemError(
+                f"two different symbols are both called {name!r}: rename one, or give both the same assumptions"
+            )
+        return name
+
+    def _collect(self, x: sp.Expr, roots: dict[str, int], denominators: list[sp.Expr]) -> None:
+        base, power = _base_and_power(x)
+        if base in self.dynamic or isinstance(base, sp.Rational):
+            pass
+        elif isinstance(base, sp.Add | sp.Mul):
+            for arg in base.args:
+                self._collect(arg, roots, denominators)
+        elif _is_root(base):
+            for p in _prime_roots(int(base.base))[1]:
+                roots[f"sqrt({p})"] = p
+                self.meanings[f"sqrt({p})"] = sp.sqrt(p)
+        else:
+            self._check_leaf(base)
+            self._name(base)
+        if power < 0:
+            self._check_denominator(x)
+            if base not in denominators:
+                denominators.append(base)
+
+    def _check_denominator(self, x: sp.Expr) -> None:
+        if found := x.free_symbols & set(self.dynamic):
+            which = self.show(min(found, key=str))
+            raise unsupported(
+                self.show(x),
+                f"{which} stands in a denominator",
+                "Multiply the equation by the denominator, or expand the quotient in powers of it",
+            )
+
+    def _check_leaf(self, x: sp.Expr) -> None:
+        shown = self.show(x)
+        if x.has(sp.nan, sp.oo, -sp.oo, sp.zoo):
+            raise ProblemError(f"the equations contain {shown}: every coefficient must be finite")
+        if x.has(sp.I):
+            raise ProblemError(
+                f"the equations contain the imaginary unit in {shown}: state real equations for real unknowns"
+            )
+        if isinstance(x, sp.Derivative):
+            raise unsupported(
+                shown,
+                "only first and second time derivatives of the unknowns are accepted",
+                "Rewrite the equation as a system of second order",
+            )
+        if found := x.free_symbols & set(self.dynamic):
+            which = self.show(min(found, key=str))
+            raise unsupported(
+                shown,
+                f"it is not a polynomial in {which}",
+                f"Replace it by the terms of its expansion in powers of {which} that matter at the order wanted",
+            )
+
+    def read(self, x: sp.Expr) -> Any:
+        """The ring element of an expression whose leaves were all collected."""
+        ring = self.ring
+        base, power = _base_and_power(x)
+        if isinstance(base, sp.Rational):
+            value = ring.constant(Fraction(int(base.p), int(base.q)))
+        elif base in self.dynamic:
+            value = ring.generators[ring.spec.index[base.name]]
+        elif isinstance(base, sp.Add):
+            value = ring.zero
+            for arg in base.args:
+                value = value + self.read(arg)
+        elif isinstance(base, sp.Mul):
+            value = ring.one
+            for arg in base.args:
+                value = ring.normal(value * self.read(arg))
+        elif _is_root(base):
+            square, primes = _prime_roots(int(base.base))
+            value = ring.constant(square)
+            for p in primes:
+                value = value * ring.generators[ring.spec.index[f"sqrt({p})"]]
+        else:
+            value = ring.generators[ring.spec.index[self._name(base)]]
+        return self._power(value, power) if power > 0 else self._power(inverse(ring, value), -power)
+
+    def _power(self, x: Any, power: int) -> Any:
+        result = self.ring.one
+        for _ in range(power):
+            result = self.ring.normal(result * x)
+        return result
+
+    def reduced(self, x: Any) -> dict[tuple[tuple[str, int], ...], Fraction]:
+        """A coefficient in reduced form, written by name with reciprocal generators."""
+        quotient = reduced(self.ring, self.ring.normal(x))
+        names = self.ring.spec.reciprocal_of
+        below = tuple((names[p], e) for p, e in quotient.denominator)
+        return {tuple(sorted((*m, *below))): c for m, c in quotient.numerator}
+
+    def expression(self, polynomial: Iterable[tuple[tuple[tuple[str, int], ...], Fraction]]) -> sp.Expr:
+        """A polynomial by name as SymPy expression in the user's symbols."""
+        terms = [
+            sp.Mul(sp.Rational(c.numerator, c.denominator), *(self._meaning(g) ** e for g, e in m))
+            for m, c in polynomial
+        ]
+        return sp.Add(*terms)
+
+    def _meaning(self, generator: str) -> sp.Expr:
+        if generator in self.meanings:
+            return self.meanings[generator]
+        for s in self.dynamic:
+            if s.name == generator:
+                return s
+        return 1 / self.expression(next(p for h, p in self.ring.spec.reciprocals if h == generator))

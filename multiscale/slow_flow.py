@@ -1,0 +1,230 @@
+"""The slow flow: dA/dt, reconstituted over all levels, in complex, polar and Cartesian form.
+
+With A_j = ½ a_j e^{iβ_j} and dA_j/dt = Σ c · Π A_l^{p_l} Ā_l^{q_l}, writing K for the phase of a term relative to A_j:
+
+    da_j/dt      = Σ 2 Π (a_l/2)^{p_l+q_l} (Re c · cos K − Im c · sin K)
+    a_j dβ_j/dt  = Σ 2 Π (a_l/2)^{p_l+q_l} (Im c · cos K + Re c · sin K)
+
+With A_j = ½ (p_j − i q_j):
+
+    dp_j/dt = 2 Re dA_j/dt,      dq_j/dt = −2 Im dA_j/dt
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from fractions import Fraction
+from functools import cached_property
+from typing import TYPE_CHECKING
+
+import sympy as sp
+
+from multiscale.algebra.ring import Exponents
+from multiscale.computed import Computation
+from multiscale.errors import EvaluationError
+from multiscale.level import Views
+from multiscale.phases import PhaseBasis, phase_basis
+from multiscale.problem import Problem
+from multiscale.symbols import Symbols
+
+if TYPE_CHECKING:
+    from multiscale.codegen.numpy_function import NumpyFunction
+
+__all__ = ["SlowFlow", "resonant_phases"]
+
+FORMS = ("complex", "polar", "cartesian")
+
+
+def relative(exponents: Exponents, mode: int) -> tuple[int, ...]:
+    """The phase combination K of a term of dA_mode/dt, relative to the phase of A_mode."""
+    return tuple(exponents[2 * k] - exponents[2 * k + 1] - (k == mode) for k in range(len(exponents) // 2))
+
+
+def resonant_phases(computation: Computation) -> PhaseBasis:
+    """The phase combinations that the flow of this computation contains."""
+    found = {
+        relative(m, a)
+        for n in range(1, computation.order + 1)
+        for a in range(computation.modes)
+        for m in computation.change(n, a)
+    }
+    return phase_basis(found, computation.modes)
+
+
+class SlowFlow:
+    """Slow evolution equations in physical time t, all orders reconstituted: dA/dt = Σ εⁿ D_nA, n = 1 … N.
+
+    Examples
+    --------
+    >>> import sympy as sp, multiscale as ms
+    >>> t = sp.Symbol("t", real=True)
+    >>> eps = sp.Symbol("epsilon", positive=True)
+    >>> u = sp.Function("u")(t)
+    >>> flow = ms.expand(ms.Problem(u.diff(t, 2) + u + eps*u**3, u, small=eps), order=1).slow_flow
+    >>> flow.polar
+    {a: 0, beta: 3*a**2*epsilon/8}
+    """
+
+    def __init__(
+        self, problem: Problem, computation: Computation, views: Views, symbols: Symbols, basis: PhaseBasis
+    ) -> None:
+        self._problem, self._computation, self._views, self._symbols, self._basis = (
+            problem,
+            computation,
+            views,
+            symbols,
+            basis,
+        )
+
+    def __repr__(self) -> str:
+        return (
+            f"SlowFlow(order {self._computation.order}, {self._computation.modes} mode(s), phases {list(self.phases)})"
+        )
+
+    @property
+    def _levels(self) -> range:
+        return range(1, self._computation.order + 1)
+
+    @cached_property
+    def by_scale(self) -> dict[int, dict[sp.Symbol, sp.Expr]]:
+        """{n: {A: D_nA}}, the rate of change on each slow time alone."""
+        return {
+            n: {A: self._views.amplitudes(self._computation.change(n, a)) for a, A in enumerate(self._symbols.A)}
+            for n in self._levels
+        }
+
+    def _summed(self, build: Callable[[int, int], sp.Expr], mode: int) -> sp.Expr:
+        return sp.Add(*(self._problem.small**n * build(n, mode) for n in self._levels))
+
+    @cached_property
+    def complex(self) -> dict[sp.Symbol, sp.Expr]:
+        """{A: dA/dt} for u = A e^{iωt} + conjugate + …."""
+        return {
+            A: self._summed(lambda n, a: self.by_scale[n][self._symbols.A[a]], k) for k, A in enumerate(self._symbols.A)
+        }
+
+    @property
+    def phases(self) -> dict[sp.Symbol, sp.Expr]:
+        """{γ: its definition} for the phase combinations that drive the flow."""
+        beta = self._symbols.beta
+        return {
+            g: sp.Add(*(n * b for n, b in zip(row, beta, strict=True)))
+            for g, row in zip(self._symbols.gamma, self._basis.resonant, strict=True)
+        }
+
+    @property
+    def cyclic(self) -> tuple[sp.Symbol, ...]:
+        """The phases that drive nothing."""
+        return tuple(self._symbols.beta[j] for j in self._basis.cyclic)
+
+    @property
+    def frame(self) -> dict[sp.Symbol, sp.Expr]:
+        """{A: the fast angle that is removed}."""
+        return {
+            A: w * self._problem.time for A, w in zip(self._symbols.A, self._problem.natural_frequencies, strict=True)
+        }
+
+    @cached_property
+    def polar(self) -> dict[sp.Symbol, sp.Expr]:
+        """{a: da/dt, …}, then the resonant phases γ, then the cyclic phases β."""
+        modes = range(self._computation.modes)
+        amplitude = {self._symbols.a[j]: self._summed(lambda n, a: self._polar_part(n, a)[0], j) for j in modes}
+        beta = [self._summed(lambda n, a: self._polar_part(n, a)[1], j) for j in modes]
+        gamma = {
+            g: sp.Add(*(k * b for k, b in zip(row, beta, strict=True)))
+            for g, row in zip(self._symbols.gamma, self._basis.resonant, strict=True)
+        }
+        return amplitude | gamma | {self._symbols.beta[j]: beta[j] for j in self._basis.cyclic}
+
+    def _polar_part(self, n: int, mode: int) -> tuple[sp.Expr, sp.Expr]:
+        """(da/dt, dβ/dt) of one mode at one level."""
+        rate, turn = [], []
+        write = self._views.writer.quotient
+        for exponents, c in self._computation.change(n, mode).items():
+            degree = sum(exponents)
+            powers = [exponents[2 * k] + exponents[2 * k + 1] for k in range(len(exponents) // 2)]
+            size = sp.Mul(sp.Rational(2, 2**degree), *(a**e for a, e in zip(self._symbols.a, powers, strict=True)))
+            angle = self._angle(relative(exponents, mode))
+            real, imag = write(c.real), write(c.imag)
+            rate.append(size * (real * sp.cos(angle) - imag * sp.sin(angle)))
+            turn.append(size / self._symbols.a[mode] * (imag * sp.cos(angle) + real * sp.sin(angle)))
+        return sp.Add(*rate), sp.Add(*turn)
+
+    def _angle(self, combination: tuple[int, ...]) -> sp.Expr:
+        return sp.Add(*(n * g for n, g in zip(self._basis.coordinates(combination), self._symbols.gamma, strict=True)))
+
+    @cached_property
+    def cartesian(self) -> dict[sp.Symbol, sp.Expr]:
+        """{p: dp/dt, q: dq/dt, …} for the leading motion p cos(fast) + q sin(fast); regular at zero amplitude."""
+        result = {}
+        for j, (p, q) in enumerate(zip(self._symbols.p, self._symbols.q, strict=True)):
+            result[p] = self._summed(lambda n, a: self._cartesian_part(n, a)[0], j)
+            result[q] = self._summed(lambda n, a: self._cartesian_part(n, a)[1], j)
+        return result
+
+    def _cartesian_part(self, n: int, mode: int) -> tuple[sp.Expr, sp.Expr]:
+        """(dp/dt, dq/dt) of one mode at one level, grouped by phase factor."""
+        write = self._views.writer.quotient
+        groups: dict[tuple[int, ...], list[tuple[sp.Expr, sp.Expr]]] = {}
+        for exponents, c in self._computation.change(n, mode).items():
+            turns = tuple(exponents[2 * k] - exponents[2 * k + 1] for k in range(len(exponents) // 2))
+            radii = [min(exponents[2 * k], exponents[2 * k + 1]) for k in range(len(turns))]
+            square = [(p**2 + q**2) ** e for p, q, e in zip(self._symbols.p, self._symbols.q, radii, strict=True)]
+            c = c.scaled(Fraction(2, 2 ** sum(exponents)))
+            groups.setdefault(turns, []).append((sp.Mul(write(c.real), *square), sp.Mul(write(c.imag), *square)))
+        p_rate, q_rate = [], []
+        for turns, parts in groups.items():
+            cosine, sine = self._phase_factor(turns)
+            real, imag = (sp.Add(*column) for column in zip(*parts, strict=True))
+            p_rate.append(real * cosine - imag * sine)
+            q_rate.append(-(imag * cosine) - real * sine)
+        return sp.Add(*p_rate), sp.Add(*q_rate)
+
+    def _phase_factor(self, turns: tuple[int, ...]) -> tuple[sp.Expr, sp.Expr]:
+        """Real and imaginary part of Π (p ∓ iq)^|turns|."""
+        real, imag = sp.Integer(1), sp.Integer(0)
+        for p, q, k in zip(self._symbols.p, self._symbols.q, turns, strict=True):
+            y = -q if k > 0 else q
+            for _ in range(abs(k)):
+                real, imag = sp.expand(real * p - imag * y), sp.expand(real * y + imag * p)
+        return real, imag
+
+    def _form(self, form: str) -> dict[sp.Symbol, sp.Expr]:
+        if form not in FORMS:
+            raise EvaluationError(f"form is {form!r}: expected one of {', '.join(map(repr, FORMS))}")
+        return getattr(self, form)  # type: ignore[no-any-return]
+
+    def jacobian(self, form: str = "cartesian") -> sp.Matrix:
+        """Derivative of the slow flow in the given real form by its own variables, rows in the order of the form."""
+        if form == "complex":
+            raise EvaluationError(
+                "the complex form depends on A and its conjugate and has no Jacobian: use 'cartesian' or 'polar'"
+            )
+        flow = self._form(form)
+        return sp.Matrix([[sp.diff(value, x) for x in flow] for value in flow.values()])
+
+    def to_numpy(self, form: str = "cartesian", wrt: str | None = None) -> NumpyFunction:
+        """The slow flow, or its Jacobian, as a NumPy function f(t, y, *parameters).
+
+        Parameters
+        ----------
+        form : "cartesian", "polar" or "complex"
+            y is (p_1, q_1, p_2, …), the variables of `polar` in their order, or the complex amplitudes.
+        wrt : None, "state" or "parameters"
+            The flow itself, of shape (n,) + B; its derivative by y, (n, n) + B; or by the parameters in the order of
+            ``.parameters``, (n, number of parameters) + B. B is the broadcast shape of time, states and parameters.
+        """
+        from multiscale.codegen.functions import slow_flow_function
+
+        self._form(form)
+        if wrt not in (None, "state", "parameters"):
+            raise EvaluationError(f"wrt is {wrt!r}: expected None, 'state' or 'parameters'")
+        if form == "complex" and wrt == "state":
+            raise EvaluationError(
+                "the complex form depends on A and its conjugate and has no Jacobian: use 'cartesian' or 'polar'"
+            )
+        return slow_flow_function(self._problem, self._computation, self._basis, form, wrt)
+
+    def _repr_latex_(self) -> str:
+        rows = [rf"\dot{{{sp.latex(x)}}} &= {sp.latex(value)}" for x, value in self.polar.items()]
+        return r"$\displaystyle \begin{aligned}" + r" \\ ".join(rows) + r"\end{aligned}$"

@@ -1,0 +1,119 @@
+"""The levels computed so far: fields, their time derivatives, and every product of them formed once.
+
+    u = U_0 + εU_1 + …,   du/dt = V_0 + εV_1 + …,   d²u/dt² = W_0 + εW_1 + …
+
+    V_n = Σ_{k=0}^{n} D_k U_{n-k},      W_n = Σ_{k=0}^{n} D_k V_{n-k}
+
+At level n the field U_n and the D_nA are unknown. `pending` gives V_n and W_n with both left out; `completed` adds what
+they contribute once they are known. A tower is never changed: `completed` and `lifted` return new ones. The products
+are a memo (their values follow from the fields), so towers that grow from each other share it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+from typing import Any, TypeAlias
+
+from multiscale.algebra.derivation import Derivation, convolve
+from multiscale.algebra.ring import Ring
+
+__all__ = ["Field", "Jet", "Tower"]
+
+Field: TypeAlias = tuple[Any, ...]
+Jet: TypeAlias = tuple[int, int]
+"""(unknown, order of the time derivative)."""
+
+
+@dataclass(frozen=True)
+class Tower:
+    """`jets[d][n]` is the field of level n in the d-th time derivative; `time[n]` is D_n."""
+
+    ring: Ring
+    time: tuple[Derivation, ...]
+    jets: tuple[tuple[Field, ...], tuple[Field, ...], tuple[Field, ...]]
+    _products: dict[tuple[Jet, ...], list[Any]] = field(default_factory=dict, repr=False, compare=False)
+
+    @classmethod
+    def start(cls, ring: Ring, fast: Derivation, displacement: Field) -> Tower:
+        """Level 0: U_0 and D_0."""
+        velocity = tuple(fast.of_real(ring, u) for u in displacement)
+        acceleration = tuple(fast.of_real(ring, v) for v in velocity)
+        return cls(ring, (fast,), ((displacement,), (velocity,), (acceleration,)))
+
+    @property
+    def height(self) -> int:
+        """The number of levels that are complete."""
+        return len(self.time)
+
+    def component(self, jet: Jet) -> list[Any]:
+        """One unknown or derivative, level by level."""
+        unknown, order = jet
+        return [level[unknown] for level in self.jets[order]]
+
+    def pending(self) -> tuple[Field, Field]:
+        """(V_n, W_n) of the level n to come, without U_n and without D_n."""
+        ring, n = self.ring, self.height
+        velocity, acceleration = [], []
+        for k in range(len(self.jets[0][0])):
+            v = convolve(ring, self.time, self.component((k, 0)), n)
+            velocity.append(v)
+            acceleration.append(self.time[0].of_real(ring, v) + convolve(ring, self.time, self.component((k, 1)), n))
+        return tuple(velocity), tuple(acceleration)
+
+    def completed(self, pending: tuple[Field, Field], displacement: Field, slow: Derivation) -> Tower:
+        """The tower with level n added: U_n, D_n and what follows from them."""
+        ring, fast = self.ring, self.time[0]
+        velocity, acceleration = [], []
+        for k, u in enumerate(displacement):
+            rate_of_change = fast.of_real(ring, u) + slow.of_real(ring, self.jets[0][0][k])
+            velocity.append(pending[0][k] + rate_of_change)
+            acceleration.append(
+                ring.normal(pending[1][k] + fast.of_real(ring, rate_of_change) + slow.of_real(ring, self.jets[1][0][k]))
+            )
+        added = (displacement, tuple(velocity), tuple(acceleration))
+        jets = tuple((*levels, new) for levels, new in zip(self.jets, added, strict=True))
+        return Tower(ring, (*self.time, slow), jets, self._products)  # type: ignore[arg-type]
+
+    def product(self, factors: tuple[Jet, ...], level: int) -> Any:
+        """[ε^level] of a product of jets, `factors` sorted; partial products are shared by all that contain them."""
+        if not factors:
+            return self.ring.zero if level else self.ring.one
+        if len(factors) == 1:
+            unknown, order = factors[0]
+            return self.jets[order][level][unknown]
+        known = self._products.setdefault(factors, [])
+        for n in range(len(known), level + 1):
+            known.append(self.ring.normal(self._convolution(factors, n)))
+        return known[level]
+
+    def _convolution(self, factors: tuple[Jet, ...], n: int) -> Any:
+        first = factors[::2]
+        if first == factors[1::2]:
+            return _square(self.ring, lambda k: self.product(first, k), n)
+        head, last = factors[:-1], factors[-1:]
+        result = self.ring.zero
+        for k in range(n + 1):
+            result = result + self.product(head, k) * self.product(last, n - k)
+        return result
+
+    def lifted(self, ring: Ring) -> Tower:
+        """The same tower over a ring with more generators."""
+
+        def lift(levels: Sequence[Field]) -> tuple[Field, ...]:
+            return tuple(tuple(ring.lift(x) for x in level) for level in levels)
+
+        products = {key: [ring.lift(x) for x in series] for key, series in self._products.items()}
+        time = tuple(d.lifted(ring) for d in self.time)
+        return Tower(ring, time, (lift(self.jets[0]), lift(self.jets[1]), lift(self.jets[2])), products)
+
+
+def _square(ring: Ring, series: Callable[[int], Any], n: int) -> Any:
+    result = ring.zero
+    for k in range((n + 1) // 2):
+        result = result + series(k) * series(n - k)
+    result = result + result
+    if n % 2 == 0:
+        middle = series(n // 2)
+        result = result + middle * middle
+    return result
