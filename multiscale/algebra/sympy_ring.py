@@ -152,6 +152,8 @@ class SympyRing(NamedTerms):
         return {name: Scaled(self._ring.from_dict(part), x.denominator) for name, part in groups.items()}
 
     def quotient(self, x: Any, divisor: Any) -> Any | None:
+        if not x:
+            return self.zero
         (result,), remainder = self._over_rationals(x).div([self._over_rationals(divisor)])
         if remainder:
             return None

@@ -69,11 +69,6 @@ def _cleared(exponents: tuple[int, ...], indices: tuple[int, ...]) -> tuple[int,
 
 def _by_order(reader: Reader, x: Any, layout: Layout) -> dict[int, Any]:
     """Split a coefficient by the orders of the symbols in it."""
-    ordered = {
-        reader.ring.spec.index[s.name]: order for s, order in layout.orders.items() if s.name in reader.ring.spec.index
-    }
-    if not ordered:
-        return {0: x}
     for name, value in reader.meanings.items():
         if (found := value.free_symbols & layout.orders.keys()) and value not in layout.orders:
             raise unsupported(
@@ -81,6 +76,10 @@ def _by_order(reader: Reader, x: Any, layout: Layout) -> dict[int, Any]:
                 f"the ordered symbol {min(found, key=str)} stands inside it",
                 f"Give an order to a symbol that stands for {name} as a whole",
             )
+    index = reader.ring.spec.index
+    ordered = {index[s.name]: order for s, order in layout.orders.items() if s.name in index}
+    if not ordered:
+        return {0: x}
     for h, p in reader.ring.spec.reciprocals:
         if any(reader.ring.spec.index[g] in ordered for m, _ in p for g, _ in m):
             raise unsupported(
