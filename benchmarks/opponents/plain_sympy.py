@@ -2,8 +2,8 @@
 
     u'' + ε (u² − 1) u' + u = 0,    u = Σ εⁿ U_n(T_0, A, Ā),    d/dt = Σ εⁿ D_n,    D_nA and D_nĀ functions of A and Ā
 
-At level n everything known is written out and expanded, the terms are sorted by their harmonic, the first harmonic gives
-D_nA and the others give U_n.
+At level n everything known is written out and expanded, the terms are sorted by their harmonic; the first harmonic
+gives D_nA and the others give U_n.
 """
 
 from __future__ import annotations

@@ -1,0 +1,39 @@
+"""The problems that are timed."""
+
+from __future__ import annotations
+
+import sympy as sp
+
+import multiscale as ms
+
+__all__ = ["damped_duffing", "quadratic_and_cubic", "two_coupled", "van_der_pol"]
+
+t = sp.Symbol("t", real=True)
+eps, mu, omega, omega_1, omega_2 = sp.symbols("epsilon mu omega omega_1 omega_2", positive=True)
+alpha_2, alpha_3, a, b = sp.symbols("alpha_2 alpha_3 a b", real=True)
+u, u1, u2 = (sp.Function(name)(t) for name in ("u", "u1", "u2"))
+
+
+def van_der_pol() -> ms.Problem:
+    """u'' + ε (u² − 1) u' + u = 0."""
+    return ms.Problem(u.diff(t, 2) + eps * (u**2 - 1) * u.diff(t) + u, u, small=eps)
+
+
+def quadratic_and_cubic() -> ms.Problem:
+    """u'' + ω² u + 2 ε μ u' + ε α_2 u² + ε² α_3 u³ = 0, all four parameters symbolic."""
+    equation = u.diff(t, 2) + omega**2 * u + 2 * eps * mu * u.diff(t) + eps * alpha_2 * u**2 + eps**2 * alpha_3 * u**3
+    return ms.Problem(equation, u, small=eps)
+
+
+def two_coupled() -> ms.Problem:
+    """u_1'' + ω_1² u_1 + ε a u_1 u_2 = 0, u_2'' + ω_2² u_2 + ε b u_1² = 0, the frequencies without a relation."""
+    equations = [
+        u1.diff(t, 2) + omega_1**2 * u1 + eps * a * u1 * u2,
+        u2.diff(t, 2) + omega_2**2 * u2 + eps * b * u1**2,
+    ]
+    return ms.Problem(equations, [u1, u2], small=eps)
+
+
+def damped_duffing() -> ms.Problem:
+    """u'' + ω² u + 2 ε μ u' + ε α_3 u³ = 0."""
+    return ms.Problem(u.diff(t, 2) + omega**2 * u + 2 * eps * mu * u.diff(t) + eps * alpha_3 * u**3, u, small=eps)
