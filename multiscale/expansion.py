@@ -268,7 +268,7 @@ def expand(
     >>> u = sp.Function("u")(t)
     >>> problem = ms.Problem(u.diff(t, 2) + w0**2*u + eps*a2*u**2 + eps**2*a3*u**3, u, small=eps)
     >>> ms.expand(problem, order=2).frequency_corrections()
-    (omega_0, 0, -a**2*(10*alpha_2**2 - 9*alpha_3*omega_0**2)/(24*omega_0**3))
+    (omega_0, 0, a**2*(-10*alpha_2**2 + 9*alpha_3*omega_0**2)/(24*omega_0**3))
     """
     if not isinstance(problem, Problem):
         raise ProblemError(f"expand was given a {type(problem).__name__}: state a multiscale.Problem first")

@@ -56,23 +56,31 @@ class Writer:
             tuple((name, e - lowest.get(name, 0)) for name, e in m if e > lowest.get(name, 0)): c
             for m, c in rest.items()
         }
-        return [sp.Rational(content.numerator, content.denominator), self.monomial(common), *self._factors(rest)]
+        sign, factors = self._factors(rest)
+        content *= sign
+        if content < 0:
+            # A minus sign goes into the first factor that is a sum, which is how such fractions are usually written.
+            for k, (factor, power) in enumerate(factors):
+                if factor.is_Add and power % 2:
+                    factors[k] = (sp.Add(*(-term for term in factor.args)), power)
+                    content = -content
+                    break
+        return [sp.Rational(content.numerator, content.denominator), self.monomial(common), *(f**e for f, e in factors)]
 
-    def _factors(self, terms: Mapping[Monomial, Fraction]) -> list[sp.Expr]:
+    def _factors(self, terms: Mapping[Monomial, Fraction]) -> tuple[int, list[tuple[sp.Expr, int]]]:
+        """Sign and (factor, power) of a primitive polynomial without a common monomial."""
         names = sorted({name for m in terms for name, _ in m})
         if not names:
-            return []
-        if len(terms) > FACTOR_LIMIT or len(terms) == 1:
-            return [self.polynomial(terms.items())]
+            return 1, []
+        if len(terms) > FACTOR_LIMIT:
+            return 1, [(self.polynomial(terms.items()), 1)]
         ring = PolyRing(tuple(map(sp.Symbol, names)), ZZ, lex)
-        polynomial = ring.from_dict(
-            {tuple(dict(m).get(name, 0) for name in names): ZZ(c.numerator) for m, c in terms.items()}
-        )
-        content, factors = polynomial.factor_list()
-        result = [sp.Integer(int(content))]
+        table = {tuple(dict(m).get(name, 0) for name in names): ZZ(c.numerator) for m, c in terms.items()}
+        sign, factors = ring.from_dict(table).factor_list()
+        result = []
         for p, power in factors:
             named = [
                 (tuple((n, int(e)) for n, e in zip(names, m, strict=True) if e), Fraction(int(c))) for m, c in p.terms()
             ]
-            result.append(self.polynomial(named) ** power)
-        return result
+            result.append((self.polynomial(named), int(power)))
+        return int(sign), result

@@ -155,7 +155,7 @@ def test_on_level_sees_every_level_and_may_stop():
 def test_shift_of_a_quadratic_cubic_oscillator_is_one_fraction():
     correction = ms.expand(PROBLEMS["quadratic and cubic"], 2).frequency_corrections()[2]
     a = sp.Symbol("a", positive=True)
-    assert correction == -(a**2) * (10 * a2**2 - 9 * a3 * w**2) / (24 * w**3)
+    assert correction == a**2 * (9 * a3 * w**2 - 10 * a2**2) / (24 * w**3)
     assert not isinstance(correction, sp.Add)
 
 

@@ -6,17 +6,19 @@ are homogeneous: ε and the amplitude a enter as εa² alone, so that ε = 1 los
 
 from __future__ import annotations
 
+from fractions import Fraction
+
 import sympy as sp
 
 import multiscale as ms
-from published.rational_series import Series, in_terms_of, product, terms
+from .rational_series import Series, in_terms_of, product, terms
 
 
 def _in_square(expression: sp.Expr, a: sp.Symbol, count: int) -> Series:
     nothing = sp.Symbol("nothing")
     found = {i: c for (i, _), c in terms(expression, a, nothing).items()}
     assert not any(i % 2 for i in found), f"odd powers of {a} in {expression}"
-    return [found.get(2 * n, 0 * next(iter(found.values()))) for n in range(count)]
+    return [found.get(2 * n, Fraction(0)) for n in range(count)]
 
 
 def fundamental_frequency(expansion: ms.Expansion, count: int) -> Series:
@@ -42,5 +44,5 @@ def peak_frequency(expansion: ms.Expansion, count: int) -> Series:
     """ω as a series in s = εA², A the peak: s_peak(s) is formed from the motion at t = 0 and inverted."""
     (a,) = expansion.symbols.a
     peak = _in_square(sp.expand(_motion(expansion).subs(expansion.problem.time, 0) / a), a, count)
-    square = [0 * peak[0], *product(peak, peak)][:count]
+    square = [Fraction(0), *product(peak, peak)][:count]
     return in_terms_of(fundamental_frequency(expansion, count), square)

@@ -12,7 +12,7 @@ from typing import Any
 
 import mpmath
 
-from published.rational_series import Series, in_terms_of, product, taylor
+from .rational_series import Series, in_terms_of, product, taylor
 
 F = Fraction
 

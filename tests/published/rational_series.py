@@ -81,9 +81,9 @@ def taylor(function: Callable[[Any], Any], count: int, radius: str = "0.5") -> S
 
 def _rational(x: Any) -> Fraction:
     exact = Fraction(int(mpmath.nint(x * 2**300)), 2**300)
-    found = exact.limit_denominator(10**18)
-    # A number that is no such rational misses its best approximation by about 1e-36.
-    assert abs(found - exact) < Fraction(1, 10**55), f"{x} is not recognised as a rational"
+    found = exact.limit_denominator(10**22)
+    # A number that is no such rational misses its best approximation by about 1e-44.
+    assert abs(found - exact) < Fraction(1, 10**58), f"{x} is not recognised as a rational"
     return found
 
 

@@ -10,10 +10,10 @@ import pytest
 import sympy as sp
 
 import multiscale as ms
-from published import conservative, elliptic
-from published.lindstedt import periodic_orbit
-from published.rational_series import Series, taylor
-from published.rows import Row, over
+from . import conservative, elliptic
+from .lindstedt import periodic_orbit
+from .rational_series import Series, taylor
+from .rows import Row, over
 
 t = sp.Symbol("t", real=True)
 eps = sp.Symbol("epsilon", positive=True)

@@ -8,9 +8,9 @@ import pytest
 import sympy as sp
 
 import multiscale as ms
-from published.lindstedt import Orbit, periodic_orbit
-from published.rational_series import fractions
-from published.rows import Row, difference, over
+from .lindstedt import Orbit, periodic_orbit
+from .rational_series import fractions
+from .rows import Row, difference, over
 
 t = sp.Symbol("t", real=True)
 eps, w0 = sp.symbols("epsilon omega_0", positive=True)
