@@ -102,9 +102,8 @@ class Problem:
 
     def _canonical(self) -> Canonical:
         jets = {sp.Symbol(f"@{k}.{d}"): (k, d) for k in range(len(self.unknowns)) for d in (0, 1, 2)}
-        shown = {s: self.unknowns[k].diff(self.time, d) if d else self.unknowns[k] for s, (k, d) in jets.items()}
-        hide = {v: s for s, v in sorted(shown.items(), key=lambda item: -jets[item[0]][1])}
-        hidden = [x.xreplace({v: s for v, s in hide.items() if v.is_Derivative}).xreplace(hide) for x in self.equations]
+        shown = _jets(self.unknowns, self.time)
+        hidden = self._hidden()
         for x, given in zip(hidden, self.equations, strict=True):
             self._check_hidden(x, given)
         for s, u in zip((s for s, (_, d) in jets.items() if d == 0), self.unknowns, strict=True):
@@ -114,6 +113,12 @@ class Problem:
         unknown_orders = tuple(orders.pop(u, 0) for u in self.unknowns)
         layout = Layout(jets, self._given_small, orders, unknown_orders)
         return canonical_form(hidden, layout, shown, list(self.unknowns))
+
+    def _hidden(self) -> list[sp.Expr]:
+        """The equations with a symbol for each unknown and derivative."""
+        names = {x: s for s, x in _jets(self.unknowns, self.time).items()}
+        derivatives = {x: s for x, s in names.items() if x.is_Derivative}
+        return [x.xreplace(derivatives).xreplace(names) for x in self.equations]
 
     def _check_hidden(self, x: sp.Expr, given: sp.Expr) -> None:
         from multiscale.problem.reading import unsupported
@@ -138,13 +143,7 @@ class Problem:
             )
 
     def _shown(self, x: sp.Expr) -> sp.Expr:
-        return x.subs(
-            {
-                sp.Symbol(f"@{k}.{d}"): u.diff(self.time, d) if d else u
-                for k, u in enumerate(self.unknowns)
-                for d in (0, 1, 2)
-            }
-        )
+        return x.subs(_jets(self.unknowns, self.time))
 
     def _key(self) -> tuple[Any, ...]:
         ordering = None if self.ordering is None else tuple(sorted(self.ordering.items(), key=str))
@@ -156,6 +155,15 @@ class Problem:
     def __hash__(self) -> int:
         return hash(self._key())
 
+    def __reduce__(self) -> tuple[Any, ...]:
+        # Undefined functions do not pickle with every SymPy, so they travel by name and the jets stand in for them.
+        functions = tuple((u.func.__name__, dict(getattr(u.func, "_kwargs", {}))) for u in self.unknowns)
+        options = {"small": self._given_small, "time": self.time}
+        if self.ordering is not None:
+            indexed = {self.unknowns.index(x) if x in self.unknowns else x: q for x, q in self.ordering.items()}
+            options["ordering"] = indexed
+        return _rebuilt, (self._hidden(), functions, options)
+
     def __repr__(self) -> str:
         names = ", ".join(str(u) for u in self.unknowns)
         text = f"Problem in {names}: " + "; ".join(f"{x} = 0" for x in self.equations)
@@ -164,6 +172,22 @@ class Problem:
     def _repr_latex_(self) -> str:
         rows = r" \\ ".join(f"{sp.latex(x)} &= 0" for x in self.equations)
         return rf"$\displaystyle \begin{{aligned}}{rows}\end{{aligned}}$"
+
+
+def _jets(unknowns: Sequence[sp.Expr], time: sp.Symbol) -> dict[sp.Symbol, sp.Expr]:
+    """{symbol that stands in for it: unknown or derivative}."""
+    return {sp.Symbol(f"@{k}.{d}"): u.diff(time, d) if d else u for k, u in enumerate(unknowns) for d in (0, 1, 2)}
+
+
+def _rebuilt(
+    hidden: list[sp.Expr], functions: Sequence[tuple[str, dict[str, Any]]], options: dict[str, Any]
+) -> Problem:
+    unknowns = [sp.Function(name, **assumptions)(options["time"]) for name, assumptions in functions]
+    if "ordering" in options:
+        named = {unknowns[x] if isinstance(x, int) else x: q for x, q in options["ordering"].items()}
+        options = options | {"ordering": named}
+    jets = _jets(unknowns, options["time"])
+    return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
 
 
 def _unknowns(given: Any) -> tuple[sp.Expr, ...]:

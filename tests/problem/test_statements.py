@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import pickle
+
 import pytest
 import sympy as sp
 
@@ -160,3 +162,17 @@ def test_assumptions_are_said():
     assert any("assumed to be positive" in remark for remark in result.warnings)
     pi = ms.expand(small([u.diff(t, 2) + u + eps * v**2, v.diff(t, 2) + sp.pi**2 * v + eps * u**2], [u, v]), 2)
     assert any("pi is assumed to be rationally independent" in remark for remark in pi.warnings)
+
+
+PICKLED = {
+    "small": lambda: small([u.diff(t, 2) + w**2 * u + eps * v * u.diff(t), v.diff(t, 2) + v + eps * u**2], [u, v]),
+    "ordering": lambda: ms.Problem(u.diff(t, 2) + u + mu * u.diff(t) + u**3, u, ordering={u: 1, mu: 2}),
+    "assumptions": lambda: small(x_real.diff(t, 2) + x_real + eps * x_real**3, x_real),
+}
+x_real = sp.Function("x", real=True)(t)
+
+
+@pytest.mark.parametrize("name", PICKLED)
+def test_problems_pickle(name):
+    problem = PICKLED[name]()
+    assert pickle.loads(pickle.dumps(problem)) == problem

@@ -1,7 +1,7 @@
 """Views of the expansion of one symmetric conservative oscillator, as exact series in the square of an amplitude.
 
-With the phase zero such an oscillator is at its peak at t = 0, so the peak is the sum of its cosine coefficients. Results
-are homogeneous: ε and the amplitude a enter as εa² alone, so that ε = 1 loses nothing.
+With the phase zero such an oscillator is at its peak at t = 0, so the peak is the sum of its cosine coefficients.
+Results are homogeneous: ε and the amplitude a enter as εa² alone, so that ε = 1 loses nothing.
 """
 
 from __future__ import annotations
@@ -11,6 +11,7 @@ from fractions import Fraction
 import sympy as sp
 
 import multiscale as ms
+
 from .rational_series import Series, in_terms_of, product, terms
 
 

@@ -5,8 +5,8 @@ For u'' + ω_0² u + f = 0 with f polynomial in u, u', u'' and ε the time is st
     u = x_0(θ) + ε x_1(θ) + …,   ω = ω_0 + ε ω_1 + …,   x_0 = a_0 cos θ,
 
 and each level determines ω_n from cos θ and, for an isolated orbit, the amplitude correction a_{n−1} from sin θ.
-The fundamental of u is exactly (a_0 + ε a_1 + …) cos θ. A trigonometric polynomial is {(k, j): coefficient of iʲ e^{ikθ}},
-j = 0 or 1, so that all coefficients are rational.
+The fundamental of u is exactly (a_0 + ε a_1 + …) cos θ. A trigonometric polynomial is {(k, j): coefficient of
+iʲ e^{ikθ}}, j = 0 or 1, so that all coefficients are rational.
 """
 
 from __future__ import annotations
@@ -92,7 +92,7 @@ def _residual(n: int, fields: Sequence[Trig], frequency: Sequence[Fraction], squ
 def periodic_orbit(
     force: Force, order: int, *, natural: Fraction | int = 1, amplitude: Fraction | int = 1, isolated: bool = False
 ) -> Orbit:
-    """The orbit to ε^order; when isolated, `amplitude` is a_0 and a_1 … a_{order−1} are found, else it is prescribed."""
+    """The orbit to ε^order with a_0 = `amplitude`: isolated, a_1 … a_{order−1} are found; otherwise they are zero."""
     w0, a0 = Fraction(natural), Fraction(amplitude)
     fields: list[Trig] = [cosine(1, a0)]
     frequency = [w0]

@@ -1,4 +1,4 @@
-"""Power series with exact rational coefficients, as lists x[0] + x[1] s + x[2] s² + … cut after a fixed number of terms.
+"""Power series with exact rational coefficients: lists x[0] + x[1] s + x[2] s² + …, cut after a fixed number of terms.
 
 The coefficients come from integers, from SymPy polynomials, or from an analytic function by Cauchy's formula
 c_n = (1/2πi) ∮ f(s) s^{−n−1} ds, evaluated by the trapezoidal rule (geometrically convergent on a circle) with so many

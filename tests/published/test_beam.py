@@ -1,8 +1,9 @@
 """Simply supported beam with immovable ends: q'' + q + q³/4 = 0, q the centre amplitude over the radius of gyration.
 
-The published table holds numbers of four decimals at amplitudes 1, 2, 3. The series in s = A²/4 converges for s < 1 only,
-so what the library can give there is: at A = 1 the value by plain summation, at A = 2 and 3 by the Padé approximant with
-the same Taylor coefficients; plain summation fails at A = 3 (s = 9/4), and a test says so.
+The published table holds numbers of four decimals at amplitudes 1, 2, 3. The series in s = A²/4 converges for s < 1
+only, which decides what the library can give there: at A = 1 the value by plain summation; at A = 2, on the circle of
+convergence, and A = 3, far outside, by the Padé approximant with the same Taylor coefficients. That plain summation
+fails at 2 and 3 is a test too.
 """
 
 from __future__ import annotations

@@ -10,6 +10,7 @@ import pytest
 import sympy as sp
 
 import multiscale as ms
+
 from . import conservative, elliptic
 from .lindstedt import periodic_orbit
 from .rational_series import Series, taylor

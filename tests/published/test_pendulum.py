@@ -1,7 +1,7 @@
 """θ'' + sin θ = 0, the sine as its Taylor polynomial: the frequency in the peak and in the fundamental amplitude.
 
-Two statements of one problem: θ = √ε u with the powers of ε written, and θ itself small by `ordering`. The terms through
-θ⁷ decide the frequency through the sixth power of the amplitude.
+Two statements of one problem: θ = √ε u with the powers of ε written, and θ itself small by `ordering`. The terms
+through θ⁷ decide the frequency through the sixth power of the amplitude.
 """
 
 from __future__ import annotations

@@ -8,6 +8,7 @@ import pytest
 import sympy as sp
 
 import multiscale as ms
+
 from .lindstedt import Orbit, periodic_orbit
 from .rational_series import fractions
 from .rows import Row, difference, over

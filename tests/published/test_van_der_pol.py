@@ -28,7 +28,7 @@ PEAK = (F(2), 0, F(1, 96), 0, F(-1033, 552960))
 
 ANDERSEN_GEER = (
     "Andersen & Geer, Power series expansions for the frequency and period of the limit cycle of the van der Pol "
-    "equation, SIAM Journal on Applied Mathematics 42 (1982) 678"
+    "equation, SIAM Journal on Applied Mathematics 42 (1982) 678, from memory, confirmed by computation"
 )
 CLASSICAL = "Kevorkian & Cole, Perturbation Methods in Applied Mathematics, 1981, from memory, confirmed by computation"
 
@@ -55,12 +55,7 @@ def extremum(derivatives: list[Series]) -> Series:
     count = len(derivatives[0])
 
     def taylor(shift: int):
-        return {
-            (j, n): c / math.factorial(j)
-            for j in range(count)
-            for n, c in enumerate(derivatives[j + shift])
-            if n + j <= count
-        }
+        return {(j, n): c / math.factorial(j) for j in range(count) for n, c in enumerate(derivatives[j + shift])}
 
     return along(taylor(0), root(taylor(1), 0, count))
 
@@ -98,8 +93,8 @@ ROWS = [
         order=5,
         quantity=cycle_amplitude,
         value=lambda _: AMPLITUDE,
-        source=f"{ANDERSEN_GEER}; fundamental by Lindstedt series",
-        confirmed="Lindstedt series",
+        source="Lindstedt series in exact rational arithmetic",
+        confirmed="Lindstedt series in this module",
     ),
     Row(
         name="peak of the limit cycle",
@@ -107,7 +102,7 @@ ROWS = [
         order=5,
         quantity=lambda e: extremum(cycle_derivatives(e, 5)),
         value=lambda _: PEAK,
-        source=f"{ANDERSEN_GEER}; from memory, confirmed by computation",
+        source=ANDERSEN_GEER,
         confirmed="Lindstedt series; integration, error O(ε⁶)",
     ),
 ]
@@ -181,8 +176,8 @@ def test_shape_agrees_with_lindstedt(high: ms.Expansion, orbit: Orbit, wave, coe
     assert found == coefficients(orbit, k)[:HIGH_ORDER]
 
 
-def vanderpol(small: float, control: float = 1.0):
-    return lambda _, y: [y[1], -control * small * (y[0] ** 2 - 1) * y[1] - y[0]]
+def vanderpol(small: float):
+    return lambda _, y: [y[1], -small * (y[0] ** 2 - 1) * y[1] - y[0]]
 
 
 def cycle(small: float) -> tuple[float, float]:
@@ -195,7 +190,7 @@ def cycle(small: float) -> tuple[float, float]:
     return 2 * math.pi * (len(times) - 1) / (times[-1] - times[0]), float(heights[late].mean())
 
 
-STRENGTHS = (0.6, 0.8, 1.0)
+STRENGTHS = (0.4, 0.5, 0.6)
 
 
 @pytest.fixture(scope="module")
@@ -207,7 +202,6 @@ def cycles() -> list[tuple[float, float]]:
     ("which", "published", "order", "bound"),
     [
         pytest.param(0, FREQUENCY, 10, 1e-4, id="frequency"),
-        pytest.param(0, FREQUENCY[:5], 6, 1e-4, id="frequency through order 4"),
         pytest.param(1, PEAK, 6, 1e-3, id="peak"),
     ],
 )
@@ -216,7 +210,6 @@ def test_integration_gives_the_published_cycle(cycles, which: int, published, or
         abs(found[which] - sum(float(c) * small**n for n, c in enumerate(published)))
         for small, found in zip(STRENGTHS, cycles, strict=True)
     ]
-    print(errors, slope(STRENGTHS, errors))
     assert slope(STRENGTHS, errors) > order - 0.5
     assert errors[-1] < bound
 
@@ -229,15 +222,13 @@ def test_a_changed_coefficient_is_seen_by_integration(cycles, which: int, publis
         abs(found[which] - sum(c * small**n for n, c in enumerate(changed)))
         for small, found in zip(STRENGTHS, cycles, strict=True)
     ]
-    print(errors, slope(STRENGTHS, errors))
     assert slope(STRENGTHS, errors) < index + 1.5
 
 
-@pytest.mark.slow
 def test_nearest_singularities_of_the_frequency():
-    """ω(ε²) is singular at modulus about 3.42 (ibid.): the nearest poles of the Padé approximant of ω'''/ω''.
+    """As a function of ε², ω is singular at modulus about 3.42 (Andersen & Geer 1982).
 
-    For a branch point the logarithmic derivative has a pole, which a rational function can represent.
+    At a branch point ω'''/ω'' has a pole, which a Padé approximant can represent.
     """
     expansion = ms.expand(PROBLEM, 32)
     (a,), (beta,) = expansion.symbols.a, expansion.symbols.beta
@@ -252,11 +243,17 @@ def test_nearest_singularities_of_the_frequency():
         ratio: list[mpmath.mpf] = []
         for n, c in enumerate(third):
             ratio.append((c - mpmath.fsum(ratio[k] * second[n - k] for k in range(n))) / second[0])
-        poles = mpmath.polyroots(mpmath.pade(ratio[:13], 6, 6)[1][::-1], maxsteps=200, extraprec=200)
-    nearest = sorted(poles, key=abs)[:2]
-    print(nearest, [abs(z) for z in nearest], [mpmath.arg(z) for z in nearest])
-    assert [float(abs(z)) for z in nearest] == pytest.approx([3.42, 3.42], rel=0.01)
-    assert sorted(float(mpmath.arg(z)) for z in nearest) == pytest.approx([-1.792, 1.792], abs=0.02)
+        above, below = (x[::-1] for x in mpmath.pade(ratio[:13], 6, 6))
+        poles = mpmath.polyroots(below, maxsteps=200, extraprec=200)
+        residues = [mpmath.polyval(above, z) / mpmath.polyval(below, z, derivative=True)[1] for z in poles]
+    # The residue is the exponent p of ω'' ~ (ε² − z)^p: positive at a zero of ω'', which is no singularity of ω.
+    singular = [(z, p) for z, p in zip(poles, residues, strict=True) if p.real < 0]
+    (first, p), (second, _) = sorted(singular, key=lambda pair: abs(pair[0]))[:2]
+    assert abs(first - mpmath.conj(second)) < mpmath.mpf(10) ** -12
+    assert float(abs(first)) == pytest.approx(3.42, rel=0.005)
+    assert abs(float(mpmath.arg(first))) == pytest.approx(1.792, abs=0.01)
+    # A square root in ω.
+    assert float(p.real) == pytest.approx(-1.5, abs=0.05)
 
 
 TRANSIENT = 2 * alpha / sp.sqrt(alpha**2 + (4 - alpha**2) * sp.exp(-eps * t))
@@ -271,7 +268,7 @@ def test_closed_form_solves_the_first_order_flow():
     assert flow[beta] == 0
 
 
-SMALL = (0.08, 0.04, 0.02)
+SMALL = (0.04, 0.02, 0.01)
 
 
 def transient_errors(start: float, decay: float = 1.0) -> list[float]:
@@ -285,16 +282,14 @@ def transient_errors(start: float, decay: float = 1.0) -> list[float]:
     return errors
 
 
-@pytest.mark.parametrize("start", [0.2, 1.0, 3.5])
-def test_transient_error_is_of_first_order(start: float):
+@pytest.mark.parametrize(("start", "bound"), [(0.2, 0.5), (1.0, 1.0), (3.0, 8.0)])
+def test_transient_error_is_of_first_order(start: float, bound: float):
     errors = transient_errors(start)
-    print(errors, slope(SMALL, errors))
     assert slope(SMALL, errors) > 0.9
-    assert errors[-1] < 4 * SMALL[-1]
+    assert errors[-1] < bound * SMALL[-1]
 
 
-@pytest.mark.parametrize("start", [0.2, 1.0, 3.5])
+@pytest.mark.parametrize("start", [0.2, 1.0, 3.0])
 def test_a_changed_decay_is_seen_by_integration(start: float):
-    errors = transient_errors(start, decay=0.8)
-    print(errors, slope(SMALL, errors))
+    errors = transient_errors(start, decay=0.6)
     assert slope(SMALL, errors) < 0.5
