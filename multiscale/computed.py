@@ -1,8 +1,8 @@
 """The computed levels behind an expansion, and their finished (representation-free) form, made when asked for.
 
 `Computation` joins a canonical problem to a hierarchy: it builds the ring and the rooms that the hierarchy asks, takes
-levels further, and hands out finished coefficients: polynomials in the amplitudes z_a, z̄_a (exponents pairwise, in the
-order of the modes) with reduced coefficients, the same for every representation.
+levels further, and hands out finished coefficients: polynomials in the amplitudes z_a, z̄_a and the phasors e_l,
+ē_l (exponents pairwise, modes first) with reduced coefficients, the same for every representation.
 """
 
 from __future__ import annotations
@@ -16,6 +16,7 @@ from multiscale.algebra.derivation import Derivation
 from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Coefficient, finish
 from multiscale.algebra.ring import Exponents, make_ring
+from multiscale.clock import Clock
 from multiscale.forces.polynomial import PolynomialForce
 from multiscale.hierarchy import Hierarchy, next_level, start
 from multiscale.linear_part import Rate
@@ -59,9 +60,8 @@ class Computation:
     def rate(self, exponents: Exponents) -> Rate:
         return self.hierarchy.rates.rate(exponents)
 
-    def index(self, mode: int) -> int:
-        """The generator of the amplitude of a mode."""
-        return 1 + len(self.canonical.spec.roots) + 2 * mode
+    def _amplitude(self, mode: int) -> str:
+        return self.canonical.spec.pairs[mode][0]
 
     @cached_property
     def _finish(self) -> Any:
@@ -70,7 +70,7 @@ class Computation:
         @cache
         def finished(kind: str, level: int, index: int) -> Finished:
             if kind == "change":
-                return finish(ring, tower.time[level].images.get(self.index(index), ring.zero))
+                return finish(ring, tower.time[level].images.get(self._amplitude(index), ring.zero))
             return finish(ring, tower.jets[int(kind)][level][index])
 
         return finished
@@ -90,13 +90,12 @@ class Computation:
         """
         linear, tower = self.hierarchy.linear_part, self.hierarchy.tower
         ring = tower.ring
-        first = self.index(0)
-        indices = tuple(range(first, first + 2 * self.modes))
         total = ring.zero
-        for rate, part in ring.split(tower.jets[0][level][unknown], indices, self.hierarchy.rates).items():
+        field = tower.jets[0][level][unknown]
+        for rate, part in ring.split(field, ring.spec.pair_indices, self.hierarchy.rates).items():
             acted = linear.act({unknown: part}, rate)[unknown]
             total = total + (acted + ring.conjugate(acted) if any(rate) else acted)
-        changes = {a: x for a in range(self.modes) if (x := tower.time[level].images.get(self.index(a)))}
+        changes = {a: x for a in range(self.modes) if (x := tower.time[level].images.get(self._amplitude(a)))}
         secular = linear.bracket(changes).get(unknown, ring.zero)
         secular = secular + ring.conjugate(secular)
         return finish(ring, ring.normal(total + secular)), finish(ring, secular)
@@ -106,7 +105,7 @@ class Computation:
         ring = tower.ring
         fields = tuple(tuple(freeze(ring.write(x)) for x in level) for level in tower.jets[0])
         changes = tuple(
-            tuple(freeze(ring.write(d.images.get(self.index(a), ring.zero))) for a in range(self.modes))
+            tuple(freeze(ring.write(d.images.get(self._amplitude(a), ring.zero))) for a in range(self.modes))
             for d in tower.time[1:]
         )
         return Snapshot(ring.spec.reciprocals, fields, changes)
@@ -114,29 +113,28 @@ class Computation:
 
 def begin(canonical: Canonical, representation: str, reciprocals: Iterable[tuple[str, Frozen]] = ()) -> Computation:
     """Level 0 in a ring of the given representation."""
-    ring = make_ring(
-        canonical.spec.with_reciprocals([r for r in reciprocals if r not in canonical.spec.reciprocals]), representation
-    )
-    bases = canonical.bases
+    more = [r for r in reciprocals if r not in canonical.spec.reciprocals]
+    ring = make_ring(canonical.spec.with_reciprocals(more), representation)
+    bases, drives = canonical.bases, canonical.drives
     linear = Oscillators(bases.rates, [dict(b) for b in bases.values], bases.unit, ring)
-    force = PolynomialForce(canonical.force, ring)
-    first = 1 + len(ring.spec.roots)
-    i = ring.generators[0]
-    images = {
-        first + 2 * a: ring.normal(i * linear.value(m.rate) * ring.generators[first + 2 * a])
-        for a, m in enumerate(linear.modes)
+    turning = [*bases.rates, *(d.rate for d in drives)]
+    frequencies = {
+        pair[0]: freeze(ring.write(linear.value(rate))) for pair, rate in zip(canonical.spec.pairs, turning, strict=True)
     }
-    return Computation(canonical, start(ring, linear, force, Derivation(images)))
+    detunings = {d.generator: d.detunings for d in drives}
+    clock = Clock(ring, frequencies, [d.rate for d in drives], detunings, dict(canonical.slow))
+    return Computation(canonical, start(ring, linear, PolynomialForce(canonical.force, ring), clock))
 
 
 def restore(canonical: Canonical, snapshot: Snapshot, representation: str = "auto") -> Computation:
     """The computation of a snapshot; time derivatives are recomputed from the fields."""
     computation = begin(canonical, representation, snapshot.reciprocals)
     for field, changes in zip(snapshot.fields[1:], snapshot.changes, strict=True):
-        tower: Tower = computation.hierarchy.tower
-        ring = tower.ring
-        slow = Derivation({computation.index(a): ring.read(dict(x)) for a, x in enumerate(changes)})
-        displacement = tuple(ring.read(dict(x)) for x in field)
-        tower = tower.completed(tower.pending(), displacement, slow)
-        computation = replace(computation, hierarchy=replace(computation.hierarchy, tower=tower))
+        hierarchy = computation.hierarchy
+        tower: Tower = hierarchy.tower
+        known = hierarchy.clock.at_level(tower.height)
+        slow = {canonical.spec.pairs[a][0]: tower.ring.read(dict(x)) for a, x in enumerate(changes)}
+        displacement = tuple(tower.ring.read(dict(x)) for x in field)
+        tower = tower.completed(tower.pending(known), known, displacement, Derivation(slow))
+        computation = replace(computation, hierarchy=replace(hierarchy, tower=tower))
     return computation

@@ -1,6 +1,6 @@
 """One level of the hierarchy from the levels below.
 
-    R_n = [εⁿ](L u − f)   with U_n and D_nA left out, sorted by rate;
+    R_n = [εⁿ](L u − f)   with U_n and D_nA left out (D_n of drives and slow parameters kept), sorted by rate;
     at the rate of a mode the solvability condition gives D_nA, at every other rate U_n = −L_0(ir)^{-1} R_n|_r.
 
 Picking the monomials of one rate is the Fourier projection (ω/2π)∫ R e^{−iωT_0} dT_0, done exactly. Fields are real, so
@@ -11,11 +11,12 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from typing import Any
+from typing import Any, TypeAlias
 
 from multiscale.algebra.derivation import Derivation
 from multiscale.algebra.reciprocals import missing
 from multiscale.algebra.ring import Exponents, Ring
+from multiscale.clock import Clock
 from multiscale.forces import Force
 from multiscale.linear_part import LinearPart, Rate
 from multiscale.tower import Field, Tower
@@ -23,13 +24,16 @@ from multiscale.tower import Field, Tower
 __all__ = ["Hierarchy", "RateTable", "next_level", "start"]
 
 
+Parts: TypeAlias = dict[Rate, dict[int, Any]]
+
+
 class RateTable(dict[Exponents, "Rate | None"]):
     """Rate of a monomial from its exponents in the paired generators; None for the half that conjugation supplies."""
 
-    def __init__(self, rates: Sequence[Rate]) -> None:
+    def __init__(self, modes: Sequence[Rate], drives: Sequence[Rate]) -> None:
         super().__init__()
-        self._rates = tuple(rates)
-        self._own = frozenset(self._rates)
+        self._rates = (*modes, *drives)
+        self._own = frozenset(modes)
 
     def rate(self, exponents: Exponents) -> Rate:
         """Σ (e_k − ē_k) rate_k."""
@@ -48,75 +52,90 @@ class RateTable(dict[Exponents, "Rate | None"]):
 
 @dataclass(frozen=True)
 class Hierarchy:
-    """What a level is computed from, and the levels so far. Nothing in it is changed by `next_level`."""
+    """What a level is computed from, and the levels so far. Nothing in it is changed by `next_level`.
+
+    `met` are the (equation, rate) pairs that some level solved for: what its divisors come from.
+    """
 
     linear_part: LinearPart
     force: Force
+    clock: Clock
     rates: RateTable
     tower: Tower
+    met: frozenset[tuple[int, Rate]] = frozenset()
 
     def in_ring(self, ring: Ring) -> Hierarchy:
         return replace(
             self,
             linear_part=self.linear_part.in_ring(ring),
             force=self.force.in_ring(ring),
+            clock=self.clock.in_ring(ring),
             tower=self.tower.lifted(ring),
         )
 
 
-def start(ring: Ring, linear_part: LinearPart, force: Force, fast: Derivation) -> Hierarchy:
-    """Level 0: U_0 = Σ φ_a z_a + conjugate, D_0 z_a = iω_a z_a."""
-    first = 1 + len(ring.spec.roots)
-    displacement = []
+def start(ring: Ring, linear_part: LinearPart, force: Force, clock: Clock) -> Hierarchy:
+    """Level 0: U_0 = Σ φ_a z_a + conjugate, and the linear response to drives of order ε⁰; D_0 z_a = iω_a z_a."""
+    motion = []
     for k in range(len(linear_part.modes[0].shape)):
         u = ring.zero
         for a, mode in enumerate(linear_part.modes):
             if mode.shape[k]:
-                u = u + ring.constant(mode.shape[k]) * ring.generators[first + 2 * a]
-        displacement.append(u + ring.conjugate(u))
-    rates = RateTable([mode.rate for mode in linear_part.modes])
-    return Hierarchy(linear_part, force, rates, Tower.start(ring, fast, tuple(displacement)))
+                u = u + ring.constant(mode.shape[k]) * ring.generators[ring.spec.first_pair + 2 * a]
+        motion.append(u + ring.conjugate(u))
+    rates = RateTable([mode.rate for mode in linear_part.modes], clock.rates)
+    nothing = Tower.start(ring, clock.fast(), tuple(ring.zero for _ in motion))
+    forcing = force.at_level(0, nothing)
+    parts = _sorted_by_rate(ring, tuple(-f for f in forcing), rates)
+    ring, hierarchy, parts = _with_divisors(Hierarchy(linear_part, force, clock, rates, nothing), parts)
+    response, _ = _solved(ring, hierarchy.linear_part, parts)
+    displacement = tuple(ring.lift(u) + r for u, r in zip(motion, response, strict=True))
+    return replace(hierarchy, tower=Tower.start(ring, hierarchy.clock.fast(), displacement))
 
 
-def _sorted_by_rate(ring: Ring, residual: Field, rates: RateTable) -> dict[Rate, dict[int, Any]]:
-    first = 1 + len(ring.spec.roots)
-    indices = tuple(range(first, first + 2 * len(ring.spec.pairs)))
-    parts: dict[Rate, dict[int, Any]] = {}
+def _sorted_by_rate(ring: Ring, residual: Field, rates: RateTable) -> Parts:
+    parts: Parts = {}
     for k, x in enumerate(residual):
-        for rate, part in ring.split(x, indices, rates).items():
+        for rate, part in ring.split(x, ring.spec.pair_indices, rates).items():
             parts.setdefault(rate, {})[k] = part
     return parts
+
+
+def _with_divisors(hierarchy: Hierarchy, parts: Parts) -> tuple[Ring, Hierarchy, Parts]:
+    """Everything lifted to a ring that has the reciprocals which these parts need."""
+    pairs = [(k, rate) for rate, part in parts.items() for k in part]
+    hierarchy = replace(hierarchy, met=hierarchy.met.union(pairs))
+    needed = missing(hierarchy.tower.ring, hierarchy.linear_part.divisors(pairs))
+    if not needed:
+        return hierarchy.tower.ring, hierarchy, parts
+    ring = hierarchy.tower.ring.extended(needed)
+    return ring, hierarchy.in_ring(ring), {r: {k: ring.lift(x) for k, x in part.items()} for r, part in parts.items()}
 
 
 def next_level(hierarchy: Hierarchy) -> Hierarchy:
     """The hierarchy with one more level."""
     tower = hierarchy.tower
-    pending = tower.pending()
+    known = hierarchy.clock.at_level(tower.height)
+    pending = tower.pending(known)
     forcing = hierarchy.force.at_level(tower.height, tower)
-    residual = [tower.ring.normal(x - f) for x, f in zip(hierarchy.linear_part.apply(pending), forcing, strict=True)]
-    parts = _sorted_by_rate(tower.ring, tuple(residual), hierarchy.rates)
-    needed = missing(
-        tower.ring, hierarchy.linear_part.divisors((k, rate) for rate, part in parts.items() for k in part)
-    )
-    if needed:
-        ring = tower.ring.extended(needed)
-        hierarchy = hierarchy.in_ring(ring)
-        tower = hierarchy.tower
-        pending = tuple(tuple(ring.lift(x) for x in field) for field in pending)  # type: ignore[assignment]
-        parts = {rate: {k: ring.lift(x) for k, x in part.items()} for rate, part in parts.items()}
-    displacement, slow = _solved(tower.ring, hierarchy.linear_part, parts)
-    return replace(hierarchy, tower=tower.completed(pending, displacement, slow))
+    applied = hierarchy.linear_part.apply(pending)
+    residual = tuple(tower.ring.normal(x - f) for x, f in zip(applied, forcing, strict=True))
+    ring, hierarchy, parts = _with_divisors(hierarchy, _sorted_by_rate(tower.ring, residual, hierarchy.rates))
+    if ring is not tower.ring:
+        pending = tuple(ring.lift(x) for x in pending[0]), tuple(ring.lift(x) for x in pending[1])
+        known = hierarchy.clock.at_level(tower.height)
+    displacement, slow = _solved(ring, hierarchy.linear_part, parts)
+    return replace(hierarchy, tower=hierarchy.tower.completed(pending, known, displacement, slow))
 
 
-def _solved(ring: Ring, linear_part: LinearPart, parts: dict[Rate, dict[int, Any]]) -> tuple[Field, Derivation]:
-    """(U_n, D_n) from the residual sorted by rate."""
+def _solved(ring: Ring, linear_part: LinearPart, parts: Parts) -> tuple[Field, Derivation]:
+    """(U_n, the D_nA) from the residual sorted by rate."""
     size = len(linear_part.modes[0].shape)
     upper, constant = [ring.zero] * size, [ring.zero] * size
-    first = 1 + len(ring.spec.roots)
-    images: dict[int, Any] = {}
+    images: dict[str, Any] = {}
     for rate, part in parts.items():
         for a, change in linear_part.project(part, rate).items():
-            images[first + 2 * a] = change
+            images[ring.spec.pairs[a][0]] = change
         target = upper if any(rate) else constant
         for k, x in linear_part.solve(part, rate).items():
             target[k] = target[k] + x

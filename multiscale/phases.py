@@ -7,7 +7,7 @@ phases γ_i = G_i·β, and modes chosen to complete it keep their own, cyclic, p
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from itertools import combinations
 
@@ -15,7 +15,7 @@ import sympy as sp
 from sympy.polys.domains import ZZ
 from sympy.polys.matrices import DomainMatrix
 
-__all__ = ["PhaseBasis", "phase_basis"]
+__all__ = ["PhaseBasis", "lattice_basis", "phase_basis"]
 
 Vector = tuple[int, ...]
 
@@ -83,3 +83,38 @@ def phase_basis(found: Iterable[Vector], size: int) -> PhaseBasis:
         if matrix[:, [j for j in range(size) if j not in cyclic]].det()
     )
     return PhaseBasis(tuple(oriented), next(minors))
+
+
+def lattice_basis(rows: Sequence[Vector]) -> tuple[list[Vector], list[Vector]]:
+    """(basis, coordinates): a Z-basis of the lattice that `rows` span, and each row in it.
+
+    By unimodular row operations to echelon form; a basis vector is oriented so that its first entry is positive.
+    """
+    basis = [list(row) for row in rows]
+    done = 0
+    for column in range(len(rows[0]) if rows else 0):
+        while len(active := [r for r in basis[done:] if r[column]]) > 1:
+            pivot = min(active, key=lambda r: abs(r[column]))
+            for r in active:
+                if r is not pivot:
+                    factor = r[column] // pivot[column]
+                    r[:] = [x - factor * y for x, y in zip(r, pivot, strict=True)]
+        if active:
+            place = basis.index(active[0], done)
+            basis[done], basis[place] = basis[place], basis[done]
+            if basis[done][column] < 0:
+                basis[done] = [-x for x in basis[done]]
+            done += 1
+    found = [tuple(row) for row in basis[:done]]
+    return found, [_coordinates(found, row) for row in rows]
+
+
+def _coordinates(basis: Sequence[Vector], row: Vector) -> Vector:
+    """The integers n with Σ n_i basis_i = row, for a basis in echelon form."""
+    numbers, rest = [], list(row)
+    for vector in basis:
+        column = next(k for k, x in enumerate(vector) if x)
+        n = rest[column] // vector[column]
+        numbers.append(n)
+        rest = [x - n * y for x, y in zip(rest, vector, strict=True)]
+    return tuple(numbers)

@@ -4,8 +4,8 @@
 
     V_n = Σ_{k=0}^{n} D_k U_{n-k},      W_n = Σ_{k=0}^{n} D_k V_{n-k}
 
-At level n the field U_n and the D_nA are unknown. `pending` gives V_n and W_n with both left out; `completed` adds what
-they contribute once they are known. A tower is never changed: `completed` and `lifted` return new ones. The products
+At level n the field U_n and the D_nA are unknown, while D_n of drives and slow parameters is known. `pending` gives V_n
+and W_n with the unknowns left out; `completed` adds what they contribute once they are known. A tower is never changed: `completed` and `lifted` return new ones. The products
 are a memo (their values follow from the fields), so towers that grow from each other share it.
 """
 
@@ -51,18 +51,22 @@ class Tower:
         unknown, order = jet
         return [level[unknown] for level in self.jets[order]]
 
-    def pending(self) -> tuple[Field, Field]:
-        """(V_n, W_n) of the level n to come, without U_n and without D_n."""
+    def pending(self, known: Derivation) -> tuple[Field, Field]:
+        """(V_n, W_n) of the level n to come, without U_n and with only the known part of D_n."""
         ring, n = self.ring, self.height
         velocity, acceleration = [], []
         for k in range(len(self.jets[0][0])):
             v = convolve(ring, self.time, self.component((k, 0)), n)
+            w = convolve(ring, self.time, self.component((k, 1)), n)
+            if known:
+                v = v + known.of_real(ring, self.jets[0][0][k])
+                w = w + known.of_real(ring, self.jets[1][0][k])
             velocity.append(v)
-            acceleration.append(self.time[0].of_real(ring, v) + convolve(ring, self.time, self.component((k, 1)), n))
+            acceleration.append(self.time[0].of_real(ring, v) + w)
         return tuple(velocity), tuple(acceleration)
 
-    def completed(self, pending: tuple[Field, Field], displacement: Field, slow: Derivation) -> Tower:
-        """The tower with level n added: U_n, D_n and what follows from them."""
+    def completed(self, pending: tuple[Field, Field], known: Derivation, displacement: Field, slow: Derivation) -> Tower:
+        """The tower with level n added: U_n, the D_nA in `slow`, and what follows from them."""
         ring, fast = self.ring, self.time[0]
         velocity, acceleration = [], []
         for k, u in enumerate(displacement):
@@ -73,7 +77,7 @@ class Tower:
             )
         added = (displacement, tuple(velocity), tuple(acceleration))
         jets = tuple((*levels, new) for levels, new in zip(self.jets, added, strict=True))
-        return Tower(ring, (*self.time, slow), jets, self._products)  # type: ignore[arg-type]
+        return Tower(ring, (*self.time, known.merged(slow)), jets, self._products)  # type: ignore[arg-type]
 
     def product(self, factors: tuple[Jet, ...], level: int) -> Any:
         """[ε^level] of a product of jets, `factors` sorted; partial products are shared by all that contain them."""

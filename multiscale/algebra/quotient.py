@@ -80,7 +80,7 @@ def finish(ring: Ring, x: Any) -> dict[Exponents, Coefficient]:
 
     The exponents run over ``ring.spec.pairs`` in order, two for each pair; the entries are sorted.
     """
-    begin = 1 + len(ring.spec.roots)
+    begin = ring.spec.first_pair
     end = begin + 2 * len(ring.spec.pairs)
     groups: dict[Exponents, tuple[dict[Exponents, Fraction], dict[Exponents, Fraction]]] = {}
     for m, c in ring.terms(ring.normal(x)):

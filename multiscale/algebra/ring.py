@@ -3,13 +3,14 @@
 A ring has the generators i (named ``@i``), square roots, complex-conjugate pairs, real generators and reciprocals, in
 that order. Its elements support ``+ - *`` and truth (non-zero). Laws, tested for every representation:
 
-    normal(x):      i**2 -> -1, g**2 -> its value for every root g, s*(1/s) -> 1 for every s with a reciprocal;
+    normal(x):      i**2 -> -1, g**2 -> its value for every root g, s*(1/s) -> 1 for every s with a reciprocal,
+                    e*ē -> 1 for the partners of a unit pair;
                     a ring homomorphism onto reduced elements: normal(x*y) = normal(normal(x)*normal(y))
     conjugate(x):   exchanges the partners of every pair and i with -i; an involution
     diff(x, g):     the partial derivative, every generator being independent of the others
     split(x, ...):  the parts add up to x, but for what the key sends to None
     quotient(x, d): y with y*d = x in the free polynomial ring, or None
-    lift(x):        the same polynomial, x from a ring whose generators all exist here under the same names
+    lift(x):        the same polynomial, x from a ring whose generators all exist here, under the same names
     write(read(p)) = p for every polynomial p by name
 
 A reciprocal of a polynomial with several terms is *not* reduced against that polynomial during the work: finished
@@ -50,12 +51,13 @@ class Element(Protocol):
 class RingSpec:
     """The generators of a ring, by name.
 
-    `roots` are pairs (g, p) with g**2 = p, p free of roots that come later; `pairs` are complex-conjugate partners;
-    `reciprocals` are pairs (h, p) with h = 1/p, the p primitive (see `polynomial.primitive`), irreducible and
+    `roots` are pairs (g, p) with g**2 = p, p free of roots that come later; `pairs` are complex-conjugate partners, of
+    which those whose first name is in `units` lie on the unit circle (partner = reciprocal): phases. `reciprocals` are pairs (h, p) with h = 1/p, the p primitive (see `polynomial.primitive`), irreducible and
     pairwise coprime.
     """
 
     pairs: tuple[tuple[str, str], ...]
+    units: frozenset[str] = frozenset()
     reals: tuple[str, ...] = ()
     roots: tuple[tuple[str, Frozen], ...] = ()
     reciprocals: tuple[tuple[str, Frozen], ...] = ()
@@ -77,9 +79,19 @@ class RingSpec:
 
     @cached_property
     def inverses(self) -> tuple[tuple[int, int], ...]:
-        """Index pairs (g, h) with g*h = 1: the reciprocals of single generators."""
+        """Index pairs (g, h) with g*h = 1: the reciprocals of single generators, and the unit pairs."""
         single = [(h, p[0][0][0][0]) for h, p in self.reciprocals if len(p) == 1]
-        return tuple((self.index[g], self.index[h]) for h, g in single)
+        phases = [(e_bar, e) for e, e_bar in self.pairs if e in self.units]
+        return tuple((self.index[g], self.index[h]) for h, g in (*phases, *single))
+
+    @property
+    def first_pair(self) -> int:
+        """The index of the first paired generator; partners stand side by side from there on."""
+        return 1 + len(self.roots)
+
+    @property
+    def pair_indices(self) -> tuple[int, ...]:
+        return tuple(range(self.first_pair, self.first_pair + 2 * len(self.pairs)))
 
     @cached_property
     def reciprocal_of(self) -> dict[Frozen, str]:

@@ -171,5 +171,7 @@ class SympyRing(NamedTerms):
         return SympyRing(self.spec.with_reciprocals(reciprocals))
 
     def lift(self, x: Any) -> Any:
-        more = (0,) * (len(self.spec.names) - x.numerator.ring.ngens)
-        return Scaled(self._ring.from_dict({m + more: c for m, c in x.numerator.items()}), x.denominator)
+        old = [str(s) for s in x.numerator.ring.symbols]
+        place = {name: k for k, name in enumerate(old)}
+        pick = itemgetter(*(place.get(name, len(old)) for name in self.spec.names))
+        return Scaled(self._ring.from_dict({pick((*m, 0)): c for m, c in x.numerator.items()}), x.denominator)

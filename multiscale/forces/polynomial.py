@@ -33,7 +33,9 @@ class PolynomialForce:
     def __init__(self, terms: Sequence[Sequence[Term]], ring: Ring) -> None:
         self._terms = tuple(tuple(equation) for equation in terms)
         self._ring = ring
-        self._coefficients = [[ring.read(dict(term.coefficient)) for term in equation] for equation in self._terms]
+        self._coefficients = [
+            [ring.normal(ring.read(dict(term.coefficient))) for term in equation] for equation in self._terms
+        ]
 
     def in_ring(self, ring: Ring) -> PolynomialForce:
         return PolynomialForce(self._terms, ring)

@@ -1,4 +1,4 @@
-"""The canonical form  u_k'' + ω_k² u_k = f_k(u, u', u''; ε),  f_k = O(ε), as data for the hierarchy.
+"""The canonical form  u_k'' + ω_k² u_k = f_k(u, u', u''; ε)  as data for the hierarchy, f_k = O(ε) but for drives.
 
 `canonical_form` finds the oscillator of each equation, refuses anything else at leading order by name, determines the
 natural frequencies and their base frequencies, and eliminates the parameters that the frequencies define.
@@ -6,31 +6,50 @@ natural frequencies and their base frequencies, and eliminates the parameters th
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 
 import sympy as sp
 
+from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Quotient, reduced
 from multiscale.algebra.ring import RingSpec
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
+from multiscale.linear_part import Rate
 from multiscale.problem.frequencies import Bases, bases_of, eliminated, number_field_bases, square_root
-from multiscale.problem.reading import Reader, unsupported
-from multiscale.problem.terms import Entry, Layout, match, show, tabulate
+from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_drives
+from multiscale.problem.preparation import Prepared
+from multiscale.problem.reading import Reader
+from multiscale.problem.terms import Layout, match, tabulate
 
-__all__ = ["Canonical", "canonical_form"]
+__all__ = ["Canonical", "Drive", "canonical_form"]
 
 ONE = (((), Fraction(1)),)
+
+
+@dataclass(frozen=True)
+class Drive:
+    """A phasor: its generator, its leading rate, the later terms Ω_1, Ω_2, … of its frequency, and the frequency and
+    the angle in the user's symbols (an eliminated frequency under its own name) and in the remaining ones."""
+
+    generator: str
+    rate: Rate
+    detunings: tuple[Frozen, ...]
+    frequency: sp.Expr
+    angle: sp.Expr
+    reduced_frequency: sp.Expr
 
 
 @dataclass(frozen=True)
 class Canonical:
     """The problem as the engine sees it.
 
-    `spec` holds every generator (amplitude pairs ``@zk``, ``@zk~`` included), `meanings` what each coefficient
-    generator stands for in the user's symbols, `force` the right-hand sides, `bases` the frequencies as rates.
+    `spec` holds every generator (amplitude pairs ``@zk``, ``@zk~`` first), `meanings` what each coefficient generator
+    stands for in the user's symbols, `force` the right-hand sides, `bases` the natural frequencies as rates, `drives`
+    the phasors, `slow` the time derivative (in εt) of each slow generator. `truncated` says that a statement exact in ε
+    was expanded, so that a higher order needs the canonical form anew.
     """
 
     spec: RingSpec
@@ -38,154 +57,168 @@ class Canonical:
     force: tuple[tuple[Term, ...], ...]
     bases: Bases
     frequencies: tuple[sp.Expr, ...]
-    powers: tuple[int, ...]
+    drives: tuple[Drive, ...]
+    slow: tuple[tuple[str, Frozen], ...]
+    truncated: bool
 
 
-def canonical_form(
-    equations: Sequence[sp.Expr], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr]
-) -> Canonical:
-    """Raises `ProblemError` or `UnsupportedTermError`, naming the equation or the term."""
-    dynamic = (*layout.jets, *((layout.small,) if layout.small is not None else ()))
-    hidden: dict[sp.Symbol, sp.Expr] = {}
-    current = [with_exact_oscillators(x, layout) for x in equations]
+@dataclass
+class _Working:
+    """Equations, phasor rates and slow rates, in which parameters are eliminated together."""
+
+    equations: list[sp.Expr]
+    rates: list[list[sp.Expr]]
+    exact: list[sp.Expr]
+    slow: dict[sp.Symbol, sp.Expr]
+    hidden: dict[sp.Symbol, sp.Expr]
+
+    def replace(self, symbol: sp.Symbol, value: sp.Expr) -> None:
+        self.equations = [x.subs(symbol, value) for x in self.equations]
+        self.rates = [[x.subs(symbol, value) for x in series] for series in self.rates]
+        self.exact = [x.subs(symbol, value) for x in self.exact]
+        self.slow = {s: x.subs(symbol, value) for s, x in self.slow.items() if s != symbol}
+
+
+def canonical_form(prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr]) -> Canonical:
+    """Raises `ProblemError`, `ResonanceError` or `UnsupportedTermError`, naming the equation or the term."""
+    dynamic = (*layout.jets, layout.small)
+    working = _Working(
+        [with_exact_oscillators(x, layout) for x in prepared.equations],
+        [list(series) for series in prepared.rates],
+        list(prepared.exact_rates),
+        dict(prepared.leaves.rates),
+        {},
+    )
+    forced = dict(prepared.relations.frequencies)
     while True:
+        current = working.equations
         reader = Reader(current, dynamic, shown)
         tables = [tabulate(reader, equation, layout) for equation in current]
         leaders = match(tables, reader, layout, names)
         order = [leaders.index(k) for k in range(len(names))]
         current, tables = [current[j] for j in order], [tables[j] for j in order]
-        masses = [_inertia(table, k) for k, table in enumerate(tables)]
+        masses = [inertia(table, k) for k, table in enumerate(tables)]
         if any(mass.coefficient != ONE for mass in masses):
-            current = [x / reader.expression(m.coefficient) for x, m in zip(current, masses, strict=True)]
+            working.equations = [x / reader.expression(m.coefficient) for x, m in zip(current, masses, strict=True)]
             continue
-        squares = [_stiffness(table, k, reader, layout, masses[k].power) for k, table in enumerate(tables)]
-        frequencies, replacement = _frequencies(reader, squares, names, frozenset(layout.orders), hidden)
-        if replacement is None:
-            break
-        current = [x.subs(*replacement) for x in current]
-    return _assembled(current, dynamic, shown, layout, frequencies, hidden)
-
-
-def _inertia(table: list[Entry], k: int) -> Entry:
-    return min((e for e in table if e.factors == ((k, 2),)), key=lambda e: e.power)
-
-
-def _stiffness(table: list[Entry], k: int, reader: Reader, layout: Layout, power: int) -> Quotient:
-    """ω_k² of an equation u_k'' + ω_k² u_k + … = 0, everything else at its leading power refused by name."""
-    own = [e for e in table if e.factors == ((k, 0),) and e.power == power]
-    for e in table:
-        if e.power > power or e.factors == ((k, 2),) or e in own:
+        working.equations = current
+        squares = [own_stiffness(table, k, reader, layout, masses[k].power) for k, table in enumerate(tables)]
+        if forced:
+            k, value = forced.popitem()
+            displacement = next(s for s, jet in layout.jets.items() if jet == (k, 0)) * layout.small ** masses[k].power
+            stiffness = reader.expression(_as_polynomial(squares[k], reader).items())
+            working.equations[k] = sp.expand(current[k] - stiffness * displacement) + value**2 * displacement
             continue
-        raise _misplaced(show(e, reader, layout), e, k, power, layout)
-    if not own:
-        raise ProblemError(
-            f"the oscillator of {reader.show(_jet(layout, (k, 0)))} has zero frequency: "
-            "its equation needs a restoring term omega**2*u at leading order"
-        )
-    return reduced(reader.ring, reader.ring.read(dict(own[0].coefficient)))
+        found = _frequencies(reader, squares, names, working)
+        if found is not None:
+            return _assembled(working, prepared, layout, shown, found)
 
 
-def _jet(layout: Layout, jet: tuple[int, int]) -> sp.Symbol:
-    return next(s for s, j in layout.jets.items() if j == jet)
+def _as_polynomial(square: Quotient, reader: Reader) -> Mapping[tuple[tuple[str, int], ...], Fraction]:
+    names = reader.ring.spec.reciprocal_of
+    below = tuple((names[p], e) for p, e in square.denominator)
+    return {tuple(sorted((*m, *below))): c for m, c in square.numerator}
 
 
-def _misplaced(term: sp.Expr, entry: Entry, k: int, power: int, layout: Layout) -> Exception:
-    small = layout.small
-    remedy = f"Give it a factor {small}" if small is not None else f"Raise its order above {power} through `ordering`"
-    if entry.power < power:
-        reason = f"its order {entry.power} is below the order {power} of the unknown its equation belongs to"
-    elif not entry.factors:
-        reason = "a constant force stands at leading order"
-        remedy += ", or measure the unknown from its equilibrium"
-    elif len(entry.factors) > 1:
-        reason = "a nonlinear term stands at leading order"
-    elif entry.factors[0] == (k, 1):
-        reason = "damping stands at leading order, where the oscillators must be undamped"
-    else:
-        reason = "it couples the unknowns at leading order, where the oscillators must be uncoupled"
-        remedy += ", or use modal coordinates"
-    return unsupported(term, reason, remedy)
-
-
-def _frequencies(
-    reader: Reader,
-    squares: list[Quotient],
-    names: list[sp.Expr],
-    forbidden: frozenset[sp.Symbol],
-    hidden: dict[sp.Symbol, sp.Expr],
-) -> tuple[list[sp.Expr], tuple[sp.Symbol, sp.Expr] | None]:
-    """The natural frequencies, or the parameter to eliminate before they can be written down."""
+def _frequencies(reader: Reader, squares: list[Quotient], names: list[sp.Expr], working: _Working) -> list[sp.Expr] | None:
+    """The natural frequencies; None when a parameter was eliminated and the equations must be read again."""
     roots = []
     for square, name in zip(squares, names, strict=True):
-        value = reader.expression(square.numerator) / sp.Mul(
-            *(reader.expression(p) ** e for p, e in square.denominator)
-        )
+        value = reader.expression(_as_polynomial(square, reader).items())
         if value.is_nonpositive:
-            raise ProblemError(
-                f"the squared frequency of {name} is {value}, not positive: {name} does not oscillate at leading order"
-            )
+            raise ProblemError(f"the squared frequency of {name} is {value}, not positive: {name} does not oscillate at leading order")
         root = square_root(reader, square)
         radical = sp.sqrt(root.radicand)
         if root.radicand.free_symbols:
             radical = sp.Symbol(f"sqrt({root.radicand})", positive=True)
-            replacement = (
-                eliminated(root.radicand, radical, forbidden | hidden.keys()) if radical not in hidden else None
-            )
-            hidden.setdefault(radical, sp.sqrt(root.radicand.subs(hidden)))
-            if replacement is not None:
-                return [], replacement
+            if radical not in working.hidden and _hide(radical, root.radicand, working):
+                return None
         roots.append(root.outside * radical)
-    nested = [
-        r
-        for r in roots
-        if not r.free_symbols and r.is_algebraic and any(not x.base.is_Integer for x in r.atoms(sp.Pow))
-    ]
+    nested = [r for r in roots if not r.free_symbols and r.is_algebraic and any(not x.base.is_Integer for x in r.atoms(sp.Pow))]
     if nested:
         numeric = [r for r in roots if not r.free_symbols and r.is_algebraic]
         replaced = dict(zip(numeric, number_field_bases(numeric), strict=True))
         roots = [replaced.get(r, r) for r in roots]
-    return roots, None
+    return roots
+
+
+def _hide(radical: sp.Symbol, radicand: sp.Expr, working: _Working) -> bool:
+    """Introduce w = √radicand; True if a parameter could be eliminated by it."""
+    change = sp.Add(*(sp.diff(radicand, s) * rate for s, rate in working.slow.items())) / (2 * radical)
+    replacement = eliminated(radicand, radical, frozenset(working.hidden))
+    working.hidden[radical] = sp.sqrt(radicand.subs(working.hidden))
+    if change != 0:
+        working.slow[radical] = change
+    if replacement is not None:
+        working.replace(*replacement)
+    return replacement is not None
 
 
 def _assembled(
-    equations: list[sp.Expr],
-    dynamic: tuple[sp.Symbol, ...],
-    shown: Mapping[sp.Symbol, sp.Expr],
-    layout: Layout,
-    frequencies: list[sp.Expr],
-    hidden: Mapping[sp.Symbol, sp.Expr],
+    working: _Working, prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], frequencies: list[sp.Expr]
 ) -> Canonical:
-    reader = Reader([*equations, *frequencies], dynamic, shown)
-    bases = bases_of(reader, frequencies)
-    force, powers = [], []
-    for k, equation in enumerate(equations):
+    flat = [x for series in working.rates for x in series]
+    reader = Reader([*working.equations, *frequencies, *flat, *working.slow.values()], (*layout.jets, layout.small), shown)
+    bases = bases_of(reader, [*frequencies, *(series[0] for series in working.rates)])
+    force = []
+    for k, equation in enumerate(working.equations):
         table = tabulate(reader, equation, layout)
-        lead = _inertia(table, k).power
-        powers.append(lead)
-        force.append(
-            tuple(
-                Term(e.power - lead, e.factors, tuple((m, -c) for m, c in e.coefficient))
-                for e in table
-                if e.power > lead
-            )
+        lead = inertia(table, k).power
+        weak = [e for e in table if e.power > lead or not e.factors]
+        force.append(tuple(Term(e.power - lead, e.factors, tuple((m, -c) for m, c in e.coefficient)) for e in weak))
+    renamed = {f"1/({p.symbol.name})": f"{p.symbol.name}~" for p in prepared.phasors}
+    force = [tuple(Term(t.power, t.factors, _rename(t.coefficient, renamed)) for t in terms) for terms in force]
+    count = len(frequencies)
+    drives = tuple(
+        Drive(
+            p.symbol.name,
+            bases.rates[count + k],
+            tuple(freeze(reader.reduced(reader.read(x))) for x in working.rates[k][1:]),
+            p.rate.subs(prepared.leaves.meanings),
+            p.angle,
+            working.exact[k].subs(working.hidden).subs(prepared.leaves.meanings),
         )
-    spec = _pruned(reader.ring.spec, force, bases)
-    meanings = tuple(
-        (name, value.subs(hidden)) for name, value in sorted(reader.meanings.items()) if name in spec.index
+        for k, p in enumerate(prepared.phasors)
     )
-    return Canonical(spec, meanings, tuple(force), bases, tuple(f.subs(hidden) for f in frequencies), tuple(powers))
+    modes = Bases(bases.values, bases.rates[:count], bases.unit, bases.assumed)
+    slow = {s.name: freeze(reader.reduced(reader.read(x))) for s, x in working.slow.items()}
+    spec, slow = _pruned(reader.ring.spec, force, modes, drives, slow)
+    meanings = _meanings(reader, spec, working, prepared)
+    shown_frequencies = tuple(f.subs(working.hidden).subs(prepared.leaves.meanings) for f in frequencies)
+    canonical = Canonical(spec, meanings, tuple(force), modes, shown_frequencies, drives, tuple(slow.items()), prepared.truncated)
+    refuse_resonant_drives(canonical.force, canonical.bases.rates, drives, shown_frequencies, layout)
+    return canonical
 
 
-def _pruned(spec: RingSpec, force: list[tuple[Term, ...]], bases: Bases) -> RingSpec:
-    """The generators that the canonical form uses, and the amplitude pairs."""
+def _meanings(reader: Reader, spec: RingSpec, working: _Working, prepared: Prepared) -> tuple[tuple[str, sp.Expr], ...]:
+    leaves = prepared.leaves.meanings
+    named = {name: value.subs(working.hidden).subs(leaves) for name, value in reader.meanings.items() if name in spec.index}
+    return tuple(sorted((name, value) for name, value in named.items() if name not in {p.symbol.name for p in prepared.phasors}))
+
+
+def _rename(polynomial: Frozen, names: Mapping[str, str]) -> Frozen:
+    return freeze({tuple(sorted((names.get(g, g), e) for g, e in m)): c for m, c in polynomial})
+
+
+def _pruned(
+    spec: RingSpec, force: list[tuple[Term, ...]], bases: Bases, drives: tuple[Drive, ...], slow: dict[str, Frozen]
+) -> tuple[RingSpec, dict[str, Frozen]]:
+    """The generators in use, amplitude pairs and phasors first, and the slow ones among them."""
     polynomials = [term.coefficient for terms in force for term in terms] + list(bases.values)
-    used = {name for p in polynomials for monomial, _ in p for name, _ in monomial}
+    polynomials += [p for d in drives for p in d.detunings]
+    below = dict(spec.reciprocals)
+    used: set[str] = set()
+    while polynomials:
+        new = {name for p in polynomials for monomial, _ in p for name, _ in monomial} - used
+        used |= new
+        polynomials = [slow[name] for name in new if name in slow] + [below[name] for name in new if name in below]
+    phasors = tuple((d.generator, f"{d.generator}~") for d in drives)
+    pairs = (*((f"@z{k}", f"@z{k}~") for k in range(len(force))), *phasors)
+    units = frozenset(e for e, _ in phasors)
     reciprocals = tuple((h, p) for h, p in spec.reciprocals if h in used)
-    used |= {name for _, p in reciprocals for monomial, _ in p for name, _ in monomial}
-    pairs = tuple((f"@z{k}", f"@z{k}~") for k in range(len(force)))
-    return RingSpec(
-        pairs, tuple(r for r in spec.reals if r in used), tuple((g, p) for g, p in spec.roots if g in used), reciprocals
-    )
+    reals = tuple(r for r in spec.reals if r in used and r not in units)
+    kept = {name: p for name, p in slow.items() if name in used}
+    return RingSpec(pairs, units, reals, tuple((g, p) for g, p in spec.roots if g in used), reciprocals), kept
 
 
 def _decimal(x: sp.Float) -> sp.Rational:
@@ -196,15 +229,10 @@ def with_exact_oscillators(equation: sp.Expr, layout: Layout) -> sp.Expr:
     """Floats in mass and leading stiffness become the decimals they print as, so that resonance is decided exactly."""
     if not equation.atoms(sp.Float):
         return equation
-    weak = set(layout.orders) | ({layout.small} if layout.small is not None else set())
     terms = []
     for term in sp.Add.make_args(sp.expand(equation)):
         jets = [s for s in term.free_symbols if s in layout.jets]
-        oscillator = (
-            len(jets) == 1
-            and layout.jets[jets[0]][1] != 1
-            and sp.degree(term, jets[0]) == 1
-            and not term.free_symbols & weak
-        )
-        terms.append(term.xreplace({x: _decimal(x) for x in term.atoms(sp.Float)}) if oscillator else term)
+        linear = len(jets) == 1 and layout.jets[jets[0]][1] != 1 and sp.degree(term, jets[0]) == 1
+        weak = linear and layout.small in term.free_symbols and not layout.ordered
+        terms.append(term.xreplace({x: _decimal(x) for x in term.atoms(sp.Float)}) if linear and not weak else term)
     return sp.Add(*terms)

@@ -10,6 +10,9 @@ import sympy as sp
 
 from multiscale.errors import ProblemError
 from multiscale.problem.canonical import Canonical, canonical_form
+from multiscale.problem.preparation import Prepared, prepare
+from multiscale.problem.reading import unsupported
+from multiscale.problem.relations import Detuning, relation_pairs
 from multiscale.problem.terms import Layout
 
 __all__ = ["Problem"]
@@ -31,6 +34,10 @@ class Problem:
     ordering : mapping, optional
         Instead of `small`: integer orders carried by unknowns and parameters, ``{u: 1, mu: 2}``. The small parameter is
         then made by the library as a bookkeeping symbol whose value is 1, and results are in the user's own unknowns.
+    resonances : mapping, or sequence of Eq, optional
+        Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol, its square,
+        a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies in exact
+        rational ratio are resonant without a relation.
     time : Symbol, optional
         Needed only to check that it is the one meant.
 
@@ -40,6 +47,8 @@ class Problem:
         Wrong counts, colliding names, no oscillation, a missing or superfluous small parameter.
     UnsupportedTermError
         A term outside this class; the message names it and what to write instead.
+    ResonanceError
+        Relations that contradict each other; a drive at leading order that meets a natural frequency.
 
     Examples
     --------
@@ -59,6 +68,7 @@ class Problem:
         *,
         small: sp.Symbol | None = None,
         ordering: Mapping[sp.Expr, int] | None = None,
+        resonances: Mapping[sp.Expr, sp.Expr] | Sequence[sp.Eq] = (),
         time: sp.Symbol | None = None,
     ) -> None:
         self.unknowns: tuple[sp.Expr, ...] = _unknowns(unknowns)
@@ -72,8 +82,10 @@ class Problem:
         self.ordering: dict[sp.Expr, int] | None = (
             _ordering(ordering, self.unknowns, self.time) if ordering is not None else None
         )
-        self._given_small = _small(small, self.ordering, self.equations, self.time)
-        self.canonical: Canonical = self._canonical()
+        self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
+        self._given_small = _small(small, self.ordering, self._symbols, self.time)
+        self._canonical: dict[int | None, Canonical] = {}
+        self.canonical(1)
 
     @cached_property
     def small(self) -> sp.Symbol:
@@ -86,33 +98,63 @@ class Problem:
             name += "_u"
         return sp.Symbol(name, positive=True)
 
-    @property
+    @cached_property
     def _symbols(self) -> set[sp.Symbol]:
-        return set().union(*(x.free_symbols for x in self.equations)) - {self.time}
+        stated = [x for pair in self.resonances for x in pair if x not in self.unknowns]
+        return set().union(*(x.free_symbols for x in (*self.equations, *stated))) - {self.time}
 
     @cached_property
     def parameters(self) -> tuple[sp.Symbol, ...]:
-        """Every symbol of the equations but time and the small parameter, sorted by name."""
-        return tuple(sorted(self._symbols - {self._given_small}, key=lambda s: str(s.name)))
+        """The symbols of the problem but time and the small parameter, after elimination by relations, by name."""
+        gone = {symbol for symbol, _ in self._prepared(1).relations.values}
+        return tuple(sorted(self._symbols - {self._given_small} - gone, key=lambda s: str(s.name)))
 
     @property
     def natural_frequencies(self) -> tuple[sp.Expr, ...]:
-        """ω of each unknown, in the user's symbols."""
-        return self.canonical.frequencies
+        """ω of each unknown at leading order, in the user's symbols."""
+        return self.canonical(1).frequencies
 
-    def _canonical(self) -> Canonical:
+    @property
+    def drives(self) -> tuple[sp.Expr, ...]:
+        """The independent frequencies of the drives, in the user's symbols."""
+        return tuple(d.frequency for d in self.canonical(1).drives if d.frequency != 0)
+
+    @property
+    def detunings(self) -> tuple[Detuning, ...]:
+        """How each detuning follows from the frequency that its relation eliminates."""
+        return self._prepared(1).relations.detunings
+
+    def canonical(self, order: int) -> Canonical:
+        """The canonical form for an expansion to the given order; most problems have one form for all orders."""
+        if None in self._canonical:
+            return self._canonical[None]
+        if order not in self._canonical:
+            prepared = self._prepared(order)
+            shown = _jets(self.unknowns, self.time) | prepared.shown
+            if self.ordering is not None:
+                shown[self.small] = sp.Integer(1)
+            form = canonical_form(prepared, self._layout, shown, list(self.unknowns))
+            self._canonical[order if form.truncated else None] = form
+            return form
+        return self._canonical[order]
+
+    @cached_property
+    def _layout(self) -> Layout:
         jets = {sp.Symbol(f"@{k}.{d}"): (k, d) for k in range(len(self.unknowns)) for d in (0, 1, 2)}
-        shown = _jets(self.unknowns, self.time)
+        return Layout(jets, self.small, self.ordering is not None)
+
+    def _prepared(self, order: int) -> Prepared:
+        jets = self._layout.jets
         hidden = self._hidden()
         for x, given in zip(hidden, self.equations, strict=True):
             self._check_hidden(x, given)
-        for s, u in zip((s for s, (_, d) in jets.items() if d == 0), self.unknowns, strict=True):
-            if not any(x.free_symbols & {j for j, (k, _) in jets.items() if k == jets[s][0]} for x in hidden):
+        for k, u in enumerate(self.unknowns):
+            if not any(x.free_symbols & {s for s, jet in jets.items() if jet[0] == k} for x in hidden):
                 raise ProblemError(f"the unknown {u} does not appear in the equations")
         orders = dict(self.ordering or {})
-        unknown_orders = tuple(orders.pop(u, 0) for u in self.unknowns)
-        layout = Layout(jets, self._given_small, orders, unknown_orders)
-        return canonical_form(hidden, layout, shown, list(self.unknowns))
+        powers = {s: orders[u] for s, (k, _) in jets.items() if (u := self.unknowns[k]) in orders}
+        powers |= {s: q for s, q in orders.items() if isinstance(s, sp.Symbol)}
+        return prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, order)
 
     def _hidden(self) -> list[sp.Expr]:
         """The equations with a symbol for each unknown and derivative."""
@@ -121,33 +163,21 @@ class Problem:
         return [x.xreplace(derivatives).xreplace(names) for x in self.equations]
 
     def _check_hidden(self, x: sp.Expr, given: sp.Expr) -> None:
-        from multiscale.problem.reading import unsupported
-
-        if derivatives := x.atoms(sp.Derivative):
-            term = min(derivatives, key=str)
-            raise unsupported(
-                self._shown(term),
-                "only first and second time derivatives of the unknowns are accepted",
-                "Rewrite the equations as a system of second order",
-            )
-        functions = {f for f in x.atoms(sp.core.function.AppliedUndef) if f.free_symbols & {self.time}}
+        own = {u.func for u in self.unknowns}
+        if derivatives := [d for d in x.atoms(sp.Derivative) if d.expr.func in own]:
+            term = min(derivatives, key=str).subs(_jets(self.unknowns, self.time))
+            reason = "only first and second time derivatives of the unknowns are accepted"
+            raise unsupported(term, reason, "Rewrite the equations as a system of second order")
+        functions = {f for f in x.atoms(sp.core.function.AppliedUndef) if self.time in f.args}
         if functions:
             f = min(functions, key=str)
             raise ProblemError(
                 f"{f} depends on time but is not among the unknowns {self.unknowns}: add it, or make it a parameter"
             )
-        if self.time in x.free_symbols:
-            terms = [a for a in sp.Add.make_args(x) if self.time in a.free_symbols]
-            raise unsupported(
-                self._shown(terms[0]), f"it depends on {self.time} explicitly", "State an autonomous system"
-            )
-
-    def _shown(self, x: sp.Expr) -> sp.Expr:
-        return x.subs(_jets(self.unknowns, self.time))
 
     def _key(self) -> tuple[Any, ...]:
         ordering = None if self.ordering is None else tuple(sorted(self.ordering.items(), key=str))
-        return (self.equations, self.unknowns, self._given_small, ordering)
+        return (self.equations, self.unknowns, self._given_small, ordering, self.resonances)
 
     def __eq__(self, other: object) -> bool:
         return isinstance(other, Problem) and self._key() == other._key()
@@ -162,6 +192,7 @@ class Problem:
         if self.ordering is not None:
             indexed = {self.unknowns.index(x) if x in self.unknowns else x: q for x, q in self.ordering.items()}
             options["ordering"] = indexed
+        options["resonances"] = [(self.unknowns.index(x) if x in self.unknowns else x, y) for x, y in self.resonances]
         return _rebuilt, (self._hidden(), functions, options)
 
     def __repr__(self) -> str:
@@ -186,6 +217,8 @@ def _rebuilt(
     if "ordering" in options:
         named = {unknowns[x] if isinstance(x, int) else x: q for x, q in options["ordering"].items()}
         options = options | {"ordering": named}
+    named = {unknowns[x] if isinstance(x, int) else x: y for x, y in options["resonances"]}
+    options = options | {"resonances": named}
     jets = _jets(unknowns, options["time"])
     return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
 
@@ -257,9 +290,8 @@ def _ordering(given: Mapping[sp.Expr, int], unknowns: tuple[sp.Expr, ...], time:
 
 
 def _small(
-    small: Any, ordering: Mapping[sp.Expr, int] | None, equations: tuple[sp.Expr, ...], time: sp.Symbol
+    small: Any, ordering: Mapping[sp.Expr, int] | None, symbols: set[sp.Symbol], time: sp.Symbol
 ) -> sp.Symbol | None:
-    symbols = set().union(*(x.free_symbols for x in equations))
     if (small is None) == (ordering is None):
         which = "neither was" if small is None else "both were"
         raise ProblemError(

@@ -20,11 +20,14 @@ import sympy as sp
 from multiscale.algebra.polynomial import freeze
 from multiscale.algebra.quotient import reduced
 from multiscale.algebra.reciprocals import inverse, missing
-from multiscale.algebra.ring import RingSpec
+from multiscale.algebra.ring import IMAGINARY, RingSpec
 from multiscale.algebra.sympy_ring import SympyRing
 from multiscale.errors import ProblemError, UnsupportedTermError
 
-__all__ = ["Reader", "unsupported"]
+__all__ = ["IMAGINARY_UNIT", "Reader", "unsupported"]
+
+IMAGINARY_UNIT = sp.Symbol(IMAGINARY)
+"""Stands for i inside expressions that are known to be real as a whole, such as phasor forms of drives."""
 
 
 def unsupported(term: object, reason: str, remedy: str) -> UnsupportedTermError:
@@ -97,7 +100,7 @@ class Reader:
 
     def _collect(self, x: sp.Expr, roots: dict[str, int], denominators: list[sp.Expr]) -> None:
         base, power = _base_and_power(x)
-        if base in self.dynamic or isinstance(base, sp.Rational):
+        if base in self.dynamic or base == IMAGINARY_UNIT or isinstance(base, sp.Rational):
             pass
         elif isinstance(base, sp.Add | sp.Mul):
             for arg in base.args:
@@ -151,6 +154,8 @@ class Reader:
         base, power = _base_and_power(x)
         if isinstance(base, sp.Rational):
             value = ring.constant(Fraction(int(base.p), int(base.q)))
+        elif base == IMAGINARY_UNIT:
+            value = ring.generators[0]
         elif base in self.dynamic:
             value = ring.generators[ring.spec.index[base.name]]
         elif isinstance(base, sp.Add):
@@ -181,7 +186,8 @@ class Reader:
         quotient = reduced(self.ring, self.ring.normal(x))
         names = self.ring.spec.reciprocal_of
         below = tuple((names[p], e) for p, e in quotient.denominator)
-        return {tuple(sorted((*m, *below))): c for m, c in quotient.numerator}
+        named = {tuple(sorted((*m, *below))): c for m, c in quotient.numerator}
+        return self.ring.write(self.ring.normal(self.ring.read(named)))
 
     def expression(self, polynomial: Iterable[tuple[tuple[tuple[str, int], ...], Fraction]]) -> sp.Expr:
         """A polynomial by name as SymPy expression in the user's symbols."""

@@ -1,9 +1,6 @@
 """The equations as a table of terms, each with its power of the small parameter, and which oscillator each belongs to.
 
     equation k:   Σ ε^p · c · Π jets = 0
-
-Powers come either from the small parameter in the equations or from an ordering: a factor x of order q counts q for
-each of its powers, and each equation is divided by the power of the unknown it belongs to.
 """
 
 from __future__ import annotations
@@ -33,12 +30,11 @@ class Entry:
 
 @dataclass(frozen=True)
 class Layout:
-    """Which symbols stand for what: `jets[symbol]`, the small parameter, and the orders of symbols and unknowns."""
+    """Which symbols stand for what: `jets[symbol]` and the small parameter, which `ordered` says the library made."""
 
     jets: Mapping[sp.Symbol, Jet]
-    small: sp.Symbol | None
-    orders: Mapping[sp.Symbol, int]
-    unknown_orders: tuple[int, ...]
+    small: sp.Symbol
+    ordered: bool
 
 
 class _Same(dict[tuple[int, ...], tuple[int, ...]]):
@@ -54,11 +50,9 @@ def tabulate(reader: Reader, expression: sp.Expr, layout: Layout) -> list[Entry]
     for exponents, part in ring.split(ring.normal(reader.read(expression)), (*indices, 0), _Same()).items():
         powers = dict(zip(reader.dynamic, exponents[:-1], strict=True))
         factors = tuple(sorted(jet for s, jet in layout.jets.items() for _ in range(powers[s])))
-        base = powers[layout.small] if layout.small is not None else sum(layout.unknown_orders[u] for u, _ in factors)
         bare = ring.from_terms({_cleared(m, indices): c for m, c in ring.terms(part)})
-        for power, coefficient in _by_order(reader, bare, layout).items():
-            key = (base + power, factors)
-            entries[key] = entries.get(key, ring.zero) + coefficient
+        key = (powers[layout.small], factors)
+        entries[key] = entries.get(key, ring.zero) + bare
     reduced = {key: freeze(reader.reduced(x)) for key, x in sorted(entries.items())}
     return [Entry(power, factors, coefficient) for (power, factors), coefficient in reduced.items() if coefficient]
 
@@ -67,34 +61,10 @@ def _cleared(exponents: tuple[int, ...], indices: tuple[int, ...]) -> tuple[int,
     return tuple(0 if k in indices else e for k, e in enumerate(exponents))
 
 
-def _by_order(reader: Reader, x: Any, layout: Layout) -> dict[int, Any]:
-    """Split a coefficient by the orders of the symbols in it."""
-    for name, value in reader.meanings.items():
-        if (found := value.free_symbols & layout.orders.keys()) and value not in layout.orders:
-            raise unsupported(
-                value,
-                f"the ordered symbol {min(found, key=str)} stands inside it",
-                f"Give an order to a symbol that stands for {name} as a whole",
-            )
-    index = reader.ring.spec.index
-    ordered = {index[s.name]: order for s, order in layout.orders.items() if s.name in index}
-    if not ordered:
-        return {0: x}
-    for h, p in reader.ring.spec.reciprocals:
-        if any(reader.ring.spec.index[g] in ordered for m, _ in p for g, _ in m):
-            raise unsupported(
-                h, "an ordered symbol stands in a denominator", "Order the quotient as a whole by giving it a symbol"
-            )
-    parts: dict[int, dict[tuple[int, ...], Any]] = {}
-    for m, c in reader.ring.terms(x):
-        parts.setdefault(sum(m[k] * order for k, order in ordered.items()), {})[m] = c
-    return {power: reader.ring.from_terms(part) for power, part in parts.items()}
-
-
 def show(entry: Entry, reader: Reader, layout: Layout) -> sp.Expr:
     """A term as the user wrote it."""
     symbol = {jet: s for s, jet in layout.jets.items()}
-    power = layout.small**entry.power if layout.small is not None else sp.Integer(1)
+    power = sp.Integer(1) if layout.ordered else layout.small**entry.power
     return reader.show(power * reader.expression(entry.coefficient) * sp.Mul(*(symbol[jet] for jet in entry.factors)))
 
 
