@@ -1,7 +1,7 @@
 """The part of the time derivative that is known beforehand: fast rates, detuned drives, slow parameters.
 
-    D_0 z_a = iω_a z_a,    D_0 e = iΩ_0 e,    D_n e = iΩ_n e,     Ω = Ω_0 + εΩ_1 + ε²Ω_2 + …
-    D_1 F = F' for a function F of εt,        D_1 (1/p) = −(1/p)² D_1 p for a reciprocal of slow quantities
+D_0 z_a = iω_a z_a,    D_0 e = iΩ_0 e,    D_n e = iΩ_n e,     Ω = Ω_0 + εΩ_1 + ε²Ω_2 + …
+D_1 F = F' for a function F of εt,        D_1 (1/p) = −(1/p)² D_1 p for a reciprocal of slow quantities
 """
 
 from __future__ import annotations

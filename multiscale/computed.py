@@ -18,6 +18,7 @@ from multiscale.algebra.quotient import Coefficient, finish
 from multiscale.algebra.ring import Exponents, make_ring
 from multiscale.clock import Clock
 from multiscale.forces.polynomial import PolynomialForce
+from multiscale.frame import Frame, frame_of
 from multiscale.hierarchy import Hierarchy, next_level, start
 from multiscale.linear_part import Rate
 from multiscale.linear_part.oscillators import Oscillators
@@ -50,6 +51,10 @@ class Computation:
         return self.hierarchy.tower.height - 1
 
     @property
+    def representation(self) -> str:
+        return self.hierarchy.tower.ring.representation
+
+    @property
     def modes(self) -> int:
         return len(self.hierarchy.linear_part.modes)
 
@@ -64,6 +69,28 @@ class Computation:
         return self.canonical.spec.pairs[mode][0]
 
     @cached_property
+    def frame(self) -> Frame:
+        """The rotating frame for the combinations of phases that the D_nA contain."""
+        drives = len(self.canonical.drives)
+        bare = Frame(self.modes, (), (), ())
+        levels = range(1, self.order + 1)
+        found = {bare.relative(m, a) for n in levels for a in range(self.modes) for m in self.change(n, a)}
+        return frame_of(found, self.modes, drives)
+
+    @cached_property
+    def autonomous(self) -> bool:
+        """Whether the flow in the frame has no explicit time: no slow parameters, no beats between drives."""
+        levels = range(1, self.order + 1)
+        left = (
+            self.frame.fast(self.frame.relative(m, a))
+            for n in levels
+            for a in range(self.modes)
+            for m in self.change(n, a)
+        )
+        moving = [k for k, d in enumerate(self.canonical.drives) if d.frequency != 0]
+        return not self.canonical.slow and not any(row[self.modes + k] for row in left for k in moving)
+
+    @cached_property
     def _finish(self) -> Any:
         ring, tower = self.hierarchy.tower.ring, self.hierarchy.tower
 
@@ -71,6 +98,8 @@ class Computation:
         def finished(kind: str, level: int, index: int) -> Finished:
             if kind == "change":
                 return finish(ring, tower.time[level].images.get(self._amplitude(index), ring.zero))
+            if kind == "flow":
+                return finish(ring, self._in_frame(level, index))
             return finish(ring, tower.jets[int(kind)][level][index])
 
         return finished
@@ -78,6 +107,20 @@ class Computation:
     def change(self, level: int, mode: int) -> Finished:
         """D_level A_mode, written for z = A e^{iωT_0}."""
         return self._finish("change", level, mode)  # type: ignore[no-any-return]
+
+    def flow(self, level: int, mode: int) -> Finished:
+        """D_level A_mode for the amplitude in the rotating frame: D_nA − i Φ_n A, Φ = Φ_0 + εΦ_1 + … the fast angle's rate."""
+        return self._finish("flow", level, mode)  # type: ignore[no-any-return]
+
+    def _in_frame(self, level: int, mode: int) -> Any:
+        ring, tower = self.hierarchy.tower.ring, self.hierarchy.tower
+        own = ring.generators[ring.spec.index[self._amplitude(mode)]]
+        turning = ring.zero
+        for share, drive in zip(self.frame.angles[mode][self.modes :], self.canonical.drives, strict=True):
+            if share and level <= len(drive.detunings):
+                turning = turning + ring.constant(share) * ring.read(dict(drive.detunings[level - 1]))
+        change = tower.time[level].images.get(self._amplitude(mode), ring.zero)
+        return ring.normal(change - ring.generators[0] * turning * own)
 
     def field(self, level: int, unknown: int, derivative: int = 0) -> Finished:
         """[ε^level] of an unknown or of its time derivative."""
@@ -95,7 +138,7 @@ class Computation:
         for rate, part in ring.split(field, ring.spec.pair_indices, self.hierarchy.rates).items():
             acted = linear.act({unknown: part}, rate)[unknown]
             total = total + (acted + ring.conjugate(acted) if any(rate) else acted)
-        changes = {a: x for a in range(self.modes) if (x := tower.time[level].images.get(self._amplitude(a)))}
+        changes = {a: x for a in range(self.modes if level else 0) if (x := tower.time[level].images.get(self._amplitude(a)))}
         secular = linear.bracket(changes).get(unknown, ring.zero)
         secular = secular + ring.conjugate(secular)
         return finish(ring, ring.normal(total + secular)), finish(ring, secular)
@@ -119,7 +162,8 @@ def begin(canonical: Canonical, representation: str, reciprocals: Iterable[tuple
     linear = Oscillators(bases.rates, [dict(b) for b in bases.values], bases.unit, ring)
     turning = [*bases.rates, *(d.rate for d in drives)]
     frequencies = {
-        pair[0]: freeze(ring.write(linear.value(rate))) for pair, rate in zip(canonical.spec.pairs, turning, strict=True)
+        pair[0]: freeze(ring.write(linear.value(rate)))
+        for pair, rate in zip(canonical.spec.pairs, turning, strict=True)
     }
     detunings = {d.generator: d.detunings for d in drives}
     clock = Clock(ring, frequencies, [d.rate for d in drives], detunings, dict(canonical.slow))

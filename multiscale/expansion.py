@@ -15,7 +15,7 @@ from multiscale.errors import MultiscaleError, OrderingWarning, ProblemError, Re
 from multiscale.level import Level, Views, polynomials_below
 from multiscale.problem import Problem
 from multiscale.remarks import incomplete_cubic, remarks
-from multiscale.slow_flow import SlowFlow, resonant_phases
+from multiscale.slow_flow import SlowFlow
 from multiscale.solution import FORMS, solution
 from multiscale.symbols import Symbols, symbols_of
 
@@ -66,13 +66,9 @@ class Expansion:
     computation: Computation = field(repr=False, kw_only=True)
 
     @cached_property
-    def _basis(self) -> Any:
-        return resonant_phases(self.computation)
-
-    @cached_property
     def symbols(self) -> Symbols:
         """The symbols of the result, ``symbols.A``, ``.a``, ``.beta``, … as tuples."""
-        return symbols_of(self.problem, self.computation.modes, len(self._basis.resonant), self.order)
+        return symbols_of(self.problem, self.computation.modes, len(self.computation.frame.resonant), self.order)
 
     @cached_property
     def _views(self) -> Views:
@@ -85,13 +81,13 @@ class Expansion:
 
     @cached_property
     def slow_flow(self) -> SlowFlow:
-        return SlowFlow(self.problem, self.computation, self._views, self.symbols, self._basis)
+        return SlowFlow(self.problem, self.computation, self._views, self.symbols)
 
     @property
     def relations(self) -> dict[sp.Expr, sp.Expr]:
-        """Exact relations between natural frequencies: {frequency: rational multiple of an earlier one}."""
+        """All relations in force: those declared, and exact ones, {frequency: rational multiple of an earlier one}."""
         bases = self.computation.canonical.bases
-        expressed = {}
+        expressed = dict(self.problem.resonances)
         for k, rate in enumerate(bases.rates):
             multiples = [j for j in range(k) if _parallel(bases.rates[j], rate)]
             if multiples:
@@ -106,10 +102,11 @@ class Expansion:
         modes = self.computation.modes
         if not isinstance(mode, int) or mode not in range(modes):
             raise MultiscaleError(f"mode is {mode!r}: this expansion has the modes 0 … {modes - 1}")
-        if self._basis.resonant:
+        if self.slow_flow.phases or not self.slow_flow.autonomous:
             raise ResonanceError(
-                "the modes are in internal resonance, so the frequency depends on the phases "
-                f"{', '.join(map(str, self.slow_flow.phases.values()))}: use slow_flow.polar"
+                "the slow flow depends on phases or on time "
+                f"({', '.join(map(str, self.slow_flow.phases.values())) or self.problem.time}), so the frequency is no "
+                "function of the amplitude: use slow_flow.polar"
             )
         turns = [self.slow_flow._polar_part(n, mode)[1] for n in range(1, self.order + 1)]
         return (self.problem.natural_frequencies[mode], *turns)
@@ -125,7 +122,7 @@ class Expansion:
     def solution(self, form: str = "polar", order: int | None = None) -> dict[sp.Expr, sp.Expr]:
         """{unknown: U_0 + εU_1 + …} through U_order (default N) in the slow variables of `form` and time.
 
-        "polar" uses a and β, "complex" A and its conjugate, "cartesian" p and q in the rotating frame.
+        The variables are those of the slow flow in the same form; A, p and q refer to the rotating frame.
         """
         if form not in FORMS:
             raise MultiscaleError(f"form is {form!r}: expected one of {', '.join(map(repr, FORMS))}")
@@ -214,7 +211,7 @@ def _parallel(x: tuple[int, ...], y: tuple[int, ...]) -> bool:
 
 
 def _rebuilt(problem: Problem, order: int, amplitude: str, snapshot: Snapshot) -> Expansion:
-    return Expansion(problem, order, amplitude, computation=restore(problem.canonical, snapshot))
+    return Expansion(problem, order, amplitude, computation=restore(problem.canonical(order), snapshot))
 
 
 def _taken_to(
@@ -272,8 +269,8 @@ def expand(
     """
     if not isinstance(problem, Problem):
         raise ProblemError(f"expand was given a {type(problem).__name__}: state a multiscale.Problem first")
-    computation = begin(problem.canonical, representation)
-    expansion = _taken_to(problem, computation, _checked_order(order, 1), on_level)
+    order = _checked_order(order, 1)
+    expansion = _taken_to(problem, begin(problem.canonical(order), representation), order, on_level)
     if remark := incomplete_cubic(problem, expansion.computation):
         warnings.warn(remark, OrderingWarning, stacklevel=2)
     return expansion
@@ -281,4 +278,9 @@ def expand(
 
 def extend(expansion: Expansion, order: int, *, on_level: Callable[[Level], object] | None = None) -> Expansion:
     """The same expansion to a higher order; no level is computed again."""
-    return _taken_to(expansion.problem, expansion.computation, _checked_order(order, expansion.order), on_level)
+    order = _checked_order(order, expansion.order)
+    computation, canonical = expansion.computation, expansion.problem.canonical(order)
+    if canonical != computation.canonical:
+        # The statement was expanded in ε to a lower order; what is known goes on under the longer form.
+        computation = restore(canonical, computation.snapshot(), computation.representation)
+    return _taken_to(expansion.problem, computation, order, on_level)

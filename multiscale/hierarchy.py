@@ -65,12 +65,15 @@ class Hierarchy:
     met: frozenset[tuple[int, Rate]] = frozenset()
 
     def in_ring(self, ring: Ring) -> Hierarchy:
+        clock, tower = self.clock.in_ring(ring), self.tower.lifted(ring)
+        # New reciprocals of slow quantities vary too, which the derivations of lower levels could not know.
+        time = (tower.time[0], *(d.merged(clock.at_level(n)) for n, d in enumerate(tower.time[1:], start=1)))
         return replace(
             self,
             linear_part=self.linear_part.in_ring(ring),
             force=self.force.in_ring(ring),
-            clock=self.clock.in_ring(ring),
-            tower=self.tower.lifted(ring),
+            clock=clock,
+            tower=replace(tower, time=time),
         )
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass
+from fractions import Fraction
 from functools import cached_property
 
 import sympy as sp
@@ -11,7 +12,7 @@ import sympy as sp
 from multiscale.algebra.polynomial import Frozen
 from multiscale.computed import Computation, Finished
 from multiscale.expressions import Writer
-from multiscale.linear_part import Rate
+from multiscale.frame import turns
 from multiscale.problem import Problem
 from multiscale.symbols import Symbols
 
@@ -34,7 +35,8 @@ class Level:
     solvability : dict
         {D_nA: its value}, the condition that removes the secular terms.
     corrections : dict
-        {unknown: U_n}, without any part at the natural frequency for n ≥ 1.
+        {unknown: U_n}, without any part at the natural frequency for n ≥ 1. As everywhere, A is the amplitude in the
+        rotating frame (`SlowFlow.frame`).
     divisors : tuple
         The polynomials in parameters that stand in denominators of this level, after reduction.
     """
@@ -53,6 +55,14 @@ class Level:
         return r"$\displaystyle \begin{aligned}" + r" \\ ".join(rows) + r"\end{aligned}$"
 
 
+def _phase(frequency: sp.Expr, time: sp.Symbol) -> sp.Expr:
+    """∫ω dt: ωt, or an integral where the frequency varies slowly."""
+    if time not in frequency.free_symbols:
+        return frequency * time
+    tau = sp.Symbol("tau", real=True)
+    return sp.Integral(frequency.subs(time, tau), (tau, 0, time))
+
+
 def polynomials_below(finished: Iterable[Finished]) -> list[Frozen]:
     """The distinct denominators in finished coefficients, in a fixed order."""
     found = {p for f in finished for c in f.values() for q in (c.real, c.imag) for p, _ in q.denominator}
@@ -69,16 +79,38 @@ class Views:
     def writer(self) -> Writer:
         return Writer(dict(self._computation.canonical.meanings))
 
-    def frequency(self, rate: Rate) -> sp.Expr:
-        """The frequency that a rate stands for."""
-        bases = self._computation.canonical.bases
-        return sp.Add(
-            *(sp.Rational(r, bases.unit) * self.writer.polynomial(b) for r, b in zip(rate, bases.values, strict=True))
-        )
+    @cached_property
+    def _generators(self) -> list[sp.Expr]:
+        """What the rows of the frame count: natural phases ω_f t and the angles of the drives."""
+        time = self._problem.time
+        canonical = self._computation.canonical
+        natural = [_phase(w, time) for w in canonical.frequencies]
+        return [*natural, *(d.angle for d in canonical.drives)]
 
-    def amplitudes(self, finished: Finished) -> sp.Expr:
-        """A polynomial in A and its conjugate, the fast phases left out."""
-        return sp.Add(*(self.writer.coefficient(c) * self._monomial(m) for m, c in finished.items()))
+    def angle(self, combination: tuple[int, ...]) -> sp.Expr:
+        """The fast angle of a combination (turns with the modes, turns with the drives), in time."""
+        row = self._computation.frame.fast(combination)
+        terms = (sp.Rational(x.numerator, x.denominator) * y for x, y in zip(row, self._generators, strict=True))
+        return sp.Add(*terms)
+
+    def natural_phase(self, mode: int) -> sp.Expr:
+        """∫ω dt of a mode at leading order."""
+        return self._generators[mode]
+
+    def fast_angle(self, mode: int) -> sp.Expr:
+        """Φ of a mode: the angle its frame turns through."""
+        modes, drives = self._computation.modes, len(self._computation.canonical.drives)
+        return self.angle(tuple(int(k == mode) for k in range(modes)) + (0,) * drives)
+
+    def amplitudes(self, finished: Finished, mode: int) -> sp.Expr:
+        """A term of dA_mode/dt in the frame: a polynomial in A and its conjugate, explicit time where it remains."""
+        frame = self._computation.frame
+        terms = []
+        for m, c in finished.items():
+            rest = self.angle(frame.relative(m, mode))
+            wave = sp.exp(sp.I * rest) if rest != 0 else sp.Integer(1)
+            terms.append(self.writer.coefficient(c) * self._monomial(m) * wave)
+        return sp.Add(*terms)
 
     def _monomial(self, exponents: tuple[int, ...]) -> sp.Expr:
         factors = [
@@ -87,16 +119,14 @@ class Views:
         return sp.Mul(*factors)
 
     def field(self, finished: Finished) -> sp.Expr:
-        """A field in A, its conjugate and T_0, grouped by harmonic."""
-        groups: dict[Rate, list[sp.Expr]] = {}
+        """A field in A, its conjugate and time, grouped by harmonic."""
+        groups: dict[tuple[Fraction, ...], list[sp.Expr]] = {}
+        angles: dict[tuple[Fraction, ...], sp.Expr] = {}
         for m, c in finished.items():
-            groups.setdefault(self._computation.rate(m), []).append(self.writer.coefficient(c) * self._monomial(m))
-        return sp.Add(
-            *(
-                sp.Add(*terms) * sp.exp(sp.I * self.frequency(rate) * self._symbols.T[0])
-                for rate, terms in sorted(groups.items())
-            )
-        )
+            row = self._computation.frame.fast(turns(m))
+            angles[row] = self.angle(turns(m))
+            groups.setdefault(row, []).append(self.writer.coefficient(c) * self._monomial(m))
+        return sp.Add(*(sp.Add(*terms) * sp.exp(sp.I * angles[row]) for row, terms in sorted(groups.items())))
 
     def level(self, n: int) -> Level:
         problem, computation = self._problem, self._computation
@@ -106,14 +136,14 @@ class Views:
         for k, (u, omega) in enumerate(zip(problem.unknowns, problem.natural_frequencies, strict=True)):
             unknown = sp.Function(f"{u.func.__name__}_{n}")(T0)
             operator[u] = unknown.diff(T0, 2) + omega**2 * unknown
-            corrections[u] = self.field(computation.field(n, k))
-            total, resonant = computation.forcing(n, k) if n else ({}, {})
-            forcing[u], secular[u] = self.field(total), self.field(resonant)
+            corrections[u] = self.field(computation.field(n, k)).subs(problem.time, T0)
+            total, resonant = computation.forcing(n, k)
+            forcing[u], secular[u] = (self.field(x).subs(problem.time, T0) for x in (total, resonant))
             below.append(computation.field(n, k))
         solvability = {}
         for a, A in enumerate(self._symbols.A if n else ()):
-            change = computation.change(n, a)
+            change = computation.flow(n, a)
             below.append(change)
-            solvability[sp.Symbol(f"D_{n}{A.name}", complex=True)] = self.amplitudes(change)
+            solvability[sp.Symbol(f"D_{n}{A.name}", complex=True)] = self.amplitudes(change, a).subs(problem.time, T0)
         divisors = tuple(self.writer.polynomial(p) for p in polynomials_below(below))
         return Level(n, operator, forcing, secular, solvability, corrections, divisors)

@@ -1,9 +1,10 @@
 """The slow flow: dA/dt, reconstituted over all levels, in complex, polar and Cartesian form.
 
-With A_j = ½ a_j e^{iβ_j} and dA_j/dt = Σ c · Π A_l^{p_l} Ā_l^{q_l}, writing K for the phase of a term relative to A_j:
+In the rotating frame (`multiscale.frame`), A_j = ½ a_j e^{iδ_j} and dA_j/dt = Σ c · Π A_l^{p_l} Ā_l^{q_l}; writing K for
+the phase of a term relative to A_j:
 
     da_j/dt      = Σ 2 Π (a_l/2)^{p_l+q_l} (Re c · cos K − Im c · sin K)
-    a_j dβ_j/dt  = Σ 2 Π (a_l/2)^{p_l+q_l} (Im c · cos K + Re c · sin K)
+    a_j dδ_j/dt  = Σ 2 Π (a_l/2)^{p_l+q_l} (Im c · cos K + Re c · sin K)
 
 With A_j = ½ (p_j − i q_j):
 
@@ -19,36 +20,19 @@ from typing import TYPE_CHECKING
 
 import sympy as sp
 
-from multiscale.algebra.ring import Exponents
 from multiscale.computed import Computation
 from multiscale.errors import EvaluationError
+from multiscale.frame import turns
 from multiscale.level import Views
-from multiscale.phases import PhaseBasis, phase_basis
 from multiscale.problem import Problem
 from multiscale.symbols import Symbols
 
 if TYPE_CHECKING:
     from multiscale.codegen.numpy_function import NumpyFunction
 
-__all__ = ["SlowFlow", "resonant_phases"]
+__all__ = ["SlowFlow"]
 
 FORMS = ("complex", "polar", "cartesian")
-
-
-def relative(exponents: Exponents, mode: int) -> tuple[int, ...]:
-    """The phase combination K of a term of dA_mode/dt, relative to the phase of A_mode."""
-    return tuple(exponents[2 * k] - exponents[2 * k + 1] - (k == mode) for k in range(len(exponents) // 2))
-
-
-def resonant_phases(computation: Computation) -> PhaseBasis:
-    """The phase combinations that the flow of this computation contains."""
-    found = {
-        relative(m, a)
-        for n in range(1, computation.order + 1)
-        for a in range(computation.modes)
-        for m in computation.change(n, a)
-    }
-    return phase_basis(found, computation.modes)
 
 
 class SlowFlow:
@@ -65,21 +49,13 @@ class SlowFlow:
     {a: 0, beta: 3*a**2*epsilon/8}
     """
 
-    def __init__(
-        self, problem: Problem, computation: Computation, views: Views, symbols: Symbols, basis: PhaseBasis
-    ) -> None:
-        self._problem, self._computation, self._views, self._symbols, self._basis = (
-            problem,
-            computation,
-            views,
-            symbols,
-            basis,
-        )
+    def __init__(self, problem: Problem, computation: Computation, views: Views, symbols: Symbols) -> None:
+        self._problem, self._computation, self._views, self._symbols = problem, computation, views, symbols
+        self._frame = computation.frame
 
     def __repr__(self) -> str:
-        return (
-            f"SlowFlow(order {self._computation.order}, {self._computation.modes} mode(s), phases {list(self.phases)})"
-        )
+        order, modes = self._computation.order, self._computation.modes
+        return f"SlowFlow(order {order}, {modes} mode{'s' if modes > 1 else ''}, phases {list(self.phases)})"
 
     @property
     def _levels(self) -> range:
@@ -89,7 +65,7 @@ class SlowFlow:
     def by_scale(self) -> dict[int, dict[sp.Symbol, sp.Expr]]:
         """{n: {A: D_nA}}, the rate of change on each slow time alone."""
         return {
-            n: {A: self._views.amplitudes(self._computation.change(n, a)) for a, A in enumerate(self._symbols.A)}
+            n: {A: self._views.amplitudes(self._computation.flow(n, a), a) for a, A in enumerate(self._symbols.A)}
             for n in self._levels
         }
 
@@ -104,54 +80,59 @@ class SlowFlow:
         }
 
     @property
+    def autonomous(self) -> bool:
+        """Whether time does not appear explicitly; slow parameters and beats between drives make it appear."""
+        return self._computation.autonomous
+
+    @property
     def phases(self) -> dict[sp.Symbol, sp.Expr]:
-        """{γ: its definition} for the phase combinations that drive the flow."""
-        beta = self._symbols.beta
+        """{γ: its definition} for the phases that drive the flow; u = a cos(ω t + β) + … defines β for every mode."""
+        own = [self._views.natural_phase(j) + b - self._views.fast_angle(j) for j, b in enumerate(self._symbols.beta)]
         return {
-            g: sp.Add(*(n * b for n, b in zip(row, beta, strict=True)))
-            for g, row in zip(self._symbols.gamma, self._basis.resonant, strict=True)
+            g: sp.expand(sp.Add(*(n * d for n, d in zip(row, own, strict=True))))
+            for g, row in zip(self._symbols.gamma, self._frame.resonant, strict=True)
         }
 
     @property
     def cyclic(self) -> tuple[sp.Symbol, ...]:
         """The phases that drive nothing."""
-        return tuple(self._symbols.beta[j] for j in self._basis.cyclic)
+        return tuple(self._symbols.beta[j] for j in self._frame.cyclic)
 
     @property
     def frame(self) -> dict[sp.Symbol, sp.Expr]:
         """{A: the fast angle that is removed}."""
-        return {
-            A: w * self._problem.time for A, w in zip(self._symbols.A, self._problem.natural_frequencies, strict=True)
-        }
+        return {A: self._views.fast_angle(j) for j, A in enumerate(self._symbols.A)}
 
     @cached_property
     def polar(self) -> dict[sp.Symbol, sp.Expr]:
         """{a: da/dt, …}, then the resonant phases γ, then the cyclic phases β."""
         modes = range(self._computation.modes)
         amplitude = {self._symbols.a[j]: self._summed(lambda n, a: self._polar_part(n, a)[0], j) for j in modes}
-        beta = [self._summed(lambda n, a: self._polar_part(n, a)[1], j) for j in modes]
+        turning = [self._summed(lambda n, a: self._polar_part(n, a)[1], j) for j in modes]
         gamma = {
-            g: sp.Add(*(k * b for k, b in zip(row, beta, strict=True)))
-            for g, row in zip(self._symbols.gamma, self._basis.resonant, strict=True)
+            g: sp.Add(*(k * d for k, d in zip(row, turning, strict=True)))
+            for g, row in zip(self._symbols.gamma, self._frame.resonant, strict=True)
         }
-        return amplitude | gamma | {self._symbols.beta[j]: beta[j] for j in self._basis.cyclic}
+        return amplitude | gamma | {self._symbols.beta[j]: turning[j] for j in self._frame.cyclic}
 
     def _polar_part(self, n: int, mode: int) -> tuple[sp.Expr, sp.Expr]:
-        """(da/dt, dβ/dt) of one mode at one level."""
+        """(da/dt, dδ/dt) of one mode at one level."""
         rate, turn = [], []
         write = self._views.writer.quotient
-        for exponents, c in self._computation.change(n, mode).items():
-            degree = sum(exponents)
-            powers = [exponents[2 * k] + exponents[2 * k + 1] for k in range(len(exponents) // 2)]
-            size = sp.Mul(sp.Rational(2, 2**degree), *(a**e for a, e in zip(self._symbols.a, powers, strict=True)))
-            angle = self._angle(relative(exponents, mode))
+        amplitudes = self._symbols.a
+        for exponents, c in self._computation.flow(n, mode).items():
+            powers = [exponents[2 * k] + exponents[2 * k + 1] for k in range(len(amplitudes))]
+            size = sp.Mul(sp.Rational(2, 2 ** sum(powers)), *(a**e for a, e in zip(amplitudes, powers, strict=True)))
+            combination = self._frame.relative(exponents, mode)
+            angle = self._angle(combination) + self._views.angle(combination)
             real, imag = write(c.real), write(c.imag)
             rate.append(size * (real * sp.cos(angle) - imag * sp.sin(angle)))
-            turn.append(size / self._symbols.a[mode] * (imag * sp.cos(angle) + real * sp.sin(angle)))
+            turn.append(size / amplitudes[mode] * (imag * sp.cos(angle) + real * sp.sin(angle)))
         return sp.Add(*rate), sp.Add(*turn)
 
     def _angle(self, combination: tuple[int, ...]) -> sp.Expr:
-        return sp.Add(*(n * g for n, g in zip(self._basis.coordinates(combination), self._symbols.gamma, strict=True)))
+        numbers = self._frame.coordinates(combination)
+        return sp.Add(*(n * g for n, g in zip(numbers, self._symbols.gamma, strict=True)))
 
     @cached_property
     def cartesian(self) -> dict[sp.Symbol, sp.Expr]:
@@ -165,17 +146,23 @@ class SlowFlow:
     def _cartesian_part(self, n: int, mode: int) -> tuple[sp.Expr, sp.Expr]:
         """(dp/dt, dq/dt) of one mode at one level, grouped by phase factor."""
         write = self._views.writer.quotient
-        groups: dict[tuple[int, ...], list[tuple[sp.Expr, sp.Expr]]] = {}
-        for exponents, c in self._computation.change(n, mode).items():
-            turns = tuple(exponents[2 * k] - exponents[2 * k + 1] for k in range(len(exponents) // 2))
-            radii = [min(exponents[2 * k], exponents[2 * k + 1]) for k in range(len(turns))]
-            square = [(p**2 + q**2) ** e for p, q, e in zip(self._symbols.p, self._symbols.q, radii, strict=True)]
-            c = c.scaled(Fraction(2, 2 ** sum(exponents)))
-            groups.setdefault(turns, []).append((sp.Mul(write(c.real), *square), sp.Mul(write(c.imag), *square)))
+        groups: dict[tuple[tuple[int, ...], sp.Expr], list[tuple[sp.Expr, sp.Expr]]] = {}
+        p, q = self._symbols.p, self._symbols.q
+        for exponents, c in self._computation.flow(n, mode).items():
+            own = turns(exponents)[: len(p)]
+            radii = [min(exponents[2 * k], exponents[2 * k + 1]) for k in range(len(p))]
+            square = [(x**2 + y**2) ** e for x, y, e in zip(p, q, radii, strict=True)]
+            c = c.scaled(Fraction(2, 2 ** sum(exponents[: 2 * len(p)])))
+            rest = self._views.angle(self._frame.relative(exponents, mode))
+            parts = sp.Mul(write(c.real), *square), sp.Mul(write(c.imag), *square)
+            groups.setdefault((own, rest), []).append(parts)
         p_rate, q_rate = [], []
-        for turns, parts in groups.items():
-            cosine, sine = self._phase_factor(turns)
-            real, imag = (sp.Add(*column) for column in zip(*parts, strict=True))
+        for (own, rest), terms in groups.items():
+            cosine, sine = self._phase_factor(own)
+            if rest != 0:
+                wave = sp.cos(rest), sp.sin(rest)
+                cosine, sine = cosine * wave[0] - sine * wave[1], cosine * wave[1] + sine * wave[0]
+            real, imag = (sp.Add(*column) for column in zip(*terms, strict=True))
             p_rate.append(real * cosine - imag * sine)
             q_rate.append(-(imag * cosine) - real * sine)
         return sp.Add(*p_rate), sp.Add(*q_rate)
@@ -223,7 +210,7 @@ class SlowFlow:
             raise EvaluationError(
                 "the complex form depends on A and its conjugate and has no Jacobian: use 'cartesian' or 'polar'"
             )
-        return slow_flow_function(self._problem, self._computation, self._basis, form, wrt)
+        return slow_flow_function(self._problem, self._computation, form, wrt)
 
     def _repr_latex_(self) -> str:
         rows = [rf"\dot{{{sp.latex(x)}}} &= {sp.latex(value)}" for x, value in self.polar.items()]

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import sympy as sp
 
 from multiscale.computed import Computation, Finished
+from multiscale.frame import turns
 from multiscale.level import Views
 from multiscale.problem import Problem
 from multiscale.symbols import Symbols
@@ -12,65 +15,64 @@ from multiscale.symbols import Symbols
 __all__ = ["FORMS", "solution"]
 
 FORMS = ("polar", "complex", "cartesian")
+Complex = tuple[sp.Expr, sp.Expr]
 
 
 def solution(
     problem: Problem, computation: Computation, views: Views, symbols: Symbols, form: str, order: int
 ) -> dict[sp.Expr, sp.Expr]:
     """{unknown: Σ εⁿ U_n, n = 0 … order}."""
-    build = {"polar": _polar, "complex": _complex, "cartesian": _cartesian}[form]
+    modes = computation.modes
+    if form == "complex":
+        build: Callable[[Finished], sp.Expr] = views.field
+    elif form == "polar":
+        deviations = computation.frame.deviations(symbols.gamma, symbols.beta)
+
+        def build(finished: Finished) -> sp.Expr:
+            return _real_field(finished, modes, views, lambda m: _polar_wave(m, deviations, views, symbols))
+    else:
+
+        def build(finished: Finished) -> sp.Expr:
+            return _real_field(finished, modes, views, lambda m: _cartesian_wave(m, views, symbols))
+
     return {
-        u: sp.Add(
-            *(
-                problem.small**n * build(computation.field(n, k), problem, computation, views, symbols)
-                for n in range(order + 1)
-            )
-        )
+        u: sp.Add(*(problem.small**n * build(computation.field(n, k)) for n in range(order + 1)))
         for k, u in enumerate(problem.unknowns)
     }
 
 
-def _complex(finished: Finished, problem: Problem, computation: Computation, views: Views, symbols: Symbols) -> sp.Expr:
-    return views.field(finished).subs(symbols.T[0], problem.time)
+def _real_field(finished: Finished, modes: int, views: Views, wave: Callable[[tuple[int, ...]], Complex]) -> sp.Expr:
+    """Σ c M over one of each conjugate pair of terms: c M + conj = 2 (Re c Re M − Im c Im M).
 
-
-def _polar(finished: Finished, problem: Problem, computation: Computation, views: Views, symbols: Symbols) -> sp.Expr:
-    angles = [w * problem.time + b for w, b in zip(problem.natural_frequencies, symbols.beta, strict=True)]
+    `wave` gives the real and imaginary part of Π z^p z̄^q e^m without the factors ½ of the amplitudes.
+    """
     terms = []
     for m, c in finished.items():
-        turns = tuple(m[2 * k] - m[2 * k + 1] for k in range(len(m) // 2))
-        if turns < tuple(-x for x in turns):
+        own = turns(m)
+        if own < tuple(-x for x in own):
             continue
-        size = sp.Mul(
-            sp.Rational(2 if any(turns) else 1, 2 ** sum(m)),
-            *(a ** (m[2 * k] + m[2 * k + 1]) for k, a in enumerate(symbols.a)),
-        )
-        angle = sp.Add(*(n * x for n, x in zip(turns, angles, strict=True)))
-        terms.append(
-            size * (views.writer.quotient(c.real) * sp.cos(angle) - views.writer.quotient(c.imag) * sp.sin(angle))
-        )
+        size = sp.Rational(2 if any(own) else 1, 2 ** sum(m[: 2 * modes]))
+        cosine, sine = wave(m)
+        terms.append(size * (views.writer.quotient(c.real) * cosine - views.writer.quotient(c.imag) * sine))
     return sp.Add(*terms)
 
 
-def _cartesian(
-    finished: Finished, problem: Problem, computation: Computation, views: Views, symbols: Symbols
-) -> sp.Expr:
-    """With z = A e^{iωt} = ½ (P − iQ): P = p cos ωt + q sin ωt, Q = q cos ωt − p sin ωt."""
-    rotated = []
-    for p, q, w in zip(symbols.p, symbols.q, problem.natural_frequencies, strict=True):
-        cosine, sine = sp.cos(w * problem.time), sp.sin(w * problem.time)
-        rotated.append((p * cosine + q * sine, q * cosine - p * sine, p**2 + q**2))
-    terms = []
-    for m, c in finished.items():
-        turns = tuple(m[2 * k] - m[2 * k + 1] for k in range(len(m) // 2))
-        if turns < tuple(-x for x in turns):
-            continue
-        real, imag = sp.Integer(1), sp.Integer(0)
-        size = sp.Rational(2 if any(turns) else 1, 2 ** sum(m))
-        for (P, Q, radius), k, up, down in zip(rotated, turns, m[::2], m[1::2], strict=True):
-            size *= radius ** min(up, down)
-            y = -Q if k > 0 else Q
-            for _ in range(abs(k)):
-                real, imag = real * P - imag * y, real * y + imag * P
-        terms.append(size * (views.writer.quotient(c.real) * real - views.writer.quotient(c.imag) * imag))
-    return sp.Add(*terms)
+def _polar_wave(exponents: tuple[int, ...], deviations: list[sp.Expr], views: Views, symbols: Symbols) -> Complex:
+    own = turns(exponents)
+    size = sp.Mul(*(a ** (exponents[2 * k] + exponents[2 * k + 1]) for k, a in enumerate(symbols.a)))
+    angle = views.angle(own) + sp.Add(*(n * d for n, d in zip(own, deviations, strict=False)))
+    return size * sp.cos(angle), size * sp.sin(angle)
+
+
+def _cartesian_wave(exponents: tuple[int, ...], views: Views, symbols: Symbols) -> Complex:
+    """With A = ½ (p − iq) and its own fast angle apart: the slow factor times cos and sin of that angle."""
+    own = turns(exponents)
+    real, imag, size = sp.Integer(1), sp.Integer(0), sp.Integer(1)
+    for j, (p, q) in enumerate(zip(symbols.p, symbols.q, strict=True)):
+        size *= (p**2 + q**2) ** min(exponents[2 * j], exponents[2 * j + 1])
+        y = -q if own[j] > 0 else q
+        for _ in range(abs(own[j])):
+            real, imag = sp.expand(real * p - imag * y), sp.expand(real * y + imag * p)
+    angle = views.angle(own)
+    cosine, sine = sp.cos(angle), sp.sin(angle)
+    return size * (real * cosine - imag * sine), size * (real * sine + imag * cosine)

@@ -31,7 +31,7 @@ class Symbols:
 class _Names:
     def __init__(self, problem: Problem) -> None:
         self._unknowns = [u.func.__name__ for u in problem.unknowns]
-        self._taken = {s.name for s in (*problem.parameters, problem.small, problem.time)} | set(self._unknowns)
+        self._taken = set(problem.names)
 
     def series(self, stem: str, count: int, **assumptions: bool) -> tuple[sp.Symbol, ...]:
         result = []

@@ -65,7 +65,9 @@ class Tower:
             acceleration.append(self.time[0].of_real(ring, v) + w)
         return tuple(velocity), tuple(acceleration)
 
-    def completed(self, pending: tuple[Field, Field], known: Derivation, displacement: Field, slow: Derivation) -> Tower:
+    def completed(
+        self, pending: tuple[Field, Field], known: Derivation, displacement: Field, slow: Derivation
+    ) -> Tower:
         """The tower with level n added: U_n, the D_nA in `slow`, and what follows from them."""
         ring, fast = self.ring, self.time[0]
         velocity, acceleration = [], []

@@ -64,7 +64,7 @@ class Derivation:
         )
 
     def merged(self, other: Derivation) -> Derivation:
-        """The derivation with the images of both, which concern different generators."""
+        """The derivation with the images of both; where both have one, the other's counts."""
         return Derivation({**self.images, **other.images}, {**self.real_images, **other.real_images})
 
 

@@ -28,6 +28,8 @@ __all__ = ["FlintRing"]
 class FlintRing(NamedTerms):
     """A `Ring` on FLINT; see `multiscale.algebra.ring` for the contract."""
 
+    representation = "flint"
+
     def __init__(self, spec: RingSpec) -> None:
         self.spec = spec
         self._context = fmpq_mpoly_ctx.get(spec.names, Ordering.lex)

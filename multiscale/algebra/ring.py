@@ -104,6 +104,7 @@ class RingSpec:
 class Ring(Protocol):
     """What a representation offers; the laws stand at the head of this module."""
 
+    representation: str
     spec: RingSpec
     zero: Any
     one: Any

@@ -67,6 +67,8 @@ class Scaled:
 class SympyRing(NamedTerms):
     """A `Ring` on `sympy.polys.rings`; see `multiscale.algebra.ring` for the contract."""
 
+    representation = "sympy"
+
     def __init__(self, spec: RingSpec) -> None:
         self.spec = spec
         self._ring: Any = PolyRing(tuple(map(Symbol, spec.names)), ZZ, lex)

@@ -10,9 +10,8 @@ from multiscale.codegen.printer import source
 from multiscale.codegen.program import Complex, Program
 from multiscale.codegen.tape import Node
 from multiscale.computed import Computation
-from multiscale.phases import PhaseBasis
+from multiscale.frame import turns
 from multiscale.problem import Problem
-from multiscale.slow_flow import relative
 
 __all__ = ["displacement_function", "frequency_function", "slow_flow_function"]
 
@@ -39,77 +38,71 @@ def _cartesian_state(program: Program, modes: int) -> tuple[list[str], list[Comp
     return names, list(zip(nodes[::2], nodes[1::2], strict=True))
 
 
-def _changes(program: Program, computation: Computation, mode: int) -> dict[tuple[int, ...], Complex]:
-    return program.series((n, computation.change(n, mode)) for n in range(1, computation.order + 1))
-
-
-def _combined(program: Program, groups: dict[tuple[int, ...], Complex], state: Sequence[Complex]) -> Complex:
-    """Σ polynomial · phase factor, real and imaginary part."""
-    tape = program.tape
-    products = [program.multiply(value, program.phase_factor(state, turns)) for turns, value in groups.items()]
-    return tape.total(x for x, _ in products), tape.total(y for _, y in products)
+def _flow(program: Program, computation: Computation, mode: int) -> dict[tuple[int, ...], Complex]:
+    return program.series((n, computation.flow(n, mode)) for n in range(1, computation.order + 1))
 
 
 def _cartesian(program: Program, computation: Computation) -> tuple[list[str], list[Node]]:
     names, state = _cartesian_state(program, computation.modes)
-    tape = program.tape
+    tape, modes = program.tape, computation.modes
     outputs = []
-    for a in range(computation.modes):
-        real, imag = _combined(program, program.by_turns(_changes(program, computation, a), state, half=False), state)
+    for a in range(modes):
+        # In the frame the fast part of a term, relative to the mode's own, is zero but for beats between drives.
+        own = tuple(int(k == a) for k in range(modes)) + (0,) * len(computation.canonical.drives)
+
+        def wave(key: tuple[int, ...], own: tuple[int, ...] = own) -> Complex:
+            rest = program.wave(tuple(x - y for x, y in zip(key, own, strict=True)))
+            return program.multiply(program.phase_factor(state, key[:modes]), rest)
+
+        real, imag = program.summed(program.grouped(_flow(program, computation, a), turns), state, wave)
         two = tape.constant(2)
         outputs += [tape.mul(two, real), tape.neg(tape.mul(two, imag))]
     return names, outputs
 
 
-def _polar(program: Program, computation: Computation, basis: PhaseBasis) -> tuple[list[str], list[Node]]:
-    tape, modes = program.tape, range(computation.modes)
-    names = (
-        [f"state a{k + 1}" for k in modes]
-        + [f"state gamma{k + 1}" for k in range(len(basis.resonant))]
-        + [f"state beta{j + 1}" for j in basis.cyclic]
-    )
+def _polar(program: Program, computation: Computation) -> tuple[list[str], list[Node]]:
+    tape, modes, frame = program.tape, range(computation.modes), computation.frame
+    names = [f"state a{k + 1}" for k in modes]
+    names += [f"state gamma{k + 1}" for k in range(len(frame.resonant))] + [f"state beta{j + 1}" for j in frame.cyclic]
     nodes = [tape.input(name) for name in names]
-    size, phases = nodes[: computation.modes], nodes[computation.modes :][: len(basis.resonant)]
-    rates, turns = [], []
+    size, phases = nodes[: computation.modes], nodes[computation.modes :][: len(frame.resonant)]
+    rates, turning = [], []
     for a in modes:
-        rate, turn = _polar_mode(program, computation, basis, a, size, phases)
+        rate, turn = _polar_mode(program, computation, a, size, phases)
         rates.append(rate)
-        turns.append(turn)
+        turning.append(turn)
     combined = [
-        tape.total(tape.mul(tape.constant(n), b) for n, b in zip(row, turns, strict=True)) for row in basis.resonant
+        tape.total(tape.mul(tape.constant(n), b) for n, b in zip(row, turning, strict=True)) for row in frame.resonant
     ]
-    return names, [*rates, *combined, *(turns[j] for j in basis.cyclic)]
+    return names, [*rates, *combined, *(turning[j] for j in frame.cyclic)]
 
 
-def _polar_mode(
-    program: Program, computation: Computation, basis: PhaseBasis, a: int, size: list[Node], phases: list[Node]
-) -> Complex:
-    """(da/dt, dβ/dt) of one mode: the terms of dA/dt, grouped by their phase."""
-    tape = program.tape
+def _polar_mode(program: Program, computation: Computation, a: int, size: list[Node], phases: list[Node]) -> Complex:
+    """(da/dt, dδ/dt) of one mode: the terms of dA/dt, grouped by their phase."""
+    tape, frame, modes = program.tape, computation.frame, computation.modes
     groups: dict[tuple[int, ...], tuple[dict[tuple[int, ...], Node], dict[tuple[int, ...], Node]]] = {}
-    for m, (real, imag) in _changes(program, computation, a).items():
-        powers = tuple(m[2 * k] + m[2 * k + 1] for k in range(computation.modes))
-        scale = tape.constant(Fraction(2, 2 ** sum(m)))
-        pair = groups.setdefault(basis.coordinates(relative(m, a)), ({}, {}))
-        for table, node in zip(pair, (real, imag), strict=True):
+    for m, pair in _flow(program, computation, a).items():
+        powers = tuple(m[2 * k] + m[2 * k + 1] for k in range(modes))
+        tables = groups.setdefault(frame.relative(m, a), ({}, {}))
+        for table, node in zip(tables, pair, strict=True):
             if node != tape.constant(0):
-                table[powers] = tape.mul(scale, node)
-    regular = all(m[a] for pair in groups.values() for table in pair for m in table)
-    zero = tape.constant(0)
+                scaled = tape.mul(tape.constant(Fraction(2, 2 ** sum(powers))), node)
+                table[powers] = tape.add(table.get(powers, tape.constant(0)), scaled)
+    regular = all(m[a] for tables in groups.values() for table in tables for m in table)
+    lower = int(regular)
     rate, turn = [], []
-    for combination, (real_table, imag_table) in groups.items():
-        angle = tape.total(tape.mul(tape.constant(n), g) for n, g in zip(combination, phases, strict=True))
-        cosine, sine = (
-            (tape.call("cos", angle), tape.call("sin", angle)) if any(combination) else (tape.constant(1), zero)
-        )
-        lower = (lambda t: {(*m[:a], m[a] - 1, *m[a + 1 :]): c for m, c in t.items()}) if regular else dict
-        tables = [program.horner(lower(t), size) if t else zero for t in (real_table, imag_table)]
-        rate.append(tape.sub(tape.mul(tables[0], cosine), tape.mul(tables[1], sine)))
-        turn.append(tape.add(tape.mul(tables[1], cosine), tape.mul(tables[0], sine)))
-    total_rate, total_turn = tape.total(rate), tape.total(turn)
+    for combination, tables in groups.items():
+        slow = zip(frame.coordinates(combination), phases, strict=True)
+        angle = tape.add(tape.total(tape.mul(tape.constant(n), g) for n, g in slow), program.angle(combination))
+        zero = tape.constant(0)
+        cosine, sine = (tape.constant(1), zero) if angle == zero else (tape.call("cos", angle), tape.call("sin", angle))
+        lowered = [{(*m[:a], m[a] - lower, *m[a + 1 :]): c for m, c in t.items()} for t in tables]
+        real, imag = (program.horner(t, size) if t else zero for t in lowered)
+        rate.append(tape.sub(tape.mul(real, cosine), tape.mul(imag, sine)))
+        turn.append(tape.add(tape.mul(imag, cosine), tape.mul(real, sine)))
     if regular:
-        return tape.mul(size[a], total_rate), total_turn
-    return total_rate, tape.div(total_turn, size[a])
+        return tape.mul(size[a], tape.total(rate)), tape.total(turn)
+    return tape.total(rate), tape.div(tape.total(turn), size[a])
 
 
 def _complex(program: Program, computation: Computation) -> tuple[list[str], list[Node]]:
@@ -119,11 +112,13 @@ def _complex(program: Program, computation: Computation) -> tuple[list[str], lis
     variables = [x for A in amplitudes for x in (A, tape.call("conj", A))]
     outputs = []
     for a in modes:
-        table = {
-            m: tape.add(real, tape.mul(tape.constant(1j), imag))
-            for m, (real, imag) in _changes(program, computation, a).items()
-        }
-        outputs.append(program.horner(table, variables) if table else tape.constant(0))
+        terms: dict[tuple[int, ...], Node] = {}
+        for m, (real, imag) in _flow(program, computation, a).items():
+            cosine, sine = program.multiply((real, imag), program.wave(computation.frame.relative(m, a)))
+            node = tape.add(cosine, tape.mul(tape.constant(1j), sine))
+            powers = m[: 2 * computation.modes]
+            terms[powers] = tape.add(terms.get(powers, tape.constant(0)), node)
+        outputs.append(program.horner(terms, variables) if terms else tape.constant(0))
     return names, outputs
 
 
@@ -140,15 +135,11 @@ def _jacobian(program: Program, outputs: list[Node], inputs: Sequence[str]) -> l
     return [column[row] for row in range(len(outputs)) for column in columns]
 
 
-def slow_flow_function(
-    problem: Problem, computation: Computation, basis: PhaseBasis, form: str, wrt: str | None
-) -> NumpyFunction:
+def slow_flow_function(problem: Problem, computation: Computation, form: str, wrt: str | None) -> NumpyFunction:
     """The slow flow in one form, or its Jacobian."""
     program = Program(problem, computation)
-    if form == "polar":
-        names, outputs = _polar(program, computation, basis)
-    else:
-        names, outputs = (_cartesian if form == "cartesian" else _complex)(program, computation)
+    build = {"polar": _polar, "cartesian": _cartesian, "complex": _complex}[form]
+    names, outputs = build(program, computation)
     heading = f"Slow flow of order {computation.order}, {form} form"
     shape: tuple[int, ...] = (len(outputs),)
     if wrt is not None:
@@ -162,20 +153,23 @@ def slow_flow_function(
 def displacement_function(problem: Problem, computation: Computation, derivative: int) -> NumpyFunction:
     """The unknowns (or a time derivative of them) at time t from a slow state."""
     program = Program(problem, computation)
+    modes, drives = computation.modes, len(computation.canonical.drives)
+    names, state = _cartesian_state(program, modes)
     tape = program.tape
-    names, state = _cartesian_state(program, computation.modes)
-    time = tape.input("time t")
     moving = []
-    for (p, q), mode in zip(state, computation.hierarchy.linear_part.modes, strict=True):
-        angle = tape.mul(program.frequency(mode.rate), time)
-        cosine, sine = tape.call("cos", angle), tape.call("sin", angle)
+    for j, (p, q) in enumerate(state):
+        cosine, sine = program.wave(tuple(int(k == j) for k in range(modes)) + (0,) * drives)
         moving.append(
             (tape.add(tape.mul(p, cosine), tape.mul(q, sine)), tape.sub(tape.mul(q, cosine), tape.mul(p, sine)))
         )
+
+    def wave(key: tuple[int, ...]) -> Complex:
+        return program.multiply(program.phase_factor(moving, key[:modes]), program.wave((0,) * modes + key[modes:]))
+
     outputs = []
     for k in range(len(problem.unknowns)):
         series = program.series((n, computation.field(n, k, derivative)) for n in range(computation.order + 1))
-        outputs.append(_combined(program, program.by_turns(series, moving, half=True), moving)[0])
+        outputs.append(program.summed(program.grouped(series, turns, half=True), moving, wave)[0])
     what = ("Unknowns", "Velocities", "Accelerations")[derivative]
     return _function(problem, program, names, outputs, (len(outputs),), f"{what} through order {computation.order}.")
 
@@ -186,17 +180,10 @@ def frequency_function(problem: Problem, computation: Computation, mode: int) ->
     tape = program.tape
     names, state = _cartesian_state(program, computation.modes)
     series = {}
-    for m, (_, imag) in _changes(program, computation, mode).items():
+    for m, (_, imag) in _flow(program, computation, mode).items():
         lowered = (*m[: 2 * mode], m[2 * mode] - 1, *m[2 * mode + 1 :])
         series[lowered] = (imag, tape.constant(0))
-    groups = program.by_turns(series, state, half=False)
-    correction = groups.get((0,) * computation.modes, (tape.constant(0),))[0]
-    rate = computation.hierarchy.linear_part.modes[mode].rate
-    return _function(
-        problem,
-        program,
-        names,
-        [tape.add(program.frequency(rate), correction)],
-        (),
-        f"Frequency through order {computation.order}.",
-    )
+    one = (tape.constant(1), tape.constant(0))
+    correction = program.summed(program.grouped(series, turns), state, lambda key: one)[0]
+    outputs = [tape.add(program.natural_frequency(mode), correction)]
+    return _function(problem, program, names, outputs, (), f"Frequency through order {computation.order}.")

@@ -6,8 +6,9 @@ and an array of states nearly all array operations are the few that the state it
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from fractions import Fraction
+from functools import cached_property
 
 import sympy as sp
 
@@ -17,6 +18,8 @@ from multiscale.algebra.ring import Exponents
 from multiscale.codegen.calls import evaluate
 from multiscale.codegen.tape import Node, Tape
 from multiscale.computed import Computation, Finished
+from multiscale.errors import EvaluationError
+from multiscale.frame import turns
 from multiscale.problem import Problem
 
 __all__ = ["Complex", "Program"]
@@ -30,26 +33,57 @@ class Program:
     def __init__(self, problem: Problem, computation: Computation) -> None:
         self.tape = Tape()
         self.parameters = tuple(sorted((*problem.parameters, problem.small), key=lambda s: str(s.name)))
+        self.time = self.tape.input("time t")
+        self._time_symbol = problem.time
         self.small = self._parameter(problem.small)
+        self._computation = computation
         self._meanings = dict(computation.canonical.meanings)
         self._values: dict[str, Node] = {}
         self._inverses: dict[Frozen, Node] = {}
-        self.bases = [self.polynomial(b) for b in computation.canonical.bases.values]
-        self.unit = computation.canonical.bases.unit
 
     def _parameter(self, symbol: sp.Symbol) -> Node:
-        return self.tape.input(f"parameter {symbol.name}")
+        return self.time if symbol == self._time_symbol else self.tape.input(f"parameter {symbol.name}")
+
+    def expression(self, x: sp.Expr) -> Node:
+        """A SymPy expression of parameters and time."""
+        return evaluate(self.tape, x, self._parameter)
 
     def _value(self, generator: str) -> Node:
         if generator not in self._values:
             self._values[generator] = evaluate(self.tape, self._meanings[generator], self._parameter)
         return self._values[generator]
 
-    def frequency(self, rate: Sequence[int]) -> Node:
+    @cached_property
+    def _angles(self) -> list[Node]:
+        """What the rows of the frame count: natural phases ω_f t and the exact angles of the drives."""
+        canonical = self._computation.canonical
+        natural = [self._phase(w) for w in canonical.frequencies]
+        driven = [
+            self._phase(d.reduced_frequency) if d.frequency != 0 else self.expression(d.angle) for d in canonical.drives
+        ]
+        return natural + driven
+
+    def _phase(self, frequency: sp.Expr) -> Node:
+        """∫ frequency dt from 0 to t."""
+        t = self._time_symbol
+        if t not in frequency.free_symbols:
+            return self.tape.mul(self.expression(frequency), self.time)
+        integral = sp.integrate(frequency, (t, 0, t))
+        if integral.has(sp.Integral):
+            raise EvaluationError(
+                f"the fast phase, the integral of {frequency} over {t}, has no closed form: integrate it beside the slow "
+                "flow, whose own functions do not need it"
+            )
+        return self.expression(integral)
+
+    def angle(self, combination: tuple[int, ...]) -> Node:
+        """The fast angle of a combination (turns with the modes, turns with the drives)."""
+        row = self._computation.frame.fast(combination)
         tape = self.tape
-        return tape.total(
-            tape.mul(tape.constant(Fraction(r, self.unit)), base) for r, base in zip(rate, self.bases, strict=True)
-        )
+        return tape.total(tape.mul(tape.constant(x), self._angles[k]) for k, x in enumerate(row) if x)
+
+    def natural_frequency(self, mode: int) -> Node:
+        return self.expression(self._computation.canonical.frequencies[mode])
 
     def horner(self, terms: Mapping[Exponents, Node], variables: Sequence[Node]) -> Node:
         """Σ coefficient · Π variable**exponent; the variable that most terms share is taken out first."""
@@ -124,28 +158,47 @@ class Program:
             result = self.multiply(result, power)
         return result
 
-    def by_turns(
-        self, series: Mapping[Exponents, Complex], state: Sequence[Complex], half: bool
-    ) -> dict[tuple[int, ...], Complex]:
-        """{turns: polynomial in the ρ_k = p_k² + q_k²} for z_k = ½ (p_k − i q_k).
+    def grouped(
+        self, series: Mapping[Exponents, Complex], key: Callable[[Exponents], tuple[int, ...]], half: bool = False
+    ) -> dict[tuple[int, ...], tuple[dict[Exponents, Node], dict[Exponents, Node]]]:
+        """{key: {degrees in the ρ_k = p_k² + q_k²: node} for real and imaginary part}, z_k = ½ (p_k − i q_k).
 
         With `half` only one of each conjugate pair of terms is kept, doubled.
         """
-        tape = self.tape
+        tape, modes = self.tape, self._computation.modes
         groups: dict[tuple[int, ...], tuple[dict[Exponents, Node], dict[Exponents, Node]]] = {}
-        for m, (real, imag) in series.items():
-            turns = tuple(m[2 * k] - m[2 * k + 1] for k in range(len(state)))
-            if half and turns < tuple(-x for x in turns):
+        for m, pair in series.items():
+            own = turns(m)
+            if half and own < tuple(-x for x in own):
                 continue
-            size = tape.constant(Fraction(2 if half and any(turns) else 1, 2 ** sum(m)))
-            radii = tuple(min(m[2 * k], m[2 * k + 1]) for k in range(len(state)))
-            pair = groups.setdefault(turns, ({}, {}))
-            for table, node in zip(pair, (real, imag), strict=True):
+            size = tape.constant(Fraction(2 if half and any(own) else 1, 2 ** sum(m[: 2 * modes])))
+            radii = tuple(min(m[2 * k], m[2 * k + 1]) for k in range(modes))
+            tables = groups.setdefault(key(m), ({}, {}))
+            for table, node in zip(tables, pair, strict=True):
                 if node != tape.constant(0):
-                    table[radii] = tape.mul(size, node)
+                    table[radii] = tape.add(table.get(radii, tape.constant(0)), tape.mul(size, node))
+        return groups
+
+    def summed(
+        self,
+        groups: Mapping[tuple[int, ...], tuple[dict[Exponents, Node], dict[Exponents, Node]]],
+        state: Sequence[Complex],
+        wave: Callable[[tuple[int, ...]], Complex],
+    ) -> Complex:
+        """Σ (polynomial in ρ) · wave(key), real and imaginary part."""
+        tape = self.tape
         squares = [tape.add(tape.mul(p, p), tape.mul(q, q)) for p, q in state]
         zero = tape.constant(0)
-        return {
-            turns: (self.horner(real, squares) if real else zero, self.horner(imag, squares) if imag else zero)
-            for turns, (real, imag) in groups.items()
-        }
+        products = []
+        for key, (real, imag) in groups.items():
+            value = (self.horner(real, squares) if real else zero, self.horner(imag, squares) if imag else zero)
+            products.append(self.multiply(value, wave(key)))
+        return tape.total(x for x, _ in products), tape.total(y for _, y in products)
+
+    def wave(self, combination: tuple[int, ...]) -> Complex:
+        """exp(i angle) of a fast angle."""
+        tape = self.tape
+        angle = self.angle(combination)
+        if angle == tape.constant(0):
+            return tape.constant(1), tape.constant(0)
+        return tape.call("cos", angle), tape.call("sin", angle)

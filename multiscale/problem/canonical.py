@@ -13,7 +13,7 @@ from fractions import Fraction
 import sympy as sp
 
 from multiscale.algebra.polynomial import Frozen, freeze
-from multiscale.algebra.quotient import Quotient, reduced
+from multiscale.algebra.quotient import Quotient
 from multiscale.algebra.ring import RingSpec
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
@@ -79,7 +79,9 @@ class _Working:
         self.slow = {s: x.subs(symbol, value) for s, x in self.slow.items() if s != symbol}
 
 
-def canonical_form(prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr]) -> Canonical:
+def canonical_form(
+    prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr]
+) -> Canonical:
     """Raises `ProblemError`, `ResonanceError` or `UnsupportedTermError`, naming the equation or the term."""
     dynamic = (*layout.jets, layout.small)
     working = _Working(
@@ -120,13 +122,17 @@ def _as_polynomial(square: Quotient, reader: Reader) -> Mapping[tuple[tuple[str,
     return {tuple(sorted((*m, *below))): c for m, c in square.numerator}
 
 
-def _frequencies(reader: Reader, squares: list[Quotient], names: list[sp.Expr], working: _Working) -> list[sp.Expr] | None:
+def _frequencies(
+    reader: Reader, squares: list[Quotient], names: list[sp.Expr], working: _Working
+) -> list[sp.Expr] | None:
     """The natural frequencies; None when a parameter was eliminated and the equations must be read again."""
     roots = []
     for square, name in zip(squares, names, strict=True):
         value = reader.expression(_as_polynomial(square, reader).items())
         if value.is_nonpositive:
-            raise ProblemError(f"the squared frequency of {name} is {value}, not positive: {name} does not oscillate at leading order")
+            raise ProblemError(
+                f"the squared frequency of {name} is {value}, not positive: {name} does not oscillate at leading order"
+            )
         root = square_root(reader, square)
         radical = sp.sqrt(root.radicand)
         if root.radicand.free_symbols:
@@ -134,7 +140,11 @@ def _frequencies(reader: Reader, squares: list[Quotient], names: list[sp.Expr], 
             if radical not in working.hidden and _hide(radical, root.radicand, working):
                 return None
         roots.append(root.outside * radical)
-    nested = [r for r in roots if not r.free_symbols and r.is_algebraic and any(not x.base.is_Integer for x in r.atoms(sp.Pow))]
+    nested = [
+        r
+        for r in roots
+        if not r.free_symbols and r.is_algebraic and any(not x.base.is_Integer for x in r.atoms(sp.Pow))
+    ]
     if nested:
         numeric = [r for r in roots if not r.free_symbols and r.is_algebraic]
         replaced = dict(zip(numeric, number_field_bases(numeric), strict=True))
@@ -155,10 +165,16 @@ def _hide(radical: sp.Symbol, radicand: sp.Expr, working: _Working) -> bool:
 
 
 def _assembled(
-    working: _Working, prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], frequencies: list[sp.Expr]
+    working: _Working,
+    prepared: Prepared,
+    layout: Layout,
+    shown: Mapping[sp.Symbol, sp.Expr],
+    frequencies: list[sp.Expr],
 ) -> Canonical:
     flat = [x for series in working.rates for x in series]
-    reader = Reader([*working.equations, *frequencies, *flat, *working.slow.values()], (*layout.jets, layout.small), shown)
+    reader = Reader(
+        [*working.equations, *frequencies, *flat, *working.slow.values()], (*layout.jets, layout.small), shown
+    )
     bases = bases_of(reader, [*frequencies, *(series[0] for series in working.rates)])
     force = []
     for k, equation in enumerate(working.equations):
@@ -185,15 +201,21 @@ def _assembled(
     spec, slow = _pruned(reader.ring.spec, force, modes, drives, slow)
     meanings = _meanings(reader, spec, working, prepared)
     shown_frequencies = tuple(f.subs(working.hidden).subs(prepared.leaves.meanings) for f in frequencies)
-    canonical = Canonical(spec, meanings, tuple(force), modes, shown_frequencies, drives, tuple(slow.items()), prepared.truncated)
+    canonical = Canonical(
+        spec, meanings, tuple(force), modes, shown_frequencies, drives, tuple(slow.items()), prepared.truncated
+    )
     refuse_resonant_drives(canonical.force, canonical.bases.rates, drives, shown_frequencies, layout)
     return canonical
 
 
 def _meanings(reader: Reader, spec: RingSpec, working: _Working, prepared: Prepared) -> tuple[tuple[str, sp.Expr], ...]:
     leaves = prepared.leaves.meanings
-    named = {name: value.subs(working.hidden).subs(leaves) for name, value in reader.meanings.items() if name in spec.index}
-    return tuple(sorted((name, value) for name, value in named.items() if name not in {p.symbol.name for p in prepared.phasors}))
+    named = {
+        name: value.subs(working.hidden).subs(leaves) for name, value in reader.meanings.items() if name in spec.index
+    }
+    return tuple(
+        sorted((name, value) for name, value in named.items() if name not in {p.symbol.name for p in prepared.phasors})
+    )
 
 
 def _rename(polynomial: Frozen, names: Mapping[str, str]) -> Frozen:

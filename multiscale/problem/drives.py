@@ -14,7 +14,7 @@ from math import lcm
 
 import sympy as sp
 
-from multiscale.phases import lattice_basis
+from multiscale.problem.lattice import lattice_basis
 from multiscale.problem.reading import IMAGINARY_UNIT, unsupported
 
 __all__ = ["Phasor", "with_phasors"]
@@ -43,7 +43,11 @@ def _wave(x: sp.Expr, time: sp.Symbol, small: sp.Symbol) -> _Wave | None:
     rate = sp.expand(sp.diff(angle.doit(), time))
     slow = rate.subs(time, sp.Symbol("@s") / small) if time in rate.free_symbols else rate
     if small in slow.free_symbols and sp.expand(slow).subs(small, 0).has(sp.nan, sp.zoo):
-        raise unsupported(x, f"its frequency changes with {time} other than through {small}*{time}", f"Write the frequency as a function of {small}*{time}")
+        raise unsupported(
+            x,
+            f"its frequency changes with {time} other than through {small}*{time}",
+            f"Write the frequency as a function of {small}*{time}",
+        )
     if slow.subs(small, 0) == 0:
         return None
     return _Wave(angle.doit().subs(time, 0), rate)
@@ -60,9 +64,14 @@ def _vector(rate: sp.Expr, monomials: list[sp.Expr]) -> dict[int, Fraction]:
     return result
 
 
-def with_phasors(equations: list[sp.Expr], time: sp.Symbol, small: sp.Symbol, jets: set[sp.Symbol]) -> tuple[list[sp.Expr], list[Phasor]]:
+def with_phasors(
+    equations: list[sp.Expr], time: sp.Symbol, small: sp.Symbol, jets: set[sp.Symbol]
+) -> tuple[list[sp.Expr], list[Phasor]]:
     """The equations with phasors for their drives, and the phasors: fast ones first, then constant phases."""
-    found = sorted({x for e in equations for x in e.atoms(sp.cos, sp.sin) if time in x.free_symbols and not x.free_symbols & jets}, key=str)
+    found = sorted(
+        {x for e in equations for x in e.atoms(sp.cos, sp.sin) if time in x.free_symbols and not x.free_symbols & jets},
+        key=str,
+    )
     waves = {x: w for x in found if (w := _wave(x, time, small)) is not None}
     monomials: list[sp.Expr] = []
     vectors = {x: _vector(w.rate, monomials) for x, w in waves.items()}

@@ -38,12 +38,16 @@ def own_stiffness(table: list[Entry], k: int, reader: Reader, layout: Layout, po
             raise _misplaced(show(e, reader, layout), e, k, power, layout)
     if not own:
         u = reader.show(next(s for s, jet in layout.jets.items() if jet == (k, 0)))
-        raise ProblemError(f"the oscillator of {u} has zero frequency: its equation needs a restoring term omega**2*u at leading order")
+        raise ProblemError(
+            f"the oscillator of {u} has zero frequency: its equation needs a restoring term omega**2*u at leading order"
+        )
     return reduced(reader.ring, reader.ring.read(dict(own[0].coefficient)))
 
 
 def _misplaced(term: sp.Expr, entry: Entry, k: int, power: int, layout: Layout) -> Exception:
-    remedy = f"Raise its order above {power} through `ordering`" if layout.ordered else f"Give it a factor {layout.small}"
+    remedy = (
+        f"Raise its order above {power} through `ordering`" if layout.ordered else f"Give it a factor {layout.small}"
+    )
     if entry.power < power:
         reason = f"its order {entry.power} is below the order {power} of the unknown its equation belongs to"
     elif len(entry.factors) > 1:
@@ -59,7 +63,11 @@ def _misplaced(term: sp.Expr, entry: Entry, k: int, power: int, layout: Layout) 
 
 
 def refuse_resonant_drives(
-    force: Sequence[Sequence[Term]], modes: Sequence[Rate], drives: Sequence[Drive], frequencies: Sequence[sp.Expr], layout: Layout
+    force: Sequence[Sequence[Term]],
+    modes: Sequence[Rate],
+    drives: Sequence[Drive],
+    frequencies: Sequence[sp.Expr],
+    layout: Layout,
 ) -> None:
     """A drive of order ε⁰ at a natural frequency has no bounded response."""
     for k, terms in enumerate(force):

@@ -22,10 +22,14 @@ def with_orders(
                 continue
             if isinstance(x, sp.Pow) and x.exp.is_Integer:
                 raise unsupported(
-                    x, "an ordered symbol stands in a denominator", "Order the quotient as a whole by giving it a symbol"
+                    x,
+                    "an ordered symbol stands in a denominator",
+                    "Order the quotient as a whole by giving it a symbol",
                 )
             raise unsupported(
-                x, f"the ordered symbol {min(found, key=str)} stands inside it", "Give an order to a symbol that stands for it as a whole"
+                x,
+                f"the ordered symbol {min(found, key=str)} stands inside it",
+                "Give an order to a symbol that stands for it as a whole",
             )
     powers = {s: small**q * s for s, q in orders.items()}
     return [x.subs(powers, simultaneous=True) for x in equations]

@@ -68,10 +68,12 @@ def prepare(
     rates, exact = [], []
     for phasor in phasors:
         rate = leaves.read(_exactly(phasor.rate, relations))
-        cut = cut or not rate.is_polynomial(small)
-        series = taylor(rate, small, order)
         exact.append(rate)
-        rates.append(tuple(sp.expand(series).coeff(small, n) for n in range(order + 1)))
+        polynomial = rate.is_polynomial(small)
+        cut = cut or not polynomial
+        depth = max(order, sp.degree(rate, small)) if polynomial and small in rate.free_symbols else order
+        series = sp.expand(rate if polynomial else taylor(rate, small, order))
+        rates.append(tuple(series.coeff(small, n) for n in range(depth + 1)))
     leaves.close(order + 2)
     return Prepared(result, tuple(phasors), tuple(rates), tuple(exact), leaves, relations, cut or bool(leaves.leaves))
 
@@ -87,4 +89,6 @@ def _check_used(relations: Relations, equations: list[sp.Expr], phasors: Sequenc
     present |= set().union(*(v.free_symbols for _, v in (*relations.values, *relations.frequencies)))
     for symbol, value in relations.values:
         if symbol not in present:
-            raise ProblemError(f"the relation for {symbol} = {value} concerns a symbol that the equations do not contain")
+            raise ProblemError(
+                f"the relation for {symbol} = {value} concerns a symbol that the equations do not contain"
+            )

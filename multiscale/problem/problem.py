@@ -100,6 +100,7 @@ class Problem:
 
     @cached_property
     def _symbols(self) -> set[sp.Symbol]:
+        """Every symbol of equations and relations but time."""
         stated = [x for pair in self.resonances for x in pair if x not in self.unknowns]
         return set().union(*(x.free_symbols for x in (*self.equations, *stated))) - {self.time}
 
@@ -108,6 +109,13 @@ class Problem:
         """The symbols of the problem but time and the small parameter, after elimination by relations, by name."""
         gone = {symbol for symbol, _ in self._prepared(1).relations.values}
         return tuple(sorted(self._symbols - {self._given_small} - gone, key=lambda s: str(s.name)))
+
+    @property
+    def names(self) -> frozenset[str]:
+        """The names that the user has taken."""
+        return frozenset(s.name for s in (*self._symbols, self.time, self.small)) | {
+            u.func.__name__ for u in self.unknowns
+        }
 
     @property
     def natural_frequencies(self) -> tuple[sp.Expr, ...]:

@@ -87,10 +87,17 @@ def taylor(x: sp.Expr, small: sp.Symbol, order: int) -> sp.Expr:
 
 
 def relations_of(
-    given: Sequence[tuple[sp.Expr, sp.Expr]], unknowns: Sequence[sp.Expr], small: sp.Symbol, drives: set[sp.Symbol], carried: Mapping[sp.Symbol, sp.Expr]
+    given: Sequence[tuple[sp.Expr, sp.Expr]],
+    unknowns: Sequence[sp.Expr],
+    small: sp.Symbol,
+    drives: set[sp.Symbol],
+    carried: Mapping[sp.Symbol, sp.Expr],
 ) -> Relations:
     """Read the relations; `drives` are the symbols of drive frequencies, `carried` puts orders into detunings."""
-    stated, values, frequencies, detunings = [], [], [], []
+    stated: list[tuple[sp.Expr, sp.Expr]] = []
+    values: list[tuple[sp.Symbol, sp.Expr]] = []
+    frequencies: list[tuple[int, sp.Expr]] = []
+    detunings: list[Detuning] = []
     for key, value in given:
         stated.append((key, value))
         value = value.subs(carried)
@@ -117,7 +124,9 @@ def relation_pairs(given: Any) -> tuple[tuple[sp.Expr, sp.Expr], ...]:
         pairs = []
         for relation in given:
             if not isinstance(relation, sp.Eq):
-                raise ProblemError(f"resonance {relation!r}: expected a mapping {{frequency: value}} or equations sympy.Eq(frequency, value)")
+                raise ProblemError(
+                    f"resonance {relation!r}: expected a mapping {{frequency: value}} or equations sympy.Eq(frequency, value)"
+                )
             pairs.append((relation.lhs, relation.rhs))
     result = []
     for key, value in pairs:
@@ -135,7 +144,9 @@ def _expression(x: Any) -> sp.Expr:
     raise ProblemError(f"{x!r} in a resonance is a {type(x).__name__}: expected a SymPy expression or a number")
 
 
-def _solved(key: sp.Expr, left: sp.Expr, value: sp.Expr, small: sp.Symbol, drives: set[sp.Symbol]) -> tuple[sp.Symbol, sp.Expr]:
+def _solved(
+    key: sp.Expr, left: sp.Expr, value: sp.Expr, small: sp.Symbol, drives: set[sp.Symbol]
+) -> tuple[sp.Symbol, sp.Expr]:
     """(symbol to eliminate, its value): a drive frequency of the left side before any other symbol of it."""
     if isinstance(left, sp.Pow) and left.exp == 2 and left.base.is_Symbol:
         return left.base, sp.sqrt(value)
@@ -146,7 +157,9 @@ def _solved(key: sp.Expr, left: sp.Expr, value: sp.Expr, small: sp.Symbol, drive
             solved = sp.expand((value - (left - slope * symbol)) / slope)
             leading = solved.subs(small, 0)
             if leading.is_nonpositive:
-                raise ResonanceError(f"the relation {key} = {value} contradicts the others: it needs {symbol} = {leading} at leading order")
+                raise ResonanceError(
+                    f"the relation {key} = {value} contradicts the others: it needs {symbol} = {leading} at leading order"
+                )
             return symbol, solved
     at_zero = sp.expand((left - value).subs(small, 0))
     if at_zero == 0:

@@ -42,7 +42,9 @@ class SlowLeaves:
             return x
         if isinstance(x, sp.Add | sp.Mul):
             # s and powers of ε may meet only in a product: ε·(s/ε) has cancelled, s/ε alone means time itself.
-            if isinstance(x, sp.Mul) and any(isinstance(f, sp.Pow) and f.base == self.small and f.exp.is_negative for f in x.args):
+            if isinstance(x, sp.Mul) and any(
+                isinstance(f, sp.Pow) and f.base == self.small and f.exp.is_negative for f in x.args
+            ):
                 raise self._explicit(x)
             return x.func(*(self._replaced(arg) for arg in x.args))
         if isinstance(x, sp.Pow) and x.exp.is_Integer:
@@ -70,7 +72,13 @@ class SlowLeaves:
 
     def rate(self, x: sp.Expr) -> sp.Expr:
         """dx/ds for an expression in leaves."""
-        return sp.Add(*(sp.diff(x, symbol) * self.rates.get(symbol, 0) for symbol in self.leaves.values() if symbol in x.free_symbols))
+        return sp.Add(
+            *(
+                sp.diff(x, symbol) * self.rates.get(symbol, 0)
+                for symbol in self.leaves.values()
+                if symbol in x.free_symbols
+            )
+        )
 
     @property
     def meanings(self) -> dict[sp.Symbol, sp.Expr]:

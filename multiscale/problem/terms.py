@@ -1,6 +1,6 @@
 """The equations as a table of terms, each with its power of the small parameter, and which oscillator each belongs to.
 
-    equation k:   Σ ε^p · c · Π jets = 0
+equation k:   Σ ε^p · c · Π jets = 0
 """
 
 from __future__ import annotations

@@ -124,10 +124,11 @@ def test_solution_forms_agree(result, form):
         zip([s for pair in zip(result.symbols.p, result.symbols.q, strict=True) for s in pair], y, strict=True)
     )
     A = y[::2] / 2 - 0.5j * y[1::2]
+    beta = dict(zip(result.symbols.beta, np.angle(A), strict=True))
+    gamma = {g: x.subs(beta) for g, x in result.slow_flow.phases.items()}
     others = {
         "complex": dict(zip(result.symbols.A, A, strict=True)),
-        "polar": dict(zip(result.symbols.a, 2 * abs(A), strict=True))
-        | dict(zip(result.symbols.beta, np.angle(A), strict=True)),
+        "polar": dict(zip(result.symbols.a, 2 * abs(A), strict=True)) | beta | gamma,
     }
     base = bindings(result) | {t: 0.83}
     for one, other in zip(result.solution("cartesian").values(), result.solution(form).values(), strict=True):

@@ -2,7 +2,7 @@
 
 The amplitudes are Taylor jets in time, A(t + τ) = A_0 + A_1 τ + A_2 τ², filled in from the slow flow; the published
 SymPy expressions of the fields are evaluated on them in high-precision arithmetic, and the results are put into the
-equations as the user wrote them.
+equations as the user wrote them. Drives keep their exact phase, detunings are held fixed.
 """
 
 from __future__ import annotations
@@ -50,13 +50,23 @@ class Jet:
     __rmul__ = __mul__
 
     def __truediv__(self, other):
-        return Jet(*(a / other for a in self.c))
+        return self * Jet.of(other).inverse()
+
+    def __rtruediv__(self, other):
+        return Jet.of(other) * self.inverse()
+
+    def inverse(self):
+        a, b, c = self.c
+        return Jet(1 / a, -b / a**2, b * b / a**3 - c / a**2)
 
     def __pow__(self, n):
-        result = Jet(mp.mpf(1))
-        for _ in range(int(n)):
-            result = result * self
-        return result
+        if n == 0:
+            return Jet(mp.mpf(1))
+        if n == int(n) and n > 0:
+            return self * self ** (n - 1)
+        a, b, c = self.c
+        slope = n * a ** (n - 1)
+        return Jet(a**n, slope * b, slope * c + slope * (n - 1) / a * b * b / 2)
 
     def conjugate(self):
         return Jet(*map(mp.conj, self.c))
@@ -73,6 +83,39 @@ def _conjugate(x):
     return x.conjugate() if isinstance(x, Jet) else mp.conj(x)
 
 
+def _cos(x):
+    return (_exp(x * mp.mpc(0, 1)) + _exp(x * mp.mpc(0, -1))) / 2 if isinstance(x, Jet) else mp.cos(x)
+
+
+def _sin(x):
+    return (_exp(x * mp.mpc(0, 1)) - _exp(x * mp.mpc(0, -1))) / mp.mpc(0, 2) if isinstance(x, Jet) else mp.sin(x)
+
+
+def _integrated(rate):
+    a, b, _ = rate.c
+    return Jet(mp.mpf("0.71"), a, b / 2)
+
+
+def _sqrt(x):
+    if not isinstance(x, Jet):
+        return mp.sqrt(x)
+    a, b, c = x.c
+    root = mp.sqrt(a)
+    return Jet(root, b / (2 * root), c / (2 * root) - b * b / (8 * root**3))
+
+
+def eliminated(problem):
+    """{eliminated symbol: its value}, from the relations as the user stated them."""
+    found = {}
+    for key, value in problem.resonances:
+        left, right = sp.sympify(key).subs(found), value.subs(found)
+        unknown = sorted(left.free_symbols - right.free_symbols - {problem.small, problem.time}, key=str)
+        if key not in problem.unknowns and unknown:
+            symbol = next((s for s in unknown if s not in problem.parameters), unknown[0])
+            found[symbol] = max(sp.solve(left - right, symbol), key=lambda x: not x.could_extract_minus_sign())
+    return found
+
+
 @dataclass(frozen=True)
 class Fields:
     """An expansion as compiled high-precision functions; `extra_*` are perturbations, (level, SymPy expression)."""
@@ -84,11 +127,24 @@ class Fields:
 
     @cached_property
     def _arguments(self):
-        return [*self.expansion.symbols.A, self.expansion.symbols.T[0]]
+        problem = self.expansion.problem
+        return [*self.expansion.symbols.A, self.expansion.symbols.T[0], problem.small]
 
     def _compiled(self, expression):
-        modules = [{"exp": _exp, "conjugate": _conjugate}, "mpmath"]
-        return sp.lambdify(self._arguments, expression.subs(self.values), modules=modules)
+        modules = [{"exp": _exp, "conjugate": _conjugate, "cos": _cos, "sin": _sin, "sqrt": _sqrt}, "mpmath"]
+        time = {self.expansion.problem.time: self.expansion.symbols.T[0]}
+        plain = expression.subs(eliminated(self.expansion.problem)).subs(self.values).subs(time)
+        for k, integral in enumerate(sorted(plain.atoms(sp.Integral), key=str)):
+            # A slowly varying frequency: its phase at the instant chosen is free, its derivatives are not.
+            rate = sp.lambdify(
+                [time[self.expansion.problem.time], self.expansion.problem.small],
+                integral.diff(time[self.expansion.problem.time]),
+                modules=modules,
+            )
+            phase = sp.Function(f"phase{k}")
+            plain = plain.xreplace({integral: phase(self.expansion.symbols.T[0], self.expansion.problem.small)})
+            modules[0][phase.__name__] = lambda x, e, rate=rate: _integrated(Jet.of(rate(x, e)))
+        return sp.lambdify(self._arguments, plain, modules=modules)
 
     @cached_property
     def flow(self):
@@ -110,7 +166,7 @@ class Fields:
         total = [Jet(mp.mpf(0)) for _ in amplitudes]
         for n, part in self.flow.items():
             for k, f in enumerate(part):
-                total[k] = total[k] + Jet.of(f(*amplitudes, time)) * eps**n
+                total[k] = total[k] + Jet.of(f(*amplitudes, time, eps)) * eps**n
         return total
 
     def jets(self, start, eps, t):
@@ -124,7 +180,7 @@ class Fields:
         total = [Jet(mp.mpf(0)) for _ in self.expansion.problem.unknowns]
         for n, part in self.fields.items():
             for k, f in enumerate(part):
-                total[k] = total[k] + Jet.of(f(*amplitudes, time)) * eps**n
+                total[k] = total[k] + Jet.of(f(*amplitudes, time, eps)) * eps**n
         return total
 
     def residual(self, start, eps, t):
@@ -142,8 +198,9 @@ class Fields:
         result = []
         for equation in problem.equations:
             hidden = equation.xreplace({k: v for k, v in known.items() if k.is_Derivative}).xreplace(known)
-            f = sp.lambdify([*words, problem.small], hidden.subs(self.values), modules="mpmath")
-            result.append(abs(f(*numbers, eps)))
+            plain = hidden.subs(eliminated(problem)).subs(self.values)
+            f = sp.lambdify([*words, problem.small, time], plain, modules="mpmath")
+            result.append(abs(f(*numbers, eps, t)))
         return result
 
 

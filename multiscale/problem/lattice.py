@@ -1,39 +1,15 @@
-"""Which combinations of phases drive a slow flow.
-
-A term of dA_j/dt turns with the phase of A_j plus an integer combination K·β of the phases whose rate is zero. The
-combinations that appear span a lattice; its Z-basis (saturated: every integer vector in the span) gives the resonant
-phases γ_i = G_i·β, and modes chosen to complete it keep their own, cyclic, phase β.
-"""
+"""Integer lattices: Z-bases of the combinations of phases that occur."""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
-from itertools import combinations
 
-import sympy as sp
 from sympy.polys.domains import ZZ
 from sympy.polys.matrices import DomainMatrix
 
-__all__ = ["PhaseBasis", "lattice_basis", "phase_basis"]
+__all__ = ["lattice_basis", "saturated_basis"]
 
 Vector = tuple[int, ...]
-
-
-@dataclass(frozen=True)
-class PhaseBasis:
-    """`resonant[i]` are the integer coefficients G_i of γ_i over the phases β; `cyclic` the modes that keep theirs."""
-
-    resonant: tuple[Vector, ...]
-    cyclic: tuple[int, ...]
-
-    def coordinates(self, combination: Vector) -> Vector:
-        """The integers n with Σ n_i G_i = combination; it must lie in the lattice."""
-        if not any(combination):
-            return (0,) * len(self.resonant)
-        columns = sp.Matrix(self.resonant).T
-        solution = (columns.T * columns).LUsolve(columns.T * sp.Matrix(combination))
-        return tuple(int(x) for x in solution)
 
 
 def _integer_kernel(rows: list[Vector], size: int) -> list[Vector]:
@@ -61,28 +37,20 @@ def _integer_kernel(rows: list[Vector], size: int) -> list[Vector]:
     return [tuple(vector) for vector in basis[done:]]
 
 
-def phase_basis(found: Iterable[Vector], size: int) -> PhaseBasis:
-    """The basis for the combinations `found` among `size` phases."""
+def saturated_basis(found: Iterable[Vector], size: int) -> list[Vector]:
+    """A short Z-basis of all integer vectors in the span of `found`, the last non-zero entry of each positive."""
     rows = sorted({k for k in found if any(k)})
     if not rows:
-        return PhaseBasis((), tuple(range(size)))
+        return []
     lattice = _integer_kernel(_integer_kernel(rows, size), size)
     if len(lattice) > 1:
-        lattice = [
-            tuple(int(x) for x in row)
-            for row in DomainMatrix([list(map(ZZ, row)) for row in lattice], (len(lattice), size), ZZ).lll().to_list()
-        ]
+        matrix = DomainMatrix([list(map(ZZ, row)) for row in lattice], (len(lattice), size), ZZ)
+        lattice = [tuple(int(x) for x in row) for row in matrix.lll().to_list()]
     oriented = []
     for row in sorted(lattice, key=lambda r: (sum(map(abs, r)), r)):
         last = next(x for x in reversed(row) if x)
         oriented.append(tuple(x if last > 0 else -x for x in row))
-    matrix = sp.Matrix(oriented)
-    minors = (
-        cyclic
-        for cyclic in combinations(range(size), size - len(oriented))
-        if matrix[:, [j for j in range(size) if j not in cyclic]].det()
-    )
-    return PhaseBasis(tuple(oriented), next(minors))
+    return oriented
 
 
 def lattice_basis(rows: Sequence[Vector]) -> tuple[list[Vector], list[Vector]]:
