@@ -68,6 +68,20 @@ class Computation:
     def _amplitude(self, mode: int) -> str:
         return self.canonical.spec.pairs[mode][0]
 
+    def base_value(self, base: Frozen) -> float | None:
+        """A base frequency as a number, None where it contains symbols."""
+        meanings = dict(self.canonical.meanings)
+        value = 0.0
+        for monomial, c in base:
+            factor = float(c)
+            for name, e in monomial:
+                meaning = meanings.get(name)
+                if meaning is None or meaning.free_symbols:
+                    return None
+                factor *= float(meaning) ** e
+            value += factor
+        return value
+
     @cached_property
     def frame(self) -> Frame:
         """The rotating frame for the combinations of phases that the D_nA contain."""
@@ -109,7 +123,7 @@ class Computation:
         return self._finish("change", level, mode)  # type: ignore[no-any-return]
 
     def flow(self, level: int, mode: int) -> Finished:
-        """D_level A_mode for the amplitude in the rotating frame: D_nA − i Φ_n A, Φ = Φ_0 + εΦ_1 + … the fast angle's rate."""
+        """D_n A in the rotating frame, D_nA − i Φ_n A, with Φ_0 + εΦ_1 + … the rate of the fast angle; n = `level`."""
         return self._finish("flow", level, mode)  # type: ignore[no-any-return]
 
     def _in_frame(self, level: int, mode: int) -> Any:
@@ -138,7 +152,9 @@ class Computation:
         for rate, part in ring.split(field, ring.spec.pair_indices, self.hierarchy.rates).items():
             acted = linear.act({unknown: part}, rate)[unknown]
             total = total + (acted + ring.conjugate(acted) if any(rate) else acted)
-        changes = {a: x for a in range(self.modes if level else 0) if (x := tower.time[level].images.get(self._amplitude(a)))}
+        changes = {
+            a: x for a in range(self.modes if level else 0) if (x := tower.time[level].images.get(self._amplitude(a)))
+        }
         secular = linear.bracket(changes).get(unknown, ring.zero)
         secular = secular + ring.conjugate(secular)
         return finish(ring, ring.normal(total + secular)), finish(ring, secular)

@@ -4,17 +4,17 @@ from __future__ import annotations
 
 import warnings
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 import sympy as sp
 
 from multiscale.computed import Computation, Snapshot, begin, restore
-from multiscale.errors import MultiscaleError, OrderingWarning, ProblemError, ResonanceError
+from multiscale.errors import MultiscaleError, OrderingWarning, ProblemError, ResonanceError, SmallDivisorWarning
 from multiscale.level import Level, Views, polynomials_below
 from multiscale.problem import Problem
-from multiscale.remarks import incomplete_cubic, remarks
+from multiscale.remarks import incomplete_cubic, remarks, small_divisors
 from multiscale.slow_flow import SlowFlow
 from multiscale.solution import FORMS, solution
 from multiscale.symbols import Symbols, symbols_of
@@ -58,11 +58,14 @@ class Expansion:
         N: the levels 0 … N, the slow derivatives D_1 … D_N.
     amplitude : str
         "fundamental": |2A| is the amplitude of the fundamental harmonic, to all orders.
+    tolerance : float
+        Relative distance below which numeric frequencies count as close to resonance (`warnings`).
     """
 
     problem: Problem
     order: int
     amplitude: str = "fundamental"
+    tolerance: float = 0.05
     computation: Computation = field(repr=False, kw_only=True)
 
     @cached_property
@@ -146,7 +149,7 @@ class Expansion:
     @cached_property
     def warnings(self) -> tuple[str, ...]:
         """What a careful analyst would say about this result."""
-        return remarks(self.problem, self.computation)
+        return remarks(self.problem, self.computation, self.tolerance)
 
     def equals(self, other: Expansion) -> bool:
         """Whether slow flow and fields are the same, coefficient by coefficient, to the same order."""
@@ -233,7 +236,12 @@ def _checked_order(order: object, least: int) -> int:
 
 
 def expand(
-    problem: Problem, order: int, *, on_level: Callable[[Level], object] | None = None, representation: str = "auto"
+    problem: Problem,
+    order: int,
+    *,
+    on_level: Callable[[Level], object] | None = None,
+    representation: str = "auto",
+    tolerance: float = 0.05,
 ) -> Expansion:
     """Expand a problem by the method of multiple scales to any order.
 
@@ -246,6 +254,8 @@ def expand(
         Called with each finished `Level`; returning False ends the expansion there.
     representation : "auto", "flint" or "sympy"
         The polynomial arithmetic; all give identical results. "auto" takes FLINT when python-flint is installed.
+    tolerance : float
+        Relative distance below which numeric frequencies count as close to resonance.
 
     Raises
     ------
@@ -256,6 +266,8 @@ def expand(
     -----
     OrderingWarning
         `order=1` with quadratic terms, whose contribution to the frequency begins at the second order.
+    SmallDivisorWarning
+        Numeric frequencies close to a resonance that no relation declares; the message has the line to add.
 
     Examples
     --------
@@ -273,7 +285,9 @@ def expand(
     expansion = _taken_to(problem, begin(problem.canonical(order), representation), order, on_level)
     if remark := incomplete_cubic(problem, expansion.computation):
         warnings.warn(remark, OrderingWarning, stacklevel=2)
-    return expansion
+    for remark in small_divisors(problem, expansion.computation, tolerance):
+        warnings.warn(remark, SmallDivisorWarning, stacklevel=2)
+    return replace(expansion, tolerance=tolerance)
 
 
 def extend(expansion: Expansion, order: int, *, on_level: Callable[[Level], object] | None = None) -> Expansion:

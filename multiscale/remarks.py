@@ -1,31 +1,40 @@
-"""What a careful analyst would say about a result: orderings that lose something, assumptions that were made."""
+"""What a careful analyst would say about a result: orderings that lose something, near resonances, assumptions."""
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Sequence
+
 import sympy as sp
 
-from multiscale.computed import Computation
+from multiscale.computed import Computation, Finished
+from multiscale.frame import turns
+from multiscale.linear_part import Rate
 from multiscale.problem import Problem
 
-__all__ = ["incomplete_cubic", "remarks"]
+__all__ = ["incomplete_cubic", "remarks", "small_divisors"]
 
 
-def remarks(problem: Problem, computation: Computation) -> tuple[str, ...]:
+def remarks(problem: Problem, computation: Computation, tolerance: float) -> tuple[str, ...]:
     """The remarks, most important first."""
     cubic = incomplete_cubic(problem, computation)
-    found = [*([cubic] if cubic else []), *_lost_parameters(problem, computation), *_assumptions(computation)]
-    return tuple(found)
-
-
-def _even_terms(computation: Computation) -> bool:
-    return any(
-        len(term.factors) % 2 == 0 and term.factors for equation in computation.canonical.force for term in equation
+    return (
+        *([cubic] if cubic else []),
+        *small_divisors(problem, computation, tolerance),
+        *_unbalanced(computation),
+        *_explicit_time(problem, computation),
+        *_lost_parameters(problem, computation),
+        *_assumptions(computation),
     )
 
 
 def incomplete_cubic(problem: Problem, computation: Computation) -> str | None:
     """Order 1 with quadratic terms is a common trap: the shift they cause appears at order 2."""
-    if computation.order > 1 or not _even_terms(computation):
+    even = any(
+        term.factors and len(term.factors) % 2 == 0 and not _driven(term.coefficient)
+        for equation in computation.canonical.force
+        for term in equation
+    )
+    if computation.order > 1 or not even or computation.frame.resonant:
         return None
     return (
         "order 1 with even (quadratic) terms: they contribute to the frequency only from the second order on, "
@@ -33,23 +42,84 @@ def incomplete_cubic(problem: Problem, computation: Computation) -> str | None:
     )
 
 
+def _driven(coefficient: tuple[tuple[tuple[tuple[str, int], ...], object], ...]) -> bool:
+    return all(any(name.startswith("@e") for name, _ in monomial) for monomial, _ in coefficient)
+
+
+def small_divisors(problem: Problem, computation: Computation, tolerance: float) -> list[str]:
+    """Combinations of numeric frequencies that come close to a natural frequency without meeting it."""
+    bases = computation.canonical.bases
+    values = [value for b in bases.values if (value := computation.base_value(b)) is not None]
+    if len(values) < len(bases.values):
+        return []
+    found = []
+    for k, rate in sorted(computation.hierarchy.met):
+        own = _value(bases.rates[k], values) / bases.unit
+        near = abs(_value(rate, values)) / bases.unit
+        if rate != bases.rates[k] and 0 < abs(near - own) < tolerance * own:
+            found.append(_near_resonance(problem, computation, k, rate, near, own))
+    return found
+
+
+def _value(rate: Rate, values: Sequence[float]) -> float:
+    return sum(r * v for r, v in zip(rate, values, strict=True))
+
+
+def _near_resonance(problem: Problem, computation: Computation, k: int, rate: Rate, near: float, own: float) -> str:
+    rates = computation.hierarchy.rates
+    combination = min((turns(m) for m, r in rates.items() if r == rate), key=lambda n: (sum(map(abs, n)), n))
+    frequencies = [*computation.canonical.frequencies, *(d.frequency for d in computation.canonical.drives)]
+    names = [f"omega_{u.func.__name__}" for u in problem.unknowns] + [
+        f"({d.frequency})" for d in computation.canonical.drives
+    ]
+    text = " + ".join(f"{n}*{name}" for n, name in zip(combination, names, strict=True) if n)
+    value = sp.Add(*(n * w for n, w in zip(combination, frequencies, strict=True)))
+    return (
+        f"small divisor: {text} = {near:.6g} is close to omega_{problem.unknowns[k].func.__name__} = {own:.6g} "
+        f"(difference {near - own:.3g}); the expansion holds only for {problem.small} well below that. "
+        f"To treat it as a resonance add resonances={{{problem.unknowns[k]}: {value} + {problem.small}*sigma}}"
+    )
+
+
+def _all(computation: Computation) -> Iterator[Finished]:
+    c = computation
+    yield from (c.flow(n, a) for n in range(1, c.order + 1) for a in range(c.modes))
+    yield from (c.field(n, k) for n in range(c.order + 1) for k in range(c.modes))
+
+
+def _unbalanced(computation: Computation) -> list[str]:
+    """Drives that no relation ties to the modes within this order."""
+    c = computation
+    seen = [turns(m) for n in range(1, c.order + 1) for a in range(c.modes) for m in c.change(n, a)]
+    found = []
+    for k, drive in enumerate(c.canonical.drives):
+        if drive.frequency != 0 and not any(row[c.modes + k] for row in seen):
+            found.append(
+                f"the drive of frequency {drive.frequency} is balanced by no relation up to order {c.order}: it does not "
+                "turn the slow flow and enters the forced response only; declare a resonance if it is near one"
+            )
+    return found
+
+
+def _explicit_time(problem: Problem, computation: Computation) -> list[str]:
+    if computation.autonomous:
+        return []
+    return [
+        f"the slow flow depends on {problem.time} explicitly (slow parameters, or beats between drives): it has no equilibria"
+    ]
+
+
 def _lost_parameters(problem: Problem, computation: Computation) -> list[str]:
     """Parameters that appear in the equations but nowhere in the result."""
     c = computation
-    finished = [c.change(n, a) for n in range(1, c.order + 1) for a in range(c.modes)]
-    finished += [c.field(n, k) for n in range(c.order + 1) for k in range(c.modes)]
     meanings = dict(c.canonical.meanings)
     used: set[sp.Symbol] = set()
     used.update(*(w.free_symbols for w in problem.natural_frequencies))
-    names = {
-        name
-        for f in finished
-        for x in f.values()
-        for q in (x.real, x.imag)
-        for p in (q.numerator, *(d for d, _ in q.denominator))
-        for m, _ in p
-        for name, _ in m
-    }
+    used.update(*(x.free_symbols for d in c.canonical.drives for x in (d.angle, d.reduced_frequency)))
+    used.update(*(d.formula.free_symbols for d in c.canonical.detunings))
+    quotients = [q for f in _all(c) for x in f.values() for q in (x.real, x.imag)]
+    polynomials = [p for q in quotients for p in (q.numerator, *(d for d, _ in q.denominator))]
+    names = {name for p in polynomials for monomial, _ in p for name, _ in monomial}
     used.update(*(meanings[name].free_symbols for name in names))
     lost = [s for s in problem.parameters if s not in used]
     return [f"{s} has no effect up to order {c.order}: it enters at a higher order, or cancels" for s in lost]

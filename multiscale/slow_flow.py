@@ -1,7 +1,7 @@
 """The slow flow: dA/dt, reconstituted over all levels, in complex, polar and Cartesian form.
 
-In the rotating frame (`multiscale.frame`), A_j = ½ a_j e^{iδ_j} and dA_j/dt = Σ c · Π A_l^{p_l} Ā_l^{q_l}; writing K for
-the phase of a term relative to A_j:
+In the rotating frame (`multiscale.frame`), A_j = ½ a_j e^{iδ_j} and dA_j/dt = Σ c · Π A_l^{p_l} Ā_l^{q_l}; writing K
+for the phase of a term relative to A_j:
 
     da_j/dt      = Σ 2 Π (a_l/2)^{p_l+q_l} (Re c · cos K − Im c · sin K)
     a_j dδ_j/dt  = Σ 2 Π (a_l/2)^{p_l+q_l} (Im c · cos K + Re c · sin K)

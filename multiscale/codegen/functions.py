@@ -5,13 +5,15 @@ from __future__ import annotations
 from collections.abc import Sequence
 from fractions import Fraction
 
-from multiscale.codegen.numpy_function import NumpyFunction
+from multiscale.codegen.calls import evaluate
+from multiscale.codegen.numpy_function import Inversion, NumpyFunction
 from multiscale.codegen.printer import source
 from multiscale.codegen.program import Complex, Program
-from multiscale.codegen.tape import Node
+from multiscale.codegen.tape import Node, Tape
 from multiscale.computed import Computation
 from multiscale.frame import turns
 from multiscale.problem import Problem
+from multiscale.problem.relations import Detuning
 
 __all__ = ["displacement_function", "frequency_function", "slow_flow_function"]
 
@@ -29,7 +31,20 @@ def _function(
     arguments = ["time t", *state, *(f"parameter {name}" for name in parameters)]
     text, functions = source(program.tape, outputs, arguments, heading)
     defaults = {} if problem.ordering is None else {str(problem.small.name): 1.0}
-    return NumpyFunction(text, functions, tuple(parameters), len(state), shape, is_complex, tuple(defaults.items()))
+    inversions = tuple(_inversion(problem, d) for d in problem.detunings)
+    ready = tuple(defaults.items())
+    return NumpyFunction(text, functions, tuple(parameters), len(state), shape, is_complex, ready, inversions)
+
+
+def _inversion(problem: Problem, detuning: Detuning) -> Inversion:
+    tape = Tape()
+    names = sorted(str(s.name) for s in detuning.formula.free_symbols)
+    output = evaluate(tape, detuning.formula, lambda s: tape.input(f"parameter {s.name}"))
+    text, functions = source(
+        tape, [output], [f"parameter {name}" for name in names], f"The detuning {detuning.detuning}."
+    )
+    eliminated = "" if detuning.eliminated is None else str(detuning.eliminated.name)
+    return Inversion(eliminated, str(detuning.detuning.name), tuple(names), text, functions)
 
 
 def _cartesian_state(program: Program, modes: int) -> tuple[list[str], list[Complex]]:

@@ -21,6 +21,42 @@ _NUMPY = {"sin": np.sin, "cos": np.cos, "exp": np.exp, "log": np.log, "sqrt": np
 _MATH = {"sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log, "sqrt": math.sqrt}
 
 
+@dataclass(frozen=True)
+class Inversion:
+    """A detuning from the frequencies of its relation: `source` defines ``kernel(*arguments) -> (detuning,)``.
+
+    `eliminated` is the name that a mapping may give although it is no parameter any more, or "".
+    """
+
+    eliminated: str
+    detuning: str
+    arguments: tuple[str, ...]
+    source: str
+    functions: tuple[str, ...]
+
+    def completed(self, found: dict[str, Any]) -> dict[str, Any]:
+        """`found` with the detuning worked out where its frequencies are given, and checked where it is given too."""
+        rest = {name: value for name, value in found.items() if name != self.eliminated}
+        if any(name not in found for name in self.arguments):
+            if self.eliminated in found:
+                lacking = ", ".join(name for name in self.arguments if name not in found)
+                raise EvaluationError(
+                    f"{self.eliminated} is given, but not {lacking}: {self.detuning} cannot be worked out"
+                )
+            return found
+        if self.detuning in found and not self.eliminated:
+            return found
+        scope: dict[str, Any] = {name: _NUMPY[name] for name in self.functions}
+        exec(compile(self.source, "<multiscale detuning>", "exec"), scope)
+        (value,) = scope["kernel"](*(found[name] for name in self.arguments))
+        if self.detuning in found and not np.allclose(found[self.detuning], value, rtol=1e-9, atol=1e-12):
+            raise EvaluationError(
+                f"{self.detuning} = {found[self.detuning]} contradicts {self.eliminated} = {found[self.eliminated]}, "
+                f"which needs {self.detuning} = {value}: give one of them"
+            )
+        return rest | {self.detuning: value}
+
+
 @dataclass(frozen=True, repr=False)
 class NumpyFunction:
     """f(t, y, *parameters), generated from a finished result.
@@ -55,6 +91,7 @@ class NumpyFunction:
     shape: tuple[int, ...]
     is_complex: bool = False
     defaults: tuple[tuple[str, float], ...] = ()
+    inversions: tuple[Inversion, ...] = ()
     kernel: Callable[..., tuple[Any, ...]] = field(init=False, compare=False)
     _scalar_kernel: Callable[..., tuple[Any, ...]] | None = field(init=False, compare=False)
 
@@ -125,16 +162,21 @@ class NumpyFunction:
         return result.reshape(self.shape + batch)
 
     def values(self, mapping: Mapping[Any, Any] | None = None, /, **by_name: Any) -> tuple[Any, ...]:
-        """The parameter values in the order of `parameters`, for ``args=``. Keys are symbols or names."""
+        """The parameter values in the order of `parameters`, for ``args=``. Keys are symbols or names.
+
+        A frequency that a relation eliminated may be given instead of its detuning; given both, they are compared.
+        """
         found: dict[str, Any] = {}
         for key, value in [*(mapping or {}).items(), *by_name.items()]:
             name = key.name if isinstance(key, sp.Symbol) else key
-            if name not in self.parameters:
+            if name not in self.parameters and name not in {x.eliminated for x in self.inversions}:
                 raise EvaluationError(f"unknown parameter {name!r}: expected {', '.join(self.parameters)}")
             if name in found:
                 raise EvaluationError(f"parameter {name!r} is given twice")
             found[name] = value
         found = dict(self.defaults) | found
+        for inversion in self.inversions:
+            found = inversion.completed(found)
         if missing := [name for name in self.parameters if name not in found]:
             raise EvaluationError(
                 f"missing parameter {', '.join(missing)}: give a value for each of {', '.join(self.parameters)}"
@@ -165,6 +207,7 @@ class NumpyFunction:
             self.shape,
             self.is_complex,
             self.defaults,
+            self.inversions,
         )
 
 

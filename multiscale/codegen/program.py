@@ -71,8 +71,8 @@ class Program:
         integral = sp.integrate(frequency, (t, 0, t))
         if integral.has(sp.Integral):
             raise EvaluationError(
-                f"the fast phase, the integral of {frequency} over {t}, has no closed form: integrate it beside the slow "
-                "flow, whose own functions do not need it"
+                f"the fast phase, the integral of {frequency} over {t}, has no closed form: integrate it beside the "
+                "slow flow, whose own functions do not need it"
             )
         return self.expression(integral)
 

@@ -22,6 +22,7 @@ from multiscale.problem.frequencies import Bases, bases_of, eliminated, number_f
 from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_drives
 from multiscale.problem.preparation import Prepared
 from multiscale.problem.reading import Reader
+from multiscale.problem.relations import Detuning, detuning_of
 from multiscale.problem.terms import Layout, match, tabulate
 
 __all__ = ["Canonical", "Drive", "canonical_form"]
@@ -48,7 +49,8 @@ class Canonical:
 
     `spec` holds every generator (amplitude pairs ``@zk``, ``@zk~`` first), `meanings` what each coefficient generator
     stands for in the user's symbols, `force` the right-hand sides, `bases` the natural frequencies as rates, `drives`
-    the phasors, `slow` the time derivative (in εt) of each slow generator. `truncated` says that a statement exact in ε
+    the phasors, `slow` the time derivative (in εt) of each slow generator, `detunings` how detunings follow from the
+    frequencies of their relations. `truncated` says that a statement exact in ε
     was expanded, so that a higher order needs the canonical form anew.
     """
 
@@ -59,6 +61,7 @@ class Canonical:
     frequencies: tuple[sp.Expr, ...]
     drives: tuple[Drive, ...]
     slow: tuple[tuple[str, Frozen], ...]
+    detunings: tuple[Detuning, ...]
     truncated: bool
 
 
@@ -71,6 +74,7 @@ class _Working:
     exact: list[sp.Expr]
     slow: dict[sp.Symbol, sp.Expr]
     hidden: dict[sp.Symbol, sp.Expr]
+    detunings: list[Detuning]
 
     def replace(self, symbol: sp.Symbol, value: sp.Expr) -> None:
         self.equations = [x.subs(symbol, value) for x in self.equations]
@@ -90,6 +94,7 @@ def canonical_form(
         list(prepared.exact_rates),
         dict(prepared.leaves.rates),
         {},
+        list(prepared.relations.detunings),
     )
     forced = dict(prepared.relations.frequencies)
     while True:
@@ -109,6 +114,8 @@ def canonical_form(
             k, value = forced.popitem()
             displacement = next(s for s, jet in layout.jets.items() if jet == (k, 0)) * layout.small ** masses[k].power
             stiffness = reader.expression(_as_polynomial(squares[k], reader).items())
+            found_detuning = detuning_of(None, sp.sqrt(stiffness), value, layout.small)
+            working.detunings += [found_detuning] if found_detuning is not None else []
             working.equations[k] = sp.expand(current[k] - stiffness * displacement) + value**2 * displacement
             continue
         found = _frequencies(reader, squares, names, working)
@@ -202,7 +209,15 @@ def _assembled(
     meanings = _meanings(reader, spec, working, prepared)
     shown_frequencies = tuple(f.subs(working.hidden).subs(prepared.leaves.meanings) for f in frequencies)
     canonical = Canonical(
-        spec, meanings, tuple(force), modes, shown_frequencies, drives, tuple(slow.items()), prepared.truncated
+        spec,
+        meanings,
+        tuple(force),
+        modes,
+        shown_frequencies,
+        drives,
+        tuple(slow.items()),
+        tuple(working.detunings),
+        prepared.truncated,
     )
     refuse_resonant_drives(canonical.force, canonical.bases.rates, drives, shown_frequencies, layout)
     return canonical

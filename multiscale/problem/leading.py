@@ -77,9 +77,10 @@ def refuse_resonant_drives(
             rate = tuple(sum(n * d.rate[b] for n, d in zip(counts, drives, strict=True)) for b in range(len(modes[k])))
             if rate in (modes[k], tuple(-r for r in modes[k])):
                 combination = sp.Add(*(abs(n) * d.frequency for n, d in zip(counts, drives, strict=True)))
+                own = frequencies[k]
                 raise ResonanceError(
-                    f"a drive at leading order has the frequency {combination}, which is the natural frequency {frequencies[k]} "
-                    f"of its oscillator: the divisor {frequencies[k]}**2 - ({combination})**2 vanishes and the response is unbounded. "
+                    f"a drive at leading order has the frequency {combination}, which is the natural frequency {own} of "
+                    f"its oscillator: the divisor {own}**2 - ({combination})**2 vanishes and the response is unbounded. "
                     f"Give the drive a factor {layout.small} (or an order) and declare "
-                    f"resonances={{{combination}: {frequencies[k]} + {layout.small}*sigma}}"
+                    f"resonances={{{combination}: {own} + {layout.small}*sigma}}"
                 )

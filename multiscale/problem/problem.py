@@ -35,8 +35,8 @@ class Problem:
         Instead of `small`: integer orders carried by unknowns and parameters, ``{u: 1, mu: 2}``. The small parameter is
         then made by the library as a bookkeeping symbol whose value is 1, and results are in the user's own unknowns.
     resonances : mapping, or sequence of Eq, optional
-        Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol, its square,
-        a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies in exact
+        Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol, its
+        square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies in exact
         rational ratio are resonant without a relation.
     time : Symbol, optional
         Needed only to check that it is the one meant.
@@ -130,7 +130,7 @@ class Problem:
     @property
     def detunings(self) -> tuple[Detuning, ...]:
         """How each detuning follows from the frequency that its relation eliminates."""
-        return self._prepared(1).relations.detunings
+        return self.canonical(1).detunings
 
     def canonical(self, order: int) -> Canonical:
         """The canonical form for an expansion to the given order; most problems have one form for all orders."""

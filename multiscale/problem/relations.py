@@ -16,14 +16,17 @@ import sympy as sp
 
 from multiscale.errors import ProblemError, ResonanceError
 
-__all__ = ["Detuning", "Relations", "relation_pairs", "relations_of", "taylor"]
+__all__ = ["Detuning", "Relations", "detuning_of", "relation_pairs", "relations_of", "taylor"]
 
 
 @dataclass(frozen=True)
 class Detuning:
-    """An eliminated symbol and the detuning that replaces it: detuning = formula(eliminated symbol, parameters)."""
+    """How a detuning follows from the frequencies of its relation: detuning = formula.
 
-    eliminated: sp.Symbol
+    `eliminated` is the symbol that the relation replaced, None where it is the natural frequency of an unknown.
+    """
+
+    eliminated: sp.Symbol | None
     detuning: sp.Symbol
     formula: sp.Expr
 
@@ -111,7 +114,7 @@ def relations_of(
             left = left.subs(symbol, replacement)
         symbol, solved = _solved(key, left, value, small, drives)
         values = [(s, v.subs(symbol, solved)) for s, v in values] + [(symbol, solved)]
-        if (detuning := _detuning(symbol, key, stated[-1][1].subs(carried), small)) is not None:
+        if (detuning := detuning_of(symbol, key, stated[-1][1].subs(carried), small)) is not None:
             detunings.append(detuning)
     return Relations(tuple(stated), tuple(values), tuple(frequencies), tuple(detunings))
 
@@ -125,7 +128,7 @@ def relation_pairs(given: Any) -> tuple[tuple[sp.Expr, sp.Expr], ...]:
         for relation in given:
             if not isinstance(relation, sp.Eq):
                 raise ProblemError(
-                    f"resonance {relation!r}: expected a mapping {{frequency: value}} or equations sympy.Eq(frequency, value)"
+                    f"resonance {relation!r}: expected a mapping {{frequency: value}} or sympy.Eq(frequency, value)"
                 )
             pairs.append((relation.lhs, relation.rhs))
     result = []
@@ -158,7 +161,7 @@ def _solved(
             leading = solved.subs(small, 0)
             if leading.is_nonpositive:
                 raise ResonanceError(
-                    f"the relation {key} = {value} contradicts the others: it needs {symbol} = {leading} at leading order"
+                    f"the relation {key} = {value} contradicts the others: at leading order {symbol} = {leading}"
                 )
             return symbol, solved
     at_zero = sp.expand((left - value).subs(small, 0))
@@ -170,8 +173,8 @@ def _solved(
     )
 
 
-def _detuning(symbol: sp.Symbol, key: sp.Expr, value: sp.Expr, small: sp.Symbol) -> Detuning | None:
-    """The one symbol of the small part of the value that is linear in it."""
+def detuning_of(symbol: sp.Symbol | None, key: sp.Expr, value: sp.Expr, small: sp.Symbol) -> Detuning | None:
+    """The relation key = value solved for a symbol of the small part of the value that enters it linearly."""
     weak = sp.expand(value - value.subs(small, 0))
     for s in sorted(weak.free_symbols - {small} - key.free_symbols, key=str):
         slope = sp.diff(value, s)

@@ -60,7 +60,7 @@ class SlowLeaves:
         return unsupported(
             shown,
             f"it depends on {self.time} explicitly",
-            f"Drives are cos or sin of a fast angle; slow parameters depend on time through {self.small}*{self.time} only",
+            f"Drives are cos or sin of a fast angle; slow parameters are functions of {self.small}*{self.time}",
         )
 
     def close(self, depth: int) -> None:
