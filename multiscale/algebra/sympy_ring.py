@@ -136,10 +136,9 @@ class SympyRing(NamedTerms):
         return Scaled(self._ring.from_dict({m: c for m, c in terms.items() if c}), x.denominator) if changed else x
 
     def conjugate(self, x: Any) -> Any:
-        pick = itemgetter(*self.spec.partner)
-        return Scaled(
-            self._ring.from_dict({pick(m): -c if m[0] & 1 else c for m, c in x.numerator.items()}), x.denominator
-        )
+        partner = self.spec.partner
+        terms = {tuple([m[k] for k in partner]): -c if m[0] & 1 else c for m, c in x.numerator.items()}
+        return Scaled(self._ring.from_dict(terms), x.denominator)
 
     def diff(self, x: Any, generator: int) -> Any:
         return Scaled(x.numerator.diff(self._ring.gens[generator]), x.denominator)

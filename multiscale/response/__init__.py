@@ -1,0 +1,1 @@
+"""Steady response and its boundaries: where a motion of a given kind exists, and where it changes stability."""
