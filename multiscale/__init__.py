@@ -14,6 +14,7 @@ from multiscale.errors import (
 from multiscale.expansion import Expansion, expand, extend
 from multiscale.level import Level
 from multiscale.problem import Problem
+from multiscale.response.transition_curves import threshold, transition_curves
 from multiscale.slow_flow import SlowFlow
 
 __version__ = "0.1.0"
@@ -34,4 +35,6 @@ __all__ = [
     "UnsupportedTermError",
     "expand",
     "extend",
+    "threshold",
+    "transition_curves",
 ]

@@ -48,36 +48,53 @@ def _driven(coefficient: tuple[tuple[tuple[tuple[str, int], ...], object], ...])
 
 def small_divisors(problem: Problem, computation: Computation, tolerance: float) -> list[str]:
     """Combinations of numeric frequencies that come close to a natural frequency without meeting it."""
-    bases = computation.canonical.bases
+    bases, drives = computation.canonical.bases, computation.canonical.drives
     values = [value for b in bases.values if (value := computation.base_value(b)) is not None]
     if len(values) < len(bases.values):
         return []
-    found = []
+    frequencies = [_value(rate, values) / bases.unit for rate in (*bases.rates, *(d.rate for d in drives))]
+    found: dict[tuple[int, ...], str] = {}
     for k, rate in sorted(computation.hierarchy.met):
-        own = _value(bases.rates[k], values) / bases.unit
-        near = abs(_value(rate, values)) / bases.unit
-        if rate != bases.rates[k] and 0 < abs(near - own) < tolerance * own:
-            found.append(_near_resonance(problem, computation, k, rate, near, own))
-    return found
+        distance = abs(_value(rate, values)) / bases.unit - frequencies[k]
+        if rate == bases.rates[k] or not 0 < abs(distance) < tolerance * frequencies[k]:
+            continue
+        relation = _relation(computation, k, rate)
+        if relation not in found:
+            found[relation] = _near_resonance(problem, computation, relation, frequencies)
+    return list(found.values())
 
 
 def _value(rate: Rate, values: Sequence[float]) -> float:
     return sum(r * v for r, v in zip(rate, values, strict=True))
 
 
-def _near_resonance(problem: Problem, computation: Computation, k: int, rate: Rate, near: float, own: float) -> str:
+def _relation(computation: Computation, k: int, rate: Rate) -> tuple[int, ...]:
+    """The combination of frequencies that nearly vanishes: the simplest monomial of this rate less mode k, oriented."""
     rates = computation.hierarchy.rates
     combination = min((turns(m) for m, r in rates.items() if r == rate), key=lambda n: (sum(map(abs, n)), n))
-    frequencies = [*computation.canonical.frequencies, *(d.frequency for d in computation.canonical.drives)]
-    names = [f"omega_{u.func.__name__}" for u in problem.unknowns] + [
-        f"({d.frequency})" for d in computation.canonical.drives
-    ]
-    text = " + ".join(f"{n}*{name}" for n, name in zip(combination, names, strict=True) if n)
-    value = sp.Add(*(n * w for n, w in zip(combination, frequencies, strict=True)))
+    relation = tuple(n - (j == k) for j, n in enumerate(combination))
+    return max(relation, tuple(-n for n in relation))
+
+
+def _near_resonance(
+    problem: Problem, computation: Computation, relation: Sequence[int], frequencies: Sequence[float]
+) -> str:
+    """The message, solved for a drive or for the fastest mode that enters once."""
+    canonical, modes = computation.canonical, computation.modes
+    single = [j for j, n in enumerate(relation) if abs(n) == 1]
+    target = max(single or [j for j, n in enumerate(relation) if n], key=lambda j: (j >= modes, frequencies[j]))
+    names = [f"omega_{u.func.__name__}" for u in problem.unknowns] + [str(d.frequency) for d in canonical.drives]
+    exact = [*canonical.frequencies, *(d.frequency for d in canonical.drives)]
+    shares = {j: sp.Rational(-n, relation[target]) for j, n in enumerate(relation) if n and j != target}
+    text = " + ".join(f"{c}*{names[j]}" for j, c in shares.items())
+    near = sum(float(c) * frequencies[j] for j, c in shares.items())
+    value = sp.Add(*(c * exact[j] for j, c in shares.items()))
+    key = problem.unknowns[target] if target < modes else canonical.drives[target - modes].frequency
+    hint = " (with a symbol for the drive frequency)" if target >= modes and key.is_number else ""
     return (
-        f"small divisor: {text} = {near:.6g} is close to omega_{problem.unknowns[k].func.__name__} = {own:.6g} "
-        f"(difference {near - own:.3g}); the expansion holds only for {problem.small} well below that. "
-        f"To treat it as a resonance add resonances={{{problem.unknowns[k]}: {value} + {problem.small}*sigma}}"
+        f"small divisor: {text} = {near:.6g} is close to {names[target]} = {frequencies[target]:.6g}; the expansion holds "
+        f"only for {problem.small} well below the difference {abs(near - frequencies[target]):.3g}. To treat it as a "
+        f"resonance add resonances={{{key}: {value} + {problem.small}*sigma}}{hint}"
     )
 
 
@@ -95,8 +112,8 @@ def _unbalanced(computation: Computation) -> list[str]:
     for k, drive in enumerate(c.canonical.drives):
         if drive.frequency != 0 and not any(row[c.modes + k] for row in seen):
             found.append(
-                f"the drive of frequency {drive.frequency} is balanced by no relation up to order {c.order}: it does not "
-                "turn the slow flow and enters the forced response only; declare a resonance if it is near one"
+                f"the drive of frequency {drive.frequency} is balanced by no relation up to order {c.order}: it does "
+                "not turn the slow flow and enters the forced response only; declare a resonance if it is near one"
             )
     return found
 
@@ -104,9 +121,8 @@ def _unbalanced(computation: Computation) -> list[str]:
 def _explicit_time(problem: Problem, computation: Computation) -> list[str]:
     if computation.autonomous:
         return []
-    return [
-        f"the slow flow depends on {problem.time} explicitly (slow parameters, or beats between drives): it has no equilibria"
-    ]
+    cause = "slow parameters, or beats between drives"
+    return [f"the slow flow depends on {problem.time} explicitly ({cause}): it has no equilibria"]
 
 
 def _lost_parameters(problem: Problem, computation: Computation) -> list[str]:

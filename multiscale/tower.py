@@ -6,7 +6,8 @@
 
 At level n the field U_n and the D_nA are unknown, while D_n of drives and slow parameters is known. `pending` gives V_n
 and W_n with the unknowns left out; `completed` adds what they contribute once they are known. A tower is never
-changed: `completed` and `lifted` return new ones. The products are a memo (their values follow from the fields), so towers that grow from each other share it.
+changed: `completed` and `lifted` return new ones. The products are a memo (their values follow from the fields), so
+towers that grow from each other share it.
 """
 
 from __future__ import annotations

@@ -79,8 +79,8 @@ def refuse_resonant_drives(
                 combination = sp.Add(*(abs(n) * d.frequency for n, d in zip(counts, drives, strict=True)))
                 own = frequencies[k]
                 raise ResonanceError(
-                    f"a drive at leading order has the frequency {combination}, which is the natural frequency {own} of "
-                    f"its oscillator: the divisor {own}**2 - ({combination})**2 vanishes and the response is unbounded. "
+                    f"a drive at leading order has the frequency {combination}, the natural frequency {own} of its "
+                    f"oscillator: the divisor {own}**2 - ({combination})**2 vanishes and the response is unbounded. "
                     f"Give the drive a factor {layout.small} (or an order) and declare "
                     f"resonances={{{combination}: {own} + {layout.small}*sigma}}"
                 )

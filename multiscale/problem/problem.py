@@ -35,9 +35,9 @@ class Problem:
         Instead of `small`: integer orders carried by unknowns and parameters, ``{u: 1, mu: 2}``. The small parameter is
         then made by the library as a bookkeeping symbol whose value is 1, and results are in the user's own unknowns.
     resonances : mapping, or sequence of Eq, optional
-        Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol, its
-        square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies in exact
-        rational ratio are resonant without a relation.
+        Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol,
+        its square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies
+        in exact rational ratio are resonant without a relation.
     time : Symbol, optional
         Needed only to check that it is the one meant.
 

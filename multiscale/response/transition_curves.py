@@ -79,8 +79,8 @@ def transition_curves(
     >>> t = sp.Symbol("t", real=True)
     >>> eps, delta = sp.symbols("epsilon delta", positive=True)
     >>> u = sp.Function("u")(t)
-    >>> mathieu = ms.Problem(u.diff(t, 2) + (delta + 2*eps*sp.cos(2*t))*u, u, small=eps)  # doctest: +SKIP
-    >>> transition_curves(mathieu, delta, order=2, tongue=1)  # doctest: +SKIP
+    >>> mathieu = ms.Problem(u.diff(t, 2) + (delta + 2*eps*sp.cos(2*t))*u, u, small=eps)
+    >>> ms.transition_curves(mathieu, delta, order=2, tongue=1)
     (-epsilon**2/8 - epsilon + 1, -epsilon**2/8 + epsilon + 1)
     """
     order, tongue = _integer("order", order, 1), _integer("tongue", tongue, 0)
@@ -121,8 +121,8 @@ def threshold(problem: Parametric, parameter: sp.Symbol, drive: sp.Symbol, *, or
     >>> eps, delta, mu, h = sp.symbols("epsilon delta mu h", positive=True)
     >>> u = sp.Function("u")(t)
     >>> equation = u.diff(t, 2) + 2*eps*mu*u.diff(t) + (delta + 2*eps*h*sp.cos(2*t))*u
-    >>> damped = ms.Problem(equation, u, small=eps)  # doctest: +SKIP
-    >>> threshold(damped, delta, h, order=1, tongue=1)  # doctest: +SKIP
+    >>> damped = ms.Problem(equation, u, small=eps)
+    >>> ms.threshold(damped, delta, h, order=1, tongue=1)
     2*mu
     """
     order, tongue = _integer("order", order, 0), _integer("tongue", tongue, 1)

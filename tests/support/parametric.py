@@ -10,14 +10,21 @@ import numpy as np
 import pytest
 import sympy as sp
 
+import multiscale as ms
+
 t = sp.Symbol("t", real=True)
 eps = sp.Symbol("epsilon", positive=True)
 u = sp.Function("u")(t)
 du, ddu = u.diff(t), u.diff(t, 2)
 
 
-def parametric(equation: sp.Expr, unknown: sp.Expr = u) -> Any:
+def parametric(equation: sp.Expr, unknown: sp.Expr = u) -> ms.Problem:
     """The problem equation = 0 for one unknown, small parameter epsilon."""
+    return ms.Problem(equation, unknown, small=eps)
+
+
+def unchecked(equation: sp.Expr, unknown: sp.Expr = u) -> Any:
+    """The same without the checks of `Problem`, to see those of the linearisation."""
     return SimpleNamespace(equations=(equation,), unknowns=(unknown,), small=eps, time=t)
 
 
