@@ -11,6 +11,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from operator import mul, sub
 from typing import Any, TypeAlias
 
 from multiscale.algebra.derivation import Derivation
@@ -32,15 +33,14 @@ class RateTable(dict[Exponents, "Rate | None"]):
 
     def __init__(self, modes: Sequence[Rate], drives: Sequence[Rate]) -> None:
         super().__init__()
-        self._rates = (*modes, *drives)
+        self._columns = tuple(zip(*modes, *drives, strict=True))
         self._own = frozenset(modes)
 
     def rate(self, exponents: Exponents) -> Rate:
         """Σ (e_k − ē_k) rate_k."""
-        counts = [int(exponents[2 * k] - exponents[2 * k + 1]) for k in range(len(self._rates))]
-        return tuple(
-            sum(n * r[b] for n, r in zip(counts, self._rates, strict=True)) for b in range(len(self._rates[0]))
-        )
+        plain = list(map(int, exponents))
+        counts = list(map(sub, plain[::2], plain[1::2]))
+        return tuple(sum(map(mul, counts, column)) for column in self._columns)
 
     def __missing__(self, exponents: Exponents) -> Rate | None:
         rate = self.rate(exponents)

@@ -92,9 +92,9 @@ def _near_resonance(
     key = problem.unknowns[target] if target < modes else canonical.drives[target - modes].frequency
     hint = " (with a symbol for the drive frequency)" if target >= modes and key.is_number else ""
     return (
-        f"small divisor: {text} = {near:.6g} is close to {names[target]} = {frequencies[target]:.6g}; the expansion holds "
-        f"only for {problem.small} well below the difference {abs(near - frequencies[target]):.3g}. To treat it as a "
-        f"resonance add resonances={{{key}: {value} + {problem.small}*sigma}}{hint}"
+        f"small divisor: {text} = {near:.6g} is close to {names[target]} = {frequencies[target]:.6g}; "
+        f"the expansion holds only for {problem.small} well below the difference {abs(near - frequencies[target]):.3g}. "
+        f"To treat it as a resonance add resonances={{{key}: {value} + {problem.small}*sigma}}{hint}"
     )
 
 

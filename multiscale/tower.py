@@ -16,7 +16,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from typing import Any, TypeAlias
 
-from multiscale.algebra.derivation import Derivation, convolve
+from multiscale.algebra.derivation import Derivation, convolved_half, doubled
 from multiscale.algebra.ring import Ring
 
 __all__ = ["Field", "Jet", "Tower"]
@@ -54,16 +54,14 @@ class Tower:
 
     def pending(self, known: Derivation) -> tuple[Field, Field]:
         """(V_n, W_n) of the level n to come, without U_n and with only the known part of D_n."""
-        ring, n = self.ring, self.height
+        ring, n, fast = self.ring, self.height, self.time[0]
         velocity, acceleration = [], []
         for k in range(len(self.jets[0][0])):
-            v = convolve(ring, self.time, self.component((k, 0)), n)
-            w = convolve(ring, self.time, self.component((k, 1)), n)
-            if known:
-                v = v + known.of_real(ring, self.jets[0][0][k])
-                w = w + known.of_real(ring, self.jets[1][0][k])
+            half = convolved_half(ring, self.time, self.component((k, 0)), n) + known.half(ring, self.jets[0][0][k])
+            v = doubled(ring, half)
+            half = convolved_half(ring, self.time, self.component((k, 1)), n) + known.half(ring, self.jets[1][0][k])
             velocity.append(v)
-            acceleration.append(self.time[0].of_real(ring, v) + w)
+            acceleration.append(doubled(ring, half + fast.half(ring, v)))
         return tuple(velocity), tuple(acceleration)
 
     def completed(
@@ -73,11 +71,10 @@ class Tower:
         ring, fast = self.ring, self.time[0]
         velocity, acceleration = [], []
         for k, u in enumerate(displacement):
-            rate_of_change = fast.of_real(ring, u) + slow.of_real(ring, self.jets[0][0][k])
-            velocity.append(pending[0][k] + rate_of_change)
-            acceleration.append(
-                ring.normal(pending[1][k] + fast.of_real(ring, rate_of_change) + slow.of_real(ring, self.jets[1][0][k]))
-            )
+            change = doubled(ring, fast.half(ring, u) + slow.half(ring, self.jets[0][0][k]))
+            second = doubled(ring, fast.half(ring, change) + slow.half(ring, self.jets[1][0][k]))
+            velocity.append(pending[0][k] + change)
+            acceleration.append(ring.normal(pending[1][k] + second))
         added = (displacement, tuple(velocity), tuple(acceleration))
         jets = tuple((*levels, new) for levels, new in zip(self.jets, added, strict=True))
         return Tower(ring, (*self.time, known.merged(slow)), jets, self._products)  # type: ignore[arg-type]

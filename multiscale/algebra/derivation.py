@@ -20,7 +20,7 @@ from typing import Any
 
 from multiscale.algebra.ring import Ring
 
-__all__ = ["Derivation", "convolve"]
+__all__ = ["Derivation", "convolved_half", "doubled"]
 
 HALF = Fraction(1, 2)
 
@@ -51,8 +51,7 @@ class Derivation:
 
     def of_real(self, ring: Ring, x: Any) -> Any:
         """D x for an element that is its own conjugate, at half the products."""
-        part = ring.normal(self.half(ring, x))
-        return part + ring.conjugate(part)
+        return doubled(ring, self.half(ring, x))
 
     def __call__(self, ring: Ring, x: Any) -> Any:
         """D x for any element."""
@@ -68,10 +67,15 @@ class Derivation:
         return Derivation({**self.images, **other.images}, {**self.real_images, **other.real_images})
 
 
-def convolve(ring: Ring, derivations: Sequence[Derivation], series: Sequence[Any], level: int) -> Any:
-    """Σ_{k=1}^{level-1} D_k x_{level-k} for real x_0, x_1, …, conjugated once at the end."""
-    part = ring.zero
+def doubled(ring: Ring, half: Any) -> Any:
+    """half + conj(half), reduced: a real element from its half, which is where sums of derivatives are made cheap."""
+    half = ring.normal(half)
+    return half + ring.conjugate(half)
+
+
+def convolved_half(ring: Ring, derivations: Sequence[Derivation], series: Sequence[Any], level: int) -> Any:
+    """Half of Σ_{k=1}^{level-1} D_k x_{level-k} for real x_0, x_1, …"""
+    half = ring.zero
     for k in range(1, level):
-        part = part + derivations[k].half(ring, series[level - k])
-    part = ring.normal(part)
-    return part + ring.conjugate(part)
+        half = half + derivations[k].half(ring, series[level - k])
+    return half

@@ -50,6 +50,12 @@ class FlintRing(NamedTerms):
         value = Fraction(value)
         return self._context.constant(fmpq(value.numerator, value.denominator))
 
+    def rational(self, x: Any) -> Fraction | None:
+        if not x.is_constant():
+            return None
+        c = x.leading_coefficient() if x else fmpq(0)
+        return Fraction(int(c.p), int(c.q))
+
     def from_terms(self, terms: Mapping[Exponents, Fraction]) -> Any:
         return self._context.from_dict({m: fmpq(c.numerator, c.denominator) for m, c in terms.items()})
 

@@ -31,13 +31,16 @@ def _without_root(ring: Ring, x: Any, k: int) -> Any:
 def _rationalised(ring: Ring, x: Any) -> tuple[Any, Any]:
     """(n, d) with 1/x = n/d and d free of roots and reciprocals."""
     numerator = ring.one
+    used = {k for m, _ in ring.terms(x) for k, e in enumerate(m) if e}
     # A later root may have an earlier one in its square, so the last goes first.
     for k in range(len(ring.spec.roots), -1, -1):
-        if any(m[k] for m, _ in ring.terms(x)):
+        if k in used and any(m[k] for m, _ in ring.terms(x)):
             mirrored = _without_root(ring, x, k)
             numerator, x = ring.normal(numerator * mirrored), ring.normal(x * mirrored)
     index = ring.spec.index
     for h, p in ring.spec.reciprocals:
+        if index[h] not in used:
+            continue
         power = max((m[index[h]] for m, _ in ring.terms(x)), default=0)
         for _ in range(power):
             numerator, x = ring.normal(numerator * ring.read(dict(p))), _cleared(ring, x, index[h], p)
@@ -69,6 +72,8 @@ def missing(ring: Ring, divisors: Iterable[Any]) -> list[tuple[str, Frozen]]:
     """The reciprocals that `ring` lacks for dividing by all of `divisors`, named, in order of first need."""
     found: dict[Frozen, str] = {}
     for x in divisors:
+        if ring.rational(x) is not None:
+            continue
         for p, _ in _factors(ring, _rationalised(ring, x)[1])[1]:
             if p not in ring.spec.reciprocal_of:
                 found.setdefault(p, reciprocal_name(p))
@@ -79,6 +84,8 @@ def inverse(ring: Ring, x: Any) -> Any:
     """1/x, every reciprocal it needs being a generator of `ring`. Raises ZeroDivisionError for x = 0."""
     if not x:
         raise ZeroDivisionError("division by a zero divisor")
+    if (value := ring.rational(x)) is not None:
+        return ring.constant(1 / value)
     numerator, denominator = _rationalised(ring, x)
     content, factors = _factors(ring, denominator)
     result = numerator * ring.constant(1 / content)

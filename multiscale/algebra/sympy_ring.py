@@ -84,6 +84,11 @@ class SympyRing(NamedTerms):
         value = Fraction(value)
         return Scaled(self._ring.ground_new(ZZ(value.numerator)), value.denominator)
 
+    def rational(self, x: Any) -> Fraction | None:
+        if not x.numerator.is_ground:
+            return None
+        return Fraction(int(x.numerator.LC), x.denominator)
+
     def from_terms(self, terms: Mapping[Exponents, Fraction]) -> Any:
         common = lcm(*(c.denominator for c in terms.values()))
         return Scaled(

@@ -69,9 +69,9 @@ def _cartesian(program: Program, computation: Computation) -> tuple[list[str], l
             rest = program.wave(tuple(x - y for x, y in zip(key, own, strict=True)))
             return program.multiply(program.phase_factor(state, key[:modes]), rest)
 
-        real, imag = program.summed(program.grouped(_flow(program, computation, a), turns), state, wave)
-        two = tape.constant(2)
-        outputs += [tape.mul(two, real), tape.neg(tape.mul(two, imag))]
+        groups = program.grouped(_flow(program, computation, a), turns, scale=2)
+        real, imag = program.summed(groups, state, wave)
+        outputs += [real, tape.neg(imag)]
     return names, outputs
 
 

@@ -218,7 +218,12 @@ class BoundFunction:
     function: NumpyFunction
     parameters: tuple[Any, ...]
 
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "_scalar", all(type(x) is float for x in self.parameters))
+
     def __call__(self, t: npt.ArrayLike, y: npt.ArrayLike) -> Array:
+        if self._scalar and type(t) in _SCALARS:  # type: ignore[attr-defined]
+            return self.function._at_scalars(t, y, self.parameters)
         return self.function(t, y, *self.parameters)
 
 

@@ -159,11 +159,15 @@ class Program:
         return result
 
     def grouped(
-        self, series: Mapping[Exponents, Complex], key: Callable[[Exponents], tuple[int, ...]], half: bool = False
+        self,
+        series: Mapping[Exponents, Complex],
+        key: Callable[[Exponents], tuple[int, ...]],
+        half: bool = False,
+        scale: int = 1,
     ) -> dict[tuple[int, ...], tuple[dict[Exponents, Node], dict[Exponents, Node]]]:
         """{key: {degrees in the ρ_k = p_k² + q_k²: node} for real and imaginary part}, z_k = ½ (p_k − i q_k).
 
-        With `half` only one of each conjugate pair of terms is kept, doubled.
+        With `half` only one of each conjugate pair of terms is kept, doubled; everything is multiplied by `scale`.
         """
         tape, modes = self.tape, self._computation.modes
         groups: dict[tuple[int, ...], tuple[dict[Exponents, Node], dict[Exponents, Node]]] = {}
@@ -171,7 +175,7 @@ class Program:
             own = turns(m)
             if half and own < tuple(-x for x in own):
                 continue
-            size = tape.constant(Fraction(2 if half and any(own) else 1, 2 ** sum(m[: 2 * modes])))
+            size = tape.constant(Fraction(scale * (2 if half and any(own) else 1), 2 ** sum(m[: 2 * modes])))
             radii = tuple(min(m[2 * k], m[2 * k + 1]) for k in range(modes))
             tables = groups.setdefault(key(m), ({}, {}))
             for table, node in zip(tables, pair, strict=True):

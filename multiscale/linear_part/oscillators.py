@@ -33,7 +33,9 @@ class Oscillators:
         self._inverses: dict[tuple[int, Rate], Any] = {}
 
     def in_ring(self, ring: Ring) -> Oscillators:
-        return Oscillators(self._rates, self._bases, self._unit, ring)
+        lifted = Oscillators(self._rates, self._bases, self._unit, ring)
+        lifted._inverses.update((key, ring.lift(x)) for key, x in self._inverses.items())
+        return lifted
 
     def value(self, rate: Rate) -> Any:
         """The frequency that a rate stands for, as a ring element."""

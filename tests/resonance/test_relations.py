@@ -25,7 +25,10 @@ def problem(equations, unknowns=u, resonances=()):
     return ms.Problem(equations, unknowns, small=eps, resonances=resonances)
 
 
-def driven(resonance, force=eps * f * sp.cos(Om * t)):
+HARMONIC = eps * f * sp.cos(Om * t)
+
+
+def driven(resonance, force=HARMONIC):
     return problem(cubic - force, resonances=resonance)
 
 
@@ -96,7 +99,7 @@ def test_a_frequency_may_be_given_for_its_detuning():
     assert "Omega" not in rhs.parameters
     np.testing.assert_allclose(rhs.values(values, Omega=2.05), rhs.values(values, sigma=0.5))
     np.testing.assert_allclose(rhs.values(values, Omega=2.05, sigma=0.5), rhs.values(values, sigma=0.5))
-    with pytest.raises(ms.EvaluationError, match="sigma = 0.7 contradicts Omega = 2.05"):
+    with pytest.raises(ms.EvaluationError, match=r"sigma = 0\.7 contradicts Omega = 2\.05"):
         rhs.values(values, Omega=2.05, sigma=0.7)
     with pytest.raises(ms.EvaluationError, match="Omega is given, but not omega"):
         rhs.values({alpha: 0.4, eps: 0.1, f: 0.3, mu: 0.05}, Omega=2.05)
