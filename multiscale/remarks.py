@@ -34,7 +34,7 @@ def incomplete_cubic(problem: Problem, computation: Computation) -> str | None:
         for equation in computation.canonical.force
         for term in equation
     )
-    if computation.order > 1 or not even or computation.frame.resonant:
+    if computation.order > 1 or not even:
         return None
     return (
         "order 1 with even (quadratic) terms: they contribute to the frequency only from the second order on, "
@@ -93,7 +93,7 @@ def _near_resonance(
     hint = " (with a symbol for the drive frequency)" if target >= modes and key.is_number else ""
     return (
         f"small divisor: {text} = {near:.6g} is close to {names[target]} = {frequencies[target]:.6g}; "
-        f"the expansion holds only for {problem.small} well below the difference {abs(near - frequencies[target]):.3g}. "
+        f"the expansion holds only for {problem.small} well below {abs(near - frequencies[target]):.3g}. "
         f"To treat it as a resonance add resonances={{{key}: {value} + {problem.small}*sigma}}{hint}"
     )
 

@@ -104,9 +104,7 @@ def main() -> None:
     print(f"\nFrequency at rest: {sqrt(PARAMETERS[k1] / PARAMETERS[m]) / (2 * pi) / 1e6:.4f} MHz")
     for power, correction in enumerate(result.frequency_corrections()):
         print(f"  frequency correction of order {power}: {correction}")
-    print(
-        f"\nSlow flow to second order ({result.problem.small} = 1 counts orders, a is the amplitude of the fundamental):"
-    )
+    print(f"\nSlow flow to second order ({result.problem.small} = 1 counts orders; a: amplitude of the fundamental):")
     for variable, rate in result.slow_flow.polar.items():
         print(f"  d{variable}/dt = {rate}")
     print("\n" + table())
