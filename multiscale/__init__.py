@@ -14,6 +14,7 @@ from multiscale.errors import (
 from multiscale.expansion import Expansion, expand, extend
 from multiscale.level import Level
 from multiscale.problem import Problem
+from multiscale.response.observable import Observable, harmonics, observable
 from multiscale.response.transition_curves import threshold, transition_curves
 from multiscale.slow_flow import SlowFlow
 
@@ -25,6 +26,7 @@ __all__ = [
     "Level",
     "MultiscaleError",
     "NumpyFunction",
+    "Observable",
     "OrderingWarning",
     "Problem",
     "ProblemError",
@@ -35,6 +37,8 @@ __all__ = [
     "UnsupportedTermError",
     "expand",
     "extend",
+    "harmonics",
+    "observable",
     "threshold",
     "transition_curves",
 ]

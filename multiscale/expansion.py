@@ -10,13 +10,13 @@ from typing import TYPE_CHECKING, Any
 
 import sympy as sp
 
-from multiscale.computed import Computation, Snapshot, begin, restore
+from multiscale.computed import Computation, Finished, Snapshot, begin, restore
 from multiscale.errors import MultiscaleError, OrderingWarning, ProblemError, ResonanceError, SmallDivisorWarning
 from multiscale.level import Level, Views, polynomials_below
 from multiscale.problem import Problem
 from multiscale.remarks import incomplete_cubic, remarks, small_divisors
 from multiscale.slow_flow import SlowFlow
-from multiscale.solution import FORMS, solution
+from multiscale.solution import FORMS, field_writer, solution
 from multiscale.symbols import Symbols, symbols_of
 
 if TYPE_CHECKING:
@@ -31,13 +31,13 @@ class _Levels(Mapping[int, Level]):
     """Levels by number, each made when it is first asked for."""
 
     def __init__(self, views: Views, order: int) -> None:
-        self._views, self._order, self._made = views, order, dict[int, Level]()
+        self.views, self._order, self._made = views, order, dict[int, Level]()
 
     def __getitem__(self, n: int) -> Level:
         if n not in range(self._order + 1):
             raise KeyError(f"level {n}: this expansion has the levels 0 … {self._order}")
         if n not in self._made:
-            self._made[n] = self._views.level(n)
+            self._made[n] = self.views.level(n)
         return self._made[n]
 
     def __iter__(self) -> Iterator[int]:
@@ -74,17 +74,18 @@ class Expansion:
         return symbols_of(self.problem, self.computation.modes, len(self.computation.frame.resonant), self.order)
 
     @cached_property
-    def _views(self) -> Views:
+    def views(self) -> Views:
+        """How finished coefficients are written; for functions that work on an expansion."""
         return Views(self.problem, self.computation, self.symbols)
 
     @cached_property
     def levels(self) -> Mapping[int, Level]:
         """``levels[n]``, n = 0 … N."""
-        return _Levels(self._views, self.order)
+        return _Levels(self.views, self.order)
 
     @cached_property
     def slow_flow(self) -> SlowFlow:
-        return SlowFlow(self.problem, self.computation, self._views, self.symbols)
+        return SlowFlow(self.problem, self.computation, self.views, self.symbols)
 
     @property
     def relations(self) -> dict[sp.Expr, sp.Expr]:
@@ -134,7 +135,11 @@ class Expansion:
             raise MultiscaleError(
                 f"order is {order!r}: this expansion has the levels 0 … {self.order}; `extend` it for more"
             )
-        return solution(self.problem, self.computation, self._views, self.symbols, form, order)
+        return solution(self.problem, self.computation, self.views, self.symbols, form, order)
+
+    def field_expression(self, finished: Finished, form: str) -> sp.Expr:
+        """A finished real field in the slow variables of `form` and time."""
+        return field_writer(self.computation, self.views, self.symbols, form)(finished)
 
     @cached_property
     def nonresonance(self) -> tuple[sp.Expr, ...]:
@@ -143,7 +148,7 @@ class Expansion:
         finished = [c.change(n, a) for n in range(1, self.order + 1) for a in range(c.modes)]
         finished += [c.field(n, k) for n in range(self.order + 1) for k in range(c.modes)]
         own = {p for _, p in c.canonical.spec.reciprocals}
-        divisors = [self._views.writer.polynomial(p) for p in polynomials_below(finished) if p not in own]
+        divisors = [self.views.writer.polynomial(p) for p in polynomials_below(finished) if p not in own]
         return tuple(d for d in divisors if not d.is_positive)
 
     @cached_property

@@ -109,10 +109,11 @@ class Views:
         for m, c in finished.items():
             rest = self.angle(frame.relative(m, mode))
             wave = sp.exp(sp.I * rest) if rest != 0 else sp.Integer(1)
-            terms.append(self.writer.coefficient(c) * self._monomial(m) * wave)
+            terms.append(self.writer.coefficient(c) * self.monomial(m) * wave)
         return sp.Add(*terms)
 
-    def _monomial(self, exponents: tuple[int, ...]) -> sp.Expr:
+    def monomial(self, exponents: tuple[int, ...]) -> sp.Expr:
+        """The amplitudes of a monomial, phases apart."""
         factors = [
             A ** exponents[2 * k] * sp.conjugate(A) ** exponents[2 * k + 1] for k, A in enumerate(self._symbols.A)
         ]
@@ -125,7 +126,7 @@ class Views:
         for m, c in finished.items():
             row = self._computation.frame.fast(turns(m))
             angles[row] = self.angle(turns(m))
-            groups.setdefault(row, []).append(self.writer.coefficient(c) * self._monomial(m))
+            groups.setdefault(row, []).append(self.writer.coefficient(c) * self.monomial(m))
         return sp.Add(*(sp.Add(*terms) * sp.exp(sp.I * angles[row]) for row, terms in sorted(groups.items())))
 
     def level(self, n: int) -> Level:

@@ -12,7 +12,7 @@ from multiscale.level import Views
 from multiscale.problem import Problem
 from multiscale.symbols import Symbols
 
-__all__ = ["FORMS", "solution"]
+__all__ = ["FORMS", "field_writer", "solution"]
 
 FORMS = ("polar", "complex", "cartesian")
 Complex = tuple[sp.Expr, sp.Expr]
@@ -22,23 +22,22 @@ def solution(
     problem: Problem, computation: Computation, views: Views, symbols: Symbols, form: str, order: int
 ) -> dict[sp.Expr, sp.Expr]:
     """{unknown: Σ εⁿ U_n, n = 0 … order}."""
-    modes = computation.modes
-    if form == "complex":
-        build: Callable[[Finished], sp.Expr] = views.field
-    elif form == "polar":
-        deviations = computation.frame.deviations(symbols.gamma, symbols.beta)
-
-        def build(finished: Finished) -> sp.Expr:
-            return _real_field(finished, modes, views, lambda m: _polar_wave(m, deviations, views, symbols))
-    else:
-
-        def build(finished: Finished) -> sp.Expr:
-            return _real_field(finished, modes, views, lambda m: _cartesian_wave(m, views, symbols))
-
+    build = field_writer(computation, views, symbols, form)
     return {
         u: sp.Add(*(problem.small**n * build(computation.field(n, k)) for n in range(order + 1)))
         for k, u in enumerate(problem.unknowns)
     }
+
+
+def field_writer(computation: Computation, views: Views, symbols: Symbols, form: str) -> Callable[[Finished], sp.Expr]:
+    """How a finished real field is written in one of `FORMS`."""
+    if form == "complex":
+        return views.field
+    modes = computation.modes
+    if form == "polar":
+        deviations = computation.frame.deviations(symbols.gamma, symbols.beta)
+        return lambda f: _real_field(f, modes, views, lambda m: _polar_wave(m, deviations, views, symbols))
+    return lambda f: _real_field(f, modes, views, lambda m: _cartesian_wave(m, views, symbols))
 
 
 def _real_field(finished: Finished, modes: int, views: Views, wave: Callable[[tuple[int, ...]], Complex]) -> sp.Expr:

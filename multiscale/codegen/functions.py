@@ -2,20 +2,22 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from fractions import Fraction
+
+import sympy as sp
 
 from multiscale.codegen.calls import evaluate
 from multiscale.codegen.numpy_function import Inversion, NumpyFunction
 from multiscale.codegen.printer import source
 from multiscale.codegen.program import Complex, Program
 from multiscale.codegen.tape import Node, Tape
-from multiscale.computed import Computation
+from multiscale.computed import Computation, Finished
 from multiscale.frame import turns
 from multiscale.problem import Problem
 from multiscale.problem.relations import Detuning
 
-__all__ = ["displacement_function", "frequency_function", "slow_flow_function"]
+__all__ = ["displacement_function", "frequency_function", "observable_function", "slow_flow_function"]
 
 
 def _function(
@@ -165,9 +167,10 @@ def slow_flow_function(problem: Problem, computation: Computation, form: str, wr
     return _function(problem, program, names, outputs, shape, f"{heading}.", is_complex=form == "complex")
 
 
-def displacement_function(problem: Problem, computation: Computation, derivative: int) -> NumpyFunction:
-    """The unknowns (or a time derivative of them) at time t from a slow state."""
-    program = Program(problem, computation)
+def _real_field(
+    program: Program, computation: Computation
+) -> tuple[list[str], Callable[[dict[tuple[int, ...], Complex]], Node]]:
+    """Names of the state, and how a real field (coefficients of its monomials) is evaluated at the state and time."""
     modes, drives = computation.modes, len(computation.canonical.drives)
     names, state = _cartesian_state(program, modes)
     tape = program.tape
@@ -181,12 +184,33 @@ def displacement_function(problem: Problem, computation: Computation, derivative
     def wave(key: tuple[int, ...]) -> Complex:
         return program.multiply(program.phase_factor(moving, key[:modes]), program.wave((0,) * modes + key[modes:]))
 
+    return names, lambda series: program.summed(program.grouped(series, turns, half=True), moving, wave)[0]
+
+
+def displacement_function(problem: Problem, computation: Computation, derivative: int) -> NumpyFunction:
+    """The unknowns (or a time derivative of them) at time t from a slow state."""
+    program = Program(problem, computation)
+    names, field = _real_field(program, computation)
     outputs = []
     for k in range(len(problem.unknowns)):
         series = program.series((n, computation.field(n, k, derivative)) for n in range(computation.order + 1))
-        outputs.append(program.summed(program.grouped(series, turns, half=True), moving, wave)[0])
+        outputs.append(field(series))
     what = ("Unknowns", "Velocities", "Accelerations")[derivative]
     return _function(problem, program, names, outputs, (len(outputs),), f"{what} through order {computation.order}.")
+
+
+def observable_function(
+    problem: Problem, computation: Computation, terms: Sequence[tuple[sp.Expr, Sequence[tuple[int, Finished]]]]
+) -> NumpyFunction:
+    """Σ coefficient · product of fields, at time t from a slow state."""
+    program = Program(problem, computation)
+    names, field = _real_field(program, computation)
+    tape = program.tape
+    total = []
+    for coefficient, products in terms:
+        total.append(tape.mul(program.expression(coefficient), field(program.series(products))))
+    heading = f"Quantity along the motion, through order {computation.order}."
+    return _function(problem, program, names, [tape.total(total)], (), heading)
 
 
 def frequency_function(problem: Problem, computation: Computation, mode: int) -> NumpyFunction:

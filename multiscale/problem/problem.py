@@ -132,6 +132,12 @@ class Problem:
         """How each detuning follows from the frequency that its relation eliminates."""
         return self.canonical(1).detunings
 
+    def with_relations(self, x: sp.Expr) -> sp.Expr:
+        """An expression with the symbols that relations eliminate replaced by their values."""
+        for symbol, value in self._prepared(1).relations.values:
+            x = x.subs(symbol, value)
+        return x
+
     def canonical(self, order: int) -> Canonical:
         """The canonical form for an expansion to the given order; most problems have one form for all orders."""
         if None in self._canonical:
