@@ -12,10 +12,11 @@ from dataclasses import dataclass, replace
 from functools import cache, cached_property
 from typing import Any, TypeAlias
 
+from multiscale.algebra.choice import make_ring
 from multiscale.algebra.derivation import Derivation
 from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Coefficient, finish
-from multiscale.algebra.ring import Exponents, make_ring
+from multiscale.algebra.ring import Exponents
 from multiscale.clock import Clock
 from multiscale.forces.polynomial import PolynomialForce
 from multiscale.frame import Frame, frame_of

@@ -1,4 +1,4 @@
-"""The contract of a ring of polynomials over Q[i], and the choice of its representation.
+"""The contract of a ring of polynomials over Q[i]; `choice` picks its representation.
 
 A ring has the generators i (named ``@i``), square roots, complex-conjugate pairs, real generators and reciprocals, in
 that order. Its elements support ``+ - *`` and truth (non-zero). Laws, tested for every representation:
@@ -24,13 +24,11 @@ from collections.abc import Hashable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from functools import cached_property
-from importlib.util import find_spec
 from typing import Any, Protocol, Self, TypeVar
 
 from multiscale.algebra.polynomial import Frozen, Polynomial
-from multiscale.errors import MultiscaleError
 
-__all__ = ["IMAGINARY", "Element", "Exponents", "Ring", "RingSpec", "make_ring"]
+__all__ = ["IMAGINARY", "Element", "Exponents", "Ring", "RingSpec"]
 
 IMAGINARY = "@i"
 Exponents = tuple[int, ...]
@@ -151,18 +149,3 @@ class NamedTerms:
     def write(self, x: Any) -> dict[tuple[tuple[str, int], ...], Fraction]:
         names = self.spec.names
         return {tuple(sorted((names[k], e) for k, e in enumerate(m) if e)): c for m, c in self.terms(x)}
-
-
-def make_ring(spec: RingSpec, representation: str = "auto") -> Ring:
-    """The ring of `spec`: "sympy", "flint", or "auto" (FLINT when python-flint is installed)."""
-    if representation == "auto":
-        representation = "flint" if find_spec("flint") else "sympy"
-    if representation == "flint":
-        from multiscale.algebra.flint_ring import FlintRing
-
-        return FlintRing(spec)
-    if representation == "sympy":
-        from multiscale.algebra.sympy_ring import SympyRing
-
-        return SympyRing(spec)
-    raise MultiscaleError(f"representation is {representation!r}: expected 'auto', 'sympy' or 'flint'")

@@ -17,7 +17,7 @@ from multiscale.algebra.quotient import Quotient
 from multiscale.algebra.ring import RingSpec
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
-from multiscale.linear_part import Rate
+from multiscale.problem.drives import Drive
 from multiscale.problem.frequencies import Bases, bases_of, eliminated, number_field_bases, square_root
 from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_drives
 from multiscale.problem.preparation import Prepared
@@ -25,22 +25,9 @@ from multiscale.problem.reading import Reader
 from multiscale.problem.relations import Detuning, detuning_of
 from multiscale.problem.terms import Layout, match, tabulate
 
-__all__ = ["Canonical", "Drive", "canonical_form"]
+__all__ = ["Canonical", "canonical_form"]
 
 ONE = (((), Fraction(1)),)
-
-
-@dataclass(frozen=True)
-class Drive:
-    """A phasor: its generator, its leading rate, the later terms Ω_1, Ω_2, … of its frequency, and the frequency and
-    the angle in the user's symbols (an eliminated frequency under its own name) and in the remaining ones."""
-
-    generator: str
-    rate: Rate
-    detunings: tuple[Frozen, ...]
-    frequency: sp.Expr
-    angle: sp.Expr
-    reduced_frequency: sp.Expr
 
 
 @dataclass(frozen=True)

@@ -14,10 +14,12 @@ from math import lcm
 
 import sympy as sp
 
+from multiscale.algebra.polynomial import Frozen
+from multiscale.linear_part import Rate
 from multiscale.problem.lattice import lattice_basis
 from multiscale.problem.reading import IMAGINARY_UNIT, unsupported
 
-__all__ = ["Phasor", "with_phasors"]
+__all__ = ["Drive", "Phasor", "with_phasors"]
 
 
 @dataclass(frozen=True)
@@ -27,6 +29,19 @@ class Phasor:
     symbol: sp.Symbol
     rate: sp.Expr
     angle: sp.Expr
+
+
+@dataclass(frozen=True)
+class Drive:
+    """A phasor: its generator, its leading rate, the later terms Ω_1, Ω_2, … of its frequency, and the frequency and
+    the angle in the user's symbols (an eliminated frequency under its own name) and in the remaining ones."""
+
+    generator: str
+    rate: Rate
+    detunings: tuple[Frozen, ...]
+    frequency: sp.Expr
+    angle: sp.Expr
+    reduced_frequency: sp.Expr
 
 
 @dataclass(frozen=True)

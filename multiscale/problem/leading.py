@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import TYPE_CHECKING
 
 import sympy as sp
 
@@ -11,11 +10,9 @@ from multiscale.algebra.quotient import Quotient, reduced
 from multiscale.errors import ProblemError, ResonanceError
 from multiscale.forces.polynomial import Term
 from multiscale.linear_part import Rate
+from multiscale.problem.drives import Drive
 from multiscale.problem.reading import Reader, unsupported
 from multiscale.problem.terms import Entry, Layout, show
-
-if TYPE_CHECKING:
-    from multiscale.problem.canonical import Drive
 
 __all__ = ["inertia", "own_stiffness", "refuse_resonant_drives"]
 

@@ -17,8 +17,9 @@ from typing import Any, Protocol
 
 import sympy as sp
 
+from multiscale.algebra.choice import make_ring
 from multiscale.algebra.polynomial import freeze
-from multiscale.algebra.ring import IMAGINARY, Ring, RingSpec, make_ring
+from multiscale.algebra.ring import IMAGINARY, Ring, RingSpec
 from multiscale.errors import ProblemError, UnsupportedTermError
 from multiscale.expressions import Writer
 from multiscale.problem.reading import Reader, unsupported

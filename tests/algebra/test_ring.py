@@ -9,10 +9,11 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from multiscale.algebra.choice import make_ring
 from multiscale.algebra.derivation import Derivation
 from multiscale.algebra.polynomial import freeze, primitive
 from multiscale.algebra.reciprocals import inverse, missing
-from multiscale.algebra.ring import RingSpec, make_ring
+from multiscale.algebra.ring import RingSpec
 from multiscale.errors import MultiscaleError
 
 SPEC = RingSpec(

@@ -6,9 +6,10 @@ from fractions import Fraction
 
 import pytest
 
+from multiscale.algebra.choice import make_ring
 from multiscale.algebra.quotient import finish
 from multiscale.algebra.reciprocals import missing
-from multiscale.algebra.ring import RingSpec, make_ring
+from multiscale.algebra.ring import RingSpec
 from multiscale.linear_part.oscillators import Oscillators
 
 BASES = [{(("w1", 1),): Fraction(1)}, {(("w2", 1),): Fraction(1)}]
