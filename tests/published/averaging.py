@@ -25,9 +25,9 @@ class Averaged:
     angle: sp.Expr
     rate: sp.Expr
     state: tuple[sp.Symbol, sp.Symbol]
-    shift: sp.Expr = sp.Integer(0)
-    response: sp.Expr = sp.Integer(0)
-    response_rate: sp.Expr = sp.Integer(0)
+    shift: sp.Expr | int = 0
+    response: sp.Expr | int = 0
+    response_rate: sp.Expr | int = 0
 
     @property
     def free(self) -> sp.Expr:
