@@ -1,5 +1,5 @@
 """Two coupled oscillators with damping: internal resonance 1:3, internal resonance 1:2 with a drive of the second mode
-(saturation), and parametric combination resonance of sum type.
+(saturation), and parametric combination resonances of sum and difference type.
 
 Natural frequencies are ω_1 and, where ω_2 = kω_1 + εσ, kω_1 at leading order.
 """
@@ -54,7 +54,9 @@ ONE_THREE = problem(damped(*(-x for x in cubic_forces(u, v))), {w2: 3 * w1 + eps
 ONE_TWO = problem(
     damped(-b1 * u * v, -b2 * u**2 - f * sp.cos(Om * t)), {w2: 2 * w1 + eps * sigma, Om: w2 + eps * delta}
 )
-SUM = problem(damped(h1 * v * sp.cos(Om * t), h2 * u * sp.cos(Om * t)), {Om: w1 + w2 + eps * sigma})
+_PARAMETRIC = damped(h1 * v * sp.cos(Om * t), h2 * u * sp.cos(Om * t))
+SUM = problem(_PARAMETRIC, {Om: w1 + w2 + eps * sigma})
+DIFFERENCE = problem(_PARAMETRIC, {Om: w2 - w1 + eps * sigma})
 
 
 def polar(e: ms.Expansion) -> tuple[sp.Expr, ...]:
@@ -89,12 +91,12 @@ def one_two(s) -> tuple[sp.Expr, ...]:
 
 
 def shifts(e: ms.Expansion) -> list[sp.Expr]:
-    """(Φ_j' − ω_j)/ε of both modes in the frame of an expansion of the sum type."""
-    rates = (angle.diff(t).subs(Om, w1 + w2 + eps * sigma) for angle in e.slow_flow.frame.values())
+    """(Φ_j' − ω_j)/ε of both modes in the frame of a parametric expansion."""
+    rates = (angle.diff(t).subs(dict(e.problem.resonances)) for angle in e.slow_flow.frame.values())
     return [sp.cancel((rate - natural) / eps) for rate, natural in zip(rates, (w1, w2), strict=True)]
 
 
-def sum_polar(e: ms.Expansion) -> tuple[sp.Expr, ...]:
+def natural_polar(e: ms.Expansion) -> tuple[sp.Expr, ...]:
     """The polar form with β_1 taken from ω_1 t, as the source has it."""
     *rest, turn = polar(e)
     return *rest, turn + eps * shifts(e)[0]
@@ -112,10 +114,24 @@ def sum_type(s) -> tuple[sp.Expr, ...]:
     )
 
 
+def difference_type(s) -> tuple[sp.Expr, ...]:
+    """γ = σT_1 + β_1 − β_2."""
+    (a1, a2), (g,) = s.a, s.gamma
+    turn1, turn2 = h1 * a2 / (4 * w1 * a1) * COS(g), h2 * a1 / (4 * w2 * a2) * COS(g)
+    return (
+        eps * (-mu1 * a1 + h1 * a2 / (4 * w1) * SIN(g)),
+        eps * (-mu2 * a2 - h2 * a1 / (4 * w2) * SIN(g)),
+        eps * (sigma + turn1 - turn2),
+        eps * turn1,
+    )
+
+
+SECTION_5_6 = NAYFEH_MOOK.format("section 5.6")
 ROWS = [
     Row("1:3", ONE_THREE, 1, polar, one_three, NAYFEH_MOOK.format("section 6.6"), AVERAGING),
     Row("1:2 with a drive", ONE_TWO, 1, polar, one_two, NAYFEH_MOOK.format("section 6.5"), AVERAGING),
-    Row("sum type", SUM, 1, sum_polar, sum_type, NAYFEH_MOOK.format("section 5.6"), AVERAGING),
+    Row("sum type", SUM, 1, natural_polar, sum_type, SECTION_5_6, AVERAGING),
+    Row("difference type", DIFFERENCE, 1, natural_polar, difference_type, SECTION_5_6, AVERAGING),
 ]
 
 
@@ -131,10 +147,7 @@ def _averaged_cases():
     one, three = Averaged(phi1, w1, (p1, q1)), Averaged(3 * phi1, 3 * w1, (p2, q2), -sigma)
     forces = cubic_forces(one.displacement, three.displacement)
     half, double = Averaged(phi1, w1, (p1, q1), (sigma + delta) / 2), Averaged(2 * phi1, 2 * w1, (p2, q2), delta)
-    s1, s2 = shifts(ms.expand(SUM, 1))
-    first, second = Averaged(phi1, w1, (p1, q1), s1), Averaged(phi2, w2, (p2, q2), s2)
-    drive = sp.cos(phi1 + phi2)
-    return {
+    cases = {
         "1:3": (ONE_THREE, (one, three), tuple(-x for x in forces)),
         "1:2 with a drive": (
             ONE_TWO,
@@ -144,8 +157,13 @@ def _averaged_cases():
                 -b2 * half.displacement**2 - f * sp.cos(2 * phi1),
             ),
         ),
-        "sum type": (SUM, (first, second), (h1 * second.displacement * drive, h2 * first.displacement * drive)),
     }
+    for name, stated, angle in (("sum type", SUM, phi1 + phi2), ("difference type", DIFFERENCE, phi2 - phi1)):
+        s1, s2 = shifts(ms.expand(stated, 1))
+        first, second = Averaged(phi1, w1, (p1, q1), s1), Averaged(phi2, w2, (p2, q2), s2)
+        drive = sp.cos(angle)
+        cases[name] = (stated, (first, second), (h1 * second.displacement * drive, h2 * first.displacement * drive))
+    return cases
 
 
 AVERAGED = _averaged_cases()
@@ -300,6 +318,12 @@ RUNS = {
         {Om: w1 + w2 + eps * sigma},
         {**DAMPING, sigma: 0.4, w1: 1.1, w2: 2.3, h1: 1.9, h2: 2.4},
         {1: 0.06, 2: 0.06},
+    ),
+    "difference type": Run(
+        DIFFERENCE,
+        {Om: w2 - w1 + eps * sigma},
+        {**DAMPING, sigma: 0.4, w1: 1.1, w2: 2.3, h1: 1.9, h2: 2.4},
+        {1: 0.45, 2: 0.2},
     ),
 }
 

@@ -1,5 +1,6 @@
 """Resonances of the damped cubic oscillator u'' + ω²u + ε(2μu' + αu³) = drive: primary, superharmonic, subharmonic,
-principal parametric, and combinations of two drives.
+principal parametric, and combinations of two drives; with
+bu² for αu³, superharmonic and subharmonic resonance of order two.
 
 The library expands a hard drive at the frequency Ω_0 that its relation gives for ε = 0: Λ = f/(2(ω² − Ω_0²)).
 """
@@ -43,10 +44,10 @@ SUPERHARMONIC = problem(CUBIC - f * sp.cos(Om * t), {3 * Om: w + eps * sigma})
 SUBHARMONIC = problem(CUBIC - f * sp.cos(Om * t), {Om: 3 * w + eps * sigma})
 PARAMETRIC = problem(CUBIC + eps * h * u * sp.cos(Om * t), {Om: 2 * w + eps * sigma})
 TWO_DRIVES = problem(CUBIC - f * sp.cos(Om1 * t) - h * sp.cos(Om2 * t), {2 * Om1 + Om2: w + eps * sigma})
-QUADRATIC = problem(
-    u.diff(t, 2) + w**2 * u + eps * (2 * mu * u.diff(t) + b * u**2) - f * sp.cos(Om1 * t) - h * sp.cos(Om2 * t),
-    {Om1 + Om2: w + eps * sigma},
-)
+SQUARE = u.diff(t, 2) + w**2 * u + eps * (2 * mu * u.diff(t) + b * u**2)
+QUADRATIC = problem(SQUARE - f * sp.cos(Om1 * t) - h * sp.cos(Om2 * t), {Om1 + Om2: w + eps * sigma})
+TWICE = problem(SQUARE - f * sp.cos(Om * t), {2 * Om: w + eps * sigma})
+HALF = problem(SQUARE - f * sp.cos(Om * t), {Om: 2 * w + eps * sigma})
 
 
 def response(force: sp.Expr, frequency: sp.Expr) -> sp.Expr:
@@ -56,6 +57,8 @@ def response(force: sp.Expr, frequency: sp.Expr) -> sp.Expr:
 
 L_SUPER = response(f, w / 3)
 L_SUB = response(f, 3 * w)
+L_TWICE = response(f, w / 2)
+L_HALF = response(f, 2 * w)
 L_ONE, L_TWO = response(f, (w - Om2) / 2), response(h, Om2)
 Q_ONE, Q_TWO = response(f, w - Om2), response(h, Om2)
 
@@ -196,6 +199,26 @@ ROWS = [
             eps * (sigma * a - 2 * b * Q_ONE * Q_TWO / w * COS(g)),
         ),
     ),
+    row(
+        "superharmonic of order two: slow flow",
+        TWICE,
+        "section 4.2",
+        polar,
+        lambda a, g: (
+            eps * (-mu * a - b * L_TWICE**2 / w * SIN(g)),
+            eps * (sigma * a - b * L_TWICE**2 / w * COS(g)),
+        ),
+    ),
+    row(
+        "subharmonic of order two: slow flow",
+        HALF,
+        "section 4.2",
+        polar,
+        lambda a, g: (
+            eps * (-mu * a - b * L_HALF * a / w * SIN(2 * g)),
+            eps * (sigma * a / 2 - b * L_HALF * a / w * COS(2 * g)),
+        ),
+    ),
 ]
 
 
@@ -286,6 +309,9 @@ def _averaged_cases() -> dict[str, tuple[ms.Problem, Averaged, sp.Expr]]:
     def cubic(m: Averaged) -> sp.Expr:
         return 2 * mu * m.velocity + alpha * m.displacement**3
 
+    def square(m: Averaged) -> sp.Expr:
+        return 2 * mu * m.velocity + b * m.displacement**2
+
     def wave(size: sp.Expr, angle: sp.Expr, frequency: sp.Expr) -> tuple[sp.Expr, sp.Expr]:
         return 2 * size * sp.cos(angle), -2 * size * frequency * sp.sin(angle)
 
@@ -297,17 +323,17 @@ def _averaged_cases() -> dict[str, tuple[ms.Problem, Averaged, sp.Expr]]:
     drives = Averaged(2 * phi1 + phi2, w, state, sigma, one[0] + two[0], one[1] + two[1])
     one, two = wave(Q_ONE, phi1, w - Om2), wave(Q_TWO, phi2, Om2)
     quadratic = Averaged(phi1 + phi2, w, state, sigma, one[0] + two[0], one[1] + two[1])
+    twice = Averaged(2 * phi1, w, state, sigma, *wave(L_TWICE, phi1, w / 2))
+    half = Averaged(phi1, w, state, sigma / 2, *wave(L_HALF, 2 * phi1, 2 * w))
     return {
         "primary": (PRIMARY, primary, cubic(primary) - f * sp.cos(phi1)),
         "superharmonic": (SUPERHARMONIC, superharmonic, cubic(superharmonic)),
         "subharmonic": (SUBHARMONIC, subharmonic, cubic(subharmonic)),
         "parametric": (PARAMETRIC, parametric, cubic(parametric) + h * parametric.displacement * sp.cos(2 * phi1)),
         "two drives": (TWO_DRIVES, drives, cubic(drives)),
-        "two drives, quadratic": (
-            QUADRATIC,
-            quadratic,
-            2 * mu * quadratic.velocity + b * quadratic.displacement**2,
-        ),
+        "two drives, quadratic": (QUADRATIC, quadratic, square(quadratic)),
+        "superharmonic of order two": (TWICE, twice, square(twice)),
+        "subharmonic of order two": (HALF, half, square(half)),
     }
 
 
@@ -356,10 +382,12 @@ RUNS = {
     "superharmonic": Run(SUPERHARMONIC, {Om: (w + eps * sigma) / 3}, {1: 1.5, 2: 3.0}, {f: 0.9}),
     "subharmonic": Run(SUBHARMONIC, {Om: 3 * w + eps * sigma}, {1: 0.25, 2: 0.05}, {f: 6.0}),
     "parametric": Run(PARAMETRIC, {Om: 2 * w + eps * sigma}, {1: 0.25, 2: 0.08}, {h: 1.7}),
-    "two drives": Run(TWO_DRIVES, {Om1: (w + eps * sigma - Om2) / 2}, {1: 1.2, 2: 3.0}, {f: 0.6, h: 0.5, Om2: 0.45}),
+    "two drives": Run(TWO_DRIVES, {Om1: (w + eps * sigma - Om2) / 2}, {1: 1.2, 2: 3.0}, {f: 0.6, h: 0.5, Om2: 0.2}),
     "two drives, quadratic": Run(
         QUADRATIC, {Om1: w + eps * sigma - Om2}, {1: 0.6, 2: 1.0}, {b: 0.7, f: 0.6, h: 0.5, Om2: 0.45}
     ),
+    "superharmonic of order two": Run(TWICE, {Om: (w + eps * sigma) / 2}, {1: 0.5, 2: 0.4}, {b: 0.6, f: 0.9}),
+    "subharmonic of order two": Run(HALF, {Om: 2 * w + eps * sigma}, {1: 0.11, 2: 0.05}, {b: 0.6, f: 0.9}),
 }
 LEVELS = [(name, order) for name, run in RUNS.items() for order in run.bounds]
 
