@@ -246,14 +246,17 @@ def test_the_exact_drive_frequency_in_the_response_differs_from_the_second_level
     assert len(difference([sp.diff(x, eps).subs(eps, 0) for x in rest], (0, 0))) == 2
 
 
-def test_the_drive_frequency_may_be_given_for_the_detuning():
-    e = ms.expand(SUPERHARMONIC, 2)
-    common = {eps: 0.05, mu: 0.25, alpha: 0.8, f: 0.9, w: 1.1}
-    state = [0.4, -0.3]
-    for function in (e.slow_flow.to_numpy(), e.to_numpy(), e.to_numpy(derivative=1)):
-        by_frequency = function.bind(common | {Om: (1.1 + 0.05 * 0.4) / 3})(2.7, state)
-        assert by_frequency == pytest.approx(function.bind(common | {sigma: 0.4})(2.7, state), rel=1e-12)
-        assert by_frequency != pytest.approx(function.bind(common | {sigma: 0.41})(2.7, state), rel=1e-6)
+@pytest.mark.parametrize(
+    "function",
+    [lambda e: e.to_numpy(), lambda e: e.to_numpy(derivative=1), lambda e: e.slow_flow.to_numpy()],
+    ids=["displacement", "velocity", "slow flow"],
+)
+def test_the_drive_frequency_may_be_given_for_the_detuning(function):
+    found = function(ms.expand(SUPERHARMONIC, 2))
+    common, state = {eps: 0.05, mu: 0.25, alpha: 0.8, f: 0.9, w: 1.1}, [0.4, -0.3]
+    by_frequency = found.bind(common | {Om: (1.1 + 0.05 * 0.4) / 3})(2.7, state)
+    assert by_frequency == pytest.approx(found.bind(common | {sigma: 0.4})(2.7, state), rel=1e-11)
+    assert by_frequency != pytest.approx(found.bind(common | {sigma: 0.41})(2.7, state), rel=1e-5)
 
 
 def test_peak_of_the_primary_resonance():
