@@ -34,7 +34,7 @@ class ResonanceError(MultiscaleError):
 
 
 class EvaluationError(MultiscaleError):
-    """A numeric function was called with wrong, missing, ambiguous or non-finite values."""
+    """A numeric function was called with wrong, missing, contradictory or non-numeric values."""
 
 
 class StorageError(MultiscaleError):

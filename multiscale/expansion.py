@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import warnings
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from functools import cached_property
-from typing import TYPE_CHECKING, Any
+from operator import index
+from typing import TYPE_CHECKING, Any, SupportsIndex
 
 import sympy as sp
 
@@ -177,7 +178,7 @@ class Expansion:
         return f"Expansion of {unknowns} to order {self.order} in {self.problem.small}"[:199]
 
     def __reduce__(self) -> tuple[Any, ...]:
-        return _rebuilt, (self.problem, self.order, self.amplitude, self.computation.snapshot())
+        return _rebuilt, (self.problem, self.order, self.amplitude, self.tolerance, self.computation.snapshot())
 
     def to_numpy(self, derivative: int = 0) -> NumpyFunction:
         """The unknowns (or their first time derivative) from a slow state: f(t, y, *parameters), shape (unknowns,) + B.
@@ -218,8 +219,8 @@ def _parallel(x: tuple[int, ...], y: tuple[int, ...]) -> bool:
     return all(a * d == b * c for a, b in zip(x, y, strict=True) for c, d in zip(x, y, strict=True))
 
 
-def _rebuilt(problem: Problem, order: int, amplitude: str, snapshot: Snapshot) -> Expansion:
-    return Expansion(problem, order, amplitude, computation=restore(problem.canonical(order), snapshot))
+def _rebuilt(problem: Problem, order: int, amplitude: str, tolerance: float, snapshot: Snapshot) -> Expansion:
+    return Expansion(problem, order, amplitude, tolerance, computation=restore(problem.canonical(order), snapshot))
 
 
 def _taken_to(
@@ -235,9 +236,9 @@ def _taken_to(
 
 
 def _checked_order(order: object, least: int) -> int:
-    if isinstance(order, bool) or not isinstance(order, int) or order < least:
+    if isinstance(order, bool) or not isinstance(order, SupportsIndex) or index(order) < least:
         raise ProblemError(f"order is {order!r}: expected an integer ≥ {least}")
-    return order
+    return index(order)
 
 
 def expand(
@@ -290,9 +291,15 @@ def expand(
     expansion = _taken_to(problem, begin(problem.canonical(order), representation), order, on_level)
     if remark := incomplete_cubic(problem, expansion.computation):
         warnings.warn(remark, OrderingWarning, stacklevel=2)
-    for remark in small_divisors(problem, expansion.computation, tolerance):
-        warnings.warn(remark, SmallDivisorWarning, stacklevel=2)
-    return replace(expansion, tolerance=tolerance)
+    return _warned(replace(expansion, tolerance=tolerance), ())
+
+
+def _warned(expansion: Expansion, known: Sequence[str]) -> Expansion:
+    """The expansion, with warnings for the small divisors that are not known yet."""
+    for remark in small_divisors(expansion.problem, expansion.computation, expansion.tolerance):
+        if remark not in known:
+            warnings.warn(remark, SmallDivisorWarning, stacklevel=3)
+    return expansion
 
 
 def extend(expansion: Expansion, order: int, *, on_level: Callable[[Level], object] | None = None) -> Expansion:
@@ -302,4 +309,6 @@ def extend(expansion: Expansion, order: int, *, on_level: Callable[[Level], obje
     if canonical != computation.canonical:
         # The statement was expanded in ε to a lower order; what is known goes on under the longer form.
         computation = restore(canonical, computation.snapshot(), computation.representation)
-    return _taken_to(expansion.problem, computation, order, on_level)
+    longer = _taken_to(expansion.problem, computation, order, on_level)
+    known = small_divisors(expansion.problem, expansion.computation, expansion.tolerance)
+    return _warned(replace(longer, tolerance=expansion.tolerance), known)

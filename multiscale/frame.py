@@ -11,8 +11,9 @@ on which the flow depends through the *resonant phases* γ = Γ δ only:
     a mode whose fast angle consists of drives alone has its lag γ = −δ_j for one of them:  u = a cos(Φ_j − γ) + …
     the other combinations of deviations form a lattice, whose Z-basis gives the rest.
 
-Modes that complete Γ keep their own, *cyclic*, phase β_j = δ_j. Combinations of drive angles alone that do not vanish
-stay in the flow as explicit functions of time: it is then non-autonomous in every frame.
+Modes that complete Γ keep their own, *cyclic*, phase β_j = δ_j, relative to their fast angle.
+Combinations of drive angles alone that do not vanish stay in the flow as explicit functions of time: it is then
+non-autonomous in every frame.
 """
 
 from __future__ import annotations
@@ -76,13 +77,21 @@ class Frame:
         return list(matrix.LUsolve(sp.Matrix([*gamma, *(beta[j] for j in self.cyclic)])))
 
 
-def _reduced_rows(found: Iterable[Vector], size: int) -> list[tuple[int, Row]]:
-    """(pivot, row) of the reduced echelon form of the combinations."""
+def _reduced_rows(found: Iterable[Vector], modes: int) -> list[tuple[int, Row]]:
+    """(pivot, row) of the reduced echelon form of the combinations.
+
+    Pivots are taken from the last mode backwards, so that the first modes keep their natural phase in the frame.
+    """
     rows = sorted({k for k in found if any(k)})
     if not rows:
         return []
-    matrix, pivots = sp.Matrix(rows).rref()
-    return [(p, tuple(Fraction(int(x.p), int(x.q)) for x in matrix.row(i))) for i, p in enumerate(pivots)]
+    order = [*reversed(range(modes)), *range(modes, len(rows[0]))]
+    matrix, pivots = sp.Matrix([[row[k] for k in order] for row in rows]).rref()
+    result = []
+    for i, p in enumerate(pivots):
+        values = {order[k]: Fraction(int(x.p), int(x.q)) for k, x in enumerate(matrix.row(i))}
+        result.append((order[p], tuple(values[k] for k in range(len(order)))))
+    return result
 
 
 def frame_of(found: Iterable[Vector], modes: int, drives: int) -> Frame:
@@ -91,17 +100,20 @@ def frame_of(found: Iterable[Vector], modes: int, drives: int) -> Frame:
     size = modes + drives
     angles = [tuple(Fraction(int(k == j)) for k in range(size)) for j in range(modes)]
     driven = []
-    for pivot, row in _reduced_rows(found, size):
+    for pivot, row in _reduced_rows(found, modes):
         if pivot < modes:
             angles[pivot] = tuple(Fraction(0) if k == pivot else -x for k, x in enumerate(row))
             if not any(x for k, x in enumerate(row[:modes]) if k != pivot):
                 driven.append(pivot)
+    driven.sort()
     others = [j for j in range(modes) if j not in driven]
     lattice = saturated_basis([tuple(k[j] if j in others else 0 for j in range(modes)) for k in found], modes)
     resonant = [tuple(-int(k == j) for k in range(modes)) for j in driven]
     resonant += [_oriented(row, angles) for row in lattice]
     matrix = sp.Matrix(resonant) if resonant else sp.zeros(0, modes)
-    candidates = combinations(others, modes - len(resonant))
+    # Phases of modes that turn with their own natural frequency are kept first: they mean the same in every frame.
+    natural_first = sorted(others, key=lambda j: any(angles[j][modes:]))
+    candidates = combinations(natural_first, modes - len(resonant))
     cyclic = next(c for c in candidates if not resonant or matrix[:, [j for j in range(modes) if j not in c]].det())
     return Frame(modes, tuple(angles), tuple(resonant), cyclic)
 

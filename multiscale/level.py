@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
@@ -79,28 +79,27 @@ class Views:
     def writer(self) -> Writer:
         return Writer(dict(self._computation.canonical.meanings))
 
-    @cached_property
-    def _generators(self) -> list[sp.Expr]:
-        """What the rows of the frame count: natural phases ω_f t and the angles of the drives."""
-        time = self._problem.time
+    def phase_of(self, row: Sequence[Fraction]) -> sp.Expr:
+        """Σ row_f ω_f t + Σ row_l θ_l: a combination of natural phases and angles of drives, in time."""
         canonical = self._computation.canonical
-        natural = [_phase(w, time) for w in canonical.frequencies]
-        return [*natural, *(d.angle for d in canonical.drives)]
+        parts = [sp.Rational(x.numerator, x.denominator) for x in row]
+        modes = len(canonical.frequencies)
+        frequency = sp.Add(*(x * w for x, w in zip(parts[:modes], canonical.frequencies, strict=True)))
+        driven = (x * d.angle for x, d in zip(parts[modes:], canonical.drives, strict=True))
+        return sp.Add(_phase(frequency, self._problem.time), *driven)
 
     def angle(self, combination: tuple[int, ...]) -> sp.Expr:
         """The fast angle of a combination (turns with the modes, turns with the drives), in time."""
-        row = self._computation.frame.fast(combination)
-        terms = (sp.Rational(x.numerator, x.denominator) * y for x, y in zip(row, self._generators, strict=True))
-        return sp.Add(*terms)
-
-    def natural_phase(self, mode: int) -> sp.Expr:
-        """∫ω dt of a mode at leading order."""
-        return self._generators[mode]
+        return self.phase_of(self._computation.frame.fast(combination))
 
     def fast_angle(self, mode: int) -> sp.Expr:
         """Φ of a mode: the angle its frame turns through."""
-        modes, drives = self._computation.modes, len(self._computation.canonical.drives)
-        return self.angle(tuple(int(k == mode) for k in range(modes)) + (0,) * drives)
+        return self.phase_of(self._computation.frame.angles[mode])
+
+    def lead(self, mode: int) -> sp.Expr:
+        """Natural phase of a mode less its fast angle: what its deviation from the frame has beside β."""
+        angles = self._computation.frame.angles[mode]
+        return self.phase_of([Fraction(int(k == mode)) - x for k, x in enumerate(angles)])
 
     def amplitudes(self, finished: Finished, mode: int) -> sp.Expr:
         """A term of dA_mode/dt in the frame: a polynomial in A and its conjugate, explicit time where it remains."""

@@ -55,10 +55,13 @@ def small_divisors(problem: Problem, computation: Computation, tolerance: float)
     frequencies = [_value(rate, values) / bases.unit for rate in (*bases.rates, *(d.rate for d in drives))]
     found: dict[tuple[int, ...], str] = {}
     for k, rate in sorted(computation.hierarchy.met):
-        distance = abs(_value(rate, values)) / bases.unit - frequencies[k]
-        if rate == bases.rates[k] or not 0 < abs(distance) < tolerance * frequencies[k]:
+        turning = _value(rate, values) / bases.unit
+        own = bases.rates[k]
+        if rate in (own, tuple(-r for r in own)):
             continue
-        relation = _relation(computation, k, rate)
+        if abs(abs(turning) - frequencies[k]) >= tolerance * frequencies[k]:
+            continue
+        relation = _relation(computation, k, rate, 1 if turning > 0 else -1)
         if relation not in found:
             found[relation] = _near_resonance(problem, computation, relation, frequencies)
     return list(found.values())
@@ -68,11 +71,11 @@ def _value(rate: Rate, values: Sequence[float]) -> float:
     return sum(r * v for r, v in zip(rate, values, strict=True))
 
 
-def _relation(computation: Computation, k: int, rate: Rate) -> tuple[int, ...]:
-    """The combination of frequencies that nearly vanishes: the simplest monomial of this rate less mode k, oriented."""
+def _relation(computation: Computation, k: int, rate: Rate, sign: int) -> tuple[int, ...]:
+    """The combination of frequencies that nearly vanishes: a simplest monomial of this rate less ±mode k, oriented."""
     rates = computation.hierarchy.rates
     combination = min((turns(m) for m, r in rates.items() if r == rate), key=lambda n: (sum(map(abs, n)), n))
-    relation = tuple(n - (j == k) for j, n in enumerate(combination))
+    relation = tuple(n - sign * (j == k) for j, n in enumerate(combination))
     return max(relation, tuple(-n for n in relation))
 
 

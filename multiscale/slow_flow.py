@@ -86,8 +86,8 @@ class SlowFlow:
 
     @property
     def phases(self) -> dict[sp.Symbol, sp.Expr]:
-        """{γ: its definition} for the phases that drive the flow; u = a cos(ω t + β) + … defines β for every mode."""
-        own = [self._views.natural_phase(j) + b - self._views.fast_angle(j) for j, b in enumerate(self._symbols.beta)]
+        """{γ: its definition} for the phases that drive the flow, with β as in u = a cos(ωt + β) + … for every mode."""
+        own = [self._views.lead(j) + b for j, b in enumerate(self._symbols.beta)]
         return {
             g: sp.expand(sp.Add(*(n * d for n, d in zip(row, own, strict=True))))
             for g, row in zip(self._symbols.gamma, self._frame.resonant, strict=True)
@@ -95,7 +95,7 @@ class SlowFlow:
 
     @property
     def cyclic(self) -> tuple[sp.Symbol, ...]:
-        """The phases that drive nothing."""
+        """The phases that drive nothing, each relative to the fast angle of its mode in `frame`."""
         return tuple(self._symbols.beta[j] for j in self._frame.cyclic)
 
     @property

@@ -33,7 +33,7 @@ class Tower:
     ring: Ring
     time: tuple[Derivation, ...]
     jets: tuple[tuple[Field, ...], tuple[Field, ...], tuple[Field, ...]]
-    _products: dict[tuple[Jet, ...], list[Any]] = field(default_factory=dict, repr=False, compare=False)
+    _products: dict[tuple[tuple[Jet, ...], int], Any] = field(default_factory=dict, repr=False, compare=False)
 
     @classmethod
     def start(cls, ring: Ring, fast: Derivation, displacement: Field) -> Tower:
@@ -86,10 +86,11 @@ class Tower:
         if len(factors) == 1:
             unknown, order = factors[0]
             return self.jets[order][level][unknown]
-        known = self._products.setdefault(factors, [])
-        for n in range(len(known), level + 1):
-            known.append(self.ring.normal(self._convolution(factors, n)))
-        return known[level]
+        known = self._products.get((factors, level))
+        if known is None:
+            # Threads that meet here compute the same value; the first one stored is the one all keep.
+            known = self._products.setdefault((factors, level), self.ring.normal(self._convolution(factors, level)))
+        return known
 
     def _convolution(self, factors: tuple[Jet, ...], n: int) -> Any:
         first = factors[::2]
@@ -107,7 +108,7 @@ class Tower:
         def lift(levels: Sequence[Field]) -> tuple[Field, ...]:
             return tuple(tuple(ring.lift(x) for x in level) for level in levels)
 
-        products = {key: [ring.lift(x) for x in series] for key, series in self._products.items()}
+        products = {key: ring.lift(x) for key, x in list(self._products.items())}
         time = tuple(d.lifted(ring) for d in self.time)
         return Tower(ring, time, (lift(self.jets[0]), lift(self.jets[1]), lift(self.jets[2])), products)
 

@@ -25,6 +25,11 @@ from multiscale.algebra.ring import Exponents, Key, NamedTerms, RingSpec
 __all__ = ["FlintRing"]
 
 
+def _ascii(name: str) -> str:
+    """FLINT takes ASCII names only; the names of `spec` are ours, these are its."""
+    return name.encode("ascii", "backslashreplace").decode()
+
+
 class FlintRing(NamedTerms):
     """A `Ring` on FLINT; see `multiscale.algebra.ring` for the contract."""
 
@@ -32,7 +37,7 @@ class FlintRing(NamedTerms):
 
     def __init__(self, spec: RingSpec) -> None:
         self.spec = spec
-        self._context = fmpq_mpoly_ctx.get(spec.names, Ordering.lex)
+        self._context = fmpq_mpoly_ctx.get([_ascii(name) for name in spec.names], Ordering.lex)
         self.generators: tuple[Any, ...] = tuple(self._context.gens())
         self.zero = self._context.constant(0)
         self.one = self._context.constant(1)

@@ -24,26 +24,15 @@ from collections.abc import Hashable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from functools import cached_property
-from typing import Any, Protocol, Self, TypeVar
+from typing import Any, Protocol, TypeVar
 
 from multiscale.algebra.polynomial import Frozen, Polynomial
 
-__all__ = ["IMAGINARY", "Element", "Exponents", "Ring", "RingSpec"]
+__all__ = ["IMAGINARY", "Exponents", "Ring", "RingSpec"]
 
 IMAGINARY = "@i"
 Exponents = tuple[int, ...]
 Key = TypeVar("Key", bound=Hashable)
-
-
-class Element(Protocol):
-    """An element of one ring; arithmetic between elements of different rings is an error."""
-
-    def __add__(self, other: Any) -> Self: ...
-    def __sub__(self, other: Any) -> Self: ...
-    def __mul__(self, other: Any) -> Self: ...
-    def __neg__(self) -> Self: ...
-    def __bool__(self) -> bool: ...
-    def __len__(self) -> int: ...
 
 
 @dataclass(frozen=True)

@@ -42,11 +42,12 @@ def _inversion(problem: Problem, detuning: Detuning) -> Inversion:
     tape = Tape()
     names = sorted(str(s.name) for s in detuning.formula.free_symbols)
     output = evaluate(tape, detuning.formula, lambda s: tape.input(f"parameter {s.name}"))
-    text, functions = source(
-        tape, [output], [f"parameter {name}" for name in names], f"The detuning {detuning.detuning}."
-    )
-    eliminated = "" if detuning.eliminated is None else str(detuning.eliminated.name)
-    return Inversion(eliminated, str(detuning.detuning.name), tuple(names), text, functions)
+    text, functions = source(tape, [output], [f"parameter {name}" for name in names], "A detuning from frequencies.")
+    parameters = {str(s.name) for s in (*problem.parameters, problem.small)}
+    own = [detuning.eliminated] if detuning.eliminated is not None else detuning.formula.free_symbols
+    eliminated = tuple(sorted(name for s in own if (name := str(s.name)) not in parameters))
+    found = "" if detuning.detuning is None else str(detuning.detuning.name)
+    return Inversion(eliminated, found, tuple(names), text, functions)
 
 
 def _cartesian_state(program: Program, modes: int) -> tuple[list[str], list[Complex]]:

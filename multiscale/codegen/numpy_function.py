@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
+from functools import cache
 from typing import Any
 
 import numpy as np
@@ -25,36 +26,51 @@ _MATH = {"sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log, "sq
 class Inversion:
     """A detuning from the frequencies of its relation: `source` defines ``kernel(*arguments) -> (detuning,)``.
 
-    `eliminated` is the name that a mapping may give although it is no parameter any more, or "".
+    `eliminated` are names that a mapping may give although they are no parameters any more. `detuning` is one of them
+    (or "") where a relation has no detuning: then what is given can only be checked.
     """
 
-    eliminated: str
+    eliminated: tuple[str, ...]
     detuning: str
     arguments: tuple[str, ...]
     source: str
     functions: tuple[str, ...]
 
-    def completed(self, found: dict[str, Any]) -> dict[str, Any]:
+    def completed(self, found: Mapping[str, Any]) -> dict[str, Any]:
         """`found` with the detuning worked out where its frequencies are given, and checked where it is given too."""
-        rest = {name: value for name, value in found.items() if name != self.eliminated}
-        if any(name not in found for name in self.arguments):
-            if self.eliminated in found:
-                lacking = ", ".join(name for name in self.arguments if name not in found)
+        given = [name for name in self.eliminated if name in found]
+        lacking = [name for name in self.arguments if name not in found]
+        if lacking:
+            if given and given != [self.detuning]:
                 raise EvaluationError(
-                    f"{self.eliminated} is given, but not {lacking}: {self.detuning} cannot be worked out"
+                    f"{given[0]} is given, but not {', '.join(lacking)}: {self.detuning} cannot be worked out"
                 )
-            return found
-        if self.detuning in found and not self.eliminated:
-            return found
-        scope: dict[str, Any] = {name: _NUMPY[name] for name in self.functions}
-        exec(compile(self.source, "<multiscale detuning>", "exec"), scope)
-        (value,) = scope["kernel"](*(found[name] for name in self.arguments))
-        if self.detuning in found and not np.allclose(found[self.detuning], value, rtol=1e-9, atol=1e-12):
-            raise EvaluationError(
-                f"{self.detuning} = {found[self.detuning]} contradicts {self.eliminated} = {found[self.eliminated]}, "
-                f"which needs {self.detuning} = {value}: give one of them"
+            return dict(found)
+        with np.errstate(all="ignore"):
+            (value,) = _compiled(self.source, self.functions)(
+                *(_array(found[name], np.float64, name) for name in self.arguments)
             )
-        return rest | {self.detuning: value}
+        if self.detuning in found:
+            own = _array(found[self.detuning], np.float64, self.detuning)
+            stated = ", ".join(f"{name} = {found[name]}" for name in given if name != self.detuning) or "the others"
+            if not np.allclose(own, value, rtol=1e-9, atol=1e-12):
+                raise EvaluationError(
+                    f"{self.detuning} = {found[self.detuning]} contradicts {stated}, "
+                    f"which needs {self.detuning} = {value}: give one of them"
+                )
+        elif not np.isfinite(value).all():
+            raise EvaluationError(
+                f"{self.detuning} cannot be worked out from {', '.join(self.arguments)}: give it directly"
+            )
+        return {**found, self.detuning: value} if self.detuning else dict(found)
+
+
+@cache
+def _compiled(text: str, functions: tuple[str, ...]) -> Callable[..., tuple[Any, ...]]:
+    """The kernel of generated source, which holds no text of the user's, with NumPy's functions."""
+    scope: dict[str, Any] = {name: _NUMPY[name] for name in functions}
+    exec(compile(text, "<multiscale detuning>", "exec"), scope)
+    return scope["kernel"]  # type: ignore[no-any-return]
 
 
 @dataclass(frozen=True, repr=False)
@@ -169,7 +185,7 @@ class NumpyFunction:
         found: dict[str, Any] = {}
         for key, value in [*(mapping or {}).items(), *by_name.items()]:
             name = key.name if isinstance(key, sp.Symbol) else key
-            if name not in self.parameters and name not in {x.eliminated for x in self.inversions}:
+            if name not in self.parameters and name not in {n for x in self.inversions for n in x.eliminated}:
                 raise EvaluationError(f"unknown parameter {name!r}: expected {', '.join(self.parameters)}")
             if name in found:
                 raise EvaluationError(f"parameter {name!r} is given twice")
@@ -233,6 +249,8 @@ def _array(x: Any, kind: Any, name: str) -> Array:
         result = np.asarray(x)
         if result.dtype.kind == "c" and kind is np.float64:
             raise EvaluationError(f"{name} is complex: expected real values")
+        if result.dtype.kind in "USmM":
+            raise TypeError
         if result.dtype.kind not in "fiucb":
             result = result.astype(np.complex128 if kind is np.complex128 else np.float64)
         return result.astype(kind, copy=False)

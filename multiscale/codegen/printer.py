@@ -20,11 +20,11 @@ _STRENGTH = {"+": 1, "-": 1, "neg": 2, "*": 3, "/": 3}
 
 
 def identifiers(names: Iterable[str], taken: Iterable[str] = ()) -> list[str]:
-    """Python identifiers for arbitrary names, in order, all different."""
+    """ASCII identifiers for arbitrary names, in order, all different: nothing else of a name reaches the source."""
     used = set(taken) | {"sin", "cos", "exp", "log", "sqrt", "conj"}
     result = []
     for name in names:
-        word = "".join(c if c.isalnum() or c == "_" else "_" for c in name)
+        word = "".join(c if c.isascii() and (c.isalnum() or c == "_") else "_" for c in name)
         if not word or word[0].isdigit() or keyword.iskeyword(word):
             word = f"_{word}"
         while word in used:

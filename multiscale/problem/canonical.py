@@ -18,10 +18,10 @@ from multiscale.algebra.ring import RingSpec
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
 from multiscale.problem.drives import Drive
-from multiscale.problem.frequencies import Bases, bases_of, eliminated, number_field_bases, square_root
+from multiscale.problem.frequencies import Bases, bases_of, denested, eliminated, square_root
 from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_drives
 from multiscale.problem.preparation import Prepared
-from multiscale.problem.reading import Reader
+from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import Detuning, detuning_of
 from multiscale.problem.terms import Layout, match, tabulate
 
@@ -100,50 +100,37 @@ def canonical_form(
         if forced:
             k, value = forced.popitem()
             displacement = next(s for s, jet in layout.jets.items() if jet == (k, 0)) * layout.small ** masses[k].power
-            stiffness = reader.expression(_as_polynomial(squares[k], reader).items())
-            found_detuning = detuning_of(None, sp.sqrt(stiffness), value, layout.small)
-            working.detunings += [found_detuning] if found_detuning is not None else []
+            stiffness = reader.expression(reader.named(squares[k]).items())
+            known = set().union(*(x.free_symbols for x in prepared.equations))
+            working.detunings.append(detuning_of(None, sp.sqrt(stiffness), value, layout.small, known))
             working.equations[k] = sp.expand(current[k] - stiffness * displacement) + value**2 * displacement
             continue
-        found = _frequencies(reader, squares, names, working)
+        found = _frequencies(reader, squares, names, working, layout.small)
         if found is not None:
             return _assembled(working, prepared, layout, shown, found)
 
 
-def _as_polynomial(square: Quotient, reader: Reader) -> Mapping[tuple[tuple[str, int], ...], Fraction]:
-    names = reader.ring.spec.reciprocal_of
-    below = tuple((names[p], e) for p, e in square.denominator)
-    return {tuple(sorted((*m, *below))): c for m, c in square.numerator}
-
-
 def _frequencies(
-    reader: Reader, squares: list[Quotient], names: list[sp.Expr], working: _Working
+    reader: Reader, squares: list[Quotient], names: list[sp.Expr], working: _Working, small: sp.Symbol
 ) -> list[sp.Expr] | None:
     """The natural frequencies; None when a parameter was eliminated and the equations must be read again."""
     roots = []
+    written = {sp.expand(p.base) for x in working.equations for p in x.atoms(sp.Pow) if p.exp == 2 and p.base.is_Add}
+    written = {b.subs(small, 0) for b in written}
     for square, name in zip(squares, names, strict=True):
-        value = reader.expression(_as_polynomial(square, reader).items())
+        value = reader.expression(reader.named(square).items())
         if value.is_nonpositive:
             raise ProblemError(
                 f"the squared frequency of {name} is {value}, not positive: {name} does not oscillate at leading order"
             )
-        root = square_root(reader, square)
+        root = square_root(reader, square, written)
         radical = sp.sqrt(root.radicand)
         if root.radicand.free_symbols:
             radical = sp.Symbol(f"sqrt({root.radicand})", positive=True)
             if radical not in working.hidden and _hide(radical, root.radicand, working):
                 return None
         roots.append(root.outside * radical)
-    nested = [
-        r
-        for r in roots
-        if not r.free_symbols and r.is_algebraic and any(not x.base.is_Integer for x in r.atoms(sp.Pow))
-    ]
-    if nested:
-        numeric = [r for r in roots if not r.free_symbols and r.is_algebraic]
-        replaced = dict(zip(numeric, number_field_bases(numeric), strict=True))
-        roots = [replaced.get(r, r) for r in roots]
-    return roots
+    return denested(roots)
 
 
 def _hide(radical: sp.Symbol, radicand: sp.Expr, working: _Working) -> bool:
@@ -245,10 +232,6 @@ def _pruned(
     return RingSpec(pairs, units, reals, tuple((g, p) for g, p in spec.roots if g in used), reciprocals), kept
 
 
-def _decimal(x: sp.Float) -> sp.Rational:
-    return sp.Rational(repr(float(x)) if x._prec <= 53 else str(x))
-
-
 def with_exact_oscillators(equation: sp.Expr, layout: Layout) -> sp.Expr:
     """Floats in mass and leading stiffness become the decimals they print as, so that resonance is decided exactly."""
     if not equation.atoms(sp.Float):
@@ -258,5 +241,5 @@ def with_exact_oscillators(equation: sp.Expr, layout: Layout) -> sp.Expr:
         jets = [s for s in term.free_symbols if s in layout.jets]
         linear = len(jets) == 1 and layout.jets[jets[0]][1] != 1 and sp.degree(term, jets[0]) == 1
         weak = linear and layout.small in term.free_symbols and not layout.ordered
-        terms.append(term.xreplace({x: _decimal(x) for x in term.atoms(sp.Float)}) if linear and not weak else term)
+        terms.append(decimals(term) if linear and not weak else term)
     return sp.Add(*terms)

@@ -17,7 +17,7 @@ import sympy as sp
 from multiscale.algebra.polynomial import Frozen
 from multiscale.linear_part import Rate
 from multiscale.problem.lattice import lattice_basis
-from multiscale.problem.reading import IMAGINARY_UNIT, unsupported
+from multiscale.problem.reading import IMAGINARY_UNIT, decimals, unsupported
 
 __all__ = ["Drive", "Phasor", "with_phasors"]
 
@@ -54,7 +54,7 @@ class _Wave:
 
 def _wave(x: sp.Expr, time: sp.Symbol, small: sp.Symbol) -> _Wave | None:
     """The wave in cos(angle) or sin(angle), None where the angle is slow (a function of small*time)."""
-    (angle,) = x.args
+    angle = decimals(x.args[0])
     rate = sp.expand(sp.diff(angle.doit(), time))
     slow = rate.subs(time, sp.Symbol("@s") / small) if time in rate.free_symbols else rate
     if small in slow.free_symbols and sp.expand(slow).subs(small, 0).has(sp.nan, sp.zoo):

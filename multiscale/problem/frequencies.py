@@ -14,6 +14,7 @@ is assumed and listed.
 
 from __future__ import annotations
 
+from collections.abc import Container
 from dataclasses import dataclass
 from fractions import Fraction
 from math import lcm
@@ -27,7 +28,7 @@ from multiscale.errors import ProblemError
 from multiscale.linear_part import Rate
 from multiscale.problem.reading import Reader
 
-__all__ = ["Bases", "Root", "bases_of", "number_field_bases", "square_root"]
+__all__ = ["Bases", "Root", "bases_of", "denested", "number_field_bases", "square_root"]
 
 
 @dataclass(frozen=True)
@@ -38,8 +39,12 @@ class Root:
     radicand: sp.Expr
 
 
-def square_root(reader: Reader, square: Quotient) -> Root:
-    """Take every square factor out of √square; what stays below the root has exponents ±1."""
+def square_root(reader: Reader, square: Quotient, written: Container[sp.Expr] = ()) -> Root:
+    """Take every square factor out of √square; what stays below the root has exponents ±1.
+
+    The sign of a factor is that of its assumptions, or the one in which it stands in `written`, the bases of squares in
+    the equations: (Ω_2 − Ω_1)² has the root Ω_2 − Ω_1.
+    """
     numerator = reader.ring.read(dict(square.numerator))
     content, factors = reader.ring.factor(numerator)
     powers = [(freeze(reader.ring.write(p)), e) for p, e in factors] + [(p, -e) for p, e in square.denominator]
@@ -47,6 +52,8 @@ def square_root(reader: Reader, square: Quotient) -> Root:
     radicand = sp.Integer(1) if content > 0 else sp.Integer(-1)
     for p, e in powers:
         value = reader.expression(p)
+        if value.is_negative or (-value in written and value not in written):
+            value, radicand = -value, radicand * (-1) ** e
         whole = e // 2 if e > 0 else -((-e) // 2)
         outside *= value**whole
         radicand *= value ** (e - 2 * whole)
@@ -101,6 +108,28 @@ def _assumed(reader: Reader, values: list[Frozen]) -> tuple[str, ...]:
     numeric = [v for v in values if not reader.expression(v).free_symbols]
     undecided = [v for v in numeric if not reader.expression(v).is_algebraic]
     return tuple(str(reader.expression(v)) for v in undecided) if len(numeric) > 1 else ()
+
+
+def denested(frequencies: list[sp.Expr]) -> list[sp.Expr]:
+    """Frequencies whose numeric factors hold nested roots, reduced to rational combinations of as few as possible.
+
+    Factors are compared among the frequencies that share their symbolic part: 1, √2 and √(3 − 2√2) times ω.
+    """
+    groups: dict[sp.Expr, list[int]] = {}
+    factors = []
+    for k, frequency in enumerate(frequencies):
+        factor, symbolic = frequency.as_independent(*frequency.free_symbols, as_Add=False)
+        factors.append(factor)
+        groups.setdefault(symbolic, []).append(k)
+    result = list(frequencies)
+    for symbolic, members in groups.items():
+        numbers = [factors[k] for k in members]
+        if any(x.is_algebraic and any(not p.base.is_Integer for p in x.atoms(sp.Pow)) for x in numbers):
+            algebraic = [k for k in members if factors[k].is_algebraic]
+            reduced = number_field_bases([factors[k] for k in algebraic])
+            for k, x in zip(algebraic, reduced, strict=True):
+                result[k] = sp.expand(x * symbolic)
+    return result
 
 
 def number_field_bases(frequencies: list[sp.Expr]) -> list[sp.Expr]:

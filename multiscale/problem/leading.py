@@ -75,9 +75,10 @@ def refuse_resonant_drives(
             if rate in (modes[k], tuple(-r for r in modes[k])):
                 combination = sp.Add(*(abs(n) * d.frequency for n, d in zip(counts, drives, strict=True)))
                 own = frequencies[k]
+                name = "Omega, a symbol of its own for the drive frequency," if combination == own else str(combination)
                 raise ResonanceError(
                     f"a drive at leading order has the frequency {combination}, the natural frequency {own} of its "
                     f"oscillator: the divisor {own}**2 - ({combination})**2 vanishes and the response is unbounded. "
-                    f"Give the drive a factor {layout.small} (or an order) and declare "
-                    f"resonances={{{combination}: {own} + {layout.small}*sigma}}"
+                    f"Give the drive a factor {layout.small} (or an order) and declare that {name} is "
+                    f"{own} + {layout.small}*sigma through `resonances`"
                 )

@@ -48,6 +48,7 @@ def prepare(
     orders: Mapping[sp.Symbol, int],
     resonances: Sequence[tuple[sp.Expr, sp.Expr]],
     unknowns: Sequence[sp.Expr],
+    shown: Mapping[sp.Symbol, sp.Expr],
     order: int,
 ) -> Prepared:
     """`orders` concern jets and parameters. Raises `UnsupportedTermError`, `ProblemError` or `ResonanceError`."""
@@ -56,18 +57,20 @@ def prepare(
     plain = with_orders(list(equations), orders, small, time)
     plain, phasors = with_phasors(plain, time, small, set(layout.jets))
     drives = set().union(*(p.rate.free_symbols for p in phasors)) - {time, small}
-    relations = relations_of(resonances, unknowns, small, drives, carried) if resonances else Relations()
+    known = set().union(*(x.free_symbols for x in equations))
+    relations = relations_of(resonances, unknowns, small, drives, known, carried) if resonances else Relations()
     _check_used(relations, plain, phasors)
-    leaves = SlowLeaves(time, small)
+    leaves = SlowLeaves(time, small, shown=shown)
     cut = False
     result = []
     for equation in plain:
-        replaced, was_cut = relations.apply(equation, small, order)
+        # Slow time first, so that series in ε are taken at fixed εt.
+        replaced, was_cut = relations.apply(leaves.scaled(equation), small, order)
         cut = cut or was_cut
         result.append(leaves.read(replaced))
     rates, exact = [], []
     for phasor in phasors:
-        rate = leaves.read(_exactly(phasor.rate, relations))
+        rate = leaves.read(_exactly(leaves.scaled(phasor.rate), relations))
         exact.append(rate)
         polynomial = rate.is_polynomial(small)
         cut = cut or not polynomial

@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Iterable, Mapping, Sequence
 from functools import cached_property
-from typing import Any
+from operator import index
+from typing import Any, SupportsIndex
 
 import sympy as sp
 
-from multiscale.errors import ProblemError
+from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical, canonical_form
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.reading import unsupported
@@ -78,14 +80,16 @@ class Problem:
             raise ProblemError(
                 f"{len(self.equations)} equations for {len(self.unknowns)} unknowns: as many of each are needed"
             )
-        _check_names(self.equations, self.unknowns)
         self.ordering: dict[sp.Expr, int] | None = (
             _ordering(ordering, self.unknowns, self.time) if ordering is not None else None
         )
         self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
+        beside = [x for x in (*(self.ordering or {}), small) if isinstance(x, sp.Symbol)]
+        _check_names({*self._symbols, self.time, *beside}, self.unknowns)
         self._given_small = _small(small, self.ordering, self._symbols, self.time)
         self._canonical: dict[int | None, Canonical] = {}
         self.canonical(1)
+        self._warn_of_finite_detunings()
 
     @cached_property
     def small(self) -> sp.Symbol:
@@ -108,6 +112,13 @@ class Problem:
     def parameters(self) -> tuple[sp.Symbol, ...]:
         """The symbols of the problem but time and the small parameter, after elimination by relations, by name."""
         gone = {symbol for symbol, _ in self._prepared(1).relations.values}
+        form = self.canonical(1)
+        named = [value for _, value in form.meanings] + list(form.frequencies)
+        named += [x for d in form.drives for x in (d.angle, d.reduced_frequency)]
+        used = set().union(*(x.free_symbols for x in named))
+        # What only the natural frequency of an unknown contained is gone where a relation gives that frequency.
+        natural = [d.formula.free_symbols for d in form.detunings if d.eliminated is None]
+        gone |= set().union(*natural) - used - {self.small}
         return tuple(sorted(self._symbols - {self._given_small} - gone, key=lambda s: str(s.name)))
 
     @property
@@ -152,6 +163,22 @@ class Problem:
             return form
         return self._canonical[order]
 
+    def _warn_of_finite_detunings(self) -> None:
+        """A relation without ε whose value has a symbol of its own: most likely a detuning without its power of ε."""
+        present = set().union(*(x.free_symbols for x in self.equations))
+        for key, value in self.resonances:
+            strange = value.free_symbols - present - {self.small}
+            carried = self._given_small in value.free_symbols or any(s in (self.ordering or {}) for s in strange)
+            if strange and not carried:
+                s = min(strange, key=str)
+                remedy = f"{self.small}*{s}" if self.ordering is None else f"an order for {s} in `ordering`"
+                warnings.warn(
+                    f"the relation {key} = {value} has no small part: it moves {key} away from resonance by a finite "
+                    f"amount; if {s} is a detuning, write {remedy}",
+                    OrderingWarning,
+                    stacklevel=3,
+                )
+
     @cached_property
     def _layout(self) -> Layout:
         jets = {sp.Symbol(f"@{k}.{d}"): (k, d) for k in range(len(self.unknowns)) for d in (0, 1, 2)}
@@ -168,7 +195,8 @@ class Problem:
         orders = dict(self.ordering or {})
         powers = {s: orders[u] for s, (k, _) in jets.items() if (u := self.unknowns[k]) in orders}
         powers |= {s: q for s, q in orders.items() if isinstance(s, sp.Symbol)}
-        return prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, order)
+        shown = _jets(self.unknowns, self.time)
+        return prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, shown, order)
 
     def _hidden(self) -> list[sp.Expr]:
         """The equations with a symbol for each unknown and derivative."""
@@ -276,17 +304,26 @@ def _equations(given: Any) -> tuple[sp.Expr, ...]:
                 f"equation {x} contains an infinite or undefined number: every coefficient must be finite"
             )
         # `doit` carries out derivatives of products and the like that the user left unevaluated.
-        result.append(x.doit())
+        result.append(x.doit().replace(_float_power, lambda p: p.base ** int(p.exp)))
     return tuple(result)
 
 
-def _check_names(equations: tuple[sp.Expr, ...], unknowns: tuple[sp.Expr, ...]) -> None:
+def _float_power(x: sp.Expr) -> bool:
+    """u**3.0, which means u**3."""
+    return isinstance(x, sp.Pow) and isinstance(x.exp, sp.Float) and float(x.exp).is_integer()
+
+
+def _check_names(symbols: set[sp.Symbol], unknowns: tuple[sp.Expr, ...]) -> None:
     by_name: dict[str, sp.Symbol] = {}
-    for s in sorted(set().union(*(x.free_symbols for x in equations)) | {u.args[0] for u in unknowns}, key=str):
+    for s in sorted(symbols, key=lambda x: (str(x.name), str(x.assumptions0))):
         if by_name.setdefault(s.name, s) != s:
             raise ProblemError(
                 f"two different symbols are both called {s.name!r}: rename one, or give both the same assumptions"
             )
+        if s.name.startswith("@"):
+            raise ProblemError(f"the symbol {s.name!r} begins with '@', which the library keeps for itself: rename it")
+        if s.is_real is False:
+            raise ProblemError(f"the symbol {s} is assumed not to be real: parameters and time are real")
     for u in unknowns:
         if u.func.__name__ in by_name:
             raise ProblemError(f"the unknown {u} and a symbol are both called {u.func.__name__!r}: rename one")
@@ -297,9 +334,9 @@ def _ordering(given: Mapping[sp.Expr, int], unknowns: tuple[sp.Expr, ...], time:
     for key, order in given.items():
         if key not in unknowns and not (isinstance(key, sp.Symbol) and key != time):
             raise ProblemError(f"ordering has the key {key!r}: expected an unknown or a parameter of the equations")
-        if isinstance(order, bool) or int(order) != order or order < 0:
+        if isinstance(order, bool) or not isinstance(order, SupportsIndex) or index(order) < 0:
             raise ProblemError(f"ordering gives {key} the order {order!r}: expected an integer ≥ 0")
-        result[key] = int(order)
+        result[key] = index(order)
     return result
 
 

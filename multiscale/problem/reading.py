@@ -18,13 +18,13 @@ from typing import Any
 import sympy as sp
 
 from multiscale.algebra.polynomial import freeze
-from multiscale.algebra.quotient import reduced
+from multiscale.algebra.quotient import Quotient, reduced
 from multiscale.algebra.reciprocals import inverse, missing
 from multiscale.algebra.ring import IMAGINARY, RingSpec
 from multiscale.algebra.sympy_ring import SympyRing
 from multiscale.errors import ProblemError, UnsupportedTermError
 
-__all__ = ["IMAGINARY_UNIT", "Reader", "unsupported"]
+__all__ = ["IMAGINARY_UNIT", "Reader", "decimals", "unsupported"]
 
 IMAGINARY_UNIT = sp.Symbol(IMAGINARY)
 """Stands for i inside expressions that are known to be real as a whole, such as phasor forms of drives."""
@@ -33,6 +33,12 @@ IMAGINARY_UNIT = sp.Symbol(IMAGINARY)
 def unsupported(term: object, reason: str, remedy: str) -> UnsupportedTermError:
     """The one form of an error about a term."""
     return UnsupportedTermError(f"term {term}: {reason}. {remedy}")
+
+
+def decimals(x: sp.Expr) -> sp.Expr:
+    """x with every float as the decimal it prints as: where resonance is decided, numbers are exact."""
+    exact = {f: sp.Rational(repr(float(f)) if f._prec <= 53 else str(f)) for f in x.atoms(sp.Float)}
+    return x.xreplace(exact) if exact else x
 
 
 def _prime_roots(n: int) -> tuple[int, list[int]]:
@@ -87,7 +93,7 @@ class Reader:
 
     def show(self, expression: sp.Expr) -> sp.Expr:
         """The expression as the user wrote it, derivatives and all."""
-        return expression.subs(self._shown)
+        return expression.xreplace(self._shown)
 
     def _name(self, leaf: sp.Expr) -> str:
         name = repr(float(leaf)) if isinstance(leaf, sp.Float) and leaf._prec <= 53 else str(leaf)
@@ -118,6 +124,8 @@ class Reader:
                 denominators.append(base)
 
     def _check_denominator(self, x: sp.Expr) -> None:
+        if not isinstance(x.base, sp.Symbol):
+            self._check_drive(x)
         if found := x.free_symbols & set(self.dynamic):
             which = self.show(min(found, key=str))
             raise unsupported(
@@ -130,6 +138,8 @@ class Reader:
         shown = self.show(x)
         if x.has(sp.nan, sp.oo, -sp.oo, sp.zoo):
             raise ProblemError(f"the equations contain {shown}: every coefficient must be finite")
+        if not isinstance(x, sp.Symbol):
+            self._check_drive(x)
         if x.has(sp.I):
             raise ProblemError(
                 f"the equations contain the imaginary unit in {shown}: state real equations for real unknowns"
@@ -146,6 +156,12 @@ class Reader:
                 shown,
                 f"it is not a polynomial in {which}",
                 f"Replace it by the terms of its expansion in powers of {which} that matter at the order wanted",
+            )
+
+    def _check_drive(self, x: sp.Expr) -> None:
+        if any(s.name.startswith(("@e", "@h", IMAGINARY)) for s in x.free_symbols):
+            raise unsupported(
+                self.show(x), "a drive stands inside it, and it is no polynomial of that drive", "Write its Fourier sum"
             )
 
     def read(self, x: sp.Expr) -> Any:
@@ -184,10 +200,13 @@ class Reader:
     def reduced(self, x: Any) -> dict[tuple[tuple[str, int], ...], Fraction]:
         """A coefficient in reduced form, written by name with reciprocal generators."""
         quotient = reduced(self.ring, self.ring.normal(x))
+        return self.ring.write(self.ring.normal(self.ring.read(self.named(quotient))))
+
+    def named(self, quotient: Quotient) -> dict[tuple[tuple[str, int], ...], Fraction]:
+        """A finished coefficient as a polynomial by name, reciprocals as generators."""
         names = self.ring.spec.reciprocal_of
         below = tuple((names[p], e) for p, e in quotient.denominator)
-        named = {tuple(sorted((*m, *below))): c for m, c in quotient.numerator}
-        return self.ring.write(self.ring.normal(self.ring.read(named)))
+        return {tuple(sorted((*m, *below))): c for m, c in quotient.numerator}
 
     def expression(self, polynomial: Iterable[tuple[tuple[tuple[str, int], ...], Fraction]]) -> sp.Expr:
         """A polynomial by name as SymPy expression in the user's symbols."""

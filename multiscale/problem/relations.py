@@ -15,6 +15,7 @@ from typing import Any
 import sympy as sp
 
 from multiscale.errors import ProblemError, ResonanceError
+from multiscale.problem.reading import decimals
 
 __all__ = ["Detuning", "Relations", "detuning_of", "relation_pairs", "relations_of", "taylor"]
 
@@ -27,7 +28,7 @@ class Detuning:
     """
 
     eliminated: sp.Symbol | None
-    detuning: sp.Symbol
+    detuning: sp.Symbol | None
     formula: sp.Expr
 
 
@@ -94,29 +95,36 @@ def relations_of(
     unknowns: Sequence[sp.Expr],
     small: sp.Symbol,
     drives: set[sp.Symbol],
+    known: set[sp.Symbol],
     carried: Mapping[sp.Symbol, sp.Expr],
 ) -> Relations:
-    """Read the relations; `drives` are the symbols of drive frequencies, `carried` puts orders into detunings."""
+    """Read the relations.
+
+    `drives` are the symbols of drive frequencies, `known` all symbols of the equations (a detuning is likely not among
+    them), `carried` puts orders into detunings.
+    """
     stated: list[tuple[sp.Expr, sp.Expr]] = []
     values: list[tuple[sp.Symbol, sp.Expr]] = []
     frequencies: list[tuple[int, sp.Expr]] = []
     detunings: list[Detuning] = []
     for key, value in given:
         stated.append((key, value))
-        value = value.subs(carried)
-        for symbol, replacement in values:
-            value = value.subs(symbol, replacement)
+        value = _replaced(value.subs(carried), values)
         if key in unknowns:
             frequencies.append((unknowns.index(key), value))
             continue
-        left = key
-        for symbol, replacement in values:
-            left = left.subs(symbol, replacement)
+        left = _replaced(key, values)
         symbol, solved = _solved(key, left, value, small, drives)
         values = [(s, v.subs(symbol, solved)) for s, v in values] + [(symbol, solved)]
-        if (detuning := detuning_of(symbol, key, stated[-1][1].subs(carried), small)) is not None:
-            detunings.append(detuning)
-    return Relations(tuple(stated), tuple(values), tuple(frequencies), tuple(detunings))
+        detunings.append(detuning_of(symbol, key, stated[-1][1].subs(carried), small, known))
+    settled = tuple((k, _replaced(value, values)) for k, value in frequencies)
+    return Relations(tuple(stated), tuple(values), settled, tuple(detunings))
+
+
+def _replaced(x: sp.Expr, values: Sequence[tuple[sp.Symbol, sp.Expr]]) -> sp.Expr:
+    for symbol, value in values:
+        x = x.subs(symbol, value)
+    return x
 
 
 def relation_pairs(given: Any) -> tuple[tuple[sp.Expr, sp.Expr], ...]:
@@ -141,9 +149,9 @@ def relation_pairs(given: Any) -> tuple[tuple[sp.Expr, sp.Expr], ...]:
 
 def _expression(x: Any) -> sp.Expr:
     if isinstance(x, sp.Expr):
-        return x
+        return decimals(x)
     if isinstance(x, int | float) and not isinstance(x, bool):
-        return sp.Integer(x) if isinstance(x, int) else sp.Float(x)
+        return sp.Integer(x) if isinstance(x, int) else decimals(sp.Float(x))
     raise ProblemError(f"{x!r} in a resonance is a {type(x).__name__}: expected a SymPy expression or a number")
 
 
@@ -173,11 +181,19 @@ def _solved(
     )
 
 
-def detuning_of(symbol: sp.Symbol | None, key: sp.Expr, value: sp.Expr, small: sp.Symbol) -> Detuning | None:
-    """The relation key = value solved for a symbol of the small part of the value that enters it linearly."""
-    weak = sp.expand(value - value.subs(small, 0))
-    for s in sorted(weak.free_symbols - {small} - key.free_symbols, key=str):
+def detuning_of(
+    symbol: sp.Symbol | None, key: sp.Expr, value: sp.Expr, small: sp.Symbol, known: set[sp.Symbol]
+) -> Detuning:
+    """The relation key = value solved for a symbol of its small part that enters it linearly.
+
+    Symbols that the equations do not contain come first. Where there is none, the relation is solved for the eliminated
+    symbol itself, whose value can then only be checked.
+    """
+    leading = value.subs(small, 0)
+    weak = sp.expand(value - leading)
+    candidates = weak.free_symbols - {small} - key.free_symbols - leading.free_symbols
+    for s in sorted(candidates, key=lambda x: (x in known, str(x))):
         slope = sp.diff(value, s)
-        if s not in slope.free_symbols and s not in value.subs(small, 0).free_symbols:
+        if s not in slope.free_symbols:
             return Detuning(symbol, s, (key - value.subs(s, 0)) / slope)
-    return None
+    return Detuning(symbol, symbol, value)

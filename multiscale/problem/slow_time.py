@@ -8,6 +8,7 @@ in terms of leaves, which adds the derivatives of undefined functions as leaves 
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 import sympy as sp
@@ -28,14 +29,18 @@ class SlowLeaves:
     small: sp.Symbol
     leaves: dict[sp.Expr, sp.Symbol] = field(default_factory=dict)
     rates: dict[sp.Symbol, sp.Expr] = field(default_factory=dict)
+    shown: Mapping[sp.Symbol, sp.Expr] = field(default_factory=dict)
 
-    def read(self, x: sp.Expr) -> sp.Expr:
-        """x with its time dependence through leaves; anything else that depends on time is refused by name."""
+    def scaled(self, x: sp.Expr) -> sp.Expr:
+        """x with time written as s/ε, so that a function of εt is one of s."""
         if self.time not in x.free_symbols:
             return x
         slow = sp.expand(x) if x.is_polynomial(self.time) else x
-        slow = slow.subs(self.time, SLOW / self.small).doit()
-        return self._replaced(slow)
+        return slow.subs(self.time, SLOW / self.small).doit()
+
+    def read(self, x: sp.Expr) -> sp.Expr:
+        """A scaled expression with its dependence on s through leaves; other dependence on time is refused by name."""
+        return self._replaced(x)
 
     def _replaced(self, x: sp.Expr) -> sp.Expr:
         if SLOW not in x.free_symbols:
@@ -56,7 +61,7 @@ class SlowLeaves:
         return self.leaves[x]
 
     def _explicit(self, x: sp.Expr) -> UnsupportedTermError:
-        shown = x.subs(SLOW, self.small * self.time)
+        shown = x.subs(SLOW, self.small * self.time).xreplace(dict(self.shown))
         return unsupported(
             shown,
             f"it depends on {self.time} explicitly",

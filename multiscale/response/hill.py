@@ -61,6 +61,10 @@ class Hill:
 def read_hill(problem: Parametric, parameter: sp.Symbol, representation: str = "auto") -> Hill:
     """The linearisation of `problem` about rest; raises for what is not a Hill equation, naming the term."""
     small, time = problem.small, problem.time
+    if getattr(problem, "resonances", ()):
+        raise ProblemError(
+            "the problem declares resonances: state it without them, the tongue fixes the relation itself"
+        )
     jets = tuple(sp.Dummy(f"u{k}", real=True) for k in range(3))
     equation = _single(problem, parameter, jets)
     coefficients = _linearised(equation, jets, problem.unknowns[0])

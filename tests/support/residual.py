@@ -93,7 +93,8 @@ def _sin(x):
 
 def _integrated(rate):
     a, b, _ = rate.c
-    return Jet(mp.mpf("0.71"), a, b / 2)
+    # Linear in the rate, so that the phase of a multiple is the multiple of the phase.
+    return Jet(mp.mpf("0.71") * a, a, b / 2)
 
 
 def _sqrt(x):
