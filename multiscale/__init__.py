@@ -14,12 +14,14 @@ from multiscale.errors import (
 from multiscale.expansion import Expansion, expand, extend
 from multiscale.level import Level
 from multiscale.problem import Problem
+from multiscale.response.equilibria import Equilibrium, equilibria
 from multiscale.response.transition_curves import threshold, transition_curves
 from multiscale.slow_flow import SlowFlow
 
 __version__ = "0.1.0"
 
 __all__ = [
+    "Equilibrium",
     "EvaluationError",
     "Expansion",
     "Level",
@@ -33,6 +35,7 @@ __all__ = [
     "SmallDivisorWarning",
     "StorageError",
     "UnsupportedTermError",
+    "equilibria",
     "expand",
     "extend",
     "threshold",

@@ -1,0 +1,124 @@
+"""Steady states that only the truncation makes.
+
+A flow of several levels, ε^k(D_k + sεD_{k+1} + s²ε²D_{k+2} + …)A with s = 1, has more equilibria than its first
+non-vanishing level, s = 0. Followed from s = 1 to s = 0, those of the expansion end in an equilibrium of D_k; the others
+run off to infinity like a negative power of s: terms of different order balance in them, where the expansion does not
+hold.
+
+Two real equilibria may meet in a fold on the way and go on as a complex pair, which says nothing against them: A and Ā
+are therefore followed as independent complex unknowns, along a path of complex s that goes round such points.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from multiscale.response.steady_flow import Coefficients, SteadyFlow
+
+__all__ = ["spurious_reason"]
+
+Array = npt.NDArray[Any]
+LAST = 1e-6
+BEND = 0.8
+
+
+def spurious_reason(flow: SteadyFlow, y: Array, values: tuple[Any, ...]) -> str:
+    """Why a state is no equilibrium of the expansion as ε → 0, or ""."""
+    if flow.expansion.order == flow.leading or not np.any(y):
+        return ""
+    path = _Path(flow, flow.coefficients(values))
+    start = (y[::2] - 1j * y[1::2]) / 2
+    x = np.concatenate([start, start.conj(), path.rates(start)])
+    sizes, tau, step, end = [(1.0, _size(x, flow))], 0.0, 0.05, -np.log(LAST)
+    while tau < end:
+        ahead = min(step, end - tau)
+        found = path.corrected(x + path.tangent(x, tau) * ahead, tau + ahead, x)
+        if found is None:
+            step = ahead / 2
+            if step < 1e-5:
+                return f"it cannot be followed below {np.exp(-tau):.2g} of the given {flow.expansion.problem.small}"
+            continue
+        x, tau, step = found, tau + ahead, min(1.5 * ahead, 0.4)
+        sizes.append((np.exp(-tau), _size(x, flow)))
+        if not sizes[-1][1] < 1e6 * sizes[0][1]:
+            break
+    late = [s for s in sizes if s[0] <= 30 * sizes[-1][0]]
+    exponent = np.log(late[-1][1] / late[0][1]) / np.log(late[-1][0] / late[0][0])
+    if exponent > -0.1:
+        return ""
+    small = flow.expansion.problem.small
+    return (
+        f"its amplitude grows like {small}**{exponent:.2g} as {small} → 0 instead of tending to an equilibrium of "
+        f"level {flow.leading}: terms of different order balance in it"
+    )
+
+
+def _size(x: Array, flow: SteadyFlow) -> float:
+    return float(np.linalg.norm(x[: 2 * flow.modes]))
+
+
+class _Path:
+    """The equations at s = exp(−τ + iφ(τ)), φ = BEND·τe^{−τ}, in (A, B, ν), B in the place of Ā."""
+
+    def __init__(self, flow: SteadyFlow, coefficients: Coefficients) -> None:
+        self._modes, self._flow = flow.modes, flow
+        self._terms = [(n - flow.leading, a, np.array(m), complex(c)) for (n, a, m), c in coefficients.items()]
+        self._weights = np.array([T[::2, 1::2].diagonal() for T in flow.rotations]).reshape(-1, flow.modes)
+
+    def rates(self, start: Array) -> Array:
+        """The ν of a state: dA/dt = iν w A."""
+        value, _, _ = self._equations(np.concatenate([start, start.conj(), np.zeros(len(self._weights))]), 0.0)
+        if not len(self._weights):
+            return np.zeros(0, dtype=complex)
+        directions = 1j * self._weights * start
+        return np.asarray(np.linalg.lstsq(directions.T, value[: self._modes], rcond=1e-9)[0])
+
+    def _equations(self, x: Array, tau: float) -> tuple[Array, Array, Array]:
+        """(value, derivative by x, derivative by τ)."""
+        modes, free = self._modes, len(self._weights)
+        s = np.exp(-tau + 1j * BEND * tau * np.exp(-tau))
+        slope = -1 + 1j * BEND * (1 - tau) * np.exp(-tau)
+        value, by_tau = np.zeros(2 * modes, dtype=complex), np.zeros(2 * modes, dtype=complex)
+        matrix = np.zeros((2 * modes, 2 * modes + free), dtype=complex)
+        amplitude, conjugate, nu = x[:modes], x[modes : 2 * modes], x[2 * modes :]
+        for power, a, m, c in self._terms:
+            for row, coefficient, own, other in (
+                (a, c, amplitude, conjugate),
+                (modes + a, c.conjugate(), conjugate, amplitude),
+            ):
+                factors = np.stack([own, other], axis=1).ravel()
+                term = coefficient * s**power * np.prod(factors**m)
+                value[row] += term
+                by_tau[row] += power * slope * term
+                for k in np.flatnonzero(m):
+                    lowered = m.copy()
+                    lowered[k] -= 1
+                    column = (k // 2) + (modes if (k % 2 == 1) == (row < modes) else 0)
+                    matrix[row, column] += coefficient * s**power * m[k] * np.prod(factors**lowered)
+        for c in range(free):
+            turned = 1j * self._weights[c]
+            value -= nu[c] * np.concatenate([turned * amplitude, -turned * conjugate])
+            matrix[:, 2 * modes + c] -= np.concatenate([turned * amplitude, -turned * conjugate])
+            matrix[:, : 2 * modes] -= nu[c] * np.diag(np.concatenate([turned, -turned]))
+        return value, matrix, by_tau
+
+    def tangent(self, x: Array, tau: float) -> Array:
+        _, matrix, by_tau = self._equations(x, tau)
+        return -np.asarray(np.linalg.lstsq(matrix, by_tau, rcond=1e-12)[0])
+
+    def corrected(self, x: Array, tau: float, last: Array) -> Array | None:
+        """The solution near a prediction, None where it is not near or there is none."""
+        guess, modes = x, self._modes
+        for _ in range(5):
+            value, matrix, _ = self._equations(x, tau)
+            if not (np.isfinite(value).all() and np.isfinite(matrix).all()):
+                return None
+            step = np.linalg.lstsq(matrix, value, rcond=1e-12)[0]
+            x = x - step
+            if np.linalg.norm(step[: 2 * modes]) < 1e-9 * np.linalg.norm(x[: 2 * modes]):
+                moved = np.linalg.norm((x - guess)[: 2 * modes])
+                return x if moved < 0.05 * np.linalg.norm(last[: 2 * modes]) else None
+        return None
