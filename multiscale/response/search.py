@@ -61,7 +61,10 @@ def states_at(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tuple[A
     complete = flow.modes == 1
     if flow.modes == 1 and flow.phases:
         terms, _ = _one_mode_terms(flow, values, points)
-        index, amplitude = candidates(terms, scale / 2)
+        # Roots far above the natural scale (made by the truncation, mostly) are separated well at their own.
+        far = np.maximum(scale / 2, natural_scale(terms, dict.fromkeys(terms, 1), points))
+        tries = [scale / 2, far] if np.any(far > 2 * scale) else [scale / 2]
+        index, amplitude = (np.concatenate(x) for x in zip(*(candidates(terms, s) for s in tries), strict=True))
         starts = np.stack([2 * amplitude.real, -2 * amplitude.imag])
     elif flow.modes == 1:
         index, starts = _limit_cycles(flow, values, points, scale)
