@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from itertools import groupby
+from itertools import groupby, pairwise
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -35,13 +35,13 @@ def plot_response(response: Response, ax: Axes | None = None, mode: int = 0) -> 
         amplitude = branch.amplitude if branch.amplitude.ndim == 1 else branch.amplitude[mode]
         style = np.where(branch.spurious, "truncation only", np.where(branch.stable, "stable", "unstable"))
         # A piece belongs to the style of its less stable end, so that pieces of one style are drawn in one stroke.
-        pieces = [_worse(str(a), str(b)) for a, b in zip(style[:-1], style[1:], strict=True)]
+        pieces = [_worse(str(a), str(b)) for a, b in pairwise(style)]
         for name, group in groupby(range(len(pieces)), key=pieces.__getitem__):
             run = list(group)
             part = slice(run[0], run[-1] + 2)
             look: dict[str, Any] = {"stable": STABLE, "unstable": UNSTABLE, "truncation only": SPURIOUS}[name]
-            label = {} if name in named else {"label": name}
-            ax.plot(branch.parameter[part], amplitude[part], **look, **label)
+            look = look if name in named else look | {"label": name}
+            ax.plot(branch.parameter[part], amplitude[part], **look)
             named.add(name)
     ax.set_xlabel(f"${sp.latex(response.symbol)}$")
     ax.set_ylabel(f"${response.labels[mode]}$")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -96,7 +97,7 @@ def _spurious(sweep: Sweep, arc: Arc) -> Array:
     if sweep.flow.expansion.order == sweep.flow.leading:
         return result
     bounds = [0, *arc.turns, len(arc.parameter) - 1]
-    for first, last in zip(bounds[:-1], bounds[1:], strict=True):
+    for first, last in itertools.pairwise(bounds):
         probes = sorted({first + (last - first) * k // 6 for k in (1, 3, 5)})
         votes = 0
         for k in probes:

@@ -1,7 +1,7 @@
 """Branches of several modes, followed along their arc by prediction and correction from the steady states found.
 
-With u = (y/scale, λ/span) the step is ds along the tangent, then Newton's method with the shortest correction. Folds lie
-where the tangent's λ changes sign, and are then located to rounding.
+With u = (y/scale, λ/span) the step is ds along the tangent, then Newton's method with the shortest correction. Folds
+lie where the tangent's λ changes sign, and are then located to rounding.
 """
 
 from __future__ import annotations
@@ -23,19 +23,20 @@ STATIONS = 7
 
 
 def followed_arcs(sweep: Sweep) -> tuple[list[Arc], list[Special], list[Special]]:
-    """(arcs, folds, none): the branches through every state found at `STATIONS` points of the sweep."""
+    """(arcs, folds, branchings): the branches through every state found at `STATIONS` points of the sweep."""
     at = np.linspace(sweep.grid[0], sweep.grid[-1], STATIONS)
     values = sweep.values(at)
     index, y, _ = states_at(sweep.flow, values, len(at))
     sizes = scale_of(sweep.flow, tuple(np.broadcast_to(v, at.shape) for v in values), len(at))
     arcs: list[Arc] = []
     folds: list[Special] = []
+    branchings: list[Special] = []
     order = sorted(range(len(index)), key=lambda k: (index[k] not in (0, STATIONS - 1), index[k]))
     for k in order:
         station = float(at[index[k]])
         if not any(_passes(sweep, arc, station, y[:, k], sizes[index[k]]) for arc in arcs):
-            arcs.append(_Walk(sweep, float(sizes[index[k]])).through(y[:, k], station, folds))
-    return arcs, folds, []
+            arcs.append(_Walk(sweep, float(sizes[index[k]]), folds, branchings).through(y[:, k], station))
+    return arcs, folds, branchings
 
 
 def _passes(sweep: Sweep, arc: Arc, at: float, y: Array, scale: float) -> bool:
@@ -56,16 +57,17 @@ def _passes(sweep: Sweep, arc: Arc, at: float, y: Array, scale: float) -> bool:
 class _Walk:
     """Steps along one branch."""
 
-    def __init__(self, sweep: Sweep, scale: float) -> None:
+    def __init__(self, sweep: Sweep, scale: float, folds: list[Special], branchings: list[Special]) -> None:
         self._sweep, self._scale = sweep, scale
+        self._folds, self._branchings = folds, branchings
 
-    def through(self, y: Array, at: float, folds: list[Special]) -> Arc:
+    def through(self, y: Array, at: float) -> Arc:
         """The whole arc, both ways to the ends of the sweep or round."""
         tangent = self._tangent(y, at, None)
         if tangent[-1] < 0:
             tangent = -tangent
-        ahead, turns, closed = self._one_way(y, at, tangent, folds)
-        behind, back, _ = ([(y, at)], [], False) if closed else self._one_way(y, at, -tangent, folds)
+        ahead, turns, closed = self._one_way(y, at, tangent)
+        behind, back, _ = ([(y, at)], [], False) if closed else self._one_way(y, at, -tangent)
         points = [*behind[:0:-1], *ahead]
         first = len(behind) - 1
         places = sorted([first - k for k in back] + [first + k for k in turns])
@@ -91,7 +93,7 @@ class _Walk:
         matrix, _ = self._matrix(y, at)
         null = np.linalg.svd(matrix)[2][-1][: len(y) + 1]
         null = null / np.linalg.norm(null)
-        return -null if last is not None and null @ last < 0 else null
+        return np.asarray(-null if last is not None and null @ last < 0 else null)
 
     def _corrected(self, u: Array, tangent: Array) -> Array | None:
         """The point of the branch in the plane across the tangent at a prediction."""
@@ -114,9 +116,21 @@ class _Walk:
                 return u
         return None
 
-    def _one_way(
-        self, y: Array, at: float, tangent: Array, folds: list[Special]
-    ) -> tuple[list[tuple[Array, float]], list[int], bool]:
+    def _turn(self, state: Array, at: float, reach: float) -> Special | None:
+        """The fold near a point, or the branching where a mode comes to rest and the branch continues mirrored."""
+        found = self._sweep.fold_near(state, at, self._scale)
+        if found is None or np.linalg.norm(found.state - state) > reach:
+            return None
+        own, there = (np.hypot(y[::2], y[1::2]) for y in (state, found.state))
+        resting = (there < 1e-5 * self._scale) & (own > 1e-2 * reach)
+        if resting.any():
+            found = self._sweep.special(found.parameter, np.where(np.repeat(resting, 2), 0.0, found.state))
+            self._branchings.append(found)
+        else:
+            self._folds.append(found)
+        return found
+
+    def _one_way(self, y: Array, at: float, tangent: Array) -> tuple[list[tuple[Array, float]], list[int], bool]:
         sweep, scale, span = self._sweep, self._scale, self._sweep.span
         low, high = sweep.grid[0], sweep.grid[-1]
         points, turns, step = [(y, at)], list[int](), LONGEST / 4
@@ -138,9 +152,8 @@ class _Walk:
                     points.append((last, edge))
                 return points, turns, False
             if after[-1] * tangent[-1] < 0:
-                fold = sweep.fold_near(state, parameter, scale)
-                if fold is not None and np.linalg.norm(fold.state - state) < 4 * step * scale:
-                    folds.append(fold)
+                fold = self._turn(state, parameter, 4 * step * scale)
+                if fold is not None:
                     turns.append(len(points))
                     points.append((fold.state, fold.parameter))
             points.append((state, parameter))

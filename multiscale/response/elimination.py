@@ -86,10 +86,7 @@ def _of_pattern(terms: Table, scale: Array) -> tuple[Array, Array]:
     # Rows of very different size would let rounding of the larger hide the smaller.
     rows = np.linalg.norm(at, axis=2, keepdims=True)
     null = np.linalg.svd(at / np.where(rows > 0, rows, 1.0))[2][:, -1].conj()
-    if size > 1:
-        ratio = np.sum(null[:, 1:].conj() * null[:, :-1], axis=1)
-    else:
-        ratio = np.ones(len(point))
+    ratio = np.sum(null[:, 1:].conj() * null[:, :-1], axis=1) if size > 1 else np.ones(len(point))
     angles = (np.angle(ratio)[:, None] + 2 * np.pi * np.arange(k)) / k
     amplitude = scale[point, None] * np.sqrt(square)[:, None] * np.exp(1j * angles)
     return np.repeat(point, k), amplitude.ravel()

@@ -101,7 +101,7 @@ def equilibria(expansion: Expansion, parameters: Mapping[Any, Any]) -> tuple[Equ
     >>> driven = ms.expand(ms.Problem(equation, u, small=eps, resonances={Omega: 1 + eps*sigma}), order=1)
     >>> states = ms.equilibria(driven, {eps: 0.01, mu: 0.1, f: 0.6, sigma: 1.0})
     >>> [(round(s.amplitudes[0], 3), s.kind) for s in states]
-    [(0.34, 'stable'), (1.45, 'saddle'), (1.764, 'stable')]
+    [(0.31, 'stable'), (1.482, 'saddle'), (1.744, 'stable')]
     """
     flow = SteadyFlow.of(expansion)
     values = flow.values(parameters)

@@ -41,7 +41,8 @@ class Response:
         Each ordered along its arc, so that folds are interior points; isolated ones are closed.
     folds, hopf, branchings : tuple of Special
         Where a branch turns back, where a pair of eigenvalues crosses the imaginary axis, and where a branch leaves the
-        state of rest: ``parameter``, ``state``, ``amplitudes``, to rounding.
+        state of rest: ``parameter``, ``state``, ``amplitudes``, to rounding. Folds that only the truncation makes are
+        left out.
     jumps_up, jumps_down : tuple of Jump
         Where a slow sweep leaves a stable branch at a fold, for a larger or a smaller amplitude.
     complete : bool
@@ -64,7 +65,7 @@ class Response:
 
     @cached_property
     def table(self) -> dict[str, Array]:
-        """"parameter", "amplitude", "phase", "stable" (1 or 0), "spurious" (1 or 0): (branches, points), nan-padded.
+        """{name: array (branches, points), nan-padded}: parameter, amplitude, phase, stable and spurious (1 or 0).
 
         With several modes "amplitude" and "phase" have one more axis, of modes and of resonant phases, in the middle.
         """
@@ -141,13 +142,15 @@ def frequency_response(expansion: Expansion, parameters: Mapping[Any, Any], *, s
     >>> driven = ms.expand(ms.Problem(equation, u, small=eps, resonances={Omega: 1 + eps*sigma}), order=1)
     >>> response = ms.frequency_response(driven, {eps: 0.01, mu: 0.1, f: 0.4}, sweep={sigma: np.linspace(-1, 3, 81)})
     >>> response, [round(x.parameter, 6) for x in response.folds], round(response.peak().amplitude, 6)
-    (Response over sigma: 1 branches, 2 folds, [0.656187, 1.508229], 2.0)
+    (Response over sigma: 1 branches, 2 folds, [0.449388, 1.501669], 2.0)
     """
     flow = SteadyFlow.of(expansion)
     swept = Sweep.of(flow, parameters, sweep)
     one = flow.modes == 1
     arcs, folds, branchings = linked_arcs(swept) if one else followed_arcs(swept)
     branches = tuple(branch_of(swept, arc) for arc in arcs)
+    artefacts = [float(b.parameter[k]) for b in branches for k in b.folds if b.spurious[k]]
+    folds = [x for x in folds if x.parameter not in artefacts]
     ups, downs = jumps(swept, branches)
     known = {str(s.name): s for s in (*expansion.problem.parameters, expansion.problem.small)}
     known |= {str(d.eliminated.name): d.eliminated for d in expansion.problem.detunings if d.eliminated is not None}

@@ -37,7 +37,8 @@ class Jump:
 
 def jumps(sweep: Sweep, branches: Sequence[Branch]) -> tuple[tuple[Jump, ...], tuple[Jump, ...]]:
     """(jumps up, jumps down) in amplitude."""
-    up, down = [], []
+    up: list[Jump] = []
+    down: list[Jump] = []
     for branch in branches:
         for k in branch.folds:
             if branch.spurious[k] or not (branch.stable[k - 1] or branch.stable[k + 1]):
@@ -62,7 +63,9 @@ def _jump(sweep: Sweep, branches: Sequence[Branch], own: Branch, k: int, increas
             share = 0.0 if after[j] == before[j] else (at - before[j]) / (after[j] - before[j])
             guess = branch.state[:, j] + share * (branch.state[:, j + 1] - branch.state[:, j])
             y, nu, done = polished(sweep.flow, guess, values, scale)
-            if done and np.max(reduced_eigenvalues(sweep.flow, y, nu, values).real) < 0:
+            eigenvalues = reduced_eigenvalues(sweep.flow, y, nu, values)
+            # Folds of equivalent branches lie at the same parameter: their vanishing eigenvalue is no stability.
+            if done and np.max(eigenvalues.real) < -1e-6 * np.max(abs(eigenvalues)):
                 landings.append(y)
     distance = [float(np.linalg.norm(y - start)) for y in landings]
     landings = [y for y, d in zip(landings, distance, strict=True) if d > 1e-6 * scale]
@@ -73,5 +76,3 @@ def _jump(sweep: Sweep, branches: Sequence[Branch], own: Branch, k: int, increas
     reached = sweep.flow.polar(landed)[0]
     mode = int(np.argmax(abs(reached - amplitude)))
     return Jump(at, start, landed, float(amplitude[mode]), float(reached[mode]), increasing)
-
-

@@ -71,7 +71,7 @@ def linked_arcs(sweep: Sweep) -> tuple[list[Arc], list[Special], list[Special]]:
 
 def _followed(sweep: Sweep, grid: _Grid, step: int) -> Array:
     """For each state the position of the one it becomes at the next point (step = 1) or the last (−1), −1 if none."""
-    points, most, size = grid.states.shape
+    points, most, _size = grid.states.shape
     result = np.full((points, most), -1)
     here, slot = np.nonzero(np.isfinite(grid.states[:, :, 0]))
     inside = (here + step >= 0) & (here + step < points)

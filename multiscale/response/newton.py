@@ -41,7 +41,7 @@ def solve_batch(matrix: Array, right: Array) -> Array:
             return np.moveaxis(np.linalg.solve(m, b[..., None])[..., 0], -1, 0)
         except np.linalg.LinAlgError:
             pass
-    finite = np.isfinite(m).all(axis=(-2, -1))
+    finite: Array = np.asarray(np.isfinite(m).all(axis=(-2, -1)))
     inverse = np.linalg.pinv(np.where(finite[..., None, None], m, 0.0), rcond=1e-12)
     return np.moveaxis((inverse @ b[..., None])[..., 0], -1, 0)
 
@@ -117,7 +117,7 @@ def _newton(residual: Callable[[Array], Array], x: Array, scale: Array, steps: i
         step = np.linalg.lstsq(matrix, value, rcond=1e-13)[0]
         size = float(np.max(abs(step)))
         x = x - step * scale * min(1.0, 0.5 / size if size > 0 else 1.0)
-        if size < 1e-9 and size >= 0.5 * last or size == 0:
+        if (size < 1e-9 and size >= 0.5 * last) or size == 0:
             return x
         last = size
     return x if last < 1e-8 else None
@@ -131,7 +131,9 @@ def _gauges(flow: SteadyFlow, y: Array) -> list[Array]:
     return [d / np.linalg.norm(d) for T in flow.rotations if np.linalg.norm(d := T @ y) > 1e-9 * np.linalg.norm(y)]
 
 
-def fold(flow: SteadyFlow, y: Array, at: float, values: Values, scale: float, span: float) -> tuple[float, Array] | None:
+def fold(
+    flow: SteadyFlow, y: Array, at: float, values: Values, scale: float, span: float
+) -> tuple[float, Array] | None:
     """(λ, state) of the fold near a state: J v = 0 along the branch."""
     size = len(y)
     nu = rotation_rates(flow, y, values(at))
@@ -162,7 +164,9 @@ def fold(flow: SteadyFlow, y: Array, at: float, values: Values, scale: float, sp
     return None if found is None else (float(found[2 * size]), found[:size])
 
 
-def hopf(flow: SteadyFlow, y: Array, at: float, values: Values, scale: float, span: float) -> tuple[float, Array] | None:
+def hopf(
+    flow: SteadyFlow, y: Array, at: float, values: Values, scale: float, span: float
+) -> tuple[float, Array] | None:
     """(λ, state) where a pair of eigenvalues near the imaginary axis crosses it."""
     size = len(y)
     nu = rotation_rates(flow, y, values(at))

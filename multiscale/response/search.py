@@ -6,6 +6,7 @@ complete. Several modes: Newton's method from many seeded starts, which proves n
 
 from __future__ import annotations
 
+import itertools
 from typing import Any
 
 import numpy as np
@@ -96,7 +97,7 @@ def distinct(flow: SteadyFlow, index: Array, y: Array, scale: Array) -> Array:
             same = (index[lag:] == index[:-lag]) & (np.max(abs(marks[:, lag:] - marks[:, :-lag]), axis=0) < SAME)
             kept[lag:] &= ~same
     else:
-        for first, last in zip(bounds[:-1], bounds[1:], strict=True):
+        for first, last in itertools.pairwise(bounds):
             for k in range(first + 1, last):
                 earlier = first + np.flatnonzero(kept[first:k])
                 kept[k] = not np.any(np.max(abs(marks[:, earlier] - marks[:, [k]]), axis=0) < SAME)
@@ -106,14 +107,14 @@ def distinct(flow: SteadyFlow, index: Array, y: Array, scale: Array) -> Array:
 def _invariants(flow: SteadyFlow, y: Array) -> Array:
     """What two states agree in when they differ by cyclic phases alone."""
     if not flow.rotations:
-        return y
+        return np.asarray(y)
     amplitudes, phases = flow.polar(y)
     rows = flow.expansion.computation.frame.resonant
     marks = [*amplitudes]
     for row, phase in zip(rows, phases, strict=True):
         least = np.min([amplitudes[j] for j, n in enumerate(row) if n], axis=0)
         marks += [np.where(least > 0, least * np.cos(phase), 0.0), np.where(least > 0, least * np.sin(phase), 0.0)]
-    return np.nan_to_num(np.array(marks))
+    return np.asarray(np.nan_to_num(np.array(marks)))
 
 
 def _limit_cycles(flow: SteadyFlow, values: tuple[Any, ...], points: int, scale: Array) -> tuple[Array, Array]:

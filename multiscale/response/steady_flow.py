@@ -2,8 +2,8 @@
 
     y' = G(y; λ),   y = (p_1, q_1, p_2, …),   A_j = ½(p_j − i q_j)
 
-A cyclic phase drives nothing: G commutes with the rotation A_j → A_j e^{i w_j θ}, whose generator is T. A steady state is
-a *relative* equilibrium, at rest but for that rotation,
+A cyclic phase drives nothing: G commutes with the rotation A_j → A_j e^{i w_j θ}, whose generator is T. A steady state
+is a *relative* equilibrium, at rest but for that rotation,
 
     G(y) = Σ_c ν_c T_c y ,
 
@@ -54,8 +54,8 @@ class SteadyFlow:
         flow = expansion.slow_flow
         if not flow.autonomous:
             raise ResonanceError(
-                f"the slow flow depends on {expansion.problem.time} explicitly (slow parameters, or beats between drives "
-                "near one mode), so it has no steady states: integrate slow_flow.to_numpy('cartesian') instead, or "
+                f"the slow flow depends on {expansion.problem.time} explicitly (slow parameters, or beats between "
+                "drives near one mode), so it has no steady states: integrate slow_flow.to_numpy('cartesian') instead, or "
                 "tie the drives together by a relation without detuning between them"
             )
         keys, levels = coefficient_function(expansion.problem, expansion.computation)

@@ -1,4 +1,4 @@
-"""One parameter that is swept while the others are fixed, and what the branches of steady states over it are made of."""
+"""One parameter that is swept while the others are fixed, and what the branches over it are made of."""
 
 from __future__ import annotations
 
@@ -57,13 +57,17 @@ class Sweep:
             raise EvaluationError(f"{name} is given both as a parameter and in sweep: leave it out of the parameters")
         for key, value in fixed.items():
             if np.ndim(value):
-                raise EvaluationError(f"parameter {key} is an array: sweep one parameter, and give numbers for the rest")
+                raise EvaluationError(
+                    f"parameter {key} is an array: sweep one parameter, and give numbers for the rest"
+                )
         try:
             grid = np.asarray(given, dtype=float)
         except (TypeError, ValueError):
             raise EvaluationError(f"sweep gives {name} the values {given!r}: expected a 1-D array of numbers") from None
         if grid.ndim != 1 or len(grid) < 2 or not np.isfinite(grid).all():
-            raise EvaluationError(f"sweep gives {name} an array of shape {grid.shape}: expected 2 or more finite values")
+            raise EvaluationError(
+                f"sweep gives {name} an array of shape {grid.shape}: expected 2 or more finite values"
+            )
         made = cls(flow, name, tuple((k, float(v)) for k, v in fixed.items()), np.unique(grid))
         flow.values(dict(made.fixed) | {name: made.grid})
         if len(made.grid) < 2:

@@ -1,9 +1,9 @@
 """Steady states that only the truncation makes.
 
 A flow of several levels, ε^k(D_k + sεD_{k+1} + s²ε²D_{k+2} + …)A with s = 1, has more equilibria than its first
-non-vanishing level, s = 0. Followed from s = 1 to s = 0, those of the expansion end in an equilibrium of D_k; the others
-run off to infinity like a negative power of s: terms of different order balance in them, where the expansion does not
-hold.
+non-vanishing level, s = 0. Followed from s = 1 to s = 0, those of the expansion end in an equilibrium of D_k; the
+others run off to infinity like a negative power of s: terms of different order balance in them, where the expansion
+does not hold.
 
 Two real equilibria may meet in a fold on the way and go on as a complex pair, which says nothing against them: A and Ā
 are therefore followed as independent complex unknowns, along a path of complex s that goes round such points.
