@@ -55,8 +55,8 @@ class SteadyFlow:
         if not flow.autonomous:
             raise ResonanceError(
                 f"the slow flow depends on {expansion.problem.time} explicitly (slow parameters, or beats between "
-                "drives near one mode), so it has no steady states: integrate slow_flow.to_numpy('cartesian') instead, or "
-                "tie the drives together by a relation without detuning between them"
+                "drives near one mode), so it has no steady states: integrate slow_flow.to_numpy('cartesian') "
+                "instead, or tie the drives together by relations with one detuning"
             )
         keys, levels = coefficient_function(expansion.problem, expansion.computation)
         return cls(expansion, flow.to_numpy("cartesian"), flow.to_numpy("cartesian", wrt="state"), keys, levels)

@@ -21,7 +21,7 @@ from multiscale.response.steady_flow import Coefficients, SteadyFlow
 __all__ = ["spurious_reason"]
 
 Array = npt.NDArray[Any]
-LAST = 1e-6
+LAST = 1e-5
 BEND = 0.8
 
 
@@ -38,22 +38,28 @@ def spurious_reason(flow: SteadyFlow, y: Array, values: tuple[Any, ...]) -> str:
         found = path.corrected(x + path.tangent(x, tau) * ahead, tau + ahead, x)
         if found is None:
             step = ahead / 2
-            if step < 1e-5:
-                return f"it cannot be followed below {np.exp(-tau):.2g} of the given {flow.expansion.problem.small}"
+            if step < 1e-4:
+                break
             continue
         x, tau, step = found, tau + ahead, min(1.5 * ahead, 0.4)
         sizes.append((np.exp(-tau), _size(x, flow)))
-        if not sizes[-1][1] < 1e6 * sizes[0][1]:
+        if not sizes[-1][1] < 6 * sizes[0][1] and _exponent(sizes) < -0.2:
             break
-    late = [s for s in sizes if s[0] <= 30 * sizes[-1][0]]
-    exponent = np.log(late[-1][1] / late[0][1]) / np.log(late[-1][0] / late[0][0])
+    exponent, small = _exponent(sizes), flow.expansion.problem.small
     if exponent > -0.1:
-        return ""
-    small = flow.expansion.problem.small
+        return "" if tau >= end else f"it cannot be followed below {np.exp(-tau):.2g} of the given {small}"
     return (
         f"its amplitude grows like {small}**{exponent:.2g} as {small} → 0 instead of tending to an equilibrium of "
         f"level {flow.leading}: terms of different order balance in it"
     )
+
+
+def _exponent(sizes: list[tuple[float, float]]) -> float:
+    """d log|A| / d log s over the last decade or so."""
+    late = [s for s in sizes if s[0] <= 12 * sizes[-1][0]]
+    if len(late) < 2:
+        return 0.0
+    return float(np.log(late[-1][1] / late[0][1]) / np.log(late[-1][0] / late[0][0]))
 
 
 def _size(x: Array, flow: SteadyFlow) -> float:
@@ -118,7 +124,7 @@ class _Path:
                 return None
             step = np.linalg.lstsq(matrix, value, rcond=1e-12)[0]
             x = x - step
-            if np.linalg.norm(step[: 2 * modes]) < 1e-9 * np.linalg.norm(x[: 2 * modes]):
+            if np.linalg.norm(step[: 2 * modes]) < 1e-8 * np.linalg.norm(x[: 2 * modes]):
                 moved = np.linalg.norm((x - guess)[: 2 * modes])
                 return x if moved < 0.05 * np.linalg.norm(last[: 2 * modes]) else None
         return None
