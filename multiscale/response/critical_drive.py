@@ -92,8 +92,7 @@ def critical_drive(
     """
     flow = SteadyFlow.of(expansion)
     leading = _leading(flow, drive, detuning)
-    square = sp.Symbol("@rho", positive=True)
-    level, at, offset = _onset(leading, square)
+    level, at, offset = _onset(leading)
     force = sp.sqrt(sp.factor(level / leading.force))
     symbolic = CriticalDrive(_tidy(force), _tidy(offset), _tidy(2 * sp.sqrt(at)))
     if parameters is None:
@@ -143,9 +142,10 @@ def _leading(flow: SteadyFlow, drive: sp.Symbol | None, detuning: sp.Symbol | No
     return _Leading(drive, detuning, force, (a, b), (r, s))
 
 
-def _onset(leading: _Leading, square: sp.Symbol) -> tuple[sp.Expr, sp.Expr, sp.Expr]:
+def _onset(leading: _Leading) -> tuple[sp.Expr, sp.Expr, sp.Expr]:
     """(|κ|², ρ, detuning) at the cusp."""
     (a, b), (r, s) = leading.linear, leading.cubic
+    square = sp.Symbol("@rho", real=True)
     if s == 0:
         raise EvaluationError("the frequency does not depend on the amplitude at this level: there is no bistability")
     m = -a
@@ -153,13 +153,16 @@ def _onset(leading: _Leading, square: sp.Symbol) -> tuple[sp.Expr, sp.Expr, sp.E
         stiffness = s if s.is_positive else -s if s.is_negative else sp.Abs(s)
         at = 2 * m / (sp.sqrt(3) * stiffness)
     else:
-        total = r**2 + s**2
-        big = r * square - m
-        y = -(2 * r * big + square * total) / (2 * s)
-        roots = sp.solve(sp.expand(s**2 * (big**2 + y**2 - square**2 * total)), square)
-        if not roots:
-            raise EvaluationError("there is no bistability at this level: the nonlinear damping prevents it")
-        at = roots[0]
+        # Of the two roots the one that is positive without nonlinear damping; s enters through its square.
+        M, S = sp.symbols("@m @s", positive=True)
+        r_ = sp.Symbol("@r", real=True)
+        big = r_ * square - M
+        y = -(2 * r_ * big + square * (r_**2 + S**2)) / (2 * S)
+        condition = sp.expand(4 * S**2 * (big**2 + y**2 - square**2 * (r_**2 + S**2)))
+        first, second, third = sp.Poly(condition, square).all_coeffs()
+        root = sp.sqrt(sp.factor(second**2 - 4 * first * third))
+        (at,) = (x for x in ((-second + sign * root) / (2 * first) for sign in (1, -1)) if x.subs(r_, 0).is_positive)
+        at = sp.cancel(at).subs({M: m, r_: r, S: sp.sqrt(s**2)})
     big = r * at - m
     y = -(2 * r * big + at * (r**2 + s**2)) / (2 * s)
     level = sp.factor(at * (big**2 + y**2))

@@ -2,7 +2,7 @@
 
 A state at one point is followed to the next by Newton's method from the prediction along the tangent, forwards and
 backwards; states that find each other are neighbours. Two that are left over on one side meet in a fold, which is
-located and becomes an interior point of the arc. Intervals in which more happens are divided. Every equilibrium ends up
+located and becomes an interior point of the arc. Intervals in which more happens, or a branch bends sharply, are divided. Every equilibrium ends up
 on an arc, so isolated branches are found like all others.
 """
 
@@ -108,6 +108,7 @@ def _joints(sweep: Sweep, grid: _Grid, final: bool) -> tuple[_Joints, list[Speci
     mutual = backwards[here + 1, there] == slot
     for i, k, m in zip(here[mutual].tolist(), slot[mutual].tolist(), there[mutual].tolist(), strict=True):
         joints.right[i, k], joints.left[i + 1, m] = ((i + 1, m), None), ((i, k), None)
+    bent = set() if final else _bent(sweep, grid, here[mutual], slot[mutual], there[mutual])
     present = np.isfinite(grid.states[:, :, 0])
     alone_right = present.copy()
     alone_left = present.copy()
@@ -117,13 +118,24 @@ def _joints(sweep: Sweep, grid: _Grid, final: bool) -> tuple[_Joints, list[Speci
         alone_left[node] = False
     folds: list[Special] = []
     branchings: list[Special] = []
-    unresolved = []
+    unresolved = list(bent)
     for i in np.flatnonzero(alone_right[:-1].any(axis=1) | alone_left[1:].any(axis=1)).tolist():
         ending = [(i, int(k)) for k in np.flatnonzero(alone_right[i])]
         beginning = [(i + 1, int(k)) for k in np.flatnonzero(alone_left[i + 1])]
         if not _resolved(sweep, grid, joints, ending, beginning, folds, branchings, final):
             unresolved.append(i)
-    return joints, folds, branchings, [] if final else unresolved
+    return joints, folds, branchings, [] if final else sorted(set(unresolved))
+
+
+def _bent(sweep: Sweep, grid: _Grid, i: Array, k: Array, m: Array) -> set[int]:
+    """Intervals in which a branch is steeper than its ends say: it may fold there and back."""
+    before, after = grid.states[i, k].T, grid.states[i + 1, m].T
+    change = after - before
+    with np.errstate(all="ignore"):
+        mean = (sweep.slope(before, grid.at[i]) + sweep.slope(after, grid.at[i + 1])) / 2
+        miss = np.linalg.norm(mean * (grid.at[i + 1] - grid.at[i]) - change, axis=0)
+    length = np.linalg.norm(change, axis=0)
+    return set(i[(length > 1e-3 * grid.scale[i]) & ~(miss < 0.3 * length)].tolist())
 
 
 def _resolved(

@@ -7,6 +7,7 @@ import pytest
 import sympy as sp
 from support.driven import (
     CASES,
+    Om,
     Original,
     alpha,
     cubic,
@@ -15,7 +16,6 @@ from support.driven import (
     f,
     motion_at_zero,
     mu,
-    Om,
     plain,
     sigma,
     t,
@@ -34,7 +34,7 @@ VALUES = {"epsilon": 0.02, "mu": 0.15, "alpha": 1.0, "beta": 0.8, "f": 0.7, "h":
 
 def everything(name: str, points: int, seed: int) -> dict[str, np.ndarray]:
     random = np.random.default_rng(seed)
-    values = {
+    return {
         "epsilon": 10 ** random.uniform(-3, -0.5, points),
         "mu": 10 ** random.uniform(-3, 0, points),
         "alpha": random.uniform(-1, 1, points),
@@ -44,7 +44,6 @@ def everything(name: str, points: int, seed: int) -> dict[str, np.ndarray]:
         "omega": random.uniform(0.5, 2, points),
         "sigma": random.uniform(-2, 2, points),
     }
-    return values
 
 
 @pytest.mark.parametrize("order", [1, 2, 3])
@@ -89,7 +88,7 @@ def test_states_are_at_rest_and_eigenvalues_are_those_of_the_jacobian(name, orde
 MOTIONS = {
     "primary": {},
     "quadratic": {"sigma": 0.9},
-    "superharmonic": {"f": 1.5, "mu": 0.05, "sigma": 4.0},
+    "superharmonic": {"epsilon": 0.005, "f": 1.5, "mu": 0.05, "sigma": 4.0},
     "subharmonic": {"f": 5.0, "mu": 0.02, "sigma": 2.0},
     "parametric": {},
     "both": {},
