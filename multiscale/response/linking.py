@@ -2,8 +2,11 @@
 
 A state at one point is followed to the next by Newton's method from the prediction along the tangent, forwards and
 backwards; states that find each other are neighbours. Two that are left over on one side meet in a fold, which is
-located and becomes an interior point of the arc. Intervals in which more happens, or a branch bends sharply, are divided. Every equilibrium ends up
-on an arc, so isolated branches are found like all others.
+located and becomes an interior point of the arc. Intervals in which more happens, or in which a branch bends sharply,
+are divided. Every equilibrium ends up on an arc, so isolated branches are found like all others.
+
+What lies wholly between two values of the sweep, a pair of folds or an island, is found only where a branch is steep:
+the sweep should be as fine as the narrowest feature looked for.
 """
 
 from __future__ import annotations
@@ -132,10 +135,11 @@ def _bent(sweep: Sweep, grid: _Grid, i: Array, k: Array, m: Array) -> set[int]:
     before, after = grid.states[i, k].T, grid.states[i + 1, m].T
     change = after - before
     with np.errstate(all="ignore"):
-        mean = (sweep.slope(before, grid.at[i]) + sweep.slope(after, grid.at[i + 1])) / 2
-        miss = np.linalg.norm(mean * (grid.at[i + 1] - grid.at[i]) - change, axis=0)
+        width = grid.at[i + 1] - grid.at[i]
+        first, second = sweep.slope(before, grid.at[i]) * width, sweep.slope(after, grid.at[i + 1]) * width
+        miss, bend = np.linalg.norm((first + second) / 2 - change, axis=0), np.linalg.norm(second - first, axis=0)
     length = np.linalg.norm(change, axis=0)
-    return set(i[(length > 1e-3 * grid.scale[i]) & ~(miss < 0.3 * length)].tolist())
+    return set(i[(length > 1e-3 * grid.scale[i]) & ~((miss < 0.3 * length) & (bend < length))].tolist())
 
 
 def _resolved(
@@ -149,7 +153,7 @@ def _resolved(
     final: bool,
 ) -> bool:
     """Join what is left over in one interval; False where it has to be divided."""
-    if len(ending) == len(beginning) == 1:
+    if final and len(ending) == len(beginning) == 1:
         joints.right[ending[0]], joints.left[beginning[0]] = (beginning[0], None), (ending[0], None)
         return True
     if ending and beginning and not final:

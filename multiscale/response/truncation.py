@@ -70,8 +70,16 @@ class _Path:
     """The equations at s = exp(−τ + iφ(τ)), φ = BEND·τe^{−τ}, in (A, B, ν), B in the place of Ā."""
 
     def __init__(self, flow: SteadyFlow, coefficients: Coefficients) -> None:
-        self._modes, self._flow = flow.modes, flow
-        self._terms = [(n - flow.leading, a, np.array(m), complex(c)) for (n, a, m), c in coefficients.items()]
+        self._modes = modes = flow.modes
+        keys, values = list(coefficients), np.array([complex(c) for c in coefficients.values()])
+        powers = np.array([m for _, _, m in keys])
+        # Columns A_1 … B_1 …; the second half of the equations is the conjugate of the first, A and B exchanged.
+        own, other = powers[:, ::2], powers[:, 1::2]
+        self._powers = np.vstack([np.hstack([own, other]), np.hstack([other, own])])
+        self._coefficients = np.concatenate([values, values.conj()])
+        self._levels = np.array([n - flow.leading for n, _, _ in keys] * 2)
+        rows = np.array([a for _, a, _ in keys])
+        self._rows = np.equal.outer(np.arange(2 * modes), np.concatenate([rows, modes + rows])).astype(float)
         self._weights = np.array([T[::2, 1::2].diagonal() for T in flow.rotations]).reshape(-1, flow.modes)
 
     def rates(self, start: Array) -> Array:
@@ -87,23 +95,16 @@ class _Path:
         modes, free = self._modes, len(self._weights)
         s = np.exp(-tau + 1j * BEND * tau * np.exp(-tau))
         slope = -1 + 1j * BEND * (1 - tau) * np.exp(-tau)
-        value, by_tau = np.zeros(2 * modes, dtype=complex), np.zeros(2 * modes, dtype=complex)
-        matrix = np.zeros((2 * modes, 2 * modes + free), dtype=complex)
         amplitude, conjugate, nu = x[:modes], x[modes : 2 * modes], x[2 * modes :]
-        for power, a, m, c in self._terms:
-            for row, coefficient, own, other in (
-                (a, c, amplitude, conjugate),
-                (modes + a, c.conjugate(), conjugate, amplitude),
-            ):
-                factors = np.stack([own, other], axis=1).ravel()
-                term = coefficient * s**power * np.prod(factors**m)
-                value[row] += term
-                by_tau[row] += power * slope * term
-                for k in np.flatnonzero(m):
-                    lowered = m.copy()
-                    lowered[k] -= 1
-                    column = (k // 2) + (modes if (k % 2 == 1) == (row < modes) else 0)
-                    matrix[row, column] += coefficient * s**power * m[k] * np.prod(factors**lowered)
+        weighted = self._coefficients * s**self._levels
+        factors = x[: 2 * modes] ** self._powers
+        terms = weighted * np.prod(factors, axis=1)
+        value, by_tau = self._rows @ terms, self._rows @ (self._levels * slope * terms)
+        matrix = np.zeros((2 * modes, 2 * modes + free), dtype=complex)
+        for k in range(2 * modes):
+            lowered = factors.copy()
+            lowered[:, k] = self._powers[:, k] * x[k] ** np.maximum(self._powers[:, k] - 1, 0)
+            matrix[:, k] = self._rows @ (weighted * np.prod(lowered, axis=1))
         for c in range(free):
             turned = 1j * self._weights[c]
             value -= nu[c] * np.concatenate([turned * amplitude, -turned * conjugate])
