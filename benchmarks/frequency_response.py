@@ -3,7 +3,7 @@
 Compared, per point of the response: `frequency_response` at order 3 (all branches, stability and folds included; the
 expansion itself is made once and timed beside it) with integrating the original equation from a state of the response
 for 10·Q/ω, the time in which a transient decays by e⁻⁵, with `scipy.integrate.solve_ivp` at rtol = 1e-8, and reading
-the amplitude off the last period. Integration is timed at a sample of the points, one for each hundred; it gives one branch
+the amplitude off the last period. Integration is timed at a sample of the points, one in a hundred; it gives one branch
 only, the upper one, from which it starts.
 
 Both errors are against the periodic motion found by shooting at rtol = 1e-12, as the largest |u| over a period relative

@@ -63,9 +63,11 @@ def _jump(sweep: Sweep, branches: Sequence[Branch], own: Branch, k: int, increas
             share = 0.0 if after[j] == before[j] else (at - before[j]) / (after[j] - before[j])
             guess = branch.state[:, j] + share * (branch.state[:, j + 1] - branch.state[:, j])
             y, nu, done = polished(sweep.flow, guess, values, scale)
+            if not done:
+                continue
             eigenvalues = reduced_eigenvalues(sweep.flow, y, nu, values)
             # Folds of equivalent branches lie at the same parameter: their vanishing eigenvalue is no stability.
-            if done and np.max(eigenvalues.real) < -1e-6 * np.max(abs(eigenvalues)):
+            if np.max(eigenvalues.real) < -1e-6 * np.max(abs(eigenvalues)):
                 landings.append(y)
     distance = [float(np.linalg.norm(y - start)) for y in landings]
     landings = [y for y, d in zip(landings, distance, strict=True) if d > 1e-6 * scale]

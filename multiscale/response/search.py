@@ -62,6 +62,7 @@ def states_at(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tuple[A
     complete = flow.modes == 1
     if flow.modes == 1 and flow.phases:
         terms, _ = _one_mode_terms(flow, values, points)
+        _refuse_free_circles(terms)
         # Roots far above the natural scale (made by the truncation, mostly) are separated well at their own.
         far = np.maximum(scale / 2, natural_scale(terms, dict.fromkeys(terms, 1), points))
         tries = [scale / 2, far] if np.any(far > 2 * scale) else [scale / 2]
@@ -78,8 +79,10 @@ def states_at(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tuple[A
     # What is left of a mode that is at rest is rounding.
     y = np.where(np.repeat(np.hypot(y[::2], y[1::2]) < 1e-13 * scale[index], 2, axis=0), 0.0, y)
     index, y = index[converged], y[:, converged]
-    if flow.rests:
-        index, y = np.concatenate([np.arange(points), index]), np.concatenate([np.zeros((len(y), points)), y], axis=1)
+    pushed = [c for (_, _, m), c in flow.coefficients(values).items() if sum(m) == 0]
+    resting = np.flatnonzero(~np.any(np.array(pushed) != 0, axis=0)) if pushed else np.arange(points)
+    index = np.concatenate([resting, index])
+    y = np.concatenate([np.zeros((len(y), len(resting))), y], axis=1)
     order = np.lexsort((*y[::-1], np.round(np.linalg.norm(y, axis=0) / scale[index], 9), index))
     index, y = index[order], y[:, order]
     kept = distinct(flow, index, y, scale)
@@ -117,6 +120,21 @@ def _invariants(flow: SteadyFlow, y: Array) -> Array:
     return np.asarray(np.nan_to_num(np.array(marks)))
 
 
+CONSERVED = (
+    "the amplitude of this flow is conserved: every amplitude is a steady state, none is isolated. Use "
+    "expansion.frequency() or backbone(expansion), or give the damping a value"
+)
+
+
+def _refuse_free_circles(terms: dict[tuple[int, int], Array]) -> None:
+    """Without drive and damping the backbone is a circle of steady states at every detuning."""
+    free = np.all([c == 0 for (m, n), c in terms.items() if m - n != 1] or [np.True_], axis=0)
+    bent = np.any([c != 0 for (m, n), c in terms.items() if m - n == 1 and n] or [np.False_], axis=0)
+    growth = np.any([c.real != 0 for (m, n), c in terms.items() if m - n == 1] or [np.False_], axis=0)
+    if np.any(free & bent & ~growth):
+        raise EvaluationError(CONSERVED)
+
+
 def _limit_cycles(flow: SteadyFlow, values: tuple[Any, ...], points: int, scale: Array) -> tuple[Array, Array]:
     """Starts (a, 0) from the positive roots ρ of Σ Re c_k ρ^k = a'/a."""
     terms, _ = _one_mode_terms(flow, values, points)
@@ -127,10 +145,7 @@ def _limit_cycles(flow: SteadyFlow, values: tuple[Any, ...], points: int, scale:
         for (m, n), c in terms.items():
             growth[n] += c[point].real * half ** (m + n)
         if not growth.any():
-            raise EvaluationError(
-                "the amplitude of this flow is conserved: every amplitude is a steady state, none is isolated. Use "
-                "expansion.frequency() or backbone(expansion), or give the damping a value"
-            )
+            raise EvaluationError(CONSERVED)
         roots = np.roots(growth[::-1])
         for root in roots[(abs(roots.imag) < 1e-6 * abs(roots)) & (roots.real > 0)].real:
             index.append(point)

@@ -286,3 +286,27 @@ def test_a_drive_frequency_may_stand_for_its_detuning():
     by_frequency = {k: v for k, v in values.items() if k != "sigma"} | {Om: 1.0 + 0.02 * 1.2}
     for a, b in zip(ms.equilibria(expansion, values), ms.equilibria(expansion, by_frequency), strict=True):
         assert a.state == pytest.approx(b.state, rel=1e-9)
+
+
+@pytest.mark.parametrize("order", [1, 2, 3])
+def test_without_its_drive_the_oscillator_rests(order):
+    expansion = expanded("primary", order)
+    (rest,) = ms.equilibria(expansion, used(expansion, VALUES) | {"f": 0.0})
+    assert rest.amplitudes == (0.0,)
+    assert rest.stable
+    with pytest.raises(ms.EvaluationError, match="every amplitude is a steady state"):
+        ms.equilibria(expansion, used(expansion, VALUES) | {"f": 0.0, "mu": 0.0})
+
+
+@pytest.mark.parametrize("order", [1, 2, 3])
+def test_without_damping_the_motions_are_neutral(order):
+    expansion = expanded("primary", order)
+    states = [s for s in ms.equilibria(expansion, used(expansion, VALUES) | {"mu": 0.0}) if not s.spurious]
+    assert sorted(s.kind for s in states) == ["neutral", "neutral", "saddle"]
+    assert not any(s.stable for s in states)
+
+
+def test_without_nonlinearity_the_response_is_linear():
+    expansion = expanded("primary", 1)
+    (state,) = ms.equilibria(expansion, used(expansion, VALUES) | {"alpha": 0.0})
+    assert state.amplitudes[0] == pytest.approx(0.7 / 2 / np.hypot(0.15, 1.2), rel=1e-14)

@@ -324,3 +324,19 @@ def test_to_xarray():
 def test_a_parameter_of_another_problem_is_refused(symbol):
     with pytest.raises(ms.EvaluationError, match="no parameter"):
         ms.frequency_response(expanded("primary", 1), {}, sweep={symbol: np.linspace(0, 1, 5)})
+
+
+def test_softening_is_the_mirror_image():
+    """α → −α and σ → −σ, first order; the sweep may be given downwards."""
+    hard = response("primary", 1, {"sigma": np.linspace(-1, 4, 60)})
+    soft = response("primary", 1, {"sigma": np.linspace(1, -4, 60)}, alpha=-1.0)
+    assert [-x.parameter for x in soft.folds[::-1]] == pytest.approx([x.parameter for x in hard.folds], rel=1e-12)
+    assert soft.jumps_up[0].increasing
+
+
+@pytest.mark.parametrize("order", [1, 2])
+def test_a_sweep_of_the_drive_from_zero(order):
+    r = response("parametric", order, {h: np.linspace(0, 3, 31)}, sigma=1.0)
+    assert r.branchings
+    r = response("primary", order, {f: np.linspace(0, 1, 21)}, sigma=1.0)
+    assert min(b.amplitude.min() for b in r.branches) == 0
