@@ -9,7 +9,14 @@ from pathlib import Path
 
 from benchmarks.report import Report, table
 
-NAMES = ("against_plain_sympy", "against_flint_loop", "symbolic_parameters", "generated_call", "import_time")
+NAMES = (
+    "against_plain_sympy",
+    "against_flint_loop",
+    "symbolic_parameters",
+    "generated_call",
+    "frequency_response",
+    "import_time",
+)
 RESULTS = Path(__file__).parent / "results"
 
 

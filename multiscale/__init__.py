@@ -14,29 +14,50 @@ from multiscale.errors import (
 from multiscale.expansion import Expansion, expand, extend
 from multiscale.level import Level
 from multiscale.problem import Problem
+from multiscale.response.backbone import backbone, effective_cubic, effective_damping
+from multiscale.response.branches import Branch
+from multiscale.response.critical_drive import CriticalDrive, critical_drive
+from multiscale.response.equilibria import Equilibrium, equilibria
+from multiscale.response.frequency_response import Response, frequency_response
+from multiscale.response.jumps import Jump
 from multiscale.response.observable import Observable, harmonics, observable
+from multiscale.response.peak import Peak
+from multiscale.response.sweep import Special
 from multiscale.response.transition_curves import threshold, transition_curves
 from multiscale.slow_flow import SlowFlow
 
 __version__ = "0.1.0"
 
 __all__ = [
+    "Branch",
+    "CriticalDrive",
+    "Equilibrium",
     "EvaluationError",
     "Expansion",
+    "Jump",
     "Level",
     "MultiscaleError",
     "NumpyFunction",
     "Observable",
     "OrderingWarning",
+    "Peak",
     "Problem",
     "ProblemError",
     "ResonanceError",
+    "Response",
     "SlowFlow",
     "SmallDivisorWarning",
+    "Special",
     "StorageError",
     "UnsupportedTermError",
+    "backbone",
+    "critical_drive",
+    "effective_cubic",
+    "effective_damping",
+    "equilibria",
     "expand",
     "extend",
+    "frequency_response",
     "harmonics",
     "observable",
     "threshold",

@@ -17,7 +17,15 @@ from multiscale.frame import turns
 from multiscale.problem import Problem
 from multiscale.problem.relations import Detuning
 
-__all__ = ["displacement_function", "frequency_function", "observable_function", "slow_flow_function"]
+__all__ = [
+    "coefficient_function",
+    "displacement_function",
+    "frequency_function",
+    "observable_function",
+    "slow_flow_function",
+]
+
+Key = tuple[int, int, tuple[int, ...]]
 
 
 def _function(
@@ -227,3 +235,25 @@ def frequency_function(problem: Problem, computation: Computation, mode: int) ->
     correction = program.summed(program.grouped(series, turns), state, lambda key: one)[0]
     outputs = [tape.add(program.natural_frequency(mode), correction)]
     return _function(problem, program, names, outputs, (), f"Frequency through order {computation.order}.")
+
+
+def coefficient_function(problem: Problem, computation: Computation) -> tuple[tuple[Key, ...], NumpyFunction]:
+    """The coefficients of an autonomous slow flow in complex form as functions of the parameters alone.
+
+    dA_a/dt = Σ εⁿ c Π A_l^{p_l} Ā_l^{q_l}: the keys (n, a, (p_1, q_1, …)), and c at each as (real, imaginary).
+    """
+    program = Program(problem, computation)
+    keys: list[Key] = []
+    outputs: list[Node] = []
+    collected: dict[Key, list[Complex]] = {}
+    for n in range(1, computation.order + 1):
+        for a in range(computation.modes):
+            for m, c in computation.flow(n, a).items():
+                value = (program.quotient(c.real), program.quotient(c.imag))
+                turned = program.multiply(value, program.wave(computation.frame.relative(m, a)))
+                collected.setdefault((n, a, m[: 2 * computation.modes]), []).append(turned)
+    for key, parts in collected.items():
+        keys.append(key)
+        outputs += [program.tape.total(x for x, _ in parts), program.tape.total(y for _, y in parts)]
+    shape = (len(keys), 2)
+    return tuple(keys), _function(problem, program, [], outputs, shape, "Coefficients of the slow flow, by level.")

@@ -1,0 +1,55 @@
+"""Plots; Matplotlib is optional."""
+
+from __future__ import annotations
+
+from itertools import groupby, pairwise
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import sympy as sp
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+
+    from multiscale.response.frequency_response import Response
+
+__all__ = ["plot_response"]
+
+STABLE = {"color": "#1b5e8a", "linestyle": "-"}
+UNSTABLE = {"color": "#c06a2b", "linestyle": "--"}
+SPURIOUS = {"color": "#999999", "linestyle": ":"}
+
+
+def plot_response(response: Response, ax: Axes | None = None, mode: int = 0) -> Axes:
+    """Amplitude over the swept parameter: stable full, unstable dashed, artefacts of the truncation dotted."""
+    try:
+        from matplotlib import pyplot
+    except ImportError:
+        raise ImportError(
+            "plot needs Matplotlib, which is not installed: pip install 'multiscale-expansions[plot]'"
+        ) from None
+    if ax is None:
+        ax = pyplot.subplots(layout="constrained")[1]
+    named: set[str] = set()
+    for branch in response.branches:
+        amplitude = branch.amplitude if branch.amplitude.ndim == 1 else branch.amplitude[mode]
+        style = np.where(branch.spurious, "truncation only", np.where(branch.stable, "stable", "unstable"))
+        # A piece belongs to the style of its less stable end, so that pieces of one style are drawn in one stroke.
+        pieces = [_worse(str(a), str(b)) for a, b in pairwise(style)]
+        for name, group in groupby(range(len(pieces)), key=pieces.__getitem__):
+            run = list(group)
+            part = slice(run[0], run[-1] + 2)
+            look: dict[str, Any] = {"stable": STABLE, "unstable": UNSTABLE, "truncation only": SPURIOUS}[name]
+            look = look if name in named else look | {"label": name}
+            ax.plot(branch.parameter[part], amplitude[part], **look)
+            named.add(name)
+    ax.set_xlabel(f"${sp.latex(response.symbol)}$")
+    ax.set_ylabel(f"${response.labels[mode]}$")
+    if len(named) > 1:
+        ax.legend()
+    return ax
+
+
+def _worse(first: str, second: str) -> str:
+    order = ("stable", "unstable", "truncation only")
+    return max(first, second, key=order.index)
