@@ -1,15 +1,19 @@
-"""Waves on FLINT: each part one polynomial in y = e^{isθ}, palindromic or antipalindromic (python-flint, optional).
+"""Waves on FLINT: of each part the half k ≥ 0, one polynomial (python-flint, optional).
 
-    part = (Σ_j c_j y^j e^{−iKθ})/den,     c_j = ±c_{L−j},  L = 2K/s;      s = 2 when every harmonic has the parity of K
+    part = X(e^{iθ}) ± X(e^{−iθ}),     X = Σ_r c_r e^{i(sr + o)θ}/den,    c of harmonic 0 being half the mean
 
-Of a product only the half k ≤ 0 is formed, from those coefficients of the factors that can reach |k| ≤ limit; sums are
-formed on one common denominator and reduced once. `ExactParts` has integers, `BallParts` balls and no denominator.
+s = 2 when the harmonics of a wave are all even (o = 0) or all odd (o = 1), else s = 1 and o = 0. A product is
+
+    (X + σX̄)(Y + τȲ) = XY + τ XȲ + (mirror image),     for k ≥ 0:  [XY]_k + τ [XȲ]_k + σ [XȲ]_{−k}
+
+where [XȲ]_0 counts once, or not at all if στ = −1. XȲ is formed with the coefficients of Y reversed; where few
+harmonics are kept, XY is short and that one product of half-length is nearly all the work. Sums are formed on one common
+denominator and reduced once. `ExactParts` has integers, `BallParts` balls and no denominator.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
 
@@ -23,13 +27,26 @@ except ImportError as error:  # pragma: no cover - exercised by the bare-environ
 __all__ = ["BallParts", "ExactParts", "PackedWaves", "Wave"]
 
 
-@dataclass(frozen=True)
 class Wave:
-    """Highest harmonic, and the parts in cosines and in sines as (polynomial, denominator), None for zero."""
+    """Offset o and the parts in cosines and in sines as (polynomial, denominator), None for zero; never changed."""
 
-    top: int
-    even: Any
-    odd: Any
+    __slots__ = ("_reversed", "even", "odd", "offset")
+
+    def __init__(self, offset: int, even: Any, odd: Any) -> None:
+        self.offset, self.even, self.odd = offset, even, odd
+        self._reversed: dict[int, Any] = {}
+
+    @property
+    def parts(self) -> tuple[tuple[int, Any], ...]:
+        """(sign under θ → −θ, part) of the parts that are not zero."""
+        return tuple((sign, part) for sign, part in ((1, self.even), (-1, self.odd)) if part is not None)
+
+    def backwards(self, sign: int, parts: type[ExactParts] | type[BallParts]) -> Any:
+        """A part with its coefficients in reverse order."""
+        if sign not in self._reversed:
+            part = self.even if sign > 0 else self.odd
+            self._reversed[sign] = parts.rebuilt(part, lambda line: line[::-1])
+        return self._reversed[sign]
 
 
 class ExactParts:
@@ -126,112 +143,148 @@ class PackedWaves:
     def __init__(self, parts: type[ExactParts] | type[BallParts], step: int, square: int = 1) -> None:
         self._parts, self._step, self._square = parts, step, parts.scalar(-square)
         self.scalar = parts.scalar
+        self._one, self._null = parts.scalar(1), parts.scalar(0)
         self.zero = Wave(0, None, None)
 
     def unit(self) -> Wave:
-        one, null = self.scalar(1), self.scalar(0)
-        line = [one, one] if self._step == 2 else [one, null, one]
-        return Wave(1, self._parts.polynomial(line), None)
+        if self._step == 2:
+            return Wave(1, self._parts.polynomial([self._one]), None)
+        return Wave(0, self._parts.polynomial([self._null, self._one]), None)
 
-    def _top(self, reach: int, limit: int) -> int:
-        """The highest harmonic ≤ limit of a wave that goes up to `reach`."""
-        return reach if reach <= limit else limit - (reach - limit) % self._step
-
-    def _within(self, x: Wave, limit: int) -> Wave:
-        top = self._top(x.top, limit)
-        if top == x.top:
-            return x
-        if top < 0:
-            return self.zero
-        first, count = (x.top - top) // self._step, 2 * top // self._step + 1
-        even, odd = (part and self._parts.cut(part, first, count) for part in (x.even, x.odd))
-        return Wave(top, even, odd)
-
-    def _mirrored(self, half: Any, top: int, sign: int) -> Any:
-        """The whole part from its coefficients at −top … 0 (or −1)."""
-        if half is None:
-            return None
-        count = top // self._step + 1
-        whole = 2 * top // self._step + 1
-
-        def change(low: list[Any]) -> list[Any]:
-            low = (low + [low[0] * 0] * count)[:count]
-            high = low[: whole - count][::-1]
-            return low + (high if sign > 0 else [-c for c in high])
-
-        return self._parts.rebuilt(half, change)
+    def _count(self, limit: int, offset: int) -> int:
+        """How many coefficients stand for harmonics up to a limit."""
+        return max(0, (limit - offset) // self._step + 1)
 
     def products(self, terms: Sequence[tuple[Any, Wave, Wave]], limit: int) -> Wave:
-        step, parts = self._step, self._parts
-        reach = max((x.top + y.top for _, x, y in terms), default=0)
-        top = self._top(reach, limit)
-        if top < 0:
-            return self.zero
-        even: list[tuple[Any, Any]] = []
-        odd: list[tuple[Any, Any]] = []
+        found = {sign: _Sum([], []) for sign in (1, -1)}
+        offset = 0
         for c, x, y in terms:
-            x = self._within(x, top + y.top)
-            y = self._within(y, top + x.top)
-            shift = (x.top + y.top - top) // step
-            count = top // step + 1 + shift
-            for a, b, into, factor in (
-                (x.even, y.even, even, c),
-                (x.odd, y.odd, even, c * self._square),
-                (x.even, y.odd, odd, c),
-                (x.odd, y.even, odd, c),
-            ):
-                if a is not None and b is not None and count > 0:
-                    polynomial, below = parts.product(a, b, count)
-                    moved = polynomial.right_shift(shift) if shift >= 0 else polynomial.left_shift(-shift)
-                    into.append((factor, (moved, below)))
-        halves = [parts.total(found) if found else None for found in (even, odd)]
-        return Wave(top, self._mirrored(halves[0], top, 1), self._mirrored(halves[1], top, -1))
+            for sigma, a in x.parts:
+                for tau, b in y.parts:
+                    offset = (x.offset + y.offset) % self._step
+                    factor = c * self._square if sigma < 0 and tau < 0 else c
+                    self._product(found[sigma * tau], factor, (x, sigma, a), (y, tau, b), limit)
+        halves = []
+        for into in found.values():
+            total = self._parts.total(into.ahead) if into.ahead else None
+            if into.behind and (mirrored := self._parts.total(into.behind)) is not None:
+                count = self._count(limit, offset)
+                mirrored = self._parts.rebuilt(mirrored, lambda line, n=count: _padded(line, n)[::-1])
+                pair = [(self._one, part) for part in (total, mirrored) if part is not None]
+                total = self._parts.total(pair)
+            halves.append(total)
+        return Wave(offset, *halves)
+
+    def _product(
+        self, into: _Sum, c: Any, first: tuple[Wave, int, Any], second: tuple[Wave, int, Any], limit: int
+    ) -> None:
+        (x, sigma, a), (y, tau, b) = first, second
+        if a[0].length() > b[0].length():
+            # The shorter factor is the one not reversed, so that reversals are shared among products.
+            (x, sigma, a), (y, tau, b) = (y, tau, b), (x, sigma, a)
+        step, parts = self._step, self._parts
+        offset = (x.offset + y.offset) % step
+        count = self._count(limit, offset)
+        if not count:
+            return
+        lift = (x.offset + y.offset) // step
+        if count > lift:
+            polynomial, below = parts.product(a, b, count - lift)
+            into.ahead.append((c, (polynomial.left_shift(lift), below)))
+        # Coefficients of X that no coefficient of Y brings within the limit are left out, and the other way round.
+        top_x, top_y = (w.offset + step * (part[0].length() - 1) for w, part in ((x, a), (y, b)))
+        kept = min(b[0].length(), self._count(limit + top_x, y.offset))
+        a = parts.cut(a, 0, self._count(limit + top_y, x.offset))
+        backwards = parts.cut(y.backwards(tau, parts), b[0].length() - kept, kept)
+        # Index kept − 1 + m of the product is the harmonic step·m + x.offset − y.offset.
+        ahead = kept - 1 + (offset - x.offset + y.offset) // step
+        behind = kept - 1 - (offset + x.offset - y.offset) // step
+        polynomial, below = parts.product(a, backwards, ahead + count)
+        skipped = 1 if offset == 0 and sigma * tau < 0 and (step == 1 or x.offset == y.offset) else 0
+        into.ahead.append((c * tau, (_moved(polynomial, ahead + skipped, skipped), below)))
+        last = behind - (offset == 0)
+        # The mirror image of index r is index count − 1 − r until the sum is reversed.
+        into.behind.append((c * sigma, (_window(polynomial, last, count, offset == 0), below)))
 
     def combination(self, terms: Sequence[tuple[Any, Wave]], limit: int) -> Wave:
-        cut = [(c, self._within(x, limit)) for c, x in terms if x.even is not None or x.odd is not None]
-        top = max((x.top for _, x in cut), default=0)
+        present = [(c, x) for c, x in terms if x.parts]
+        if not present:
+            return self.zero
+        offset = present[0][1].offset
+        count = self._count(limit, offset)
         found: list[Any] = []
         for which in ("even", "odd"):
-            own = [(c, x, getattr(x, which)) for c, x in cut]
-            moved = [
-                (c, (part[0].left_shift((top - x.top) // self._step), part[1])) for c, x, part in own if part is not None
-            ]
-            found.append(self._parts.total(moved) if moved else None)
-        return Wave(top, *found)
-
-    def _scaled(self, x: Wave, part: Any, factor: Callable[[int], Any]) -> Any:
-        """Coefficients times an integer that depends on the harmonic."""
-        if part is None:
-            return None
-        return self._parts.rebuilt(
-            part, lambda line: [c * factor(self._step * j - x.top) for j, c in enumerate(line)]
-        )
+            own = [(c, part) for c, x in present if (part := getattr(x, which)) is not None]
+            cut = [(c, self._parts.cut(part, 0, count)) for c, part in own]
+            found.append(self._parts.total(cut) if cut else None)
+        return Wave(offset, *found)
 
     def derivative(self, x: Wave) -> Wave:
-        odd = self._scaled(x, x.even, lambda k: k)
-        even = self._scaled(x, x.odd, lambda k: k)
-        return Wave(x.top, even and self._parts.total([(self._square, even)]), odd and self._parts.total([(self.scalar(1), odd)]))
+        def turned(part: Any, factor: Any) -> Any:
+            if part is None:
+                return None
+            risen = self._parts.rebuilt(
+                part, lambda line: [c * (self._step * r + x.offset) for r, c in enumerate(line)]
+            )
+            return self._parts.total([(factor, risen)])
+
+        return Wave(x.offset, turned(x.odd, self._square), turned(x.even, self._one))
 
     def solved(self, x: Wave) -> Wave:
         def divided(part: Any) -> Any:
             if part is None:
                 return None
-            count = 2 * x.top // self._step + 1
-            line = self._parts.coefficients(part, count)
-            null = self.scalar(0)
-            ks = [self._step * j - x.top for j in range(count)]
+            ks = [self._step * r + x.offset for r in range(part[0].length())]
+            line = self._parts.coefficients(part, len(ks))
             return self._parts.polynomial(
-                [null if abs(k) == 1 else c / (1 - k * k) for k, c in zip(ks, line, strict=True)]
+                [self._null if k == 1 else c / (1 - k * k) for k, c in zip(ks, line, strict=True)]
             )
 
-        return Wave(x.top, divided(x.even), divided(x.odd))
+        return Wave(x.offset, divided(x.even), divided(x.odd))
 
     def first(self, x: Wave) -> tuple[Any, Any]:
-        return self.table(x).get(1, (self.scalar(0), self.scalar(0)))
+        index = (1 - x.offset) // self._step
+        if (1 - x.offset) % self._step:
+            return self._null, self._null
+        even, odd = (
+            self._null if part is None else self._parts.coefficients(self._parts.cut(part, index, 1), 1)[0]
+            for part in (x.even, x.odd)
+        )
+        return even, odd
 
     def table(self, x: Wave) -> dict[int, tuple[Any, Any]]:
-        count = 2 * x.top // self._step + 1
-        null = [self.scalar(0)] * count
-        even, odd = (null if part is None else self._parts.coefficients(part, count) for part in (x.even, x.odd))
-        found = {self._step * j - x.top: pair for j, pair in enumerate(zip(even, odd, strict=True))}
-        return {k: pair for k, pair in sorted(found.items()) if k >= 0}
+        count = max((part[0].length() for _, part in x.parts), default=0)
+        even, odd = (
+            [self._null] * count if part is None else self._parts.coefficients(part, count)
+            for part in (x.even, x.odd)
+        )
+        found = {self._step * r + x.offset: pair for r, pair in enumerate(zip(even, odd, strict=True))}
+        return {k: ((a + a, b) if k == 0 else (a, b)) for k, (a, b) in found.items()}
+
+
+class _Sum:
+    """Terms to be added up for k ≥ 0, and those whose coefficients stand in reverse order."""
+
+    __slots__ = ("ahead", "behind")
+
+    def __init__(self, ahead: list[tuple[Any, Any]], behind: list[tuple[Any, Any]]) -> None:
+        self.ahead, self.behind = ahead, behind
+
+
+def _padded(line: list[Any], count: int) -> list[Any]:
+    return line + [0] * (count - len(line))
+
+
+def _moved(polynomial: Any, first: int, place: int) -> Any:
+    """The coefficients from index `first` on (zeros below index 0), put at `place`."""
+    if first >= 0:
+        return polynomial.right_shift(first).left_shift(place)
+    return polynomial.left_shift(place - first)
+
+
+def _window(polynomial: Any, last: int, count: int, spared: bool) -> Any:
+    """Coefficients last, last − 1, … for r = 0 (1 if `spared`), 1, … put at count − 1 − r."""
+    size = count - spared
+    first = last - size + 1
+    low = polynomial.right_shift(first) if first >= 0 else polynomial.left_shift(-first)
+    return low.truncate(max(0, size))
