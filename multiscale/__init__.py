@@ -14,6 +14,8 @@ from multiscale.errors import (
 from multiscale.expansion import Expansion, expand, extend
 from multiscale.level import Level
 from multiscale.problem import Problem
+from multiscale.response.limit_cycles import LimitCycle, limit_cycles
+from multiscale.response.periodic_series import PeriodicSeries, periodic_series
 from multiscale.response.transition_curves import threshold, transition_curves
 from multiscale.slow_flow import SlowFlow
 
@@ -23,9 +25,11 @@ __all__ = [
     "EvaluationError",
     "Expansion",
     "Level",
+    "LimitCycle",
     "MultiscaleError",
     "NumpyFunction",
     "OrderingWarning",
+    "PeriodicSeries",
     "Problem",
     "ProblemError",
     "ResonanceError",
@@ -35,6 +39,8 @@ __all__ = [
     "UnsupportedTermError",
     "expand",
     "extend",
+    "limit_cycles",
+    "periodic_series",
     "threshold",
     "transition_curves",
 ]

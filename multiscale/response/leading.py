@@ -19,7 +19,7 @@ from multiscale.problem.canonical import Canonical
 __all__ = ["SEARCHED", "Leading", "check_single", "is_reversible", "leading_damping", "parts"]
 
 SEARCHED = 12
-"""Levels that are searched for damping when the problem is not reversible; even numbers of them are exhausted soon."""
+"""Levels that are searched for damping when the problem is not reversible."""
 
 
 @dataclass(frozen=True)
@@ -58,13 +58,13 @@ def parts(computation: Computation, level: int) -> tuple[dict[int, Quotient], di
     return real, {m[1]: c.imag for m, c in change.items() if c.imag}
 
 
-def leading_damping(problem: Problem, order: int) -> Leading | None:
-    """The first level with damping, None where the problem is reversible or no level up to `order` has any."""
-    canonical = problem.canonical(order)
+def leading_damping(problem: Problem) -> Leading | None:
+    """The first level with damping, None where the problem is reversible or no level up to `SEARCHED` has any."""
+    canonical = problem.canonical(SEARCHED)
     if is_reversible(canonical):
         return None
     computation = begin(canonical, "auto")
-    for n in range(1, min(order, SEARCHED) + 1):
+    for n in range(1, SEARCHED + 1):
         computation = computation.further()
         if real := parts(computation, n)[0]:
             return Leading(n, real)

@@ -122,7 +122,8 @@ def _values(
         if symbol is None or (isinstance(key, sp.Symbol) and key != symbol):
             hint = f"the result is a series in {small}: substitute its value there" if str(key) == small.name else ""
             raise EvaluationError(
-                f"{key!r} is no parameter of the problem: expected {', '.join(named) or 'none'}" + (hint and f"; {hint}")
+                f"{key!r} is no parameter of the problem: expected {', '.join(named) or 'none'}"
+                + (hint and f"; {hint}")
             )
         values[symbol] = sp.sympify(value)
     return values
@@ -164,9 +165,7 @@ def positive_roots(rate: Polynomial, small: sp.Symbol) -> list[sp.Expr]:
     if exact and polynomial.degree() <= 2:
         return sorted((r for r in sp.roots(polynomial) if r.is_positive), key=lambda r: sp.N(r))
     if exact:
-        return [
-            r if r.is_Rational else r.evalf(DIGITS) for r in sp.Poly(polynomial, rho).real_roots() if r.is_positive
-        ]
+        return [r if r.is_Rational else r.evalf(DIGITS) for r in sp.Poly(polynomial, rho).real_roots() if r.is_positive]
     tiny = sp.Float(10) ** (5 - DIGITS // 2)
     found = [r for r in polynomial.nroots(n=DIGITS, maxsteps=500) if abs(sp.im(r)) <= tiny * abs(r)]
     return sorted(r for r in map(sp.re, found) if r > 0)
@@ -186,9 +185,7 @@ def _along(levels: Sequence[Polynomial], root: Sequence[sp.Expr], order: int) ->
     padded = [*root, *[sp.Integer(0)] * (order + 1)][: order + 1]
     for m in range(max((m for level in levels for m in level), default=0)):
         below = powers[m]
-        powers.append(
-            [_reduced(sp.Add(*(below[i] * padded[j - i] for i in range(j + 1)))) for j in range(order + 1)]
-        )
+        powers.append([_reduced(sp.Add(*(below[i] * padded[j - i] for i in range(j + 1)))) for j in range(order + 1)])
     for n, level in enumerate(levels[: order + 1]):
         total += sp.Add(*(c * powers[m][order - n] for m, c in level.items()))
     return _reduced(total)

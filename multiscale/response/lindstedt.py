@@ -27,7 +27,7 @@ from typing import Any
 from multiscale.errors import ProblemError
 from multiscale.response.waves import Waves
 
-__all__ = ["Force", "Monomial", "Orbit", "periodic_orbit"]
+__all__ = ["Force", "Monomial", "Orbit", "periodic_orbit", "response_rate"]
 
 
 @dataclass(frozen=True)
@@ -58,6 +58,7 @@ class _Recursion:
     force: Force
     order: int
     shape: int
+    over: int
     fields: list[Any] = field(default_factory=list)
     slopes: dict[int, list[Any]] = field(default_factory=lambda: {1: [], 2: []})
     products: dict[tuple[int, ...], list[Any]] = field(default_factory=dict)
@@ -72,6 +73,7 @@ class _Recursion:
         self.growth = max((Fraction(len(t.jets) - 1, t.power) for t in self.force), default=Fraction(0))
         self.growth = max(self.growth, Fraction(0))
         self.one, self.null = waves.scalar(1), waves.scalar(0)
+        self.bend = waves.scalar(Fraction(-1, self.over))
         self.half = waves.scalar(Fraction(1, 2))
         self.square, self.frequency, self.amplitude = [self.one], [self.one], [self.one]
         self.powers = {q: [self.one] for q in range(2, 1 + max((sum(t.jets) for t in self.force), default=0))}
@@ -80,6 +82,7 @@ class _Recursion:
         self.highest = max((j for jets in factors for j in jets), default=0)
         for jets in factors:
             self._register(jets)
+        self.constants = [waves.constant(), *[waves.zero] * self.order]
         self._extend(waves.unit())
 
     def _file(self) -> None:
@@ -117,6 +120,8 @@ class _Recursion:
         return whole if level <= self.shape else min(whole, int(reach) if reach >= 0 else -1)
 
     def product(self, jets: tuple[int, ...]) -> list[Any]:
+        if not jets:
+            return self.constants
         if len(jets) == 1:
             return self.slopes[jets[0]] if jets[0] else self.fields
         return self.products[jets]
@@ -139,9 +144,7 @@ class _Recursion:
                 terms += [] if level % 2 else [(self.one, a[level // 2], a[level // 2])]
                 made.append(self.waves.products(terms, limit))
             else:
-                made.append(
-                    self.waves.products([(self.one, a[i], b[level - i]) for i in range(level + 1)], limit)
-                )
+                made.append(self.waves.products([(self.one, a[i], b[level - i]) for i in range(level + 1)], limit))
 
     def shorten(self, levels: int) -> None:
         """Forget everything from a level on."""
@@ -162,9 +165,7 @@ class _Recursion:
 
     def _sum(self, key: tuple[int, bool], level: int) -> Any:
         """[ε^level] of the terms filed under a power of w, without that power."""
-        terms = [
-            (c, self.product(jets)[level - power]) for power, jets, c in self.filed[key] if power <= level
-        ]
+        terms = [(c, self.product(jets)[level - power]) for power, jets, c in self.filed[key] if power <= level]
         return self.waves.combination(terms, self.limit(level))
 
     def _powers_to(self, count: int) -> None:
@@ -172,7 +173,7 @@ class _Recursion:
             below = self.frequency if q == 2 else self.powers[q - 1]
             while len(series) < count:
                 n = len(series)
-                series.append(sum((below[i] * self.frequency[n - i] for i in range(n + 1)), self.null))
+                series.append(self.waves.tidy(sum((below[i] * self.frequency[n - i] for i in range(n + 1)), self.null)))
 
     def forcing(self, level: int) -> Any:
         """F at a level, from the fields below it."""
@@ -184,7 +185,7 @@ class _Recursion:
             while len(sums) <= level:
                 sums.append(self._sum(key, len(sums)))
             weights = [self.one] if q == 0 else self.frequency if q == 1 else self.powers[q]
-            terms = [(w, sums[level - m]) for m, w in enumerate(weights[:level]) if m <= level and w]
+            terms = [(w, sums[level - m]) for m, w in enumerate(weights[:level]) if not self.waves.is_null(w)]
             part = self.waves.combination(terms, limit)
             parts.append((self.one, self.waves.derivative(part) if outer else part))
         return self.waves.combination(parts, limit)
@@ -198,27 +199,34 @@ class _Recursion:
             parts.append((self.one, self.waves.derivative(part) if outer else part))
         return self.waves.combination(parts, 1 + int(self.growth * power))
 
+    def again(self, m: int, n: int, change: Any) -> None:
+        """Add to h_m and take the levels m + 1 … n − 1 once more."""
+        self.shorten(m + 1)
+        self.shift(m, change)
+        for level in range(m + 1, n):
+            self.advance(level, self.forcing(level))
+
     def refresh(self, level: int) -> None:
+        """Forget the sums from a level on."""
         for sums in self.sums.values():
             del sums[level:]
 
     def advance(self, level: int, forcing: Any) -> None:
         """W, w, h = 0 and the harmonics of a level from F there."""
         rest = sum((self.square[m] * self.amplitude[level - m] for m in range(1, level)), self.null)
-        own = -self.waves.first(forcing)[0] - rest
+        own = self.waves.tidy(-self.waves.first(forcing)[0] - rest)
         self.square.append(own)
         root = sum((self.frequency[m] * self.frequency[level - m] for m in range(1, level)), self.null)
-        self.frequency.append((own - root) * self.half)
+        self.frequency.append(self.waves.tidy((own - root) * self.half))
         self.amplitude.append(self.null)
         limit = self.limit(level)
         # At level 0 there is the fundamental alone, which `solved` drops.
-        terms = [(self.square[m], self.fields[level - m]) for m in range(1, level) if self.square[m]]
+        terms = [
+            (self.square[m], self.fields[level - m]) for m in range(1, level) if not self.waves.is_null(self.square[m])
+        ]
         bent = self.waves.combination(terms, limit)
         turned = self.waves.derivative(self.waves.derivative(bent))
-        factor = self.waves.scalar(-1) * self.over_square
-        self._extend(self.waves.solved(self.waves.combination([(self.one, forcing), (factor, turned)], limit)))
-
-    over_square: Any = None
+        self._extend(self.waves.solved(self.waves.combination([(self.one, forcing), (self.bend, turned)], limit)))
 
 
 def periodic_orbit(
@@ -228,67 +236,46 @@ def periodic_orbit(
 
     Isolated, the last p coefficients of the amplitude are not determined and left out.
     """
-    work = _Recursion(waves, force, order, shape)
-    work.over_square = waves.scalar(Fraction(1, square))
-    rate: Any = None
-    respond: Any = None
-    if damping is not None and damping == min(t.power for t in force):
-        respond = work.response(damping)
-        rate = waves.first(respond)[1]
+    work = _Recursion(waves, force, order, shape, square)
+    isolated = damping is not None and damping < order
+    # Where no term acts below level p, h_{n−p} changes F_n directly; else the levels between are taken once more.
+    direct = work.response(damping) if damping is not None and damping == min(t.power for t in force) else None
+    rate = None if direct is None else waves.first(direct)[1]
     for n in range(1, order + 1):
         forcing = work.forcing(n)
         sine = waves.first(forcing)[1]
-        if damping is None:
-            if _nonzero(sine):
-                raise ProblemError(_not_periodic(n))
-        elif n <= damping:
-            if _nonzero(sine):
-                raise ProblemError(_not_periodic(n))
+        if not isolated or damping is None or n <= damping:
+            if not waves.vanishes(sine):
+                raise ProblemError(
+                    f"the motion of this amplitude is not periodic: order {n} changes its amplitude. Leave out "
+                    "`amplitude` for a limit cycle, or remove the damping"
+                )
         else:
             m = n - damping
             if rate is None:
                 rate = _rate(work, m, n, sine)
-                forcing = work.forcing(n)
-                sine = waves.first(forcing)[1]
-            if sine:
-                change = -(sine / rate)
-                if damping == 1:
+            if not waves.is_null(sine):
+                change = -waves.quotient(sine, rate)
+                if direct is not None and damping == 1:
                     work.shift(m, change)
                     work.refresh(n)
-                    forcing = waves.combination([(work.one, forcing), (change, respond)], work.limit(n))
+                    forcing = waves.combination([(work.one, forcing), (change, direct)], work.limit(n))
                 else:
-                    _again(work, m, n, change)
+                    work.again(m, n, change)
                     forcing = work.forcing(n)
         work.advance(n, forcing)
-    known = order + 1 - (damping or 0)
-    return Orbit(work.frequency, work.amplitude[:known], work.fields, shape)
+    return Orbit(work.frequency, work.amplitude[: order + 1 - (damping or 0)], work.fields, shape)
 
 
-def _again(work: _Recursion, m: int, n: int, change: Any) -> None:
-    """Add to h_m and take the levels m + 1 … n − 1 once more."""
-    work.shorten(m + 1)
-    work.shift(m, change)
-    for level in range(m + 1, n):
-        work.advance(level, work.forcing(level))
-    work.refresh(n)
+def response_rate(waves: Waves, force: Force, level: int, square: int = 1) -> Any:
+    """∂(sine of F_n)/∂h_{n−p}, p = `level` being the lowest power of ε: what an isolated orbit is divided by."""
+    work = _Recursion(waves, force, level, 0, square)
+    return waves.first(work.response(level))[1]
 
 
 def _rate(work: _Recursion, m: int, n: int, sine: Any) -> Any:
-    """∂(sine of F_n)/∂h_m by a unit change, which is taken back."""
-    _again(work, m, n, work.one)
+    """The same where lower powers are present: by a unit change of h_m, which is taken back."""
+    work.again(m, n, work.one)
     changed = work.waves.first(work.forcing(n))[1]
-    _again(work, m, n, -work.one)
+    work.again(m, n, -work.one)
     return changed - sine
-
-
-def _nonzero(x: Any) -> bool:
-    """Whether a number differs from zero for certain; balls that contain zero do not."""
-    contains = getattr(x, "contains", None)
-    return bool(x) if contains is None else not contains(0)
-
-
-def _not_periodic(level: int) -> str:
-    return (
-        f"the motion of this amplitude is not periodic: its amplitude changes at order {level}. Leave out `amplitude` "
-        "for a limit cycle, or remove the damping"
-    )

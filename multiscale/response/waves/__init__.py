@@ -14,6 +14,15 @@ The contract (`Waves`), with scalars of one field and |k| ≤ K kept, K the last
     solved(x)              x_k/(1 − k²) for k ≠ ±1, and nothing at k = ±1
     first(x)               (α_1, β_1)
     table(x)               {k: (α_k, β_k)}, k ≥ 0
+    constant()             1
+
+and of scalars
+
+    scalar(v)      a rational, or an element of the field as it is
+    tidy(x)        the same in reduced form
+    quotient(x, y) x/y
+    is_null(x)     x = 0 identically, so that it may be left out
+    vanishes(x)    x = 0 as far as the field can tell: a ball that contains zero does
 """
 
 from __future__ import annotations
@@ -25,12 +34,17 @@ __all__ = ["Waves"]
 
 
 class Waves(Protocol):
-    """See the head of this module. `scalar` reads a rational or an element of the field."""
+    """See the head of this module."""
 
     zero: Any
 
     def scalar(self, value: Any) -> Any: ...
+    def tidy(self, x: Any) -> Any: ...
+    def quotient(self, x: Any, y: Any) -> Any: ...
+    def is_null(self, x: Any) -> bool: ...
+    def vanishes(self, x: Any) -> bool: ...
     def unit(self) -> Any: ...
+    def constant(self) -> Any: ...
     def products(self, terms: Sequence[tuple[Any, Any, Any]], limit: int) -> Any: ...
     def combination(self, terms: Sequence[tuple[Any, Any]], limit: int) -> Any: ...
     def derivative(self, x: Any) -> Any: ...

@@ -20,9 +20,7 @@ from typing import Any
 try:
     from flint import arb, arb_poly, fmpq, fmpz, fmpz_poly
 except ImportError as error:  # pragma: no cover - exercised by the bare-environment check
-    raise ImportError(
-        "this representation needs python-flint: pip install 'multiscale-expansions[fast]'"
-    ) from error
+    raise ImportError("this representation needs python-flint: pip install 'multiscale-expansions[fast]'") from error
 
 __all__ = ["BallParts", "ExactParts", "PackedWaves", "Wave"]
 
@@ -55,6 +53,10 @@ class ExactParts:
     @staticmethod
     def scalar(value: Any) -> Any:
         return fmpq(value.numerator, value.denominator) if isinstance(value, int | Fraction) else value
+
+    @staticmethod
+    def vanishes(x: Any) -> bool:
+        return bool(x == 0)
 
     @staticmethod
     def polynomial(coefficients: Sequence[Any]) -> tuple[Any, Any] | None:
@@ -109,8 +111,13 @@ class BallParts:
         return arb(fmpq(value.numerator, value.denominator)) if isinstance(value, int | Fraction) else value
 
     @staticmethod
+    def vanishes(x: Any) -> bool:
+        return bool(x.contains(0))
+
+    @staticmethod
     def polynomial(coefficients: Sequence[Any]) -> Any:
-        return (arb_poly(list(coefficients)), None) if any(c != 0 for c in coefficients) else None
+        # A ball that contains zero is not zero.
+        return None if all(c == 0 for c in coefficients) else (arb_poly(list(coefficients)), None)
 
     @staticmethod
     def coefficients(part: Any, count: int) -> list[Any]:
@@ -150,6 +157,21 @@ class PackedWaves:
         if self._step == 2:
             return Wave(1, self._parts.polynomial([self._one]), None)
         return Wave(0, self._parts.polynomial([self._null, self._one]), None)
+
+    def constant(self) -> Wave:
+        return Wave(0, self._parts.polynomial([self._one / 2]), None)
+
+    def tidy(self, x: Any) -> Any:
+        return x
+
+    def quotient(self, x: Any, y: Any) -> Any:
+        return x / y
+
+    def is_null(self, x: Any) -> bool:
+        return bool(x == 0)
+
+    def vanishes(self, x: Any) -> bool:
+        return self._parts.vanishes(x)
 
     def _count(self, limit: int, offset: int) -> int:
         """How many coefficients stand for harmonics up to a limit."""
@@ -255,8 +277,7 @@ class PackedWaves:
     def table(self, x: Wave) -> dict[int, tuple[Any, Any]]:
         count = max((part[0].length() for _, part in x.parts), default=0)
         even, odd = (
-            [self._null] * count if part is None else self._parts.coefficients(part, count)
-            for part in (x.even, x.odd)
+            [self._null] * count if part is None else self._parts.coefficients(part, count) for part in (x.even, x.odd)
         )
         found = {self._step * r + x.offset: pair for r, pair in enumerate(zip(even, odd, strict=True))}
         return {k: ((a + a, b) if k == 0 else (a, b)) for k, (a, b) in found.items()}

@@ -3,34 +3,59 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from dataclasses import dataclass
 from fractions import Fraction
+from operator import not_, truediv
 from typing import Any, TypeAlias
 
-__all__ = ["PlainWaves"]
+__all__ = ["PlainWaves", "Scalars"]
 
 Table: TypeAlias = dict[int, tuple[Any, Any]]
 
 
-class PlainWaves:
-    """`Waves` as {k: (α_k, β_k)} over k ≥ 0; `scalar` reads a `Fraction` or an element, `normal` reduces products."""
+@dataclass(frozen=True)
+class Scalars:
+    """The field: how a rational is read, and what differs from field to field."""
 
-    def __init__(
-        self,
-        scalar: Callable[[Any], Any] = Fraction,
-        square: int = 1,
-        normal: Callable[[Any], Any] | None = None,
-    ) -> None:
-        self.scalar = scalar
-        self._square, self._normal = scalar(square), normal
-        self._null = scalar(0)
+    read: Callable[[Any], Any] = Fraction
+    tidy: Callable[[Any], Any] | None = None
+    quotient: Callable[[Any, Any], Any] = truediv
+    vanishes: Callable[[Any], bool] = not_
+
+
+class PlainWaves:
+    """`Waves` as {k: (α_k, β_k)} over k ≥ 0."""
+
+    def __init__(self, scalars: Scalars | None = None, square: int = 1) -> None:
+        self._scalars = scalars or Scalars()
+        self._square = self.scalar(square)
+        self._null = self.scalar(0)
         self.zero: Table = {}
+
+    def scalar(self, value: Any) -> Any:
+        return self._scalars.read(value)
+
+    def tidy(self, x: Any) -> Any:
+        return x if self._scalars.tidy is None else self._scalars.tidy(x)
+
+    def quotient(self, x: Any, y: Any) -> Any:
+        return self._scalars.quotient(x, y)
+
+    def is_null(self, x: Any) -> bool:
+        return not x
+
+    def vanishes(self, x: Any) -> bool:
+        return self._scalars.vanishes(x)
 
     def unit(self) -> Table:
         return {1: (self.scalar(1), self._null)}
 
+    def constant(self) -> Table:
+        return {0: (self.scalar(1), self._null)}
+
     def _cleaned(self, sums: dict[int, list[Any]]) -> Table:
-        if self._normal is not None:
-            sums = {k: [self._normal(x) for x in pair] for k, pair in sums.items()}
+        if self._scalars.tidy is not None:
+            sums = {k: [self.tidy(x) for x in pair] for k, pair in sums.items()}
         return {k: (pair[0], pair[1] if k else self._null) for k, pair in sums.items() if pair[0] or pair[1]}
 
     def products(self, terms: Sequence[tuple[Any, Table, Table]], limit: int) -> Table:
