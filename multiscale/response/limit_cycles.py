@@ -147,8 +147,8 @@ def positive_roots(rate: Polynomial, small: sp.Symbol) -> list[sp.Expr]:
     symbols = polynomial.free_symbols_in_domain
     if symbols and polynomial.degree() > 2:
         raise UnsupportedTermError(
-            f"the leading amplitude solves {polynomial.as_expr()} = 0 with rho = a**2/4, which has no closed form: give "
-            f"`parameters` values for {', '.join(sorted(map(str, symbols)))}"
+            f"the leading amplitude solves {polynomial.as_expr()} = 0 with rho = a**2/4, which has no closed form: "
+            f"give `parameters` values for {', '.join(sorted(map(str, symbols)))}"
         )
     if polynomial.discriminant() == 0:
         repeated = sp.gcd(polynomial, polynomial.diff())
@@ -159,7 +159,7 @@ def positive_roots(rate: Polynomial, small: sp.Symbol) -> list[sp.Expr]:
                 "term that separates them a lower power"
             )
     if symbols:
-        found = [r for r in sp.roots(polynomial) if not r.is_nonpositive and not r.is_real is False]
+        found = [r for r in sp.roots(polynomial) if not r.is_nonpositive and r.is_real is not False]
         return sorted(found, key=sp.default_sort_key)
     exact = all(c.is_Rational for c in polynomial.all_coeffs())
     if exact and polynomial.degree() <= 2:

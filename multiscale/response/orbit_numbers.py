@@ -33,7 +33,7 @@ from multiscale.response.orbit_statement import Statement
 from multiscale.response.waves import Waves
 from multiscale.response.waves.plain import PlainWaves, Scalars
 
-__all__ = ["Numbers", "PrecisionLost", "ball_numbers", "exact_numbers", "plain_numbers", "ring_numbers"]
+__all__ = ["Numbers", "PrecisionError", "ball_numbers", "exact_numbers", "plain_numbers", "ring_numbers"]
 
 HALF = "@half"
 
@@ -84,7 +84,7 @@ def _value(x: sp.Expr, bits: int) -> Any:
         return sp.N(x, int(bits / 3.3) + 3)._to_mpmath(bits)
 
 
-class PrecisionLost(ArithmeticError):
+class PrecisionError(ArithmeticError):
     """Fewer correct digits than were asked for: more working precision is needed."""
 
 
@@ -97,7 +97,7 @@ def _digits(value: Any, digits: int, bits: int) -> sp.Expr:
 
 @contextmanager
 def ball_numbers(statement: Statement, bits: int, digits: int) -> Iterator[Numbers]:
-    """Balls, `bits` being FLINT's working precision inside the context; writing raises `PrecisionLost`."""
+    """Balls, `bits` being FLINT's working precision inside the context; writing raises `PrecisionError`."""
     from flint import arb, ctx, fmpq, fmpz
 
     from multiscale.response.waves.packed import BallParts, PackedWaves
@@ -107,7 +107,7 @@ def ball_numbers(statement: Statement, bits: int, digits: int) -> Iterator[Numbe
             return sp.Integer(0)
         small = bool(abs(x) < arb(2) ** (-bits // 2))
         if not small and x.rel_accuracy_bits() < 3.33 * digits + 4:
-            raise PrecisionLost
+            raise PrecisionError
         mantissa, exponent = x.mid().man_exp()
         return _digits(mpmath.ldexp(int(mantissa), int(exponent)), digits, bits)
 

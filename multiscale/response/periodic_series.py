@@ -22,7 +22,7 @@ from multiscale.problem import Problem
 from multiscale.response.lindstedt import periodic_orbit
 from multiscale.response.orbit_numbers import (
     Numbers,
-    PrecisionLost,
+    PrecisionError,
     ball_numbers,
     exact_numbers,
     plain_numbers,
@@ -272,7 +272,7 @@ def _in_digits(statement: Statement, order: int, digits: int, shape: int, flint:
                 second = _run(statement, numbers, order, shape)
             if first == second:
                 return first
-        except PrecisionLost:
+        except PrecisionError:
             pass
         bits *= 2
     raise ProblemError(f"digits={digits}: not reached with {bits // 2} bits; calculate exactly, without `digits`")

@@ -56,7 +56,7 @@ class Singularities:
 
 
 def nearest_singularities(coefficients: Sequence[sp.Expr]) -> Singularities | None:
-    """The estimate for Σ c_n εⁿ with numeric c_n; None for too few coefficients, or when nothing consistent is found."""
+    """The estimate for Σ c_n εⁿ with numeric c_n; None for too few coefficients, or where none is consistent."""
     present = [n for n, c in enumerate(coefficients) if n and c != 0]
     if len(present) < LEAST:
         return None

@@ -7,14 +7,15 @@ s = 2 when the harmonics of a wave are all even (o = 0) or all odd (o = 1), else
     (X + σX̄)(Y + τȲ) = XY + τ XȲ + (mirror image),     for k ≥ 0:  [XY]_k + τ [XȲ]_k + σ [XȲ]_{−k}
 
 where [XȲ]_0 counts once, or not at all if στ = −1. XȲ is formed with the coefficients of Y reversed; where few
-harmonics are kept, XY is short and that one product of half-length is nearly all the work. Sums are formed on one common
-denominator and reduced once. `ExactParts` has integers, `BallParts` balls and no denominator.
+harmonics are kept, XY is short and that one product of half-length is nearly all the work. Sums are formed on one
+common denominator and reduced once. `ExactParts` has integers, `BallParts` balls and no denominator.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from fractions import Fraction
+from functools import partial
 from typing import Any
 
 try:
@@ -121,7 +122,7 @@ class BallParts:
 
     @staticmethod
     def coefficients(part: Any, count: int) -> list[Any]:
-        found = part[0].coeffs()[:count]
+        found: list[Any] = part[0].coeffs()[:count]
         return found + [arb(0)] * (count - len(found))
 
     @staticmethod
@@ -191,7 +192,7 @@ class PackedWaves:
             total = self._parts.total(into.ahead) if into.ahead else None
             if into.behind and (mirrored := self._parts.total(into.behind)) is not None:
                 count = self._count(limit, offset)
-                mirrored = self._parts.rebuilt(mirrored, lambda line, n=count: _padded(line, n)[::-1])
+                mirrored = self._parts.rebuilt(mirrored, partial(_reversed, count))
                 pair = [(self._one, part) for part in (total, mirrored) if part is not None]
                 total = self._parts.total(pair)
             halves.append(total)
@@ -292,8 +293,9 @@ class _Sum:
         self.ahead, self.behind = ahead, behind
 
 
-def _padded(line: list[Any], count: int) -> list[Any]:
-    return line + [0] * (count - len(line))
+def _reversed(count: int, line: list[Any]) -> list[Any]:
+    """The coefficients in reverse order, filled up to `count` first."""
+    return (line + [0] * (count - len(line)))[::-1]
 
 
 def _moved(polynomial: Any, first: int, place: int) -> Any:
