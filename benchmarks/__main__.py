@@ -1,4 +1,4 @@
-"""``python -m benchmarks [--only NAME …]``: run, print a table, write ``benchmarks/results/*.json`` and figures."""
+"""``python -m benchmarks [--only NAME …] [--long]``: run, print, write ``benchmarks/results/*.json`` and figures."""
 
 from __future__ import annotations
 
@@ -15,8 +15,11 @@ NAMES = (
     "symbolic_parameters",
     "generated_call",
     "frequency_response",
+    "periodic_orbit",
     "import_time",
 )
+LONG = {"periodic_orbit"}
+"""Benchmarks whose `run` has the option ``long``: opponents that take minutes."""
 RESULTS = Path(__file__).parent / "results"
 
 
@@ -25,11 +28,13 @@ def main() -> None:
     parser.formatter_class = argparse.RawDescriptionHelpFormatter
     parser.add_argument("--only", nargs="+", choices=NAMES, default=NAMES, metavar="NAME", help=", ".join(NAMES))
     parser.add_argument("--output", type=Path, default=RESULTS, help="folder for the raw results and figures")
+    parser.add_argument("--long", action="store_true", help="also run opponents that take minutes")
     options = parser.parse_args()
     report = Report()
     for name in options.only:
         print(f"… {name}", file=sys.stderr, flush=True)
-        report.results[name] = import_module(f"benchmarks.{name}").run()
+        extra = {"long": True} if options.long and name in LONG else {}
+        report.results[name] = import_module(f"benchmarks.{name}").run(**extra)
     print(table(report))
     # A run of some benchmarks never replaces the record of a complete one.
     written = report.write(options.output, "latest" if set(options.only) == set(NAMES) else "partial")

@@ -20,8 +20,10 @@ from multiscale.response.critical_drive import CriticalDrive, critical_drive
 from multiscale.response.equilibria import Equilibrium, equilibria
 from multiscale.response.frequency_response import Response, frequency_response
 from multiscale.response.jumps import Jump
+from multiscale.response.limit_cycles import LimitCycle, limit_cycles
 from multiscale.response.observable import Observable, harmonics, observable
 from multiscale.response.peak import Peak
+from multiscale.response.periodic_series import PeriodicSeries, periodic_series
 from multiscale.response.sweep import Special
 from multiscale.response.transition_curves import threshold, transition_curves
 from multiscale.slow_flow import SlowFlow
@@ -36,11 +38,13 @@ __all__ = [
     "Expansion",
     "Jump",
     "Level",
+    "LimitCycle",
     "MultiscaleError",
     "NumpyFunction",
     "Observable",
     "OrderingWarning",
     "Peak",
+    "PeriodicSeries",
     "Problem",
     "ProblemError",
     "ResonanceError",
@@ -59,7 +63,9 @@ __all__ = [
     "extend",
     "frequency_response",
     "harmonics",
+    "limit_cycles",
     "observable",
+    "periodic_series",
     "threshold",
     "transition_curves",
 ]

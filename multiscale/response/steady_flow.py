@@ -136,7 +136,7 @@ class SteadyFlow:
 def checked_name(flow: SteadyFlow, symbol: Any) -> str:
     """The name of a parameter, given as a Symbol or a name; an eliminated frequency counts."""
     name = str(symbol.name) if isinstance(symbol, sp.Symbol) else symbol
-    known = (*flow.flow.parameters, *(x.eliminated for x in flow.flow.inversions if x.eliminated))
+    known = (*flow.flow.parameters, *(name for x in flow.flow.inversions for name in x.eliminated))
     if name not in known:
         raise EvaluationError(f"{symbol!r} is no parameter of this slow flow: expected one of {', '.join(known)}")
     return str(name)
