@@ -47,9 +47,12 @@ class Inversion:
                 )
             return dict(found)
         with np.errstate(all="ignore"):
-            (value,) = _compiled(self.source, self.functions)(
-                *(_array(found[name], np.float64, name) for name in self.arguments)
+            # Complex values pass: the derivative of a detuning by its frequency may be taken by a complex step.
+            numbers = (
+                _array(found[name], np.complex128 if np.iscomplexobj(found[name]) else np.float64, name)
+                for name in self.arguments
             )
+            (value,) = _compiled(self.source, self.functions)(*numbers)
         if self.detuning in found:
             own = _array(found[self.detuning], np.float64, self.detuning)
             stated = ", ".join(f"{name} = {found[name]}" for name in given if name != self.detuning) or "the others"
