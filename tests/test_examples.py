@@ -1,0 +1,52 @@
+"""The scripts behind the pages give the numbers that the pages print."""
+
+from __future__ import annotations
+
+import runpy
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+import multiscale as ms
+
+DOCS = Path(__file__).parent.parent / "docs"
+
+
+@pytest.fixture(scope="module")
+def study():
+    return runpy.run_path(str(DOCS / "examples" / "drive_level_study.py"))
+
+
+@pytest.fixture(scope="module")
+def result(study):
+    return study["expansion"]()
+
+
+def test_the_table_of_the_page_is_the_one_computed(study, result):
+    page = (DOCS / "drive_level_study.md").read_text()
+    for row in study["table"](result).splitlines()[1:]:
+        force, peak, pulling, *interval = row.split(maxsplit=3)
+        assert f"| {force} | {peak} | {pulling} | {interval[0]} |" in page
+
+
+def test_two_stable_motions_begin_at_the_critical_drive(study, result):
+    onset = ms.critical_drive(result, study["PARAMETERS"], drive=study["F"], detuning=study["sigma"])
+    assert f"**{onset.drive * 1e9:.2f} nN**" in (DOCS / "drive_level_study.md").read_text()
+    below, above = (study["response"](result, onset.drive * factor, 801).folds for factor in (0.97, 1.03))
+    assert not below
+    assert len(above) == 2
+
+
+def test_peaks_lie_on_the_backbone(study, result):
+    """Damping this light moves the peak from the backbone by far less than the width of the resonance."""
+    width = study["PARAMETERS"][study["c"]] / study["PARAMETERS"][study["m"]]
+    peaks = [study["response"](result, force).peak() for force in study["FORCES"]]
+    shift = [float(study["backbone_shift"](result, p.amplitude)) for p in peaks]
+    np.testing.assert_allclose([p.parameter for p in peaks], shift, atol=0.01 * width)
+
+
+def test_figures_are_written_where_matplotlib_is(study, result, tmp_path):
+    pytest.importorskip("matplotlib")
+    written = study["figures"](result, tmp_path)
+    assert [path.stat().st_size > 10_000 for path in written] == [True, True]
