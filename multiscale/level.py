@@ -33,7 +33,8 @@ class Level:
     secular : dict
         {unknown: the part of the forcing at the natural frequency}, both complex-conjugate halves.
     solvability : dict
-        {D_nA: its value}, the condition that removes the secular terms.
+        {D_nA: its value}, the condition that removes the secular terms; for a driven mode with what the turning of the
+        frame adds, −iΦ_n A.
     corrections : dict
         {unknown: U_n}, without any part at the natural frequency for n ≥ 1. As everywhere, A is the amplitude in the
         rotating frame (`SlowFlow.frame`).
