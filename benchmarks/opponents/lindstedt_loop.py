@@ -19,7 +19,7 @@ __all__ = ["frequency"]
 
 
 def _raised(p: Any, count: int) -> Any:
-    return p.left_shift(count)
+    return p.left_shift(count) if hasattr(p, "left_shift") else fmpq_poly([0] * count + p.coeffs())
 
 
 def _weighted(p: Any, top: int, weight: Any) -> Any:

@@ -42,7 +42,7 @@ class Monomial:
 Force = Sequence[Monomial]
 
 
-@dataclass
+@dataclass(frozen=True)
 class Orbit:
     """w, h and Y by powers of ε; Y whole at levels up to `shape` and in its low harmonics beyond."""
 
@@ -234,7 +234,8 @@ def periodic_orbit(
 ) -> Orbit:
     """The orbit through ε^order: `square` is d, `damping` the level p of an isolated orbit, None with free amplitude.
 
-    Isolated, the last p coefficients of the amplitude are not determined and left out.
+    Isolated, the last p coefficients of the amplitude are not determined and left out; the coefficients of the
+    frequency from ε^{order−p+2} on may depend on them and are then not the right ones.
     """
     work = _Recursion(waves, force, order, shape, square)
     isolated = damping is not None and damping < order

@@ -73,7 +73,8 @@ def exact_numbers(statement: Statement, flint: bool) -> Numbers | None:
         force.append(Monomial(power, jets, Fraction(int(number.p), int(number.q))))
     if not flint:
         return Numbers(PlainWaves(square=square), force, square, lambda x: sp.Rational(x.numerator, x.denominator))
-    from multiscale.response.waves.packed import ExactParts, PackedWaves
+    from multiscale.response.waves.packed import PackedWaves
+    from multiscale.response.waves.parts import ExactParts
 
     waves = PackedWaves(ExactParts, 2 if statement.has_odd_degrees else 1, square)
     return Numbers(waves, force, square, lambda x: sp.Rational(int(x.p), int(x.q)))
@@ -101,7 +102,8 @@ def ball_numbers(statement: Statement, bits: int, digits: int) -> Iterator[Numbe
     """Balls, `bits` being FLINT's working precision inside the context; writing raises `PrecisionError`."""
     from flint import arb, ctx, fmpq, fmpz
 
-    from multiscale.response.waves.packed import BallParts, PackedWaves
+    from multiscale.response.waves.packed import PackedWaves
+    from multiscale.response.waves.parts import BallParts
 
     def write(x: Any) -> sp.Expr:
         if x == 0:

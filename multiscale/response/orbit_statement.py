@@ -24,7 +24,7 @@ __all__ = ["Statement", "read_statement"]
 class Statement:
     """One oscillator and the orbit that is meant.
 
-    `start` is a_0; `damping` the level of an isolated orbit, None with free amplitude; `terms` the force with
+    `start` is a_0; `damping` the level p of an isolated orbit, None with free amplitude; `terms` the force with
     coefficients in the user's symbols.
     """
 
@@ -35,6 +35,11 @@ class Statement:
     damping: int | None
     leading: Leading | None
     small: sp.Symbol
+
+    def depth(self, order: int) -> int:
+        """The level to go to for the frequency through `order`: a term at ε¹ may bring a_{n−1} into ω_n, and a_{n−1}
+        is fixed at level n − 1 + p."""
+        return order if self.damping is None else order + self.damping - 1
 
     @property
     def is_numeric(self) -> bool:
@@ -59,8 +64,9 @@ class Statement:
 
 def read_statement(problem: Problem, order: int, amplitude: Any, root: int | None) -> Statement:
     """Raises `ProblemError` or `UnsupportedTermError`, with what to state instead."""
-    canonical = problem.canonical(order)
-    check_single(canonical, "the periodic orbit is given")
+    check_single(problem.canonical(order), "the periodic orbit is given")
+    leading = None if amplitude is not None else leading_damping(problem)
+    canonical = problem.canonical(order if leading is None else order + leading.level - 1)
     write = Writer(dict(canonical.meanings))
     terms = tuple((term, write.polynomial(term.coefficient)) for term in canonical.force[0])
     for term, c in terms:
@@ -69,16 +75,11 @@ def read_statement(problem: Problem, order: int, amplitude: Any, root: int | Non
                 f"term {-c} is constant and not small: measure {problem.unknowns[0]} from its rest position"
             )
     natural = sp.sympify(canonical.frequencies[0])
-    leading = None if amplitude is not None else leading_damping(problem)
     if leading is None:
         if root is not None:
             raise ProblemError(f"root={root}: this problem has periodic motions of every amplitude; give `amplitude`")
         start = symbols_of(problem, 1, 0, 0).a[0] if amplitude is None else _amplitude(amplitude)
         return Statement(canonical, natural, terms, start, None, None, problem.small)
-    if leading.level > order:
-        raise ProblemError(
-            f"order={order}: the amplitude is first changed at order {leading.level}; ask for that order at least"
-        )
     rates = {m: write.quotient(q) for m, q in leading.terms.items()}
     roots = positive_roots(rates, problem.small)
     start = sp.sqrt(4 * _chosen(roots, root))

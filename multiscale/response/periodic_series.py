@@ -9,7 +9,7 @@ stands in `lindstedt`; this module chooses the field of numbers for it and write
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from functools import cached_property
 from importlib.util import find_spec
@@ -36,7 +36,7 @@ __all__ = ["PeriodicSeries", "periodic_series"]
 Harmonics = Mapping[int, tuple[sp.Expr, sp.Expr]]
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, repr=False)
 class PeriodicSeries:
     """A periodic orbit as power series in the small parameter; made by `periodic_series`.
 
@@ -55,7 +55,7 @@ class PeriodicSeries:
     small: sp.Symbol
     frequency_coefficients: tuple[sp.Expr, ...]
     amplitude_coefficients: tuple[sp.Expr, ...]
-    harmonics: tuple[Harmonics, ...] = field(repr=False)
+    harmonics: tuple[Harmonics, ...]
 
     def _series(self, coefficients: Sequence[sp.Expr]) -> sp.Expr:
         return sp.Add(*(c * self.small**n for n, c in enumerate(coefficients)))
@@ -113,6 +113,9 @@ class PeriodicSeries:
             names = ", ".join(sorted(map(str, symbols)))
             raise ProblemError(f"the coefficients contain {names}: put in numbers by `at` first")
 
+    def __repr__(self) -> str:
+        return f"PeriodicSeries to order {len(self.frequency_coefficients) - 1} in {self.small}"
+
     def __hash__(self) -> int:
         return hash((self.small, self.frequency_coefficients, self.amplitude_coefficients))
 
@@ -137,8 +140,7 @@ def periodic_series(
         One oscillator without drives. With damping of both signs (self-excited) the orbit is isolated and its amplitude
         part of the result; where every motion is periodic the amplitude is free.
     order : int ≥ 1
-        The highest power of ε of the frequency. An isolated orbit has its amplitude through ε^{order−p}, p being the
-        first level with damping, 1 as a rule.
+        The highest power of ε of the frequency. An isolated orbit has its amplitude through ε^{order−1}.
     amplitude : number or Symbol, optional
         Free amplitude of the fundamental; a symbol of the library's by default. Refused where motions of that amplitude
         are not periodic.
@@ -218,15 +220,18 @@ class _Found:
 
 
 def _run(statement: Statement, numbers: Numbers, order: int, shape: int) -> _Found:
+    depth = statement.depth(order)
     orbit = periodic_orbit(
-        numbers.waves, numbers.force, order, square=numbers.square, damping=statement.damping, shape=shape
+        numbers.waves, numbers.force, depth, square=numbers.square, damping=statement.damping, shape=shape
     )
     write = numbers.write
     known = min(shape, len(orbit.amplitude) - 1)
     tables = [
         {k: (write(a), write(b)) for k, (a, b) in numbers.waves.table(x).items()} for x in orbit.fields[: known + 1]
     ]
-    return _Found([*map(write, orbit.frequency)], [*map(write, orbit.amplitude)], tables, sp.sqrt(numbers.square))
+    return _Found(
+        [*map(write, orbit.frequency[: order + 1])], [*map(write, orbit.amplitude)], tables, sp.sqrt(numbers.square)
+    )
 
 
 def _scaling(statement: Statement) -> Fraction | None:

@@ -8,22 +8,18 @@ s = 2 when the harmonics of a wave are all even (o = 0) or all odd (o = 1), else
 
 where [XȲ]_0 counts once, or not at all if στ = −1. XȲ is formed with the coefficients of Y reversed; where few
 harmonics are kept, XY is short and that one product of half-length is nearly all the work. Sums are formed on one
-common denominator and reduced once. `ExactParts` has integers, `BallParts` balls and no denominator.
+common denominator and reduced once. The coefficients are integers or balls (`parts`).
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from fractions import Fraction
+from collections.abc import Sequence
 from functools import partial
 from typing import Any
 
-try:
-    from flint import arb, arb_poly, fmpq, fmpz, fmpz_poly
-except ImportError as error:  # pragma: no cover - exercised by the bare-environment check
-    raise ImportError("this representation needs python-flint: pip install 'multiscale-expansions[fast]'") from error
+from multiscale.response.waves.parts import Parts, low, shifted
 
-__all__ = ["BallParts", "ExactParts", "PackedWaves", "Wave"]
+__all__ = ["PackedWaves", "Wave"]
 
 
 class Wave:
@@ -40,7 +36,7 @@ class Wave:
         """(sign under θ → −θ, part) of the parts that are not zero."""
         return tuple((sign, part) for sign, part in ((1, self.even), (-1, self.odd)) if part is not None)
 
-    def backwards(self, sign: int, parts: type[ExactParts] | type[BallParts]) -> Any:
+    def backwards(self, sign: int, parts: Parts) -> Any:
         """A part with its coefficients in reverse order."""
         if sign not in self._reversed:
             part = self.even if sign > 0 else self.odd
@@ -48,107 +44,10 @@ class Wave:
         return self._reversed[sign]
 
 
-class ExactParts:
-    """Integer polynomials over common denominators."""
-
-    @staticmethod
-    def scalar(value: Any) -> Any:
-        return fmpq(value.numerator, value.denominator) if isinstance(value, int | Fraction) else value
-
-    @staticmethod
-    def vanishes(x: Any) -> bool:
-        return bool(x == 0)
-
-    @staticmethod
-    def polynomial(coefficients: Sequence[Any]) -> tuple[Any, Any] | None:
-        """From rational coefficients."""
-        if not any(coefficients):
-            return None
-        common = fmpz(1)
-        for c in coefficients:
-            common = common.lcm(c.q)
-        return fmpz_poly([c.p * (common // c.q) for c in coefficients]), common
-
-    @staticmethod
-    def coefficients(part: Any, count: int) -> list[Any]:
-        polynomial, below = part
-        found = [fmpq(c, below) for c in polynomial.coeffs()[:count]]
-        return found + [fmpq(0)] * (count - len(found))
-
-    @staticmethod
-    def cut(part: Any, first: int, count: int) -> Any:
-        return part[0].right_shift(first).truncate(count), part[1]
-
-    @staticmethod
-    def product(x: Any, y: Any, count: int) -> tuple[Any, Any]:
-        return x[0].mul_low(y[0], count), x[1] * y[1]
-
-    @staticmethod
-    def total(terms: Sequence[tuple[Any, Any]]) -> Any:
-        """Σ scalar · part, reduced; None for zero."""
-        common = fmpz(1)
-        for c, (_, below) in terms:
-            common = common.lcm(below * c.q)
-        above = fmpz_poly([0])
-        for c, (polynomial, below) in terms:
-            factor = c.p * (common // (below * c.q))
-            above = above + (polynomial if factor == 1 else polynomial * factor)
-        if not above:
-            return None
-        shared = above.content().gcd(common)
-        return (above, common) if shared == 1 else (above // shared, common // shared)
-
-    @staticmethod
-    def rebuilt(part: Any, change: Callable[[list[Any]], list[Any]]) -> Any:
-        polynomial, below = part
-        return fmpz_poly(change(polynomial.coeffs())), below
-
-
-class BallParts:
-    """Polynomials of balls at the working precision of FLINT's context."""
-
-    @staticmethod
-    def scalar(value: Any) -> Any:
-        return arb(fmpq(value.numerator, value.denominator)) if isinstance(value, int | Fraction) else value
-
-    @staticmethod
-    def vanishes(x: Any) -> bool:
-        return bool(x.contains(0))
-
-    @staticmethod
-    def polynomial(coefficients: Sequence[Any]) -> Any:
-        # A ball that contains zero is not zero.
-        return None if all(c == 0 for c in coefficients) else (arb_poly(list(coefficients)), None)
-
-    @staticmethod
-    def coefficients(part: Any, count: int) -> list[Any]:
-        found: list[Any] = part[0].coeffs()[:count]
-        return found + [arb(0)] * (count - len(found))
-
-    @staticmethod
-    def cut(part: Any, first: int, count: int) -> Any:
-        return part[0].right_shift(first).truncate(count), None
-
-    @staticmethod
-    def product(x: Any, y: Any, count: int) -> tuple[Any, Any]:
-        return (x[0].truncate(count) * y[0].truncate(count)).truncate(count), None
-
-    @staticmethod
-    def total(terms: Sequence[tuple[Any, Any]]) -> Any:
-        above = arb_poly([0])
-        for c, (polynomial, _) in terms:
-            above = above + (polynomial if c == 1 else polynomial * c)
-        return (above, None) if above.length() else None
-
-    @staticmethod
-    def rebuilt(part: Any, change: Callable[[list[Any]], list[Any]]) -> Any:
-        return arb_poly(change(part[0].coeffs())), None
-
-
 class PackedWaves:
     """`Waves` on FLINT polynomials; `step` is s, `square` is d."""
 
-    def __init__(self, parts: type[ExactParts] | type[BallParts], step: int, square: int = 1) -> None:
+    def __init__(self, parts: Parts, step: int, square: int = 1) -> None:
         self._parts, self._step, self._square = parts, step, parts.scalar(-square)
         self.scalar = parts.scalar
         self._one, self._null = parts.scalar(1), parts.scalar(0)
@@ -213,7 +112,7 @@ class PackedWaves:
         lift = (x.offset + y.offset) // step
         if count > lift:
             polynomial, below = parts.product(a, b, count - lift)
-            into.ahead.append((c, (polynomial.left_shift(lift), below)))
+            into.ahead.append((c, (shifted(polynomial, lift), below)))
         # Coefficients of X that no coefficient of Y brings within the limit are left out, and the other way round.
         top_x, top_y = (w.offset + step * (part[0].length() - 1) for w, part in ((x, a), (y, b)))
         kept = min(b[0].length(), self._count(limit + top_x, y.offset))
@@ -223,7 +122,7 @@ class PackedWaves:
         ahead = kept - 1 + (offset - x.offset + y.offset) // step
         behind = kept - 1 - (offset + x.offset - y.offset) // step
         polynomial, below = parts.product(a, backwards, ahead + count)
-        skipped = 1 if offset == 0 and sigma * tau < 0 and (step == 1 or x.offset == y.offset) else 0
+        skipped = 1 if offset == 0 and sigma * tau < 0 else 0
         into.ahead.append((c * tau, (_moved(polynomial, ahead + skipped, skipped), below)))
         last = behind - (offset == 0)
         # The mirror image of index r is index count − 1 − r until the sum is reversed.
@@ -301,13 +200,11 @@ def _reversed(count: int, line: list[Any]) -> list[Any]:
 def _moved(polynomial: Any, first: int, place: int) -> Any:
     """The coefficients from index `first` on (zeros below index 0), put at `place`."""
     if first >= 0:
-        return polynomial.right_shift(first).left_shift(place)
-    return polynomial.left_shift(place - first)
+        return shifted(shifted(polynomial, -first), place)
+    return shifted(polynomial, place - first)
 
 
 def _window(polynomial: Any, last: int, count: int, spared: bool) -> Any:
     """Coefficients last, last − 1, … for r = 0 (1 if `spared`), 1, … put at count − 1 − r."""
     size = count - spared
-    first = last - size + 1
-    low = polynomial.right_shift(first) if first >= 0 else polynomial.left_shift(-first)
-    return low.truncate(max(0, size))
+    return low(shifted(polynomial, size - 1 - last), max(0, size))

@@ -1,0 +1,140 @@
+"""One half of a wave as a FLINT polynomial: integers over a common denominator, or balls (python-flint, optional).
+
+A part is (polynomial, denominator), of balls (polynomial, None); zero is None. What the two kinds offer alike:
+
+    product(x, y, count)   the first coefficients of x·y
+    total(terms)           Σ scalar · part, over one denominator and reduced
+    cut(x, first, count)   coefficients first … first + count − 1
+    rebuilt(x, change)     the part whose numerators `change` makes of those of x
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from fractions import Fraction
+from typing import Any, TypeAlias
+
+try:
+    from flint import arb, arb_poly, fmpq, fmpz, fmpz_poly
+except ImportError as error:  # pragma: no cover - exercised by the bare-environment check
+    raise ImportError("this representation needs python-flint: pip install 'multiscale-expansions[fast]'") from error
+
+__all__ = ["BallParts", "ExactParts", "Parts", "low", "shifted"]
+
+NATIVE = hasattr(fmpz_poly, "mul_low")
+"""Whether python-flint shifts and cuts polynomials itself; older versions do not."""
+
+
+def shifted(polynomial: Any, count: int) -> Any:
+    """polynomial · y^count; for negative `count` without the coefficients that would stand below index 0."""
+    if NATIVE:
+        return polynomial.left_shift(count) if count >= 0 else polynomial.right_shift(-count)
+    line = polynomial.coeffs()
+    return type(polynomial)([0] * count + line if count >= 0 else line[-count:])
+
+
+def low(polynomial: Any, count: int) -> Any:
+    """The first coefficients."""
+    return polynomial.truncate(count) if NATIVE else type(polynomial)(polynomial.coeffs()[: max(0, count)])
+
+
+class ExactParts:
+    """Integer polynomials over common denominators."""
+
+    @staticmethod
+    def scalar(value: Any) -> Any:
+        return fmpq(value.numerator, value.denominator) if isinstance(value, int | Fraction) else value
+
+    @staticmethod
+    def vanishes(x: Any) -> bool:
+        return bool(x == 0)
+
+    @staticmethod
+    def polynomial(coefficients: Sequence[Any]) -> tuple[Any, Any] | None:
+        """From rational coefficients."""
+        if not any(coefficients):
+            return None
+        common = fmpz(1)
+        for c in coefficients:
+            common = common.lcm(c.q)
+        return fmpz_poly([c.p * (common // c.q) for c in coefficients]), common
+
+    @staticmethod
+    def coefficients(part: Any, count: int) -> list[Any]:
+        polynomial, below = part
+        found = [fmpq(c, below) for c in polynomial.coeffs()[:count]]
+        return found + [fmpq(0)] * (count - len(found))
+
+    @staticmethod
+    def cut(part: Any, first: int, count: int) -> Any:
+        return low(shifted(part[0], -first), count), part[1]
+
+    @staticmethod
+    def product(x: Any, y: Any, count: int) -> tuple[Any, Any]:
+        if not NATIVE:
+            return low(x[0] * y[0], count), x[1] * y[1]
+        return x[0].mul_low(y[0], count), x[1] * y[1]
+
+    @staticmethod
+    def total(terms: Sequence[tuple[Any, Any]]) -> Any:
+        """Σ scalar · part, reduced; None for zero."""
+        common = fmpz(1)
+        for c, (_, below) in terms:
+            common = common.lcm(below * c.q)
+        above = fmpz_poly([0])
+        for c, (polynomial, below) in terms:
+            factor = c.p * (common // (below * c.q))
+            above = above + (polynomial if factor == 1 else polynomial * factor)
+        if not above:
+            return None
+        shared = above.content().gcd(common)
+        return (above, common) if shared == 1 else (above // shared, common // shared)
+
+    @staticmethod
+    def rebuilt(part: Any, change: Callable[[list[Any]], list[Any]]) -> Any:
+        polynomial, below = part
+        return fmpz_poly(change(polynomial.coeffs())), below
+
+
+class BallParts:
+    """Polynomials of balls at the working precision of FLINT's context."""
+
+    @staticmethod
+    def scalar(value: Any) -> Any:
+        return arb(fmpq(value.numerator, value.denominator)) if isinstance(value, int | Fraction) else value
+
+    @staticmethod
+    def vanishes(x: Any) -> bool:
+        return bool(x.contains(0))
+
+    @staticmethod
+    def polynomial(coefficients: Sequence[Any]) -> Any:
+        # A ball that contains zero is not zero.
+        return None if all(c == 0 for c in coefficients) else (arb_poly(list(coefficients)), None)
+
+    @staticmethod
+    def coefficients(part: Any, count: int) -> list[Any]:
+        found: list[Any] = part[0].coeffs()[:count]
+        return found + [arb(0)] * (count - len(found))
+
+    @staticmethod
+    def cut(part: Any, first: int, count: int) -> Any:
+        return low(shifted(part[0], -first), count), None
+
+    @staticmethod
+    def product(x: Any, y: Any, count: int) -> tuple[Any, Any]:
+        return low(low(x[0], count) * low(y[0], count), count), None
+
+    @staticmethod
+    def total(terms: Sequence[tuple[Any, Any]]) -> Any:
+        above = arb_poly([0])
+        for c, (polynomial, _) in terms:
+            above = above + (polynomial if c == 1 else polynomial * c)
+        return (above, None) if above.length() else None
+
+    @staticmethod
+    def rebuilt(part: Any, change: Callable[[list[Any]], list[Any]]) -> Any:
+        return arb_poly(change(part[0].coeffs())), None
+
+
+Parts: TypeAlias = type[ExactParts] | type[BallParts]
