@@ -14,18 +14,18 @@ from multiscale.errors import (
 from multiscale.expansion import Expansion, expand, extend
 from multiscale.level import Level
 from multiscale.problem import Problem
-from multiscale.response.backbone import backbone, effective_cubic, effective_damping
-from multiscale.response.branches import Branch
-from multiscale.response.critical_drive import CriticalDrive, critical_drive
-from multiscale.response.equilibria import Equilibrium, equilibria
-from multiscale.response.frequency_response import Response, frequency_response
-from multiscale.response.jumps import Jump
-from multiscale.response.limit_cycles import LimitCycle, limit_cycles
 from multiscale.response.observable import Observable, harmonics, observable
-from multiscale.response.peak import Peak
-from multiscale.response.periodic_series import PeriodicSeries, periodic_series
-from multiscale.response.sweep import Special
-from multiscale.response.transition_curves import threshold, transition_curves
+from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
+from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
+from multiscale.response.steady.backbone import backbone, effective_cubic, effective_damping
+from multiscale.response.steady.branches import Branch
+from multiscale.response.steady.critical_drive import CriticalDrive, critical_drive
+from multiscale.response.steady.equilibria import Equilibrium, equilibria
+from multiscale.response.steady.frequency_response import Response, frequency_response
+from multiscale.response.steady.jumps import Jump
+from multiscale.response.steady.peak import Peak
+from multiscale.response.steady.sweep import Special
+from multiscale.response.tongues.transition_curves import threshold, transition_curves
 from multiscale.slow_flow import SlowFlow
 
 __version__ = "0.1.0"

@@ -11,7 +11,7 @@ import sympy as sp
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
-    from multiscale.response.frequency_response import Response
+    from multiscale.response.steady.frequency_response import Response
 
 __all__ = ["plot_response"]
 

@@ -17,7 +17,7 @@ import pytest
 import sympy as sp
 from support.parametric import ddu, du, eps, parametric, t, u
 
-from multiscale.response.transition_curves import threshold, transition_curves
+from multiscale.response.tongues.transition_curves import threshold, transition_curves
 
 from .integration import slope
 from .rows import difference

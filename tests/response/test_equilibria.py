@@ -25,9 +25,9 @@ from support.driven import (
 )
 
 import multiscale as ms
-from multiscale.response.newton import polished
-from multiscale.response.search import states_at
-from multiscale.response.steady_flow import SteadyFlow
+from multiscale.response.steady.newton import polished
+from multiscale.response.steady.search import states_at
+from multiscale.response.steady.steady_flow import SteadyFlow
 
 VALUES = {"epsilon": 0.02, "mu": 0.15, "alpha": 1.0, "beta": 0.8, "f": 0.7, "h": 1.1, "omega": 1.0, "sigma": 1.2}
 

@@ -341,7 +341,7 @@ def test_an_amplitude_by_number_and_by_symbol():
 
 def test_singularities_of_a_known_series():
     """(1 + ε²/5)^{1/2} with the sign of x turned, and (1 − ε + 2ε²)^{1/3}, which has a pair."""
-    from multiscale.response.singularities import nearest_singularities
+    from multiscale.response.orbits.singularities import nearest_singularities
 
     x = sp.Symbol("x")
 

@@ -12,7 +12,7 @@ from published.rows import difference
 from support.parametric import boundary, ddu, distance, du, eps, monodromy, parametric, t, u, unchecked
 
 from multiscale.errors import ProblemError, UnsupportedTermError
-from multiscale.response.transition_curves import threshold, transition_curves
+from multiscale.response.tongues.transition_curves import threshold, transition_curves
 
 delta, h, mu, Omega, c = sp.symbols("delta h mu Omega c", positive=True)
 phi = sp.Symbol("phi", real=True)

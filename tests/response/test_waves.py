@@ -8,7 +8,7 @@ from fractions import Fraction as F
 
 import pytest
 
-from multiscale.response.waves.plain import PlainWaves
+from multiscale.response.orbits.waves.plain import PlainWaves
 
 SQUARE = 3
 REPRESENTATIONS = ["plain", "integers, step 1", "integers, step 2", "balls, step 2"]
@@ -18,8 +18,8 @@ def waves(name):
     if name == "plain":
         return PlainWaves(square=SQUARE)
     pytest.importorskip("flint")
-    from multiscale.response.waves.packed import PackedWaves
-    from multiscale.response.waves.parts import BallParts, ExactParts
+    from multiscale.response.orbits.waves.packed import PackedWaves
+    from multiscale.response.orbits.waves.parts import BallParts, ExactParts
 
     return PackedWaves(BallParts if "balls" in name else ExactParts, 2 if "2" in name else 1, SQUARE)
 

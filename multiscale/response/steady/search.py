@@ -13,9 +13,9 @@ import numpy as np
 import numpy.typing as npt
 
 from multiscale.errors import EvaluationError
-from multiscale.response.elimination import candidates, natural_scale
-from multiscale.response.newton import polished, turning_jacobian
-from multiscale.response.steady_flow import SteadyFlow
+from multiscale.response.steady.elimination import candidates, natural_scale
+from multiscale.response.steady.newton import polished, turning_jacobian
+from multiscale.response.steady.steady_flow import SteadyFlow
 
 __all__ = ["distinct", "refuse_continua", "scale_of", "states_at"]
 

@@ -28,11 +28,11 @@ from multiscale.algebra.ring import Ring, RingSpec
 from multiscale.errors import UnsupportedTermError
 from multiscale.expressions import Writer
 from multiscale.linear_part.oscillators import Oscillators
-from multiscale.response.leading import Leading
-from multiscale.response.lindstedt import Monomial, response_rate
-from multiscale.response.orbit_statement import Statement
-from multiscale.response.waves import Waves
-from multiscale.response.waves.plain import PlainWaves, Scalars
+from multiscale.response.orbits.leading import Leading
+from multiscale.response.orbits.lindstedt import Monomial, response_rate
+from multiscale.response.orbits.orbit_statement import Statement
+from multiscale.response.orbits.waves import Waves
+from multiscale.response.orbits.waves.plain import PlainWaves, Scalars
 
 __all__ = ["Numbers", "PrecisionError", "ball_numbers", "exact_numbers", "plain_numbers", "ring_numbers"]
 
@@ -73,8 +73,8 @@ def exact_numbers(statement: Statement, flint: bool) -> Numbers | None:
         force.append(Monomial(power, jets, Fraction(int(number.p), int(number.q))))
     if not flint:
         return Numbers(PlainWaves(square=square), force, square, lambda x: sp.Rational(x.numerator, x.denominator))
-    from multiscale.response.waves.packed import PackedWaves
-    from multiscale.response.waves.parts import ExactParts
+    from multiscale.response.orbits.waves.packed import PackedWaves
+    from multiscale.response.orbits.waves.parts import ExactParts
 
     waves = PackedWaves(ExactParts, 2 if statement.has_odd_degrees else 1, square)
     return Numbers(waves, force, square, lambda x: sp.Rational(int(x.p), int(x.q)))
@@ -102,8 +102,8 @@ def ball_numbers(statement: Statement, bits: int, digits: int) -> Iterator[Numbe
     """Balls, `bits` being FLINT's working precision inside the context; writing raises `PrecisionError`."""
     from flint import arb, ctx, fmpq, fmpz
 
-    from multiscale.response.waves.packed import PackedWaves
-    from multiscale.response.waves.parts import BallParts
+    from multiscale.response.orbits.waves.packed import PackedWaves
+    from multiscale.response.orbits.waves.parts import BallParts
 
     def write(x: Any) -> sp.Expr:
         if x == 0:

@@ -21,7 +21,7 @@ from multiscale.algebra.quotient import reduced
 from multiscale.algebra.reciprocals import inverse, missing
 from multiscale.algebra.ring import IMAGINARY, Ring
 from multiscale.errors import ProblemError
-from multiscale.response.hill import Hill
+from multiscale.response.tongues.hill import Hill
 
 __all__ = ["Reduced", "carried", "dividing", "is_zero", "reduced_equation"]
 

@@ -25,7 +25,7 @@ from fractions import Fraction
 from typing import Any
 
 from multiscale.errors import ProblemError
-from multiscale.response.waves import Waves
+from multiscale.response.orbits.waves import Waves
 
 __all__ = ["Force", "Monomial", "Orbit", "periodic_orbit", "response_rate"]
 

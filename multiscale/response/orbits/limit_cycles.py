@@ -20,7 +20,7 @@ from multiscale.algebra.quotient import Quotient
 from multiscale.errors import EvaluationError, MultiscaleError, ProblemError, UnsupportedTermError
 from multiscale.expansion import Expansion
 from multiscale.expressions import Writer
-from multiscale.response.leading import check_single, parts
+from multiscale.response.orbits.leading import check_single, parts
 
 __all__ = ["LimitCycle", "limit_cycles", "positive_roots"]
 

@@ -17,7 +17,7 @@ from collections.abc import Sequence
 from functools import partial
 from typing import Any
 
-from multiscale.response.waves.parts import Parts, low, shifted
+from multiscale.response.orbits.waves.parts import Parts, low, shifted
 
 __all__ = ["PackedWaves", "Wave"]
 

@@ -17,9 +17,9 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from multiscale.response.newton import polished
-from multiscale.response.search import scale_of, states_at
-from multiscale.response.sweep import Arc, Special, Sweep
+from multiscale.response.steady.newton import polished
+from multiscale.response.steady.search import scale_of, states_at
+from multiscale.response.steady.sweep import Arc, Special, Sweep
 
 __all__ = ["linked_arcs"]
 

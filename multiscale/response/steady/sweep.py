@@ -10,8 +10,8 @@ import numpy as np
 import numpy.typing as npt
 
 from multiscale.errors import EvaluationError
-from multiscale.response.newton import fold, rotation_rates, solve_batch, turning_jacobian
-from multiscale.response.steady_flow import STEP, SteadyFlow, checked_name
+from multiscale.response.steady.newton import fold, rotation_rates, solve_batch, turning_jacobian
+from multiscale.response.steady.steady_flow import STEP, SteadyFlow, checked_name
 
 __all__ = ["Arc", "Special", "Sweep"]
 

@@ -13,8 +13,8 @@ from multiscale.expressions import Writer
 from multiscale.forces.polynomial import Term
 from multiscale.problem import Problem
 from multiscale.problem.canonical import Canonical
-from multiscale.response.leading import Leading, check_single, leading_damping
-from multiscale.response.limit_cycles import positive_roots
+from multiscale.response.orbits.leading import Leading, check_single, leading_damping
+from multiscale.response.orbits.limit_cycles import positive_roots
 from multiscale.symbols import symbols_of
 
 __all__ = ["Statement", "read_statement"]

@@ -16,7 +16,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from multiscale.response.steady_flow import STEP, SteadyFlow
+from multiscale.response.steady.steady_flow import STEP, SteadyFlow
 
 __all__ = ["fold", "hopf", "polished", "reduced_eigenvalues", "rotation_rates", "solve_batch", "turning_jacobian"]
 

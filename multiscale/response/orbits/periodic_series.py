@@ -19,8 +19,8 @@ import sympy as sp
 
 from multiscale.errors import ProblemError, UnsupportedTermError
 from multiscale.problem import Problem
-from multiscale.response.lindstedt import periodic_orbit
-from multiscale.response.orbit_numbers import (
+from multiscale.response.orbits.lindstedt import periodic_orbit
+from multiscale.response.orbits.orbit_numbers import (
     Numbers,
     PrecisionError,
     ball_numbers,
@@ -28,8 +28,8 @@ from multiscale.response.orbit_numbers import (
     plain_numbers,
     ring_numbers,
 )
-from multiscale.response.orbit_statement import Statement, read_statement
-from multiscale.response.singularities import Singularities, nearest_singularities
+from multiscale.response.orbits.orbit_statement import Statement, read_statement
+from multiscale.response.orbits.singularities import Singularities, nearest_singularities
 
 __all__ = ["PeriodicSeries", "periodic_series"]
 

@@ -26,7 +26,7 @@ import sympy as sp
 
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
-from multiscale.response.steady_flow import STEP, SteadyFlow
+from multiscale.response.steady.steady_flow import STEP, SteadyFlow
 
 __all__ = ["CriticalDrive", "critical_drive"]
 

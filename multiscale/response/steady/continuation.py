@@ -11,9 +11,9 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from multiscale.response.newton import polished, rotation_rates, turning_jacobian
-from multiscale.response.search import distinct, scale_of, states_at
-from multiscale.response.sweep import Arc, Special, Sweep
+from multiscale.response.steady.newton import polished, rotation_rates, turning_jacobian
+from multiscale.response.steady.search import distinct, scale_of, states_at
+from multiscale.response.steady.sweep import Arc, Special, Sweep
 
 __all__ = ["followed_arcs"]
 

@@ -10,9 +10,9 @@ import numpy as np
 import numpy.typing as npt
 
 from multiscale.errors import EvaluationError
-from multiscale.response.branches import Branch
-from multiscale.response.newton import rotation_rates, turning_jacobian
-from multiscale.response.sweep import Sweep
+from multiscale.response.steady.branches import Branch
+from multiscale.response.steady.newton import rotation_rates, turning_jacobian
+from multiscale.response.steady.sweep import Sweep
 
 __all__ = ["Peak", "peak_of"]
 

@@ -11,10 +11,10 @@ import numpy.typing as npt
 
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
-from multiscale.response.newton import reduced_eigenvalues, rotation_rates
-from multiscale.response.search import refuse_continua, states_at
-from multiscale.response.steady_flow import SteadyFlow
-from multiscale.response.truncation import spurious_reason
+from multiscale.response.steady.newton import reduced_eigenvalues, rotation_rates
+from multiscale.response.steady.search import refuse_continua, states_at
+from multiscale.response.steady.steady_flow import SteadyFlow
+from multiscale.response.steady.truncation import spurious_reason
 
 __all__ = ["Equilibrium", "equilibria", "kind_of"]
 

@@ -19,9 +19,9 @@ from multiscale.algebra.quotient import reduced
 from multiscale.algebra.reciprocals import inverse
 from multiscale.algebra.ring import Ring
 from multiscale.errors import ProblemError, UnsupportedTermError
-from multiscale.response.hill import Hill
-from multiscale.response.preparation import prepared, product, square_root
-from multiscale.response.reduction import carried, dividing, is_zero, reduced_equation
+from multiscale.response.tongues.hill import Hill
+from multiscale.response.tongues.preparation import prepared, product, square_root
+from multiscale.response.tongues.reduction import carried, dividing, is_zero, reduced_equation
 
 __all__ = ["Quadratic", "Spelling", "added", "half_root", "monic", "quadratic_factor"]
 

@@ -16,7 +16,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from multiscale.response.steady_flow import Coefficients, SteadyFlow
+from multiscale.response.steady.steady_flow import Coefficients, SteadyFlow
 
 __all__ = ["spurious_reason"]
 

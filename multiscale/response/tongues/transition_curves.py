@@ -24,10 +24,10 @@ from typing import Any
 import sympy as sp
 
 from multiscale.errors import ProblemError, UnsupportedTermError
-from multiscale.response.discriminant import Spelling, added, half_root, monic, quadratic_factor
-from multiscale.response.hill import Hill, Parametric, read_hill
-from multiscale.response.preparation import prepared
-from multiscale.response.reduction import Reduced, reduced_equation
+from multiscale.response.tongues.discriminant import Spelling, added, half_root, monic, quadratic_factor
+from multiscale.response.tongues.hill import Hill, Parametric, read_hill
+from multiscale.response.tongues.preparation import prepared
+from multiscale.response.tongues.reduction import Reduced, reduced_equation
 
 __all__ = ["threshold", "transition_curves"]
 
@@ -75,7 +75,7 @@ def transition_curves(
     Examples
     --------
     >>> import sympy as sp, multiscale as ms
-    >>> from multiscale.response.transition_curves import transition_curves
+    >>> from multiscale.response.tongues.transition_curves import transition_curves
     >>> t = sp.Symbol("t", real=True)
     >>> eps, delta = sp.symbols("epsilon delta", positive=True)
     >>> u = sp.Function("u")(t)
@@ -116,7 +116,7 @@ def threshold(problem: Parametric, parameter: sp.Symbol, drive: sp.Symbol, *, or
     Examples
     --------
     >>> import sympy as sp, multiscale as ms
-    >>> from multiscale.response.transition_curves import threshold
+    >>> from multiscale.response.tongues.transition_curves import threshold
     >>> t = sp.Symbol("t", real=True)
     >>> eps, delta, mu, h = sp.symbols("epsilon delta mu h", positive=True)
     >>> u = sp.Function("u")(t)

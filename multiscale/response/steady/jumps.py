@@ -9,10 +9,10 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from multiscale.response.branches import Branch
-from multiscale.response.newton import polished, reduced_eigenvalues
-from multiscale.response.search import scale_of
-from multiscale.response.sweep import Sweep
+from multiscale.response.steady.branches import Branch
+from multiscale.response.steady.newton import polished, reduced_eigenvalues
+from multiscale.response.steady.search import scale_of
+from multiscale.response.steady.sweep import Sweep
 
 __all__ = ["Jump", "jumps"]
 

@@ -13,13 +13,13 @@ import sympy as sp
 
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
-from multiscale.response.branches import Branch, branch_of, hopf_points
-from multiscale.response.continuation import followed_arcs
-from multiscale.response.jumps import Jump, jumps
-from multiscale.response.linking import linked_arcs
-from multiscale.response.peak import Peak, peak_of
-from multiscale.response.steady_flow import SteadyFlow
-from multiscale.response.sweep import Special, Sweep
+from multiscale.response.steady.branches import Branch, branch_of, hopf_points
+from multiscale.response.steady.continuation import followed_arcs
+from multiscale.response.steady.jumps import Jump, jumps
+from multiscale.response.steady.linking import linked_arcs
+from multiscale.response.steady.peak import Peak, peak_of
+from multiscale.response.steady.steady_flow import SteadyFlow
+from multiscale.response.steady.sweep import Special, Sweep
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes

@@ -10,10 +10,10 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from multiscale.response.newton import hopf, reduced_eigenvalues, rotation_rates
-from multiscale.response.search import scale_of
-from multiscale.response.sweep import Arc, Special, Sweep
-from multiscale.response.truncation import spurious_reason
+from multiscale.response.steady.newton import hopf, reduced_eigenvalues, rotation_rates
+from multiscale.response.steady.search import scale_of
+from multiscale.response.steady.sweep import Arc, Special, Sweep
+from multiscale.response.steady.truncation import spurious_reason
 
 __all__ = ["Branch", "branch_of", "hopf_points"]
 

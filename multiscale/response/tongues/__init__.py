@@ -1,0 +1,1 @@
+"""Boundaries of parametric instability: where a linear periodic equation has periodic solutions."""
