@@ -178,3 +178,15 @@ def test_several_unknowns_are_refused():
 def test_a_problem_is_not_an_expansion():
     with pytest.raises(ms.ProblemError, match=r"multiscale\.expand"):
         ms.limit_cycles(ms.Problem(EQUATIONS["van der Pol"], u, small=eps))
+
+
+def test_text_is_never_read_as_a_value():
+    """A string would be evaluated by SymPy if it were let through."""
+    u = sp.Function("u")(t)
+    nu = sp.Symbol("nu", positive=True)
+    result = ms.expand(ms.Problem(u.diff(t, 2) + u + eps * nu * (u**2 - 1) * u.diff(t), u, small=eps), 2)
+    with pytest.raises(ms.EvaluationError, match="expected a number or a SymPy expression"):
+        ms.limit_cycles(result, {nu: "__import__('os').getcwd()"})
+    conservative = ms.Problem(u.diff(t, 2) + u + eps * u**3, u, small=eps)
+    with pytest.raises(ms.ProblemError, match="expected a positive number or a symbol"):
+        ms.periodic_series(conservative, 2, amplitude="__import__('os').getcwd()")

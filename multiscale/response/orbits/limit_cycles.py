@@ -107,7 +107,7 @@ def limit_cycles(expansion: Expansion, parameters: Mapping[Any, Any] | None = No
             f"no level up to order {expansion.order} changes the amplitude: every motion is periodic, its frequency "
             "is expansion.frequency(). For a weaker damping expand to a higher order"
         )
-    natural = sp.sympify(problem.natural_frequencies[0]).subs(values)
+    natural = sp.S(problem.natural_frequencies[0]).subs(values)
     roots = positive_roots(rates[first], problem.small)
     return tuple(_cycle(rates[first:], turns, natural, root, first + 1, problem.small) for root in roots)
 
@@ -125,7 +125,10 @@ def _values(
                 f"{key!r} is no parameter of the problem: expected {', '.join(named) or 'none'}"
                 + (hint and f"; {hint}")
             )
-        values[symbol] = sp.sympify(value)
+        try:
+            values[symbol] = sp.sympify(value, strict=True)
+        except sp.SympifyError:
+            raise EvaluationError(f"{key} = {value!r}: expected a number or a SymPy expression") from None
     return values
 
 

@@ -74,7 +74,7 @@ def read_statement(problem: Problem, order: int, amplitude: Any, root: int | Non
             raise UnsupportedTermError(
                 f"term {-c} is constant and not small: measure {problem.unknowns[0]} from its rest position"
             )
-    natural = sp.sympify(canonical.frequencies[0])
+    natural = sp.S(canonical.frequencies[0])
     if leading is None:
         if root is not None:
             raise ProblemError(f"root={root}: this problem has periodic motions of every amplitude; give `amplitude`")
@@ -87,7 +87,10 @@ def read_statement(problem: Problem, order: int, amplitude: Any, root: int | Non
 
 
 def _amplitude(given: Any) -> sp.Expr:
-    value = sp.sympify(given)
+    try:
+        value = sp.sympify(given, strict=True)
+    except sp.SympifyError:
+        value = None
     if not isinstance(value, sp.Expr) or value.is_positive is False or value.has(sp.I, sp.nan, sp.oo):
         raise ProblemError(f"amplitude={given!r}: expected a positive number or a symbol")
     # A float is taken as the decimal it prints as.

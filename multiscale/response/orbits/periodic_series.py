@@ -82,7 +82,7 @@ class PeriodicSeries:
         """The same series with values put in for symbols (not for ε)."""
 
         def put(x: sp.Expr) -> sp.Expr:
-            return sp.sympify(x).subs(values)
+            return sp.S(x).subs(values)
 
         levels = tuple({k: (put(c), put(s)) for k, (c, s) in found.items()} for found in self.harmonics)
         return replace(
