@@ -112,10 +112,9 @@ class Response:
 def frequency_response(expansion: Expansion, parameters: Mapping[Any, Any], *, sweep: Mapping[Any, Any]) -> Response:
     """All steady states over a range of one parameter, joined into branches.
 
-    One mode: every equilibrium at every value by elimination, isolated branches included; a pair of folds, or an island,
-    that lies wholly between two neighbouring values is seen only where a branch is steep there, so choose the values
-    closer than the features looked for. Several modes: the branches through the states that a search finds at a few
-    values.
+    One mode: every equilibrium at every value by elimination, isolated branches included. A pair of folds or an island
+    that lies wholly between two neighbouring values is seen only where a branch is steep, so choose the values closer
+    than the features looked for. Several modes: the branches through the states that a search finds at a few values.
 
     Parameters
     ----------
