@@ -102,6 +102,15 @@ class Views:
         angles = self._computation.frame.angles[mode]
         return self.phase_of([Fraction(int(k == mode)) - x for k, x in enumerate(angles)])
 
+    def phase_factor(self, own: Sequence[int]) -> tuple[sp.Expr, sp.Expr]:
+        """Real and imaginary part of Π (p ∓ iq)^|own|: `own` says how often a monomial turns with each mode."""
+        real, imag = sp.Integer(1), sp.Integer(0)
+        for p, q, k in zip(self._symbols.p, self._symbols.q, own, strict=False):
+            y = -q if k > 0 else q
+            for _ in range(abs(k)):
+                real, imag = sp.expand(real * p - imag * y), sp.expand(real * y + imag * p)
+        return real, imag
+
     def amplitudes(self, finished: Finished, mode: int) -> sp.Expr:
         """A term of dA_mode/dt in the frame: a polynomial in A and its conjugate, explicit time where it remains."""
         frame = self._computation.frame

@@ -158,7 +158,7 @@ class SlowFlow:
             groups.setdefault((own, rest), []).append(parts)
         p_rate, q_rate = [], []
         for (own, rest), terms in groups.items():
-            cosine, sine = self._phase_factor(own)
+            cosine, sine = self._views.phase_factor(own)
             if rest != 0:
                 wave = sp.cos(rest), sp.sin(rest)
                 cosine, sine = cosine * wave[0] - sine * wave[1], cosine * wave[1] + sine * wave[0]
@@ -166,15 +166,6 @@ class SlowFlow:
             p_rate.append(real * cosine - imag * sine)
             q_rate.append(-(imag * cosine) - real * sine)
         return sp.Add(*p_rate), sp.Add(*q_rate)
-
-    def _phase_factor(self, turns: tuple[int, ...]) -> tuple[sp.Expr, sp.Expr]:
-        """Real and imaginary part of Π (p ∓ iq)^|turns|."""
-        real, imag = sp.Integer(1), sp.Integer(0)
-        for p, q, k in zip(self._symbols.p, self._symbols.q, turns, strict=True):
-            y = -q if k > 0 else q
-            for _ in range(abs(k)):
-                real, imag = sp.expand(real * p - imag * y), sp.expand(real * y + imag * p)
-        return real, imag
 
     def _form(self, form: str) -> dict[sp.Symbol, sp.Expr]:
         if form not in FORMS:

@@ -66,12 +66,9 @@ def _polar_wave(exponents: tuple[int, ...], deviations: list[sp.Expr], views: Vi
 def _cartesian_wave(exponents: tuple[int, ...], views: Views, symbols: Symbols) -> Complex:
     """With A = ½ (p − iq) and its own fast angle apart: the slow factor times cos and sin of that angle."""
     own = turns(exponents)
-    real, imag, size = sp.Integer(1), sp.Integer(0), sp.Integer(1)
-    for j, (p, q) in enumerate(zip(symbols.p, symbols.q, strict=True)):
-        size *= (p**2 + q**2) ** min(exponents[2 * j], exponents[2 * j + 1])
-        y = -q if own[j] > 0 else q
-        for _ in range(abs(own[j])):
-            real, imag = sp.expand(real * p - imag * y), sp.expand(real * y + imag * p)
+    pairs = zip(symbols.p, symbols.q, exponents[::2], exponents[1::2], strict=False)
+    size = sp.Mul(*((p**2 + q**2) ** min(up, down) for p, q, up, down in pairs))
+    real, imag = views.phase_factor(own)
     angle = views.angle(own)
     cosine, sine = sp.cos(angle), sp.sin(angle)
     return size * (real * cosine - imag * sine), size * (real * sine + imag * cosine)

@@ -13,6 +13,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping
 from fractions import Fraction
 from math import isqrt, prod
+from numbers import Rational, Real
 from typing import Any
 
 import sympy as sp
@@ -24,7 +25,7 @@ from multiscale.algebra.ring import IMAGINARY, RingSpec
 from multiscale.algebra.sympy_ring import SympyRing
 from multiscale.errors import ProblemError, UnsupportedTermError
 
-__all__ = ["IMAGINARY_UNIT", "Reader", "decimals", "unsupported"]
+__all__ = ["IMAGINARY_UNIT", "Reader", "decimals", "given_expression", "unsupported"]
 
 IMAGINARY_UNIT = sp.Symbol(IMAGINARY)
 """Stands for i inside expressions that are known to be real as a whole, such as phasor forms of drives."""
@@ -33,6 +34,17 @@ IMAGINARY_UNIT = sp.Symbol(IMAGINARY)
 def unsupported(term: object, reason: str, remedy: str) -> UnsupportedTermError:
     """The one form of an error about a term."""
     return UnsupportedTermError(f"term {term}: {reason}. {remedy}")
+
+
+def given_expression(x: Any) -> sp.Expr | None:
+    """A value that a user gave, a SymPy expression or a number; None for anything else, since text is never read."""
+    if isinstance(x, sp.Expr):
+        return x
+    if isinstance(x, bool) or not isinstance(x, Real):
+        return None
+    if isinstance(x, Rational):
+        return sp.Rational(int(x.numerator), int(x.denominator))
+    return sp.Float(x)
 
 
 def decimals(x: sp.Expr) -> sp.Expr:

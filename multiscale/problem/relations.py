@@ -15,7 +15,7 @@ from typing import Any
 import sympy as sp
 
 from multiscale.errors import ProblemError, ResonanceError
-from multiscale.problem.reading import decimals
+from multiscale.problem.reading import decimals, given_expression
 
 __all__ = ["Detuning", "Relations", "detuning_of", "relation_pairs", "relations_of", "taylor"]
 
@@ -148,11 +148,10 @@ def relation_pairs(given: Any) -> tuple[tuple[sp.Expr, sp.Expr], ...]:
 
 
 def _expression(x: Any) -> sp.Expr:
-    if isinstance(x, sp.Expr):
-        return decimals(x)
-    if isinstance(x, int | float) and not isinstance(x, bool):
-        return sp.Integer(x) if isinstance(x, int) else decimals(sp.Float(x))
-    raise ProblemError(f"{x!r} in a resonance is a {type(x).__name__}: expected a SymPy expression or a number")
+    value = given_expression(x)
+    if value is None:
+        raise ProblemError(f"{x!r} in a resonance is a {type(x).__name__}: expected a SymPy expression or a number")
+    return decimals(value)
 
 
 def _solved(

@@ -20,6 +20,7 @@ from multiscale.algebra.quotient import Quotient
 from multiscale.errors import EvaluationError, MultiscaleError, ProblemError, UnsupportedTermError
 from multiscale.expansion import Expansion
 from multiscale.expressions import Writer
+from multiscale.problem.reading import given_expression
 from multiscale.response.orbits.leading import check_single, parts
 
 __all__ = ["LimitCycle", "limit_cycles", "positive_roots"]
@@ -125,10 +126,10 @@ def _values(
                 f"{key!r} is no parameter of the problem: expected {', '.join(named) or 'none'}"
                 + (hint and f"; {hint}")
             )
-        try:
-            values[symbol] = sp.sympify(value, strict=True)
-        except sp.SympifyError:
-            raise EvaluationError(f"{key} = {value!r}: expected a number or a SymPy expression") from None
+        expression = given_expression(value)
+        if expression is None:
+            raise EvaluationError(f"{key} = {value!r}: expected a number or a SymPy expression")
+        values[symbol] = expression
     return values
 
 

@@ -13,6 +13,7 @@ from multiscale.expressions import Writer
 from multiscale.forces.polynomial import Term
 from multiscale.problem import Problem
 from multiscale.problem.canonical import Canonical
+from multiscale.problem.reading import decimals, given_expression
 from multiscale.response.orbits.leading import Leading, check_single, leading_damping
 from multiscale.response.orbits.limit_cycles import positive_roots
 from multiscale.symbols import symbols_of
@@ -87,14 +88,10 @@ def read_statement(problem: Problem, order: int, amplitude: Any, root: int | Non
 
 
 def _amplitude(given: Any) -> sp.Expr:
-    try:
-        value = sp.sympify(given, strict=True)
-    except sp.SympifyError:
-        value = None
-    if not isinstance(value, sp.Expr) or value.is_positive is False or value.has(sp.I, sp.nan, sp.oo):
+    value = given_expression(given)
+    if value is None or value.is_positive is False or value.has(sp.I, sp.nan, sp.oo):
         raise ProblemError(f"amplitude={given!r}: expected a positive number or a symbol")
-    # A float is taken as the decimal it prints as.
-    return value.xreplace({x: sp.Rational(str(x)) for x in value.atoms(sp.Float)})
+    return decimals(value)
 
 
 def _chosen(roots: list[sp.Expr], root: int | None) -> sp.Expr:
