@@ -1,0 +1,1 @@
+"""Expansions as text and back: exact, versioned, and read without ever evaluating a string."""

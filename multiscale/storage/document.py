@@ -1,0 +1,232 @@
+"""An expansion as one JSON text.
+
+    {"format": …, "version": 1, "library": …, "expressions": [nodes], "problem": {references},
+     "order": N, "amplitude": …, "tolerance": …, "generators": [names], "reciprocals": …, "fields": …, "changes": …,
+     "digest": SHA-256 of the rest}
+
+The problem is stored as stated and the levels as exact polynomials; everything else follows from these two.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import warnings
+from collections.abc import Mapping
+from typing import TYPE_CHECKING, Any
+
+import sympy as sp
+
+from multiscale.algebra.polynomial import Frozen
+from multiscale.computed import Snapshot, restore
+from multiscale.errors import MultiscaleError, OrderingWarning, StorageError
+from multiscale.expansion import Expansion
+from multiscale.problem import Problem
+from multiscale.storage.expressions import Reader, Writer
+from multiscale.storage.limits import CHARACTERS, checked_name, integer, refuse, sequence
+from multiscale.storage.polynomials import PolynomialReader, PolynomialWriter
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable
+
+__all__ = ["from_json", "to_json"]
+
+FORMAT = "multiscale expansion"
+VERSION = 1
+
+
+def to_json(expansion: Expansion) -> str:
+    """An expansion as text: exact, the same on every run, and readable by `from_json` in any later version.
+
+    Parameters
+    ----------
+    expansion : Expansion
+
+    Returns
+    -------
+    str
+        JSON. The problem is stored as it was stated, the levels as exact polynomials.
+
+    Raises
+    ------
+    StorageError
+        The equations hold something that has no exact text, such as a Python function.
+
+    Examples
+    --------
+    >>> import sympy as sp, multiscale as ms
+    >>> t, eps = sp.symbols("t epsilon", positive=True)
+    >>> u = sp.Function("u")(t)
+    >>> result = ms.expand(ms.Problem(u.diff(t, 2) + u + eps*u**3, u, small=eps), order=2)
+    >>> text = ms.to_json(result)
+    >>> ms.from_json(text) == result
+    True
+    >>> ms.extend(ms.from_json(text), 3).frequency_corrections()[3]
+    123*a**6/8192
+    """
+    from multiscale import __version__
+
+    expressions, polynomials = Writer(), PolynomialWriter()
+    snapshot = expansion.computation.snapshot()
+    document = {
+        "format": FORMAT,
+        "version": VERSION,
+        "library": __version__,
+        "problem": _written_problem(expansion.problem, expressions),
+        "order": expansion.order,
+        "amplitude": expansion.amplitude,
+        "tolerance": float(expansion.tolerance).hex(),
+        "reciprocals": [[name, polynomials.rows(p)] for name, p in snapshot.reciprocals],
+        "fields": [[polynomials.rows(p) for p in level] for level in snapshot.fields],
+        "changes": [[polynomials.rows(p) for p in level] for level in snapshot.changes],
+    }
+    document |= {"generators": polynomials.names, "expressions": expressions.nodes}
+    return _spelled(document | {"digest": _digest(document)})
+
+
+def _spelled(document: Mapping[str, Any]) -> str:
+    return json.dumps(document, separators=(",", ":"), sort_keys=True)
+
+
+def _digest(document: Mapping[str, Any]) -> str:
+    """Tells damage, not malice: whoever alters a text can renew it."""
+    return hashlib.sha256(_spelled(document).encode()).hexdigest()
+
+
+def _written_problem(problem: Problem, into: Writer) -> dict[str, Any]:
+    written: dict[str, Any] = {
+        "equations": [into.node(x) for x in problem.equations],
+        "unknowns": [into.node(x) for x in problem.unknowns],
+        "resonances": [[into.node(x), into.node(y)] for x, y in problem.resonances],
+    }
+    if problem.ordering is None:
+        written["small"] = into.node(problem.small)
+    else:
+        written["ordering"] = [[into.node(x), q] for x, q in problem.ordering.items()]
+    return written
+
+
+def from_json(text: str) -> Expansion:
+    """The expansion that `to_json` wrote.
+
+    Nothing in the text is evaluated: it names functions from a fixed list and integers, all bounded in size.
+
+    Parameters
+    ----------
+    text : str
+
+    Returns
+    -------
+    Expansion
+        Equal to the stored one; `extend` goes on from it.
+
+    Raises
+    ------
+    StorageError
+        The text is not a stored expansion, is of a later version, or was damaged.
+
+    Examples
+    --------
+    >>> import multiscale as ms
+    >>> ms.from_json("{}")
+    Traceback (most recent call last):
+    multiscale.errors.StorageError: the text is not a stored expansion of this library: it has no field 'format'
+    """
+    document = _document(text)
+    expressions, polynomials = Reader(_field(document, "expressions")), PolynomialReader(_field(document, "generators"))
+    order = integer(_field(document, "order"), "the order", 0, 10_000)
+    amplitude = _field(document, "amplitude")
+    if amplitude not in ("fundamental", "peak"):
+        raise refuse(f"amplitude is {str(amplitude)[:40]!r}")
+    snapshot = _snapshot(document, polynomials)
+    if len(snapshot.fields) != order + 1 or len(snapshot.changes) != order:
+        raise refuse(f"order {order} with {len(snapshot.fields)} levels")
+    try:
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore", OrderingWarning)  # given when the problem was stated
+            problem = _read_problem(_field(document, "problem"), expressions)
+        computation = restore(problem.canonical(max(order, 1)), snapshot)
+    except StorageError:
+        raise
+    except MultiscaleError as error:
+        raise refuse(f"its problem is not valid: {error}") from error
+    except (KeyError, ValueError, TypeError, IndexError, AttributeError, ZeroDivisionError) as error:
+        raise refuse(f"problem and levels do not fit together ({type(error).__name__}: {error})") from error
+    return Expansion(problem, order, amplitude, _tolerance(document), computation=computation)
+
+
+def _document(text: Any) -> Mapping[str, Any]:
+    if not isinstance(text, str):
+        raise StorageError(f"from_json was given a {type(text).__name__}: pass the text that to_json returned")
+    if len(text) > CHARACTERS:
+        raise refuse(f"{len(text)} characters, more than {CHARACTERS}")
+    try:
+        document = json.loads(text, parse_constant=_no_constant)
+    except (ValueError, RecursionError) as error:
+        raise refuse(f"it is not JSON ({error})") from None
+    if not isinstance(document, dict):
+        raise refuse("it is no JSON object")
+    if _field(document, "format") != FORMAT:
+        raise refuse(f"its format is {str(document['format'])[:40]!r}, expected {FORMAT!r}")
+    version = integer(_field(document, "version"), "the version", 1)
+    if version > VERSION:
+        raise StorageError(
+            f"the text is of version {version}, this library reads up to version {VERSION}: install a newer one"
+        )
+    if _field(document, "digest") != _digest({name: x for name, x in document.items() if name != "digest"}):
+        raise refuse("its digest does not fit, so it was damaged on the way")
+    return document
+
+
+def _no_constant(name: str) -> Any:
+    raise ValueError(f"{name} is not a number")
+
+
+def _field(document: Mapping[str, Any], name: str) -> Any:
+    if not isinstance(document, dict) or name not in document:
+        raise refuse(f"it has no field {name!r}")
+    return document[name]
+
+
+def _tolerance(document: Mapping[str, Any]) -> float:
+    try:
+        value = float.fromhex(_field(document, "tolerance"))
+    except (TypeError, ValueError, OverflowError):
+        raise refuse("the tolerance is not a hexadecimal number") from None
+    if not 0 <= value < 1e6:
+        raise refuse(f"the tolerance is {value}")
+    return value
+
+
+def _snapshot(document: Mapping[str, Any], polynomials: PolynomialReader) -> Snapshot:
+    def levels(name: str) -> tuple[tuple[Frozen, ...], ...]:
+        return tuple(_frozen(sequence(x, name), polynomials) for x in sequence(_field(document, name), name))
+
+    reciprocals = []
+    for pair in sequence(_field(document, "reciprocals"), "the reciprocals"):
+        name, rows = sequence(pair, "a reciprocal", 2)
+        if not isinstance(name, str):
+            raise refuse(f"{str(name)[:40]!r} where the name of a reciprocal was expected")
+        reciprocals.append((name, polynomials.polynomial(rows)))
+    return Snapshot(tuple(reciprocals), levels("fields"), levels("changes"))
+
+
+def _frozen(rows: Iterable[Any], polynomials: PolynomialReader) -> tuple[Frozen, ...]:
+    return tuple(polynomials.polynomial(x) for x in rows)
+
+
+def _read_problem(stored: Any, expressions: Reader) -> Problem:
+    def several(name: str) -> list[sp.Expr]:
+        return [expressions.scalar(k) for k in sequence(_field(stored, name), name)]
+
+    unknowns = several("unknowns")
+    for u in unknowns:
+        checked_name(getattr(u.func, "__name__", ""))
+    pairs = [sequence(p, "a relation", 2) for p in sequence(_field(stored, "resonances"), "the relations")]
+    options: dict[str, Any] = {"resonances": {expressions.scalar(x): expressions.scalar(y) for x, y in pairs}}
+    if "ordering" in stored:
+        orders = [sequence(p, "an order", 2) for p in sequence(stored["ordering"], "the ordering")]
+        options["ordering"] = {expressions.scalar(x): integer(q, "an order", 0, 1000) for x, q in orders}
+    else:
+        options["small"] = expressions.scalar(_field(stored, "small"))
+    return Problem(several("equations"), unknowns, **options)

@@ -1,0 +1,62 @@
+"""What a stored text may hold at most: everything is checked before it is built, so that no text can exhaust memory.
+
+The limits are far above what an expansion needs and far below what a machine has.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+from multiscale.errors import StorageError
+
+__all__ = ["BITS", "CHARACTERS", "DEPTH", "NODES", "checked_name", "integer", "refuse", "sequence", "spelled"]
+
+CHARACTERS = 500_000_000
+NODES = 1_000_000
+DEPTH = 200
+BITS = 1_000_000
+_DECIMAL = 4000  # Python refuses decimal integers of more digits; longer ones are written in base 16.
+_NAME = 100
+
+
+def refuse(what: str) -> StorageError:
+    """The error for a text that is not a stored expansion."""
+    return StorageError(f"the text is not a stored expansion of this library: {what}")
+
+
+def spelled(value: int) -> int | str:
+    """An integer as JSON writes it."""
+    return int(value) if abs(value) < 2**53 else str(value) if value.bit_length() < 3 * _DECIMAL else hex(value)
+
+
+def integer(x: Any, what: str, least: int | None = None, most: int | None = None) -> int:
+    """The integer of its JSON form, within bounds."""
+    if isinstance(x, str) and len(x) <= BITS // 4:
+        digits = x.removeprefix("-")
+        if digits.startswith("0x") and all(c in "0123456789abcdef" for c in digits[2:]) and len(digits) > 2:
+            x = int(x, 16)
+        elif digits.isascii() and digits.isdigit() and len(digits) <= _DECIMAL:
+            x = int(x)
+    if isinstance(x, bool) or not isinstance(x, int):
+        raise refuse(f"{what} is {str(x)[:40]!r}, expected an integer")
+    if (least is not None and x < least) or (most is not None and x > most):
+        raise refuse(f"{what} is {str(x)[:40]}, outside {least} … {most}")
+    return x
+
+
+def sequence(x: Any, what: str, length: int | None = None) -> Sequence[Any]:
+    """A JSON array, of a given length where one is named."""
+    if not isinstance(x, list) or (length is not None and len(x) != length):
+        size = "" if length is None else f" of length {length}"
+        raise refuse(f"{what} is {str(x)[:40]!r}, expected an array{size}")
+    return x
+
+
+def checked_name(x: Any) -> str:
+    """A name of a symbol or function: printable, short, and free of what could be taken for code."""
+    if not isinstance(x, str) or not x or len(x) > _NAME or not x.isprintable():
+        raise refuse(f"the name {str(x)[:40]!r} is not a short printable text")
+    if any(c in "()[];:=\"'`@#" for c in x) or "__" in x:
+        raise refuse(f"the name {x!r} has characters that no stored symbol has")
+    return x

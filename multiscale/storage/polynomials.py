@@ -1,0 +1,62 @@
+"""Polynomials by name as rows of integers: [numerator, denominator, name, exponent, name, exponent, …].
+
+Names are referred to by their place in one table for the whole text.
+"""
+
+from __future__ import annotations
+
+from fractions import Fraction
+from typing import Any
+
+from multiscale.algebra.polynomial import Frozen
+from multiscale.storage.limits import NODES, integer, refuse, sequence, spelled
+
+__all__ = ["PolynomialReader", "PolynomialWriter"]
+
+
+class PolynomialWriter:
+    """Writes polynomials and collects the names they use."""
+
+    def __init__(self) -> None:
+        self.names: list[str] = []
+        self._index: dict[str, int] = {}
+
+    def rows(self, polynomial: Frozen) -> list[list[Any]]:
+        return [
+            [spelled(c.numerator), spelled(c.denominator), *(part for g, e in m for part in (self._place(g), e))]
+            for m, c in polynomial
+        ]
+
+    def _place(self, name: str) -> int:
+        if name not in self._index:
+            self._index[name] = len(self.names)
+            self.names.append(name)
+        return self._index[name]
+
+
+class PolynomialReader:
+    """The polynomials of rows; every name must be one of `known` or come from `admit`."""
+
+    def __init__(self, names: Any) -> None:
+        names = sequence(names, "the table of generators")
+        if len(names) > NODES or not all(isinstance(x, str) for x in names) or len(set(names)) != len(names):
+            raise refuse("the table of generators does not hold distinct names")
+        self._names: list[str] = list(names)
+
+    def polynomial(self, rows: Any) -> Frozen:
+        terms = [self._term(sequence(row, "a term")) for row in sequence(rows, "a polynomial")]
+        if len({m for m, _ in terms}) != len(terms):
+            raise refuse("a polynomial has the same monomial twice")
+        return tuple(terms)
+
+    def _term(self, row: Any) -> tuple[tuple[tuple[str, int], ...], Fraction]:
+        if len(row) < 2 or len(row) % 2:
+            raise refuse(f"{str(row)[:40]} where a term was expected")
+        coefficient = Fraction(integer(row[0], "a numerator"), integer(row[1], "a denominator", 1))
+        factors = tuple(
+            (self._names[integer(k, "a generator", 0, len(self._names) - 1)], integer(e, "an exponent", 1, 10_000))
+            for k, e in zip(row[2::2], row[3::2], strict=True)
+        )
+        if not coefficient or len({g for g, _ in factors}) != len(factors):
+            raise refuse(f"{str(row)[:40]} is not a term in lowest form")
+        return factors, coefficient

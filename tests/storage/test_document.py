@@ -1,0 +1,198 @@
+"""Expansions as text: the way back is exact, and nothing but such a text is read."""
+
+from __future__ import annotations
+
+import contextlib
+import json
+import random
+
+import pytest
+import sympy as sp
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+import multiscale as ms
+from multiscale.storage.document import _digest
+from multiscale.storage.expressions import Reader, Writer
+
+t = sp.Symbol("t", real=True)
+eps, w0, mu, alpha, f, Omega = sp.symbols("epsilon omega_0 mu alpha f Omega", positive=True)
+sigma = sp.Symbol("sigma", real=True)
+u, v = sp.Function("u")(t), sp.Function("v")(t)
+oscillator = u.diff(t, 2) + w0**2 * u
+
+PROBLEMS = {
+    "symbolic": lambda: ms.Problem(oscillator + 2 * eps * mu * u.diff(t) + eps * alpha * u**3, u, small=eps),
+    "driven": lambda: ms.Problem(
+        oscillator + eps * u**2 / 3 - eps * f * sp.cos(Omega * t), u, small=eps, resonances={Omega: w0 + eps * sigma}
+    ),
+    "by square": lambda: ms.Problem(
+        oscillator - eps * f * sp.cos(Omega * t + sp.pi / 7), u, small=eps, resonances={Omega**2: w0**2 + eps * sigma}
+    ),
+    "ordering": lambda: ms.Problem(u.diff(t, 2) + 2 * u + mu * u.diff(t) + u**3, u, ordering={u: 1, mu: 2}),
+    "pair": lambda: ms.Problem(
+        [u.diff(t, 2) + u + 2 * eps * u * v, v.diff(t, 2) + w0**2 * v + eps * u**2],
+        [u, v],
+        small=eps,
+        resonances={v: 2 + eps * sigma},
+    ),
+    "floats": lambda: ms.Problem(u.diff(t, 2) + 1.7 * u + eps * 0.1 * u**3, u, small=eps),
+    "slow": lambda: ms.Problem(oscillator + eps * sp.exp(-eps * t) * u**3, u, small=eps),
+    "parametric": lambda: ms.Problem(u.diff(t, 2) + u + eps * sp.cos(2 * t) * u + eps * alpha * u**3, u, small=eps),
+}
+
+
+@pytest.fixture(scope="module", params=PROBLEMS)
+def expansion(request):
+    return ms.expand(PROBLEMS[request.param](), 2)
+
+
+def test_the_way_back_is_exact(expansion):
+    text = ms.to_json(expansion)
+    again = ms.from_json(text)
+    assert again == expansion
+    assert again.problem == expansion.problem
+    assert again.slow_flow.polar == expansion.slow_flow.polar
+    assert ms.to_json(again) == text
+
+
+def test_a_stored_expansion_extends(expansion):
+    assert ms.extend(ms.from_json(ms.to_json(expansion)), 3) == ms.extend(expansion, 3)
+
+
+def test_long_integers_are_kept():
+    tall = sp.Integer(7) ** 6000
+    result = ms.expand(ms.Problem(u.diff(t, 2) + u + eps * u**3 / tall, u, small=eps), 2)
+    assert ms.from_json(ms.to_json(result)) == result
+
+
+@pytest.mark.parametrize(
+    "x",
+    [
+        sp.Float("1.25", 40) * t,
+        sp.sin(w0) / sp.cos(mu) + sp.exp(-mu) * sp.log(w0),
+        sp.Piecewise((u, u > 1), (0, True)),
+        sp.Abs(u.diff(t)) * sp.sign(u.diff(t)),
+        sp.sqrt(2) * sp.pi + sp.I * sp.E,
+        sp.Derivative(sp.Function("k")(eps * t), t),
+        sp.Max(u - 1, 0) + sp.Heaviside(u) + sp.atan2(u, v),
+        sp.Integral(sp.Function("k")(sigma), (sigma, 0, t)),
+    ],
+    ids=str,
+)
+def test_expressions_come_back(x):
+    writer = Writer()
+    place = writer.node(x)
+    assert Reader(json.loads(json.dumps(writer.nodes))).expression(place) == x
+
+
+def test_what_has_no_text_is_named():
+    odd = sp.Symbol("import os; x()", positive=True)
+    with pytest.raises(ms.StorageError, match="import os"):
+        ms.to_json(ms.expand(ms.Problem(u.diff(t, 2) + odd**2 * u + eps * u**3, u, small=eps), 1))
+    with pytest.raises(ms.StorageError, match="LambertW"):
+        Writer().node(sp.LambertW(w0))
+
+
+@pytest.fixture(scope="module")
+def document():
+    return json.loads(ms.to_json(ms.expand(PROBLEMS["driven"](), 2)))
+
+
+def _renewed(document, **changes):
+    changed = {name: x for name, x in (document | changes).items() if name != "digest" and x is not ...}
+    return json.dumps(changed | {"digest": _digest(changed)})
+
+
+@pytest.mark.parametrize(
+    ("changes", "words"),
+    [
+        ({"version": 2}, "version 2"),
+        ({"version": "x"}, "version"),
+        ({"version": True}, "version"),
+        ({"format": "other"}, "format"),
+        ({"order": 7}, "order 7"),
+        ({"order": ...}, "order"),
+        ({"amplitude": "rms"}, "amplitude"),
+        ({"tolerance": "nan"}, "tolerance"),
+        ({"generators": ["a", "a"]}, "distinct"),
+        ({"generators": []}, "generator"),
+        ({"expressions": [["eval", "1"]]}, "unknown kind"),
+        ({"expressions": [["call", "system", 0]]}, "reference"),
+        ({"expressions": [["int", 1], ["call", "__import__", 0]]}, "cannot be made"),
+        ({"expressions": [["sym", "__import__('os')", {}]]}, "characters"),
+        ({"expressions": [["sym", "x", {"real": 1}]]}, "assumptions"),
+        ({"expressions": [["sym", "x", {"wise": True}]]}, "assumption"),
+        ({"expressions": [["fun", "f();g", {}]]}, "characters"),
+        ({"expressions": [["int", "9" * 5000]]}, "integer"),
+        ({"expressions": [["int", "0x"]]}, "integer"),
+        ({"expressions": [["rat", 1, 0]]}, "denominator"),
+        ({"expressions": [["add", 0]]}, "later"),
+        ({"expressions": [["int", 2], ["int", 10**9], ["pow", 0, 1]]}, "excessive"),
+        ({"expressions": [["int", 10**9], ["call", "gamma", 0]]}, "gamma"),
+        ({"expressions": [["int", 3], *[["mul", k, k] for k in range(60)]]}, "excessive|length"),
+        ({"expressions": [["sym", "x", {}], *[["call", "sin", k] for k in range(300)]]}, "depth"),
+        ({"expressions": [["sym", "x", {}], *[["add", k, k, 0] for k in range(60)]]}, "length"),
+        ({"expressions": [["int", 1], ["int", 0], ["int", -1], ["pow", 1, 2]]}, "no value"),
+        ({"expressions": {}}, "array"),
+        ({"problem": []}, "unknowns"),
+    ],
+    ids=lambda x: str(x)[:50],
+)
+def test_hostile_texts_are_refused(document, changes, words):
+    with pytest.raises(ms.StorageError, match=words):
+        ms.from_json(_renewed(document, **changes))
+
+
+@pytest.mark.parametrize("text", ["", "[", "[]", "null", "3", "NaN", "[" * 100_000, '{"format": NaN}'])
+def test_what_is_not_such_json_is_refused(text):
+    with pytest.raises(ms.StorageError):
+        ms.from_json(text)
+
+
+@pytest.mark.parametrize("given", [None, b"{}", 3, {}])
+def test_only_text_is_read(given):
+    with pytest.raises(ms.StorageError, match="text"):
+        ms.from_json(given)
+
+
+def test_damage_is_told(document):
+    damaged = json.dumps(document | {"tolerance": (0.25).hex()})
+    with pytest.raises(ms.StorageError, match="digest"):
+        ms.from_json(damaged)
+
+
+def _places(x, path=()):
+    yield path
+    if isinstance(x, dict | list):
+        for key in x if isinstance(x, dict) else range(len(x)):
+            yield from _places(x[key], (*path, key))
+
+
+STRANGE = [None, True, -1, 10**30, "x", "-5", [], [[]], {}, 0, 1, 2.5, "@z0", "0xff", [1, 2, 3]]
+
+
+@settings(max_examples=300, deadline=None, derandomize=True)
+@given(seed=st.integers(0, 10**9))
+def test_fuzzed_texts_are_read_or_refused(document, seed):
+    """One part of the text replaced and the digest renewed: an expansion or a `StorageError`, nothing else."""
+    random_ = random.Random(seed)
+    changed = json.loads(json.dumps({name: x for name, x in document.items() if name != "digest"}))
+    path = random_.choice([p for p in _places(changed) if p])
+    place = changed
+    for key in path[:-1]:
+        place = place[key]
+    place[path[-1]] = random_.choice(STRANGE)
+    with contextlib.suppress(ms.StorageError):
+        assert isinstance(ms.from_json(_renewed(changed)), ms.Expansion)
+
+
+@settings(max_examples=100, deadline=None, derandomize=True)
+@given(position=st.integers(0, 10**6), letter=st.characters())
+def test_altered_letters_are_told(document, position, letter):
+    text = json.dumps(document, separators=(",", ":"))
+    position %= len(text)
+    altered = text[:position] + letter + text[position + 1 :]
+    if altered != text:
+        with pytest.raises(ms.StorageError):
+            ms.from_json(altered)
