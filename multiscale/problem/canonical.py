@@ -239,7 +239,7 @@ def with_exact_oscillators(equation: sp.Expr, layout: Layout) -> sp.Expr:
     terms = []
     for term in sp.Add.make_args(sp.expand(equation)):
         jets = [s for s in term.free_symbols if s in layout.jets]
-        linear = len(jets) == 1 and layout.jets[jets[0]][1] != 1 and sp.degree(term, jets[0]) == 1
+        linear = len(jets) == 1 and layout.jets[jets[0]][1] != 1 and jets[0] not in (term / jets[0]).free_symbols
         weak = linear and layout.small in term.free_symbols and not layout.ordered
         terms.append(decimals(term) if linear and not weak else term)
     return sp.Add(*terms)

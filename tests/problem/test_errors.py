@@ -38,6 +38,11 @@ REFUSED = {
         ms.UnsupportedTermError,
         r"u\(t\) stands in a denominator",
     ),
+    "unknown in denominator beside decimals": (
+        lambda: small(u.diff(t, 2) + 1.7 * u + eps * 0.1 / u),
+        ms.UnsupportedTermError,
+        r"u\(t\) stands in a denominator",
+    ),
     "small in denominator": (
         lambda: small(linear + u**2 / eps),
         ms.UnsupportedTermError,
