@@ -20,6 +20,9 @@ from multiscale.problem import Problem
 from multiscale.slow_flow import SlowFlow
 
 if TYPE_CHECKING:
+    from multiscale.fitting.model import Fit, fit
+    from multiscale.fitting.response import ResponseModel, response_model
+    from multiscale.fitting.ring_down import RingDownModel, ring_down_model
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
@@ -42,6 +45,7 @@ __all__ = [
     "Equilibrium",
     "EvaluationError",
     "Expansion",
+    "Fit",
     "Jump",
     "Level",
     "LimitCycle",
@@ -55,6 +59,8 @@ __all__ = [
     "ProblemError",
     "ResonanceError",
     "Response",
+    "ResponseModel",
+    "RingDownModel",
     "SlowFlow",
     "SmallDivisorWarning",
     "Special",
@@ -67,12 +73,15 @@ __all__ = [
     "equilibria",
     "expand",
     "extend",
+    "fit",
     "frequency_response",
     "from_json",
     "harmonics",
     "limit_cycles",
     "observable",
     "periodic_series",
+    "response_model",
+    "ring_down_model",
     "threshold",
     "to_json",
     "transition_curves",
@@ -82,26 +91,32 @@ _LATER = {
     "Branch": "response.steady.branches",
     "CriticalDrive": "response.steady.critical_drive",
     "Equilibrium": "response.steady.equilibria",
+    "Fit": "fitting.model",
     "Jump": "response.steady.jumps",
     "LimitCycle": "response.orbits.limit_cycles",
     "Observable": "response.observable",
     "Peak": "response.steady.peak",
     "PeriodicSeries": "response.orbits.periodic_series",
     "Response": "response.steady.frequency_response",
+    "ResponseModel": "fitting.response",
+    "RingDownModel": "fitting.ring_down",
     "Special": "response.steady.sweep",
     "backbone": "response.steady.backbone",
     "critical_drive": "response.steady.critical_drive",
     "effective_cubic": "response.steady.backbone",
     "effective_damping": "response.steady.backbone",
     "equilibria": "response.steady.equilibria",
+    "fit": "fitting.model",
     "frequency_response": "response.steady.frequency_response",
     "from_json": "storage.document",
     "harmonics": "response.observable",
     "limit_cycles": "response.orbits.limit_cycles",
     "observable": "response.observable",
     "periodic_series": "response.orbits.periodic_series",
-    "to_json": "storage.document",
+    "response_model": "fitting.response",
+    "ring_down_model": "fitting.ring_down",
     "threshold": "response.tongues.transition_curves",
+    "to_json": "storage.document",
     "transition_curves": "response.tongues.transition_curves",
 }
 

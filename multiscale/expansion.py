@@ -180,16 +180,19 @@ class Expansion:
     def __reduce__(self) -> tuple[Any, ...]:
         return _rebuilt, (self.problem, self.order, self.amplitude, self.tolerance, self.computation.snapshot())
 
-    def to_numpy(self, derivative: int = 0) -> NumpyFunction:
-        """The unknowns (or their first time derivative) from a slow state: f(t, y, *parameters), shape (unknowns,) + B.
+    def to_numpy(self, derivative: int = 0, wrt: str | None = None) -> NumpyFunction:
+        """The unknowns (or a time derivative of them) from a slow state: f(t, y, *parameters), shape (unknowns,) + B.
 
-        y is Cartesian in the rotating frame, as in ``slow_flow.to_numpy("cartesian")``.
+        y is Cartesian in the rotating frame, as in ``slow_flow.to_numpy("cartesian")``. With `wrt` "state" or
+        "parameters" it is the Jacobian by these, at fixed time: (unknowns, n) + B.
         """
         from multiscale.codegen.functions import displacement_function
 
         if derivative not in (0, 1, 2):
             raise MultiscaleError(f"derivative is {derivative!r}: expected 0, 1 or 2")
-        return displacement_function(self.problem, self.computation, derivative)
+        if wrt not in (None, "state", "parameters"):
+            raise MultiscaleError(f"wrt is {wrt!r}: expected None, 'state' or 'parameters'")
+        return displacement_function(self.problem, self.computation, derivative, wrt)
 
     def frequency_to_numpy(self, mode: int = 0) -> NumpyFunction:
         """ω at a slow state y (Cartesian in the rotating frame): f(t, y, *parameters), shape B."""

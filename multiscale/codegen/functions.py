@@ -161,18 +161,24 @@ def _jacobian(program: Program, outputs: list[Node], inputs: Sequence[str]) -> l
     return [column[row] for row in range(len(outputs)) for column in columns]
 
 
+def _differentiated(
+    program: Program, names: Sequence[str], outputs: list[Node], wrt: str | None, heading: str
+) -> tuple[list[Node], tuple[int, ...], str]:
+    """Outputs, their shape and their heading: as they are, or differentiated by the "state" or the "parameters"."""
+    if wrt is None:
+        return outputs, (len(outputs),), heading
+    inputs = names if wrt == "state" else [f"parameter {s.name}" for s in program.parameters]
+    heading += f": derivative by {'the state' if wrt == 'state' else 'the parameters'}, row by row"
+    return _jacobian(program, outputs, inputs), (len(outputs), len(inputs)), heading
+
+
 def slow_flow_function(problem: Problem, computation: Computation, form: str, wrt: str | None) -> NumpyFunction:
     """The slow flow in one form, or its Jacobian."""
     program = Program(problem, computation)
     build = {"polar": _polar, "cartesian": _cartesian, "complex": _complex}[form]
     names, outputs = build(program, computation)
     heading = f"Slow flow of order {computation.order}, {form} form"
-    shape: tuple[int, ...] = (len(outputs),)
-    if wrt is not None:
-        inputs = names if wrt == "state" else [f"parameter {s.name}" for s in program.parameters]
-        shape = (len(outputs), len(inputs))
-        outputs = _jacobian(program, outputs, inputs)
-        heading += f": derivative by {'the state' if wrt == 'state' else 'the parameters'}, row by row"
+    outputs, shape, heading = _differentiated(program, names, outputs, wrt, heading)
     return _function(problem, program, names, outputs, shape, f"{heading}.", is_complex=form == "complex")
 
 
@@ -196,8 +202,10 @@ def _real_field(
     return names, lambda series: program.summed(program.grouped(series, turns, half=True), moving, wave)[0]
 
 
-def displacement_function(problem: Problem, computation: Computation, derivative: int) -> NumpyFunction:
-    """The unknowns (or a time derivative of them) at time t from a slow state."""
+def displacement_function(
+    problem: Problem, computation: Computation, derivative: int, wrt: str | None = None
+) -> NumpyFunction:
+    """The unknowns (or a time derivative of them) at time t from a slow state, or the Jacobian of these."""
     program = Program(problem, computation)
     names, field = _real_field(program, computation)
     outputs = []
@@ -205,7 +213,9 @@ def displacement_function(problem: Problem, computation: Computation, derivative
         series = program.series((n, computation.field(n, k, derivative)) for n in range(computation.order + 1))
         outputs.append(field(series))
     what = ("Unknowns", "Velocities", "Accelerations")[derivative]
-    return _function(problem, program, names, outputs, (len(outputs),), f"{what} through order {computation.order}.")
+    heading = f"{what} through order {computation.order}"
+    outputs, shape, heading = _differentiated(program, names, outputs, wrt, heading)
+    return _function(problem, program, names, outputs, shape, f"{heading}.")
 
 
 def observable_function(

@@ -1,0 +1,1 @@
+"""Models of measurements, with their derivatives by parameters, for fitting by least squares."""
