@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from multiscale.fitting.model import Fit, fit
     from multiscale.fitting.response import ResponseModel, response_model
     from multiscale.fitting.ring_down import RingDownModel, ring_down_model
+    from multiscale.response.noise import NoisyFlow, noisy_flow
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
@@ -50,6 +51,7 @@ __all__ = [
     "Level",
     "LimitCycle",
     "MultiscaleError",
+    "NoisyFlow",
     "NumpyFunction",
     "Observable",
     "OrderingWarning",
@@ -78,6 +80,7 @@ __all__ = [
     "from_json",
     "harmonics",
     "limit_cycles",
+    "noisy_flow",
     "observable",
     "periodic_series",
     "response_model",
@@ -94,6 +97,7 @@ _LATER = {
     "Fit": "fitting.model",
     "Jump": "response.steady.jumps",
     "LimitCycle": "response.orbits.limit_cycles",
+    "NoisyFlow": "response.noise",
     "Observable": "response.observable",
     "Peak": "response.steady.peak",
     "PeriodicSeries": "response.orbits.periodic_series",
@@ -111,6 +115,7 @@ _LATER = {
     "from_json": "storage.document",
     "harmonics": "response.observable",
     "limit_cycles": "response.orbits.limit_cycles",
+    "noisy_flow": "response.noise",
     "observable": "response.observable",
     "periodic_series": "response.orbits.periodic_series",
     "response_model": "fitting.response",
