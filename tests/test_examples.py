@@ -50,3 +50,34 @@ def test_figures_are_written_where_matplotlib_is(study, result, tmp_path):
     pytest.importorskip("matplotlib")
     written = study["figures"](result, tmp_path)
     assert [path.stat().st_size > 10_000 for path in written] == [True, True]
+
+
+@pytest.fixture(scope="module")
+def loop():
+    module = runpy.run_path(str(DOCS / "examples" / "phase_locked_loop.py"))
+    result = module["expansion"]()
+    return module, result, module["by_slow_flow"](result), module["by_full_equation"]()
+
+
+def test_the_slow_flow_in_a_loop_follows_the_full_equation(loop):
+    """Through all transients; the frequency moves by 1.4e-3 in all."""
+    _, _, slow, full = loop
+    assert np.abs(slow.frequency - full.frequency).max() < 5e-5
+    assert np.ptp(full.frequency) > 1.3e-3
+
+
+def test_the_loop_settles_on_phase_resonance(loop):
+    module, result, slow, full = loop
+    ends = [*(start for start, _ in module["STEPS"][1:]), module["END"] + 1]
+    for (_, level), end in zip(module["STEPS"], ends, strict=True):
+        k = int(np.searchsorted(module["TIMES"], end)) - 1
+        frequency, amplitude = module["resonance"](result, level)
+        for run in (slow, full):
+            assert run.frequency[k - module["WINDOW"]] == pytest.approx(frequency, abs=3e-6)
+        assert slow.amplitude[k] == pytest.approx(amplitude, rel=2e-3)
+
+
+def test_the_comparison_of_the_loop_sees_a_wrong_coefficient(loop):
+    module, result, _, full = loop
+    wrong = module["by_slow_flow"](result, module["PARAMETERS"] | {"alpha": 0.75})
+    assert np.abs(wrong.frequency - full.frequency).max() > 8e-5
