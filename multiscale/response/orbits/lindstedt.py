@@ -22,10 +22,12 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
+from functools import partial
 from typing import Any
 
 from multiscale.errors import ProblemError
 from multiscale.response.orbits.waves import Waves
+from multiscale.response.orbits.waves.convolution import Convolution
 
 __all__ = ["Force", "Monomial", "Orbit", "periodic_orbit", "response_rate"]
 
@@ -59,6 +61,7 @@ class _Recursion:
     order: int
     shape: int
     over: int
+    lag: int
     fields: list[Any] = field(default_factory=list)
     slopes: dict[int, list[Any]] = field(default_factory=lambda: {1: [], 2: []})
     products: dict[tuple[int, ...], list[Any]] = field(default_factory=dict)
@@ -80,6 +83,7 @@ class _Recursion:
         self._file()
         factors = [self._factors(term)[0] for term in self.force]
         self.highest = max((j for jets in factors for j in jets), default=0)
+        self.convolutions: dict[tuple[int, ...], Convolution] = {}
         for jets in factors:
             self._register(jets)
         self.constants = [waves.constant(), *[waves.zero] * self.order]
@@ -104,9 +108,13 @@ class _Recursion:
 
     def _register(self, jets: tuple[int, ...]) -> None:
         if len(jets) > 1 and jets not in self.products:
-            for part in self._halves(jets):
+            halves = self._halves(jets)
+            for part in halves:
                 self._register(part)
             self.products[jets] = []
+            limit = partial(self.limit, degree=len(jets))
+            a, b = map(self.product, halves)
+            self.convolutions[jets] = Convolution(self.waves, a, b, limit, self.order, self.lag)
 
     @staticmethod
     def _halves(jets: tuple[int, ...]) -> tuple[tuple[int, ...], tuple[int, ...]]:
@@ -134,17 +142,7 @@ class _Recursion:
             below = self.slopes[1] if order == 2 else self.fields
             self.slopes[order].append(self.waves.derivative(below[level]))
         for jets, made in self.products.items():
-            limit = self.limit(level, len(jets))
-            a, b = (self.product(part) for part in self._halves(jets))
-            if limit < 0:
-                made.append(self.waves.zero)
-            elif a is b:
-                two = self.waves.scalar(2)
-                terms = [(two, a[i], a[level - i]) for i in range((level + 1) // 2)]
-                terms += [] if level % 2 else [(self.one, a[level // 2], a[level // 2])]
-                made.append(self.waves.products(terms, limit))
-            else:
-                made.append(self.waves.products([(self.one, a[i], b[level - i]) for i in range(level + 1)], limit))
+            made.append(self.convolutions[jets].level(level))
 
     def shorten(self, levels: int) -> None:
         """Forget everything from a level on."""
@@ -237,7 +235,7 @@ def periodic_orbit(
     Isolated, the last p coefficients of the amplitude are not determined and left out; the coefficients of the
     frequency from ε^{order−p+2} on may depend on them and are then not the right ones.
     """
-    work = _Recursion(waves, force, order, shape, square)
+    work = _Recursion(waves, force, order, shape, square, max(1, damping or 0))
     isolated = damping is not None and damping < order
     # Where no term acts below level p, h_{n−p} changes F_n directly; else the levels between are taken once more.
     direct = work.response(damping) if damping is not None and damping == min(t.power for t in force) else None
@@ -270,7 +268,7 @@ def periodic_orbit(
 
 def response_rate(waves: Waves, force: Force, level: int, square: int = 1) -> Any:
     """∂(sine of F_n)/∂h_{n−p}, p = `level` being the lowest power of ε: what an isolated orbit is divided by."""
-    work = _Recursion(waves, force, level, 0, square)
+    work = _Recursion(waves, force, level, 0, square, 1)
     return waves.first(work.response(level))[1]
 
 

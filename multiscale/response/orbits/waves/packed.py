@@ -18,6 +18,7 @@ from functools import partial
 from typing import Any
 
 from multiscale.response.orbits.waves.parts import Parts, low, shifted
+from multiscale.response.orbits.waves.runs import products_of_runs
 
 __all__ = ["PackedWaves", "Wave"]
 
@@ -46,6 +47,8 @@ class Wave:
 
 class PackedWaves:
     """`Waves` on FLINT polynomials; `step` is s, `square` is d."""
+
+    gathers = True
 
     def __init__(self, parts: Parts, step: int, square: int = 1) -> None:
         self._parts, self._step, self._square = parts, step, parts.scalar(-square)
@@ -127,6 +130,17 @@ class PackedWaves:
         last = behind - (offset == 0)
         # The mirror image of index r is index count − 1 − r until the sum is reversed.
         into.behind.append((c * sigma, (_window(polynomial, last, count, offset == 0), below)))
+
+    def runs(self, x: Sequence[Wave], y: Sequence[Wave], limits: Sequence[int]) -> list[Wave]:
+        offset, levels = products_of_runs(self._parts, self._step, self._square, x, y, limits)
+        # Not reduced unless it must be added up: the levels are summed with others soon.
+        return [
+            Wave(offset, *(self._unreduced(level[sign]) if sign in level else None for sign in (1, -1)))
+            for level in levels
+        ]
+
+    def _unreduced(self, terms: list[tuple[Any, Any]]) -> Any:
+        return terms[0][1] if len(terms) == 1 and terms[0][0] == 1 else self._parts.total(terms)
 
     def combination(self, terms: Sequence[tuple[Any, Wave]], limit: int) -> Wave:
         present = [(c, x) for c, x in terms if x.parts]

@@ -6,6 +6,9 @@ A part is (polynomial, denominator), of balls (polynomial, None); zero is None. 
     total(terms)           Σ scalar · part, over one denominator and reduced
     cut(x, first, count)   coefficients first … first + count − 1
     rebuilt(x, change)     the part whose numerators `change` makes of those of x
+    numerators(terms)      the coefficients of every scalar · part, and the denominator common to all
+    joined(line, below)    the part with these coefficients over a denominator
+    with_half_mean(…)      the same with the first coefficient halved
 """
 
 from __future__ import annotations
@@ -78,22 +81,44 @@ class ExactParts:
     @staticmethod
     def total(terms: Sequence[tuple[Any, Any]]) -> Any:
         """Σ scalar · part, reduced; None for zero."""
-        common = fmpz(1)
-        for c, (_, below) in terms:
-            common = common.lcm(below * c.q)
+        scaled, common = ExactParts._scaled(terms)
         above = fmpz_poly([0])
-        for c, (polynomial, below) in terms:
-            factor = c.p * (common // (below * c.q))
-            above = above + (polynomial if factor == 1 else polynomial * factor)
+        for polynomial in scaled:
+            above = above + polynomial
         if not above:
             return None
         shared = above.content().gcd(common)
         return (above, common) if shared == 1 else (above // shared, common // shared)
 
     @staticmethod
+    def _scaled(terms: Sequence[tuple[Any, Any]]) -> tuple[list[Any], Any]:
+        """The numerators over one denominator."""
+        common = fmpz(1)
+        for c, (_, below) in terms:
+            common = common.lcm(below * c.q)
+        scaled = []
+        for c, (polynomial, below) in terms:
+            factor = c.p * (common // (below * c.q))
+            scaled.append(polynomial if factor == 1 else polynomial * factor)
+        return scaled, common
+
+    @staticmethod
     def rebuilt(part: Any, change: Callable[[list[Any]], list[Any]]) -> Any:
         polynomial, below = part
         return fmpz_poly(change(polynomial.coeffs())), below
+
+    @staticmethod
+    def numerators(terms: Sequence[tuple[Any, Any]]) -> tuple[list[list[Any]], Any]:
+        scaled, common = ExactParts._scaled(terms)
+        return [polynomial.coeffs() for polynomial in scaled], common
+
+    @staticmethod
+    def joined(line: list[Any], below: Any) -> Any:
+        return fmpz_poly(line), below
+
+    @staticmethod
+    def with_half_mean(line: list[Any], below: Any) -> Any:
+        return fmpz_poly(line[:1] + [c + c for c in line[1:]]), 2 * below
 
 
 class BallParts:
@@ -135,6 +160,18 @@ class BallParts:
     @staticmethod
     def rebuilt(part: Any, change: Callable[[list[Any]], list[Any]]) -> Any:
         return arb_poly(change(part[0].coeffs())), None
+
+    @staticmethod
+    def numerators(terms: Sequence[tuple[Any, Any]]) -> tuple[list[list[Any]], Any]:
+        return [(polynomial if c == 1 else polynomial * c).coeffs() for c, (polynomial, _) in terms], None
+
+    @staticmethod
+    def joined(line: list[Any], below: Any) -> Any:
+        return arb_poly(line), None
+
+    @staticmethod
+    def with_half_mean(line: list[Any], below: Any) -> Any:
+        return arb_poly([c / 2 for c in line[:1]] + line[1:]), None
 
 
 Parts: TypeAlias = type[ExactParts] | type[BallParts]
