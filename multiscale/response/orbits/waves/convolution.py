@@ -70,17 +70,15 @@ class Convolution:
         size = 1
         while start >= 2 * size and start % size == 0:
             near, far = self._lag - 1 + size, self._lag - 1 + start - size
-            if near == far:
-                self._share(n, size, self._one, a[near : near + size], b[far : far + size])
-            elif a is b:
-                self._share(n, size, self._two, a[near : near + size], a[far : far + size])
-            else:
-                self._share(n, size, self._one, a[near : near + size], b[far : far + size])
-                self._share(n, size, self._one, a[far : far + size], b[near : near + size])
+            weight = self._two if a is b and near != far else self._one
+            self._share(n, weight, a[near : near + size], b[far : far + size])
+            if a is not b and near != far:
+                self._share(n, weight, a[far : far + size], b[near : near + size])
             size *= 2
 
-    def _share(self, n: int, size: int, weight: Any, x: list[Any], y: list[Any]) -> None:
-        limits = [self._limit(m) for m in range(n, min(n + 2 * size - 2, self._order) + 1)]
+    def _share(self, n: int, weight: Any, x: list[Any], y: list[Any]) -> None:
+        """weight · Σ x_i y_j for the sums n, n + 1, …"""
+        limits = [self._limit(m) for m in range(n, min(n + len(x) + len(y) - 2, self._order) + 1)]
         while limits and limits[-1] < 0:
             limits.pop()
         if limits:

@@ -140,7 +140,7 @@ class PackedWaves:
         ]
 
     def _unreduced(self, terms: list[tuple[Any, Any]]) -> Any:
-        return terms[0][1] if len(terms) == 1 and terms[0][0] == 1 else self._parts.total(terms)
+        return self._parts.times(*terms[0]) if len(terms) == 1 else self._parts.total(terms)
 
     def combination(self, terms: Sequence[tuple[Any, Wave]], limit: int) -> Wave:
         present = [(c, x) for c, x in terms if x.parts]
@@ -170,11 +170,8 @@ class PackedWaves:
         def divided(part: Any) -> Any:
             if part is None:
                 return None
-            ks = [self._step * r + x.offset for r in range(part[0].length())]
-            line = self._parts.coefficients(part, len(ks))
-            return self._parts.polynomial(
-                [self._null if k == 1 else c / (1 - k * k) for k, c in zip(ks, line, strict=True)]
-            )
+            ks = range(x.offset, x.offset + self._step * part[0].length(), self._step)
+            return self._parts.divided(part, [1 - k * k for k in ks])
 
         return Wave(x.offset, divided(x.even), divided(x.odd))
 
