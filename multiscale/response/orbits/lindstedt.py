@@ -98,9 +98,10 @@ class _Recursion:
 
     def limit(self, level: int, degree: int = 1) -> int:
         """The highest harmonic wanted of a product of `degree` fields at a level; −1 for none."""
-        whole = degree + int(self.growth * level)
-        reach = 2 - degree + self.growth * (self.order - level)
-        return whole if level <= self.shape else min(whole, int(reach) if reach >= 0 else -1)
+        above, below = self.growth.numerator, self.growth.denominator
+        whole = degree + above * level // below
+        reach = 2 - degree + above * (self.order - level) // below
+        return whole if level <= self.shape else max(-1, min(whole, reach))
 
     def shorten(self, levels: int) -> None:
         """Forget everything from a level on."""
@@ -139,7 +140,8 @@ class _Recursion:
         """The change of F at level m + power by a unit change of h_m, when `power` is the lowest power of ε."""
         parts = []
         for (_, outer), terms in self.filed.items():
-            own = [(c * self.waves.scalar(len(jets)), self.products.of_early(jets)[0]) for p, jets, c in terms if p == power]
+            lowest = [(c * self.waves.scalar(len(jets)), jets) for p, jets, c in terms if p == power]
+            own = [(c, self.products.of_early(jets)[0]) for c, jets in lowest]
             part = self.waves.combination(own, 1 + int(self.growth * power))
             parts.append((self.one, self.waves.derivative(part) if outer else part))
         return self.waves.combination(parts, 1 + int(self.growth * power))
@@ -166,12 +168,12 @@ class _Recursion:
         self.amplitude.append(self.null)
         limit = self.limit(level)
         # At level 0 there is the fundamental alone, which `solved` drops.
-        terms = [
-            (self.square[m], self.products.fields[level - m]) for m in range(1, level) if not self.waves.is_null(self.square[m])
-        ]
+        fields = self.products.fields
+        terms = [(w, fields[level - m]) for m, w in enumerate(self.square[:level]) if m and not self.waves.is_null(w)]
         bent = self.waves.combination(terms, limit)
         turned = self.waves.derivative(self.waves.derivative(bent))
-        self.products.extend(self.waves.solved(self.waves.combination([(self.one, forcing), (self.bend, turned)], limit)))
+        right = self.waves.combination([(self.one, forcing), (self.bend, turned)], limit)
+        self.products.extend(self.waves.solved(right))
 
 
 def periodic_orbit(

@@ -2,10 +2,10 @@
 
     c_n = Σ_{i+j=n} a_i b_j,      asked for at n = 0, 1, 2, … when a and b are known through n
 
-Taken level by level that is n + 1 products of waves each time. But every pair (i, j) with i, j ≥ s lies in one square of
-the tiling
+Taken level by level that is n + 1 products of waves each time. But every pair (i, j) with i, j ≥ s lies in one square
+of a tiling of (i − s + 1, j − s + 1),
 
-    {2^v, …, 2^{v+1} − 1} × {q 2^v, …, (q + 1) 2^v − 1}    of (i − s + 1, j − s + 1), and its mirror image,   v ≥ 0, q ≥ 1
+    {2^v, …, 2^{v+1} − 1} × {q 2^v, …, (q + 1) 2^v − 1},     v ≥ 0, q ≥ 1,     or in its mirror image
 
 whose levels are known by the time the first of its sums, n = 2s − 2 + (q + 1) 2^v, is asked for. A square is one
 product of two runs of levels (`Waves.runs`), which hands its share to all its sums at once: a level takes part in few

@@ -133,13 +133,12 @@ class PackedWaves:
 
     def runs(self, x: Sequence[Wave], y: Sequence[Wave], limits: Sequence[int]) -> list[Wave]:
         offset, levels = products_of_runs(self._parts, self._step, self._square, x, y, limits)
-        # Not reduced unless it must be added up: the levels are summed with others soon.
-        return [
-            Wave(offset, *(self._unreduced(level[sign]) if sign in level else None for sign in (1, -1)))
-            for level in levels
-        ]
+        return [Wave(offset, *(self._sum(level.get(sign, [])) for sign in (1, -1))) for level in levels]
 
-    def _unreduced(self, terms: list[tuple[Any, Any]]) -> Any:
+    def _sum(self, terms: list[tuple[Any, Any]]) -> Any:
+        """Σ scalar · part, reduced if something is added up."""
+        if not terms:
+            return None
         return self._parts.times(*terms[0]) if len(terms) == 1 else self._parts.total(terms)
 
     def combination(self, terms: Sequence[tuple[Any, Wave]], limit: int) -> Wave:
@@ -152,7 +151,7 @@ class PackedWaves:
         for which in ("even", "odd"):
             own = [(c, part) for c, x in present if (part := getattr(x, which)) is not None]
             cut = [(c, self._parts.cut(part, 0, count)) for c, part in own]
-            found.append(self._parts.total(cut) if cut else None)
+            found.append(self._sum([(c, part) for c, part in cut if part[0].length()]))
         return Wave(offset, *found)
 
     def derivative(self, x: Wave) -> Wave:
@@ -162,7 +161,7 @@ class PackedWaves:
             risen = self._parts.rebuilt(
                 part, lambda line: [c * (self._step * r + x.offset) for r, c in enumerate(line)]
             )
-            return self._parts.total([(factor, risen)])
+            return self._parts.times(factor, risen)
 
         return Wave(x.offset, turned(x.odd, self._square), turned(x.even, self._one))
 

@@ -105,7 +105,7 @@ def _multiplied(
         lines, below = parts.numerators(terms)
         places = [(i, sign, line) for (i, sign, _), line in zip(run, lines, strict=True)]
         flat.append(parts.joined(_side_by_side(places, top, offset, distance), below))
-    polynomial, below = parts.product(*flat, (len(counts) - 1) * distance + centre + count)
+    polynomial, below = parts.product(flat[0], flat[1], (len(counts) - 1) * distance + centre + count)
     line = polynomial.coeffs()
     return [line[m * distance + centre : m * distance + centre + n] for m, n in enumerate(counts)], below
 
