@@ -8,6 +8,7 @@ from fractions import Fraction as F
 
 import pytest
 
+from multiscale.response.orbits.waves.convolution import Convolution
 from multiscale.response.orbits.waves.plain import PlainWaves
 
 SQUARE = 3
@@ -108,3 +109,81 @@ def test_the_constant(name):
     one = algebra.constant()
     assert plain(algebra, algebra.products([(algebra.scalar(1), one, x)], 99)) == plain(algebra, x)
     assert plain(algebra, algebra.products([(algebra.scalar(1), one, one)], 99))[0][0] == 1
+
+
+def by_level(algebra, x, y, m):
+    """Σ_{i+j=m} x_i y_j, product by product."""
+    pairs = [(algebra.scalar(1), x[i], y[m - i]) for i in range(m + 1) if i < len(x) and m - i < len(y)]
+    return plain(algebra, algebra.products(pairs, 99))
+
+
+def close(found, wanted, limit=99):
+    for k in found.keys() | wanted.keys():
+        pair = wanted.get(k, (0, 0)) if abs(k) <= limit else (0, 0)
+        assert found.get(k, (0, 0)) == pytest.approx(pair, rel=1e-9, abs=1e-9), k
+
+
+def levels(algebra, kind, count, seed):
+    """Levels of both parts; cosines and sines in turn; cosines alone; the even ones zero."""
+    one = algebra.scalar(1)
+    found = []
+    for n in range(count):
+        x = random_wave(algebra, seed + n, 1 + 2 * (n % 4))
+        if kind != "both":
+            # The part in cosines: powers of the unit wave.
+            power = algebra.unit()
+            for _ in range(n % 3):
+                power = algebra.products(
+                    [(one, algebra.products([(one, power, algebra.unit())], 99), algebra.unit())], 99
+                )
+            x = algebra.combination([(algebra.scalar(F(2 * n + seed + 1, n + 3)), power)], 99)
+        if kind == "in turn" and n % 2:
+            x = algebra.derivative(x)
+        found.append(algebra.zero if kind == "gaps" and n % 2 == 0 else x)
+    return found
+
+
+KINDS = ["both", "in turn", "cosines", "gaps"]
+
+
+@pytest.mark.parametrize("name", REPRESENTATIONS)
+@pytest.mark.parametrize("kind", KINDS)
+def test_runs(name, kind):
+    """The product of two runs of levels, whole and cut, of waves and of their squares (which have a mean)."""
+    algebra = waves(name)
+    x, y = levels(algebra, kind, 5, 1), levels(algebra, kind, 3, 20)
+    squares = [algebra.products([(algebra.scalar(1), w, w)], 99) for w in x]
+    for a, b in ((x, y), (y, x), (x, x), (squares, y), (squares, squares), (x[:1], squares)):
+        for limits in ([99] * (len(a) + len(b) - 1), [6, 0, 3, 1, 2], [0], [1, 9]):
+            found = algebra.runs(a, b, limits)
+            assert len(found) == len(limits)
+            for m, (wave, limit) in enumerate(zip(found, limits, strict=True)):
+                close(plain(algebra, wave), by_level(algebra, a, b, m), limit)
+
+
+@pytest.mark.parametrize("name", REPRESENTATIONS)
+@pytest.mark.parametrize("kind", KINDS)
+@pytest.mark.parametrize("lag", [1, 2, 3])
+def test_a_convolution_level_by_level(name, kind, lag):
+    """Every pair of levels is counted once, however late the last `lag` levels are settled."""
+    algebra = waves(name)
+    count = 14
+    x, y = levels(algebra, kind, count, 1), levels(algebra, kind, count, 40)
+    wrong = random_wave(algebra, 90, 3)
+    for first, second in ((x, y), (x, x)):
+        a = []
+        b = a if first is second else []
+        growing = Convolution(algebra, a, b, lambda n: 5 if n % 3 else 99, count - 1, lag)
+        for n in range(count):
+            a.append(wrong)
+            if b is not a:
+                b.append(wrong)
+            if n + 1 >= lag:
+                # Settled only now.
+                a[n + 1 - lag], b[n + 1 - lag] = first[n + 1 - lag], second[n + 1 - lag]
+            growing.level(n)
+            for i in range(max(0, n + 2 - lag), n + 1):
+                a[i], b[i] = first[i], second[i]
+            close(plain(algebra, growing.level(n)), by_level(algebra, first, second, n), 5 if n % 3 else 99)
+            for i in range(max(0, n + 2 - lag), n + 1):
+                a[i], b[i] = wrong, wrong

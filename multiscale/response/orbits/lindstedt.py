@@ -25,6 +25,7 @@ from fractions import Fraction
 from typing import Any
 
 from multiscale.errors import ProblemError
+from multiscale.response.orbits.field_products import FieldProducts, Key, Part
 from multiscale.response.orbits.waves import Waves
 
 __all__ = ["Force", "Monomial", "Orbit", "periodic_orbit", "response_rate"]
@@ -59,14 +60,12 @@ class _Recursion:
     order: int
     shape: int
     over: int
-    fields: list[Any] = field(default_factory=list)
-    slopes: dict[int, list[Any]] = field(default_factory=lambda: {1: [], 2: []})
-    products: dict[tuple[int, ...], list[Any]] = field(default_factory=dict)
+    lag: int
     square: list[Any] = field(default_factory=list)
     frequency: list[Any] = field(default_factory=list)
     powers: dict[int, list[Any]] = field(default_factory=dict)
     amplitude: list[Any] = field(default_factory=list)
-    sums: dict[tuple[int, bool], list[Any]] = field(default_factory=dict)
+    sums: dict[Key, list[Any]] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         waves = self.waves
@@ -78,16 +77,11 @@ class _Recursion:
         self.square, self.frequency, self.amplitude = [self.one], [self.one], [self.one]
         self.powers = {q: [self.one] for q in range(2, 1 + max((sum(t.jets) for t in self.force), default=0))}
         self._file()
-        factors = [self._factors(term)[0] for term in self.force]
-        self.highest = max((j for jets in factors for j in jets), default=0)
-        for jets in factors:
-            self._register(jets)
-        self.constants = [waves.constant(), *[waves.zero] * self.order]
-        self._extend(waves.unit())
+        self.products = FieldProducts(waves, self.filed, self.limit, self.order, self.lag)
 
     def _file(self) -> None:
         """Terms linear in u' and otherwise in u alone are derivatives: u^i u' = (u^{i+1})'/(i + 1)."""
-        self.filed: dict[tuple[int, bool], list[tuple[int, tuple[int, ...], Any]]] = {}
+        self.filed: dict[Key, list[Part]] = {}
         for term in self.force:
             jets, outer = self._factors(term)
             c = self.waves.scalar(term.coefficient)
@@ -102,71 +96,23 @@ class _Recursion:
             return (0,) * len(term.jets), True
         return term.jets, False
 
-    def _register(self, jets: tuple[int, ...]) -> None:
-        if len(jets) > 1 and jets not in self.products:
-            for part in self._halves(jets):
-                self._register(part)
-            self.products[jets] = []
-
-    @staticmethod
-    def _halves(jets: tuple[int, ...]) -> tuple[tuple[int, ...], tuple[int, ...]]:
-        cut = (len(jets) + 1) // 2
-        return jets[:cut], jets[cut:]
-
     def limit(self, level: int, degree: int = 1) -> int:
         """The highest harmonic wanted of a product of `degree` fields at a level; −1 for none."""
-        whole = degree + int(self.growth * level)
-        reach = 2 - degree + self.growth * (self.order - level)
-        return whole if level <= self.shape else min(whole, int(reach) if reach >= 0 else -1)
-
-    def product(self, jets: tuple[int, ...]) -> list[Any]:
-        if not jets:
-            return self.constants
-        if len(jets) == 1:
-            return self.slopes[jets[0]] if jets[0] else self.fields
-        return self.products[jets]
-
-    def _extend(self, wave: Any) -> None:
-        """The next level of the field, and of every product of it."""
-        self.fields.append(wave)
-        level = len(self.fields) - 1
-        for order in range(1, self.highest + 1):
-            below = self.slopes[1] if order == 2 else self.fields
-            self.slopes[order].append(self.waves.derivative(below[level]))
-        for jets, made in self.products.items():
-            limit = self.limit(level, len(jets))
-            a, b = (self.product(part) for part in self._halves(jets))
-            if limit < 0:
-                made.append(self.waves.zero)
-            elif a is b:
-                two = self.waves.scalar(2)
-                terms = [(two, a[i], a[level - i]) for i in range((level + 1) // 2)]
-                terms += [] if level % 2 else [(self.one, a[level // 2], a[level // 2])]
-                made.append(self.waves.products(terms, limit))
-            else:
-                made.append(self.waves.products([(self.one, a[i], b[level - i]) for i in range(level + 1)], limit))
+        above, below = self.growth.numerator, self.growth.denominator
+        whole = degree + above * level // below
+        reach = 2 - degree + above * (self.order - level) // below
+        return whole if level <= self.shape else max(-1, min(whole, reach))
 
     def shorten(self, levels: int) -> None:
         """Forget everything from a level on."""
-        for made in (self.fields, *self.slopes.values(), *self.products.values()):
-            del made[levels:]
+        self.products.shorten(levels)
         for known in (self.square, self.frequency, self.amplitude, *self.powers.values(), *self.sums.values()):
             del known[levels:]
 
     def shift(self, level: int, change: Any) -> None:
-        """Add change·Y_0 to the field at a level that is the last one, and to every product of it."""
+        """Add change·Y_0 to the field at a level that is the last one."""
         self.amplitude[level] = self.amplitude[level] + change
-        every = [((0,), self.fields), ((1,), self.slopes[1]), ((2,), self.slopes[2]), *self.products.items()]
-        for jets, made in every:
-            if len(made) > level:
-                factor = self.waves.scalar(len(jets)) * change
-                limit = self.limit(level, len(jets))
-                made[level] = self.waves.combination([(self.one, made[level]), (factor, made[0])], limit)
-
-    def _sum(self, key: tuple[int, bool], level: int) -> Any:
-        """[ε^level] of the terms filed under a power of w, without that power."""
-        terms = [(c, self.product(jets)[level - power]) for power, jets, c in self.filed[key] if power <= level]
-        return self.waves.combination(terms, self.limit(level))
+        self.products.shift(level, change)
 
     def _powers_to(self, count: int) -> None:
         for q, series in self.powers.items():
@@ -183,7 +129,7 @@ class _Recursion:
         for key, sums in self.sums.items():
             q, outer = key
             while len(sums) <= level:
-                sums.append(self._sum(key, len(sums)))
+                sums.append(self.products.sum(key, len(sums)))
             weights = [self.one] if q == 0 else self.frequency if q == 1 else self.powers[q]
             terms = [(w, sums[level - m]) for m, w in enumerate(weights[:level]) if not self.waves.is_null(w)]
             part = self.waves.combination(terms, limit)
@@ -194,7 +140,8 @@ class _Recursion:
         """The change of F at level m + power by a unit change of h_m, when `power` is the lowest power of ε."""
         parts = []
         for (_, outer), terms in self.filed.items():
-            own = [(c * self.waves.scalar(len(jets)), self.product(jets)[0]) for p, jets, c in terms if p == power]
+            lowest = [(c * self.waves.scalar(len(jets)), jets) for p, jets, c in terms if p == power]
+            own = [(c, self.products.of_early(jets)[0]) for c, jets in lowest]
             part = self.waves.combination(own, 1 + int(self.growth * power))
             parts.append((self.one, self.waves.derivative(part) if outer else part))
         return self.waves.combination(parts, 1 + int(self.growth * power))
@@ -221,12 +168,12 @@ class _Recursion:
         self.amplitude.append(self.null)
         limit = self.limit(level)
         # At level 0 there is the fundamental alone, which `solved` drops.
-        terms = [
-            (self.square[m], self.fields[level - m]) for m in range(1, level) if not self.waves.is_null(self.square[m])
-        ]
+        fields = self.products.fields
+        terms = [(w, fields[level - m]) for m, w in enumerate(self.square[:level]) if m and not self.waves.is_null(w)]
         bent = self.waves.combination(terms, limit)
         turned = self.waves.derivative(self.waves.derivative(bent))
-        self._extend(self.waves.solved(self.waves.combination([(self.one, forcing), (self.bend, turned)], limit)))
+        right = self.waves.combination([(self.one, forcing), (self.bend, turned)], limit)
+        self.products.extend(self.waves.solved(right))
 
 
 def periodic_orbit(
@@ -237,7 +184,7 @@ def periodic_orbit(
     Isolated, the last p coefficients of the amplitude are not determined and left out; the coefficients of the
     frequency from ε^{order−p+2} on may depend on them and are then not the right ones.
     """
-    work = _Recursion(waves, force, order, shape, square)
+    work = _Recursion(waves, force, order, shape, square, max(1, damping or 0))
     isolated = damping is not None and damping < order
     # Where no term acts below level p, h_{n−p} changes F_n directly; else the levels between are taken once more.
     direct = work.response(damping) if damping is not None and damping == min(t.power for t in force) else None
@@ -265,12 +212,12 @@ def periodic_orbit(
                     work.again(m, n, change)
                     forcing = work.forcing(n)
         work.advance(n, forcing)
-    return Orbit(work.frequency, work.amplitude[: order + 1 - (damping or 0)], work.fields, shape)
+    return Orbit(work.frequency, work.amplitude[: order + 1 - (damping or 0)], work.products.fields, shape)
 
 
 def response_rate(waves: Waves, force: Force, level: int, square: int = 1) -> Any:
     """∂(sine of F_n)/∂h_{n−p}, p = `level` being the lowest power of ε: what an isolated orbit is divided by."""
-    work = _Recursion(waves, force, level, 0, square)
+    work = _Recursion(waves, force, level, 0, square, 1)
     return waves.first(work.response(level))[1]
 
 

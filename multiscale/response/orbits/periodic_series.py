@@ -292,10 +292,11 @@ def _written(statement: Statement, found: _Found, scaling: Fraction | None) -> P
         power = scaling * n
         return x * (start / 2) ** sp.Rational(power.numerator, power.denominator)
 
+    in_sines = -start * found.radical
     harmonics = []
     for n, table in enumerate(found.tables):
         pairs = {
-            k: (start * level(n, a) / (1 if k else 2), -start * found.radical * level(n, b))
+            k: ((start if k else start / 2) * level(n, a), in_sines * level(n, b) if b != 0 else b)
             for k, (a, b) in table.items()
         }
         harmonics.append({k: pair for k, pair in pairs.items() if any(x != 0 for x in pair)})

@@ -18,6 +18,7 @@ from functools import partial
 from typing import Any
 
 from multiscale.response.orbits.waves.parts import Parts, low, shifted
+from multiscale.response.orbits.waves.runs import products_of_runs
 
 __all__ = ["PackedWaves", "Wave"]
 
@@ -46,6 +47,8 @@ class Wave:
 
 class PackedWaves:
     """`Waves` on FLINT polynomials; `step` is s, `square` is d."""
+
+    gathers = True
 
     def __init__(self, parts: Parts, step: int, square: int = 1) -> None:
         self._parts, self._step, self._square = parts, step, parts.scalar(-square)
@@ -128,6 +131,16 @@ class PackedWaves:
         # The mirror image of index r is index count − 1 − r until the sum is reversed.
         into.behind.append((c * sigma, (_window(polynomial, last, count, offset == 0), below)))
 
+    def runs(self, x: Sequence[Wave], y: Sequence[Wave], limits: Sequence[int]) -> list[Wave]:
+        offset, levels = products_of_runs(self._parts, self._step, self._square, x, y, limits)
+        return [Wave(offset, *(self._sum(level.get(sign, [])) for sign in (1, -1))) for level in levels]
+
+    def _sum(self, terms: list[tuple[Any, Any]]) -> Any:
+        """Σ scalar · part, reduced if something is added up."""
+        if not terms:
+            return None
+        return self._parts.times(*terms[0]) if len(terms) == 1 else self._parts.total(terms)
+
     def combination(self, terms: Sequence[tuple[Any, Wave]], limit: int) -> Wave:
         present = [(c, x) for c, x in terms if x.parts]
         if not present:
@@ -138,7 +151,7 @@ class PackedWaves:
         for which in ("even", "odd"):
             own = [(c, part) for c, x in present if (part := getattr(x, which)) is not None]
             cut = [(c, self._parts.cut(part, 0, count)) for c, part in own]
-            found.append(self._parts.total(cut) if cut else None)
+            found.append(self._sum([(c, part) for c, part in cut if part[0].length()]))
         return Wave(offset, *found)
 
     def derivative(self, x: Wave) -> Wave:
@@ -148,7 +161,7 @@ class PackedWaves:
             risen = self._parts.rebuilt(
                 part, lambda line: [c * (self._step * r + x.offset) for r, c in enumerate(line)]
             )
-            return self._parts.total([(factor, risen)])
+            return self._parts.times(factor, risen)
 
         return Wave(x.offset, turned(x.odd, self._square), turned(x.even, self._one))
 
@@ -156,11 +169,8 @@ class PackedWaves:
         def divided(part: Any) -> Any:
             if part is None:
                 return None
-            ks = [self._step * r + x.offset for r in range(part[0].length())]
-            line = self._parts.coefficients(part, len(ks))
-            return self._parts.polynomial(
-                [self._null if k == 1 else c / (1 - k * k) for k, c in zip(ks, line, strict=True)]
-            )
+            ks = range(x.offset, x.offset + self._step * part[0].length(), self._step)
+            return self._parts.divided(part, [1 - k * k for k in ks])
 
         return Wave(x.offset, divided(x.even), divided(x.odd))
 

@@ -6,10 +6,16 @@ A part is (polynomial, denominator), of balls (polynomial, None); zero is None. 
     total(terms)           Σ scalar · part, over one denominator and reduced
     cut(x, first, count)   coefficients first … first + count − 1
     rebuilt(x, change)     the part whose numerators `change` makes of those of x
+    numerators(terms)      the coefficients of every scalar · part, and the denominator common to all
+    times(c, x)            c x, not reduced
+    divided(x, line)       the coefficients divided by those of a line of integers, 0 meaning: left out
+    joined(line, below)    the part with these coefficients over a denominator
+    with_half_mean(…)      the same with the first coefficient halved
 """
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
 from fractions import Fraction
 from typing import Any, TypeAlias
@@ -27,6 +33,8 @@ NATIVE = hasattr(fmpz_poly, "mul_low")
 
 def shifted(polynomial: Any, count: int) -> Any:
     """polynomial · y^count; for negative `count` without the coefficients that would stand below index 0."""
+    if not count:
+        return polynomial
     if NATIVE:
         return polynomial.left_shift(count) if count >= 0 else polynomial.right_shift(-count)
     line = polynomial.coeffs()
@@ -35,6 +43,8 @@ def shifted(polynomial: Any, count: int) -> Any:
 
 def low(polynomial: Any, count: int) -> Any:
     """The first coefficients."""
+    if count >= polynomial.length():
+        return polynomial
     return polynomial.truncate(count) if NATIVE else type(polynomial)(polynomial.coeffs()[: max(0, count)])
 
 
@@ -78,22 +88,60 @@ class ExactParts:
     @staticmethod
     def total(terms: Sequence[tuple[Any, Any]]) -> Any:
         """Σ scalar · part, reduced; None for zero."""
-        common = fmpz(1)
-        for c, (_, below) in terms:
-            common = common.lcm(below * c.q)
+        scaled, common = ExactParts._scaled(terms)
         above = fmpz_poly([0])
-        for c, (polynomial, below) in terms:
-            factor = c.p * (common // (below * c.q))
-            above = above + (polynomial if factor == 1 else polynomial * factor)
+        for polynomial in scaled:
+            above = above + polynomial
         if not above:
             return None
         shared = above.content().gcd(common)
         return (above, common) if shared == 1 else (above // shared, common // shared)
 
     @staticmethod
+    def _scaled(terms: Sequence[tuple[Any, Any]]) -> tuple[list[Any], Any]:
+        """The numerators over one denominator."""
+        common = fmpz(1)
+        denominators = [below * c.q for c, (_, below) in terms]
+        for d in denominators:
+            # The denominator of a level is mostly a multiple of those below it: a division is cheaper than a gcd.
+            if common % d:
+                common = common.lcm(d)
+        scaled = []
+        for (c, (polynomial, _)), d in zip(terms, denominators, strict=True):
+            factor = c.p * (common // d)
+            scaled.append(polynomial if factor == 1 else polynomial * factor)
+        return scaled, common
+
+    @staticmethod
     def rebuilt(part: Any, change: Callable[[list[Any]], list[Any]]) -> Any:
         polynomial, below = part
         return fmpz_poly(change(polynomial.coeffs())), below
+
+    @staticmethod
+    def numerators(terms: Sequence[tuple[Any, Any]]) -> tuple[list[list[Any]], Any]:
+        scaled, common = ExactParts._scaled(terms)
+        return [polynomial.coeffs() for polynomial in scaled], common
+
+    @staticmethod
+    def times(c: Any, part: Any) -> Any:
+        polynomial, below = part
+        # The sign goes with the denominator.
+        return (polynomial, below * c.q * c.p) if abs(c.p) == 1 else (polynomial * c.p, below * c.q)
+
+    @staticmethod
+    def divided(part: Any, by: list[int]) -> Any:
+        common = fmpz(math.lcm(*filter(None, by)))
+        factors = [common // d if d else 0 for d in by]
+        line = [c * f for c, f in zip(part[0].coeffs(), factors, strict=False)]
+        return ExactParts.total([(fmpq(1), (fmpz_poly(line), part[1] * common))])
+
+    @staticmethod
+    def joined(line: list[Any], below: Any) -> Any:
+        return fmpz_poly(line), below
+
+    @staticmethod
+    def with_half_mean(line: list[Any], below: Any) -> Any:
+        return fmpz_poly(line[:1] + [c + c for c in line[1:]]), 2 * below
 
 
 class BallParts:
@@ -135,6 +183,27 @@ class BallParts:
     @staticmethod
     def rebuilt(part: Any, change: Callable[[list[Any]], list[Any]]) -> Any:
         return arb_poly(change(part[0].coeffs())), None
+
+    @staticmethod
+    def numerators(terms: Sequence[tuple[Any, Any]]) -> tuple[list[list[Any]], Any]:
+        return [(polynomial if c == 1 else polynomial * c).coeffs() for c, (polynomial, _) in terms], None
+
+    @staticmethod
+    def times(c: Any, part: Any) -> Any:
+        return (part[0] if c == 1 else part[0] * c), None
+
+    @staticmethod
+    def divided(part: Any, by: list[int]) -> Any:
+        line = [c / d if d else 0 for c, d in zip(part[0].coeffs(), by, strict=False)]
+        return BallParts.total([(1, (arb_poly(line), None))])
+
+    @staticmethod
+    def joined(line: list[Any], below: Any) -> Any:
+        return arb_poly(line), None
+
+    @staticmethod
+    def with_half_mean(line: list[Any], below: Any) -> Any:
+        return arb_poly([c / 2 for c in line[:1]] + line[1:]), None
 
 
 Parts: TypeAlias = type[ExactParts] | type[BallParts]

@@ -26,6 +26,8 @@ class Scalars:
 class PlainWaves:
     """`Waves` as {k: (α_k, β_k)} over k ≥ 0."""
 
+    gathers = False
+
     def __init__(self, scalars: Scalars | None = None, square: int = 1) -> None:
         self._scalars = scalars or Scalars()
         self._square = self.scalar(square)
@@ -73,6 +75,13 @@ class PlainWaves:
                         if m >= k:
                             self._add(sums, m - k, (a, -b), (p, q))
         return self._cleaned(sums)
+
+    def runs(self, x: Sequence[Table], y: Sequence[Table], limits: Sequence[int]) -> list[Table]:
+        one = self.scalar(1)
+        return [
+            self.products([(one, a, y[m - i]) for i, a in enumerate(x) if 0 <= m - i < len(y)], limit)
+            for m, limit in enumerate(limits)
+        ]
 
     def _add(self, sums: dict[int, list[Any]], k: int, x: tuple[Any, Any], y: tuple[Any, Any]) -> None:
         (a, b), (p, q) = x, y
