@@ -33,7 +33,8 @@ def initial_series(expansion: Expansion, places: list[Any], velocities: list[Any
     """{p: series, q: series} through ε^N for u = places[0], u' = velocities[0] at t = 0."""
     if reason := obstacle(expansion.computation):
         raise UnsupportedTermError(
-            f"the slow state as a series is given for one undriven oscillator; {reason}. Give `parameters` for its value"
+            f"the slow state as a series is given for one undriven oscillator; {reason}. Give `parameters` for "
+            "its value"
         )
     place, velocity = (_expression(expansion, x) for x in (places[0], velocities[0]))
     problem, symbols = expansion.problem, expansion.symbols
@@ -65,10 +66,10 @@ def _expression(expansion: Expansion, x: Any) -> sp.Expr:
 
 def _inverted(expansion: Expansion) -> tuple[Ring, Series]:
     """z as a series in ε, the generators of the ring standing for w and its conjugate."""
-    hierarchy = expansion.computation.hierarchy
-    tower, linear = hierarchy.tower, hierarchy.linear_part
+    tower = expansion.computation.hierarchy.tower
     ring = tower.ring
-    frequency = linear.in_ring(ring).value(linear.modes[0].rate)
+    turning = tower.time[0].images[expansion.computation.canonical.spec.pairs[0][0]]
+    frequency = ring.normal(-(ring.generators[0] * _by_power(ring, turning)[1, 0]))  # D_0 z = iωz
     if needed := missing(ring, [frequency]):
         ring = ring.extended(needed)
     over = inverse(ring, ring.lift(frequency)) * ring.generators[0]

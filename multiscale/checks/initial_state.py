@@ -17,7 +17,7 @@ import numpy.typing as npt
 import sympy as sp
 
 from multiscale.checks.initial_series import initial_series
-from multiscale.errors import EvaluationError
+from multiscale.errors import EvaluationError, UnsupportedTermError
 from multiscale.expansion import Expansion
 
 __all__ = ["initial_state"]
@@ -66,7 +66,7 @@ def initial_state(
         A displacement or velocity is missing or not finite; a key is no unknown; the displacement lies outside the
         range that the expansion can represent; Newton's method leaves a residual.
     UnsupportedTermError
-        A series for several modes, drives or slow parameters.
+        A series for several modes, drives or slow parameters; fewer modes than unknowns.
 
     Examples
     --------
@@ -76,13 +76,18 @@ def initial_state(
     >>> u = sp.Function("u")(t)
     >>> result = ms.expand(ms.Problem(u.diff(t, 2) + u + eps*u**3, u, small=eps), order=2)
     >>> ms.initial_state(result, {u: 1.0, u.diff(t): 0.0}, {eps: 0.1}).round(6)
-    array([0.997089, 0.      ])
+    array([0.997095, 0.      ])
     >>> ms.initial_state(result, {u: alpha, u.diff(t): 0})
     {p: 23*alpha**5*epsilon**2/1024 - alpha**3*epsilon/32 + alpha, q: 0}
     """
     if not isinstance(expansion, Expansion):
         raise EvaluationError(f"initial_state was given a {type(expansion).__name__}: call expand first")
     places, velocities = _read(expansion, conditions)
+    if expansion.computation.modes != len(expansion.problem.unknowns):
+        raise UnsupportedTermError(
+            f"the expansion has {expansion.computation.modes} modes for {len(expansion.problem.unknowns)} unknowns, "
+            "whose initial conditions are then not all free: give the slow state itself"
+        )
     if parameters is None:
         return initial_series(expansion, places, velocities)
     motion = _Motion(expansion, parameters, time, places, velocities)
@@ -153,7 +158,8 @@ class _Motion:
         return np.array([np.broadcast_to(x, self.batch) for x in rows])
 
     def residual(self, state: Array) -> Array:
-        return (self._motion(state) - self._wanted) / self._scale
+        difference: Array = (self._motion(state) - self._wanted) / self._scale
+        return difference
 
     def slope(self, state: Array) -> Array:
         """Derivative of the motion by the state, (2n, 2n) + B."""
@@ -166,7 +172,8 @@ class _Motion:
 
     def linear(self, change: Array) -> Array:
         """What a change of the slow state makes of the motion near rest, in units of the displacement."""
-        return np.einsum("jk...,k...->j...", self.slope(self.rest), change) / self._scale
+        moved: Array = np.einsum("jk...,k...->j...", self.slope(self.rest), change) / self._scale
+        return moved
 
     def step(self, state: Array, residual: Array) -> Array:
         """Newton's step; least squares where the equations are singular."""
@@ -208,7 +215,7 @@ def _check(motion: _Motion, state: Array) -> None:
         raise EvaluationError(
             f"no slow state was found for these conditions{where}: Newton's method leaves a residual of "
             f"{float(size.max()):.2g} of the displacement. The amplitude is out of the range in which the correction "
-            "terms of this expansion are small: begin with a smaller amplitude or a smaller value of the small parameter"
+            "terms of this expansion are small: begin with a smaller amplitude or small parameter"
         )
     rest = motion.rest
     turned, plain = (np.linalg.det(np.moveaxis(motion.slope(y), (0, 1), (-2, -1))) for y in (state, rest))
@@ -217,7 +224,7 @@ def _check(motion: _Motion, state: Array) -> None:
     if np.any((turned * plain <= 0) | (correction > 1)):
         raise EvaluationError(
             "the amplitude is out of range: in the slow state found, the correction terms outweigh the motion itself. "
-            "Begin with a smaller amplitude or a smaller value of the small parameter"
+            "Begin with a smaller amplitude or small parameter"
         )
 
 

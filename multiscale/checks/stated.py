@@ -1,0 +1,136 @@
+"""The equations of motion as the user stated them, in first-order form, for direct numerical integration.
+
+    F(u, u', u'', t) = 0      →      u' = v,   v' = a   with   F(u, v, a, t) = 0
+
+solved for the accelerations: in closed form where they enter linearly (also with inertia that depends on the motion),
+by Newton's method where they do not. Nothing is expanded: relations are put in exactly, drives keep their exact phase.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from functools import lru_cache
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+import sympy as sp
+
+from multiscale.errors import EvaluationError
+from multiscale.problem import Problem
+
+__all__ = ["Stated", "stated"]
+
+Array = npt.NDArray[Any]
+RightHandSide = Callable[[float, Array], list[float]]
+ITERATIONS = 30
+
+
+@dataclass(frozen=True, eq=False)
+class Stated:
+    """`compiled` gives the accelerations, or (F, ∂F/∂a) at given ones where `implicit`; `parameters` are its last
+    arguments, by name."""
+
+    size: int
+    parameters: tuple[str, ...]
+    compiled: Callable[..., Any]
+    implicit: bool
+
+    def rhs(self, values: Mapping[str, float]) -> RightHandSide:
+        """f(t, y) for y = (u_1, …, u_n, u_1', …, u_n'); not-a-number where the equations have no finite value."""
+        n, numbers, compiled = self.size, [values[name] for name in self.parameters], self.compiled
+        nowhere = [np.nan] * n
+
+        def explicit(time: float, y: Array) -> list[float]:
+            state = y.tolist()
+            try:
+                return [*state[n:], *compiled(time, *state, *numbers)]
+            except (ArithmeticError, ValueError):
+                return [*state[n:], *nowhere]
+
+        def implicit(time: float, y: Array) -> list[float]:
+            state = y.tolist()
+            try:
+                return [*state[n:], *_accelerations(lambda a: compiled(time, *state, *a, *numbers), n)]
+            except (ArithmeticError, ValueError, np.linalg.LinAlgError):
+                return [*state[n:], *nowhere]
+
+        return implicit if self.implicit else explicit
+
+
+def _accelerations(equations: Callable[[list[float]], Any], n: int) -> list[float]:
+    a = np.zeros(n)
+    for _ in range(ITERATIONS):
+        residual, slope = equations(a.tolist())
+        step = np.linalg.solve(np.array(slope, dtype=float).reshape(n, n), np.array(residual, dtype=float))
+        a = a - step
+        if np.max(np.abs(step)) <= 1e-15 * np.max(np.abs(a)):
+            break
+    return a.tolist()
+
+
+@lru_cache(maxsize=32)
+def stated(problem: Problem) -> Stated:
+    """The equations of a problem, ready for numbers.
+
+    With `ordering` they hold in the user's own unknowns and parameters, without a small parameter. Raises
+    EvaluationError for what has no numeric value, naming it.
+    """
+    count = range(len(problem.unknowns))
+    x, v, a = ([sp.Dummy(f"{letter}{k}", real=True) for k in count] for letter in "xva")
+    equations = _hidden(problem, x, v, a)
+    time = sp.Dummy("t", real=True)
+    plain = {problem.time: time} | ({problem.small: sp.Integer(1)} if problem.ordering is not None else {})
+    equations = [e.subs(plain) for e in equations]
+    names = {s.name: s for s in (*problem.parameters, problem.small)}
+    used = set().union(*(e.free_symbols for e in equations)) - {time, *x, *v, *a}
+    if strange := sorted(used - set(names.values()), key=str):
+        raise EvaluationError(f"the equations contain {strange[0]}, which is no parameter of the problem")
+    if unknown := sorted(set().union(*(e.atoms(sp.core.function.AppliedUndef) for e in equations)), key=str):
+        shown = unknown[0].subs(time, problem.time)
+        raise EvaluationError(f"{shown} has no numeric value: state the problem with a known function in its place")
+    parameters = sorted((s for s in used), key=lambda s: str(s.name))
+    inertia = sp.Matrix([[sp.diff(e, y) for y in a] for e in equations])
+    rest = sp.Matrix([e.subs(dict.fromkeys(a, 0)) for e in equations])
+    explicit = None if inertia.free_symbols & set(a) else _explicit(inertia, rest)
+    if explicit is not None:
+        arguments, output = [time, *x, *v, *parameters], explicit
+    else:
+        arguments, output = [time, *x, *v, *a, *parameters], [equations, list(inertia)]
+    compiled = sp.lambdify(arguments, output, modules="math", cse=True)
+    return Stated(len(x), tuple(str(s.name) for s in parameters), compiled, explicit is None)
+
+
+def _explicit(inertia: sp.Matrix, rest: sp.Matrix) -> list[sp.Expr] | None:
+    """The accelerations in closed form: one or two coupled ones, or each alone in an equation; None otherwise."""
+    size = inertia.rows
+    if size <= 2:
+        found = -inertia.adjugate() * rest
+        return [x / inertia.det() for x in found]
+    alone = {j: i for i in range(size) for j in [j for j in range(size) if inertia[i, j] != 0][:1]}
+    if len(alone) < size or any(sum(x != 0 for x in inertia.row(i)) != 1 for i in range(size)):
+        return None
+    return [-rest[alone[j]] / inertia[alone[j], j] for j in range(size)]
+
+
+def _hidden(problem: Problem, x: Sequence[sp.Symbol], v: Sequence[sp.Symbol], a: Sequence[sp.Symbol]) -> list[sp.Expr]:
+    """The equations in symbols for displacements, velocities and accelerations, every relation put in."""
+    derivatives, places = {}, {}
+    for k, u in enumerate(problem.unknowns):
+        derivatives[u.diff(problem.time, 2)], derivatives[u.diff(problem.time)], places[u] = a[k], v[k], x[k]
+    equations = [problem.with_relations(e.xreplace(derivatives).xreplace(places)) for e in problem.equations]
+    # At leading order: at rest, without the small parameter and without parameters that carry an order.
+    ordered = [s for s, q in (problem.ordering or {}).items() if isinstance(s, sp.Symbol) and q]
+    leading = dict.fromkeys([*x, *v, *a, problem.small, *ordered], sp.Integer(0))
+    for u, value in problem.resonances:
+        if u not in problem.unknowns:
+            continue
+        # A relation for an unknown gives its natural frequency: own stiffness becomes inertia times its square.
+        k = problem.unknowns.index(u)
+        masses = [sp.diff(e, a[k]).subs(leading) for e in equations]
+        i = next(i for i, mass in enumerate(masses) if mass != 0)
+        stiffness = sp.diff(equations[i], x[k]).subs(leading)
+        square = problem.with_relations(value) ** 2
+        equations[i] = sp.expand(equations[i] - stiffness * x[k]) + masses[i] * square * x[k]
+    return equations
