@@ -1,8 +1,9 @@
 """The slow state of given displacement and velocity at t = 0 as a series in ε, for one undriven oscillator.
 
-With w = ½(u − i u'/ω), the state of the linear oscillator, and Z = ½ Σ εⁿ (U_n − i V_n/ω) = z + εZ_1 + …,
+With w = ½(u − i u'/ω), the state of the linear oscillator, and Z = ½ Σ εⁿ (U_n − i V_n/ω) = z + R + εZ_1 + …, R the
+response to a constant force of order ε⁰,
 
-    w = z + Σ_{n≥1} εⁿ Z_n(z, z̄),        z = w − Σ_{n≥1} εⁿ Z_n(z, z̄)
+    w = z + R + Σ_{n≥1} εⁿ Z_n(z, z̄),        z = w − R − Σ_{n≥1} εⁿ Z_n(z, z̄)
 
 is solved one power of ε after the other, exactly. At t = 0 the frame has turned through no angle: z = A = ½(p − iq).
 """
@@ -77,7 +78,8 @@ def _inverted(expansion: Expansion) -> tuple[Ring, Series]:
     fields = zip(tower.component((0, 0)), tower.component((0, 1)), strict=True)
     states = [ring.normal(half * (ring.lift(u) - over * ring.lift(v))) for u, v in fields]
     parts = [_by_power(ring, x) for x in states]
-    z: Series = [ring.generators[ring.spec.first_pair], *(ring.zero for _ in states[1:])]
+    own = ring.generators[ring.spec.first_pair]
+    z: Series = [ring.normal(own + own - states[0]), *(ring.zero for _ in states[1:])]
     for n in range(1, len(z)):
         z[n] = ring.normal(-_composed(ring, parts, z, n))
     return ring, z

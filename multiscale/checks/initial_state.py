@@ -17,10 +17,12 @@ import numpy.typing as npt
 import sympy as sp
 
 from multiscale.checks.initial_series import initial_series
+from multiscale.codegen.numpy_function import NumpyFunction
 from multiscale.errors import EvaluationError, UnsupportedTermError
 from multiscale.expansion import Expansion
+from multiscale.problem import Problem
 
-__all__ = ["initial_state"]
+__all__ = ["check_free", "initial_state", "state_by"]
 
 Array = npt.NDArray[Any]
 STEP = 1e-30
@@ -82,23 +84,39 @@ def initial_state(
     """
     if not isinstance(expansion, Expansion):
         raise EvaluationError(f"initial_state was given a {type(expansion).__name__}: call expand first")
-    places, velocities = _read(expansion, conditions)
-    if expansion.computation.modes != len(expansion.problem.unknowns):
-        raise UnsupportedTermError(
-            f"the expansion has {expansion.computation.modes} modes for {len(expansion.problem.unknowns)} unknowns, "
-            "whose initial conditions are then not all free: give the slow state itself"
-        )
+    places, velocities = _read(expansion.problem, conditions)
+    check_free(expansion)
     if parameters is None:
         return initial_series(expansion, places, velocities)
-    motion = _Motion(expansion, parameters, time, places, velocities)
+    return state_by([expansion.to_numpy(derivative=d) for d in (0, 1)], expansion.problem, conditions, parameters, time)
+
+
+def check_free(expansion: Expansion) -> None:
+    """Whether every initial condition is free: as many modes as unknowns."""
+    modes, unknowns = expansion.computation.modes, len(expansion.problem.unknowns)
+    if modes != unknowns:
+        raise UnsupportedTermError(
+            f"the expansion has {modes} modes for {unknowns} unknowns, whose initial conditions are then not all free: "
+            "give the slow state itself"
+        )
+
+
+def state_by(
+    functions: Sequence[NumpyFunction],
+    problem: Problem,
+    conditions: Mapping[sp.Expr, Any],
+    parameters: Mapping[Any, Any],
+    time: npt.ArrayLike = 0.0,
+) -> Array:
+    """The same by the functions of displacement and velocity, once they are made."""
+    motion = _Motion(functions, problem, parameters, time, *_read(problem, conditions))
     state = _solved(motion)
     _check(motion, state)
     return state
 
 
-def _read(expansion: Expansion, conditions: Mapping[sp.Expr, Any]) -> tuple[list[Any], list[Any]]:
+def _read(problem: Problem, conditions: Mapping[sp.Expr, Any]) -> tuple[list[Any], list[Any]]:
     """Values in the order of the unknowns: displacements, velocities."""
-    problem = expansion.problem
     wanted = [(u, u.diff(problem.time)) for u in problem.unknowns]
     names = ", ".join(str(x) for pair in wanted for x in pair)
     if not isinstance(conditions, Mapping):
@@ -119,14 +137,14 @@ class _Motion:
 
     def __init__(
         self,
-        expansion: Expansion,
+        functions: Sequence[NumpyFunction],
+        problem: Problem,
         parameters: Mapping[Any, Any],
         time: npt.ArrayLike,
         places: Sequence[Any],
         velocities: Sequence[Any],
     ) -> None:
-        functions = [expansion.to_numpy(derivative=d) for d in (0, 1)]
-        t, unknowns = expansion.problem.time, expansion.problem.unknowns
+        t, unknowns = problem.time, problem.unknowns
         names = [str(u) for u in unknowns] + [str(u.diff(t)) for u in unknowns]
         pairs = zip(functions[0].parameters, functions[0].values(parameters), strict=True)
         self._arguments = [_numbers(time, str(t)), *(_numbers(x, f"parameter {name}") for name, x in pairs)]
@@ -140,7 +158,7 @@ class _Motion:
             ) from None
         self._kernels = [f.kernel for f in functions]
         self._wanted = np.array([np.broadcast_to(x, self.batch) for x in wanted])
-        self.rest = np.zeros((2 * expansion.computation.modes, *self.batch))
+        self.rest = np.zeros((functions[0].size, *self.batch))
         self._scale = self._scales(len(unknowns))
 
     def _scales(self, count: int) -> Array:

@@ -7,14 +7,16 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 import sympy as sp
 
-from multiscale.checks.initial_state import initial_state
+from multiscale.checks.initial_state import check_free, state_by
 from multiscale.checks.integration import integrated, motion_as_stated
+from multiscale.codegen.numpy_function import NumpyFunction
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
 
@@ -54,6 +56,8 @@ class Run:
             reach = np.nan
         if not 0 < reach < np.inf:
             raise EvaluationError(f"horizon is {horizon!r}: expected a positive number, the time is horizon/ε^power")
+        if isinstance(initial, Mapping) or expansion.problem.ordering is not None:
+            check_free(expansion)
         start: Mapping[sp.Expr, float] | Array = initial if isinstance(initial, Mapping) else _state(expansion, initial)
         if isinstance(start, Mapping) and (several := [key for key, x in start.items() if np.ndim(x)]):
             raise EvaluationError(f"the condition for {several[0]} is an array: compare takes one motion")
@@ -61,10 +65,8 @@ class Run:
 
     def at(self, small: float) -> tuple[float, float]:
         """(error, floor) at one value of the small parameter."""
-        expansion, problem = self.expansion, self.expansion.problem
-        bound = self._scaled(small)
-        flow = expansion.slow_flow.to_numpy().bind(bound)
-        place, velocity = (expansion.to_numpy(derivative=d).bind(bound) for d in (0, 1))
+        problem, bound = self.expansion.problem, self._scaled(small)
+        flow, place, velocity = (f.bind(bound) for f in self._functions)
         slow = self._start(small, bound)
         if isinstance(self.initial, Mapping):
             start = [self._own(u, small) * float(self.initial[u]) for u in self._conditions]
@@ -84,6 +86,12 @@ class Run:
         floor = np.abs(exact[0] - exact[1]).max() + np.abs(approximate[0] - approximate[1]).max()
         return float(np.abs(approximate[0] - exact[0]).max()) / largest, float(floor) / largest
 
+    @cached_property
+    def _functions(self) -> tuple[NumpyFunction, NumpyFunction, NumpyFunction]:
+        """Slow flow, displacement, velocity."""
+        expansion = self.expansion
+        return expansion.slow_flow.to_numpy(), expansion.to_numpy(), expansion.to_numpy(derivative=1)
+
     @property
     def _conditions(self) -> list[sp.Expr]:
         unknowns = self.expansion.problem.unknowns
@@ -92,7 +100,7 @@ class Run:
     def _own(self, key: sp.Expr, small: float) -> float:
         """ε to the order of an unknown, of the unknown of a velocity, or of a parameter; 1 without `ordering`."""
         orders = self.expansion.problem.ordering or {}
-        return float(small ** orders.get(key.args[0] if key.is_Derivative else key, 0))
+        return float(small ** orders.get(key.args[0] if isinstance(key, sp.Derivative) else key, 0))
 
     def _scaled(self, small: float) -> dict[str, float]:
         problem = self.expansion.problem
@@ -103,7 +111,7 @@ class Run:
     def _start(self, small: float, bound: Mapping[str, float]) -> Array:
         if isinstance(self.initial, Mapping):
             scaled = {key: self._own(key, small) * np.asarray(x) for key, x in self.initial.items()}
-            return np.asarray(initial_state(self.expansion, scaled, bound))
+            return state_by(self._functions[1:], self.expansion.problem, scaled, bound)
         scales = [self._own(u, small) for u in self.expansion.problem.unknowns]
         state: Array = self.initial * np.repeat(scales, 2)
         return state

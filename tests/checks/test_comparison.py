@@ -6,7 +6,6 @@ leaves an error ε^{n−1}, one of U_n, n ≤ N − 1, an error εⁿ; one of U_
 
 from __future__ import annotations
 
-import matplotlib
 import numpy as np
 import pytest
 
@@ -140,6 +139,7 @@ def test_results_are_frozen():
 
 
 def test_plot():
+    matplotlib = pytest.importorskip("matplotlib")
     matplotlib.use("Agg")
     found = compared("inertial", expanded("inertial", 3), (0.08, 0.04, 0.002))
     axes = found.plot()
@@ -165,6 +165,7 @@ def test_plot():
         ({"parameters": {w: np.nan}}, "omega is nan: expected a finite number"),
         ({"initial": {u: 1.0}}, r"velocity Derivative\(u\(t\), t\) is missing"),
         ({"initial": {u: np.zeros(3), du: 0.0}}, "is an array: compare takes one motion"),
+        ({"initial": {"u": 1.0, du: 0.0}}, "condition for u: expected the unknowns and their velocities"),
         ({"initial": [1.0]}, "slow state of 2 finite numbers"),
         ({"initial": "rest"}, "slow state of 2 finite numbers"),
         ({"small_values": [0.1]}, "at least two different positive values"),
