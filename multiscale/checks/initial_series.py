@@ -27,6 +27,8 @@ from multiscale.problem.reading import given_expression
 __all__ = ["initial_series"]
 
 HALF = Fraction(1, 2)
+FACTOR_LIMIT = 3000
+"""Operations beyond which factoring would take longer than the series itself."""
 Series = list[Any]
 
 
@@ -52,8 +54,13 @@ def initial_series(expansion: Expansion, places: list[Any], velocities: list[Any
             real.append(a * cosine - b * sine)
             imag.append(a * sine + b * cosine)
         for symbol, terms in ((p, real), (q, [-x for x in imag])):
-            found[symbol] += problem.small**n * sp.Add(*terms).xreplace(start)
+            found[symbol] += problem.small**n * _compact(sp.Add(*terms).xreplace(start))
     return found
+
+
+def _compact(x: sp.Expr) -> sp.Expr:
+    """Factored over one denominator; floats and very long coefficients are left as they are."""
+    return x if x.atoms(sp.Float) or x.count_ops() > FACTOR_LIMIT else sp.factor(x)
 
 
 def _expression(expansion: Expansion, x: Any) -> sp.Expr:

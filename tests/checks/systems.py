@@ -16,6 +16,7 @@ from multiscale.convention import rebuilt
 t = sp.Symbol("t", real=True)
 names = "epsilon mu alpha beta f h sigma omega omega_1 omega_2 Omega lambda"
 eps, mu, alpha, beta, f, h, sigma, w, w1, w2, Om, lam = sp.symbols(names, positive=True)
+Om2 = sp.Symbol("Omega_2", positive=True)
 u, v = sp.Function("u")(t), sp.Function("v")(t)
 du, dv, ddu, ddv = u.diff(t), v.diff(t), u.diff(t, 2), v.diff(t, 2)
 VALUES = {
@@ -89,6 +90,9 @@ SYSTEMS = {
         ddu + w**2 * u + 2 * mu * du + alpha * u**2 + beta * u**3 - f * sp.cos(Om * t),
         resonances={Om: w + sigma},
         ordering={u: 1, mu: 1, f: 2, sigma: 1},
+    ),
+    "two drives": System(
+        cubic - eps * f * (sp.cos(Om * t) + sp.sin(Om2 * t)), resonances={Om: w + eps * sigma, Om2: w - eps * lam}
     ),
     "slow stiffness": System(ddu + w**2 * (1 + eps * t / 4) * u + eps * (mu * du + alpha * u**3)),
 }

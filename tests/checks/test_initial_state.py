@@ -120,11 +120,12 @@ def test_the_mismatch_of_the_series(name: str, order: int):
     assert list(found) == [p, q]
     small = sp.Symbol("epsilon", positive=True)
     numbers = {x0: sp.Rational(3, 5), v0: -sp.Rational(2, 5)}
-    place = expansion.solution("cartesian")[u]
+    place = expansion.solution("cartesian")[u].subs(values)
     # V = Σ D_k U_n: the slow flow makes the velocity of p and q.
-    flow = expansion.slow_flow.cartesian
+    flow = {s: rate.subs(values) for s, rate in expansion.slow_flow.cartesian.items()}
     whole = place.diff(t) + sum(place.diff(s) * rate for s, rate in flow.items())
-    velocity = sum(sp.expand(whole).coeff(small, n) * small**n for n in range(order + 1))
+    whole = sp.expand(whole.subs(t, 0))
+    velocity = sum(whole.coeff(small, n) * small**n for n in range(order + 1))
     functions = [sp.lambdify((p, q, small), x.subs(values).subs(t, 0), "mpmath") for x in (place, velocity)]
     state = [sp.expand(x.subs(values).subs(numbers)) for x in found.values()]
     shorter = [sum(x.coeff(small, n) * small**n for n in range(order)) for x in state]
@@ -151,6 +152,19 @@ def test_series_and_number_agree():
         number = ms.initial_state(expansion, {u: 0.5, du: -1 / 3}, values)
         misses.append(np.max(np.abs(number - [float(x.subs(values)) for x in found.values()])))
     assert np.log2(misses[1] / misses[2]) > 4 - 0.2
+
+
+def test_a_series_where_the_frequency_is_a_root():
+    """m u'' + k u + …: ω = √(k/m) is no parameter of the problem."""
+    m, k = sp.symbols("m k", positive=True)
+    expansion = ms.expand(ms.Problem(m * ddu + k * u + eps * (u**2 + mu * du), u, small=eps), 2)
+    found = ms.initial_state(expansion, {u: sp.Rational(1, 2), du: sp.Rational(1, 5)})
+    misses = []
+    for small in (0.02, 0.01):
+        values = {m: 1.7, k: 2.9, mu: 0.4, eps: small}
+        number = ms.initial_state(expansion, {u: 0.5, du: 0.2}, values)
+        misses.append(np.max(np.abs(number - [float(x.subs(values)) for x in found.values()])))
+    assert np.log2(misses[0] / misses[1]) > 3 - 0.2
 
 
 def test_the_cubic_oscillator_at_its_peak():
