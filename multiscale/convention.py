@@ -40,6 +40,8 @@ def obstacle(computation: Computation) -> str:
     canonical, tower = computation.canonical, computation.hierarchy.tower
     if computation.modes != 1:
         return f"the problem has {computation.modes} modes, and an extremum depends on the phases between them"
+    if len(tower.jets[0][0]) != 1:
+        return f"the problem has {len(tower.jets[0][0])} unknowns, each with an extremum of its own"
     if moving := [d.frequency for d in canonical.drives if d.frequency != 0]:
         return f"the problem has a drive of frequency {moving[0]}, and an extremum depends on the phase to it"
     if canonical.slow:

@@ -2,9 +2,9 @@
 
     Σ εⁿ U_n(t, y) = u,      Σ εⁿ V_n(t, y) = u',      n = 0 … N,      V_n = Σ_k D_k U_{n−k}
 
-solved for y = (p_1, q_1, p_2, …) by Newton's method from y = 0, where the equations are nearly those of the linear
-oscillator. Drives have their exact phase at time t. Derivatives are taken with a complex step, Im f(y + ih)/h, which is
-exact to rounding because the generated functions are analytic in y.
+solved for y = (p_1, q_1, p_2, …) by Newton's method. It begins at the linear motion, which
+is read off at an amplitude of a hundredth of the motion asked for: not at zero, where forces such as |u'|u' have no
+derivatives of every order. Drives have their exact phase at time t.
 """
 
 from __future__ import annotations
@@ -25,7 +25,10 @@ from multiscale.problem import Problem
 __all__ = ["check_free", "initial_state", "state_by"]
 
 Array = npt.NDArray[Any]
-STEP = 1e-30
+STEP = 1e-5
+"""Of derivatives by central differences, relative to the size of the motion."""
+LINEAR = 1e-2
+"""The amplitude, relative to the size of the motion, at which the linear motion is read off."""
 ITERATIONS = 40
 HALVINGS = 12
 ROUNDING = 1e-15
@@ -110,8 +113,10 @@ def state_by(
 ) -> Array:
     """The same by the functions of displacement and velocity, once they are made."""
     motion = _Motion(functions, problem, parameters, time, *_read(problem, conditions))
-    state = _solved(motion)
-    _check(motion, state)
+    with np.errstate(all="ignore"):
+        state, within = _solved(motion)
+        size = _largest(motion.residual(state))
+    _check(size, within, motion.batch)
     return state
 
 
@@ -133,7 +138,10 @@ def _read(problem: Problem, conditions: Mapping[sp.Expr, Any]) -> tuple[list[Any
 
 
 class _Motion:
-    """Displacement and velocity as functions of the slow state, and what they shall be."""
+    """Displacements and velocities as functions of the slow state, and what they shall be.
+
+    Velocities are divided by the largest natural frequency throughout, so that all rows are displacements.
+    """
 
     def __init__(
         self,
@@ -147,103 +155,113 @@ class _Motion:
         t, unknowns = problem.time, problem.unknowns
         names = [str(u) for u in unknowns] + [str(u.diff(t)) for u in unknowns]
         pairs = zip(functions[0].parameters, functions[0].values(parameters), strict=True)
-        self._arguments = [_numbers(time, str(t)), *(_numbers(x, f"parameter {name}") for name, x in pairs)]
+        given = {str(t): _numbers(time, str(t))} | {name: _numbers(x, f"parameter {name}") for name, x in pairs}
         wanted = [_numbers(x, name) for x, name in zip([*places, *velocities], names, strict=True)]
-        shapes = [x.shape for x in (*self._arguments, *wanted)]
+        shapes = [x.shape for x in (*given.values(), *wanted)]
         try:
             self.batch = np.broadcast_shapes(*shapes)
         except ValueError:
             raise EvaluationError(
                 f"shapes of time, parameters and conditions do not broadcast: {', '.join(map(str, shapes))}"
             ) from None
-        self._kernels = [f.kernel for f in functions]
-        self._wanted = np.array([np.broadcast_to(x, self.batch) for x in wanted])
-        self.rest = np.zeros((functions[0].size, *self.batch))
-        self._scale = self._scales(len(unknowns))
+        frequency = np.broadcast_to(_largest_frequency(problem, given), self.batch)
+        self._arguments, self._kernels = list(given.values()), [f.kernel for f in functions]
+        self._weights = np.array([np.ones(self.batch)] * len(unknowns) + [1 / frequency] * len(unknowns))
+        self._wanted = np.array([np.broadcast_to(x, self.batch) for x in wanted]) * self._weights
+        self._directions = np.eye(functions[0].size)
+        self.size = self._sized()
 
-    def _scales(self, count: int) -> Array:
-        """The size of each equation: the largest displacement, for velocities times the largest frequency."""
-        slope, at_rest = np.abs(self.slope(self.rest)), np.abs(self._motion(self.rest))
-        frequency = slope[count:].max(axis=(0, 1)) / slope[:count].max(axis=(0, 1))
-        largest = np.maximum(np.abs(self._wanted), at_rest)
-        size = np.maximum(largest[:count].max(axis=0), largest[count:].max(axis=0) / frequency)
-        size = np.where(size > 0, size, 1.0)
-        return np.concatenate([np.stack([x] * count) for x in (size, size * frequency)])
+    def _sized(self) -> Array:
+        """The largest displacement that is asked for, or that a drive makes at rest."""
+        with np.errstate(all="ignore"):
+            at_rest = self._at(np.zeros((len(self._directions), *self.batch)))
+        driven = np.where(np.isfinite(at_rest), np.abs(at_rest), 0.0)
+        size = np.maximum(np.abs(self._wanted), driven).max(axis=0)
+        return np.where(size > 0, size, 1.0)
 
-    def _motion(self, state: Array) -> Array:
+    def _at(self, state: Array) -> Array:
         instant, *values = self._arguments
         rows = [x for kernel in self._kernels for x in kernel(instant, *state, *values)]
-        return np.array([np.broadcast_to(x, self.batch) for x in rows])
+        motion: Array = np.array([np.broadcast_to(x, self.batch) for x in rows]) * self._weights
+        return motion
 
     def residual(self, state: Array) -> Array:
-        difference: Array = (self._motion(state) - self._wanted) / self._scale
+        """What is missing to the motion that is asked for, relative to its size."""
+        difference: Array = (self._at(state) - self._wanted) / self.size
         return difference
 
-    def slope(self, state: Array) -> Array:
-        """Derivative of the motion by the state, (2n, 2n) + B."""
-        columns = []
-        for k in range(len(state)):
-            moved = state.astype(np.complex128)
-            moved[k] += 1j * STEP
-            columns.append(self._motion(moved).imag / STEP)
-        return np.stack(columns, axis=1)
+    def slope(self, state: Array, step: float) -> tuple[Array, Array]:
+        """(differences of the residual over ± step·size in each direction, B + (2n, 2n), means of the two sides)."""
+        columns, means = [], []
+        for direction in self._directions:
+            move = step * self.size * direction.reshape(-1, *(1 for _ in self.batch))
+            upper, lower = self.residual(state + move), self.residual(state - move)
+            columns.append((upper - lower) / (2 * step))
+            means.append((upper + lower) / 2)
+        return np.moveaxis(np.stack(columns, axis=1), (0, 1), (-2, -1)), np.mean(means, axis=0)
 
-    def linear(self, change: Array) -> Array:
-        """What a change of the slow state makes of the motion near rest, in units of the displacement."""
-        moved: Array = np.einsum("jk...,k...->j...", self.slope(self.rest), change) / self._scale
-        return moved
-
-    def step(self, state: Array, residual: Array) -> Array:
-        """Newton's step; least squares where the equations are singular."""
-        matrix = np.moveaxis(self.slope(state) / self._scale[:, None], (0, 1), (-2, -1))
+    def step(self, matrix: Array, residual: Array) -> Array:
+        """The change of state that makes up for a residual; least squares where the equations are singular."""
         right = np.moveaxis(residual, 0, -1)[..., None]
         try:
             found = np.linalg.solve(matrix, right)
         except np.linalg.LinAlgError:
             found = np.linalg.pinv(matrix) @ right
-        return np.moveaxis(found[..., 0], -1, 0)
+        change: Array = -self.size * np.moveaxis(found[..., 0], -1, 0)
+        return change
 
 
-def _solved(motion: _Motion) -> Array:
-    """Newton's method on all entries together; each step is halved until the residual of its entry falls."""
-    state = motion.rest
-    with np.errstate(all="ignore"):
-        residual = motion.residual(state)
-        for _ in range(ITERATIONS):
-            size, step = _largest(residual), motion.step(state, residual)
-            pending = size > ROUNDING
-            share = 1.0
-            for _ in range(HALVINGS):
-                trial = np.where(pending, state - share * step, state)
-                found = motion.residual(trial)
-                better = pending & (_largest(found) < size)
-                state, residual = np.where(better, trial, state), np.where(better, found, residual)
-                pending, share = pending & ~better, share / 2
-                if not pending.any():
-                    break
-            if np.all(_largest(residual) >= size):
+def _solved(motion: _Motion) -> tuple[Array, bool]:
+    """(state, whether it lies where the correction terms are smaller than the motion itself), entry by entry.
+
+    Newton's method on all entries together; each step is halved until the residual of its entry falls.
+    """
+    zero = np.zeros((len(motion._directions), *motion.batch))
+    plain, mean = motion.slope(zero, LINEAR)
+    linear = motion.step(plain, mean)
+    state, residual = linear, motion.residual(linear)
+    for _ in range(ITERATIONS):
+        size = _largest(residual)
+        step = motion.step(motion.slope(state, STEP)[0], residual)
+        pending, share = size > ROUNDING, 1.0
+        for _ in range(HALVINGS):
+            trial = np.where(pending, state + share * step, state)
+            found = motion.residual(trial)
+            better = pending & (_largest(found) < size)
+            state, residual = np.where(better, trial, state), np.where(better, found, residual)
+            pending, share = pending & ~better, share / 2
+            if not pending.any():
                 break
-    return state
+        if np.all(_largest(residual) >= size):
+            break
+    # Where displacement and velocity turn back as functions of the state, the determinant has changed its sign.
+    correction = _largest(np.einsum("...jk,k...->j...", plain, (state - linear) / motion.size))
+    turned = np.linalg.det(motion.slope(state, STEP)[0]) * np.linalg.det(plain)
+    return state, bool(np.all((turned > 0) & (correction < 1)))
 
 
-def _check(motion: _Motion, state: Array) -> None:
-    size = _largest(motion.residual(state))
+def _check(size: Array, within: bool, batch: tuple[int, ...]) -> None:
     if bad := int(np.count_nonzero(size > TOLERANCE)):
-        where = f" at {bad} of {size.size} entries" if motion.batch else ""
+        where = f" at {bad} of {size.size} entries" if batch else ""
         raise EvaluationError(
             f"no slow state was found for these conditions{where}: Newton's method leaves a residual of "
             f"{float(size.max()):.2g} of the displacement. The amplitude is out of the range in which the correction "
             "terms of this expansion are small: begin with a smaller amplitude or small parameter"
         )
-    rest = motion.rest
-    turned, plain = (np.linalg.det(np.moveaxis(motion.slope(y), (0, 1), (-2, -1))) for y in (state, rest))
-    linear = rest - motion.step(rest, motion.residual(rest))
-    correction = _largest(motion.linear(state - linear))
-    if np.any((turned * plain <= 0) | (correction > 1)):
+    if not within:
         raise EvaluationError(
             "the amplitude is out of range: in the slow state found, the correction terms outweigh the motion itself. "
             "Begin with a smaller amplitude or small parameter"
         )
+
+
+def _largest_frequency(problem: Problem, given: Mapping[str, Array]) -> Array:
+    found = []
+    for x in map(sp.sympify, problem.natural_frequencies):
+        symbols = sorted(x.free_symbols, key=str)
+        found.append(np.asarray(sp.lambdify(symbols, x, "numpy")(*(given[s.name] for s in symbols)), dtype=float))
+    largest: Array = np.max(np.broadcast_arrays(*found), axis=0)
+    return largest
 
 
 def _largest(residual: Array) -> Array:

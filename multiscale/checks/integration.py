@@ -57,20 +57,22 @@ def integrated(rhs: Callable[[float, Array], Any], start: Array, times: Array, s
 def motion_as_stated(
     problem: Problem,
     values: tuple[tuple[str, float], ...],
-    start: tuple[float, ...],
+    places: tuple[float, ...],
+    velocities: tuple[float, ...],
     end: float,
     points: int,
     size: int,
 ) -> tuple[Array, ...]:
     """Displacements (unknowns, points) from 0 to `end` for each tolerance, by the equations as stated.
 
-    `start` holds displacements, then velocities; the size of the motion is 10^`size`. Orders of one expansion are
+    `places` and `velocities` are those at the start; the size of the motion is 10^`size`. Orders of one expansion are
     compared with the same motion, so the latest ones are kept.
     """
     times = np.linspace(0.0, end, points)
-    rhs = stated(problem).rhs(dict(values))
-    found = integrated(rhs, np.array(start), times, 10.0**size, "the equations as stated")
-    places = tuple(y[: len(problem.unknowns)].copy() for y in found)
-    for y in places:
+    equations = stated(problem)
+    start = np.array(equations.start(places, velocities))
+    found = integrated(equations.rhs(dict(values)), start, times, 10.0**size, "the equations as stated")
+    motion = tuple(y[: equations.size].copy() for y in found)
+    for y in motion:
         y.flags.writeable = False
-    return places
+    return motion

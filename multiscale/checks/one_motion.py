@@ -72,6 +72,7 @@ class Run:
             start = [self._own(u, small) * float(self.initial[u]) for u in self._conditions]
         else:
             start = [*place(0.0, slow).tolist(), *velocity(0.0, slow).tolist()]
+        count = len(problem.unknowns)
         end = self.horizon / small**self.power
         times = np.linspace(0.0, end, self.points)
         span = float(np.max(np.abs([*slow, *(end * flow(0.0, slow))])))
@@ -79,7 +80,7 @@ class Run:
         approximate = [place(times, y) for y in slow_motions]
         size = int(np.floor(np.log10(max(float(np.abs(approximate[0]).max()), 1e-300))))
         numbers = tuple(sorted(bound.items()))
-        exact = motion_as_stated(problem, numbers, tuple(start), end, self.points, size)
+        exact = motion_as_stated(problem, numbers, tuple(start[:count]), tuple(start[count:]), end, self.points, size)
         largest = float(np.abs(exact[0]).max())
         if not largest > 0:
             raise EvaluationError("the motion stays at rest: give initial conditions that are not zero")

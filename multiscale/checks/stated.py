@@ -2,8 +2,9 @@
 
     F(u, u', u'', t) = 0      →      u' = v,   v' = a   with   F(u, v, a, t) = 0
 
-solved for the accelerations: in closed form where they enter linearly (also with inertia that depends on the motion),
-by Newton's method where they do not. Nothing is expanded: relations are put in exactly, drives keep their exact phase.
+solved for the highest derivatives: in closed form where they enter linearly (also with inertia that depends on the
+motion), by Newton's method where they do not. An unknown without an acceleration has its velocity in the place of it.
+Nothing is expanded: relations are put in exactly, drives keep their exact phase.
 """
 
 from __future__ import annotations
@@ -29,37 +30,48 @@ ITERATIONS = 30
 
 @dataclass(frozen=True, eq=False)
 class Stated:
-    """`compiled` gives the accelerations, or (F, ∂F/∂a) at given ones where `implicit`; `parameters` are its last
-    arguments, by name."""
+    """`compiled` gives the highest derivatives, or (F, its Jacobian) at given ones where `implicit`; its last arguments
+    are the `parameters`. `second` are the unknowns that have a velocity of their own."""
 
     size: int
+    second: tuple[int, ...]
     parameters: tuple[str, ...]
     compiled: Callable[..., Any]
     implicit: bool
 
+    def start(self, places: Sequence[float], velocities: Sequence[float]) -> tuple[float, ...]:
+        """y of given displacements and velocities."""
+        return (*places, *(velocities[k] for k in self.second))
+
     def rhs(self, values: Mapping[str, float]) -> RightHandSide:
-        """f(t, y) for y = (u_1, …, u_n, u_1', …, u_n'); not-a-number where the equations have no finite value."""
+        """f(t, y) for y = (u_1, …, u_n, u_1', …), velocities of the `second`; not-a-number where there is no value."""
         n, numbers, compiled = self.size, [values[name] for name in self.parameters], self.compiled
         nowhere = [np.nan] * n
 
-        def explicit(time: float, y: Array) -> list[float]:
-            state = y.tolist()
+        def highest(time: float, state: list[float]) -> list[float]:
             try:
-                return [*state[n:], *compiled(time, *state, *numbers)]
-            except (ArithmeticError, ValueError):
-                return [*state[n:], *nowhere]
-
-        def implicit(time: float, y: Array) -> list[float]:
-            state = y.tolist()
-            try:
-                return [*state[n:], *_accelerations(lambda a: compiled(time, *state, *a, *numbers), n)]
+                if self.implicit:
+                    return _newton(lambda x: compiled(time, *state, *x, *numbers), n)
+                return list(compiled(time, *state, *numbers))
             except (ArithmeticError, ValueError, np.linalg.LinAlgError):
-                return [*state[n:], *nowhere]
+                return nowhere
 
-        return implicit if self.implicit else explicit
+        def all_second(time: float, y: Array) -> list[float]:
+            state = y.tolist()
+            return [*state[n:], *highest(time, state)]
+
+        def mixed(time: float, y: Array) -> list[float]:
+            state = y.tolist()
+            found = highest(time, state)
+            velocities = list(found)
+            for place, k in enumerate(self.second):
+                velocities[k] = state[n + place]
+            return [*velocities, *(found[k] for k in self.second)]
+
+        return all_second if len(self.second) == n else mixed
 
 
-def _accelerations(equations: Callable[[list[float]], Any], n: int) -> list[float]:
+def _newton(equations: Callable[[list[float]], Any], n: int) -> list[float]:
     a = np.zeros(n)
     for _ in range(ITERATIONS):
         residual, slope = equations(a.tolist())
@@ -84,26 +96,30 @@ def stated(problem: Problem) -> Stated:
     plain = {problem.time: time} | ({problem.small: sp.Integer(1)} if problem.ordering is not None else {})
     equations = [e.subs(plain) for e in equations]
     names = {s.name: s for s in (*problem.parameters, problem.small)}
-    used = set().union(*(e.free_symbols for e in equations)) - {time, *x, *v, *a}
+    present = set().union(*(e.free_symbols for e in equations))
+    used = present - {time, *x, *v, *a}
+    second = tuple(k for k in count if a[k] in present)
+    highest = [a[k] if k in second else v[k] for k in count]
+    state = [*x, *(v[k] for k in second)]
     if strange := sorted(used - set(names.values()), key=str):
         raise EvaluationError(f"the equations contain {strange[0]}, which is no parameter of the problem")
     if unknown := sorted(set().union(*(e.atoms(sp.core.function.AppliedUndef) for e in equations)), key=str):
         shown = unknown[0].subs(time, problem.time)
         raise EvaluationError(f"{shown} has no numeric value: state the problem with a known function in its place")
     parameters = sorted((s for s in used), key=lambda s: str(s.name))
-    inertia = sp.Matrix([[sp.diff(e, y) for y in a] for e in equations])
-    rest = sp.Matrix([e.subs(dict.fromkeys(a, 0)) for e in equations])
-    explicit = None if inertia.free_symbols & set(a) else _explicit(inertia, rest)
+    inertia = sp.Matrix([[sp.diff(e, y) for y in highest] for e in equations])
+    rest = sp.Matrix([e.subs(dict.fromkeys(highest, 0)) for e in equations])
+    explicit = None if inertia.free_symbols & set(highest) else _explicit(inertia, rest)
     if explicit is not None:
-        arguments, output = [time, *x, *v, *parameters], explicit
+        arguments, output = [time, *state, *parameters], explicit
     else:
-        arguments, output = [time, *x, *v, *a, *parameters], [equations, list(inertia)]
+        arguments, output = [time, *state, *highest, *parameters], [equations, list(inertia)]
     compiled = sp.lambdify(arguments, output, modules="math", cse=True)
-    return Stated(len(x), tuple(str(s.name) for s in parameters), compiled, explicit is None)
+    return Stated(len(x), second, tuple(str(s.name) for s in parameters), compiled, explicit is None)
 
 
 def _explicit(inertia: sp.Matrix, rest: sp.Matrix) -> list[sp.Expr] | None:
-    """The accelerations in closed form: one or two coupled ones, or each alone in an equation; None otherwise."""
+    """The highest derivatives in closed form: one or two coupled ones, or each alone in an equation; None otherwise."""
     size = inertia.rows
     if size <= 2:
         found = -inertia.adjugate() * rest

@@ -229,7 +229,7 @@ def extremum(function, guess, sign):
 
 
 @pytest.mark.parametrize("name", ["damped", "van der Pol", "constant force", "constant force at leading order"])
-@pytest.mark.parametrize("order", [1, 2, 4])
+@pytest.mark.parametrize("order", [1, 2, pytest.param(4, marks=pytest.mark.slow)])
 def test_the_peak_found_numerically(name: str, order: int):
     """Half peak-to-peak of the fields in the fundamental, by root finding at tiny ε, is the other form's amplitude.
 

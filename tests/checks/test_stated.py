@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -150,3 +151,23 @@ def test_parameters_of_the_stated_equations():
     problem = ms.Problem(h * ddu + h * w**2 * u + eps * alpha * u**3, u, small=eps)
     assert stated(problem).parameters == ("alpha", "epsilon", "h", "omega")
     assert stated(problem) is stated(ms.Problem(h * ddu + h * w**2 * u + eps * alpha * u**3, u, small=eps))
+
+
+def test_first_order_equations_among_others():
+    """An unknown without an acceleration: its velocity is solved for, and the state has no place for it."""
+    problem = SimpleNamespace(
+        equations=(ddu + w**2 * u + eps * v, v.diff(t) + alpha * v - u.diff(t) ** 2),
+        unknowns=(u, v),
+        time=t,
+        small=eps,
+        ordering=None,
+        resonances=(),
+        parameters=(alpha, w),
+        with_relations=lambda x: x,
+    )
+    equations = stated.__wrapped__(problem)
+    assert equations.second == (0,)
+    assert equations.start([1.0, 2.0], [3.0, 4.0]) == (1.0, 2.0, 3.0)
+    found = equations.rhs(NUMBERS)(0.0, np.array([0.4, -0.7, 0.3]))
+    wanted = [0.3, VALUES[alpha] * 0.7 + 0.09, -(VALUES[w] ** 2) * 0.4 + 0.3 * 0.7]
+    np.testing.assert_allclose(found, wanted, rtol=1e-14)
