@@ -113,6 +113,8 @@ class Run:
         if isinstance(self.initial, Mapping):
             scaled = {key: self._own(key, small) * np.asarray(x) for key, x in self.initial.items()}
             return state_by(self._functions[1:], self.expansion.problem, scaled, bound)
+        if self.expansion.problem.ordering is None:
+            return self.initial
         scales = [self._own(u, small) for u in self.expansion.problem.unknowns]
         state: Array = self.initial * np.repeat(scales, 2)
         return state

@@ -136,17 +136,43 @@ def _hidden(problem: Problem, x: Sequence[sp.Symbol], v: Sequence[sp.Symbol], a:
     for k, u in enumerate(problem.unknowns):
         derivatives[u.diff(problem.time, 2)], derivatives[u.diff(problem.time)], places[u] = a[k], v[k], x[k]
     equations = [problem.with_relations(e.xreplace(derivatives).xreplace(places)) for e in problem.equations]
+    named = set().union(*(e.free_symbols for e in problem.equations))
+    for key, value in problem.resonances:
+        if key in problem.unknowns:
+            k = problem.unknowns.index(key)
+            equations = _with_frequency(problem, equations, (*x, *v, *a), (x[k], a[k]), problem.with_relations(value))
+        elif not key.free_symbols & named:
+            raise _of_a_mode(key)
+    return equations
+
+
+def _with_frequency(
+    problem: Problem,
+    equations: list[sp.Expr],
+    jets: Sequence[sp.Symbol],
+    own: tuple[sp.Symbol, sp.Symbol],
+    frequency: sp.Expr,
+) -> list[sp.Expr]:
+    """The equations with a natural frequency given: own stiffness becomes inertia times its square.
+
+    `own` are the displacement and the acceleration of the unknown.
+    """
+    place, acceleration = own
     # At leading order: at rest, without the small parameter and without parameters that carry an order.
     ordered = [s for s, q in (problem.ordering or {}).items() if isinstance(s, sp.Symbol) and q]
-    leading = dict.fromkeys([*x, *v, *a, problem.small, *ordered], sp.Integer(0))
-    for u, value in problem.resonances:
-        if u not in problem.unknowns:
-            continue
-        # A relation for an unknown gives its natural frequency: own stiffness becomes inertia times its square.
-        k = problem.unknowns.index(u)
-        masses = [sp.diff(e, a[k]).subs(leading) for e in equations]
-        i = next(i for i, mass in enumerate(masses) if mass != 0)
-        stiffness = sp.diff(equations[i], x[k]).subs(leading)
-        square = problem.with_relations(value) ** 2
-        equations[i] = sp.expand(equations[i] - stiffness * x[k]) + masses[i] * square * x[k]
-    return equations
+    leading = dict.fromkeys([*jets, problem.small, *ordered], sp.Integer(0))
+    slopes = [{y: sp.diff(e, y).subs(leading) for y in jets} for e in equations]
+    i = next((i for i, slope in enumerate(slopes) if slope[acceleration] != 0), 0)
+    if any(slopes[i][y] != 0 for y in jets if y not in own) or any(
+        slope[y] != 0 for j, slope in enumerate(slopes) if j != i for y in own
+    ):
+        raise _of_a_mode(problem.unknowns[jets.index(place)])
+    changed = sp.expand(equations[i] - slopes[i][place] * place) + slopes[i][acceleration] * frequency**2 * place
+    return [*equations[:i], changed, *equations[i + 1 :]]
+
+
+def _of_a_mode(key: sp.Expr) -> EvaluationError:
+    return EvaluationError(
+        f"the relation for {key} gives the natural frequency of a mode of coupled equations, which then have another "
+        "stiffness than stated: state the equations with a stiffness that has this frequency, and compare those"
+    )

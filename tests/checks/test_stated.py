@@ -171,3 +171,19 @@ def test_first_order_equations_among_others():
     found = equations.rhs(NUMBERS)(0.0, np.array([0.4, -0.7, 0.3]))
     wanted = [0.3, VALUES[alpha] * 0.7 + 0.09, -(VALUES[w] ** 2) * 0.4 + 0.3 * 0.7]
     np.testing.assert_allclose(found, wanted, rtol=1e-14)
+
+
+def test_a_relation_for_a_mode_of_coupled_equations_is_refused():
+    coupled = SimpleNamespace(
+        equations=(ddu + 3 * u - v, ddv + 8 * v - u + eps * u * v),
+        unknowns=(u, v),
+        time=t,
+        small=eps,
+        ordering=None,
+        parameters=(sigma,),
+        with_relations=lambda x: x,
+    )
+    for key in (v, sp.Symbol("omega_9")):
+        coupled.resonances = ((key, 3 + eps * sigma),)
+        with pytest.raises(ms.EvaluationError, match="natural frequency of a mode of coupled equations"):
+            stated.__wrapped__(coupled)
