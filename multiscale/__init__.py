@@ -20,6 +20,9 @@ from multiscale.problem import Problem
 from multiscale.slow_flow import SlowFlow
 
 if TYPE_CHECKING:
+    from multiscale.checks.amplitude import with_amplitude
+    from multiscale.checks.comparison import Comparison, compare
+    from multiscale.checks.initial_state import initial_state
     from multiscale.fitting.model import Fit, fit
     from multiscale.fitting.response import ResponseModel, response_model
     from multiscale.fitting.ring_down import RingDownModel, ring_down_model
@@ -42,6 +45,7 @@ __version__ = "0.1.0"
 
 __all__ = [
     "Branch",
+    "Comparison",
     "CriticalDrive",
     "Equilibrium",
     "EvaluationError",
@@ -69,6 +73,7 @@ __all__ = [
     "StorageError",
     "UnsupportedTermError",
     "backbone",
+    "compare",
     "critical_drive",
     "effective_cubic",
     "effective_damping",
@@ -79,6 +84,7 @@ __all__ = [
     "frequency_response",
     "from_json",
     "harmonics",
+    "initial_state",
     "limit_cycles",
     "noisy_flow",
     "observable",
@@ -88,10 +94,12 @@ __all__ = [
     "threshold",
     "to_json",
     "transition_curves",
+    "with_amplitude",
 ]
 
 _LATER = {
     "Branch": "response.steady.branches",
+    "Comparison": "checks.comparison",
     "CriticalDrive": "response.steady.critical_drive",
     "Equilibrium": "response.steady.equilibria",
     "Fit": "fitting.model",
@@ -106,6 +114,7 @@ _LATER = {
     "RingDownModel": "fitting.ring_down",
     "Special": "response.steady.sweep",
     "backbone": "response.steady.backbone",
+    "compare": "checks.comparison",
     "critical_drive": "response.steady.critical_drive",
     "effective_cubic": "response.steady.backbone",
     "effective_damping": "response.steady.backbone",
@@ -114,6 +123,7 @@ _LATER = {
     "frequency_response": "response.steady.frequency_response",
     "from_json": "storage.document",
     "harmonics": "response.observable",
+    "initial_state": "checks.initial_state",
     "limit_cycles": "response.orbits.limit_cycles",
     "noisy_flow": "response.noise",
     "observable": "response.observable",
@@ -123,6 +133,7 @@ _LATER = {
     "threshold": "response.tongues.transition_curves",
     "to_json": "storage.document",
     "transition_curves": "response.tongues.transition_curves",
+    "with_amplitude": "checks.amplitude",
 }
 
 

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any, SupportsIndex
 import sympy as sp
 
 from multiscale.computed import Computation, Finished, Snapshot, begin, restore
+from multiscale.convention import to_fundamental, to_peak
 from multiscale.errors import MultiscaleError, OrderingWarning, ProblemError, ResonanceError, SmallDivisorWarning
 from multiscale.level import Level, Views, polynomials_below
 from multiscale.problem import Problem
@@ -58,7 +59,8 @@ class Expansion:
     order : int
         N: the levels 0 … N, the slow derivatives D_1 … D_N.
     amplitude : str
-        "fundamental": |2A| is the amplitude of the fundamental harmonic, to all orders.
+        "fundamental": |2A| is the amplitude of the fundamental harmonic, to all orders. "peak", made by
+        `with_amplitude`: it is half the distance from peak to peak, to the order of the expansion.
     tolerance : float
         Relative distance below which numeric frequencies count as close to resonance (`warnings`).
     """
@@ -117,7 +119,7 @@ class Expansion:
         return (self.problem.natural_frequencies[mode], *turns)
 
     def frequency_corrections(self, mode: int = 0) -> tuple[sp.Expr, ...]:
-        """Coefficients of ω(a) = Σ εⁿ ω_n, index = power of ε; a is the amplitude of the fundamental."""
+        """Coefficients of ω(a) = Σ εⁿ ω_n, index = power of ε; what a means is said by `amplitude`."""
         return self._frequency_parts(mode)
 
     def frequency(self, mode: int = 0) -> sp.Expr:
@@ -306,8 +308,16 @@ def _warned(expansion: Expansion, known: Sequence[str]) -> Expansion:
 
 
 def extend(expansion: Expansion, order: int, *, on_level: Callable[[Level], object] | None = None) -> Expansion:
-    """The same expansion to a higher order; no level is computed again."""
+    """The same expansion to a higher order; no level is computed again.
+
+    One in the peak amplitude is taken further in that of the fundamental (which is what `on_level` sees) and changed
+    back.
+    """
     order = _checked_order(order, expansion.order)
+    if expansion.amplitude == "peak":
+        plain = replace(expansion, amplitude="fundamental", computation=to_fundamental(expansion.computation))
+        longer = extend(plain, order, on_level=on_level)
+        return replace(longer, amplitude="peak", computation=to_peak(longer.computation))
     computation, canonical = expansion.computation, expansion.problem.canonical(order)
     if canonical != computation.canonical:
         # The statement was expanded in ε to a lower order; what is known goes on under the longer form.

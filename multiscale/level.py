@@ -36,8 +36,8 @@ class Level:
         {D_nA: its value}, the condition that removes the secular terms; for a driven mode with what the turning of the
         frame adds, −iΦ_n A.
     corrections : dict
-        {unknown: U_n}, without any part at the natural frequency for n ≥ 1. As everywhere, A is the amplitude in the
-        rotating frame (`SlowFlow.frame`).
+        {unknown: U_n}, for n ≥ 1 without any part at the natural frequency where A is the amplitude of the fundamental
+        (`Expansion.amplitude`). As everywhere, A is taken in the rotating frame (`SlowFlow.frame`).
     divisors : tuple
         The polynomials in parameters that stand in denominators of this level, after reduction.
     """

@@ -11,25 +11,29 @@ import sympy as sp
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
+    from multiscale.checks.comparison import Comparison
     from multiscale.response.steady.frequency_response import Response
 
-__all__ = ["plot_response"]
+__all__ = ["plot_comparison", "plot_response"]
 
 STABLE = {"color": "#1b5e8a", "linestyle": "-"}
 UNSTABLE = {"color": "#c06a2b", "linestyle": "--"}
 SPURIOUS = {"color": "#999999", "linestyle": ":"}
 
 
-def plot_response(response: Response, ax: Axes | None = None, mode: int = 0) -> Axes:
-    """Amplitude over the swept parameter: stable full, unstable dashed, artefacts of the truncation dotted."""
+def _axes(ax: Axes | None) -> Axes:
     try:
         from matplotlib import pyplot
     except ImportError:
         raise ImportError(
             "plot needs Matplotlib, which is not installed: pip install 'multiscale-expansions[plot]'"
         ) from None
-    if ax is None:
-        ax = pyplot.subplots(layout="constrained")[1]
+    return pyplot.subplots(layout="constrained")[1] if ax is None else ax
+
+
+def plot_response(response: Response, ax: Axes | None = None, mode: int = 0) -> Axes:
+    """Amplitude over the swept parameter: stable full, unstable dashed, artefacts of the truncation dotted."""
+    ax = _axes(ax)
     named: set[str] = set()
     for branch in response.branches:
         amplitude = branch.amplitude if branch.amplitude.ndim == 1 else branch.amplitude[mode]
@@ -53,3 +57,23 @@ def plot_response(response: Response, ax: Axes | None = None, mode: int = 0) -> 
 def _worse(first: str, second: str) -> str:
     order = ("stable", "unstable", "truncation only")
     return max(first, second, key=order.index)
+
+
+def plot_comparison(comparison: Comparison, ax: Axes | None = None) -> Axes:
+    """Errors over the small parameter, the fitted power through them; errors of the integration are hollow."""
+    ax = _axes(ax)
+    small, used = comparison.small_values, ~comparison.limited
+    name = sp.latex(comparison.small)
+    ax.loglog(small[used], comparison.errors[used], "o", color=STABLE["color"], label="error of the expansion")
+    if comparison.limited.any():
+        hollow = {"color": SPURIOUS["color"], "markerfacecolor": "none", "label": "limited by the integration"}
+        ax.loglog(small[~used], comparison.errors[~used], "o", **hollow)
+    if len(comparison.slopes):
+        x, y = np.log(small[used]), np.log(comparison.errors[used])
+        fitted = np.exp(y.mean() + comparison.order * (x - x.mean()))
+        ax.loglog(small[used], fitted, color=UNSTABLE["color"], label=rf"$\propto {name}^{{{comparison.order:.2f}}}$")
+    reach = f"{comparison.horizon:g}/{name}" + (f"^{{{comparison.power}}}" if comparison.power > 1 else "")
+    ax.set_xlabel(f"${name}$")
+    ax.set_ylabel(rf"largest relative error, $0 \leq t \leq {reach}$")
+    ax.legend()
+    return ax

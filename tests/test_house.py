@@ -15,11 +15,12 @@ PACKAGE = Path(multiscale.__file__).parent
 FORBIDDEN = {"simplify", "trigsimp", "dsolve", "collect", "expand", "nsimplify", "sympify"}
 EXACT_ROOMS = sorted(
     path
-    for room in ("algebra", "linear_part", "forces", "hierarchy.py", "tower.py", "clock.py")
+    for room in ("algebra", "linear_part", "forces", "hierarchy.py", "tower.py", "clock.py", "convention.py")
     for path in ((PACKAGE / room).rglob("*.py") if (PACKAGE / room).is_dir() else [PACKAGE / room])
 )
 # Each room may import from those that stand before it.
 FLOORS = ["errors", "algebra", "tower", "forces", "linear_part", "clock", "hierarchy", "problem", "frame", "computed"]
+FLOORS += ["convention"]
 
 
 def _called_names(tree: ast.AST) -> set[str]:

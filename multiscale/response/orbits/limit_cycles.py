@@ -17,7 +17,7 @@ from typing import Any
 import sympy as sp
 
 from multiscale.algebra.quotient import Quotient
-from multiscale.errors import EvaluationError, MultiscaleError, ProblemError, UnsupportedTermError
+from multiscale.errors import EvaluationError, ProblemError, UnsupportedTermError
 from multiscale.expansion import Expansion
 from multiscale.expressions import Writer
 from multiscale.problem.reading import given_expression
@@ -37,8 +37,8 @@ class LimitCycle:
     Attributes
     ----------
     amplitude : Expr
-        Amplitude of the fundamental as a series in ε, through ε^{N−p}, p being the first level with damping (1 as a
-        rule) and N the order of the expansion.
+        Amplitude of the fundamental (or the peak, if the expansion is written in it) as a series in ε, through
+        ε^{N−p}, p being the first level with damping (1 as a rule) and N the order of the expansion.
     frequency : Expr
         Angular frequency as a series in ε, through ε^N when p = 1.
     stable : bool or None
@@ -59,7 +59,7 @@ def limit_cycles(expansion: Expansion, parameters: Mapping[Any, Any] | None = No
     Parameters
     ----------
     expansion : Expansion
-        Of one undriven oscillator, amplitude of the fundamental.
+        Of one undriven oscillator.
     parameters : mapping, optional
         Values of parameters by Symbol or name; the others stay symbols. Exact values give exact series where the
         leading roots have a closed form.
@@ -92,8 +92,6 @@ def limit_cycles(expansion: Expansion, parameters: Mapping[Any, Any] | None = No
     """
     if not isinstance(expansion, Expansion):
         raise ProblemError(f"limit_cycles was given a {type(expansion).__name__}: pass the result of multiscale.expand")
-    if expansion.amplitude != "fundamental":
-        raise MultiscaleError("limit_cycles needs the amplitude of the fundamental: pass the expansion as made")
     computation, problem = expansion.computation, expansion.problem
     check_single(computation.canonical, "limit cycles are given")
     values = _values(parameters, problem.parameters, problem.small)

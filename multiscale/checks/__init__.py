@@ -1,0 +1,1 @@
+"""Checks of a result: its start, its amplitude, and its motion beside that of the equations as stated."""

@@ -1,0 +1,178 @@
+"""The equations of motion as the user stated them, in first-order form, for direct numerical integration.
+
+    F(u, u', u'', t) = 0      →      u' = v,   v' = a   with   F(u, v, a, t) = 0
+
+solved for the highest derivatives: in closed form where they enter linearly (also with inertia that depends on the
+motion), by Newton's method where they do not. An unknown without an acceleration has its velocity in the place of it.
+Nothing is expanded: relations are put in exactly, drives keep their exact phase.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from functools import lru_cache
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+import sympy as sp
+
+from multiscale.errors import EvaluationError
+from multiscale.problem import Problem
+
+__all__ = ["Stated", "stated"]
+
+Array = npt.NDArray[Any]
+RightHandSide = Callable[[float, Array], list[float]]
+ITERATIONS = 30
+
+
+@dataclass(frozen=True, eq=False)
+class Stated:
+    """`compiled` gives the highest derivatives, or (F, its Jacobian) at given ones where `implicit`; its last arguments
+    are the `parameters`. `second` are the unknowns that have a velocity of their own."""
+
+    size: int
+    second: tuple[int, ...]
+    parameters: tuple[str, ...]
+    compiled: Callable[..., Any]
+    implicit: bool
+
+    def start(self, places: Sequence[float], velocities: Sequence[float]) -> tuple[float, ...]:
+        """y of given displacements and velocities."""
+        return (*places, *(velocities[k] for k in self.second))
+
+    def rhs(self, values: Mapping[str, float]) -> RightHandSide:
+        """f(t, y) for y = (u_1, …, u_n, u_1', …), velocities of the `second`; not-a-number where there is no value."""
+        n, numbers, compiled = self.size, [values[name] for name in self.parameters], self.compiled
+        nowhere = [np.nan] * n
+
+        def highest(time: float, state: list[float]) -> list[float]:
+            try:
+                if self.implicit:
+                    return _newton(lambda x: compiled(time, *state, *x, *numbers), n)
+                return list(compiled(time, *state, *numbers))
+            except (ArithmeticError, ValueError, np.linalg.LinAlgError):
+                return nowhere
+
+        def all_second(time: float, y: Array) -> list[float]:
+            state = y.tolist()
+            return [*state[n:], *highest(time, state)]
+
+        def mixed(time: float, y: Array) -> list[float]:
+            state = y.tolist()
+            found = highest(time, state)
+            velocities = list(found)
+            for place, k in enumerate(self.second):
+                velocities[k] = state[n + place]
+            return [*velocities, *(found[k] for k in self.second)]
+
+        return all_second if len(self.second) == n else mixed
+
+
+def _newton(equations: Callable[[list[float]], Any], n: int) -> list[float]:
+    a = np.zeros(n)
+    for _ in range(ITERATIONS):
+        residual, slope = equations(a.tolist())
+        step = np.linalg.solve(np.array(slope, dtype=float).reshape(n, n), np.array(residual, dtype=float))
+        a = a - step
+        if np.max(np.abs(step)) <= 1e-15 * np.max(np.abs(a)):
+            break
+    return a.tolist()
+
+
+@lru_cache(maxsize=32)
+def stated(problem: Problem) -> Stated:
+    """The equations of a problem, ready for numbers.
+
+    With `ordering` they hold in the user's own unknowns and parameters, without a small parameter. Raises
+    EvaluationError for what has no numeric value, naming it.
+    """
+    count = range(len(problem.unknowns))
+    x, v, a = ([sp.Dummy(f"{letter}{k}", real=True) for k in count] for letter in "xva")
+    equations = _hidden(problem, x, v, a)
+    time = sp.Dummy("t", real=True)
+    plain = {problem.time: time} | ({problem.small: sp.Integer(1)} if problem.ordering is not None else {})
+    equations = [e.subs(plain) for e in equations]
+    names = {s.name: s for s in (*problem.parameters, problem.small)}
+    present = set().union(*(e.free_symbols for e in equations))
+    used = present - {time, *x, *v, *a}
+    second = tuple(k for k in count if a[k] in present)
+    highest = [a[k] if k in second else v[k] for k in count]
+    state = [*x, *(v[k] for k in second)]
+    if strange := sorted(used - set(names.values()), key=str):
+        raise EvaluationError(f"the equations contain {strange[0]}, which is no parameter of the problem")
+    if unknown := sorted(set().union(*(e.atoms(sp.core.function.AppliedUndef) for e in equations)), key=str):
+        shown = unknown[0].subs(time, problem.time)
+        raise EvaluationError(f"{shown} has no numeric value: state the problem with a known function in its place")
+    parameters = sorted((s for s in used), key=lambda s: str(s.name))
+    inertia = sp.Matrix([[sp.diff(e, y) for y in highest] for e in equations])
+    rest = sp.Matrix([e.subs(dict.fromkeys(highest, 0)) for e in equations])
+    explicit = None if inertia.free_symbols & set(highest) else _explicit(inertia, rest)
+    if explicit is not None:
+        arguments, output = [time, *state, *parameters], explicit
+    else:
+        arguments, output = [time, *state, *highest, *parameters], [equations, list(inertia)]
+    compiled = sp.lambdify(arguments, output, modules="math", cse=True)
+    return Stated(len(x), second, tuple(str(s.name) for s in parameters), compiled, explicit is None)
+
+
+def _explicit(inertia: sp.Matrix, rest: sp.Matrix) -> list[sp.Expr] | None:
+    """The highest derivatives in closed form: one or two coupled ones, or each alone in an equation; None otherwise."""
+    size = inertia.rows
+    if size <= 2:
+        found = -inertia.adjugate() * rest
+        return [x / inertia.det() for x in found]
+    alone = {j: i for i in range(size) for j in [j for j in range(size) if inertia[i, j] != 0][:1]}
+    if len(alone) < size or any(sum(x != 0 for x in inertia.row(i)) != 1 for i in range(size)):
+        return None
+    return [-rest[alone[j]] / inertia[alone[j], j] for j in range(size)]
+
+
+def _hidden(problem: Problem, x: Sequence[sp.Symbol], v: Sequence[sp.Symbol], a: Sequence[sp.Symbol]) -> list[sp.Expr]:
+    """The equations in symbols for displacements, velocities and accelerations, every relation put in."""
+    derivatives, places = {}, {}
+    for k, u in enumerate(problem.unknowns):
+        derivatives[u.diff(problem.time, 2)], derivatives[u.diff(problem.time)], places[u] = a[k], v[k], x[k]
+    equations = [problem.with_relations(e.xreplace(derivatives).xreplace(places)) for e in problem.equations]
+    named = set().union(*(e.free_symbols for e in problem.equations))
+    for key, value in problem.resonances:
+        if key in problem.unknowns:
+            k = problem.unknowns.index(key)
+            equations = _with_frequency(problem, equations, (*x, *v, *a), (x[k], a[k]), problem.with_relations(value))
+        elif not key.free_symbols & named:
+            raise _of_a_mode(key)
+    return equations
+
+
+def _with_frequency(
+    problem: Problem,
+    equations: list[sp.Expr],
+    jets: Sequence[sp.Symbol],
+    own: tuple[sp.Symbol, sp.Symbol],
+    frequency: sp.Expr,
+) -> list[sp.Expr]:
+    """The equations with a natural frequency given: own stiffness becomes inertia times its square.
+
+    `own` are the displacement and the acceleration of the unknown.
+    """
+    place, acceleration = own
+    # At leading order: at rest, without the small parameter and without parameters that carry an order.
+    ordered = [s for s, q in (problem.ordering or {}).items() if isinstance(s, sp.Symbol) and q]
+    leading = dict.fromkeys([*jets, problem.small, *ordered], sp.Integer(0))
+    slopes = [{y: sp.diff(e, y).subs(leading) for y in jets} for e in equations]
+    i = next((i for i, slope in enumerate(slopes) if slope[acceleration] != 0), 0)
+    if any(slopes[i][y] != 0 for y in jets if y not in own) or any(
+        slope[y] != 0 for j, slope in enumerate(slopes) if j != i for y in own
+    ):
+        raise _of_a_mode(problem.unknowns[jets.index(place)])
+    changed = sp.expand(equations[i] - slopes[i][place] * place) + slopes[i][acceleration] * frequency**2 * place
+    return [*equations[:i], changed, *equations[i + 1 :]]
+
+
+def _of_a_mode(key: sp.Expr) -> EvaluationError:
+    return EvaluationError(
+        f"the relation for {key} gives the natural frequency of a mode of coupled equations, which then have another "
+        "stiffness than stated: state the equations with a stiffness that has this frequency, and compare those"
+    )
