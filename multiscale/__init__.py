@@ -20,6 +20,8 @@ from multiscale.problem import Problem
 from multiscale.slow_flow import SlowFlow
 
 if TYPE_CHECKING:
+    from multiscale.checks.approximants import Approximant, QuadraticApproximant
+    from multiscale.checks.pade import pade
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
@@ -36,6 +38,7 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 __all__ = [
+    "Approximant",
     "Branch",
     "CriticalDrive",
     "Equilibrium",
@@ -52,6 +55,7 @@ __all__ = [
     "PeriodicSeries",
     "Problem",
     "ProblemError",
+    "QuadraticApproximant",
     "ResonanceError",
     "Response",
     "SlowFlow",
@@ -70,34 +74,38 @@ __all__ = [
     "harmonics",
     "limit_cycles",
     "observable",
+    "pade",
     "periodic_series",
     "threshold",
     "transition_curves",
 ]
 
 _RESPONSE = {
-    "Branch": "steady.branches",
-    "CriticalDrive": "steady.critical_drive",
-    "Equilibrium": "steady.equilibria",
-    "Jump": "steady.jumps",
-    "LimitCycle": "orbits.limit_cycles",
-    "Observable": "observable",
-    "Peak": "steady.peak",
-    "PeriodicSeries": "orbits.periodic_series",
-    "Response": "steady.frequency_response",
-    "Special": "steady.sweep",
-    "backbone": "steady.backbone",
-    "critical_drive": "steady.critical_drive",
-    "effective_cubic": "steady.backbone",
-    "effective_damping": "steady.backbone",
-    "equilibria": "steady.equilibria",
-    "frequency_response": "steady.frequency_response",
-    "harmonics": "observable",
-    "limit_cycles": "orbits.limit_cycles",
-    "observable": "observable",
-    "periodic_series": "orbits.periodic_series",
-    "threshold": "tongues.transition_curves",
-    "transition_curves": "tongues.transition_curves",
+    "Approximant": "checks.approximants",
+    "Branch": "response.steady.branches",
+    "CriticalDrive": "response.steady.critical_drive",
+    "Equilibrium": "response.steady.equilibria",
+    "Jump": "response.steady.jumps",
+    "LimitCycle": "response.orbits.limit_cycles",
+    "Observable": "response.observable",
+    "Peak": "response.steady.peak",
+    "PeriodicSeries": "response.orbits.periodic_series",
+    "QuadraticApproximant": "checks.approximants",
+    "Response": "response.steady.frequency_response",
+    "Special": "response.steady.sweep",
+    "backbone": "response.steady.backbone",
+    "critical_drive": "response.steady.critical_drive",
+    "effective_cubic": "response.steady.backbone",
+    "effective_damping": "response.steady.backbone",
+    "equilibria": "response.steady.equilibria",
+    "frequency_response": "response.steady.frequency_response",
+    "harmonics": "response.observable",
+    "limit_cycles": "response.orbits.limit_cycles",
+    "observable": "response.observable",
+    "pade": "checks.pade",
+    "periodic_series": "response.orbits.periodic_series",
+    "threshold": "response.tongues.transition_curves",
+    "transition_curves": "response.tongues.transition_curves",
 }
 
 
@@ -105,7 +113,7 @@ def __getattr__(name: str) -> Any:
     """The functions on results are imported when first used, which keeps ``import multiscale`` light."""
     if name not in _RESPONSE:
         raise AttributeError(f"module 'multiscale' has no attribute {name!r}")
-    value = getattr(import_module(f"multiscale.response.{_RESPONSE[name]}"), name)
+    value = getattr(import_module(f"multiscale.{_RESPONSE[name]}"), name)
     globals()[name] = value
     return value
 

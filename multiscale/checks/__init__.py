@@ -1,0 +1,1 @@
+"""How far a result is to be trusted."""
