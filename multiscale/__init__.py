@@ -22,6 +22,7 @@ from multiscale.slow_flow import SlowFlow
 if TYPE_CHECKING:
     from multiscale.checks.approximants import Approximant, QuadraticApproximant
     from multiscale.checks.pade import pade
+    from multiscale.checks.validity import Validity, validity
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
@@ -63,6 +64,7 @@ __all__ = [
     "Special",
     "StorageError",
     "UnsupportedTermError",
+    "Validity",
     "backbone",
     "critical_drive",
     "effective_cubic",
@@ -78,6 +80,7 @@ __all__ = [
     "periodic_series",
     "threshold",
     "transition_curves",
+    "validity",
 ]
 
 _RESPONSE = {
@@ -93,6 +96,7 @@ _RESPONSE = {
     "QuadraticApproximant": "checks.approximants",
     "Response": "response.steady.frequency_response",
     "Special": "response.steady.sweep",
+    "Validity": "checks.validity",
     "backbone": "response.steady.backbone",
     "critical_drive": "response.steady.critical_drive",
     "effective_cubic": "response.steady.backbone",
@@ -106,6 +110,7 @@ _RESPONSE = {
     "periodic_series": "response.orbits.periodic_series",
     "threshold": "response.tongues.transition_curves",
     "transition_curves": "response.tongues.transition_curves",
+    "validity": "checks.validity",
 }
 
 

@@ -11,25 +11,31 @@ import sympy as sp
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
+    from multiscale.checks.validity import Validity
     from multiscale.response.steady.frequency_response import Response
 
-__all__ = ["plot_response"]
+__all__ = ["plot_response", "plot_validity"]
 
 STABLE = {"color": "#1b5e8a", "linestyle": "-"}
 UNSTABLE = {"color": "#c06a2b", "linestyle": "--"}
 SPURIOUS = {"color": "#999999", "linestyle": ":"}
+LIMIT = {"color": "#444444", "linewidth": 0.8}
 
 
-def plot_response(response: Response, ax: Axes | None = None, mode: int = 0) -> Axes:
-    """Amplitude over the swept parameter: stable full, unstable dashed, artefacts of the truncation dotted."""
+def _axes(ax: Axes | None) -> Axes:
+    """The given axes, or new ones."""
     try:
         from matplotlib import pyplot
     except ImportError:
         raise ImportError(
             "plot needs Matplotlib, which is not installed: pip install 'multiscale-expansions[plot]'"
         ) from None
-    if ax is None:
-        ax = pyplot.subplots(layout="constrained")[1]
+    return pyplot.subplots(layout="constrained")[1] if ax is None else ax
+
+
+def plot_response(response: Response, ax: Axes | None = None, mode: int = 0) -> Axes:
+    """Amplitude over the swept parameter: stable full, unstable dashed, artefacts of the truncation dotted."""
+    ax = _axes(ax)
     named: set[str] = set()
     for branch in response.branches:
         amplitude = branch.amplitude if branch.amplitude.ndim == 1 else branch.amplitude[mode]
@@ -53,3 +59,25 @@ def plot_response(response: Response, ax: Axes | None = None, mode: int = 0) -> 
 def _worse(first: str, second: str) -> str:
     order = ("stable", "unstable", "truncation only")
     return max(first, second, key=order.index)
+
+
+def plot_validity(validity: Validity, ax: Axes | None = None) -> Axes:
+    """Promised error and relative residual over amplitude, the tolerance across and the amplitude that keeps it."""
+    ax = _axes(ax)
+    finite = np.isfinite(validity.promises)
+    # Ten times either side of what matters; beyond it the curves are powers of the amplitude.
+    centre = validity.amplitude if np.isfinite(validity.amplitude) else float(validity.amplitudes[finite][-1])
+    shown = (
+        finite & (validity.amplitudes > min(centre, validity.least or centre) / 30) & (validity.amplitudes < 5 * centre)
+    )
+    amplitudes = validity.amplitudes[shown]
+    ax.loglog(amplitudes, validity.promises[shown], label="promised error", **STABLE)
+    ax.loglog(amplitudes, validity.residuals[shown], label="relative residual", **UNSTABLE)
+    ax.axhline(validity.tolerance, **LIMIT)
+    for edge in (validity.least, validity.amplitude):
+        if 0 < edge < np.inf:
+            ax.axvline(edge, **LIMIT)
+    ax.set_xlabel(f"amplitude (order {validity.expansion.order})")
+    ax.set_ylabel(f"relative error over a time of {validity.horizon:.4g}")
+    ax.legend()
+    return ax
