@@ -19,7 +19,7 @@ __all__ = ["plot_response", "plot_validity"]
 STABLE = {"color": "#1b5e8a", "linestyle": "-"}
 UNSTABLE = {"color": "#c06a2b", "linestyle": "--"}
 SPURIOUS = {"color": "#999999", "linestyle": ":"}
-LIMIT = {"color": "#444444", "linewidth": 0.8}
+LIMIT: dict[str, Any] = {"color": "#444444", "linewidth": 0.8}
 
 
 def _axes(ax: Axes | None) -> Axes:

@@ -61,7 +61,7 @@ class Motion:
     def turning(self) -> Array:
         """The rate of the fast angle of each mode: its natural frequency, or what a drive imposes."""
         angles = self.expansion.computation.frame.angles
-        return np.array([sum(float(x) * w for x, w in zip(row, self.rates, strict=True)) for row in angles])
+        return np.asarray([sum(float(x) * w for x, w in zip(row, self.rates, strict=True)) for row in angles])
 
     @property
     def periodic(self) -> bool:
@@ -76,10 +76,10 @@ class Motion:
             drives = [d.rate for d in self.expansion.computation.canonical.drives]
             common = gcd(*(int(r[0]) for r in (*rates, *drives)))
             period = 2 * np.pi / abs(self.turning[0]) * abs(int(rates[0][0])) / common
-            count = PER_PERIOD * min(max(1, round(period * abs(self.rates).max() / (2 * np.pi))), 4)
-            return np.arange(count) * period / count
+            count = PER_PERIOD * min(max(1, round(period * abs(self.rates).max() / (2 * np.pi))), 8)
+            return np.asarray(np.arange(count) * period / count)
         # The golden section of the shortest period fills the torus of phases evenly.
-        return np.arange(4 * PER_PERIOD) * (np.sqrt(5) - 1) * np.pi / abs(self.rates).max()
+        return np.asarray(np.arange(4 * PER_PERIOD) * (np.sqrt(5) - 1) * np.pi / abs(self.rates).max())
 
     def _of(self, function: NumpyFunction, t: Array, y: Array) -> Array:
         return np.array(np.broadcast_arrays(*function.kernel(t, *y, *self.values), t)[:-1])

@@ -19,7 +19,7 @@ from multiscale.checks.motion import Motion
 __all__ = ["NODES", "slow_path"]
 
 Array = npt.NDArray[Any]
-Rate = Callable[[float, Array], Array]
+Rate = Callable[[Any, Array], Array]
 NODES = 9
 PER_RATE = 6
 """Steps in the time in which a deviation may grow or turn by e."""
@@ -76,7 +76,7 @@ def _reduced(motion: Motion, start: Array) -> tuple[Rate, Callable[[Array], Arra
 
 def _norm(matrix: Array) -> Array:
     """The Frobenius norm over the first two axes."""
-    return np.sqrt(np.sum(matrix**2, axis=(0, 1)))
+    return np.asarray(np.sqrt(np.sum(matrix**2, axis=(0, 1))))
 
 
 def _steps(rate: Rate, a: float, b: float, x: Array, count: int) -> Array:

@@ -267,9 +267,9 @@ def _ratios(motion: Motion, direction: Array, amplitude: float) -> dict[str, tup
 def _warn_of_comparable_terms(expansion: Expansion, amplitude: float, ratios: tuple[float, ...]) -> None:
     if len(ratios) > 1 and ratios[-1] > COMPARABLE:
         warnings.warn(
-            f"at amplitude {amplitude:.3g} the last level of the slow flow is {ratios[-1]:.2g} times the one before: the "
-            f"orders given to the terms do not fit their sizes, or what is left out beyond order {expansion.order} is "
-            "comparable with what is kept; compare with the next order",
+            f"at amplitude {amplitude:.3g} the last level of the slow flow is {ratios[-1]:.2g} times the one before: "
+            f"the orders given to the terms do not fit their sizes, or what is left out beyond order {expansion.order} "
+            "is comparable with what is kept; compare with the next order",
             OrderingWarning,
             stacklevel=3,
         )

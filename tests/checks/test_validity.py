@@ -118,7 +118,6 @@ def test_true_errors_of_a_family_of_oscillators_stay_within_a_factor_of_the_prom
 def test_the_spread_of_true_errors_over_the_family():
     """Measured: true error / promise from 0.45 to 1.1, median 0.8."""
     values = np.array([share(k) for k in range(0, len(FAMILY), 2)])
-    print(values.min(), np.median(values), values.max())
     assert 0.6 < np.median(values) < 1
     assert values.min() > 0.4
     assert values.max() < 1.3
