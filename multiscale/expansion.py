@@ -9,10 +9,18 @@ from functools import cached_property
 from operator import index
 from typing import TYPE_CHECKING, Any, SupportsIndex
 
+import numpy as np
 import sympy as sp
 
 from multiscale.computed import Computation, Finished, Snapshot, begin, restore
-from multiscale.errors import MultiscaleError, OrderingWarning, ProblemError, ResonanceError, SmallDivisorWarning
+from multiscale.errors import (
+    EvaluationError,
+    MultiscaleError,
+    OrderingWarning,
+    ProblemError,
+    ResonanceError,
+    SmallDivisorWarning,
+)
 from multiscale.level import Level, Views, polynomials_below
 from multiscale.problem import Problem
 from multiscale.remarks import incomplete_cubic, remarks, small_divisors
@@ -23,7 +31,7 @@ from multiscale.symbols import Symbols, symbols_of
 if TYPE_CHECKING:
     from multiscale.codegen.numpy_function import NumpyFunction
 
-__all__ = ["Expansion", "expand", "extend"]
+__all__ = ["Expansion", "expand", "extend", "warn_at"]
 
 LATEX_LENGTH = 4000
 
@@ -155,7 +163,19 @@ class Expansion:
     @cached_property
     def warnings(self) -> tuple[str, ...]:
         """What a careful analyst would say about this result."""
-        return remarks(self.problem, self.computation, self.tolerance)
+        return remarks(self.problem, self.computation, self.tolerance, lambda f: self.field_expression(f, "polar"))
+
+    def warnings_at(self, parameters: Mapping[Any, float]) -> tuple[str, ...]:
+        """`warnings`, and the small divisors that these values of parameters bring, by Symbol or name.
+
+        `equilibria`, `frequency_response` and `validity` give the latter as `SmallDivisorWarning`.
+        """
+        named = {s.name: s for s in (*self.problem.parameters, self.problem.small)}
+        given = {named.get(k, k) if isinstance(k, str) else k: float(v) for k, v in parameters.items()}
+        if strange := [k for k in given if k not in named.values()]:
+            raise EvaluationError(f"unknown parameter {strange[0]}: expected {', '.join(named)}")
+        more = small_divisors(self.problem, self.computation, self.tolerance, given)
+        return (*self.warnings, *(x for x in more if x not in self.warnings))
 
     def equals(self, other: Expansion) -> bool:
         """Whether slow flow and fields are the same, coefficient by coefficient, to the same order."""
@@ -292,6 +312,16 @@ def expand(
     if remark := incomplete_cubic(problem, expansion.computation):
         warnings.warn(remark, OrderingWarning, stacklevel=2)
     return _warned(replace(expansion, tolerance=tolerance), ())
+
+
+def warn_at(expansion: Expansion, values: Mapping[str, Any], stacklevel: int = 3) -> None:
+    """SmallDivisorWarning for what values of parameters, by name, bring; arrays are left out."""
+    numbers = {name: value for name, value in values.items() if np.ndim(value) == 0}
+    known = small_divisors(expansion.problem, expansion.computation, expansion.tolerance)
+    named = {s: float(numbers[s.name]) for s in expansion.problem.parameters if s.name in numbers}
+    for remark in small_divisors(expansion.problem, expansion.computation, expansion.tolerance, named):
+        if remark not in known:
+            warnings.warn(remark, SmallDivisorWarning, stacklevel=stacklevel)
 
 
 def _warned(expansion: Expansion, known: Sequence[str]) -> Expansion:

@@ -159,12 +159,13 @@ def _compiled(problem: Problem) -> tuple[Any, Any]:
     weightless = {s: 0 for s, q in (problem.ordering or {}).items() if isinstance(s, sp.Symbol) and q} | {
         problem.small: 0
     }
+    leading = [x.subs(weightless) for x in plain]
+    rows = [_own_row(x, problem, jets, rest) for x in leading]
     for key, value in problem.resonances:
         # A relation for the frequency of an unknown gives its stiffness, whatever the equations say.
         if key in problem.unknowns:
-            j = next(j for j, x in enumerate(plain) if x.diff(jets[key.diff(t, 2)]).subs(rest).subs(weightless) != 0)
-            mass = plain[j].diff(jets[key.diff(t, 2)]).subs(rest).subs(weightless)
-            stiffness = plain[j].diff(jets[key]).subs(rest).subs(weightless)
+            j = rows.index(problem.unknowns.index(key))
+            mass, stiffness = (leading[j].diff(jets[x]).subs(rest) for x in (key.diff(t, 2), key))
             plain[j] = sp.expand(plain[j] + (mass * problem.with_relations(value) ** 2 - stiffness) * jets[key])
     mass = sp.Matrix(plain).jacobian(accelerations).subs(rest)
     # In the order in which jets were made: accelerations, velocities, displacements.
@@ -175,3 +176,18 @@ def _compiled(problem: Problem) -> tuple[Any, Any]:
         return run(time, [*w, *v, *u], [values[str(s.name)] for s in symbols])  # type: ignore[no-any-return]
 
     return forces, lambda values: np.asarray(weigh([values[str(s.name)] for s in symbols]), dtype=float)
+
+
+def _own_row(
+    x: sp.Expr, problem: Problem, jets: Mapping[sp.Expr, sp.Symbol], rest: Mapping[sp.Expr, sp.Expr | int]
+) -> int:
+    """The unknown whose oscillator an equation is at leading order; refused where it holds another one linearly."""
+    t = problem.time
+    found = [k for k, u in enumerate(problem.unknowns) if x.diff(jets[u.diff(t, 2)]).subs(rest) != 0]
+    stiff = [k for k, u in enumerate(problem.unknowns) if sp.expand(x.diff(jets[u]).subs(rest)) != 0]
+    if len(found) != 1 or stiff != found or any(x.diff(jets[u.diff(t)]).subs(rest) != 0 for u in problem.unknowns):
+        raise EvaluationError(
+            "the range of validity is worked out for oscillators that are uncoupled at leading order, u'' + ω²u = …; "
+            "state the problem in modal coordinates"
+        )
+    return found[0]

@@ -18,7 +18,7 @@ from multiscale.checks.error_growth import promise_at
 from multiscale.checks.motion import Motion, motion_of
 from multiscale.checks.term_sizes import FLOW, term_ratios
 from multiscale.errors import EvaluationError, OrderingWarning
-from multiscale.expansion import Expansion
+from multiscale.expansion import Expansion, warn_at
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -135,6 +135,7 @@ def validity(
     [1.12, 1.98, 3.05]
     """
     motion = motion_of(expansion, parameters)
+    warn_at(expansion, dict(zip(motion.flow.parameters, motion.values, strict=True)))
     tolerance = _positive("tolerance", tolerance)
     horizon = _horizon(motion, horizon)
     direction = _direction(motion, state)
