@@ -9,7 +9,6 @@ from functools import cached_property
 from operator import index
 from typing import TYPE_CHECKING, Any, SupportsIndex
 
-import numpy as np
 import sympy as sp
 
 from multiscale.computed import Computation, Finished, Snapshot, begin, restore
@@ -31,7 +30,7 @@ from multiscale.symbols import Symbols, symbols_of
 if TYPE_CHECKING:
     from multiscale.codegen.numpy_function import NumpyFunction
 
-__all__ = ["Expansion", "expand", "extend", "warn_at"]
+__all__ = ["Expansion", "expand", "extend"]
 
 LATEX_LENGTH = 4000
 
@@ -312,16 +311,6 @@ def expand(
     if remark := incomplete_cubic(problem, expansion.computation):
         warnings.warn(remark, OrderingWarning, stacklevel=2)
     return _warned(replace(expansion, tolerance=tolerance), ())
-
-
-def warn_at(expansion: Expansion, values: Mapping[str, Any], stacklevel: int = 3) -> None:
-    """SmallDivisorWarning for what values of parameters, by name, bring; arrays are left out."""
-    numbers = {name: value for name, value in values.items() if np.ndim(value) == 0}
-    known = small_divisors(expansion.problem, expansion.computation, expansion.tolerance)
-    named = {s: float(numbers[s.name]) for s in expansion.problem.parameters if s.name in numbers}
-    for remark in small_divisors(expansion.problem, expansion.computation, expansion.tolerance, named):
-        if remark not in known:
-            warnings.warn(remark, SmallDivisorWarning, stacklevel=stacklevel)
 
 
 def _warned(expansion: Expansion, known: Sequence[str]) -> Expansion:

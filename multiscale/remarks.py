@@ -2,17 +2,24 @@
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Callable, Iterator, Mapping, Sequence
+from typing import TYPE_CHECKING, Any
 
+import numpy as np
 import sympy as sp
 
 from multiscale.computed import Computation, Finished
+from multiscale.errors import SmallDivisorWarning
 from multiscale.frame import turns
 from multiscale.linear_part import Rate
 from multiscale.omissions import drift, first_order_of, terms_beyond
 from multiscale.problem import Problem
 
-__all__ = ["incomplete_cubic", "remarks", "small_divisors"]
+if TYPE_CHECKING:
+    from multiscale.expansion import Expansion
+
+__all__ = ["incomplete_cubic", "remarks", "small_divisors", "warn_at"]
 
 
 def remarks(
@@ -75,6 +82,19 @@ def small_divisors(
         if relation not in found:
             found[relation] = _near_resonance(problem, computation, relation, frequencies)
     return list(found.values())
+
+
+def warn_at(expansion: Expansion, values: Mapping[str, Any]) -> None:
+    """SmallDivisorWarning, in the caller of the caller, for what numbers bring that the equations leave open.
+
+    `values` are those of parameters by name; arrays are left out.
+    """
+    problem, computation, tolerance = expansion.problem, expansion.computation, expansion.tolerance
+    given = {s: float(x) for s in problem.parameters if s.name in values and np.ndim(x := values[s.name]) == 0}
+    known = small_divisors(problem, computation, tolerance)
+    for remark in small_divisors(problem, computation, tolerance, given):
+        if remark not in known:
+            warnings.warn(remark, SmallDivisorWarning, stacklevel=3)
 
 
 def _value(rate: Rate, values: Sequence[float]) -> float:

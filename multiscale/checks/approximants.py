@@ -228,9 +228,9 @@ class QuadraticApproximant(_Algebraic):
             p, q, r = self._values(points)
             root = self._root(points.astype(complex))
             # The form in which nothing cancels; they agree because (root − q)(root + q) = −4pr.
-            stable = abs(root + q) >= abs(root - q)
+            stable = abs(root + q) > abs(root - q)
             values = np.where(stable, -2 * p / (root + q), (root - q) / (2 * r))
-            if points.dtype.kind == "c":
+            if points.dtype.kind == "c" or any(x.has(sp.I) for x in self._polynomials.values()):
                 return values[()]
             real = abs(values.imag) <= 1e-6 * abs(values)
         for b in self._lone:

@@ -95,10 +95,11 @@ class Motion:
         turned = self.rate(t + 1j * STEP, y + 1j * STEP * g).imag / STEP
         radius = RADIUS / abs(self.rates).max()
         values, first, second = (np.zeros((len(self.frequencies), *t.shape)) for _ in range(3))
-        for k in range(CIRCLE):
-            point = np.exp(2j * np.pi * k / CIRCLE)
-            s = radius * point
-            found = self._of(self.displacement, t + s, y + s * g + s**2 / 2 * turned) / CIRCLE
+        # h is real for real s, so the lower half of the circle gives the conjugates of the upper one.
+        for k in range(CIRCLE // 2 + 1):
+            s = radius * np.exp(2j * np.pi * k / CIRCLE)
+            weight = (1 if k in (0, CIRCLE // 2) else 2) / CIRCLE
+            found = weight * self._of(self.displacement, t + s, y + s * g + s**2 / 2 * turned)
             values += found.real
             first += (found / s).real
             second += 2 * (found / s**2).real
@@ -140,6 +141,10 @@ def _symbols(problem: Problem) -> list[sp.Symbol]:
 
 def _number(x: sp.Expr, values: Mapping[sp.Symbol, float]) -> float:
     value = sp.N(x.subs(values))
+    if value.free_symbols:
+        raise EvaluationError(
+            f"the frequency {x} varies slowly: residuals are worked out for constant frequencies only"
+        )
     if not value.is_real or not np.isfinite(float(value)):
         raise EvaluationError(f"the frequency {x} is {value} at these parameters: expected a finite number")
     return float(value)
@@ -148,7 +153,11 @@ def _number(x: sp.Expr, values: Mapping[sp.Symbol, float]) -> float:
 def _compiled(problem: Problem) -> tuple[Any, Any]:
     """The equations with relations put in, and their inertia at rest: functions of (t, u, u', u'', parameters)."""
     symbols, t = _symbols(problem), problem.time
-    jets = {u.diff(t, d) if d else u: sp.Dummy(f"u{k}_{d}") for d in (2, 1, 0) for k, u in enumerate(problem.unknowns)}
+    jets = {
+        u.diff(t, d) if d else u: sp.Dummy(f"u{k}_{d}", real=True)
+        for d in (2, 1, 0)
+        for k, u in enumerate(problem.unknowns)
+    }
     plain = []
     for x in map(problem.with_relations, problem.equations):
         for jet, symbol in jets.items():

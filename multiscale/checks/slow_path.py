@@ -45,7 +45,7 @@ def slow_path(motion: Motion, start: Array, horizon: float) -> tuple[Array, Arra
         for a, b in pairwise(times):
             x = _steps(rate, a, b, x, steps)
             nodes.append(x)
-    return times, back(np.stack(nodes, axis=1))
+        return times, back(np.stack(nodes, axis=1))
 
 
 def _reduced(motion: Motion, start: Array) -> tuple[Rate, Callable[[Array], Array], Array, Callable[[Array], Array]]:

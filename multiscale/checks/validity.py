@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import warnings
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -18,7 +18,8 @@ from multiscale.checks.error_growth import promise_at
 from multiscale.checks.motion import Motion, motion_of
 from multiscale.checks.term_sizes import FLOW, term_ratios
 from multiscale.errors import EvaluationError, OrderingWarning
-from multiscale.expansion import Expansion, warn_at
+from multiscale.expansion import Expansion
+from multiscale.remarks import warn_at
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -27,13 +28,13 @@ __all__ = ["Validity", "validity"]
 
 Array = npt.NDArray[Any]
 DECADES = (-12, 12)
-PER_DECADE = 4
+PER_DECADE = 2
 REFINED = 16
 COMPARABLE = 0.5
 """A ratio of the last two retained terms above which those left out are not small beside them."""
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Validity:
     """The range of amplitudes within a tolerance; made by `validity`.
 
@@ -62,10 +63,16 @@ class Validity:
     least: float
     tolerance: float
     horizon: float
-    amplitudes: Array = field(repr=False)
-    residuals: Array = field(repr=False)
-    promises: Array = field(repr=False)
-    expansion: Expansion = field(repr=False)
+    amplitudes: Array
+    residuals: Array
+    promises: Array
+    expansion: Expansion
+
+    def __repr__(self) -> str:
+        return (
+            f"Validity: amplitudes to {self.amplitude:.4g} within {self.tolerance:.3g} over a time of "
+            f"{self.horizon:.4g}, order {self.expansion.order}"
+        )
 
     def plot(self, ax: Axes | None = None) -> Axes:
         """The promised error over amplitude, with the tolerance. Needs Matplotlib."""

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import pickle
 from fractions import Fraction
 
 import mpmath
@@ -175,6 +176,35 @@ def test_the_defining_equation_of_a_quadratic_approximant_holds():
     assert all(sp.cancel(rest.coeff_monomial(x**n)) == 0 for n in range(8))
     branch = found.at({a: 1}).expression
     assert [branch.diff(x, n).subs(x, 0) for n in range(4)] == [1, 1, 1, 1]
+
+
+@pytest.mark.parametrize("series", [[0, 1], [0, 0, 0], [3, 0, 0, 0, 0], [1, 2]], ids=str)
+def test_quadratic_approximants_of_very_short_series(series):
+    """They agree at least with the first coefficient."""
+    assert ms.pade(series, x, kind="quadratic")(0.0) == series[0]
+
+
+def test_complex_coefficients_give_complex_values():
+    series = [1 / sp.factorial(n) * sp.I**n for n in range(9)]
+    for kind in ("rational", "quadratic"):
+        assert ms.pade(series, x, kind=kind)(0.5) == pytest.approx(np.exp(0.5j), rel=1e-6)
+
+
+def test_a_frequency_in_physical_parameters():
+    m, k = sp.symbols("m k", positive=True)
+    result = ms.expand(ms.Problem(m * u.diff(t, 2) + k * u + eps * a * u**3, u, small=eps), 4)
+    found = ms.pade(result.frequency(), eps)
+    assert found.degrees == (2, 2)
+    difference = sp.series(found.expression - result.frequency(), eps, 0, 5).removeO()
+    assert sp.simplify(difference) == 0
+
+
+def test_copies_are_equal_and_repr_is_short():
+    for found in (ms.pade([1, 2, 5, 7], x), ms.pade([1, 2, 5, 7], x, kind="quadratic")):
+        copy = pickle.loads(pickle.dumps(found))
+        assert copy == found
+        assert hash(copy) == hash(found)
+        assert len(repr(found)) < 60
 
 
 def test_a_rational_function_is_a_quadratic_approximant_too():

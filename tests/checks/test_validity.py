@@ -264,6 +264,35 @@ def test_what_is_refused(options, message):
         ms.validity(cubic(), options.pop("parameters"), options.pop("tolerance"), **options)
 
 
+def test_slowly_varying_frequencies_are_refused():
+    result = expansion(udd + w**2 * (1 + sp.cos(eps * t) / 5) * u + eps * alpha * u**3, u, 1)
+    with pytest.raises(ms.EvaluationError, match="varies slowly"):
+        ms.validity(result, NUMBERS, 0.01)
+
+
+OTHERS = {
+    "hard drive off resonance": (2 * eps * mu * ud + eps * alpha * u**3 - f * sp.cos(Om * t), (), {Om: 1.7}),
+    "hard drive, subharmonic": (eps * alpha * u**3 - f * sp.cos(Om * t), {Om: 3 * w + eps * sigma}, {sigma: 0.4}),
+    "parametric": (eps * f * sp.cos(Om * t) * u + eps * alpha * u**3, {Om: 2 * w + eps * sigma}, {sigma: 0.4}),
+    "constant force": (eps * alpha * u**3 - f, (), {}),
+    "growing": (-2 * eps * mu * ud + eps * alpha * u**3, (), {}),
+}
+
+
+@pytest.mark.parametrize(("force", "relations", "more"), OTHERS.values(), ids=OTHERS)
+def test_true_errors_in_other_classes(force, relations, more):
+    """Measured: true error / promise from 0.49 to 1.23."""
+    result = expansion(udd + w**2 * u + force, u, 2, resonances=relations)
+    values = {eps: 0.02, w: 1.0, mu: 0.2, alpha: 1.0, f: 0.6} | more
+    values = {k: x for k, x in values.items() if k == eps or k in result.problem.parameters}
+    start = np.array([0.9, 0.4])
+    promise, _ = promise_at(motion_of(result, values), start[:, None], 50.0)
+    error = TrueError(result, values, dict(relations))(start, 50.0)
+    assert error < 3 * promise[0]
+    assert promise[0] < 10 * error
+    assert ms.validity(result, values, 0.05, state=start).amplitude > 0.9
+
+
 def test_a_tolerance_that_no_amplitude_keeps_says_what_is_reached():
     with pytest.raises(ms.EvaluationError, match=r"no amplitude keeps the tolerance 1e-06 .* the best promise is 0\.0"):
         ms.validity(expansion(udd + u + eps * ud, u, 1), {eps: 0.3}, 1e-6)

@@ -10,7 +10,8 @@ import numpy as np
 import numpy.typing as npt
 
 from multiscale.errors import EvaluationError
-from multiscale.expansion import Expansion, warn_at
+from multiscale.expansion import Expansion
+from multiscale.remarks import warn_at
 from multiscale.response.steady.newton import reduced_eigenvalues, rotation_rates
 from multiscale.response.steady.search import refuse_continua, states_at
 from multiscale.response.steady.steady_flow import SteadyFlow

@@ -12,7 +12,8 @@ import numpy.typing as npt
 import sympy as sp
 
 from multiscale.errors import EvaluationError
-from multiscale.expansion import Expansion, warn_at
+from multiscale.expansion import Expansion
+from multiscale.remarks import warn_at
 from multiscale.response.steady.branches import Branch, branch_of, hopf_points
 from multiscale.response.steady.continuation import followed_arcs
 from multiscale.response.steady.jumps import Jump, jumps
