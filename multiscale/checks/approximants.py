@@ -21,7 +21,7 @@ import numpy as np
 import numpy.typing as npt
 import sympy as sp
 
-from multiscale.checks.power_series import roots_of
+from multiscale.checks.power_series import exactly, roots_of
 from multiscale.errors import EvaluationError
 
 __all__ = ["Approximant", "QuadraticApproximant"]
@@ -72,7 +72,7 @@ class _Algebraic:
     def _poly(self, x: sp.Expr) -> sp.Poly:
         """With exact coefficients, for roots."""
         self._check_numeric()
-        return sp.Poly(x.replace(lambda y: isinstance(y, sp.Float), sp.Rational), self.variable, extension=True)
+        return sp.Poly(exactly(x), self.variable, extension=True)
 
     def _horner(self, x: sp.Expr, scale: sp.Expr) -> Callable[[Array], Array]:
         self._check_numeric()

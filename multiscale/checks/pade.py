@@ -17,7 +17,7 @@ import sympy as sp
 from sympy.polys.matrices import DomainMatrix
 
 from multiscale.checks.approximants import Approximant, QuadraticApproximant
-from multiscale.checks.power_series import Series, mirrored, power, read_series
+from multiscale.checks.power_series import Series, ascending, power, read_series
 from multiscale.errors import EvaluationError
 
 __all__ = ["pade"]
@@ -218,8 +218,8 @@ def _kernel(series: Series, degrees: tuple[int, ...]) -> tuple[sp.Poly, sp.Poly,
     p, q, r = degrees
     top = p + q + r + 1
     f = series.polynomial(top)
-    first = [*mirrored(f), *[series.field.zero] * (top + 1)][: top + 1]
-    second = [*mirrored(f * f), *[series.field.zero] * (top + 1)][: top + 1]
+    first = [*ascending(f), *[series.field.zero] * (top + 1)][: top + 1]
+    second = [*ascending(f * f), *[series.field.zero] * (top + 1)][: top + 1]
     zero = series.field.zero
     rows = [
         [first[n - j] if n >= j else zero for j in range(q + 1)]
@@ -229,7 +229,7 @@ def _kernel(series: Series, degrees: tuple[int, ...]) -> tuple[sp.Poly, sp.Poly,
     found = DomainMatrix(rows, (len(rows), q + r + 2), series.field).nullspace().to_list()[0]
     Q, R = series.poly(found[: q + 1]), series.poly(found[q + 1 :])
     rest = Q * f + R * f * f
-    P = series.poly([-c for c in mirrored(rest)[: p + 1]])
+    P = series.poly([-c for c in ascending(rest)[: p + 1]])
     common = P.gcd(Q).gcd(R)
     P, Q, R = (x.quo(common) for x in (P, Q, R))
     return _cleared(series, P, Q, R) if R else (*_cleared(series, P, Q), R)
@@ -241,7 +241,7 @@ def _branch(series: Series, P: sp.Poly, Q: sp.Poly, R: sp.Poly) -> tuple[sp.Poly
     if not R:
         return Q, one
     square = Q * Q - 4 * P * R
-    own = mirrored(2 * R * series.polynomial(series.order) + Q)[: series.order + 1]
+    own = ascending(2 * R * series.polynomial(series.order) + Q)[: series.order + 1]
     lowest = next((n for n, c in enumerate(own) if c), None)
     if not square or lowest is None:
         return sp.Poly(0, series.variable, domain=series.field), one

@@ -18,7 +18,7 @@ from sympy.polys.constructor import construct_domain
 from multiscale.errors import EvaluationError
 from multiscale.problem.reading import given_expression
 
-__all__ = ["Series", "mirrored", "power", "read_series", "roots_of", "trimmed"]
+__all__ = ["Series", "ascending", "exactly", "power", "read_series", "roots_of"]
 
 
 @dataclass(frozen=True)
@@ -48,9 +48,11 @@ class Series:
         """Through x^order."""
         return self.poly(self.coefficients[: order + 1])
 
-    def poly(self, ascending: Sequence[Any]) -> sp.Poly:
+    def poly(self, coefficients: Sequence[Any]) -> sp.Poly:
         """A polynomial from coefficients by rising powers."""
-        return sp.Poly.from_list([self.field.convert(c) for c in reversed(ascending)], self.variable, domain=self.field)
+        return sp.Poly.from_list(
+            [self.field.convert(c) for c in reversed(coefficients)], self.variable, domain=self.field
+        )
 
     def written(self, polynomial: sp.Poly) -> sp.Expr:
         """As an expression, in floats where the coefficients were."""
@@ -69,7 +71,7 @@ def read_series(series: Any, variable: Any) -> Series:
         raise EvaluationError(f"coefficient {wrong}: expected finite and free of {variable}")
     floats = [f for c in given for f in c.atoms(sp.Float)]
     digits = min((sp.Float(f)._prec for f in floats), default=None)
-    exact = [c.replace(lambda x: isinstance(x, sp.Float), sp.Rational) for c in given]
+    exact = [exactly(c) for c in given]
     domain, elements = construct_domain(exact, field=True, extension=True)
     if not domain.is_Exact or domain.is_EX:
         names = ", ".join(sorted(map(str, set().union(*(c.free_symbols for c in exact))))) or "numbers"
@@ -78,6 +80,11 @@ def read_series(series: Any, variable: Any) -> Series:
             "functions in them by symbols"
         )
     return Series(variable, tuple(elements), domain, None if digits is None else int(digits * 0.30103))
+
+
+def exactly(x: sp.Expr) -> sp.Expr:
+    """x with every float as the binary fraction it is."""
+    return x.xreplace({f: sp.Rational(f) for f in x.atoms(sp.Float)})
 
 
 def _coefficients(series: Any, variable: sp.Symbol) -> list[sp.Expr]:
@@ -119,21 +126,13 @@ def _polynomial(x: sp.Expr, variable: sp.Symbol) -> sp.Poly:
     return polynomial
 
 
-def trimmed(coefficients: Sequence[Any]) -> list[Any]:
-    """Without leading zeros at the highest powers."""
-    found = list(coefficients)
-    while found and not found[-1]:
-        found.pop()
-    return found
-
-
 def power(polynomial: sp.Poly, stride: int) -> sp.Poly:
     """p(x^stride)."""
     x = polynomial.gen
     return sp.Poly({(stride * m[0],): c for m, c in polynomial.terms()}, x, domain=polynomial.domain)
 
 
-def mirrored(polynomial: sp.Poly) -> list[Any]:
+def ascending(polynomial: sp.Poly) -> list[Any]:
     """Coefficients by rising powers, in the field."""
     return list(reversed(polynomial.rep.to_list()))
 

@@ -156,7 +156,7 @@ def test_promise_and_residual_of_a_linear_oscillator_by_hand(order):
     assert found.amplitude == np.inf
     assert found.least == 0
     assert np.ptp(found.promises) < 1e-6 * found.promises[0]
-    decayed = np.trapezoid(np.exp(exponent.real * np.linspace(0, 5, 2001)), np.linspace(0, 5, 2001))
+    decayed = -np.expm1(5 * exponent.real) / -exponent.real
     # Of ρ at time 0 half is at Φ and, as the motion is one harmonic, nearly nothing else.
     assert found.promises[0] == pytest.approx(decayed * left / 2, rel=0.05)
 
@@ -181,6 +181,15 @@ def test_a_driven_oscillator_from_a_steady_state(order):
     found = ms.validity(result, DRIVEN, 0.02, state=steady.state, horizon=20.0)
     # With the drive fixed, small states are all drive: their relative error does not vanish.
     assert found.amplitude > steady.amplitudes[0]
+
+
+def test_an_unstable_motion_breaks_the_promise():
+    """A negative control: beside a saddle errors grow exponentially, which the promise says it leaves out."""
+    result = driven(2)
+    values = DRIVEN | {mu: 0.05, f: 0.4, sigma: 0.6}
+    saddle = next(s for s in ms.equilibria(result, values) if s.kind == "saddle")
+    promise, _ = promise_at(motion_of(result, values), saddle.state[:, None], 400.0)
+    assert TrueError(result, values, {Om: w + eps * sigma})(saddle.state, 400.0) > 3 * promise[0]
 
 
 COUPLED = {
