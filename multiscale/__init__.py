@@ -83,7 +83,7 @@ __all__ = [
     "validity",
 ]
 
-_RESPONSE = {
+_LATER = {
     "Approximant": "checks.approximants",
     "Branch": "response.steady.branches",
     "CriticalDrive": "response.steady.critical_drive",
@@ -116,9 +116,9 @@ _RESPONSE = {
 
 def __getattr__(name: str) -> Any:
     """The functions on results are imported when first used, which keeps ``import multiscale`` light."""
-    if name not in _RESPONSE:
+    if name not in _LATER:
         raise AttributeError(f"module 'multiscale' has no attribute {name!r}")
-    value = getattr(import_module(f"multiscale.{_RESPONSE[name]}"), name)
+    value = getattr(import_module(f"multiscale.{_LATER[name]}"), name)
     globals()[name] = value
     return value
 

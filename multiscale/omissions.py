@@ -18,10 +18,15 @@ LONGEST = 120
 
 def terms_beyond(problem: Problem, computation: Computation) -> list[str]:
     """Terms of the equations whose own power of ε lies beyond the order of the expansion."""
+    # Squares of a detuning come from a relation, and every order leaves higher ones out.
+    meanings = dict(computation.canonical.meanings)
+    detunings = {d.detuning for d in problem.detunings}
     beyond: dict[int, list[str]] = {}
     for equation in computation.canonical.force:
         for term in equation:
-            if term.power > computation.order:
+            generators = {name for monomial, _ in term.coefficient for name, _ in monomial}
+            symbols = set().union(*(meanings[name].free_symbols for name in generators if name in meanings))
+            if term.power > computation.order and not symbols & detunings:
                 beyond.setdefault(term.power, []).append(_factors(problem, term))
     found = []
     for power, names in sorted(beyond.items()):

@@ -47,6 +47,14 @@ def test_terms_beyond_the_order_with_an_ordering():
     assert not ms.extend(result, 4).warnings
 
 
+def test_squares_of_a_detuning_are_no_omission():
+    equation = udd + w**2 * u + 2 * eps * mu * ud + eps * u**3 - eps * f * sp.cos(Om * t)
+    result = expansion(equation, u, 1, resonances={w: Om - eps * sigma})
+    assert not result.warnings
+    more = expansion(equation + eps**2 * alpha * ud, u, 1, resonances={w: Om - eps * sigma})
+    assert remarks(more, "the terms in Derivative(u(t), t) are of order 2")
+
+
 @pytest.mark.parametrize(
     ("equation", "name", "power"),
     [
