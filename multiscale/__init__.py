@@ -21,8 +21,11 @@ from multiscale.slow_flow import SlowFlow
 
 if TYPE_CHECKING:
     from multiscale.checks.amplitude import with_amplitude
+    from multiscale.checks.approximants import Approximant, QuadraticApproximant
     from multiscale.checks.comparison import Comparison, compare
     from multiscale.checks.initial_state import initial_state
+    from multiscale.checks.pade import pade
+    from multiscale.checks.validity import Validity, validity
     from multiscale.fitting.model import Fit, fit
     from multiscale.fitting.response import ResponseModel, response_model
     from multiscale.fitting.ring_down import RingDownModel, ring_down_model
@@ -44,6 +47,7 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 __all__ = [
+    "Approximant",
     "Branch",
     "Comparison",
     "CriticalDrive",
@@ -63,6 +67,7 @@ __all__ = [
     "PeriodicSeries",
     "Problem",
     "ProblemError",
+    "QuadraticApproximant",
     "ResonanceError",
     "Response",
     "ResponseModel",
@@ -72,6 +77,7 @@ __all__ = [
     "Special",
     "StorageError",
     "UnsupportedTermError",
+    "Validity",
     "backbone",
     "compare",
     "critical_drive",
@@ -88,16 +94,19 @@ __all__ = [
     "limit_cycles",
     "noisy_flow",
     "observable",
+    "pade",
     "periodic_series",
     "response_model",
     "ring_down_model",
     "threshold",
     "to_json",
     "transition_curves",
+    "validity",
     "with_amplitude",
 ]
 
 _LATER = {
+    "Approximant": "checks.approximants",
     "Branch": "response.steady.branches",
     "Comparison": "checks.comparison",
     "CriticalDrive": "response.steady.critical_drive",
@@ -109,10 +118,12 @@ _LATER = {
     "Observable": "response.observable",
     "Peak": "response.steady.peak",
     "PeriodicSeries": "response.orbits.periodic_series",
+    "QuadraticApproximant": "checks.approximants",
     "Response": "response.steady.frequency_response",
     "ResponseModel": "fitting.response",
     "RingDownModel": "fitting.ring_down",
     "Special": "response.steady.sweep",
+    "Validity": "checks.validity",
     "backbone": "response.steady.backbone",
     "compare": "checks.comparison",
     "critical_drive": "response.steady.critical_drive",
@@ -127,12 +138,14 @@ _LATER = {
     "limit_cycles": "response.orbits.limit_cycles",
     "noisy_flow": "response.noise",
     "observable": "response.observable",
+    "pade": "checks.pade",
     "periodic_series": "response.orbits.periodic_series",
     "response_model": "fitting.response",
     "ring_down_model": "fitting.ring_down",
     "threshold": "response.tongues.transition_curves",
     "to_json": "storage.document",
     "transition_curves": "response.tongues.transition_curves",
+    "validity": "checks.validity",
     "with_amplitude": "checks.amplitude",
 }
 

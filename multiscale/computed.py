@@ -69,9 +69,9 @@ class Computation:
     def _amplitude(self, mode: int) -> str:
         return self.canonical.spec.pairs[mode][0]
 
-    def base_value(self, base: Frozen) -> float | None:
-        """A base frequency as a number, None where it contains symbols."""
-        meanings = dict(self.canonical.meanings)
+    def base_value(self, base: Frozen, given: Mapping[Any, float] | None = None) -> float | None:
+        """A base frequency as a number, with `given` values of symbols; None where it contains others."""
+        meanings = {name: meaning.subs(given or {}) for name, meaning in self.canonical.meanings}
         value = 0.0
         for monomial, c in base:
             factor = float(c)

@@ -13,7 +13,14 @@ import sympy as sp
 
 from multiscale.computed import Computation, Finished, Snapshot, begin, restore
 from multiscale.convention import to_fundamental, to_peak
-from multiscale.errors import MultiscaleError, OrderingWarning, ProblemError, ResonanceError, SmallDivisorWarning
+from multiscale.errors import (
+    EvaluationError,
+    MultiscaleError,
+    OrderingWarning,
+    ProblemError,
+    ResonanceError,
+    SmallDivisorWarning,
+)
 from multiscale.level import Level, Views, polynomials_below
 from multiscale.problem import Problem
 from multiscale.remarks import incomplete_cubic, remarks, small_divisors
@@ -157,7 +164,19 @@ class Expansion:
     @cached_property
     def warnings(self) -> tuple[str, ...]:
         """What a careful analyst would say about this result."""
-        return remarks(self.problem, self.computation, self.tolerance)
+        return remarks(self.problem, self.computation, self.tolerance, lambda f: self.field_expression(f, "polar"))
+
+    def warnings_at(self, parameters: Mapping[Any, float]) -> tuple[str, ...]:
+        """`warnings`, and the small divisors that these values of parameters bring, by Symbol or name.
+
+        `equilibria`, `frequency_response` and `validity` give the latter as `SmallDivisorWarning`.
+        """
+        named = {s.name: s for s in (*self.problem.parameters, self.problem.small)}
+        given = {named.get(k, k) if isinstance(k, str) else k: float(v) for k, v in parameters.items()}
+        if strange := [k for k in given if k not in named.values()]:
+            raise EvaluationError(f"unknown parameter {strange[0]}: expected {', '.join(named)}")
+        more = small_divisors(self.problem, self.computation, self.tolerance, given)
+        return (*self.warnings, *(x for x in more if x not in self.warnings))
 
     def equals(self, other: Expansion) -> bool:
         """Whether slow flow and fields are the same, coefficient by coefficient, to the same order."""

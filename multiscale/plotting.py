@@ -12,16 +12,19 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
 
     from multiscale.checks.comparison import Comparison
+    from multiscale.checks.validity import Validity
     from multiscale.response.steady.frequency_response import Response
 
-__all__ = ["plot_comparison", "plot_response"]
+__all__ = ["plot_comparison", "plot_response", "plot_validity"]
 
 STABLE = {"color": "#1b5e8a", "linestyle": "-"}
 UNSTABLE = {"color": "#c06a2b", "linestyle": "--"}
 SPURIOUS = {"color": "#999999", "linestyle": ":"}
+LIMIT: dict[str, Any] = {"color": "#444444", "linewidth": 0.8}
 
 
 def _axes(ax: Axes | None) -> Axes:
+    """The given axes, or new ones."""
     try:
         from matplotlib import pyplot
     except ImportError:
@@ -75,5 +78,27 @@ def plot_comparison(comparison: Comparison, ax: Axes | None = None) -> Axes:
     reach = f"{comparison.horizon:g}/{name}" + (f"^{{{comparison.power}}}" if comparison.power > 1 else "")
     ax.set_xlabel(f"${name}$")
     ax.set_ylabel(rf"largest relative error, $0 \leq t \leq {reach}$")
+    ax.legend()
+    return ax
+
+
+def plot_validity(validity: Validity, ax: Axes | None = None) -> Axes:
+    """Promised error and relative residual over amplitude, the tolerance across and the amplitude that keeps it."""
+    ax = _axes(ax)
+    finite = np.isfinite(validity.promises)
+    # Ten times either side of what matters; beyond it the curves are powers of the amplitude.
+    centre = validity.amplitude if np.isfinite(validity.amplitude) else float(validity.amplitudes[finite][-1])
+    shown = (
+        finite & (validity.amplitudes > min(centre, validity.least or centre) / 30) & (validity.amplitudes < 5 * centre)
+    )
+    amplitudes = validity.amplitudes[shown]
+    ax.loglog(amplitudes, validity.promises[shown], label="promised error", **STABLE)
+    ax.loglog(amplitudes, validity.residuals[shown], label="relative residual", **UNSTABLE)
+    ax.axhline(validity.tolerance, **LIMIT)
+    for edge in (validity.least, validity.amplitude):
+        if 0 < edge < np.inf:
+            ax.axvline(edge, **LIMIT)
+    ax.set_xlabel(f"amplitude (order {validity.expansion.order})")
+    ax.set_ylabel(f"relative error over a time of {validity.horizon:.4g}")
     ax.legend()
     return ax

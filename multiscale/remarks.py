@@ -2,27 +2,39 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+import warnings
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from typing import TYPE_CHECKING, Any
 
+import numpy as np
 import sympy as sp
 
 from multiscale.computed import Computation, Finished
+from multiscale.errors import SmallDivisorWarning
 from multiscale.frame import turns
 from multiscale.linear_part import Rate
+from multiscale.omissions import drift, first_order_of, terms_beyond
 from multiscale.problem import Problem
 
-__all__ = ["incomplete_cubic", "remarks", "small_divisors"]
+if TYPE_CHECKING:
+    from multiscale.expansion import Expansion
+
+__all__ = ["incomplete_cubic", "remarks", "small_divisors", "warn_at"]
 
 
-def remarks(problem: Problem, computation: Computation, tolerance: float) -> tuple[str, ...]:
-    """The remarks, most important first."""
+def remarks(
+    problem: Problem, computation: Computation, tolerance: float, write: Callable[[Finished], sp.Expr]
+) -> tuple[str, ...]:
+    """The remarks, most important first; `write` gives a real field in real amplitudes."""
     cubic = incomplete_cubic(problem, computation)
     return (
         *([cubic] if cubic else []),
         *small_divisors(problem, computation, tolerance),
         *_unbalanced(computation),
         *_explicit_time(problem, computation),
+        *terms_beyond(problem, computation),
         *_lost_parameters(problem, computation),
+        *drift(problem, computation, write),
         *_assumptions(computation),
     )
 
@@ -46,10 +58,15 @@ def _driven(coefficient: tuple[tuple[tuple[tuple[str, int], ...], object], ...])
     return all(any(name.startswith("@e") for name, _ in monomial) for monomial, _ in coefficient)
 
 
-def small_divisors(problem: Problem, computation: Computation, tolerance: float) -> list[str]:
-    """Combinations of numeric frequencies that come close to a natural frequency without meeting it."""
+def small_divisors(
+    problem: Problem, computation: Computation, tolerance: float, given: Mapping[sp.Symbol, float] | None = None
+) -> list[str]:
+    """Combinations of frequencies that come close to a natural frequency without meeting it.
+
+    Frequencies are the numbers in the equations, or those that `given` values of parameters make of them.
+    """
     bases, drives = computation.canonical.bases, computation.canonical.drives
-    values = [value for b in bases.values if (value := computation.base_value(b)) is not None]
+    values = [value for b in bases.values if (value := computation.base_value(b, given)) is not None]
     if len(values) < len(bases.values):
         return []
     frequencies = [_value(rate, values) / bases.unit for rate in (*bases.rates, *(d.rate for d in drives))]
@@ -65,6 +82,19 @@ def small_divisors(problem: Problem, computation: Computation, tolerance: float)
         if relation not in found:
             found[relation] = _near_resonance(problem, computation, relation, frequencies)
     return list(found.values())
+
+
+def warn_at(expansion: Expansion, values: Mapping[str, Any]) -> None:
+    """SmallDivisorWarning, in the caller of the caller, for what numbers bring that the equations leave open.
+
+    `values` are those of parameters by name; arrays are left out.
+    """
+    problem, computation, tolerance = expansion.problem, expansion.computation, expansion.tolerance
+    given = {s: float(x) for s in problem.parameters if s.name in values and np.ndim(x := values[s.name]) == 0}
+    known = small_divisors(problem, computation, tolerance)
+    for remark in small_divisors(problem, computation, tolerance, given):
+        if remark not in known:
+            warnings.warn(remark, SmallDivisorWarning, stacklevel=3)
 
 
 def _value(rate: Rate, values: Sequence[float]) -> float:
@@ -141,7 +171,14 @@ def _lost_parameters(problem: Problem, computation: Computation) -> list[str]:
     names = {name for p in polynomials for monomial, _ in p for name, _ in monomial}
     used.update(*(meanings[name].free_symbols for name in names))
     lost = [s for s in problem.parameters if s not in used]
-    return [f"{s} has no effect up to order {c.order}: it enters at a higher order, or cancels" for s in lost]
+    return [f"{s} has no effect up to order {c.order}: {_where(computation, s)}" for s in lost]
+
+
+def _where(computation: Computation, symbol: sp.Symbol) -> str:
+    power = first_order_of(computation, symbol)
+    if power is not None and power > computation.order:
+        return f"it enters at order {power}"
+    return "it enters at a higher order, or cancels"
 
 
 def _assumptions(computation: Computation) -> list[str]:

@@ -1,1 +1,1 @@
-"""Checks of a result: its start, its amplitude, and its motion beside that of the equations as stated."""
+"""How far a result is to be trusted: certificates, starts, amplitudes, comparison, range of validity, approximants."""

@@ -20,6 +20,7 @@ from multiscale.problem.relations import Detuning
 __all__ = [
     "coefficient_function",
     "displacement_function",
+    "field_coefficient_function",
     "frequency_function",
     "observable_function",
     "slow_flow_function",
@@ -267,3 +268,13 @@ def coefficient_function(problem: Problem, computation: Computation) -> tuple[tu
         outputs += [program.tape.total(x for x, _ in parts), program.tape.total(y for _, y in parts)]
     shape = (len(keys), 2)
     return tuple(keys), _function(problem, program, [], outputs, shape, "Coefficients of the slow flow, by level.")
+
+
+def field_coefficient_function(problem: Problem, computation: Computation) -> tuple[tuple[Key, ...], NumpyFunction]:
+    """The coefficients of the fields: the keys (level, unknown, exponents), and c at each as (real, imaginary)."""
+    program = Program(problem, computation)
+    levels, unknowns = range(computation.order + 1), range(len(problem.unknowns))
+    found = {(n, k, m): c for n in levels for k in unknowns for m, c in computation.field(n, k).items()}
+    outputs = [node for c in found.values() for node in (program.quotient(c.real), program.quotient(c.imag))]
+    shape = (len(found), 2)
+    return tuple(found), _function(problem, program, [], outputs, shape, "Coefficients of the fields, by level.")

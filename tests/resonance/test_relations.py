@@ -220,7 +220,7 @@ def test_near_resonance_of_numbers_is_a_warning_with_the_line_to_add():
     ):
         result = ms.expand(problem(stated, [u, v]), 2)
     assert any("small divisor" in x for x in result.warnings)
-    assert not ms.expand(problem(stated, [u, v]), 2, tolerance=1e-3).warnings
+    assert not any("small divisor" in x for x in ms.expand(problem(stated, [u, v]), 2, tolerance=1e-3).warnings)
     declared = ms.expand(problem(stated, [u, v], {v: 2 + eps * sigma}), 2)
     assert declared.slow_flow.phases
     rhs = declared.slow_flow.to_numpy()

@@ -11,6 +11,7 @@ import numpy.typing as npt
 
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
+from multiscale.remarks import warn_at
 from multiscale.response.steady.newton import reduced_eigenvalues, rotation_rates
 from multiscale.response.steady.search import refuse_continua, states_at
 from multiscale.response.steady.steady_flow import SteadyFlow
@@ -90,6 +91,11 @@ def equilibria(expansion: Expansion, parameters: Mapping[Any, Any]) -> tuple[Equ
     EvaluationError
         Parameters missing, unknown or not finite; every amplitude is a steady state (no damping, no drive).
 
+    Warns
+    -----
+    SmallDivisorWarning
+        At these parameters a combination of frequencies comes close to a natural frequency.
+
     Examples
     --------
     >>> import sympy as sp, multiscale as ms
@@ -111,6 +117,7 @@ def equilibria(expansion: Expansion, parameters: Mapping[Any, Any]) -> tuple[Equ
                 f"parameter {name} is an array: equilibria takes numbers; for a sweep use frequency_response"
             )
     values = tuple(float(v) for v in values)
+    warn_at(expansion, dict(zip(flow.flow.parameters, values, strict=True)))
     _, states, complete = states_at(flow, values, 1)
     return tuple(_equilibrium(flow, y, values, complete) for y in states.T)
 

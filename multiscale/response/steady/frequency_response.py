@@ -13,6 +13,7 @@ import sympy as sp
 
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
+from multiscale.remarks import warn_at
 from multiscale.response.steady.branches import Branch, branch_of, hopf_points
 from multiscale.response.steady.continuation import followed_arcs
 from multiscale.response.steady.jumps import Jump, jumps
@@ -132,6 +133,11 @@ def frequency_response(expansion: Expansion, parameters: Mapping[Any, Any], *, s
     EvaluationError
         Parameters missing, given twice or not finite; a sweep that is no 1-D array.
 
+    Warns
+    -----
+    SmallDivisorWarning
+        At the fixed parameters a combination of frequencies comes close to a natural frequency.
+
     Examples
     --------
     >>> import numpy as np, sympy as sp, multiscale as ms
@@ -147,6 +153,7 @@ def frequency_response(expansion: Expansion, parameters: Mapping[Any, Any], *, s
     """
     flow = SteadyFlow.of(expansion)
     swept = Sweep.of(flow, parameters, sweep)
+    warn_at(expansion, {getattr(key, "name", key): value for key, value in parameters.items()})
     one = flow.modes == 1
     arcs, folds, branchings = linked_arcs(swept) if one else followed_arcs(swept)
     branches = tuple(branch_of(swept, arc) for arc in arcs)
