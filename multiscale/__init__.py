@@ -20,6 +20,7 @@ from multiscale.problem import Problem
 from multiscale.slow_flow import SlowFlow
 
 if TYPE_CHECKING:
+    from multiscale.checks.certificate import Certificate, certify
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
@@ -37,6 +38,7 @@ __version__ = "0.1.0"
 
 __all__ = [
     "Branch",
+    "Certificate",
     "CriticalDrive",
     "Equilibrium",
     "EvaluationError",
@@ -60,6 +62,7 @@ __all__ = [
     "StorageError",
     "UnsupportedTermError",
     "backbone",
+    "certify",
     "critical_drive",
     "effective_cubic",
     "effective_damping",
@@ -75,37 +78,39 @@ __all__ = [
     "transition_curves",
 ]
 
-_RESPONSE = {
-    "Branch": "steady.branches",
-    "CriticalDrive": "steady.critical_drive",
-    "Equilibrium": "steady.equilibria",
-    "Jump": "steady.jumps",
-    "LimitCycle": "orbits.limit_cycles",
-    "Observable": "observable",
-    "Peak": "steady.peak",
-    "PeriodicSeries": "orbits.periodic_series",
-    "Response": "steady.frequency_response",
-    "Special": "steady.sweep",
-    "backbone": "steady.backbone",
-    "critical_drive": "steady.critical_drive",
-    "effective_cubic": "steady.backbone",
-    "effective_damping": "steady.backbone",
-    "equilibria": "steady.equilibria",
-    "frequency_response": "steady.frequency_response",
-    "harmonics": "observable",
-    "limit_cycles": "orbits.limit_cycles",
-    "observable": "observable",
-    "periodic_series": "orbits.periodic_series",
-    "threshold": "tongues.transition_curves",
-    "transition_curves": "tongues.transition_curves",
+_LATER = {
+    "Branch": "response.steady.branches",
+    "Certificate": "checks.certificate",
+    "CriticalDrive": "response.steady.critical_drive",
+    "Equilibrium": "response.steady.equilibria",
+    "Jump": "response.steady.jumps",
+    "LimitCycle": "response.orbits.limit_cycles",
+    "Observable": "response.observable",
+    "Peak": "response.steady.peak",
+    "PeriodicSeries": "response.orbits.periodic_series",
+    "Response": "response.steady.frequency_response",
+    "Special": "response.steady.sweep",
+    "backbone": "response.steady.backbone",
+    "certify": "checks.certificate",
+    "critical_drive": "response.steady.critical_drive",
+    "effective_cubic": "response.steady.backbone",
+    "effective_damping": "response.steady.backbone",
+    "equilibria": "response.steady.equilibria",
+    "frequency_response": "response.steady.frequency_response",
+    "harmonics": "response.observable",
+    "limit_cycles": "response.orbits.limit_cycles",
+    "observable": "response.observable",
+    "periodic_series": "response.orbits.periodic_series",
+    "threshold": "response.tongues.transition_curves",
+    "transition_curves": "response.tongues.transition_curves",
 }
 
 
 def __getattr__(name: str) -> Any:
     """The functions on results are imported when first used, which keeps ``import multiscale`` light."""
-    if name not in _RESPONSE:
+    if name not in _LATER:
         raise AttributeError(f"module 'multiscale' has no attribute {name!r}")
-    value = getattr(import_module(f"multiscale.response.{_RESPONSE[name]}"), name)
+    value = getattr(import_module(f"multiscale.{_LATER[name]}"), name)
     globals()[name] = value
     return value
 
