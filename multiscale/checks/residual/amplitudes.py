@@ -17,75 +17,90 @@ from typing import Any
 import sympy as sp
 
 from multiscale.checks.residual.claim import Claim
-from multiscale.checks.residual.evaluation import Evaluation, Value
+from multiscale.checks.residual.evaluation import Value
 from multiscale.checks.residual.jets import Jet
-from multiscale.checks.residual.motion import Instant
+from multiscale.checks.residual.motion import Instant, leading
 
 __all__ = ["kernel_terms", "peak_exponent"]
 
 
-def kernel_terms(claim: Claim, instant: Instant, rounding: Value) -> list[tuple[int, int]]:
-    """(level, mode) of every field that departs from the convention "fundamental"."""
-    here = instant.published(claim, instant.start, 2)
-    rates = {wave: _rate(wave, here) for level in claim.fields for x in level for wave in _waves(x, claim)}
+def kernel_terms(claim: Claim, instant: Instant, rounding: Value, phase_alone: bool = False) -> list[tuple[int, int]]:
+    """(level, mode) of every field with a part at the rate of a mode that should not be there.
+
+    With `phase_alone` parts in phase with the amplitude may be there, as for other amplitudes than the fundamental.
+    """
+    waves = _Waves(claim, instant)
     found = []
     for j, start in enumerate(instant.start):
-        own = _own_wave(claim, instant, j, rates)
+        own = waves.own(j)
         if own is None:
             found.append((0, j))
             continue
         coordinate, wave = own
-        leading = start * _plain(here(wave))
+        whole = start * waves.value(wave)
         for n, level in enumerate(claim.fields):
-            part = _at_rate(level[coordinate], rates[wave], claim, instant, rates)
-            if abs(part - (leading if n == 0 else 0)) > rounding * (1 + abs(leading)):
+            # The two halves are conjugate in a real field, and no residual sees the second of them either.
+            halves = [waves.at_rate(level[coordinate], sign * waves.rates[wave]) for sign in (1, -1)]
+            if n == 0:
+                excess = abs(halves[0] - whole) + abs(halves[1] - whole.conjugate())
+            elif phase_alone:
+                excess = abs((halves[0] / whole).imag) + abs(halves[1] - halves[0].conjugate())
+            else:
+                excess = abs(halves[0]) + abs(halves[1])
+            if excess > rounding * (1 + abs(whole)):
                 found.append((n, j))
     return found
 
 
-def _at_rate(x: sp.Expr, rate: Value, claim: Claim, instant: Instant, rates: dict[sp.Expr, Value]) -> Value:
-    """The part of a field that turns at a rate; waves that hardly turn at all are coefficients."""
-    near = abs(instant.small) ** 0.5
-    own = {w for w in _waves(x, claim) if abs(rates[w] - rate) < near}
-    slow = {w for w in _waves(x, claim) if abs(rates[w]) < near}
-    return _with_waves(x, claim, instant, own | slow) - _with_waves(x, claim, instant, slow - own)
+class _Waves:
+    """The factors exp(…t…) of the fields with their rates, the logarithmic derivatives in time."""
+
+    def __init__(self, claim: Claim, instant: Instant) -> None:
+        self._claim, self._instant = claim, instant
+        times = set(claim.times)
+        self._of = {x: {w for w in x.atoms(sp.exp) if times & w.free_symbols} for level in claim.fields for x in level}
+        here = instant.published(claim, instant.start, 2)
+        self.rates = {w: _rate(here(w.args[0])) for waves in self._of.values() for w in waves}
+        self._near = abs(instant.small) ** 0.5
+
+    def value(self, x: sp.Expr, known: dict[sp.Basic, Value] | None = None) -> Value:
+        return leading(self._instant.published(self._claim, self._instant.start, 1, known)(x))
+
+    def with_waves(self, x: sp.Expr, kept: set[sp.Expr], known: dict[sp.Basic, Value] | None = None) -> Value:
+        """The value of a field in which all waves but some are zero."""
+        return self.value(x, dict.fromkeys(self._of[x] - kept, 0) | (known or {}))
+
+    def _near_rate(self, x: sp.Expr, rate: Value) -> set[sp.Expr]:
+        return {w for w in self._of[x] if abs(self.rates[w] - rate) < self._near}
+
+    def at_rate(self, x: sp.Expr, rate: Value) -> Value:
+        """The part of a field that turns at a rate; waves that hardly turn at all are coefficients."""
+        own, slow = self._near_rate(x, rate), self._near_rate(x, 0)
+        return self.with_waves(x, own | slow) - self.with_waves(x, slow - own)
+
+    def own(self, j: int) -> tuple[int, sp.Expr] | None:
+        """(unknown, wave) such that U_0 of that unknown has the term 1 · A_j · wave; the j-th unknown before others."""
+        # A and its conjugate are independent here, and all but A_j are zero.
+        amplitudes = self._claim.amplitudes
+        nothing: dict[sp.Basic, Value] = dict.fromkeys([*amplitudes, *map(sp.conjugate, amplitudes)], 0)
+        one = nothing | {amplitudes[j]: 1}
+        fields = self._claim.fields[0]
+        for k in sorted(range(len(fields)), key=lambda k: k != j):
+            slow = self._near_rate(fields[k], 0)
+            for wave in sorted(self._of[fields[k]] - slow, key=str):
+                kept = slow | {wave}
+                share = self.with_waves(fields[k], kept, one) - self.with_waves(fields[k], kept, nothing)
+                if abs(share - self.value(wave)) < abs(self._instant.small):
+                    return k, wave
+        return None
+
+    def turning(self, x: sp.Expr) -> sp.Expr:
+        """A wave of a field that turns forward."""
+        return min((w for w in self._of[x] if self.rates[w].imag > self._near), key=str)
 
 
-def _waves(x: sp.Expr, claim: Claim) -> list[sp.Expr]:
-    return sorted((w for w in x.atoms(sp.exp) if w.free_symbols & set(claim.times)), key=str)
-
-
-def _rate(wave: sp.Expr, here: Evaluation) -> Value:
-    """The logarithmic derivative of a wave in time."""
-    angle = here(wave.args[0])
+def _rate(angle: Value) -> Value:
     return angle.coefficients[1] if isinstance(angle, Jet) else 0
-
-
-def _plain(x: Value) -> Value:
-    return x.coefficients[0] if isinstance(x, Jet) else x
-
-
-def _with_waves(
-    x: sp.Expr, claim: Claim, instant: Instant, kept: set[sp.Expr], known: dict[sp.Basic, Value] | None = None
-) -> Value:
-    """The value of a field in which all waves but some are zero."""
-    absent: dict[sp.Basic, Value] = {w: 0 for w in _waves(x, claim) if w not in kept}
-    return _plain(instant.published(claim, instant.start, 1, absent | (known or {}))(x))
-
-
-def _own_wave(claim: Claim, instant: Instant, j: int, rates: dict[sp.Expr, Value]) -> tuple[int, sp.Expr] | None:
-    """(unknown, wave) such that U_0 of that unknown has the term 1 · A_j · wave; the j-th unknown before others."""
-    # A and its conjugate are independent here, and all but A_j are zero.
-    nothing: dict[sp.Basic, Value] = dict.fromkeys([*claim.amplitudes, *map(sp.conjugate, claim.amplitudes)], 0)
-    one = nothing | {claim.amplitudes[j]: 1}
-    here = instant.published(claim, instant.start, 1)
-    for k in sorted(range(len(claim.fields[0])), key=lambda k: k != j):
-        x = claim.fields[0][k]
-        for wave in sorted(_waves(x, claim), key=lambda w: (rates[w].imag <= 0, str(w))):
-            parts = [_with_waves(x, claim, instant, {wave}, known) for known in (one, nothing)]
-            if abs(parts[0] - parts[1] - _plain(here(wave))) < abs(instant.small):
-                return k, wave
-    return None
 
 
 def peak_exponent(claim: Claim, instants: Sequence[Instant], rounding: Value) -> float:
@@ -101,16 +116,14 @@ def peak_exponent(claim: Claim, instants: Sequence[Instant], rounding: Value) ->
 def _half_range(claim: Claim, instant: Instant) -> Value:
     """½ (max − min) of Σ εⁿ U_n over the angle of A, by Newton's method from the extrema of the leading wave."""
     context, size = instant.context, abs(instant.start[0])
-    here = instant.published(claim, instant.start, 1)
-    [[first], *_] = claim.fields
-    lead = next(w for w in _waves(first, claim) if _rate(w, instant.published(claim, instant.start, 2)).imag > 0)
-    phase = context.arg(_plain(here(lead)))
+    waves = _Waves(claim, instant)
+    phase = context.arg(waves.value(waves.turning(claim.fields[0][0])))
     extrema = []
     for angle in (-phase, context.pi - phase):
         for _ in range(6):
             turn = Jet((0 * angle, context.mpf(1), context.mpf(0))) * context.mpc(0, 1)
             amplitude = Jet([size * c for c in turn.composed(_exponential(context, angle)).coefficients])
-            there = instant.published(claim, [amplitude], 1, {t: instant.time for t in claim.times})
+            there = instant.published(claim, [amplitude], 1, dict.fromkeys(claim.times, instant.time))
             field = instant.summed(there, [level[0] for level in claim.fields], 0)
             value, slope, bend = (c.real for c in field.coefficients)
             angle = angle - slope / (2 * bend)

@@ -49,17 +49,17 @@ class Claim:
 
 
 def claim_of(expansion: Expansion) -> Claim:
-    """The published expressions of an expansion."""
-    problem, symbols = expansion.problem, expansion.symbols
+    """The published expressions of an expansion: the corrections of its levels and its slow flow."""
+    problem, symbols, computation = expansion.problem, expansion.symbols, expansion.computation
     return Claim(
         amplitudes=symbols.A,
         times=(symbols.T[0], problem.time),
         fields=tuple(
-            tuple(expansion.levels[n].corrections[u] for u in problem.unknowns) for n in range(expansion.order + 1)
+            # As levels[n].corrections has them; the rest of a level takes longer to write and is not looked at.
+            tuple(expansion.field_expression(computation.field(n, k), "complex") for k in range(len(problem.unknowns)))
+            for n in range(expansion.order + 1)
         ),
-        flow=tuple(
-            tuple(expansion.slow_flow.by_scale[n][A] for A in symbols.A) for n in range(1, expansion.order + 1)
-        ),
+        flow=tuple(tuple(expansion.slow_flow.by_scale[n][A] for A in symbols.A) for n in range(1, expansion.order + 1)),
         amplitude=expansion.amplitude,
         frequencies=tuple(problem.natural_frequencies),
         divisors=expansion.nonresonance,

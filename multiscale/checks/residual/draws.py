@@ -8,7 +8,7 @@ all of whose derivatives differ from zero.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from random import Random
 
 import sympy as sp
@@ -38,10 +38,8 @@ def _between(rng: Random, low: float, high: float) -> sp.Rational:
 
 
 def _value(rng: Random, s: sp.Symbol) -> sp.Rational:
-    if s.is_integer:
-        size = sp.Integer(2 * rng.randrange(1, 4) + bool(s.is_odd))
-    else:
-        size = _between(rng, 0.5, 2)
+    whole = sp.Integer(2 * rng.randrange(1, 4) + bool(s.is_odd))
+    size = whole if s.is_integer else _between(rng, 0.5, 2)
     if s.is_nonnegative:
         return size
     return -size if s.is_nonpositive or rng.random() < 0.5 else size
@@ -72,16 +70,13 @@ def with_functions(statement: Statement, claim: Claim, rng: Random) -> tuple[Sta
     def instance(x: sp.Expr) -> sp.Expr:
         for f, value in instances.items():
             x = x.replace(f, value)
-        return x.doit()
+        # Integrals are phases of slowly varying frequencies and stay as they are.
+        return x.doit(integrals=False)
 
-    known = tuple((s, instance(x)) for s, x in statement.relations)
-    plain = Statement(
-        tuple(map(instance, statement.equations)),
-        statement.unknowns,
-        statement.time,
-        statement.small,
-        statement.orders,
-        known,
+    plain = replace(
+        statement,
+        equations=tuple(map(instance, statement.equations)),
+        relations=tuple((s, instance(x)) for s, x in statement.relations),
     )
     if any(set(x.atoms(AppliedUndef)) - set(statement.unknowns) for x in plain.equations):
         raise EvaluationError(f"the functions {functions} could not be given values")

@@ -145,7 +145,7 @@ class Evaluation:
         here = Evaluation(self._context, self._fixed, {argument: start})
         return x.composed([here(d) / factorial(k) for k, d in enumerate(derivatives)])
 
-    def _part(self, function: type, x: Jet) -> Jet:
+    def _part(self, function: type, x: Jet) -> Value:
         """Real part, imaginary part and modulus of a jet, along real τ."""
         mirror = x.conjugate()
         if function is sp.re:

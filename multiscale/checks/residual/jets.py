@@ -77,7 +77,7 @@ class Jet:
     def composed(self, outer: Sequence[Number]) -> Jet:
         """f(x) for f(x_0 + h) = Σ outer_k h^k, by Horner's rule."""
         h = Jet((self.coefficients[0] * 0, *self.coefficients[1:]))
-        result = h * 0 + outer[-1]
+        result: Jet = h * 0 + outer[-1]
         for c in reversed(outer[:-1]):
             result = result * h + c
         return result

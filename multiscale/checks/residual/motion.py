@@ -19,7 +19,7 @@ from multiscale.checks.residual.evaluation import Evaluation, Value
 from multiscale.checks.residual.jets import Jet
 from multiscale.checks.residual.statement import Statement
 
-__all__ = ["Instant"]
+__all__ = ["Instant", "leading"]
 
 
 class Instant:
@@ -41,7 +41,9 @@ class Instant:
     def scaled(self, time: Value | None = None) -> dict[sp.Basic, Value]:
         """What the equations see: symbols that carry an order q are ε^q times what was drawn."""
         known = {self._statement.small: self.small, self._statement.time: self.time if time is None else time}
-        carried = {s: self._fixed[s] * self.small**q for s, q in self._statement.orders if isinstance(s, sp.Symbol) and q}
+        carried = {
+            s: self._fixed[s] * self.small**q for s, q in self._statement.orders if isinstance(s, sp.Symbol) and q
+        }
         here = Evaluation(self.context, {}, self._drawn() | known | carried, (self._statement.time,))
         return known | carried | {s: here(x) for s, x in self._statement.relations}
 
@@ -101,3 +103,8 @@ class Instant:
 def _coefficient(x: Value, k: int) -> Value:
     """[τ^k] of a jet or of a constant."""
     return x.coefficients[k] if isinstance(x, Jet) else x * int(k == 0)
+
+
+def leading(x: Value) -> Value:
+    """The value at τ = 0."""
+    return _coefficient(x, 0)

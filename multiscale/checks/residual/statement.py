@@ -1,7 +1,7 @@
 """What the user stated, as the certificate reads it: equations, orders, and relations solved for one symbol each.
 
-    Ω = ω + εσ, ω² = Ω² + εδ, 2Ω_1 + Ω_2 = ω + εσ      a symbol of the left side has the value that follows
-    u_2: ω_2 = 2ω_1 + εσ                                the stiffness of u_2 in its equation is put equal to (2ω_1 + εσ)²
+    Ω = ω + εσ, ω² = Ω² + εδ, 2Ω_1 + Ω_2 = ω + εσ     a symbol of the left side has the value that follows
+    u_2: ω_2 = 2ω_1 + εσ                              the stiffness of u_2 is put equal to (2ω_1 + εσ)²
 
 A residual is compared with the largest of its first-order effects, max |∂R/∂u_k^(d) · u_k^(d)|, the oscillator itself,
 so that powers of ε common to a whole equation, as `ordering` makes them, divide out.
