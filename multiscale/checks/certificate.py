@@ -92,8 +92,8 @@ class Certificate:
                 shown = text if len(text) < 200 else f"{text[:190]} …"
                 raise EvaluationError(
                     f"the residual of the equation {shown} = 0 falls as the power {exponent:.3g} of the small "
-                    f"parameter, expected a whole power of at least {self.expected} for an expansion of order {self.order}: a term of "
-                    "the slow flow or of a field is wrong"
+                    f"parameter, expected a whole power of at least {self.expected} for an expansion of order "
+                    f"{self.order}: a term of the slow flow or of a field is wrong"
                 )
         if self.departures:
             raise EvaluationError(f"the amplitude convention is not kept; {'; '.join(self.departures)}")

@@ -22,14 +22,14 @@ u, v = (sp.Function(name)(t) for name in "uv")
 plain = u.diff(t, 2) + w**2 * u
 
 SYSTEMS = {
-    "self-excited": (u.diff(t, 2) + u + eps * (u**2 - 1) * u.diff(t), u, {}, 3),
-    "quadratic and cubic": (plain + eps * alpha * u**2 + eps**2 * beta * u**3, u, {}, 3),
-    "nonlinear inertia": (plain + eps * alpha * (u**2 * u.diff(t, 2) + u * u.diff(t) ** 2), u, {}, 2),
+    "self-excited": (u.diff(t, 2) + u + eps * (u**2 - 1) * u.diff(t), u, {}, 4),
+    "quadratic and cubic": (plain + eps * alpha * u**2 + eps**2 * beta * u**3, u, {}, 4),
+    "nonlinear inertia": (plain + eps * alpha * (u**2 * u.diff(t, 2) + u * u.diff(t) ** 2), u, {}, 3),
     "primary resonance": (
         plain + eps * (2 * mu * u.diff(t) + alpha * u**3 - f * sp.cos(Om * t)),
         u,
         {Om: w + eps * sigma},
-        2,
+        3,
     ),
     "one to two": (
         (
@@ -38,9 +38,9 @@ SYSTEMS = {
         ),
         (u, v),
         {w2: 2 * w1 + eps * sigma},
-        2,
+        3,
     ),
-    "parametric": (plain + eps * (h * u * sp.cos(Om * t) + alpha * u**3), u, {Om: 2 * w + eps * sigma}, 2),
+    "parametric": (plain + eps * (h * u * sp.cos(Om * t) + alpha * u**3), u, {Om: 2 * w + eps * sigma}, 3),
 }
 ALTERATIONS = {"times 8/7": sp.Rational(1, 7), "other sign": -sp.Integer(2), "dropped": -sp.Integer(1)}
 
@@ -101,7 +101,7 @@ def test_terms_at_the_natural_frequency_are_found_by_the_convention_alone(name, 
     claim = examination.claim
     for mode, A in enumerate(claim.amplitudes):
         half = sp.Rational(1, 1000) * own_wave(claim, mode) * (A * sp.conjugate(A)) ** power
-        both = half + sp.conjugate(half).subs({sp.conjugate(s): s for s in claim.times})
+        both = half + sp.conjugate(half)
         altered = field_raised(claim, claim.order, both, mode)
         assert examination.stands(altered)
         (departure,) = examination.departures(altered)

@@ -16,7 +16,6 @@ import sympy as sp
 
 from multiscale.errors import EvaluationError
 from multiscale.problem import Problem
-from multiscale.problem.reading import decimals
 
 __all__ = ["Statement", "stated"]
 
@@ -64,10 +63,10 @@ class Statement:
 
 def stated(problem: Problem) -> Statement:
     """The statement of a problem; floats stand for the decimals they print as."""
-    equations = [decimals(x) for x in problem.equations]
+    equations = [_decimals(x) for x in problem.equations]
     relations: list[tuple[sp.Symbol, sp.Expr]] = []
     for key, value in problem.resonances:
-        value = decimals(value)
+        value = _decimals(value)
         if key in problem.unknowns:
             equations = _with_frequency(equations, problem, key, value)
             continue
@@ -78,6 +77,10 @@ def stated(problem: Problem) -> Statement:
         relations.append((symbol, solved))
     orders = tuple((problem.ordering or {}).items())
     return Statement(tuple(equations), problem.unknowns, problem.time, problem.small, orders, tuple(relations))
+
+
+def _decimals(x: sp.Expr) -> sp.Expr:
+    return x.xreplace({f: sp.Rational(repr(float(f)) if f._prec <= 53 else str(f)) for f in x.atoms(sp.Float)})
 
 
 def _solved(key: sp.Expr, value: sp.Expr, problem: Problem) -> tuple[sp.Symbol, sp.Expr]:
