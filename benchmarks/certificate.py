@@ -5,7 +5,7 @@ expansion and its published expressions written out, without which nothing can b
 ends, expansion and certificate with expansion and `opponents.plain_residual`, which puts the published expressions into
 the equation and multiplies out. SymPy's cache is emptied before every call.
 
-The two checks are of a different kind: a symbolic residual that vanishes is a proof; a certificate is evidence at random
+The two checks differ in kind: a symbolic residual that vanishes is a proof; a certificate is evidence at random
 points in 130 digits and more. But it covers drives at their exact phase, several modes, and functions that cannot be
 multiplied out.
 
