@@ -40,7 +40,8 @@ class Certificate:
     departures : tuple of str
         Where the fields depart from the amplitude convention of the expansion; empty when they keep it.
     points : tuple of mappings
-        The random parameters, amplitudes and times at which the expansion was looked at.
+        The random parameters, amplitudes and times at which the expansion was looked at; a parameter that carries an
+        order q stands in the equations as ε^q times the value given here.
     small : tuple of float
         The two values of the small parameter.
     digits : int

@@ -146,6 +146,20 @@ def test_the_claim_is_what_the_levels_show(name):
         assert list(level) == list(result.slow_flow.by_scale[n].values())
 
 
+@pytest.mark.parametrize("seed", range(3))
+def test_symbols_need_no_assumptions(seed):
+    """Eight symbols, of which four must come out positive."""
+    time, small = sp.symbols("t epsilon")
+    a, b, c, d, *forces = sp.symbols("a b c d e f g h")
+    unknowns = [sp.Function(name)(time) for name in "xyzw"]
+    equations = [
+        x.diff(time, 2) + s**2 * x + small * force * unknowns[k - 1] ** 2 * x
+        for k, (x, s, force) in enumerate(zip(unknowns, (a, b, c, d), forces, strict=True))
+    ]
+    result = ms.expand(ms.Problem(equations, unknowns, small=small), 1)
+    ms.certify(result, seed=seed).require()
+
+
 def test_an_exact_result_is_called_exact():
     result = ms.expand(ms.Problem(plain - eps * f * sp.cos(Om * t), u, small=eps), 2)
     certificate = ms.certify(result)

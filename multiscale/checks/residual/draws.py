@@ -37,19 +37,22 @@ def _between(rng: Random, low: float, high: float) -> sp.Rational:
     return sp.Rational(rng.randrange(int(low * UNIT), int(high * UNIT)), UNIT)
 
 
-def _value(rng: Random, s: sp.Symbol) -> sp.Rational:
+def _value(rng: Random, s: sp.Symbol, negative: float) -> sp.Rational:
     whole = sp.Integer(2 * rng.randrange(1, 4) + bool(s.is_odd))
     size = whole if s.is_integer else _between(rng, 0.5, 2)
     if s.is_nonnegative:
         return size
-    return -size if s.is_nonpositive or rng.random() < 0.5 else size
+    return -size if s.is_nonpositive or rng.random() < negative else size
 
 
-def draw_values(statement: Statement, claim: Claim, rng: Random) -> Draw:
-    """One draw, without regard to what it makes of frequencies and divisors."""
+def draw_values(statement: Statement, claim: Claim, rng: Random, negative: float = 0.5) -> Draw:
+    """One draw, without regard to what it makes of frequencies and divisors.
+
+    `negative` is the share of negative values of symbols that may have either sign.
+    """
     signs = [(rng.choice((-1, 1)), rng.choice((-1, 1))) for _ in claim.amplitudes]
     return Draw(
-        {s: _value(rng, s) for s in statement.parameters},
+        {s: _value(rng, s, negative) for s in statement.parameters},
         tuple((x * _between(rng, 0.2, 0.8), y * _between(rng, 0.2, 0.8)) for x, y in signs),
         _between(rng, 0.5, 2),
     )

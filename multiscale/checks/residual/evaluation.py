@@ -78,6 +78,8 @@ class Evaluation:
             return self._function(x.func, self(x.args[0]), x)
         if x.is_number:
             return self._context.convert(sp.N(x, self._context.dps + 5))
+        if x.has(sp.Derivative):
+            raise EvaluationError(f"{x} is not known: a force must be smooth for its residual to have an order")
         raise EvaluationError(f"{x} has no value: neither the equations nor the relations give it a meaning")
 
     @staticmethod

@@ -30,7 +30,9 @@ __all__ = ["Examination"]
 
 POWER = 20
 LEAST_DIVISOR = 0.1
-DRAWS = 40
+DRAWS = 300
+USABLE = 20
+"""So many draws are tried, and among so many usable ones that with the largest divisors is taken."""
 
 
 class Examination:
@@ -62,13 +64,14 @@ class Examination:
     def _drawn(self, rng: Random) -> Draw:
         """The first draw with positive frequencies and without small divisors, or the best of many."""
         found: list[tuple[float, Draw]] = []
-        for _ in range(DRAWS):
-            draw = draw_values(self.statement, self.claim, rng)
+        for attempt in range(DRAWS):
+            # Frequencies without an assumption need to be positive, so that both signs alike may never do.
+            draw = draw_values(self.statement, self.claim, rng, negative=0.5 if attempt < DRAWS // 6 else 0.15)
             distance = self._least_divisor(draw)
             if distance is not None:
                 found.append((distance, draw))
-                if distance > LEAST_DIVISOR:
-                    break
+            if found and (found[-1][0] > LEAST_DIVISOR or len(found) == USABLE):
+                break
         if not found:
             raise EvaluationError(
                 f"no values of {', '.join(map(str, self.statement.parameters))} were found at which the natural "
@@ -84,6 +87,8 @@ class Examination:
         try:
             positive = [s for s, _ in self.statement.relations if s.is_positive] + list(self.claim.frequencies)
             signs = [leading(here(x)) for x in positive]
+            if any(x.imag != 0 or x.real <= 0 for x in signs):
+                return None
             divisors = [abs(leading(here(x))) for x in self.claim.divisors]
             sizes = [*divisors, *coarse.residuals(self.claim.beginning)]
         except EvaluationError:
@@ -91,9 +96,7 @@ class Examination:
         except (ArithmeticError, ValueError):
             # A pole, or a function outside its domain.
             return None
-        if any(x.imag != 0 or x.real <= 0 for x in signs) or not all(map(isfinite, sizes)):
-            return None
-        return float(min(divisors, default=inf))
+        return float(min(divisors, default=inf)) if all(map(isfinite, sizes)) else None
 
     def exponents(self, claim: Claim) -> tuple[float, ...]:
         """Observed power of ε in the residual of each equation, at its worst point; inf for a residual of zero."""
