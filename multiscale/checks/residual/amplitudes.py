@@ -24,31 +24,44 @@ from multiscale.checks.residual.motion import Instant, leading
 __all__ = ["kernel_terms", "peak_exponent"]
 
 
-def kernel_terms(claim: Claim, instant: Instant, rounding: Value, phase_alone: bool = False) -> list[tuple[int, int]]:
-    """(level, mode) of every field with a part at the rate of a mode that should not be there.
+Departure = tuple[int, int, int | None]
+"""(level, mode, unknown); no unknown where the leading fields do not show the mode at all."""
 
+
+def kernel_terms(claim: Claim, instant: Instant, rounding: Value, phase_alone: bool = False) -> list[Departure]:
+    """Where fields have a part at the rate of a mode that should not be there.
+
+    The coordinate of a mode is an unknown whose leading field has the amplitude with the factor 1. Where several have,
+    any of them may keep the convention; a kernel vector shows in all of them, and anything else leaves a residual.
     With `phase_alone` parts in phase with the amplitude may be there, as for other amplitudes than the fundamental.
     """
     waves = _Waves(claim, instant)
-    found = []
+    found: list[Departure] = []
     for j, start in enumerate(instant.start):
-        own = waves.own(j)
-        if own is None:
-            found.append((0, j))
-            continue
-        coordinate, wave = own
-        whole = start * waves.value(wave)
-        for n, level in enumerate(claim.fields):
-            # The two halves are conjugate in a real field, and no residual sees the second of them either.
-            halves = [waves.at_rate(level[coordinate], sign * waves.rates[wave]) for sign in (1, -1)]
-            if n == 0:
-                excess = abs(halves[0] - whole) + abs(halves[1] - whole.conjugate())
-            elif phase_alone:
-                excess = abs((halves[0] / whole).imag) + abs(halves[1] - halves[0].conjugate())
-            else:
-                excess = abs(halves[0]) + abs(halves[1])
-            if excess > rounding * (1 + abs(whole)):
-                found.append((n, j))
+        choices: list[list[Departure]] = [
+            [(n, j, k) for n in _levels_with_kernel(claim, waves, k, wave, start, rounding, phase_alone)]
+            for k, wave in waves.own(j)
+        ]
+        found += min(choices or [[(0, j, None)]], key=lambda levels: len(levels))
+    return found
+
+
+def _levels_with_kernel(
+    claim: Claim, waves: _Waves, unknown: int, wave: sp.Expr, amplitude: Value, rounding: Value, phase_alone: bool
+) -> list[int]:
+    """The levels whose part at the rate of a wave is not as agreed."""
+    whole, rate, found = amplitude * waves.value(wave), waves.rates[wave], []
+    for n, level in enumerate(claim.fields):
+        # The two halves are conjugate in a real field, and no residual sees the second of them either.
+        there, back = (waves.at_rate(level[unknown], sign * rate) for sign in (1, -1))
+        if n == 0:
+            excess = abs(there - whole) + abs(back - whole.conjugate())
+        elif phase_alone:
+            excess = abs((there / whole).imag) + abs(back - there.conjugate())
+        else:
+            excess = abs(there) + abs(back)
+        if excess > rounding * (1 + abs(whole)):
+            found.append(n)
     return found
 
 
@@ -78,21 +91,21 @@ class _Waves:
         own, slow = self._near_rate(x, rate), self._near_rate(x, 0)
         return self.with_waves(x, own | slow) - self.with_waves(x, slow - own)
 
-    def own(self, j: int) -> tuple[int, sp.Expr] | None:
-        """(unknown, wave) such that U_0 of that unknown has the term 1 · A_j · wave; the j-th unknown before others."""
+    def own(self, j: int) -> list[tuple[int, sp.Expr]]:
+        """(unknown, wave) such that U_0 of that unknown has the term 1 · A_j · wave."""
         # A and its conjugate are independent here, and all but A_j are zero.
         amplitudes = self._claim.amplitudes
         nothing: dict[sp.Basic, Value] = dict.fromkeys([*amplitudes, *map(sp.conjugate, amplitudes)], 0)
         one = nothing | {amplitudes[j]: 1}
-        fields = self._claim.fields[0]
-        for k in sorted(range(len(fields)), key=lambda k: k != j):
-            slow = self._near_rate(fields[k], 0)
-            for wave in sorted(self._of[fields[k]] - slow, key=str):
+        found = []
+        for k, field in enumerate(self._claim.fields[0]):
+            slow = self._near_rate(field, 0)
+            for wave in sorted(self._of[field] - slow, key=str):
                 kept = slow | {wave}
-                share = self.with_waves(fields[k], kept, one) - self.with_waves(fields[k], kept, nothing)
+                share = self.with_waves(field, kept, one) - self.with_waves(field, kept, nothing)
                 if abs(share - self.value(wave)) < abs(self._instant.small):
-                    return k, wave
-        return None
+                    found.append((k, wave))
+        return found
 
     def turning(self, x: sp.Expr) -> sp.Expr:
         """A wave of a field that turns forward."""

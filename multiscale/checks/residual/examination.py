@@ -120,16 +120,16 @@ class Examination:
         """Where a claim departs from its amplitude convention, in words."""
         coarse, fine = self._instants[0]
         rounding = self._context.mpf(10) ** (4 - self.digits)
-        unknowns, peak = self.statement.unknowns, claim.amplitude == "peak"
-        names = [str(unknowns[j]) if len(unknowns) > j else f"mode {j}" for j in range(len(claim.amplitudes))]
-        found = []
-        for n, j in kernel_terms(claim, fine, rounding, phase_alone=peak):
-            if n == 0:
-                text = f"the leading field of {names[j]} is not its amplitude times exp(i omega t)"
+        peak, found = claim.amplitude == "peak", []
+        for n, j, k in kernel_terms(claim, fine, rounding, phase_alone=peak):
+            if k is None:
+                text = f"no leading field has {claim.amplitudes[j]} times exp(i omega t)"
+            elif n == 0:
+                text = f"the leading field of {self.statement.unknowns[k]} has another fundamental than its amplitude"
             elif peak:
-                text = f"the field of {names[j]} has a part that turns the phase of its amplitude"
+                text = f"the field of {self.statement.unknowns[k]} has a part that turns the phase of its amplitude"
             else:
-                text = f"the field of {names[j]} has a part at its natural frequency, where there must be none"
+                text = f"the field of {self.statement.unknowns[k]} has a part at its natural frequency"
             found.append(f"level {n}: {text}")
         if peak and not found:
             exponent = peak_exponent(claim, (coarse, fine), self._zero)

@@ -80,7 +80,7 @@ class Instant:
         return self._followed[1]
 
     def residuals(self, claim: Claim) -> list[Value]:
-        """|R| of every equation in units of its oscillator."""
+        """|R| of every equation in units of its slopes."""
         here, statement = self.followed(claim), self._statement
         moved = [self.summed(here, level, 0) for level in zip(*claim.fields, strict=True)]
         power = dict(statement.orders)
@@ -90,8 +90,8 @@ class Instant:
         }
         there = Evaluation(self.context, {}, self._drawn() | self.scaled() | numbers, (statement.time,))
         found = []
-        for equation, effects in zip(statement.equations, statement.first_order_effects, strict=True):
-            found.append(abs(there(equation)) / max(abs(there(x)) for x in effects))
+        for equation, slopes in zip(statement.equations, statement.slopes, strict=True):
+            found.append(abs(there(equation)) / max(abs(there(x)) for x in slopes))
         return found
 
     def _real(self, x: Value) -> Value:
