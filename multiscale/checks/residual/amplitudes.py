@@ -42,7 +42,7 @@ def kernel_terms(claim: Claim, instant: Instant, rounding: Value, phase_alone: b
             [(n, j, k) for n in _levels_with_kernel(claim, waves, k, wave, start, rounding, phase_alone)]
             for k, wave in waves.own(j)
         ]
-        found += min(choices or [[(0, j, None)]], key=lambda levels: len(levels))
+        found += sorted(choices, key=len)[0] if choices else [(0, j, None)]
     return found
 
 
