@@ -16,6 +16,7 @@ NAMES = (
     "generated_call",
     "frequency_response",
     "periodic_orbit",
+    "certificate",
     "import_time",
 )
 LONG = {"periodic_orbit"}

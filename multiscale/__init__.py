@@ -22,6 +22,7 @@ from multiscale.slow_flow import SlowFlow
 if TYPE_CHECKING:
     from multiscale.checks.amplitude import with_amplitude
     from multiscale.checks.approximants import Approximant, QuadraticApproximant
+    from multiscale.checks.certificate import Certificate, certify
     from multiscale.checks.comparison import Comparison, compare
     from multiscale.checks.initial_state import initial_state
     from multiscale.checks.pade import pade
@@ -49,6 +50,7 @@ __version__ = "0.1.0"
 __all__ = [
     "Approximant",
     "Branch",
+    "Certificate",
     "Comparison",
     "CriticalDrive",
     "Equilibrium",
@@ -79,6 +81,7 @@ __all__ = [
     "UnsupportedTermError",
     "Validity",
     "backbone",
+    "certify",
     "compare",
     "critical_drive",
     "effective_cubic",
@@ -108,6 +111,7 @@ __all__ = [
 _LATER = {
     "Approximant": "checks.approximants",
     "Branch": "response.steady.branches",
+    "Certificate": "checks.certificate",
     "Comparison": "checks.comparison",
     "CriticalDrive": "response.steady.critical_drive",
     "Equilibrium": "response.steady.equilibria",
@@ -125,6 +129,7 @@ _LATER = {
     "Special": "response.steady.sweep",
     "Validity": "checks.validity",
     "backbone": "response.steady.backbone",
+    "certify": "checks.certificate",
     "compare": "checks.comparison",
     "critical_drive": "response.steady.critical_drive",
     "effective_cubic": "response.steady.backbone",
