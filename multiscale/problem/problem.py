@@ -15,6 +15,7 @@ from multiscale.problem.canonical import Canonical, canonical_form
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.reading import unsupported
 from multiscale.problem.relations import Detuning, relation_pairs
+from multiscale.problem.rest import about_rest, rest_positions
 from multiscale.problem.terms import Layout
 
 __all__ = ["Problem"]
@@ -27,8 +28,9 @@ class Problem:
     ----------
     equations : Expr, Eq, or a sequence of them
         An expression means "= 0". Each equation describes one oscillator, u'' + ω²u + … = 0, where ω² is any positive
-        expression; everything else must be polynomial in the unknowns and their first and second time derivatives, and
-        small. Any consistent units.
+        expression; everything else must be small, and polynomial in the unknowns and their first and second time
+        derivatives, or analytic in unknowns that are small: sin(u), 1/(g - u)**2, exp(u), sin(u1 - u2), which are taken
+        by their Taylor polynomials to the order that is asked for. Any consistent units.
     unknowns : applied function, or a sequence of them
         ``u(t)``, as many as there are equations, all of the same time symbol.
     small : Symbol, optional
@@ -40,6 +42,11 @@ class Problem:
         Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol,
         its square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies
         in exact rational ratio are resonant without a relation.
+    about : mapping, optional
+        Positions of rest from which unknowns are measured: {u: u_s} puts u_s + u in the place of u, in `equations` and in
+        every result. A new symbol u_s (or a number) eliminates a parameter by the equilibrium, linearly or by its square
+        if it can be a load, one that acts at u = 0; to choose another, state the relation in `resonances`. An expression
+        in the parameters must be a state of rest already.
     time : Symbol, optional
         Needed only to check that it is the one meant.
 
@@ -61,6 +68,14 @@ class Problem:
     >>> problem = ms.Problem(u.diff(t, 2) + w0**2*u + eps*u**3, u, small=eps)
     >>> problem.natural_frequencies
     (omega_0,)
+
+    A plate at rest at u_s under a voltage V, which follows from u_s:
+
+    >>> k, g, V, u_s = sp.symbols("k g V u_s", positive=True)
+    >>> pulled = u.diff(t, 2) + k*u - V**2/(g - u)**2
+    >>> problem = ms.Problem(pulled, u, ordering={u: 1}, about={u: u_s})
+    >>> problem.resonances, problem.natural_frequencies
+    (((V**2, k*u_s*(g - u_s)**2),), (sqrt(k)*sqrt(g - 3*u_s)/sqrt(g - u_s),))
     """
 
     def __init__(
@@ -71,6 +86,7 @@ class Problem:
         small: sp.Symbol | None = None,
         ordering: Mapping[sp.Expr, int] | None = None,
         resonances: Mapping[sp.Expr, sp.Expr] | Sequence[sp.Eq] = (),
+        about: Mapping[sp.Expr, sp.Expr] | None = None,
         time: sp.Symbol | None = None,
     ) -> None:
         self.unknowns: tuple[sp.Expr, ...] = _unknowns(unknowns)
@@ -84,12 +100,23 @@ class Problem:
             _ordering(ordering, self.unknowns, self.time) if ordering is not None else None
         )
         self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
+        if about is not None:
+            self._measure_from(rest_positions(about, self.unknowns, self.time, small))
         beside = [x for x in (*(self.ordering or {}), small) if isinstance(x, sp.Symbol)]
         _check_names({*self._symbols, self.time, *beside}, self.unknowns)
         self._given_small = _small(small, self.ordering, self._symbols, self.time)
         self._canonical: dict[int | None, Canonical] = {}
         self.canonical(1)
         self._warn_of_finite_detunings()
+
+    def _measure_from(self, about: dict[sp.Expr, sp.Expr]) -> None:
+        """Put the deviation from rest in the place of each unknown, and the equilibrium among the relations."""
+        jets = _jets(self.unknowns, self.time)
+        ordered = {s for s, q in (self.ordering or {}).items() if isinstance(s, sp.Symbol) and q}
+        stated = {s for pair in self.resonances for x in pair if x not in self.unknowns for s in x.free_symbols}
+        shifted, relations = about_rest(self._hidden(), jets, about, ordered, stated, self.time)
+        self.equations = tuple(x.xreplace(jets) for x in shifted)
+        self.resonances = (*self.resonances, *relations)
 
     @cached_property
     def small(self) -> sp.Symbol:
