@@ -121,8 +121,8 @@ def _frequencies(
         value = reader.expression(reader.named(square).items())
         if value.is_nonpositive:
             raise ProblemError(
-                f"the squared frequency of {name} is {value}, not positive: {name} does not oscillate at leading order, "
-                "its state of rest is unstable"
+                f"the squared frequency of {name} is {value}, not positive: {name} does not oscillate at leading "
+                "order, its state of rest is unstable"
             )
         root = square_root(reader, square, written)
         radical = sp.sqrt(root.radicand)

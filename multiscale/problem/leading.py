@@ -36,8 +36,8 @@ def own_stiffness(table: list[Entry], k: int, reader: Reader, layout: Layout, po
     if not own:
         u = reader.show(next(s for s, jet in layout.jets.items() if jet == (k, 0)))
         raise ProblemError(
-            f"the oscillator of {u} has zero frequency: its equation needs a restoring term omega**2*u at leading order. "
-            "Where the stiffness vanishes at the state of rest (pull-in, buckling) no such expansion exists"
+            f"the oscillator of {u} has zero frequency: its equation needs a restoring term omega**2*u at leading "
+            "order. Where the stiffness vanishes at the state of rest (pull-in, buckling) no such expansion exists"
         )
     return reduced(reader.ring, reader.ring.read(dict(own[0].coefficient)))
 

@@ -12,13 +12,15 @@ import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical, canonical_form
+from multiscale.problem.ordering import with_orders
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.reading import unsupported
 from multiscale.problem.relations import Detuning, relation_pairs
 from multiscale.problem.rest import about_rest, rest_positions
+from multiscale.problem.taylor import with_taylor_polynomials
 from multiscale.problem.terms import Layout
 
-__all__ = ["Problem"]
+__all__ = ["Problem", "read_statement"]
 
 
 class Problem:
@@ -43,10 +45,10 @@ class Problem:
         its square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies
         in exact rational ratio are resonant without a relation.
     about : mapping, optional
-        Positions of rest from which unknowns are measured: {u: u_s} puts u_s + u in the place of u, in `equations` and in
-        every result. A new symbol u_s (or a number) eliminates a parameter by the equilibrium, linearly or by its square
-        if it can be a load, one that acts at u = 0; to choose another, state the relation in `resonances`. An expression
-        in the parameters must be a state of rest already.
+        Positions of rest from which unknowns are measured: {u: u_s} puts u_s + u in the place of u, in `equations` and
+        in every result. A new symbol u_s (or a number) eliminates a parameter by the equilibrium, preferably a load,
+        one that acts at u = 0, where it stands linearly or by its square; to choose another, state the relation in
+        `resonances`. An expression in the parameters must be a state of rest already. See `states_of_rest`.
     time : Symbol, optional
         Needed only to check that it is the one meant.
 
@@ -219,11 +221,32 @@ class Problem:
         for k, u in enumerate(self.unknowns):
             if not any(x.free_symbols & {s for s, jet in jets.items() if jet[0] == k} for x in hidden):
                 raise ProblemError(f"the unknown {u} does not appear in the equations")
-        orders = dict(self.ordering or {})
-        powers = {s: orders[u] for s, (k, _) in jets.items() if (u := self.unknowns[k]) in orders}
-        powers |= {s: q for s, q in orders.items() if isinstance(s, sp.Symbol)}
         shown = _jets(self.unknowns, self.time)
-        return prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, shown, order)
+        return prepare(hidden, self._layout, self.time, self._powers, self.resonances, self.unknowns, shown, order)
+
+    @property
+    def _powers(self) -> dict[sp.Symbol, int]:
+        """The orders of jets and parameters."""
+        orders = dict(self.ordering or {})
+        powers = {s: orders[u] for s, (k, _) in self._layout.jets.items() if (u := self.unknowns[k]) in orders}
+        return powers | {s: q for s, q in orders.items() if isinstance(s, sp.Symbol)}
+
+    def polynomials(self, order: int) -> tuple[sp.Expr, ...]:
+        """The equations with Taylor polynomials for their analytic forces, as far as an expansion to `order` uses them.
+
+        Examples
+        --------
+        >>> import sympy as sp, multiscale as ms
+        >>> t = sp.Symbol("t")
+        >>> u = sp.Function("u")(t)
+        >>> ms.Problem(u.diff(t, 2) + sp.sin(u), u, ordering={u: 1}).polynomials(order=4)
+        (u(t)**5/120 - u(t)**3/6 + u(t) + Derivative(u(t), (t, 2)),)
+        """
+        shown = _jets(self.unknowns, self.time)
+        ordered = with_orders(self._hidden(), self._powers, self.small)
+        found, _ = with_taylor_polynomials(ordered, self._layout, self.time, shown, order)
+        spelled = shown | ({self.small: sp.Integer(1)} if self.ordering is not None else {})
+        return tuple(x.xreplace(spelled) for x in found)
 
     def _hidden(self) -> list[sp.Expr]:
         """The equations with a symbol for each unknown and derivative."""
@@ -290,6 +313,12 @@ def _rebuilt(
     options = options | {"resonances": named}
     jets = _jets(unknowns, options["time"])
     return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
+
+
+def read_statement(equations: Any, unknowns: Any) -> tuple[tuple[sp.Expr, ...], tuple[sp.Expr, ...], sp.Symbol]:
+    """(equations as expressions, unknowns, time), checked for what they are but not for what they mean."""
+    names = _unknowns(unknowns)
+    return _equations(equations), names, _time(names, None)
 
 
 def _unknowns(given: Any) -> tuple[sp.Expr, ...]:

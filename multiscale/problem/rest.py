@@ -1,6 +1,6 @@
 """Unknowns measured from a state of rest that is not zero: u → u_s + u.
 
-    f(u_s) = 0      eliminates a parameter where u_s is a symbol:   k u_s = V²/(g − u_s)²   gives   V² = k u_s (g − u_s)²
+    f(u_s) = 0   eliminates a parameter where u_s is a symbol:   k u_s = V²/(g − u_s)²   gives   V² = k u_s (g − u_s)²
 
 Solved for a load, the equilibrium is rational although the position as a function of the load is not, so that every
 coefficient stays exact. The relation joins those that the user declares.
@@ -101,8 +101,8 @@ def _relation(static: sp.Expr, loads: set[sp.Symbol], fixed: set[sp.Symbol], abo
                 candidates.append(((s not in loads, power), s**power, value))
     if not candidates:
         raise ProblemError(
-            f"about={about}: at that position the force {static} is left, and no parameter enters it linearly or by its "
-            "square, so that none can be eliminated. Put a symbol in place of a number of the load"
+            f"about={about}: at that position the force {static} is left, and no parameter enters it linearly or by "
+            "its square, so that none can be eliminated. Put a symbol in place of a number of the load"
         )
     _, key, value = min(candidates, key=lambda c: c[0])
     if value.is_nonpositive:

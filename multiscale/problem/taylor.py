@@ -3,8 +3,8 @@
     sin(εu) = εu − ε³u³/6 + … ,       1/(g − εu)² = 1/g² + 2εu/g³ + …
 
 With U_0 … U_N wanted, an equation led by the power ε^p of an acceleration needs its terms through ε^{p+N}. Terms that
-are polynomial already are left as they stand; every other term is one truncated series, see `problem.series`. A function
-whose argument stays finite as ε → 0 has no such series, and is left to be read, or refused, as it stands.
+are polynomial already are left as they stand; every other term is one truncated series, see `problem.series`. A
+function whose argument stays finite as ε → 0 has no such series, and is left to be read, or refused, as it stands.
 """
 
 from __future__ import annotations
@@ -15,12 +15,14 @@ import sympy as sp
 
 from multiscale.errors import UnsupportedTermError
 from multiscale.problem.reading import decimals, unsupported
-from multiscale.problem.series import KINKED, ROUGH, EpsilonSeries, NotAnalytic, NotSmall, needs_series
+from multiscale.problem.series import ROUGH, EpsilonSeries
+from multiscale.problem.series_arithmetic import KINKED, NotAnalyticError, NotSmallError, needs_series
 from multiscale.problem.terms import Layout
 
 __all__ = ["with_taylor_polynomials"]
 
 HIGHEST_LEAD = 60
+
 
 def with_taylor_polynomials(
     equations: Sequence[sp.Expr], layout: Layout, time: sp.Symbol, shown: Mapping[sp.Symbol, sp.Expr], order: int
@@ -33,27 +35,27 @@ def with_taylor_polynomials(
     result, cut = [], False
     for equation in equations:
         terms = sp.Add.make_args(equation)
-        _refuse_kinks(terms, layout, shown)
+        if layout.ordered:
+            _refuse_kinks(terms, layout, shown)
         wanted = [x for x in terms if needs_series(x, small, time, jets)]
-        if not wanted:
-            result.append(equation)
-            continue
         exact = {x: decimals(x) for x in wanted}
         series = EpsilonSeries(small, time, jets)
-        depth = order + _lead(sp.Add(*(exact.get(x, x) for x in terms)), series, layout)
+        depth = order + _lead(sp.Add(*(exact.get(x, x) for x in terms)), series, layout) if wanted else 0
         polynomials = {}
         for x in wanted:
             try:
                 found = series.coefficients(exact[x], depth)
-            except NotSmall:
+            except NotSmallError:
                 continue
-            except NotAnalytic as error:
+            except NotAnalyticError as error:
                 if not layout.ordered and not error.where.free_symbols & jets:
                     continue
                 raise _refused(x, error, layout, shown) from None
             polynomials[x] = sp.Add(*(c * small**k for k, c in enumerate(found)))
         cut = cut or bool(polynomials)
-        result.append(sp.Add(*(polynomials.get(x, x) for x in terms)))
+        if layout.ordered:
+            _refuse_singular(terms, polynomials, layout, shown)
+        result.append(sp.Add(*(polynomials.get(x, x) for x in terms)) if polynomials else equation)
     return result, cut
 
 
@@ -68,22 +70,36 @@ def _lead(equation: sp.Expr, series: EpsilonSeries, layout: Layout) -> int:
             continue
         try:
             found += [next(p for p in range(HIGHEST_LEAD) if series.coefficients(inertia, p)[p] != 0)]
-        except (NotAnalytic, NotSmall, StopIteration):
+        except (NotAnalyticError, NotSmallError, StopIteration):
             continue
     return min(found, default=0)
 
 
 def _refuse_kinks(terms: Sequence[sp.Expr], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]) -> None:
     """A small unknown at a kink stays there however small it is: ε·|u| is no power series of the motion."""
-    for term in terms if layout.ordered else ():
+    for term in terms:
         for f in sorted(term.atoms(*ROUGH), key=str):
             if f.free_symbols & layout.jets.keys() and layout.small not in f.free_symbols:
                 reason = f"{f.func.__name__} has no Taylor series where it has a kink or a jump"
-                raise _refused(term, NotAnalytic(f, reason, KINKED), layout, shown)
+                raise _refused(term, NotAnalyticError(f, reason, KINKED), layout, shown)
+
+
+def _refuse_singular(
+    terms: Sequence[sp.Expr],
+    polynomials: Mapping[sp.Expr, sp.Expr],
+    layout: Layout,
+    shown: Mapping[sp.Symbol, sp.Expr],
+) -> None:
+    """A denominator in a small unknown that nothing cancels: 1/u, which ε takes out as a power of its own."""
+    for term in terms:
+        for p in sorted(polynomials.get(term, term).atoms(sp.Pow), key=str):
+            if p.exp.is_negative and p.base.free_symbols & layout.jets.keys():
+                reason = "its denominator vanishes at rest, so that it is singular there"
+                raise _refused(term, NotAnalyticError(p, reason), layout, shown)
 
 
 def _refused(
-    term: sp.Expr, error: NotAnalytic, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]
+    term: sp.Expr, error: NotAnalyticError, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]
 ) -> UnsupportedTermError:
     spelled = {**shown, layout.small: sp.Integer(1)} if layout.ordered else dict(shown)
     where, whole = error.where.xreplace(spelled), term.xreplace(spelled)

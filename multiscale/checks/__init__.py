@@ -1,0 +1,1 @@
+"""Checks of a result: how far it is to be trusted."""
