@@ -58,7 +58,7 @@ def prepare(
     small = layout.small
     carried = {s: small**q * s for s, q in orders.items()}
     plain = with_orders(list(equations), orders, small)
-    plain, cut = with_taylor_polynomials(plain, layout, time, shown, order)
+    plain, cut = with_taylor_polynomials(plain, layout, time, orders, shown, order)
     plain, phasors = with_phasors(plain, time, small, set(layout.jets))
     drives = set().union(*(p.rate.free_symbols for p in phasors)) - {time, small}
     known = set().union(*(x.free_symbols for x in equations))

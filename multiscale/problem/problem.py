@@ -103,7 +103,7 @@ class Problem:
         )
         self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
         if about is not None:
-            self._measure_from(rest_positions(about, self.unknowns, self.time, small))
+            self._measure_from(rest_positions(about, self.unknowns, self.time, small), small)
         beside = [x for x in (*(self.ordering or {}), small) if isinstance(x, sp.Symbol)]
         _check_names({*self._symbols, self.time, *beside}, self.unknowns)
         self._given_small = _small(small, self.ordering, self._symbols, self.time)
@@ -111,12 +111,13 @@ class Problem:
         self.canonical(1)
         self._warn_of_finite_detunings()
 
-    def _measure_from(self, about: dict[sp.Expr, sp.Expr]) -> None:
+    def _measure_from(self, about: dict[sp.Expr, sp.Expr], small: Any) -> None:
         """Put the deviation from rest in the place of each unknown, and the equilibrium among the relations."""
         jets = _jets(self.unknowns, self.time)
-        ordered = {s for s, q in (self.ordering or {}).items() if isinstance(s, sp.Symbol) and q}
-        stated = {s for pair in self.resonances for x in pair if x not in self.unknowns for s in x.free_symbols}
-        shifted, relations = about_rest(self._hidden(), jets, about, ordered, stated, self.time)
+        vanishing = {s for s, q in (self.ordering or {}).items() if isinstance(s, sp.Symbol) and q}
+        vanishing |= {small} if isinstance(small, sp.Symbol) else set()
+        stated = [pair for pair in self.resonances if pair[0] not in self.unknowns]
+        shifted, relations = about_rest(self._hidden(), jets, about, vanishing, stated, self.time)
         self.equations = tuple(x.xreplace(jets) for x in shifted)
         self.resonances = (*self.resonances, *relations)
 
@@ -244,7 +245,7 @@ class Problem:
         """
         shown = _jets(self.unknowns, self.time)
         ordered = with_orders(self._hidden(), self._powers, self.small)
-        found, _ = with_taylor_polynomials(ordered, self._layout, self.time, shown, order)
+        found, _ = with_taylor_polynomials(ordered, self._layout, self.time, self._powers, shown, order)
         spelled = shown | ({self.small: sp.Integer(1)} if self.ordering is not None else {})
         return tuple(x.xreplace(spelled) for x in found)
 

@@ -46,13 +46,13 @@ def about_rest(
     jets: Mapping[sp.Symbol, sp.Expr],
     about: Mapping[sp.Expr, sp.Expr],
     vanishing: set[sp.Symbol],
-    fixed: set[sp.Symbol],
+    stated: Sequence[Pair],
     time: sp.Symbol,
 ) -> tuple[list[sp.Expr], list[Pair]]:
     """(equations in the deviation from rest, the relations between parameters that make it a state of rest).
 
     `hidden` are the equations in jets, `jets` what these stand for; `vanishing` symbols are zero at leading order,
-    `fixed` ones are not to be eliminated.
+    `stated` are the relations that the user declares, whose symbols are not to be eliminated.
     """
     shift = {s: s + about[x] for s, x in jets.items() if x in about}
     known = set().union(*(x.free_symbols for x in hidden))
@@ -60,19 +60,21 @@ def about_rest(
     free = all(not x.free_symbols or x.free_symbols - known for x in about.values())
     rest = dict.fromkeys([*jets, *vanishing], 0)
     shifted = [x.subs(shift, simultaneous=True) for x in hidden]
+    fixed = placed.union(*(x.free_symbols for pair in stated for x in pair))
     relations: list[Pair] = []
     balanced = []
     for given, equation in zip(hidden, shifted, strict=True):
         static = _static(equation, rest, time)
-        for key, value in relations:
-            static = static.subs(key, value)
+        for key, value in (*stated, *relations):
+            static = static.subs(key, value.subs(rest))
+        static = sp.cancel(static) if stated or relations else static
         if static != 0 and not static.equals(0):
             if not free:
                 raise ProblemError(
                     f"about={about} is no state of rest: the force {sp.factor(static)} is left there. Give the exact "
                     "position, or a new symbol for it"
                 )
-            relations.append(_relation(static, _static(given, rest, time).free_symbols, fixed | placed, about))
+            relations.append(_relation(static, _static(given, rest, time).free_symbols, fixed, about))
         elif static != 0:
             # Zero by an identity that polynomial arithmetic does not know.
             equation = equation - static

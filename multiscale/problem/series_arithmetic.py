@@ -102,7 +102,7 @@ class SeriesArithmetic:
 
     def coefficients(self, x: sp.Expr, order: int) -> list[sp.Expr]:
         """x_0 … x_order. Raises `NotAnalyticError` or `NotSmallError`."""
-        x = self._without_waves(x).subs(self.small * self.time, self.small * self._slow)
+        x = self._without_waves(x).subs(self.small * self.time, self._slow)
         # As quotients in the product around them, where a vanishing denominator may cancel.
         x = x.replace(
             lambda f: type(f) in QUOTIENTS and self.small in f.free_symbols, lambda f: QUOTIENTS[type(f)](f.args[0])

@@ -25,18 +25,24 @@ HIGHEST_LEAD = 60
 
 
 def with_taylor_polynomials(
-    equations: Sequence[sp.Expr], layout: Layout, time: sp.Symbol, shown: Mapping[sp.Symbol, sp.Expr], order: int
+    equations: Sequence[sp.Expr],
+    layout: Layout,
+    time: sp.Symbol,
+    orders: Mapping[sp.Symbol, int],
+    shown: Mapping[sp.Symbol, sp.Expr],
+    order: int,
 ) -> tuple[list[sp.Expr], bool]:
     """(the equations, polynomial in ε as far as Taylor's series makes them so; whether one was cut).
 
-    Raises `UnsupportedTermError` for a term whose function has no Taylor series at rest.
+    `equations` have their powers of ε already, those of `orders` among them. Raises `UnsupportedTermError` for a term
+    whose function has no Taylor series at rest.
     """
     small, jets = layout.small, set(layout.jets)
+    scaled = {s for s in jets if orders.get(s)}
     result, cut = [], False
     for equation in equations:
         terms = sp.Add.make_args(equation)
-        if layout.ordered:
-            _refuse_kinks(terms, layout, shown)
+        _refuse_kinks(terms, scaled, layout, shown)
         wanted = [x for x in terms if needs_series(x, small, time, jets)]
         exact = {x: decimals(x) for x in wanted}
         series = EpsilonSeries(small, time, jets)
@@ -53,8 +59,7 @@ def with_taylor_polynomials(
                 raise _refused(x, error, layout, shown) from None
             polynomials[x] = sp.Add(*(c * small**k for k, c in enumerate(found)))
         cut = cut or bool(polynomials)
-        if layout.ordered:
-            _refuse_singular(terms, polynomials, layout, shown)
+        _refuse_singular([polynomials.get(x, x) for x in terms], scaled, layout, shown)
         result.append(sp.Add(*(polynomials.get(x, x) for x in terms)) if polynomials else equation)
     return result, cut
 
@@ -75,25 +80,24 @@ def _lead(equation: sp.Expr, series: EpsilonSeries, layout: Layout) -> int:
     return min(found, default=0)
 
 
-def _refuse_kinks(terms: Sequence[sp.Expr], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]) -> None:
+def _refuse_kinks(
+    terms: Sequence[sp.Expr], scaled: set[sp.Symbol], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]
+) -> None:
     """A small unknown at a kink stays there however small it is: ε·|u| is no power series of the motion."""
     for term in terms:
         for f in sorted(term.atoms(*ROUGH), key=str):
-            if f.free_symbols & layout.jets.keys() and layout.small not in f.free_symbols:
+            if f.free_symbols & scaled and layout.small not in f.free_symbols:
                 reason = f"{f.func.__name__} has no Taylor series where it has a kink or a jump"
                 raise _refused(term, NotAnalyticError(f, reason, KINKED), layout, shown)
 
 
 def _refuse_singular(
-    terms: Sequence[sp.Expr],
-    polynomials: Mapping[sp.Expr, sp.Expr],
-    layout: Layout,
-    shown: Mapping[sp.Symbol, sp.Expr],
+    terms: Sequence[sp.Expr], scaled: set[sp.Symbol], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]
 ) -> None:
-    """A denominator in a small unknown that nothing cancels: 1/u, which ε takes out as a power of its own."""
+    """A denominator in a small unknown that nothing cancelled: 1/u, which ε leaves as a power of its own."""
     for term in terms:
-        for p in sorted(polynomials.get(term, term).atoms(sp.Pow), key=str):
-            if p.exp.is_negative and p.base.free_symbols & layout.jets.keys():
+        for p in sorted(term.atoms(sp.Pow), key=str):
+            if p.exp.is_negative and p.base.free_symbols & scaled:
                 reason = "its denominator vanishes at rest, so that it is singular there"
                 raise _refused(term, NotAnalyticError(p, reason), layout, shown)
 
