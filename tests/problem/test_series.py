@@ -14,8 +14,6 @@ k, g, s, W = sp.symbols("k g s Omega", positive=True)
 F = sp.Function("F")(e * t)
 VALUES = map(sp.Rational, ("3/7", "-5/11", "4/3", "7/4", "2/9", "8/5", "1/13"))
 PLACE = dict(zip((u, v, k, g, s, W, t), VALUES, strict=True))
-    zip((u, v, k, g, s, W, t), map(sp.Rational, ("3/7", "-5/11", "4/3", "7/4", "2/9", "8/5", "1/13")), strict=True)
-)
 ORDER = 5
 
 
