@@ -16,7 +16,7 @@ from multiscale.errors import (
 )
 from multiscale.expansion import Expansion, expand, extend
 from multiscale.level import Level
-from multiscale.problem import Problem
+from multiscale.problem import Problem, RestState, states_of_rest
 from multiscale.slow_flow import SlowFlow
 
 if TYPE_CHECKING:
@@ -26,6 +26,7 @@ if TYPE_CHECKING:
     from multiscale.checks.comparison import Comparison, compare
     from multiscale.checks.initial_state import initial_state
     from multiscale.checks.pade import pade
+    from multiscale.checks.taylor_remainder import TaylorRemainder, taylor_remainder
     from multiscale.checks.validity import Validity, validity
     from multiscale.fitting.model import Fit, fit
     from multiscale.fitting.response import ResponseModel, response_model
@@ -73,11 +74,13 @@ __all__ = [
     "ResonanceError",
     "Response",
     "ResponseModel",
+    "RestState",
     "RingDownModel",
     "SlowFlow",
     "SmallDivisorWarning",
     "Special",
     "StorageError",
+    "TaylorRemainder",
     "UnsupportedTermError",
     "Validity",
     "backbone",
@@ -101,6 +104,8 @@ __all__ = [
     "periodic_series",
     "response_model",
     "ring_down_model",
+    "states_of_rest",
+    "taylor_remainder",
     "threshold",
     "to_json",
     "transition_curves",
@@ -127,6 +132,7 @@ _LATER = {
     "ResponseModel": "fitting.response",
     "RingDownModel": "fitting.ring_down",
     "Special": "response.steady.sweep",
+    "TaylorRemainder": "checks.taylor_remainder",
     "Validity": "checks.validity",
     "backbone": "response.steady.backbone",
     "certify": "checks.certificate",
@@ -147,6 +153,7 @@ _LATER = {
     "periodic_series": "response.orbits.periodic_series",
     "response_model": "fitting.response",
     "ring_down_model": "fitting.ring_down",
+    "taylor_remainder": "checks.taylor_remainder",
     "threshold": "response.tongues.transition_curves",
     "to_json": "storage.document",
     "transition_curves": "response.tongues.transition_curves",

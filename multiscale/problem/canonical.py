@@ -121,7 +121,8 @@ def _frequencies(
         value = reader.expression(reader.named(square).items())
         if value.is_nonpositive:
             raise ProblemError(
-                f"the squared frequency of {name} is {value}, not positive: {name} does not oscillate at leading order"
+                f"the squared frequency of {name} is {value}, not positive: {name} does not oscillate at leading "
+                "order, its state of rest is unstable"
             )
         root = square_root(reader, square, written)
         radical = sp.sqrt(root.radicand)
@@ -217,7 +218,7 @@ def _pruned(
     """The generators in use, amplitude pairs and phasors first, and the slow ones among them."""
     polynomials = [term.coefficient for terms in force for term in terms] + list(bases.values)
     polynomials += [p for d in drives for p in d.detunings]
-    below = dict(spec.reciprocals)
+    below = dict(spec.reciprocals) | dict(spec.roots)
     used: set[str] = set()
     while polynomials:
         new = {name for p in polynomials for monomial, _ in p for name, _ in monomial} - used

@@ -36,7 +36,8 @@ def own_stiffness(table: list[Entry], k: int, reader: Reader, layout: Layout, po
     if not own:
         u = reader.show(next(s for s, jet in layout.jets.items() if jet == (k, 0)))
         raise ProblemError(
-            f"the oscillator of {u} has zero frequency: its equation needs a restoring term omega**2*u at leading order"
+            f"the oscillator of {u} has zero frequency: its equation needs a restoring term omega**2*u at leading "
+            "order. Where the stiffness vanishes at the state of rest (pull-in, buckling) no such expansion exists"
         )
     return reduced(reader.ring, reader.ring.read(dict(own[0].coefficient)))
 
@@ -45,6 +46,14 @@ def _misplaced(term: sp.Expr, entry: Entry, k: int, power: int, layout: Layout) 
     remedy = (
         f"Raise its order above {power} through `ordering`" if layout.ordered else f"Give it a factor {layout.small}"
     )
+    if not entry.factors and not _driven(entry):
+        return unsupported(
+            term,
+            "a constant force is left, so the state of rest is not zero",
+            "Measure the unknown from its state of rest: about={u: u_s} with a new symbol u_s (a parameter is then "
+            f"eliminated by the equilibrium), or with its exact value. A small constant force: {remedy[0].lower()}"
+            f"{remedy[1:]}",
+        )
     if entry.power < power:
         reason = f"its order {entry.power} is below the order {power} of the unknown its equation belongs to"
     elif len(entry.factors) > 1:

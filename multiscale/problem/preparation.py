@@ -1,9 +1,11 @@
 """The user's equations made ready for reading: orders, drives, relations and slow parameters, one after the other.
 
-    unknowns → jets     orders → powers of ε     cos, sin of fast angles → phasors
-    eliminated frequencies → their values        functions of εt → leaves with known derivatives
+    unknowns → jets     orders → powers of ε     analytic forces → Taylor polynomials
+    cos, sin of fast angles → phasors            eliminated frequencies → their values
+    functions of εt → leaves with known derivatives
 
-Every step is exact, but for relations that are not polynomial in ε; what those are put into is expanded to `order`.
+Every step is exact, but for functions of small unknowns and for relations that are not polynomial in ε: their series
+are cut at `order`.
 """
 
 from __future__ import annotations
@@ -18,6 +20,7 @@ from multiscale.problem.drives import Phasor, with_phasors
 from multiscale.problem.ordering import with_orders
 from multiscale.problem.relations import Relations, relations_of, taylor
 from multiscale.problem.slow_time import SlowLeaves
+from multiscale.problem.taylor import with_taylor_polynomials
 from multiscale.problem.terms import Layout
 
 __all__ = ["Prepared", "prepare"]
@@ -54,14 +57,14 @@ def prepare(
     """`orders` concern jets and parameters. Raises `UnsupportedTermError`, `ProblemError` or `ResonanceError`."""
     small = layout.small
     carried = {s: small**q * s for s, q in orders.items()}
-    plain = with_orders(list(equations), orders, small, time)
+    plain = with_orders(list(equations), orders, small)
+    plain, cut = with_taylor_polynomials(plain, layout, time, orders, shown, order)
     plain, phasors = with_phasors(plain, time, small, set(layout.jets))
     drives = set().union(*(p.rate.free_symbols for p in phasors)) - {time, small}
     known = set().union(*(x.free_symbols for x in equations))
     relations = relations_of(resonances, unknowns, small, drives, known, carried) if resonances else Relations()
     _check_used(relations, plain, phasors)
     leaves = SlowLeaves(time, small, shown=shown)
-    cut = False
     result = []
     for equation in plain:
         # Slow time first, so that series in ε are taken at fixed εt.

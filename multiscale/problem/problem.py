@@ -12,12 +12,15 @@ import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical, canonical_form
+from multiscale.problem.ordering import with_orders
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.reading import unsupported
 from multiscale.problem.relations import Detuning, relation_pairs
+from multiscale.problem.rest import about_rest, rest_positions
+from multiscale.problem.taylor import with_taylor_polynomials
 from multiscale.problem.terms import Layout
 
-__all__ = ["Problem"]
+__all__ = ["Problem", "read_statement"]
 
 
 class Problem:
@@ -27,8 +30,9 @@ class Problem:
     ----------
     equations : Expr, Eq, or a sequence of them
         An expression means "= 0". Each equation describes one oscillator, u'' + ω²u + … = 0, where ω² is any positive
-        expression; everything else must be polynomial in the unknowns and their first and second time derivatives, and
-        small. Any consistent units.
+        expression; everything else must be small, and polynomial in the unknowns and their first and second time
+        derivatives, or analytic in unknowns that are small: sin(u), 1/(g - u)**2, exp(u), sin(u1 - u2), which are taken
+        by their Taylor polynomials to the order that is asked for. Any consistent units.
     unknowns : applied function, or a sequence of them
         ``u(t)``, as many as there are equations, all of the same time symbol.
     small : Symbol, optional
@@ -40,6 +44,11 @@ class Problem:
         Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol,
         its square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies
         in exact rational ratio are resonant without a relation.
+    about : mapping, optional
+        Positions of rest from which unknowns are measured: {u: u_s} puts u_s + u in the place of u, in `equations` and
+        in every result. A new symbol u_s (or a number) eliminates a parameter by the equilibrium, preferably a load,
+        one that acts at u = 0, where it stands linearly or by its square; to choose another, state the relation in
+        `resonances`. An expression in the parameters must be a state of rest already. See `states_of_rest`.
     time : Symbol, optional
         Needed only to check that it is the one meant.
 
@@ -61,6 +70,14 @@ class Problem:
     >>> problem = ms.Problem(u.diff(t, 2) + w0**2*u + eps*u**3, u, small=eps)
     >>> problem.natural_frequencies
     (omega_0,)
+
+    A plate at rest at u_s under a voltage V, which follows from u_s:
+
+    >>> k, g, V, u_s = sp.symbols("k g V u_s", positive=True)
+    >>> pulled = u.diff(t, 2) + k*u - V**2/(g - u)**2
+    >>> problem = ms.Problem(pulled, u, ordering={u: 1}, about={u: u_s})
+    >>> problem.resonances, problem.natural_frequencies
+    (((V**2, k*u_s*(g - u_s)**2),), (sqrt(k)*sqrt(g - 3*u_s)/sqrt(g - u_s),))
     """
 
     def __init__(
@@ -71,6 +88,7 @@ class Problem:
         small: sp.Symbol | None = None,
         ordering: Mapping[sp.Expr, int] | None = None,
         resonances: Mapping[sp.Expr, sp.Expr] | Sequence[sp.Eq] = (),
+        about: Mapping[sp.Expr, sp.Expr] | None = None,
         time: sp.Symbol | None = None,
     ) -> None:
         self.unknowns: tuple[sp.Expr, ...] = _unknowns(unknowns)
@@ -84,12 +102,24 @@ class Problem:
             _ordering(ordering, self.unknowns, self.time) if ordering is not None else None
         )
         self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
+        if about is not None:
+            self._measure_from(rest_positions(about, self.unknowns, self.time, small), small)
         beside = [x for x in (*(self.ordering or {}), small) if isinstance(x, sp.Symbol)]
         _check_names({*self._symbols, self.time, *beside}, self.unknowns)
         self._given_small = _small(small, self.ordering, self._symbols, self.time)
         self._canonical: dict[int | None, Canonical] = {}
         self.canonical(1)
         self._warn_of_finite_detunings()
+
+    def _measure_from(self, about: dict[sp.Expr, sp.Expr], small: Any) -> None:
+        """Put the deviation from rest in the place of each unknown, and the equilibrium among the relations."""
+        jets = _jets(self.unknowns, self.time)
+        vanishing = {s for s, q in (self.ordering or {}).items() if isinstance(s, sp.Symbol) and q}
+        vanishing |= {small} if isinstance(small, sp.Symbol) else set()
+        stated = [pair for pair in self.resonances if pair[0] not in self.unknowns]
+        shifted, relations = about_rest(self._hidden(), jets, about, vanishing, stated, self.time)
+        self.equations = tuple(x.xreplace(jets) for x in shifted)
+        self.resonances = (*self.resonances, *relations)
 
     @cached_property
     def small(self) -> sp.Symbol:
@@ -192,11 +222,32 @@ class Problem:
         for k, u in enumerate(self.unknowns):
             if not any(x.free_symbols & {s for s, jet in jets.items() if jet[0] == k} for x in hidden):
                 raise ProblemError(f"the unknown {u} does not appear in the equations")
-        orders = dict(self.ordering or {})
-        powers = {s: orders[u] for s, (k, _) in jets.items() if (u := self.unknowns[k]) in orders}
-        powers |= {s: q for s, q in orders.items() if isinstance(s, sp.Symbol)}
         shown = _jets(self.unknowns, self.time)
-        return prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, shown, order)
+        return prepare(hidden, self._layout, self.time, self._powers, self.resonances, self.unknowns, shown, order)
+
+    @property
+    def _powers(self) -> dict[sp.Symbol, int]:
+        """The orders of jets and parameters."""
+        orders = dict(self.ordering or {})
+        powers = {s: orders[u] for s, (k, _) in self._layout.jets.items() if (u := self.unknowns[k]) in orders}
+        return powers | {s: q for s, q in orders.items() if isinstance(s, sp.Symbol)}
+
+    def polynomials(self, order: int) -> tuple[sp.Expr, ...]:
+        """The equations with Taylor polynomials for their analytic forces, as far as an expansion to `order` uses them.
+
+        Examples
+        --------
+        >>> import sympy as sp, multiscale as ms
+        >>> t = sp.Symbol("t")
+        >>> u = sp.Function("u")(t)
+        >>> ms.Problem(u.diff(t, 2) + sp.sin(u), u, ordering={u: 1}).polynomials(order=4)
+        (u(t)**5/120 - u(t)**3/6 + u(t) + Derivative(u(t), (t, 2)),)
+        """
+        shown = _jets(self.unknowns, self.time)
+        ordered = with_orders(self._hidden(), self._powers, self.small)
+        found, _ = with_taylor_polynomials(ordered, self._layout, self.time, self._powers, shown, order)
+        spelled = shown | ({self.small: sp.Integer(1)} if self.ordering is not None else {})
+        return tuple(x.xreplace(spelled) for x in found)
 
     def _hidden(self) -> list[sp.Expr]:
         """The equations with a symbol for each unknown and derivative."""
@@ -263,6 +314,12 @@ def _rebuilt(
     options = options | {"resonances": named}
     jets = _jets(unknowns, options["time"])
     return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
+
+
+def read_statement(equations: Any, unknowns: Any) -> tuple[tuple[sp.Expr, ...], tuple[sp.Expr, ...], sp.Symbol]:
+    """(equations as expressions, unknowns, time), checked for what they are but not for what they mean."""
+    names = _unknowns(unknowns)
+    return _equations(equations), names, _time(names, None)
 
 
 def _unknowns(given: Any) -> tuple[sp.Expr, ...]:

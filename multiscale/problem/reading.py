@@ -2,6 +2,7 @@
 
     symbols, constants such as pi, functions of parameters       opaque generators, meaning = the expression itself
     sqrt(n)                                                      product of sqrt(prime), with the relation g**2 = prime
+    sin(x) beside cos(x), cosh(x) beside sinh(x)                 with sin**2 = 1 - cos**2, cosh**2 = 1 + sinh**2
     floats                                                       opaque generators, put back on output
     1/p, p free of unknowns and of the small parameter           reciprocal generators of the irreducible factors of p
 
@@ -18,7 +19,7 @@ from typing import Any
 
 import sympy as sp
 
-from multiscale.algebra.polynomial import freeze
+from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Quotient, reduced
 from multiscale.algebra.reciprocals import inverse, missing
 from multiscale.algebra.ring import IMAGINARY, RingSpec
@@ -88,10 +89,11 @@ class Reader:
         expressions = list(expressions)
         for expression in expressions:
             self._collect(expression, roots, denominators)
-        names = tuple(name for name in sorted(self.meanings) if name not in roots)
+        pairs = self._pythagorean()
+        names = tuple(name for name in sorted(self.meanings) if name not in roots and name not in pairs)
         root_relations = tuple(
             (name, freeze({(): Fraction(roots[name])})) for name in sorted(roots, key=lambda g: roots[g])
-        )
+        ) + tuple(sorted(pairs.items()))
         reals = (*(s.name for s in self.dynamic), *names)
         self.ring = SympyRing(RingSpec(pairs=(), reals=reals, roots=root_relations))
         for base in denominators:
@@ -106,6 +108,16 @@ class Reader:
     def show(self, expression: sp.Expr) -> sp.Expr:
         """The expression as the user wrote it, derivatives and all."""
         return expression.xreplace(self._shown)
+
+    def _pythagorean(self) -> dict[str, Frozen]:
+        """{name of sin(x): 1 - cos(x)**2, name of cosh(x): 1 + sinh(x)**2} where both of a pair are leaves."""
+        found = {}
+        for name, leaf in self.meanings.items():
+            for function, partner, sign in ((sp.sin, sp.cos, -1), (sp.cosh, sp.sinh, 1)):
+                other = str(partner(leaf.args[0])) if isinstance(leaf, function) else ""
+                if other in self.meanings:
+                    found[name] = freeze({(): Fraction(1), ((other, 2),): Fraction(sign)})
+        return found
 
     def _name(self, leaf: sp.Expr) -> str:
         name = repr(float(leaf)) if isinstance(leaf, sp.Float) and leaf._prec <= 53 else str(leaf)

@@ -195,4 +195,6 @@ def detuning_of(
         slope = sp.diff(value, s)
         if s not in slope.free_symbols:
             return Detuning(symbol, s, (key - value.subs(s, 0)) / slope)
+    if symbol is not None and key == symbol**2:
+        return Detuning(symbol, symbol, sp.sqrt(value))
     return Detuning(symbol, symbol, value)

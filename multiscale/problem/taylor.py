@@ -1,0 +1,111 @@
+"""Analytic forces of small unknowns, by their Taylor polynomials to exactly the order needed.
+
+    sin(εu) = εu − ε³u³/6 + … ,       1/(g − εu)² = 1/g² + 2εu/g³ + …
+
+With U_0 … U_N wanted, an equation led by the power ε^p of an acceleration needs its terms through ε^{p+N}. Terms that
+are polynomial already are left as they stand; every other term is one truncated series, see `problem.series`. A
+function whose argument stays finite as ε → 0 has no such series, and is left to be read, or refused, as it stands.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+
+import sympy as sp
+
+from multiscale.errors import UnsupportedTermError
+from multiscale.problem.reading import decimals, unsupported
+from multiscale.problem.series import ROUGH, EpsilonSeries
+from multiscale.problem.series_arithmetic import KINKED, NotAnalyticError, NotSmallError, needs_series
+from multiscale.problem.terms import Layout
+
+__all__ = ["with_taylor_polynomials"]
+
+HIGHEST_LEAD = 60
+
+
+def with_taylor_polynomials(
+    equations: Sequence[sp.Expr],
+    layout: Layout,
+    time: sp.Symbol,
+    orders: Mapping[sp.Symbol, int],
+    shown: Mapping[sp.Symbol, sp.Expr],
+    order: int,
+) -> tuple[list[sp.Expr], bool]:
+    """(the equations, polynomial in ε as far as Taylor's series makes them so; whether one was cut).
+
+    `equations` have their powers of ε already, those of `orders` among them. Raises `UnsupportedTermError` for a term
+    whose function has no Taylor series at rest.
+    """
+    small, jets = layout.small, set(layout.jets)
+    scaled = {s for s in jets if orders.get(s)}
+    result, cut = [], False
+    for equation in equations:
+        terms = sp.Add.make_args(equation)
+        _refuse_kinks(terms, scaled, layout, shown)
+        wanted = [x for x in terms if needs_series(x, small, time, jets)]
+        exact = {x: decimals(x) for x in wanted}
+        series = EpsilonSeries(small, time, jets)
+        depth = order + _lead(sp.Add(*(exact.get(x, x) for x in terms)), series, layout) if wanted else 0
+        polynomials = {}
+        for x in wanted:
+            try:
+                found = series.coefficients(exact[x], depth)
+            except NotSmallError:
+                continue
+            except NotAnalyticError as error:
+                if not layout.ordered and not error.where.free_symbols & jets:
+                    continue
+                raise _refused(x, error, layout, shown) from None
+            polynomials[x] = sp.Add(*(c * small**k for k, c in enumerate(found)))
+        cut = cut or bool(polynomials)
+        _refuse_singular([polynomials.get(x, x) for x in terms], scaled, layout, shown)
+        result.append(sp.Add(*(polynomials.get(x, x) for x in terms)) if polynomials else equation)
+    return result, cut
+
+
+def _lead(equation: sp.Expr, series: EpsilonSeries, layout: Layout) -> int:
+    """The lowest power of ε at which an acceleration stands alone; 0 where none does, which is refused later."""
+    found = []
+    for jet, (_, derivative) in layout.jets.items():
+        if derivative != 2 or jet not in equation.free_symbols:
+            continue
+        inertia = sp.diff(equation, jet).subs(dict.fromkeys(layout.jets, 0))
+        if inertia == 0 or inertia.has(sp.nan, sp.zoo):
+            continue
+        try:
+            found += [next(p for p in range(HIGHEST_LEAD) if series.coefficients(inertia, p)[p] != 0)]
+        except (NotAnalyticError, NotSmallError, StopIteration):
+            continue
+    return min(found, default=0)
+
+
+def _refuse_kinks(
+    terms: Sequence[sp.Expr], scaled: set[sp.Symbol], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]
+) -> None:
+    """A small unknown at a kink stays there however small it is: ε·|u| is no power series of the motion."""
+    for term in terms:
+        for f in sorted(term.atoms(*ROUGH), key=str):
+            if f.free_symbols & scaled and layout.small not in f.free_symbols:
+                reason = f"{f.func.__name__} has no Taylor series where it has a kink or a jump"
+                raise _refused(term, NotAnalyticError(f, reason, KINKED), layout, shown)
+
+
+def _refuse_singular(
+    terms: Sequence[sp.Expr], scaled: set[sp.Symbol], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]
+) -> None:
+    """A denominator in a small unknown that nothing cancelled: 1/u, which ε leaves as a power of its own."""
+    for term in terms:
+        for p in sorted(term.atoms(sp.Pow), key=str):
+            if p.exp.is_negative and p.base.free_symbols & scaled:
+                reason = "its denominator vanishes at rest, so that it is singular there"
+                raise _refused(term, NotAnalyticError(p, reason), layout, shown)
+
+
+def _refused(
+    term: sp.Expr, error: NotAnalyticError, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]
+) -> UnsupportedTermError:
+    spelled = {**shown, layout.small: sp.Integer(1)} if layout.ordered else dict(shown)
+    where, whole = error.where.xreplace(spelled), term.xreplace(spelled)
+    inside = f" (in {where})" if where != whole and where.free_symbols else ""
+    return unsupported(whole, f"{error.reason}{inside}", error.remedy)
