@@ -16,14 +16,17 @@ from multiscale.algebra.choice import make_ring
 from multiscale.algebra.derivation import Derivation
 from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Coefficient, finish
-from multiscale.algebra.ring import Exponents
+from multiscale.algebra.ring import Exponents, Ring
 from multiscale.clock import Clock
+from multiscale.forces import Force
 from multiscale.forces.polynomial import PolynomialForce
+from multiscale.forces.projected import ProjectedForce, ProjectedTerm, Sum, Wave
 from multiscale.frame import Frame, frame_of
 from multiscale.hierarchy import Hierarchy, next_level, start
 from multiscale.linear_part import Rate
 from multiscale.linear_part.oscillators import Oscillators
 from multiscale.problem.canonical import Canonical
+from multiscale.problem.laws import LAW
 from multiscale.tower import Tower
 
 __all__ = ["Computation", "Finished", "Snapshot", "begin", "restore"]
@@ -184,7 +187,24 @@ def begin(canonical: Canonical, representation: str, reciprocals: Iterable[tuple
     }
     detunings = {d.generator: d.detunings for d in drives}
     clock = Clock(ring, frequencies, [d.rate for d in drives], detunings, dict(canonical.slow))
-    return Computation(canonical, start(ring, linear, PolynomialForce(canonical.force, ring), clock))
+    return Computation(canonical, start(ring, linear, _force(canonical, ring), clock))
+
+
+def _force(canonical: Canonical, ring: Ring) -> Force:
+    """The polynomial terms, and the projected ones where there are any."""
+    if not any(t.factors and t.factors[0][1] == LAW for terms in canonical.force for t in terms):
+        return PolynomialForce(canonical.force, ring)
+    plain, projected = [], []
+    for terms in canonical.force:
+        laws = [t for t in terms if t.factors and t.factors[0][1] == LAW]
+        plain.append([t for t in terms if t not in laws])
+        projected.append([ProjectedTerm(t.power, t.coefficient, _waves(canonical, t.factors[0][0])) for t in laws])
+    return Sum([PolynomialForce(plain, ring), ProjectedForce(projected, ring)])
+
+
+def _waves(canonical: Canonical, law: int) -> tuple[Wave, ...]:
+    pairs = canonical.spec.pairs
+    return tuple(Wave(pairs[h.mode][0], h.number, h.real, h.imag) for h in canonical.harmonics if h.law == law)
 
 
 def restore(canonical: Canonical, snapshot: Snapshot, representation: str = "auto") -> Computation:

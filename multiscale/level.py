@@ -14,6 +14,7 @@ from multiscale.computed import Computation, Finished
 from multiscale.expressions import Writer
 from multiscale.frame import turns
 from multiscale.problem import Problem
+from multiscale.problem.projection import amplitude_of
 from multiscale.symbols import Symbols
 
 __all__ = ["Level", "Views", "polynomials_below"]
@@ -78,7 +79,20 @@ class Views:
 
     @cached_property
     def writer(self) -> Writer:
-        return Writer(dict(self._computation.canonical.meanings))
+        canonical = self._computation.canonical
+        return Writer(dict(canonical.meanings), dict(canonical.numeric))
+
+    def placed(self, x: sp.Expr, form: str) -> sp.Expr:
+        """x with the amplitudes that Fourier coefficients of forces depend on written in the variables of a form."""
+        if not self._computation.canonical.numeric:
+            return x
+        symbols = self._symbols
+        sizes = {
+            "polar": list(symbols.a),
+            "cartesian": [sp.sqrt(p**2 + q**2) for p, q in zip(symbols.p, symbols.q, strict=True)],
+            "complex": [2 * sp.Abs(A) for A in symbols.A],
+        }[form]
+        return x.xreplace({amplitude_of(k): size for k, size in enumerate(sizes)})
 
     def phase_of(self, row: Sequence[Fraction]) -> sp.Expr:
         """Σ row_f ω_f t + Σ row_l θ_l: a combination of natural phases and angles of drives, in time."""
@@ -119,7 +133,7 @@ class Views:
             rest = self.angle(frame.relative(m, mode))
             wave = sp.exp(sp.I * rest) if rest != 0 else sp.Integer(1)
             terms.append(self.writer.coefficient(c) * self.monomial(m) * wave)
-        return sp.Add(*terms)
+        return self.placed(sp.Add(*terms), "complex")
 
     def monomial(self, exponents: tuple[int, ...]) -> sp.Expr:
         """The amplitudes of a monomial, phases apart."""
@@ -136,7 +150,8 @@ class Views:
             row = self._computation.frame.fast(turns(m))
             angles[row] = self.angle(turns(m))
             groups.setdefault(row, []).append(self.writer.coefficient(c) * self.monomial(m))
-        return sp.Add(*(sp.Add(*terms) * sp.exp(sp.I * angles[row]) for row, terms in sorted(groups.items())))
+        total = sp.Add(*(sp.Add(*terms) * sp.exp(sp.I * angles[row]) for row, terms in sorted(groups.items())))
+        return self.placed(total, "complex")
 
     def level(self, n: int) -> Level:
         problem, computation = self._problem, self._computation

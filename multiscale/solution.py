@@ -36,8 +36,10 @@ def field_writer(computation: Computation, views: Views, symbols: Symbols, form:
     modes = computation.modes
     if form == "polar":
         deviations = computation.frame.deviations(symbols.gamma, symbols.beta)
-        return lambda f: _real_field(f, modes, views, lambda m: _polar_wave(m, deviations, views, symbols))
-    return lambda f: _real_field(f, modes, views, lambda m: _cartesian_wave(m, views, symbols))
+        waves = lambda m: _polar_wave(m, deviations, views, symbols)
+    else:
+        waves = lambda m: _cartesian_wave(m, views, symbols)
+    return lambda f: views.placed(_real_field(f, modes, views, waves), form)
 
 
 def _real_field(finished: Finished, modes: int, views: Views, wave: Callable[[tuple[int, ...]], Complex]) -> sp.Expr:

@@ -15,6 +15,7 @@ from multiscale.codegen.tape import Node, Tape
 from multiscale.computed import Computation, Finished
 from multiscale.frame import turns
 from multiscale.problem import Problem
+from multiscale.problem.force_law import law_name
 from multiscale.problem.relations import Detuning
 
 __all__ = [
@@ -43,7 +44,18 @@ def _function(
     defaults = {} if problem.ordering is None else {str(problem.small.name): 1.0}
     inversions = tuple(_inversion(problem, d) for d in problem.detunings)
     ready = tuple(defaults.items())
-    return NumpyFunction(text, functions, tuple(parameters), len(state), shape, is_complex, ready, inversions)
+    laws = _laws_in(functions, problem)
+    return NumpyFunction(text, functions, tuple(parameters), len(state), shape, is_complex, ready, inversions, laws)
+
+
+def _laws_in(functions: Sequence[str], problem: Problem) -> tuple[tuple[str, Callable[..., object]], ...]:
+    """The user's force laws, and their derivatives, among the functions of a kernel."""
+    available: dict[str, Callable[..., object]] = {}
+    for name, law in problem.laws.items():
+        available[law_name(name)] = law.function
+        if law.derivative is not None:
+            available[f"{law_name(name)}_slope"] = law.derivative
+    return tuple((name, available[name]) for name in functions if name in available)
 
 
 def _inversion(problem: Problem, detuning: Detuning) -> Inversion:
@@ -60,8 +72,12 @@ def _inversion(problem: Problem, detuning: Detuning) -> Inversion:
 
 def _cartesian_state(program: Program, modes: int) -> tuple[list[str], list[Complex]]:
     names = [f"state {letter}{k + 1 if modes > 1 else ''}" for k in range(modes) for letter in "pq"]
-    nodes = [program.tape.input(name) for name in names]
-    return names, list(zip(nodes[::2], nodes[1::2], strict=True))
+    tape = program.tape
+    nodes = [tape.input(name) for name in names]
+    state = list(zip(nodes[::2], nodes[1::2], strict=True))
+    if program.projected:
+        program.set_amplitudes(tape.call("root", tape.add(tape.mul(p, p), tape.mul(q, q))) for p, q in state)
+    return names, state
 
 
 def _flow(program: Program, computation: Computation, mode: int) -> dict[tuple[int, ...], Complex]:
@@ -92,6 +108,7 @@ def _polar(program: Program, computation: Computation) -> tuple[list[str], list[
     names += [f"state gamma{k + 1}" for k in range(len(frame.resonant))] + [f"state beta{j + 1}" for j in frame.cyclic]
     nodes = [tape.input(name) for name in names]
     size, phases = nodes[: computation.modes], nodes[computation.modes :][: len(frame.resonant)]
+    program.set_amplitudes(size)
     rates, turning = [], []
     for a in modes:
         rate, turn = _polar_mode(program, computation, a, size, phases)
@@ -135,6 +152,8 @@ def _complex(program: Program, computation: Computation) -> tuple[list[str], lis
     tape, modes = program.tape, range(computation.modes)
     names = [f"state A{k + 1 if computation.modes > 1 else ''}" for k in modes]
     amplitudes = [tape.input(name) for name in names]
+    if program.projected:
+        program.set_amplitudes(tape.mul(tape.constant(2), tape.call("absolute", A)) for A in amplitudes)
     variables = [x for A in amplitudes for x in (A, tape.call("conj", A))]
     outputs = []
     for a in modes:

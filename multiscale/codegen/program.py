@@ -21,6 +21,7 @@ from multiscale.computed import Computation, Finished
 from multiscale.errors import EvaluationError
 from multiscale.frame import turns
 from multiscale.problem import Problem
+from multiscale.problem.projection import amplitude_of
 
 __all__ = ["Complex", "Program"]
 
@@ -31,17 +32,34 @@ class Program:
     """A tape on which the parameters of a problem are inputs, with the operations that results are made of."""
 
     def __init__(self, problem: Problem, computation: Computation) -> None:
-        self.tape = Tape()
+        self.tape = Tape(problem.laws)
+        self.amplitudes: dict[sp.Symbol, Node] = {}
         self.parameters = tuple(sorted((*problem.parameters, problem.small), key=lambda s: str(s.name)))
         self.time = self.tape.input("time t")
         self._time_symbol = problem.time
         self.small = self._parameter(problem.small)
         self._computation = computation
-        self._meanings = dict(computation.canonical.meanings)
+        self._meanings = dict(computation.canonical.meanings) | dict(computation.canonical.numeric)
         self._values: dict[str, Node] = {}
         self._inverses: dict[Frozen, Node] = {}
 
+    @property
+    def projected(self) -> bool:
+        """Whether forces that are not polynomial stand in the results."""
+        return bool(self._computation.canonical.numeric)
+
+    def set_amplitudes(self, nodes: Iterable[Node]) -> None:
+        """The amplitudes a_k, which the Fourier coefficients of forces that are not polynomial depend on."""
+        self.amplitudes = {amplitude_of(k): node for k, node in enumerate(nodes)}
+
     def _parameter(self, symbol: sp.Symbol) -> Node:
+        if symbol in self.amplitudes:
+            return self.amplitudes[symbol]
+        if symbol.name.startswith("@a"):
+            raise EvaluationError(
+                "the slow flow contains forces that are not polynomial: its coefficients depend on the amplitude, and "
+                "what needs a polynomial slow flow cannot be applied to it"
+            )
         return self.time if symbol == self._time_symbol else self.tape.input(f"parameter {symbol.name}")
 
     def expression(self, x: sp.Expr) -> Node:

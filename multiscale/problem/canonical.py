@@ -21,6 +21,7 @@ from multiscale.problem.drives import Drive
 from multiscale.problem.frequencies import Bases, bases_of, denested, eliminated, square_root
 from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_drives
 from multiscale.problem.preparation import Prepared
+from multiscale.problem.projection import Harmonic
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import Detuning, detuning_of
 from multiscale.problem.terms import Layout, match, tabulate
@@ -38,7 +39,8 @@ class Canonical:
     stands for in the user's symbols, `force` the right-hand sides, `bases` the natural frequencies as rates, `drives`
     the phasors, `slow` the time derivative (in εt) of each slow generator, `detunings` how detunings follow from the
     frequencies of their relations. `truncated` says that a statement exact in ε
-    was expanded, so that a higher order needs the canonical form anew.
+    was expanded, so that a higher order needs the canonical form anew. `harmonics` are the Fourier coefficients of
+    forces that are not polynomial, `numeric` their spelling for evaluation.
     """
 
     spec: RingSpec
@@ -50,6 +52,8 @@ class Canonical:
     slow: tuple[tuple[str, Frozen], ...]
     detunings: tuple[Detuning, ...]
     truncated: bool
+    harmonics: tuple[Harmonic, ...] = ()
+    numeric: tuple[tuple[str, sp.Expr], ...] = ()
 
 
 @dataclass

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import warnings
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import replace
 from functools import cached_property
 from operator import index
 from typing import Any, SupportsIndex
@@ -12,7 +13,10 @@ import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical, canonical_form
+from multiscale.problem.force_law import ForceLaw, laws_of
+from multiscale.problem.laws import LAW, Law, separated
 from multiscale.problem.preparation import Prepared, prepare
+from multiscale.problem.projected import with_projections
 from multiscale.problem.reading import unsupported
 from multiscale.problem.relations import Detuning, relation_pairs
 from multiscale.problem.terms import Layout
@@ -72,10 +76,14 @@ class Problem:
         ordering: Mapping[sp.Expr, int] | None = None,
         resonances: Mapping[sp.Expr, sp.Expr] | Sequence[sp.Eq] = (),
         time: sp.Symbol | None = None,
+        laws: Mapping[Any, ForceLaw | Any] | None = None,
+        harmonics: int | None = None,
     ) -> None:
         self.unknowns: tuple[sp.Expr, ...] = _unknowns(unknowns)
         self.time: sp.Symbol = _time(self.unknowns, time)
         self.equations: tuple[sp.Expr, ...] = _equations(equations)
+        self.laws: dict[str, ForceLaw] = laws_of(laws or {})
+        self.harmonics: int | None = _harmonics(harmonics)
         if len(self.equations) != len(self.unknowns):
             raise ProblemError(
                 f"{len(self.equations)} equations for {len(self.unknowns)} unknowns: as many of each are needed"
@@ -158,8 +166,11 @@ class Problem:
             shown = _jets(self.unknowns, self.time) | prepared.shown
             if self.ordering is not None:
                 shown[self.small] = sp.Integer(1)
-            form = canonical_form(prepared, self._layout, shown, list(self.unknowns))
-            self._canonical[order if form.truncated else None] = form
+            layout, shown = _with_laws(self._layout, shown, prepared.laws)
+            form = canonical_form(prepared, layout, shown, list(self.unknowns))
+            if prepared.laws:
+                form = with_projections(form, prepared.laws, layout, shown, self._theta, order, self.harmonics)
+            self._canonical[order if form.truncated or prepared.laws else None] = form
             return form
         return self._canonical[order]
 
@@ -179,6 +190,14 @@ class Problem:
                     stacklevel=3,
                 )
 
+    @property
+    def _theta(self) -> sp.Symbol:
+        """The phase that averages integrate over."""
+        name = "theta"
+        while name in self.names:
+            name += "_u"
+        return sp.Symbol(name, real=True)
+
     @cached_property
     def _layout(self) -> Layout:
         jets = {sp.Symbol(f"@{k}.{d}"): (k, d) for k in range(len(self.unknowns)) for d in (0, 1, 2)}
@@ -196,7 +215,11 @@ class Problem:
         powers = {s: orders[u] for s, (k, _) in jets.items() if (u := self.unknowns[k]) in orders}
         powers |= {s: q for s, q in orders.items() if isinstance(s, sp.Symbol)}
         shown = _jets(self.unknowns, self.time)
-        return prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, shown, order)
+        laws: tuple[Law, ...] = ()
+        if self.ordering is None:
+            hidden, laws = separated(hidden, self._layout, self.time, shown, self.laws)
+        prepared = prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, shown, order)
+        return replace(prepared, laws=_at_resonance(laws, prepared, self.small))
 
     def _hidden(self) -> list[sp.Expr]:
         """The equations with a symbol for each unknown and derivative."""
@@ -219,7 +242,8 @@ class Problem:
 
     def _key(self) -> tuple[Any, ...]:
         ordering = None if self.ordering is None else tuple(sorted(self.ordering.items(), key=str))
-        return (self.equations, self.unknowns, self._given_small, ordering, self.resonances)
+        laws = tuple(sorted(self.laws.items(), key=lambda item: item[0]))
+        return (self.equations, self.unknowns, self._given_small, ordering, self.resonances, laws, self.harmonics)
 
     def __eq__(self, other: object) -> bool:
         return isinstance(other, Problem) and self._key() == other._key()
@@ -234,6 +258,7 @@ class Problem:
         if self.ordering is not None:
             indexed = {self.unknowns.index(x) if x in self.unknowns else x: q for x, q in self.ordering.items()}
             options["ordering"] = indexed
+        options |= {"laws": self.laws, "harmonics": self.harmonics}
         options["resonances"] = [(self.unknowns.index(x) if x in self.unknowns else x, y) for x, y in self.resonances]
         return _rebuilt, (self._hidden(), functions, options)
 
@@ -245,6 +270,27 @@ class Problem:
     def _repr_latex_(self) -> str:
         rows = r" \\ ".join(f"{sp.latex(x)} &= 0" for x in self.equations)
         return rf"$\displaystyle \begin{{aligned}}{rows}\end{{aligned}}$"
+
+
+def _with_laws(
+    layout: Layout, shown: dict[sp.Symbol, sp.Expr], laws: Sequence[Law]
+) -> tuple[Layout, dict[sp.Symbol, sp.Expr]]:
+    """Layout and spelling with the symbols of laws."""
+    real = {sp.Symbol(s.name, real=True): x for s, x in shown.items()}
+    jets = {**layout.jets, **{law.symbol: (n, LAW) for n, law in enumerate(laws)}}
+    return replace(layout, jets=jets), {**shown, **{law.symbol: law.force.xreplace(real) for law in laws}}
+
+
+def _at_resonance(laws: Sequence[Law], prepared: Prepared, small: sp.Symbol) -> tuple[Law, ...]:
+    """Laws with the frequencies that relations eliminate at their leading values."""
+    values = {s: value.subs(small, 0) for s, value in prepared.relations.values}
+    return tuple(replace(law, force=law.force.subs(values)) for law in laws)
+
+
+def _harmonics(given: Any) -> int | None:
+    if given is not None and (isinstance(given, bool) or not isinstance(given, SupportsIndex) or index(given) < 1):
+        raise ProblemError(f"harmonics is {given!r}: expected an integer ≥ 1, the highest harmonic to keep")
+    return None if given is None else index(given)
 
 
 def _jets(unknowns: Sequence[sp.Expr], time: sp.Symbol) -> dict[sp.Symbol, sp.Expr]:
@@ -260,7 +306,8 @@ def _rebuilt(
         named = {unknowns[x] if isinstance(x, int) else x: q for x, q in options["ordering"].items()}
         options = options | {"ordering": named}
     named = {unknowns[x] if isinstance(x, int) else x: y for x, y in options["resonances"]}
-    options = options | {"resonances": named}
+    laws = {sp.Function(name): law for name, law in options["laws"].items()}
+    options = options | {"resonances": named, "laws": laws}
     jets = _jets(unknowns, options["time"])
     return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
 
