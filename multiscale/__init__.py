@@ -17,12 +17,14 @@ from multiscale.errors import (
 from multiscale.expansion import Expansion, expand, extend
 from multiscale.level import Level
 from multiscale.problem import Problem
+from multiscale.problem.force_law import ForceLaw
 from multiscale.slow_flow import SlowFlow
 
 if TYPE_CHECKING:
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
+    from multiscale.response.ring_down import RingDown, ring_down
     from multiscale.response.steady.backbone import backbone, effective_cubic, effective_damping
     from multiscale.response.steady.branches import Branch
     from multiscale.response.steady.critical_drive import CriticalDrive, critical_drive
@@ -41,6 +43,7 @@ __all__ = [
     "Equilibrium",
     "EvaluationError",
     "Expansion",
+    "ForceLaw",
     "Jump",
     "Level",
     "LimitCycle",
@@ -54,6 +57,7 @@ __all__ = [
     "ProblemError",
     "ResonanceError",
     "Response",
+    "RingDown",
     "SlowFlow",
     "SmallDivisorWarning",
     "Special",
@@ -71,6 +75,7 @@ __all__ = [
     "limit_cycles",
     "observable",
     "periodic_series",
+    "ring_down",
     "threshold",
     "transition_curves",
 ]
@@ -85,6 +90,7 @@ _RESPONSE = {
     "Peak": "steady.peak",
     "PeriodicSeries": "orbits.periodic_series",
     "Response": "steady.frequency_response",
+    "RingDown": "ring_down",
     "Special": "steady.sweep",
     "backbone": "steady.backbone",
     "critical_drive": "steady.critical_drive",
@@ -96,6 +102,7 @@ _RESPONSE = {
     "limit_cycles": "orbits.limit_cycles",
     "observable": "observable",
     "periodic_series": "orbits.periodic_series",
+    "ring_down": "ring_down",
     "threshold": "tongues.transition_curves",
     "transition_curves": "tongues.transition_curves",
 }

@@ -55,7 +55,9 @@ def arcs(f: Callable[..., Any], term: str, kinks: Sequence[Any], *args: Any) -> 
 
     def rule(n: int, rows: Sequence[Any]) -> tuple[Any, Any]:
         x, weights = _smoothed_legendre(n)
-        ends = np.sort(np.concatenate(np.broadcast_arrays(*(k % (2 * math.pi) for k in rows[:count])), axis=-1), axis=-1)
+        ends = np.sort(
+            np.concatenate(np.broadcast_arrays(*(k % (2 * math.pi) for k in rows[:count])), axis=-1), axis=-1
+        )
         ends = np.concatenate((ends, ends[..., :1] + 2 * math.pi), axis=-1)
         half = np.diff(ends)[..., None] / 2
         theta = ends[..., :-1, None] + half * (1 + x)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
@@ -29,7 +29,7 @@ def _bessel(t: Tape, name: str, x: int, order: int) -> int:
     return t.mul(t.constant(Fraction(1, 2)), t.sub(below, above) if name == "besselj" else t.add(below, above))
 
 
-_SLOPES = {
+_SLOPES: dict[str, Callable[[Any, int, int], int]] = {
     "sin": lambda t, x, value: t.call("cos", x),
     "cos": lambda t, x, value: t.neg(t.call("sin", x)),
     "exp": lambda t, x, value: value,
@@ -49,9 +49,7 @@ _SLOPES = {
     "arcsin": lambda t, x, value: _over_root(t, x, 1),
     "arccos": lambda t, x, value: _over_root(t, x, -1),
     "arctan": lambda t, x, value: t.div(t.constant(1), t.add(t.constant(1), t.mul(x, x))),
-    "arcsinh": lambda t, x, value: t.div(
-        t.constant(1), t.call("sqrt", t.add(t.constant(1), t.mul(x, x)))
-    ),
+    "arcsinh": lambda t, x, value: t.div(t.constant(1), t.call("sqrt", t.add(t.constant(1), t.mul(x, x)))),
     "gamma": lambda t, x, value: t.mul(value, t.call("digamma", x)),
     "positive": lambda t, x, value: t.constant(0),
 }

@@ -20,7 +20,7 @@ import sympy as sp
 
 from multiscale.problem.steps import with_steps
 
-__all__ = ["AMPLITUDE", "FREQUENCY", "U", "V", "Closed", "closed_form"]
+__all__ = ["AMPLITUDE", "FREQUENCY", "Closed", "U", "V", "closed_form"]
 
 U, V = sp.symbols("@u @v", real=True)
 """Displacement and velocity of the one oscillator that a force depends on."""
@@ -212,5 +212,7 @@ def closed_form(f: sp.Expr, m: int) -> Closed | None:
                 arc[abs(j)] = arc.get(abs(j), _ZERO) + sign * q
         else:
             smooth += [q * _wave(t.special.func, j, slope * _scale(x), offset) for j, q in turned.items()]
-    cleaned = tuple((c, tuple((j, q) for j, x in sorted(arc.items()) if (q := sp.expand(x)) != 0)) for c, arc in steps.items())
+    cleaned = tuple(
+        (c, tuple((j, q) for j, x in sorted(arc.items()) if (q := sp.expand(x)) != 0)) for c, arc in steps.items()
+    )
     return Closed(sp.Add(*smooth), tuple((c, arc) for c, arc in cleaned if arc))

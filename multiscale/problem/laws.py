@@ -126,16 +126,20 @@ def _check(
                     f"nothing says what the function {x.func} is",
                     f"Pass laws={{{x.func}: function or table}} to Problem",
                 )
-        elif isinstance(x, sp.Pow):
+        elif isinstance(x, sp.Derivative):
+            raise unsupported(
+                term,
+                "only first and second time derivatives of the unknowns are accepted",
+                "Rewrite the equation as a system of second order",
+            )
+        elif isinstance(x, sp.Pow | sp.log):
             _check_power(x, term, jets)
         elif not isinstance(x, _KNOWN):
             raise unsupported(
                 term,
                 f"the function {x.func.__name__} is not known to the quadrature",
-                f"Write it as an undefined function F and pass laws={{F: …}} to Problem",
+                "Write it as an undefined function F and pass laws={F: …} to Problem",
             )
-        elif isinstance(x, sp.log):
-            _check_power(x, term, jets)
 
 
 def _check_power(x: sp.Expr, term: sp.Expr, jets: set[sp.Symbol]) -> None:
@@ -147,7 +151,7 @@ def _check_power(x: sp.Expr, term: sp.Expr, jets: set[sp.Symbol]) -> None:
     at_rest = base.subs(dict.fromkeys(jets, 0))
     if isinstance(x, sp.log) or not exponent.is_nonnegative:
         if at_rest == 0:
-            remedy = f"Shift {base} away from zero"
+            remedy = f"Shift {term.args[0]} away from zero"
             if isinstance(x, sp.Pow) and exponent.is_negative is None:
                 remedy = f"Declare the exponent {exponent} as nonnegative or positive"
             raise unsupported(term, "it is singular where displacement or velocity passes through zero", remedy)

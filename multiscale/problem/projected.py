@@ -100,9 +100,7 @@ def _numbers(rates: Sequence[Rate], mode: int, equations: Sequence[int], harmoni
     return sorted(wanted)
 
 
-def _refuse_order(
-    law: Law, power: int, order: int, shown: Mapping[sp.Symbol, sp.Expr], layout: Layout
-) -> None:
+def _refuse_order(law: Law, power: int, order: int, shown: Mapping[sp.Symbol, sp.Expr], layout: Layout) -> None:
     if order > power:
         raise unsupported(
             law.force.xreplace({sp.Symbol(s.name, real=True): x for s, x in shown.items()}),

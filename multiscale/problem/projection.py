@@ -5,8 +5,8 @@ Along the leading motion u = a cos θ of one oscillator, with z = ½ a e^{iθ},
     g(u, u', u'') = Σ_m z^m F_m + conjugate,      F_m = C_m (2/a)^m,      C_m the mean of g e^{−imθ} over θ
 
 `Harmonic` names the real and the imaginary part of F_m; their meanings are closed forms in the amplitude (a placeholder
-symbol) where `closed_form` has one, and integrals over θ otherwise. What generated code evaluates is spelled apart, to be
-regular at a = 0: for a force without jumps, by parts,
+symbol) where `closed_form` has one, and integrals over θ otherwise. What generated code evaluates is spelled apart, so
+that it is regular at a = 0: for a force without jumps, by parts,
 
     F_1 = 2i · mean of (g_u sin θ + ω g_v cos θ) e^{−iθ}
 """
@@ -54,7 +54,8 @@ def _arc(j: int, c: sp.Expr, angle: sp.Expr, root: sp.Expr) -> sp.Expr:
 def _parts(x: sp.Expr) -> tuple[sp.Expr, sp.Expr]:
     """Real and imaginary part of an expression in which i stands explicitly."""
     dummy = sp.Symbol("@j")
-    real, imag = [], []
+    real: list[sp.Expr] = []
+    imag: list[sp.Expr] = []
     for term in sp.Add.make_args(expanded(x.xreplace({sp.I: dummy}))):
         power = int(term.as_powers_dict()[dummy])
         (imag if power % 2 else real).append(term / dummy**power * (-1) ** (power // 2))
@@ -101,7 +102,7 @@ def _averaged(g: sp.Expr, m: int, theta: sp.Symbol) -> tuple[sp.Expr, sp.Expr]:
     sine = sp.sin(m * theta) if V in g.free_symbols else sp.Integer(0)
     if U not in g.free_symbols:
         cosine, sine = (cosine, sp.Integer(0)) if m % 2 == 0 else (sp.Integer(0), sine)
-    return tuple(  # type: ignore[return-value]
+    return tuple(
         sp.Integer(0) if wave == 0 else sign * sp.Integral(along * wave, (theta, 0, 2 * sp.pi)) / (2 * sp.pi)
         for wave, sign in ((cosine, 1), (sine, -1))
     )
@@ -133,7 +134,8 @@ def numeric_harmonic(g: sp.Expr, m: int, theta: sp.Symbol) -> tuple[sp.Expr, sp.
         scale = (2 * Inverse(AMPLITUDE)) ** m if m else sp.Integer(1)
         return scale * real, scale * imag
     # Waves by parts, which leaves no division by the amplitude; powers and thresholds directly.
-    waves, rest = [], []
+    waves: list[sp.Expr] = []
+    rest: list[sp.Expr] = []
     for term in sp.Add.make_args(with_steps(g, (U, V))):
         (waves if m == 1 and not term.has(sp.Heaviside, sp.Abs, sp.sign) else rest).append(term)
     total = sp.Integer(0)
@@ -154,7 +156,8 @@ def _by_parts(g: sp.Expr) -> sp.Expr:
         slope = sp.diff(g, x)
         if slope != 0:
             zero, two = closed_form(slope, 0), closed_form(slope, 2)
-            assert zero is not None and two is not None
+            assert zero is not None
+            assert two is not None
             total += factor * (zero.smooth + sign * two.smooth)
     return sp.expand(total, power_base=False, power_exp=False, log=False)
 
@@ -164,7 +167,7 @@ def _by_parts_averaged(g: sp.Expr, theta: sp.Symbol) -> tuple[sp.Expr, sp.Expr]:
     slope = (sp.diff(g, U) * sp.sin(theta) + FREQUENCY * sp.diff(g, V) * sp.cos(theta)).xreplace(along)
     cycle = (theta, 0, 2 * sp.pi)
     shown = _averaged(g, 1, theta)
-    return tuple(  # type: ignore[return-value]
+    return tuple(
         sp.Integer(0) if part == 0 else sp.Integral(slope * wave, cycle) / sp.pi
         for part, wave in zip(shown, (sp.sin(theta), sp.cos(theta)), strict=True)
     )

@@ -23,7 +23,8 @@ def expanded(x: sp.Expr) -> sp.Expr:
 
 
 def _opened(x: sp.Expr) -> sp.Expr:
-    sums, rest = [], []
+    sums: list[sp.Expr] = []
+    rest: list[sp.Expr] = []
     for f in sp.Mul.make_args(x):
         whole = f.is_Pow and f.base.is_Add and f.exp.is_Integer and f.exp.is_positive
         (sums if whole or f.is_Add else rest).append(f)
