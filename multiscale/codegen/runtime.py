@@ -120,8 +120,8 @@ def _converged(
             n *= 2
             if n > limits[1]:
                 raise IntegralError(
-                    f"the average of {term} over a cycle does not converge with {limits[1]} nodes: the force has a kink "
-                    "or a jump that is not declared, or a singularity within the range of motion. Declare kinks with "
+                    f"the average of {term} over a cycle does not converge with {limits[1]} nodes: the force has a "
+                    "kink or a jump that is not declared, or a singularity within the range of motion. Declare kinks with "
                     "multiscale.ForceLaw(function, kinks=…), or keep the amplitude below the singularity"
                 )
             new = tuple(np.broadcast_to(x, len(waiting)) for x in rule(n, rows))
@@ -141,7 +141,7 @@ def _converged(
 
 
 def besselj(x: Any, order: int) -> Any:
-    """J_n(x) = (1/π) ∫_0^π cos(nτ − x sin τ) dτ (DLMF 10.9.2), by the trapezoidal rule with nodes enough for max |x|."""
+    """J_n(x) = (1/π) ∫_0^π cos(nτ − x sin τ) dτ (DLMF 10.9.2), by the trapezoidal rule."""
     return _mean(lambda s, tau, z: np.cos(order * tau - z * s), x, order)
 
 

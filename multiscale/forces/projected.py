@@ -2,8 +2,8 @@
 
     [ε^p] (ε^p c g)(u, u', u'') = c g(U_0, V_0, W_0) = c Σ_m (z^m (F_m^c + i F_m^s) + conjugate)
 
-The coefficients F_m are real generators, functions of |z|² whose meaning this room does not know. Only the level ε^p of a
-term is given: the next one needs derivatives of g.
+The coefficients F_m are real generators, functions of |z|² whose meaning this room does not know. Only the level ε^p
+of a term is given: the next one needs derivatives of g.
 """
 
 from __future__ import annotations

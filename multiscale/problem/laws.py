@@ -22,8 +22,8 @@ __all__ = ["LAW", "Law", "separated"]
 LAW = -1
 """What stands for the order of the derivative in the jet of a law."""
 _KNOWN = (
-    sp.Abs, sp.sign, sp.Max, sp.Min, sp.Heaviside, sp.Piecewise, sp.exp, sp.log, sp.sin, sp.cos, sp.tan, sp.sinh, sp.cosh,
-    sp.tanh, sp.asin, sp.acos, sp.atan, sp.asinh, sp.core.function.AppliedUndef,
+    sp.Abs, sp.sign, sp.Max, sp.Min, sp.Heaviside, sp.Piecewise, sp.exp, sp.log, sp.sin, sp.cos, sp.tan,
+    sp.sinh, sp.cosh, sp.tanh, sp.asin, sp.acos, sp.atan, sp.asinh, sp.core.function.AppliedUndef,
 )  # fmt: skip
 
 

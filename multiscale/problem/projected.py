@@ -39,7 +39,7 @@ def with_projections(
     order: int,
     harmonics: int | None,
 ) -> Canonical:
-    """The canonical form with generators for the coefficients of `laws`, through harmonic number `harmonics` if given."""
+    """The canonical form with generators for the coefficients of `laws`; `harmonics`: the highest one to keep."""
     found: list[Harmonic] = []
     meanings: dict[str, sp.Expr] = {}
     numeric: dict[str, sp.Expr] = {}
