@@ -20,7 +20,7 @@ from multiscale.algebra.ring import Exponents, Ring
 from multiscale.clock import Clock
 from multiscale.forces import Force
 from multiscale.forces.polynomial import PolynomialForce
-from multiscale.forces.projected import ProjectedForce, ProjectedTerm, Sum, Wave
+from multiscale.forces.projected import ProjectedForce, ProjectedTerm, Sum, Wave, WaveSlopes
 from multiscale.frame import Frame, frame_of
 from multiscale.hierarchy import Hierarchy, next_level, start
 from multiscale.linear_part import Rate
@@ -186,7 +186,7 @@ def begin(canonical: Canonical, representation: str, reciprocals: Iterable[tuple
         for pair, rate in zip(canonical.spec.pairs, turning, strict=True)
     }
     detunings = {d.generator: d.detunings for d in drives}
-    clock = Clock(ring, frequencies, [d.rate for d in drives], detunings, dict(canonical.slow))
+    clock = Clock(ring, frequencies, [d.rate for d in drives], detunings, dict(canonical.slow), canonical.moduli)
     return Computation(canonical, start(ring, linear, _force(canonical, ring), clock))
 
 
@@ -198,13 +198,19 @@ def _force(canonical: Canonical, ring: Ring) -> Force:
     for terms in canonical.force:
         laws = [t for t in terms if t.factors and t.factors[0][1] == LAW]
         plain.append([t for t in terms if t not in laws])
-        projected.append([ProjectedTerm(t.power, t.coefficient, _waves(canonical, t.factors[0][0])) for t in laws])
+        projected.append([_projected(t.power, t.coefficient, t.factors[0][0], canonical) for t in laws])
     return Sum([PolynomialForce(plain, ring), ProjectedForce(projected, ring)])
 
 
-def _waves(canonical: Canonical, law: int) -> tuple[Wave, ...]:
-    pairs = canonical.spec.pairs
-    return tuple(Wave(pairs[h.mode][0], h.number, h.real, h.imag) for h in canonical.harmonics if h.law == law)
+def _projected(power: int, coefficient: Frozen, law: int, canonical: Canonical) -> ProjectedTerm:
+    waves: dict[int | None, list[Wave]] = {None: [], 0: [], 1: []}
+    modes = [h.mode for h in canonical.harmonics if h.law == law]
+    for h in canonical.harmonics:
+        if h.law == law:
+            variable = canonical.spec.pairs[h.mode][0]
+            waves[h.slope].append(Wave(variable, h.number, h.real, h.imag, h.factors))
+    slopes = WaveSlopes(modes[0], tuple(waves[0]), tuple(waves[1])) if waves[0] or waves[1] else None
+    return ProjectedTerm(power, coefficient, tuple(waves[None]), slopes)
 
 
 def restore(canonical: Canonical, snapshot: Snapshot, representation: str = "auto") -> Computation:
@@ -216,6 +222,7 @@ def restore(canonical: Canonical, snapshot: Snapshot, representation: str = "aut
         known = hierarchy.clock.at_level(tower.height)
         slow = {canonical.spec.pairs[a][0]: tower.ring.read(dict(x)) for a, x in enumerate(changes)}
         displacement = tuple(tower.ring.read(dict(x)) for x in field)
-        tower = tower.completed(tower.pending(known), known, displacement, Derivation(slow))
+        followed = hierarchy.clock.followed(Derivation(slow))
+        tower = tower.completed(tower.pending(known), known, displacement, followed)
         computation = replace(computation, hierarchy=replace(hierarchy, tower=tower))
     return computation

@@ -20,6 +20,7 @@ def remarks(problem: Problem, computation: Computation, tolerance: float) -> tup
     return (
         *([cubic] if cubic else []),
         *small_divisors(problem, computation, tolerance),
+        *computation.canonical.left_out,
         *_unbalanced(computation),
         *_explicit_time(problem, computation),
         *_lost_parameters(problem, computation),

@@ -40,6 +40,7 @@ class Program:
         self.small = self._parameter(problem.small)
         self._computation = computation
         self._meanings = dict(computation.canonical.meanings) | dict(computation.canonical.numeric)
+        self._moduli = {m.name for m in computation.canonical.moduli}
         self._values: dict[str, Node] = {}
         self._inverses: dict[Frozen, Node] = {}
 
@@ -136,7 +137,11 @@ class Program:
         result = self.polynomial(q.numerator)
         for p, e in q.denominator:
             if p not in self._inverses:
-                self._inverses[p] = self.tape.div(self.tape.constant(1), self.polynomial(p))
+                below = self.polynomial(p)
+                if p[0][0] and p[0][0][0][0] in self._moduli:
+                    self._inverses[p] = self.tape.call("inverse_or_zero", below)
+                else:
+                    self._inverses[p] = self.tape.div(self.tape.constant(1), below)
             result = self.tape.mul(result, self.tape.power(self._inverses[p], e))
         return result
 

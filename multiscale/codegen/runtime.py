@@ -120,9 +120,9 @@ def _converged(
             n *= 2
             if n > limits[1]:
                 raise IntegralError(
-                    f"the average of {term} over a cycle does not converge with {limits[1]} nodes: the force has a "
-                    "kink or a jump that is not declared, or a singularity within the range of motion. Declare kinks with "
-                    "multiscale.ForceLaw(function, kinks=…), or keep the amplitude below the singularity"
+                    f"the average of {term} over a cycle does not converge with {limits[1]} nodes: the force has "
+                    "a kink or a jump that is not declared, or a singularity within the range of motion. Declare kinks "
+                    "with multiscale.ForceLaw(function, kinks=…), or keep the amplitude below the singularity"
                 )
             new = tuple(np.broadcast_to(x, len(waiting)) for x in rule(n, rows))
             better = refined(old, new)  # type: ignore[arg-type]

@@ -1,9 +1,11 @@
 """Forces that are not polynomial, by their Fourier coefficients along the leading motion.
 
-    [ε^p] (ε^p c g)(u, u', u'') = c g(U_0, V_0, W_0) = c Σ_m (z^m (F_m^c + i F_m^s) + conjugate)
+    [ε^p]     (ε^p c g)(u, u') = c g(U_0, V_0)
+    [ε^{p+1}] (ε^p c g)(u, u') = c (g_u(U_0, V_0) U_1 + g_v(U_0, V_0) V_1)
+    g(U_0, V_0) = Σ_m (z^m (F_m^c + i F_m^s) + conjugate),     and so g_u and g_v
 
-The coefficients F_m are real generators, functions of |z|² whose meaning this room does not know. Only the level ε^p
-of a term is given: the next one needs derivatives of g.
+The coefficients F_m are real generators, functions of |z| whose meaning this room does not know. The level ε^{p+1} is
+there for terms that know their derivatives, higher ones are not.
 """
 
 from __future__ import annotations
@@ -18,17 +20,27 @@ from multiscale.algebra.ring import Ring
 from multiscale.forces import Force
 from multiscale.tower import Field, Tower
 
-__all__ = ["ProjectedForce", "ProjectedTerm", "Sum", "Wave"]
+__all__ = ["ProjectedForce", "ProjectedTerm", "Sum", "Wave", "WaveSlopes"]
 
 
 @dataclass(frozen=True)
 class Wave:
-    """z^number (real + i imag), by the names of the generators, "" for a zero part."""
+    """z^number (real + i imag) Π factors, by the names of the generators, "" for a zero part."""
 
     variable: str
     number: int
     real: str
     imag: str
+    factors: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class WaveSlopes:
+    """g_u and g_v of a force that depends on one unknown."""
+
+    unknown: int
+    by_displacement: tuple[Wave, ...]
+    by_velocity: tuple[Wave, ...]
 
 
 @dataclass(frozen=True)
@@ -38,6 +50,7 @@ class ProjectedTerm:
     power: int
     coefficient: Frozen
     waves: tuple[Wave, ...]
+    slopes: WaveSlopes | None = None
 
 
 class ProjectedForce:
@@ -50,15 +63,26 @@ class ProjectedForce:
         return ProjectedForce(self._terms, ring)
 
     def at_level(self, level: int, tower: Tower) -> Field:
-        return tuple(self._equation(terms, level) for terms in self._terms)
+        return tuple(self._equation(terms, level, tower) for terms in self._terms)
 
-    def _equation(self, terms: Sequence[ProjectedTerm], level: int) -> Any:
+    def _equation(self, terms: Sequence[ProjectedTerm], level: int, tower: Tower) -> Any:
         ring, total = self._ring, self._ring.zero
         for term in terms:
+            coefficient = ring.read(dict(term.coefficient))
             if term.power == level:
-                for wave in term.waves:
-                    total = total + ring.read(dict(term.coefficient)) * self._real(wave)
+                total = total + coefficient * self._field(term.waves)
+            elif term.power == level - 1 and term.slopes:
+                k, slopes = term.slopes.unknown, term.slopes
+                change = self._field(slopes.by_displacement) * tower.jets[0][1][k]
+                change = ring.normal(change) + ring.normal(self._field(slopes.by_velocity) * tower.jets[1][1][k])
+                total = total + coefficient * change
         return ring.normal(total)
+
+    def _field(self, waves: Sequence[Wave]) -> Any:
+        total = self._ring.zero
+        for wave in waves:
+            total = total + self._real(wave)
+        return self._ring.normal(total)
 
     def _real(self, wave: Wave) -> Any:
         """The wave and its conjugate; a mean value has no conjugate of its own."""
@@ -71,6 +95,8 @@ class ProjectedForce:
             factor = factor + generators[0] * generators[names[wave.imag]]
         for _ in range(wave.number):
             factor = factor * generators[names[wave.variable]]
+        for name in wave.factors:
+            factor = factor * generators[names[name]]
         if not wave.number:
             factor = factor * ring.constant(Fraction(1, 2))
         return factor + ring.conjugate(factor)

@@ -20,7 +20,17 @@ import sympy as sp
 
 from multiscale.problem.steps import with_steps
 
-__all__ = ["AMPLITUDE", "FREQUENCY", "Closed", "U", "V", "closed_form"]
+__all__ = [
+    "AMPLITUDE",
+    "FREQUENCY",
+    "Closed",
+    "PowerTerm",
+    "U",
+    "V",
+    "closed_form",
+    "power_coefficient",
+    "power_terms",
+]
 
 U, V = sp.symbols("@u @v", real=True)
 """Displacement and velocity of the one oscillator that a force depends on."""
@@ -43,7 +53,7 @@ class Closed:
 
 
 @dataclass(frozen=True)
-class _Term:
+class PowerTerm:
     """factor · |u|^x sgn(u)^s · |u'|^y sgn(u')^r · special."""
 
     factor: sp.Expr
@@ -65,7 +75,7 @@ def _of(h: sp.Expr) -> tuple[sp.Symbol, sp.Expr, sp.Expr] | None:
     return None
 
 
-def _term(x: sp.Expr) -> _Term | None:
+def _term(x: sp.Expr) -> PowerTerm | None:
     factor, special = sp.Integer(1), None
     powers = {U: [_ZERO, 0], V: [_ZERO, 0]}
     for f in sp.Mul.make_args(x):
@@ -94,7 +104,7 @@ def _term(x: sp.Expr) -> _Term | None:
             return None
     if not all(exponent.is_nonnegative for exponent, _ in powers.values()):
         return None
-    return _Term(factor, powers[U][0], powers[U][1] % 2, powers[V][0], powers[V][1] % 2, special)
+    return PowerTerm(factor, powers[U][0], powers[U][1] % 2, powers[V][0], powers[V][1] % 2, special)
 
 
 def _beta(x: sp.Expr, y: sp.Expr) -> sp.Expr:
@@ -111,8 +121,8 @@ def _pure(p: sp.Expr, m: int) -> sp.Expr:
     return sp.gamma(p + 1) / (2**p * sp.gamma(above) * sp.gamma(below))
 
 
-def _powers(t: _Term, m: int) -> sp.Expr:
-    """The coefficient of a term without special factor."""
+def power_coefficient(t: PowerTerm, m: int) -> sp.Expr:
+    """C_m of a term without special factor."""
     size = t.factor * AMPLITUDE ** (t.x + t.y) * FREQUENCY**t.y * (-1) ** t.r
     if t.y == 0 and t.r == 0 and m > 1:
         return size * _pure(t.x, m) if t.s == m % 2 else _ZERO
@@ -128,7 +138,7 @@ def _powers(t: _Term, m: int) -> sp.Expr:
     return size * turned * sp.Add(*parts)
 
 
-def _laurent(t: _Term, m: int) -> dict[int, sp.Expr] | None:
+def _laurent(t: PowerTerm, m: int) -> dict[int, sp.Expr] | None:
     """cos^x θ (−sin θ)^y e^{−imθ} = Σ_j q_j e^{ijθ}; None where a power is no polynomial."""
     if not (t.x.is_Integer and t.y.is_Integer and t.x % 2 == t.s and t.y % 2 == t.r):
         return None
@@ -178,9 +188,16 @@ def _scale(x: sp.Symbol) -> sp.Expr:
     return AMPLITUDE if x == U else AMPLITUDE * FREQUENCY
 
 
-def _terms(f: sp.Expr) -> Iterator[_Term | None]:
+def _terms(f: sp.Expr) -> Iterator[PowerTerm | None]:
     for x in sp.Add.make_args(f):
         yield _term(x)
+
+
+def power_terms(f: sp.Expr) -> tuple[PowerTerm, ...] | None:
+    """A force as a sum of power terms, or None where it is more than that."""
+    terms = tuple(_terms(with_steps(f, (U, V))))
+    found = tuple(t for t in terms if t is not None and t.special is None)
+    return found if len(found) == len(terms) else None
 
 
 def closed_form(f: sp.Expr, m: int) -> Closed | None:
@@ -192,7 +209,7 @@ def closed_form(f: sp.Expr, m: int) -> Closed | None:
         if t is None:
             return None
         if t.special is None:
-            smooth.append(_powers(t, m))
+            smooth.append(power_coefficient(t, m))
             continue
         series = _laurent(t, m)
         x, slope, offset = _of(t.special.args[0])  # type: ignore[misc]

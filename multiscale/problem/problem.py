@@ -31,8 +31,10 @@ class Problem:
     ----------
     equations : Expr, Eq, or a sequence of them
         An expression means "= 0". Each equation describes one oscillator, u'' + ω²u + … = 0, where ω² is any positive
-        expression; everything else must be polynomial in the unknowns and their first and second time derivatives, and
-        small. Any consistent units.
+        expression; everything else must be small. Polynomials in the unknowns and their first and second time
+        derivatives go to any order; other forces, such as ``Abs(v)*v``, ``sign(v)``, ``sin(u)``, ``Max(u - g, 0)``, are
+        averaged over a cycle at first order (homogeneous ones with a continuous derivative also at second), each of
+        one unknown. Any consistent units.
     unknowns : applied function, or a sequence of them
         ``u(t)``, as many as there are equations, all of the same time symbol.
     small : Symbol, optional
@@ -44,6 +46,14 @@ class Problem:
         Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol,
         its square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies
         in exact rational ratio are resonant without a relation.
+    laws : mapping, optional
+        What undefined functions of unknowns stand for, ``{F: function}``: a function of numbers, a table ``(x, y)`` or
+        a `ForceLaw`, which also takes kinks and a derivative.
+    harmonics : int, optional
+        Of forces that are not polynomial, the highest harmonic kept in the corrections U_n; 21 at second order, at
+        first order none beyond those that the slow flow needs.
+    formal : bool
+        Also carry forces with a kink, such as ``Abs(u)``, to second order, which is formal.
     time : Symbol, optional
         Needed only to check that it is the one meant.
 
@@ -78,12 +88,14 @@ class Problem:
         time: sp.Symbol | None = None,
         laws: Mapping[Any, ForceLaw | Any] | None = None,
         harmonics: int | None = None,
+        formal: bool = False,
     ) -> None:
         self.unknowns: tuple[sp.Expr, ...] = _unknowns(unknowns)
         self.time: sp.Symbol = _time(self.unknowns, time)
         self.equations: tuple[sp.Expr, ...] = _equations(equations)
         self.laws: dict[str, ForceLaw] = laws_of(laws or {})
         self.harmonics: int | None = _harmonics(harmonics)
+        self.formal = bool(formal)
         if len(self.equations) != len(self.unknowns):
             raise ProblemError(
                 f"{len(self.equations)} equations for {len(self.unknowns)} unknowns: as many of each are needed"
@@ -169,7 +181,9 @@ class Problem:
             layout, shown = _with_laws(self._layout, shown, prepared.laws)
             form = canonical_form(prepared, layout, shown, list(self.unknowns))
             if prepared.laws:
-                form = with_projections(form, prepared.laws, layout, shown, self._theta, order, self.harmonics)
+                form = with_projections(
+                    form, prepared.laws, layout, shown, self._theta, order, self.harmonics, self.formal
+                )
             self._canonical[order if form.truncated or prepared.laws else None] = form
             return form
         return self._canonical[order]
@@ -243,7 +257,8 @@ class Problem:
     def _key(self) -> tuple[Any, ...]:
         ordering = None if self.ordering is None else tuple(sorted(self.ordering.items(), key=str))
         laws = tuple(sorted(self.laws.items(), key=lambda item: item[0]))
-        return (self.equations, self.unknowns, self._given_small, ordering, self.resonances, laws, self.harmonics)
+        kept = (laws, self.harmonics, self.formal)
+        return (self.equations, self.unknowns, self._given_small, ordering, self.resonances, kept)
 
     def __eq__(self, other: object) -> bool:
         return isinstance(other, Problem) and self._key() == other._key()
@@ -258,7 +273,7 @@ class Problem:
         if self.ordering is not None:
             indexed = {self.unknowns.index(x) if x in self.unknowns else x: q for x, q in self.ordering.items()}
             options["ordering"] = indexed
-        options |= {"laws": self.laws, "harmonics": self.harmonics}
+        options |= {"laws": self.laws, "harmonics": self.harmonics, "formal": self.formal}
         options["resonances"] = [(self.unknowns.index(x) if x in self.unknowns else x, y) for x, y in self.resonances]
         return _rebuilt, (self._hidden(), functions, options)
 

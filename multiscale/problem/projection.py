@@ -22,20 +22,25 @@ from multiscale.problem.closed_forms import AMPLITUDE, FREQUENCY, Closed, U, V, 
 from multiscale.problem.guarded import Clipped, Inverse, Reciprocal, Root, guarded
 from multiscale.problem.steps import expanded, with_steps
 
-__all__ = ["Harmonic", "amplitude_of", "harmonic", "numeric_harmonic"]
+__all__ = ["Harmonic", "amplitude_of", "complex_parts", "harmonic", "numeric_harmonic"]
 
 NONSMOOTH = (sp.Abs, sp.sign, sp.Max, sp.Min, sp.Heaviside, sp.Piecewise, sp.core.function.AppliedUndef)
 
 
 @dataclass(frozen=True)
 class Harmonic:
-    """z_mode^number (real + i imag) of a law, the parts by the names of their generators, "" for zero."""
+    """z_mode^number (real + i imag) Π factors of a law, the parts by the names of their generators, "" for zero.
+
+    `slope` says which function this is of: None for the force, 0 and 1 for its derivative by u and u'.
+    """
 
     law: int
     mode: int
     number: int
     real: str
     imag: str
+    factors: tuple[str, ...] = ()
+    slope: int | None = None
 
 
 def amplitude_of(mode: int) -> sp.Symbol:
@@ -51,7 +56,7 @@ def _arc(j: int, c: sp.Expr, angle: sp.Expr, root: sp.Expr) -> sp.Expr:
     return root * sp.chebyshevu(j - 1, x).subs(x, c) / (j * sp.pi)
 
 
-def _parts(x: sp.Expr) -> tuple[sp.Expr, sp.Expr]:
+def complex_parts(x: sp.Expr) -> tuple[sp.Expr, sp.Expr]:
     """Real and imaginary part of an expression in which i stands explicitly."""
     dummy = sp.Symbol("@j")
     real: list[sp.Expr] = []
@@ -108,18 +113,22 @@ def _averaged(g: sp.Expr, m: int, theta: sp.Symbol) -> tuple[sp.Expr, sp.Expr]:
     )
 
 
+def _part(form: Closed, smooth: sp.Expr, k: int) -> Closed:
+    """The real (0) or imaginary (1) part of a closed form, that of its smooth part being given."""
+    steps = []
+    for c, arc in form.steps:
+        steps.append((c, tuple((j, y) for j, q in arc if (y := complex_parts(q)[k]) != 0)))
+    return Closed(smooth, tuple(steps))
+
+
 def harmonic(g: sp.Expr, m: int, theta: sp.Symbol) -> tuple[sp.Expr, sp.Expr]:
     """Real and imaginary part of F_m as formulas in `AMPLITUDE` and `FREQUENCY`."""
     form = closed_form(g, m)
     if form is None:
         real, imag = _averaged(g, m, theta)
     else:
-        real, imag = _parts(form.smooth)
-        real_steps, imag_steps = (
-            Closed(part, tuple((c, tuple((j, y) for j, q in arc if (y := _parts(q)[k]) != 0)) for c, arc in form.steps))
-            for k, part in enumerate((real, imag))
-        )
-        real, imag = _shown(real_steps), _shown(imag_steps)
+        real, imag = complex_parts(form.smooth)
+        real, imag = (_shown(_part(form, part, k)) for k, part in enumerate((real, imag)))
     scale = (2 / AMPLITUDE) ** m
     return scale * real, scale * imag
 
@@ -146,7 +155,7 @@ def numeric_harmonic(g: sp.Expr, m: int, theta: sp.Symbol) -> tuple[sp.Expr, sp.
         total += guarded(smooth_part, AMPLITUDE) + _guarded_steps(form, m)
     if waves:
         total += _by_parts(sp.Add(*waves))
-    return _parts(total)
+    return complex_parts(total)
 
 
 def _by_parts(g: sp.Expr) -> sp.Expr:
