@@ -3,7 +3,7 @@
     equation = polynomial + Σ coefficient · g(u, u', u''),     g → a symbol of its own, the coefficient stays
 
 The coefficient is everything free of unknowns, drives and powers of ε included; polynomial factors go into g. Terms
-that share their coefficient are one law.
+that share their coefficient, numbers apart, are one law.
 """
 
 from __future__ import annotations
@@ -76,7 +76,8 @@ def separated(
                 plain.append(term.xreplace(back))
                 continue
             free, dynamic = term.as_independent(*back, as_Add=False)
-            forces.setdefault(free, []).append(dynamic)
+            number, free = free.as_coeff_Mul()
+            forces.setdefault(free, []).append(number * dynamic)
         for free, parts in forces.items():
             force = sp.Add(*parts)
             _check(force, layout.small, time, set(back), spelled, set(given))

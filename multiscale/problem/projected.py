@@ -1,7 +1,7 @@
 """Fourier coefficients of the forces that are not polynomial, added to a canonical form.
 
-At the leading level of a law its coefficients are functions of the amplitude; the harmonics that meet the rate of a mode,
-m·rate(j) = rate(k), give the slow flow, and others are there where asked for: they make the corrections U_n complete up
+At the leading level of a law its coefficients are functions of the amplitude. The harmonics that meet the rate of a
+mode, m·rate(j) = rate(k), give the slow flow; others are there where asked for, and make the corrections U_n complete up
 to a stated tail. One level further a homogeneous law has constants and powers of |z| instead (`homogeneous`).
 """
 

@@ -70,23 +70,30 @@ def complex_parts(x: sp.Expr) -> tuple[sp.Expr, sp.Expr]:
 def _shown_step(c: sp.Expr, arc: Sequence[tuple[int, sp.Expr]]) -> tuple[sp.Expr, sp.Expr]:
     """(inside the range where the motion crosses the threshold, where it is beyond it all the time)."""
     root = sp.sqrt(1 - c**2)
-    inside = sp.Add(*(q * _arc(j, c, sp.acos(c), root) for j, q in arc))
+    angle = sp.pi - sp.acos(-c) if c.could_extract_minus_sign() else sp.acos(c)
+    inside = sp.expand(sp.Add(*(q * _arc(j, c, angle, root) for j, q in arc)))
     full = next((q for j, q in arc if j == 0), sp.Integer(0))
     return inside, full
 
 
-def _shown(form: Closed) -> sp.Expr:
-    """C_m as a plain formula, piecewise in the amplitude where there are thresholds."""
+def _shown(form: Closed, scale: sp.Expr) -> sp.Expr:
+    """C_m times `scale` as a plain formula, piecewise in the amplitude where there are thresholds."""
     grouped: dict[sp.Expr, list[tuple[sp.Expr, sp.Expr, sp.Expr]]] = {}
     for c, arc in form.steps:
         gap = sp.expand(c * AMPLITUDE)
         grouped.setdefault(sp.Abs(gap), []).append((gap, *_shown_step(c, arc)))
-    total = form.smooth
+    # With one threshold the smooth part goes into the cases, where it often cancels.
+    inner, outer = (form.smooth, sp.Integer(0)) if len(grouped) == 1 else (sp.Integer(0), form.smooth)
+    total = scale * outer
     for size, parts in grouped.items():
-        inside = sp.Add(*(x for _, x, _ in parts))
-        beyond = sp.Add(*(sp.Piecewise((full, gap < 0), (0, True)) for gap, _, full in parts))
-        total += sp.Piecewise((inside, size < AMPLITUDE), (beyond, True))
+        inside = inner + sp.Add(*(x for _, x, _ in parts))
+        beyond = inner + sp.Add(*(sp.Piecewise((full, gap < 0), (0, True)) for gap, _, full in parts))
+        total += sp.Piecewise((_spread(scale * inside), size < AMPLITUDE), (_spread(scale * beyond), True))
     return total
+
+
+def _spread(x: sp.Expr) -> sp.Expr:
+    return sp.expand(x, deep=False, power_base=False, power_exp=False, log=False)
 
 
 def _guarded_steps(form: Closed, m: int) -> sp.Expr:
@@ -123,13 +130,13 @@ def _part(form: Closed, smooth: sp.Expr, k: int) -> Closed:
 
 def harmonic(g: sp.Expr, m: int, theta: sp.Symbol) -> tuple[sp.Expr, sp.Expr]:
     """Real and imaginary part of F_m as formulas in `AMPLITUDE` and `FREQUENCY`."""
-    form = closed_form(g, m)
+    form, scale = closed_form(g, m), (2 / AMPLITUDE) ** m
     if form is None:
         real, imag = _averaged(g, m, theta)
     else:
         real, imag = complex_parts(form.smooth)
-        real, imag = (_shown(_part(form, part, k)) for k, part in enumerate((real, imag)))
-    scale = (2 / AMPLITUDE) ** m
+        real, imag = (_shown(_part(form, part, k), scale) for k, part in enumerate((real, imag)))
+        return real, imag
     return scale * real, scale * imag
 
 
