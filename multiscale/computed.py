@@ -93,6 +93,7 @@ class Computation:
         bare = Frame(self.modes, (), (), ())
         levels = range(1, self.order + 1)
         found = {bare.relative(m, a) for n in levels for a in range(self.modes) for m in self.change(n, a)}
+        found.update(row for mean in self.canonical.torus for row in mean.combinations)
         return frame_of(found, self.modes, drives)
 
     @cached_property
@@ -198,17 +199,20 @@ def _force(canonical: Canonical, ring: Ring) -> Force:
     for terms in canonical.force:
         laws = [t for t in terms if t.factors and t.factors[0][1] == LAW]
         plain.append([t for t in terms if t not in laws])
-        projected.append([_projected(t.power, t.coefficient, t.factors[0][0], canonical) for t in laws])
+        projected.append([_projected(t.power, t.coefficient, t.factors[0][0], len(plain) - 1, canonical) for t in laws])
     return Sum([PolynomialForce(plain, ring), ProjectedForce(projected, ring)])
 
 
-def _projected(power: int, coefficient: Frozen, law: int, canonical: Canonical) -> ProjectedTerm:
+def _projected(power: int, coefficient: Frozen, law: int, equation: int, canonical: Canonical) -> ProjectedTerm:
     waves: dict[int | None, list[Wave]] = {None: [], 0: [], 1: []}
     modes = [h.mode for h in canonical.harmonics if h.law == law]
     for h in canonical.harmonics:
         if h.law == law:
             variable = canonical.spec.pairs[h.mode][0]
             waves[h.slope].append(Wave(variable, h.number, h.real, h.imag, h.factors))
+    for mean in canonical.torus:
+        if (mean.law, mean.mode) == (law, equation):
+            waves[None].append(Wave(canonical.spec.pairs[equation][0], 1, mean.real, mean.imag))
     slopes = WaveSlopes(modes[0], tuple(waves[0]), tuple(waves[1])) if waves[0] or waves[1] else None
     return ProjectedTerm(power, coefficient, tuple(waves[None]), slopes)
 

@@ -14,8 +14,9 @@ from multiscale.computed import Computation, Finished
 from multiscale.expressions import Writer
 from multiscale.frame import turns
 from multiscale.problem import Problem
-from multiscale.problem.projection import amplitude_of
+from multiscale.problem.projection import TorusMean, amplitude_of
 from multiscale.symbols import Symbols
+from multiscale.torus import Torus
 
 __all__ = ["Level", "Views", "polynomials_below"]
 
@@ -92,7 +93,23 @@ class Views:
             "cartesian": [sp.sqrt(p**2 + q**2) for p, q in zip(symbols.p, symbols.q, strict=True)],
             "complex": [2 * sp.Abs(A) for A in symbols.A],
         }[form]
-        return x.xreplace({amplitude_of(k): size for k, size in enumerate(sizes)})
+        x = x.xreplace({amplitude_of(k): size for k, size in enumerate(sizes)})
+        torus = [t for t in self._computation.canonical.torus if x.free_symbols & set(t.symbols)]
+        return x.xreplace(self._torus_means(torus, form, sizes)) if torus else x
+
+    def _torus_means(self, torus: Sequence[TorusMean], form: str, sizes: list[sp.Expr]) -> dict[sp.Symbol, sp.Expr]:
+        """What stands for averages over several phases; they depend on the resonant phases, so cyclic ones are zero."""
+        symbols, frame = self._symbols, self._computation.frame
+        deviations = {
+            "polar": lambda: frame.deviations(symbols.gamma, [sp.Integer(0)] * len(symbols.beta)),
+            "cartesian": lambda: [-sp.atan2(q, p) for p, q in zip(symbols.p, symbols.q, strict=True)],
+            "complex": lambda: [sp.arg(A) for A in symbols.A],
+        }[form]()
+        views = Torus(self._computation, self._problem.phase.name)
+        result: dict[sp.Symbol, sp.Expr] = {}
+        for t in torus:
+            result.update(zip(t.symbols, views.polar(t, sizes, deviations), strict=True))
+        return result
 
     def phase_of(self, row: Sequence[Fraction]) -> sp.Expr:
         """Σ row_f ω_f t + Σ row_l θ_l: a combination of natural phases and angles of drives, in time."""

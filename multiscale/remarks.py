@@ -141,6 +141,7 @@ def _lost_parameters(problem: Problem, computation: Computation) -> list[str]:
     polynomials = [p for q in quotients for p in (q.numerator, *(d for d, _ in q.denominator))]
     names = {name for p in polynomials for monomial, _ in p for name, _ in monomial}
     used.update(*(meanings[name].free_symbols for name in names))
+    used.update(*(t.force.free_symbols for t in c.canonical.torus))
     lost = [s for s in problem.parameters if s not in used]
     return [f"{s} has no effect up to order {c.order}: it enters at a higher order, or cancels" for s in lost]
 

@@ -21,7 +21,8 @@ from multiscale.computed import Computation, Finished
 from multiscale.errors import EvaluationError
 from multiscale.frame import turns
 from multiscale.problem import Problem
-from multiscale.problem.projection import amplitude_of
+from multiscale.problem.projection import TorusMean, amplitude_of
+from multiscale.torus import Torus
 
 __all__ = ["Complex", "Program"]
 
@@ -40,6 +41,13 @@ class Program:
         self.small = self._parameter(problem.small)
         self._computation = computation
         self._meanings = dict(computation.canonical.meanings) | dict(computation.canonical.numeric)
+        self._phase_name = str(problem.phase.name)
+        self._state: list[Complex] = []
+        self._torus: dict[TorusMean, Complex] = {}
+        self._torus_parts = {
+            name: (t, k) for t in computation.canonical.torus for k, name in enumerate((t.real, t.imag))
+        }
+        self.without_torus = False
         self._moduli = {m.name for m in computation.canonical.moduli}
         self._values: dict[str, Node] = {}
         self._inverses: dict[Frozen, Node] = {}
@@ -48,6 +56,29 @@ class Program:
     def projected(self) -> bool:
         """Whether forces that are not polynomial stand in the results."""
         return bool(self._computation.canonical.numeric)
+
+    def set_state(self, state: Sequence[Complex]) -> None:
+        """The state (p_j, q_j) in the frame, which averages over several phases depend on."""
+        self._state = list(state)
+
+    def torus_mean(self, mean: TorusMean) -> Complex:
+        """G, the mean of a force of several phases times e^{−iΦ}."""
+        if mean not in self._torus:
+            pairs = [sp.symbols(f"@p{j} @q{j}", real=True) for j in range(self._computation.modes)]
+            nodes = {s: n for pair, own in zip(pairs, self._state, strict=True) for s, n in zip(pair, own, strict=True)}
+            parts = Torus(self._computation, self._phase_name).cartesian(mean, pairs)
+            real, imag = (
+                evaluate(self.tape, x, lambda s: nodes[s] if s in nodes else self._parameter(s)) for x in parts
+            )
+            self._torus[mean] = real, imag
+        return self._torus[mean]
+
+    def _torus_value(self, mean: TorusMean) -> Complex:
+        """G/A with A = ½ (p − iq)."""
+        tape, (p, q) = self.tape, self._state[mean.mode]
+        square = tape.add(tape.mul(p, p), tape.mul(q, q))
+        inverse = tape.mul(tape.constant(2), tape.call("inverse_or_zero", square))
+        return self.multiply(self.torus_mean(mean), (tape.mul(inverse, p), tape.mul(inverse, q)))
 
     def set_amplitudes(self, nodes: Iterable[Node]) -> None:
         """The amplitudes a_k, which the Fourier coefficients of forces that are not polynomial depend on."""
@@ -68,6 +99,9 @@ class Program:
         return evaluate(self.tape, x, self._parameter)
 
     def _value(self, generator: str) -> Node:
+        if generator in self._torus_parts:
+            mean, part = self._torus_parts[generator]
+            return self.tape.constant(0) if self.without_torus else self._torus_value(mean)[part]
         if generator not in self._values:
             self._values[generator] = evaluate(self.tape, self._meanings[generator], self._parameter)
         return self._values[generator]

@@ -92,8 +92,11 @@ def _beyond(condition: sp.Basic) -> sp.Expr | None:
 
 
 def _integral(tape: Tape, x: sp.Integral, symbol: Symbols, evaluate: Evaluate) -> Node:
-    integrand, (theta, lower, upper), *more = x.args
-    if more or lower != 0 or upper != 2 * sp.pi:
+    integrand, *inner_limits, (theta, lower, upper) = x.args
+    if inner_limits:
+        # Over several phases: the inner averages first.
+        integrand = sp.Integral(integrand, *inner_limits)
+    if lower != 0 or upper != 2 * sp.pi:
         raise EvaluationError(f"{x} cannot be evaluated in generated code: only averages over a phase, 0 … 2π, can")
     names = sorted(integrand.free_symbols - {theta}, key=lambda s: str(s.name))
     inner = Tape(tape.laws)
@@ -108,14 +111,18 @@ def _integral(tape: Tape, x: sp.Integral, symbol: Symbols, evaluate: Evaluate) -
 def _force_in(integrand: sp.Expr, theta: sp.Symbol) -> str:
     """How an error spells the force: the integrand without its bare cosine or sine."""
     factors = [f for f in sp.Mul.make_args(integrand) if not isinstance(f, sp.cos | sp.sin)]
+    if isinstance(integrand, sp.Integral):
+        return _force_in(integrand.function, theta)
     return str(sp.Mul(*factors)).replace("@", "").encode("ascii", "replace").decode()
 
 
 def _edges(x: sp.Expr, laws: dict[str, tuple[float, ...]]) -> set[sp.Expr]:
     """The h at whose zeros the integrand has a kink or a jump."""
+    if isinstance(x, sp.Integral):
+        return _grazing(x, laws)
     found: set[sp.Expr] = set()
     for f in x.atoms(sp.Abs, sp.sign, sp.Heaviside):
-        found.add(f.args[0])
+        found.update(sp.Mul.make_args(f.args[0]))
     for f in x.atoms(sp.Max, sp.Min):
         found.update(a - b for k, a in enumerate(f.args) for b in f.args[k + 1 :])
     for f in x.atoms(sp.Piecewise):
@@ -125,23 +132,40 @@ def _edges(x: sp.Expr, laws: dict[str, tuple[float, ...]]) -> set[sp.Expr]:
     return found
 
 
+def _grazing(x: sp.Integral, laws: dict[str, tuple[float, ...]]) -> set[sp.Expr]:
+    """An average over one phase has its kinks in the others where h = R cos(θ − θ_0) + γ only just reaches zero."""
+    integrand, *inner_limits, (theta, _, _) = x.args
+    inner = sp.Integral(integrand, *inner_limits) if inner_limits else integrand
+    found = set()
+    for h in _edges(inner, laws):
+        if theta not in h.free_symbols:
+            found.add(h)
+        elif (parts := _affine(h, theta)) is not None:
+            radius = sp.Abs(parts[0]) if parts[1] == 0 else sp.sqrt(parts[0] ** 2 + parts[1] ** 2)
+            radius = sp.Abs(parts[1]) if parts[0] == 0 else radius
+            found |= {parts[2] - radius, parts[2] + radius}
+    return found
+
+
+def _affine(h: sp.Expr, theta: sp.Symbol) -> tuple[sp.Expr, sp.Expr, sp.Expr] | None:
+    """(α, β, γ) with h = α cos θ + β sin θ + γ."""
+    cosine, sine = sp.symbols("@cos @sin")
+    flat = sp.expand(h.xreplace({sp.cos(theta): cosine, sp.sin(theta): sine}))
+    if theta in flat.free_symbols or not flat.is_polynomial(cosine, sine):
+        return None
+    alpha, beta = flat.coeff(cosine, 1).coeff(sine, 0), flat.coeff(sine, 1).coeff(cosine, 0)
+    gamma = flat.subs({cosine: 0, sine: 0})
+    return None if sp.expand(flat - alpha * cosine - beta * sine - gamma) != 0 else (alpha, beta, gamma)
+
+
 def _kinks(tape: Tape, integrand: sp.Expr, theta: sp.Symbol, symbol: Symbols, evaluate: Evaluate) -> list[Node]:
     result: list[Node] = []
     known = {name: law.kinks for name, law in tape.laws.items()}
-    factors = {f for h in _edges(integrand, known) for f in sp.Mul.make_args(h) if theta in f.free_symbols}
-    for h in sorted(factors, key=sp.default_sort_key):
-        cosine, sine = sp.symbols("@cos @sin")
-        flat = sp.expand(h.xreplace({sp.cos(theta): cosine, sp.sin(theta): sine}))
-        if theta in flat.free_symbols or not flat.is_polynomial(cosine, sine):
-            continue
-        alpha, beta = flat.coeff(cosine, 1).coeff(sine, 0), flat.coeff(sine, 1).coeff(cosine, 0)
-        gamma = flat.subs({cosine: 0, sine: 0})
-        if sp.expand(flat - alpha * cosine - beta * sine - gamma) != 0:
-            continue
-        a, b, c = (evaluate(tape, part, symbol) for part in (alpha, beta, gamma))
-        for angle in _zeros(tape, a, b, c):
-            if angle not in result:
-                result.append(angle)
+    edges = {h for h in _edges(integrand, known) if theta in h.free_symbols}
+    for h in sorted(edges, key=sp.default_sort_key):
+        if (parts := _affine(h, theta)) is not None:
+            a, b, c = (evaluate(tape, part, symbol) for part in parts)
+            result += [angle for angle in _zeros(tape, a, b, c) if angle not in result]
     return result
 
 

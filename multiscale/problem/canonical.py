@@ -22,7 +22,7 @@ from multiscale.problem.drives import Drive
 from multiscale.problem.frequencies import Bases, bases_of, denested, eliminated, square_root
 from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_drives
 from multiscale.problem.preparation import Prepared
-from multiscale.problem.projection import Harmonic
+from multiscale.problem.projection import Harmonic, TorusMean
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import Detuning, detuning_of
 from multiscale.problem.terms import Layout, match, tabulate
@@ -42,7 +42,7 @@ class Canonical:
     frequencies of their relations. `truncated` says that a statement exact in ε was expanded, so that a higher order
     needs the canonical form anew. `harmonics` are the Fourier coefficients of forces that are not polynomial, `numeric`
     their spelling for evaluation, `moduli` the moduli of amplitudes among the generators, and `left_out` says in words
-    which harmonics are not there.
+    which harmonics are not there. `torus` are the averages of forces that depend on several phases.
     """
 
     spec: RingSpec
@@ -58,6 +58,7 @@ class Canonical:
     numeric: tuple[tuple[str, sp.Expr], ...] = ()
     moduli: tuple[Modulus, ...] = ()
     left_out: tuple[str, ...] = ()
+    torus: tuple[TorusMean, ...] = ()
 
 
 @dataclass

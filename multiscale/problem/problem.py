@@ -182,7 +182,7 @@ class Problem:
             form = canonical_form(prepared, layout, shown, list(self.unknowns))
             if prepared.laws:
                 form = with_projections(
-                    form, prepared.laws, layout, shown, self._theta, order, self.harmonics, self.formal
+                    form, prepared.laws, layout, shown, self.phase, order, self.harmonics, self.formal
                 )
             self._canonical[order if form.truncated or prepared.laws else None] = form
             return form
@@ -205,7 +205,7 @@ class Problem:
                 )
 
     @property
-    def _theta(self) -> sp.Symbol:
+    def phase(self) -> sp.Symbol:
         """The phase that averages integrate over."""
         name = "theta"
         while name in self.names:

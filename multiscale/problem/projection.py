@@ -22,7 +22,7 @@ from multiscale.problem.closed_forms import AMPLITUDE, FREQUENCY, Closed, U, V, 
 from multiscale.problem.guarded import Clipped, Inverse, Reciprocal, Root, guarded
 from multiscale.problem.steps import expanded, with_steps
 
-__all__ = ["Harmonic", "amplitude_of", "complex_parts", "harmonic", "numeric_harmonic"]
+__all__ = ["Harmonic", "TorusMean", "amplitude_of", "complex_parts", "harmonic", "numeric_harmonic"]
 
 NONSMOOTH = (sp.Abs, sp.sign, sp.Max, sp.Min, sp.Heaviside, sp.Piecewise, sp.core.function.AppliedUndef)
 
@@ -41,6 +41,29 @@ class Harmonic:
     imag: str
     factors: tuple[str, ...] = ()
     slope: int | None = None
+
+
+@dataclass(frozen=True)
+class TorusMean:
+    """z_mode (real + i imag): the part of a law at the rate of a mode, for a force of several phases.
+
+    `jets` are the symbols in `force`, `generators` the modes and drives (numbered on from the modes) of its leading
+    motion, `combinations` their combinations of rate zero.
+    """
+
+    law: int
+    mode: int
+    real: str
+    imag: str
+    force: sp.Expr
+    jets: tuple[tuple[sp.Symbol, tuple[int, int]], ...]
+    generators: tuple[int, ...]
+    combinations: tuple[tuple[int, ...], ...]
+
+    @property
+    def symbols(self) -> tuple[sp.Symbol, sp.Symbol]:
+        """What stands for the two parts in expressions."""
+        return sp.Symbol(self.real, real=True), sp.Symbol(self.imag, real=True)
 
 
 def amplitude_of(mode: int) -> sp.Symbol:
