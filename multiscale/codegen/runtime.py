@@ -150,10 +150,11 @@ def _refine(
     with np.errstate(all="ignore"):
         old = tuple(np.broadcast_to(x, count) for x in rule(n, rows))
         largest = float(np.max(old[1], initial=0.0))
+        size, change = np.zeros(count), np.full(count, np.inf)
         while len(waiting):
             n *= 2
             if n > limits[1]:
-                if _SIZE.depth > 1 and (stalled <= GRAZING * size[left]).all():
+                if _SIZE.depth > 1 and (change <= GRAZING * size).all():
                     # A jump that the motion only just reaches is placed to half the digits; the outer average decides.
                     result[waiting] = old[0]
                     return largest
@@ -170,13 +171,10 @@ def _refine(
                     "logarithm of a negative number, lies within the range of motion. Keep the amplitude below it, or "
                     "write the force so that it is defined for every displacement and velocity that occurs"
                 )
-            size = np.maximum(better[1], _SIZE.value)
-            previous = old[0]
-            done = np.abs(better[0] - old[0]) <= TOLERANCE * size + 1e-300
-            result[waiting[done]] = better[0][done]
-            left = ~done
-            stalled = np.abs(better[0] - previous)[left]
-            waiting, old = waiting[left], (better[0][left], better[1][left])
+            size, change = np.maximum(better[1], _SIZE.value), np.abs(better[0] - old[0])
+            left = ~(change <= TOLERANCE * size + 1e-300)
+            result[waiting[~left]] = better[0][~left]
+            waiting, old, size, change = waiting[left], (better[0][left], better[1][left]), size[left], change[left]
             rows = [x if len(x) == 1 else x[left] for x in rows]
     return largest
 
