@@ -17,6 +17,7 @@ from multiscale.errors import (
 from multiscale.expansion import Expansion, expand, extend
 from multiscale.level import Level
 from multiscale.problem import Problem, RestState, states_of_rest
+from multiscale.problem.force_law import ForceLaw
 from multiscale.slow_flow import SlowFlow
 
 if TYPE_CHECKING:
@@ -35,6 +36,7 @@ if TYPE_CHECKING:
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
+    from multiscale.response.ring_down import RingDown, ring_down
     from multiscale.response.steady.backbone import backbone, effective_cubic, effective_damping
     from multiscale.response.steady.branches import Branch
     from multiscale.response.steady.critical_drive import CriticalDrive, critical_drive
@@ -58,6 +60,7 @@ __all__ = [
     "EvaluationError",
     "Expansion",
     "Fit",
+    "ForceLaw",
     "Jump",
     "Level",
     "LimitCycle",
@@ -75,6 +78,7 @@ __all__ = [
     "Response",
     "ResponseModel",
     "RestState",
+    "RingDown",
     "RingDownModel",
     "SlowFlow",
     "SmallDivisorWarning",
@@ -103,6 +107,7 @@ __all__ = [
     "pade",
     "periodic_series",
     "response_model",
+    "ring_down",
     "ring_down_model",
     "states_of_rest",
     "taylor_remainder",
@@ -130,6 +135,7 @@ _LATER = {
     "QuadraticApproximant": "checks.approximants",
     "Response": "response.steady.frequency_response",
     "ResponseModel": "fitting.response",
+    "RingDown": "response.ring_down",
     "RingDownModel": "fitting.ring_down",
     "Special": "response.steady.sweep",
     "TaylorRemainder": "checks.taylor_remainder",
@@ -152,6 +158,7 @@ _LATER = {
     "pade": "checks.pade",
     "periodic_series": "response.orbits.periodic_series",
     "response_model": "fitting.response",
+    "ring_down": "response.ring_down",
     "ring_down_model": "fitting.ring_down",
     "taylor_remainder": "checks.taylor_remainder",
     "threshold": "response.tongues.transition_curves",

@@ -16,14 +16,17 @@ from multiscale.algebra.choice import make_ring
 from multiscale.algebra.derivation import Derivation
 from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Coefficient, finish
-from multiscale.algebra.ring import Exponents
+from multiscale.algebra.ring import Exponents, Ring
 from multiscale.clock import Clock
+from multiscale.forces import Force
 from multiscale.forces.polynomial import PolynomialForce
+from multiscale.forces.projected import ProjectedForce, ProjectedTerm, Sum, Wave, WaveSlopes
 from multiscale.frame import Frame, frame_of
 from multiscale.hierarchy import Hierarchy, next_level, start
 from multiscale.linear_part import Rate
 from multiscale.linear_part.oscillators import Oscillators
 from multiscale.problem.canonical import Canonical
+from multiscale.problem.laws import LAW
 from multiscale.tower import Tower
 
 __all__ = ["Computation", "Finished", "Snapshot", "begin", "restore"]
@@ -90,6 +93,7 @@ class Computation:
         bare = Frame(self.modes, (), (), ())
         levels = range(1, self.order + 1)
         found = {bare.relative(m, a) for n in levels for a in range(self.modes) for m in self.change(n, a)}
+        found.update(row for mean in self.canonical.torus for row in mean.combinations)
         return frame_of(found, self.modes, drives)
 
     @cached_property
@@ -183,8 +187,34 @@ def begin(canonical: Canonical, representation: str, reciprocals: Iterable[tuple
         for pair, rate in zip(canonical.spec.pairs, turning, strict=True)
     }
     detunings = {d.generator: d.detunings for d in drives}
-    clock = Clock(ring, frequencies, [d.rate for d in drives], detunings, dict(canonical.slow))
-    return Computation(canonical, start(ring, linear, PolynomialForce(canonical.force, ring), clock))
+    clock = Clock(ring, frequencies, [d.rate for d in drives], detunings, dict(canonical.slow), canonical.moduli)
+    return Computation(canonical, start(ring, linear, _force(canonical, ring), clock))
+
+
+def _force(canonical: Canonical, ring: Ring) -> Force:
+    """The polynomial terms, and the projected ones where there are any."""
+    if not any(t.factors and t.factors[0][1] == LAW for terms in canonical.force for t in terms):
+        return PolynomialForce(canonical.force, ring)
+    plain, projected = [], []
+    for terms in canonical.force:
+        laws = [t for t in terms if t.factors and t.factors[0][1] == LAW]
+        plain.append([t for t in terms if t not in laws])
+        projected.append([_projected(t.power, t.coefficient, t.factors[0][0], len(plain) - 1, canonical) for t in laws])
+    return Sum([PolynomialForce(plain, ring), ProjectedForce(projected, ring)])
+
+
+def _projected(power: int, coefficient: Frozen, law: int, equation: int, canonical: Canonical) -> ProjectedTerm:
+    waves: dict[int | None, list[Wave]] = {None: [], 0: [], 1: []}
+    modes = [h.mode for h in canonical.harmonics if h.law == law]
+    for h in canonical.harmonics:
+        if h.law == law:
+            variable = canonical.spec.pairs[h.mode][0]
+            waves[h.slope].append(Wave(variable, h.number, h.real, h.imag, h.factors))
+    for mean in canonical.torus:
+        if (mean.law, mean.mode) == (law, equation):
+            waves[None].append(Wave(canonical.spec.pairs[equation][0], 1, mean.real, mean.imag))
+    slopes = WaveSlopes(modes[0], tuple(waves[0]), tuple(waves[1])) if waves[0] or waves[1] else None
+    return ProjectedTerm(power, coefficient, tuple(waves[None]), slopes)
 
 
 def restore(canonical: Canonical, snapshot: Snapshot, representation: str = "auto") -> Computation:
@@ -196,6 +226,7 @@ def restore(canonical: Canonical, snapshot: Snapshot, representation: str = "aut
         known = hierarchy.clock.at_level(tower.height)
         slow = {canonical.spec.pairs[a][0]: tower.ring.read(dict(x)) for a, x in enumerate(changes)}
         displacement = tuple(tower.ring.read(dict(x)) for x in field)
-        tower = tower.completed(tower.pending(known), known, displacement, Derivation(slow))
+        followed = hierarchy.clock.followed(Derivation(slow))
+        tower = tower.completed(tower.pending(known), known, displacement, followed)
         computation = replace(computation, hierarchy=replace(hierarchy, tower=tower))
     return computation

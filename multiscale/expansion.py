@@ -338,7 +338,10 @@ def extend(expansion: Expansion, order: int, *, on_level: Callable[[Level], obje
         longer = extend(plain, order, on_level=on_level)
         return replace(longer, amplitude="peak", computation=to_peak(longer.computation))
     computation, canonical = expansion.computation, expansion.problem.canonical(order)
-    if canonical != computation.canonical:
+    if canonical.numeric != computation.canonical.numeric:
+        # Forces that are not polynomial have other generators at the higher order: everything is computed anew.
+        computation = begin(canonical, computation.representation)
+    elif canonical != computation.canonical:
         # The statement was expanded in ε to a lower order; what is known goes on under the longer form.
         computation = restore(canonical, computation.snapshot(), computation.representation)
     longer = _taken_to(expansion.problem, computation, order, on_level)

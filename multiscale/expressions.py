@@ -14,7 +14,7 @@ from sympy.polys.domains import ZZ
 from sympy.polys.orderings import lex
 from sympy.polys.rings import PolyRing
 
-from multiscale.algebra.polynomial import Frozen, Monomial, primitive
+from multiscale.algebra.polynomial import Frozen, Monomial, freeze, primitive
 from multiscale.algebra.quotient import Coefficient, Quotient
 
 __all__ = ["FACTOR_LIMIT", "Writer"]
@@ -23,10 +23,10 @@ FACTOR_LIMIT = 40
 
 
 class Writer:
-    """Writes with `meanings`, the user's expression for each generator."""
+    """Writes with `meanings`, the user's expression for each generator; those in `opaque` are written as they stand."""
 
-    def __init__(self, meanings: Mapping[str, sp.Expr]) -> None:
-        self._meanings = dict(meanings)
+    def __init__(self, meanings: Mapping[str, sp.Expr], opaque: Iterable[str] = ()) -> None:
+        self._meanings, self._opaque = dict(meanings), frozenset(opaque)
         self._quotients: dict[Quotient, sp.Expr] = {}
 
     def monomial(self, monomial: Monomial) -> sp.Expr:
@@ -37,9 +37,21 @@ class Writer:
 
     def quotient(self, q: Quotient) -> sp.Expr:
         if q not in self._quotients:
-            below = [self.polynomial(p) ** -e for p, e in q.denominator]
-            self._quotients[q] = sp.Mul(*self._numerator(q.numerator), *below) if q else sp.Integer(0)
+            self._quotients[q] = self._split(q) if self._opaque and q else self._plain(q)
         return self._quotients[q]
+
+    def _plain(self, q: Quotient) -> sp.Expr:
+        below = [self.polynomial(p) ** -e for p, e in q.denominator]
+        return sp.Mul(*self._numerator(q.numerator), *below) if q else sp.Integer(0)
+
+    def _split(self, q: Quotient) -> sp.Expr:
+        """Fourier coefficients of forces are formulas of their own: what multiplies each is written apart."""
+        groups: dict[Monomial, dict[Monomial, Fraction]] = {}
+        for m, c in q.numerator:
+            outside = tuple((name, e) for name, e in m if name in self._opaque)
+            groups.setdefault(outside, {})[tuple((name, e) for name, e in m if name not in self._opaque)] = c
+        parts = [(m, self._plain(Quotient(freeze(terms), q.denominator))) for m, terms in sorted(groups.items())]
+        return sp.Add(*(self.monomial(m) * part for m, part in parts))
 
     def coefficient(self, c: Coefficient) -> sp.Expr:
         return self.quotient(c.real) + sp.I * self.quotient(c.imag)

@@ -128,6 +128,7 @@ def next_level(hierarchy: Hierarchy) -> Hierarchy:
         pending = tuple(ring.lift(x) for x in pending[0]), tuple(ring.lift(x) for x in pending[1])
         known = hierarchy.clock.at_level(tower.height)
     displacement, slow = _solved(ring, hierarchy.linear_part, parts)
+    slow = hierarchy.clock.followed(slow)
     return replace(hierarchy, tower=hierarchy.tower.completed(pending, known, displacement, slow))
 
 

@@ -14,7 +14,9 @@ from multiscale.computed import Computation, Finished
 from multiscale.expressions import Writer
 from multiscale.frame import turns
 from multiscale.problem import Problem
+from multiscale.problem.projection import TorusMean, amplitude_of
 from multiscale.symbols import Symbols
+from multiscale.torus import Torus
 
 __all__ = ["Level", "Views", "polynomials_below"]
 
@@ -78,7 +80,36 @@ class Views:
 
     @cached_property
     def writer(self) -> Writer:
-        return Writer(dict(self._computation.canonical.meanings))
+        canonical = self._computation.canonical
+        return Writer(dict(canonical.meanings), dict(canonical.numeric))
+
+    def placed(self, x: sp.Expr, form: str) -> sp.Expr:
+        """x with the amplitudes that Fourier coefficients of forces depend on written in the variables of a form."""
+        if not self._computation.canonical.numeric:
+            return x
+        symbols = self._symbols
+        sizes = {
+            "polar": list(symbols.a),
+            "cartesian": [sp.sqrt(p**2 + q**2) for p, q in zip(symbols.p, symbols.q, strict=True)],
+            "complex": [2 * sp.Abs(A) for A in symbols.A],
+        }[form]
+        x = x.xreplace({amplitude_of(k): size for k, size in enumerate(sizes)})
+        torus = [t for t in self._computation.canonical.torus if x.free_symbols & set(t.symbols)]
+        return x.xreplace(self._torus_means(torus, form, sizes)) if torus else x
+
+    def _torus_means(self, torus: Sequence[TorusMean], form: str, sizes: list[sp.Expr]) -> dict[sp.Symbol, sp.Expr]:
+        """What stands for averages over several phases; they depend on the resonant phases, so cyclic ones are zero."""
+        symbols, frame = self._symbols, self._computation.frame
+        deviations = {
+            "polar": lambda: frame.deviations(symbols.gamma, [sp.Integer(0)] * len(symbols.beta)),
+            "cartesian": lambda: [-sp.atan2(q, p) for p, q in zip(symbols.p, symbols.q, strict=True)],
+            "complex": lambda: [sp.arg(A) for A in symbols.A],
+        }[form]()
+        views = Torus(self._computation, self._problem.phase.name)
+        result: dict[sp.Symbol, sp.Expr] = {}
+        for t in torus:
+            result.update(zip(t.symbols, views.polar(t, sizes, deviations), strict=True))
+        return result
 
     def phase_of(self, row: Sequence[Fraction]) -> sp.Expr:
         """Σ row_f ω_f t + Σ row_l θ_l: a combination of natural phases and angles of drives, in time."""
@@ -119,7 +150,7 @@ class Views:
             rest = self.angle(frame.relative(m, mode))
             wave = sp.exp(sp.I * rest) if rest != 0 else sp.Integer(1)
             terms.append(self.writer.coefficient(c) * self.monomial(m) * wave)
-        return sp.Add(*terms)
+        return self.placed(sp.Add(*terms), "complex")
 
     def monomial(self, exponents: tuple[int, ...]) -> sp.Expr:
         """The amplitudes of a monomial, phases apart."""
@@ -136,7 +167,8 @@ class Views:
             row = self._computation.frame.fast(turns(m))
             angles[row] = self.angle(turns(m))
             groups.setdefault(row, []).append(self.writer.coefficient(c) * self.monomial(m))
-        return sp.Add(*(sp.Add(*terms) * sp.exp(sp.I * angles[row]) for row, terms in sorted(groups.items())))
+        total = sp.Add(*(sp.Add(*terms) * sp.exp(sp.I * angles[row]) for row, terms in sorted(groups.items())))
+        return self.placed(total, "complex")
 
     def level(self, n: int) -> Level:
         problem, computation = self._problem, self._computation

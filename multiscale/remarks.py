@@ -30,6 +30,7 @@ def remarks(
     return (
         *([cubic] if cubic else []),
         *small_divisors(problem, computation, tolerance),
+        *computation.canonical.left_out,
         *_unbalanced(computation),
         *_explicit_time(problem, computation),
         *terms_beyond(problem, computation),
@@ -170,6 +171,7 @@ def _lost_parameters(problem: Problem, computation: Computation) -> list[str]:
     polynomials = [p for q in quotients for p in (q.numerator, *(d for d, _ in q.denominator))]
     names = {name for p in polynomials for monomial, _ in p for name, _ in monomial}
     used.update(*(meanings[name].free_symbols for name in names))
+    used.update(*(t.force.free_symbols for t in c.canonical.torus))
     lost = [s for s in problem.parameters if s not in used]
     return [f"{s} has no effect up to order {c.order}: {_where(computation, s)}" for s in lost]
 

@@ -128,7 +128,7 @@ class SlowFlow:
             real, imag = write(c.real), write(c.imag)
             rate.append(size * (real * sp.cos(angle) - imag * sp.sin(angle)))
             turn.append(size / amplitudes[mode] * (imag * sp.cos(angle) + real * sp.sin(angle)))
-        return sp.Add(*rate), sp.Add(*turn)
+        return self._views.placed(sp.Add(*rate), "polar"), self._views.placed(sp.Add(*turn), "polar")
 
     def _angle(self, combination: tuple[int, ...]) -> sp.Expr:
         numbers = self._frame.coordinates(combination)
@@ -165,7 +165,7 @@ class SlowFlow:
             real, imag = (sp.Add(*column) for column in zip(*terms, strict=True))
             p_rate.append(real * cosine - imag * sine)
             q_rate.append(-(imag * cosine) - real * sine)
-        return sp.Add(*p_rate), sp.Add(*q_rate)
+        return self._views.placed(sp.Add(*p_rate), "cartesian"), self._views.placed(sp.Add(*q_rate), "cartesian")
 
     def _form(self, form: str) -> dict[sp.Symbol, sp.Expr]:
         if form not in FORMS:

@@ -36,8 +36,15 @@ def field_writer(computation: Computation, views: Views, symbols: Symbols, form:
     modes = computation.modes
     if form == "polar":
         deviations = computation.frame.deviations(symbols.gamma, symbols.beta)
-        return lambda f: _real_field(f, modes, views, lambda m: _polar_wave(m, deviations, views, symbols))
-    return lambda f: _real_field(f, modes, views, lambda m: _cartesian_wave(m, views, symbols))
+
+        def wave(m: tuple[int, ...]) -> Complex:
+            return _polar_wave(m, deviations, views, symbols)
+    else:
+
+        def wave(m: tuple[int, ...]) -> Complex:
+            return _cartesian_wave(m, views, symbols)
+
+    return lambda f: views.placed(_real_field(f, modes, views, wave), form)
 
 
 def _real_field(finished: Finished, modes: int, views: Views, wave: Callable[[tuple[int, ...]], Complex]) -> sp.Expr:

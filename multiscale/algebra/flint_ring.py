@@ -49,7 +49,10 @@ class FlintRing(NamedTerms):
             self._squares.append((k, self.generators[k] ** 2 - self.read(dict(value))))
         # Later roots may have earlier ones in their squares, so they go first.
         self._squares.reverse()
-        self._inverses = [(g, h, self.generators[g] * self.generators[h] - 1) for g, h in spec.inverses]
+        # Moduli first: what they give may meet a reciprocal.
+        generators = self.generators
+        moduli = [(g, h, generators[g] * generators[h] - generators[r] ** 2) for g, h, r in spec.squared_moduli]
+        self._inverses = moduli + [(g, h, self.generators[g] * self.generators[h] - 1) for g, h in spec.inverses]
 
     def constant(self, value: Fraction | int) -> Any:
         value = Fraction(value)
@@ -72,6 +75,10 @@ class FlintRing(NamedTerms):
         for k, relation in self._squares:
             if degrees[k] > 1:
                 x = x % relation
+        if self.spec.moduli and self._inverses:
+            for _, _, relation in self._inverses:
+                x = x % relation
+            return x
         for g, h, relation in self._inverses:
             if degrees[g] and degrees[h]:
                 x = x % relation

@@ -4,7 +4,7 @@ A ring has the generators i (named ``@i``), square roots, complex-conjugate pair
 that order. Its elements support ``+ - *`` and truth (non-zero). Laws, tested for every representation:
 
     normal(x):      i**2 -> -1, g**2 -> its value for every root g, s*(1/s) -> 1 for every s with a reciprocal,
-                    e*ē -> 1 for the partners of a unit pair;
+                    e*ē -> 1 for the partners of a unit pair, z*z̄ -> r**2 for a pair with a modulus r;
                     a ring homomorphism onto reduced elements: normal(x*y) = normal(normal(x)*normal(y))
     conjugate(x):   exchanges the partners of every pair and i with -i; an involution
     diff(x, g):     the partial derivative, every generator being independent of the others
@@ -42,6 +42,7 @@ class RingSpec:
     `roots` are pairs (g, p) with g**2 = p, p free of roots that come later; `pairs` are complex-conjugate partners, of
     which those whose first name is in `units` lie on the unit circle (partner = reciprocal): phases. `reciprocals`
     are pairs (h, p) with h = 1/p, the p primitive (see `polynomial.primitive`), irreducible and pairwise coprime.
+    `moduli` are pairs (z, r): the real generator r is the modulus |z| of the pair that z belongs to.
     """
 
     pairs: tuple[tuple[str, str], ...]
@@ -49,6 +50,7 @@ class RingSpec:
     reals: tuple[str, ...] = ()
     roots: tuple[tuple[str, Frozen], ...] = ()
     reciprocals: tuple[tuple[str, Frozen], ...] = ()
+    moduli: tuple[tuple[str, str], ...] = ()
 
     @cached_property
     def names(self) -> tuple[str, ...]:
@@ -71,6 +73,12 @@ class RingSpec:
         single = [(h, p[0][0][0][0]) for h, p in self.reciprocals if len(p) == 1]
         phases = [(e_bar, e) for e, e_bar in self.pairs if e in self.units]
         return tuple((self.index[g], self.index[h]) for h, g in (*phases, *single))
+
+    @cached_property
+    def squared_moduli(self) -> tuple[tuple[int, int, int], ...]:
+        """Index triples (z, z̄, r) with z*z̄ = r**2."""
+        other = dict(self.pairs)
+        return tuple((self.index[z], self.index[other[z]], self.index[r]) for z, r in self.moduli)
 
     @property
     def first_pair(self) -> int:

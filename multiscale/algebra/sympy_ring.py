@@ -101,6 +101,8 @@ class SympyRing(NamedTerms):
     def normal(self, x: Any) -> Any:
         for k, value in self._squares:
             x = self._without_squares(x, k, value)
+        for g, h, r in self.spec.squared_moduli:
+            x = self._without_products(x, g, h, r)
         for g, h in self.spec.inverses:
             x = self._without_products(x, g, h)
         common = gcd(x.denominator, *(int(c) for c in x.numerator.values()))
@@ -126,7 +128,8 @@ class SympyRing(NamedTerms):
             factor = factor * value
         return result
 
-    def _without_products(self, x: Scaled, g: int, h: int) -> Scaled:
+    def _without_products(self, x: Scaled, g: int, h: int, r: int | None = None) -> Scaled:
+        """Replace g·h by 1, or by the square of the generator r."""
         changed = False
         terms: dict[Exponents, Any] = {}
         for m, c in x.numerator.items():
@@ -136,6 +139,8 @@ class SympyRing(NamedTerms):
                 exponents = list(m)
                 exponents[g] -= common
                 exponents[h] -= common
+                if r is not None:
+                    exponents[r] += 2 * common
                 m = tuple(exponents)
             terms[m] = terms.get(m, 0) + c
         return Scaled(self._ring.from_dict({m: c for m, c in terms.items() if c}), x.denominator) if changed else x

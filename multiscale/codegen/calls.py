@@ -7,6 +7,7 @@ from fractions import Fraction
 
 import sympy as sp
 
+from multiscale.codegen.special import special
 from multiscale.codegen.tape import Node, Tape
 from multiscale.errors import EvaluationError
 
@@ -22,7 +23,7 @@ def evaluate(tape: Tape, x: sp.Expr, symbol: Callable[[sp.Symbol], Node]) -> Nod
     """
     if isinstance(x, sp.Rational):
         return tape.constant(Fraction(int(x.p), int(x.q)))
-    if not x.free_symbols:
+    if not x.free_symbols and not x.has(sp.Integral, sp.core.function.AppliedUndef):
         return tape.constant(float(x))
     if isinstance(x, sp.Symbol):
         return symbol(x)
@@ -47,8 +48,10 @@ def evaluate(tape: Tape, x: sp.Expr, symbol: Callable[[sp.Symbol], Node]) -> Nod
         return tape.div(evaluate(tape, sp.sin(x.args[0]), symbol), evaluate(tape, sp.cos(x.args[0]), symbol))
     if x.func in FUNCTIONS:
         return tape.call(FUNCTIONS[x.func], evaluate(tape, x.args[0], symbol))
-    if isinstance(x, sp.sinh | sp.cosh | sp.tanh):
+    if isinstance(x, sp.sinh | sp.cosh):
         return evaluate(tape, x.rewrite(sp.exp), symbol)
+    if (node := special(tape, x, symbol, evaluate)) is not None:
+        return node
     raise EvaluationError(
         f"{x} cannot be evaluated in generated code: replace {x.func.__name__} by a symbol and give that a value"
     )

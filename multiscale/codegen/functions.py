@@ -7,6 +7,7 @@ from fractions import Fraction
 
 import sympy as sp
 
+from multiscale.algebra.quotient import Quotient
 from multiscale.codegen.calls import evaluate
 from multiscale.codegen.numpy_function import Inversion, NumpyFunction
 from multiscale.codegen.printer import source
@@ -15,6 +16,7 @@ from multiscale.codegen.tape import Node, Tape
 from multiscale.computed import Computation, Finished
 from multiscale.frame import turns
 from multiscale.problem import Problem
+from multiscale.problem.force_law import law_name
 from multiscale.problem.relations import Detuning
 
 __all__ = [
@@ -44,7 +46,18 @@ def _function(
     defaults = {} if problem.ordering is None else {str(problem.small.name): 1.0}
     inversions = tuple(_inversion(problem, d) for d in problem.detunings)
     ready = tuple(defaults.items())
-    return NumpyFunction(text, functions, tuple(parameters), len(state), shape, is_complex, ready, inversions)
+    laws = _laws_in(functions, problem)
+    return NumpyFunction(text, functions, tuple(parameters), len(state), shape, is_complex, ready, inversions, laws)
+
+
+def _laws_in(functions: Sequence[str], problem: Problem) -> tuple[tuple[str, Callable[..., object]], ...]:
+    """The user's force laws, and their derivatives, among the functions of a kernel."""
+    available: dict[str, Callable[..., object]] = {}
+    for name, law in problem.laws.items():
+        available[law_name(name)] = law.function
+        if law.derivative is not None:
+            available[f"{law_name(name)}_slope"] = law.derivative
+    return tuple((name, available[name]) for name in functions if name in available)
 
 
 def _inversion(problem: Problem, detuning: Detuning) -> Inversion:
@@ -61,8 +74,13 @@ def _inversion(problem: Problem, detuning: Detuning) -> Inversion:
 
 def _cartesian_state(program: Program, modes: int) -> tuple[list[str], list[Complex]]:
     names = [f"state {letter}{k + 1 if modes > 1 else ''}" for k in range(modes) for letter in "pq"]
-    nodes = [program.tape.input(name) for name in names]
-    return names, list(zip(nodes[::2], nodes[1::2], strict=True))
+    tape = program.tape
+    nodes = [tape.input(name) for name in names]
+    state = list(zip(nodes[::2], nodes[1::2], strict=True))
+    program.set_state(state)
+    if program.projected:
+        program.set_amplitudes(tape.call("root", tape.add(tape.mul(p, p), tape.mul(q, q))) for p, q in state)
+    return names, state
 
 
 def _flow(program: Program, computation: Computation, mode: int) -> dict[tuple[int, ...], Complex]:
@@ -71,6 +89,7 @@ def _flow(program: Program, computation: Computation, mode: int) -> dict[tuple[i
 
 def _cartesian(program: Program, computation: Computation) -> tuple[list[str], list[Node]]:
     names, state = _cartesian_state(program, computation.modes)
+    program.without_torus = True
     tape, modes = program.tape, computation.modes
     outputs = []
     for a in range(modes):
@@ -83,8 +102,30 @@ def _cartesian(program: Program, computation: Computation) -> tuple[list[str], l
 
         groups = program.grouped(_flow(program, computation, a), turns, scale=2)
         real, imag = program.summed(groups, state, wave)
+        for x, y in _torus_terms(program, computation, a):
+            real, imag = tape.add(real, tape.mul(tape.constant(2), x)), tape.add(imag, tape.mul(tape.constant(2), y))
         outputs += [real, tape.neg(imag)]
     return names, outputs
+
+
+def _torus_terms(program: Program, computation: Computation, mode: int) -> list[Complex]:
+    """What averages over several phases add to dA/dt: κ G, with κ read off the term κ z (X + iY), z (X + iY) = G."""
+    found = []
+    for mean in computation.canonical.torus:
+        if mean.mode == mode:
+            for n in range(1, computation.order + 1):
+                for c in computation.flow(n, mode).values():
+                    real, imag = (program.quotient(_factor_of(mean.real, q)) for q in (c.real, c.imag))
+                    term = program.multiply((real, imag), program.torus_mean(mean))
+                    scale = program.tape.power(program.small, n)
+                    found.append((program.tape.mul(scale, term[0]), program.tape.mul(scale, term[1])))
+    return found
+
+
+def _factor_of(name: str, q: Quotient) -> Quotient:
+    """What multiplies a generator that stands linearly."""
+    terms = ((tuple(x for x in m if x[0] != name), c) for m, c in q.numerator if (name, 1) in m)
+    return Quotient(tuple(terms), q.denominator)
 
 
 def _polar(program: Program, computation: Computation) -> tuple[list[str], list[Node]]:
@@ -93,6 +134,8 @@ def _polar(program: Program, computation: Computation) -> tuple[list[str], list[
     names += [f"state gamma{k + 1}" for k in range(len(frame.resonant))] + [f"state beta{j + 1}" for j in frame.cyclic]
     nodes = [tape.input(name) for name in names]
     size, phases = nodes[: computation.modes], nodes[computation.modes :][: len(frame.resonant)]
+    program.set_amplitudes(size)
+    program.set_state(_deviated(program, computation, size, phases))
     rates, turning = [], []
     for a in modes:
         rate, turn = _polar_mode(program, computation, a, size, phases)
@@ -102,6 +145,20 @@ def _polar(program: Program, computation: Computation) -> tuple[list[str], list[
         tape.total(tape.mul(tape.constant(n), b) for n, b in zip(row, turning, strict=True)) for row in frame.resonant
     ]
     return names, [*rates, *combined, *(turning[j] for j in frame.cyclic)]
+
+
+def _deviated(program: Program, computation: Computation, size: list[Node], phases: list[Node]) -> list[Complex]:
+    """(p, q) = a (cos δ, −sin δ) with the deviations of resonant phases, cyclic ones being zero."""
+    if not computation.canonical.torus:
+        return []
+    tape, symbols = program.tape, sp.symbols(f"@g:{len(phases)}")
+    nodes = dict(zip(symbols, phases, strict=True))
+    state = []
+    for a, delta in zip(size, computation.frame.deviations(symbols, [sp.Integer(0)] * len(size)), strict=True):
+        angle = evaluate(tape, sp.sympify(delta), nodes.__getitem__)
+        cosine, sine = tape.call("cos", angle), tape.call("sin", angle)
+        state.append((tape.mul(a, cosine), tape.neg(tape.mul(a, sine))))
+    return state
 
 
 def _polar_mode(program: Program, computation: Computation, a: int, size: list[Node], phases: list[Node]) -> Complex:
@@ -136,6 +193,13 @@ def _complex(program: Program, computation: Computation) -> tuple[list[str], lis
     tape, modes = program.tape, range(computation.modes)
     names = [f"state A{k + 1 if computation.modes > 1 else ''}" for k in modes]
     amplitudes = [tape.input(name) for name in names]
+    if program.projected:
+        program.set_amplitudes(tape.mul(tape.constant(2), tape.call("absolute", A)) for A in amplitudes)
+    if computation.canonical.torus:
+        two, program.without_torus = tape.constant(2), True
+        program.set_state(
+            [(tape.mul(two, tape.call("real", A)), tape.neg(tape.mul(two, tape.call("imag", A)))) for A in amplitudes]
+        )
     variables = [x for A in amplitudes for x in (A, tape.call("conj", A))]
     outputs = []
     for a in modes:
@@ -145,7 +209,10 @@ def _complex(program: Program, computation: Computation) -> tuple[list[str], lis
             node = tape.add(cosine, tape.mul(tape.constant(1j), sine))
             powers = m[: 2 * computation.modes]
             terms[powers] = tape.add(terms.get(powers, tape.constant(0)), node)
-        outputs.append(program.horner(terms, variables) if terms else tape.constant(0))
+        total = program.horner(terms, variables) if terms else tape.constant(0)
+        for x, y in _torus_terms(program, computation, a):
+            total = tape.add(total, tape.add(x, tape.mul(tape.constant(1j), y)))
+        outputs.append(total)
     return names, outputs
 
 

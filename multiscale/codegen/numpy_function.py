@@ -12,13 +12,22 @@ import numpy as np
 import numpy.typing as npt
 import sympy as sp
 
+from multiscale.codegen.runtime import RUNTIME, IntegralError
 from multiscale.errors import EvaluationError
 
 __all__ = ["BoundFunction", "NumpyFunction"]
 
 Array = npt.NDArray[Any]
 _SCALARS = {float, int, np.float64}
-_NUMPY = {"sin": np.sin, "cos": np.cos, "exp": np.exp, "log": np.log, "sqrt": np.sqrt, "conj": np.conjugate}
+_NUMPY: dict[str, Callable[..., Any]] = {
+    "sin": np.sin,
+    "cos": np.cos,
+    "exp": np.exp,
+    "log": np.log,
+    "sqrt": np.sqrt,
+    "conj": np.conjugate,
+    **RUNTIME,
+}
 _MATH = {"sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log, "sqrt": math.sqrt}
 
 
@@ -88,7 +97,10 @@ class NumpyFunction:
     parameters : tuple of str
         All parameters of the problem and the small parameter, sorted by name, whatever the order or form.
     source : str
-        The kernel, the same byte for byte on every run. It takes scalars or arrays.
+        The kernel, the same byte for byte on every run. It takes scalars or arrays. The functions it calls are
+        NumPy's and those of `multiscale.codegen.runtime`, which needs NumPy alone.
+    laws : tuple
+        The user's own force laws among those functions, by name; where there are any, the source does not stand alone.
 
     Examples
     --------
@@ -111,12 +123,14 @@ class NumpyFunction:
     is_complex: bool = False
     defaults: tuple[tuple[str, float], ...] = ()
     inversions: tuple[Inversion, ...] = ()
+    laws: tuple[tuple[str, Callable[..., Any]], ...] = ()
     kernel: Callable[..., tuple[Any, ...]] = field(init=False, compare=False)
     _scalar_kernel: Callable[..., tuple[Any, ...]] | None = field(init=False, compare=False)
 
     def __post_init__(self) -> None:
-        object.__setattr__(self, "kernel", self.compiled(_NUMPY))
-        object.__setattr__(self, "_scalar_kernel", None if self.is_complex else self.compiled(_MATH))
+        object.__setattr__(self, "kernel", self.compiled(_NUMPY | dict(self.laws)))
+        plain = not self.is_complex and _MATH.keys() >= set(self.functions)
+        object.__setattr__(self, "_scalar_kernel", self.compiled(_MATH) if plain else None)
 
     def compiled(self, namespace: Mapping[str, Any]) -> Callable[..., tuple[Any, ...]]:
         """The kernel with its functions (`functions`) taken from `namespace`."""
@@ -172,7 +186,10 @@ class NumpyFunction:
                 f"{name} {x.shape}" for name, x in zip(("t", *self.parameters), (time, *values), strict=True)
             )
             raise EvaluationError(f"shapes do not broadcast: states {state.shape[1:]}, {shapes}") from None
-        outputs = self.kernel(time, *state, *values)
+        try:
+            outputs = self.kernel(time, *state, *values)
+        except IntegralError as error:
+            raise EvaluationError(str(error)) from None
         result = np.empty((len(outputs), *batch), dtype=kind)
         for row, value in zip(result, outputs, strict=True) if batch else ():
             row[...] = value
@@ -227,6 +244,7 @@ class NumpyFunction:
             self.is_complex,
             self.defaults,
             self.inversions,
+            self.laws,
         )
 
 

@@ -21,6 +21,8 @@ from multiscale.computed import Computation, Finished
 from multiscale.errors import EvaluationError
 from multiscale.frame import turns
 from multiscale.problem import Problem
+from multiscale.problem.projection import TorusMean, amplitude_of
+from multiscale.torus import Torus
 
 __all__ = ["Complex", "Program"]
 
@@ -31,17 +33,65 @@ class Program:
     """A tape on which the parameters of a problem are inputs, with the operations that results are made of."""
 
     def __init__(self, problem: Problem, computation: Computation) -> None:
-        self.tape = Tape()
+        self.tape = Tape(problem.laws)
+        self.amplitudes: dict[sp.Symbol, Node] = {}
         self.parameters = tuple(sorted((*problem.parameters, problem.small), key=lambda s: str(s.name)))
         self.time = self.tape.input("time t")
         self._time_symbol = problem.time
         self.small = self._parameter(problem.small)
         self._computation = computation
-        self._meanings = dict(computation.canonical.meanings)
+        self._meanings = dict(computation.canonical.meanings) | dict(computation.canonical.numeric)
+        self._phase_name = str(problem.phase.name)
+        self._state: list[Complex] = []
+        self._torus: dict[TorusMean, Complex] = {}
+        self._torus_parts = {
+            name: (t, k) for t in computation.canonical.torus for k, name in enumerate((t.real, t.imag))
+        }
+        self.without_torus = False
+        self._moduli = {m.name for m in computation.canonical.moduli}
         self._values: dict[str, Node] = {}
         self._inverses: dict[Frozen, Node] = {}
 
+    @property
+    def projected(self) -> bool:
+        """Whether forces that are not polynomial stand in the results."""
+        return bool(self._computation.canonical.numeric)
+
+    def set_state(self, state: Sequence[Complex]) -> None:
+        """The state (p_j, q_j) in the frame, which averages over several phases depend on."""
+        self._state = list(state)
+
+    def torus_mean(self, mean: TorusMean) -> Complex:
+        """G, the mean of a force of several phases times e^{−iΦ}."""
+        if mean not in self._torus:
+            pairs = [sp.symbols(f"@p{j} @q{j}", real=True) for j in range(self._computation.modes)]
+            nodes = {s: n for pair, own in zip(pairs, self._state, strict=True) for s, n in zip(pair, own, strict=True)}
+            parts = Torus(self._computation, self._phase_name).cartesian(mean, pairs)
+            real, imag = (
+                evaluate(self.tape, x, lambda s: nodes[s] if s in nodes else self._parameter(s)) for x in parts
+            )
+            self._torus[mean] = real, imag
+        return self._torus[mean]
+
+    def _torus_value(self, mean: TorusMean) -> Complex:
+        """G/A with A = ½ (p − iq)."""
+        tape, (p, q) = self.tape, self._state[mean.mode]
+        square = tape.add(tape.mul(p, p), tape.mul(q, q))
+        inverse = tape.mul(tape.constant(2), tape.call("inverse_or_zero", square))
+        return self.multiply(self.torus_mean(mean), (tape.mul(inverse, p), tape.mul(inverse, q)))
+
+    def set_amplitudes(self, nodes: Iterable[Node]) -> None:
+        """The amplitudes a_k, which the Fourier coefficients of forces that are not polynomial depend on."""
+        self.amplitudes = {amplitude_of(k): node for k, node in enumerate(nodes)}
+
     def _parameter(self, symbol: sp.Symbol) -> Node:
+        if symbol in self.amplitudes:
+            return self.amplitudes[symbol]
+        if symbol.name.startswith("@a"):
+            raise EvaluationError(
+                "the slow flow contains forces that are not polynomial: its coefficients depend on the amplitude, and "
+                "what needs a polynomial slow flow cannot be applied to it"
+            )
         return self.time if symbol == self._time_symbol else self.tape.input(f"parameter {symbol.name}")
 
     def expression(self, x: sp.Expr) -> Node:
@@ -49,6 +99,9 @@ class Program:
         return evaluate(self.tape, x, self._parameter)
 
     def _value(self, generator: str) -> Node:
+        if generator in self._torus_parts:
+            mean, part = self._torus_parts[generator]
+            return self.tape.constant(0) if self.without_torus else self._torus_value(mean)[part]
         if generator not in self._values:
             self._values[generator] = evaluate(self.tape, self._meanings[generator], self._parameter)
         return self._values[generator]
@@ -118,7 +171,11 @@ class Program:
         result = self.polynomial(q.numerator)
         for p, e in q.denominator:
             if p not in self._inverses:
-                self._inverses[p] = self.tape.div(self.tape.constant(1), self.polynomial(p))
+                below = self.polynomial(p)
+                if p[0][0] and p[0][0][0][0] in self._moduli:
+                    self._inverses[p] = self.tape.call("inverse_or_zero", below)
+                else:
+                    self._inverses[p] = self.tape.div(self.tape.constant(1), below)
             result = self.tape.mul(result, self.tape.power(self._inverses[p], e))
         return result
 

@@ -2,26 +2,58 @@
 
 A node is (operation, arguments); arguments are numbers of earlier nodes, so the list is in order of evaluation. Equal
 nodes are one node, which is how powers and products come to be shared, and arithmetic between exact constants is
-carried out at once. Operations: ``const input + - * / neg call``.
+carried out at once. Operations: ``const input + - * / neg call apply quad jump``, where ``call`` is a function of one
+node, ``apply`` one of several, and ``quad`` and ``jump`` belong to an average over a phase (`Integrand`).
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, field
 from fractions import Fraction
 from typing import Any, TypeAlias
 
-__all__ = ["Node", "Tape"]
+from multiscale.codegen.slopes import slope, slope_of_several
+
+__all__ = ["Integrand", "Node", "Tape"]
 
 Node: TypeAlias = int
 
-_DERIVATIVES = {"sin": "cos", "exp": "exp"}
+
+@dataclass(frozen=True)
+class Integrand:
+    """f(θ, x_0, …, x_{count−1}), a tape of its own with inputs ``theta``, ``x0``, …; equal when `key` is.
+
+    `term` is how an error spells the force.
+    """
+
+    tape: Tape = field(compare=False)
+    output: Node = field(compare=False)
+    count: int
+    key: str
+    term: str = field(compare=False)
+
+    def derivative(self, k: int) -> Integrand:
+        """∂f/∂x_k."""
+        zero, one = self.tape.constant(0), self.tape.constant(1)
+        inputs = [n for n, step in enumerate(self.tape.steps) if step[0] == "input"]
+        seeds = {n: one if self.tape.steps[n][1] == f"x{k}" else zero for n in inputs}
+        (output,) = self.tape.derivatives([self.output], seeds)
+        return Integrand(self.tape, output, self.count, f"{self.key}'{k}", self.term)
+
+    @property
+    def vanishes(self) -> bool:
+        return self.output == self.tape.constant(0)
 
 
 class Tape:
-    """Steps are appended through the methods below, which return the node that holds the result."""
+    """Steps are appended through the methods below, which return the node that holds the result.
 
-    def __init__(self) -> None:
+    `laws` says what undefined functions stand for.
+    """
+
+    def __init__(self, laws: Mapping[str, Any] | None = None) -> None:
+        self.laws = dict(laws or {})
         self.steps: list[tuple[Any, ...]] = []
         self._known: dict[tuple[Any, ...], Node] = {}
 
@@ -121,8 +153,17 @@ class Tape:
             result = self.mul(result, x)
         return result
 
-    def call(self, function: str, x: Node) -> Node:
-        return self._node("call", function, x)
+    def call(self, function: str, x: Node, *literals: int) -> Node:
+        return self._node("call", function, x, *literals)
+
+    def apply(self, function: str, *nodes: Node) -> Node:
+        return self._node("apply", function, *nodes)
+
+    def quadrature(self, integrand: Integrand, kinks: Sequence[Node], arguments: Sequence[Node]) -> Node:
+        """∫_0^{2π} f(θ, *arguments) dθ, with the angles at which f is not smooth."""
+        if integrand.vanishes:
+            return self.constant(0)
+        return self._node("quad", integrand, len(kinks), *kinks, *arguments)
 
     def total(self, nodes: Iterable[Node]) -> Node:
         result = self.constant(0)
@@ -148,7 +189,9 @@ class Tape:
         step = self.steps[node]
         if step[0] in ("const", "input"):
             return ()
-        return (step[2],) if step[0] == "call" else step[1:]
+        if step[0] == "call":
+            return (step[2],)
+        return step[{"apply": 2, "quad": 3, "jump": 2}.get(step[0], 1) :]
 
     def derivatives(self, outputs: Sequence[Node], seeds: Mapping[Node, Node]) -> list[Node]:
         """d outputs/ds, where `seeds` gives d input/ds for the inputs that depend on s (forward differentiation)."""
@@ -173,16 +216,21 @@ class Tape:
             return self.add(self.mul(rates[step[1]], step[2]), self.mul(step[1], rates[step[2]]))
         if step[0] == "/":
             return self.div(self.sub(rates[step[1]], self.mul(node, rates[step[2]])), step[2])
-        return self.mul(self._slope(step[1], step[2], node), rates[step[2]])
+        if step[0] == "apply":
+            return slope_of_several(self, step[1], arguments, rates)
+        if step[0] == "quad":
+            return self._rate_of_integral(step, rates)
+        return self.mul(slope(self, step, node), rates[step[2]])
 
-    def _slope(self, function: str, x: Node, value: Node) -> Node:
-        """The derivative of a function, from its argument and its value."""
-        if function in _DERIVATIVES:
-            return self.call(_DERIVATIVES[function], x)
-        if function == "cos":
-            return self.neg(self.call("sin", x))
-        if function == "log":
-            return self.div(self.constant(1), x)
-        if function == "sqrt":
-            return self.div(self.constant(Fraction(1, 2)), value)
-        raise ValueError(f"no derivative for {function}")  # pragma: no cover - every function of `calls` is above
+    def _rate_of_integral(self, step: tuple[Any, ...], rates: Mapping[Node, Node]) -> Node:
+        """Through the arguments, and through angles at which the integrand jumps."""
+        integrand, count = step[1], step[2]
+        kinks, arguments = step[3 : 3 + count], step[3 + count :]
+        zero, parts = self.constant(0), []
+        for k, x in enumerate(arguments):
+            if rates[x] != zero:
+                parts.append(self.mul(self.quadrature(integrand.derivative(k), kinks, arguments), rates[x]))
+        for kink in kinks:
+            if rates[kink] != zero:
+                parts.append(self.mul(self._node("jump", integrand, kink, *arguments), rates[kink]))
+        return self.total(parts)

@@ -15,12 +15,14 @@ import sympy as sp
 from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Quotient
 from multiscale.algebra.ring import RingSpec
+from multiscale.clock import Modulus
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
 from multiscale.problem.drives import Drive
 from multiscale.problem.frequencies import Bases, bases_of, denested, eliminated, square_root
 from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_drives
 from multiscale.problem.preparation import Prepared
+from multiscale.problem.projection import Harmonic, TorusMean
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import Detuning, detuning_of
 from multiscale.problem.terms import Layout, match, tabulate
@@ -37,8 +39,10 @@ class Canonical:
     `spec` holds every generator (amplitude pairs ``@zk``, ``@zk~`` first), `meanings` what each coefficient generator
     stands for in the user's symbols, `force` the right-hand sides, `bases` the natural frequencies as rates, `drives`
     the phasors, `slow` the time derivative (in εt) of each slow generator, `detunings` how detunings follow from the
-    frequencies of their relations. `truncated` says that a statement exact in ε
-    was expanded, so that a higher order needs the canonical form anew.
+    frequencies of their relations. `truncated` says that a statement exact in ε was expanded, so that a higher order
+    needs the canonical form anew. `harmonics` are the Fourier coefficients of forces that are not polynomial, `numeric`
+    their spelling for evaluation, `moduli` the moduli of amplitudes among the generators, and `left_out` says in words
+    which harmonics are not there. `torus` are the averages of forces that depend on several phases.
     """
 
     spec: RingSpec
@@ -50,6 +54,11 @@ class Canonical:
     slow: tuple[tuple[str, Frozen], ...]
     detunings: tuple[Detuning, ...]
     truncated: bool
+    harmonics: tuple[Harmonic, ...] = ()
+    numeric: tuple[tuple[str, sp.Expr], ...] = ()
+    moduli: tuple[Modulus, ...] = ()
+    left_out: tuple[str, ...] = ()
+    torus: tuple[TorusMean, ...] = ()
 
 
 @dataclass

@@ -11,6 +11,7 @@ from multiscale.errors import ProblemError, ResonanceError
 from multiscale.forces.polynomial import Term
 from multiscale.linear_part import Rate
 from multiscale.problem.drives import Drive
+from multiscale.problem.laws import LAW
 from multiscale.problem.reading import Reader, unsupported
 from multiscale.problem.terms import Entry, Layout, show
 
@@ -56,7 +57,7 @@ def _misplaced(term: sp.Expr, entry: Entry, k: int, power: int, layout: Layout) 
         )
     if entry.power < power:
         reason = f"its order {entry.power} is below the order {power} of the unknown its equation belongs to"
-    elif len(entry.factors) > 1:
+    elif len(entry.factors) > 1 or entry.factors[0][1] == LAW:
         reason = "a nonlinear term stands at leading order"
     elif _driven(entry):
         reason = "a parametric drive stands at leading order, where coefficients must be constant or slow"

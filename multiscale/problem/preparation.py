@@ -17,6 +17,7 @@ import sympy as sp
 
 from multiscale.errors import ProblemError
 from multiscale.problem.drives import Phasor, with_phasors
+from multiscale.problem.laws import Law
 from multiscale.problem.ordering import with_orders
 from multiscale.problem.relations import Relations, relations_of, taylor
 from multiscale.problem.slow_time import SlowLeaves
@@ -37,6 +38,7 @@ class Prepared:
     leaves: SlowLeaves
     relations: Relations
     truncated: bool
+    laws: tuple[Law, ...] = ()
 
     @property
     def shown(self) -> dict[sp.Symbol, sp.Expr]:

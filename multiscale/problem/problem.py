@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import warnings
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import replace
 from functools import cached_property
 from operator import index
 from typing import Any, SupportsIndex
@@ -12,8 +13,11 @@ import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical, canonical_form
+from multiscale.problem.force_law import ForceLaw, laws_of
+from multiscale.problem.laws import LAW, Law, separated
 from multiscale.problem.ordering import with_orders
 from multiscale.problem.preparation import Prepared, prepare
+from multiscale.problem.projected import with_projections
 from multiscale.problem.reading import unsupported
 from multiscale.problem.relations import Detuning, relation_pairs
 from multiscale.problem.rest import about_rest, rest_positions
@@ -30,9 +34,12 @@ class Problem:
     ----------
     equations : Expr, Eq, or a sequence of them
         An expression means "= 0". Each equation describes one oscillator, u'' + ω²u + … = 0, where ω² is any positive
-        expression; everything else must be small, and polynomial in the unknowns and their first and second time
-        derivatives, or analytic in unknowns that are small: sin(u), 1/(g - u)**2, exp(u), sin(u1 - u2), which are taken
-        by their Taylor polynomials to the order that is asked for. Any consistent units.
+        expression; everything else must be small. Polynomials in the unknowns and their first and second time
+        derivatives go to any order, and so do analytic functions of unknowns that are small (`ordering`): sin(u),
+        1/(g - u)**2, exp(u), sin(u1 - u2), by their Taylor polynomials to the order that is asked for. Where unknowns
+        are not small, other forces, such as ``Abs(v)*v``, ``sign(v)``, ``sin(u)``, ``Max(u - g, 0)``, are averaged over
+        a cycle at first order (homogeneous ones with a continuous derivative also at second), each of one unknown. Any
+        consistent units.
     unknowns : applied function, or a sequence of them
         ``u(t)``, as many as there are equations, all of the same time symbol.
     small : Symbol, optional
@@ -49,6 +56,14 @@ class Problem:
         in every result. A new symbol u_s (or a number) eliminates a parameter by the equilibrium, preferably a load,
         one that acts at u = 0, where it stands linearly or by its square; to choose another, state the relation in
         `resonances`. An expression in the parameters must be a state of rest already. See `states_of_rest`.
+    laws : mapping, optional
+        What undefined functions of unknowns stand for, ``{F: function}``: a function of numbers, a table ``(x, y)`` or
+        a `ForceLaw`, which also takes kinks and a derivative.
+    harmonics : int, optional
+        Of forces that are not polynomial, the highest harmonic kept in the corrections U_n; 21 at second order, at
+        first order none beyond those that the slow flow needs.
+    formal : bool
+        Also carry forces with a kink, such as ``Abs(u)``, to second order, which is formal.
     time : Symbol, optional
         Needed only to check that it is the one meant.
 
@@ -77,7 +92,7 @@ class Problem:
     >>> pulled = u.diff(t, 2) + k*u - V**2/(g - u)**2
     >>> problem = ms.Problem(pulled, u, ordering={u: 1}, about={u: u_s})
     >>> problem.resonances, problem.natural_frequencies
-    (((V**2, k*u_s*(g - u_s)**2),), (sqrt(k)*sqrt(g - 3*u_s)/sqrt(g - u_s),))
+    (((V**2, k*u_s*(g - u_s)**2),), (sqrt(k)*sqrt((g - 3*u_s)/(g - u_s)),))
     """
 
     def __init__(
@@ -90,10 +105,16 @@ class Problem:
         resonances: Mapping[sp.Expr, sp.Expr] | Sequence[sp.Eq] = (),
         about: Mapping[sp.Expr, sp.Expr] | None = None,
         time: sp.Symbol | None = None,
+        laws: Mapping[Any, ForceLaw | Any] | None = None,
+        harmonics: int | None = None,
+        formal: bool = False,
     ) -> None:
         self.unknowns: tuple[sp.Expr, ...] = _unknowns(unknowns)
         self.time: sp.Symbol = _time(self.unknowns, time)
         self.equations: tuple[sp.Expr, ...] = _equations(equations)
+        self.laws: dict[str, ForceLaw] = laws_of(laws or {})
+        self.harmonics: int | None = _harmonics(harmonics)
+        self.formal = bool(formal)
         if len(self.equations) != len(self.unknowns):
             raise ProblemError(
                 f"{len(self.equations)} equations for {len(self.unknowns)} unknowns: as many of each are needed"
@@ -188,8 +209,13 @@ class Problem:
             shown = _jets(self.unknowns, self.time) | prepared.shown
             if self.ordering is not None:
                 shown[self.small] = sp.Integer(1)
-            form = canonical_form(prepared, self._layout, shown, list(self.unknowns))
-            self._canonical[order if form.truncated else None] = form
+            layout, shown = _with_laws(self._layout, shown, prepared.laws)
+            form = canonical_form(prepared, layout, shown, list(self.unknowns))
+            if prepared.laws:
+                form = with_projections(
+                    form, prepared.laws, layout, shown, self.phase, order, self.harmonics, self.formal
+                )
+            self._canonical[order if form.truncated or prepared.laws else None] = form
             return form
         return self._canonical[order]
 
@@ -209,6 +235,14 @@ class Problem:
                     stacklevel=3,
                 )
 
+    @property
+    def phase(self) -> sp.Symbol:
+        """The phase that averages integrate over."""
+        name = "theta"
+        while name in self.names:
+            name += "_u"
+        return sp.Symbol(name, real=True)
+
     @cached_property
     def _layout(self) -> Layout:
         jets = {sp.Symbol(f"@{k}.{d}"): (k, d) for k in range(len(self.unknowns)) for d in (0, 1, 2)}
@@ -223,7 +257,11 @@ class Problem:
             if not any(x.free_symbols & {s for s, jet in jets.items() if jet[0] == k} for x in hidden):
                 raise ProblemError(f"the unknown {u} does not appear in the equations")
         shown = _jets(self.unknowns, self.time)
-        return prepare(hidden, self._layout, self.time, self._powers, self.resonances, self.unknowns, shown, order)
+        laws: tuple[Law, ...] = ()
+        if self.ordering is None:
+            hidden, laws = separated(hidden, self._layout, self.time, shown, self.laws)
+        prepared = prepare(hidden, self._layout, self.time, self._powers, self.resonances, self.unknowns, shown, order)
+        return replace(prepared, laws=_at_resonance(laws, prepared, self.small))
 
     @property
     def _powers(self) -> dict[sp.Symbol, int]:
@@ -270,7 +308,9 @@ class Problem:
 
     def _key(self) -> tuple[Any, ...]:
         ordering = None if self.ordering is None else tuple(sorted(self.ordering.items(), key=str))
-        return (self.equations, self.unknowns, self._given_small, ordering, self.resonances)
+        laws = tuple(sorted(self.laws.items(), key=lambda item: item[0]))
+        kept = (laws, self.harmonics, self.formal)
+        return (self.equations, self.unknowns, self._given_small, ordering, self.resonances, kept)
 
     def __eq__(self, other: object) -> bool:
         return isinstance(other, Problem) and self._key() == other._key()
@@ -285,6 +325,7 @@ class Problem:
         if self.ordering is not None:
             indexed = {self.unknowns.index(x) if x in self.unknowns else x: q for x, q in self.ordering.items()}
             options["ordering"] = indexed
+        options |= {"laws": self.laws, "harmonics": self.harmonics, "formal": self.formal}
         options["resonances"] = [(self.unknowns.index(x) if x in self.unknowns else x, y) for x, y in self.resonances]
         return _rebuilt, (self._hidden(), functions, options)
 
@@ -296,6 +337,27 @@ class Problem:
     def _repr_latex_(self) -> str:
         rows = r" \\ ".join(f"{sp.latex(x)} &= 0" for x in self.equations)
         return rf"$\displaystyle \begin{{aligned}}{rows}\end{{aligned}}$"
+
+
+def _with_laws(
+    layout: Layout, shown: dict[sp.Symbol, sp.Expr], laws: Sequence[Law]
+) -> tuple[Layout, dict[sp.Symbol, sp.Expr]]:
+    """Layout and spelling with the symbols of laws."""
+    real = {sp.Symbol(s.name, real=True): x for s, x in shown.items()}
+    jets = {**layout.jets, **{law.symbol: (n, LAW) for n, law in enumerate(laws)}}
+    return replace(layout, jets=jets), {**shown, **{law.symbol: law.force.xreplace(real) for law in laws}}
+
+
+def _at_resonance(laws: Sequence[Law], prepared: Prepared, small: sp.Symbol) -> tuple[Law, ...]:
+    """Laws with the frequencies that relations eliminate at their leading values."""
+    values = {s: value.subs(small, 0) for s, value in prepared.relations.values}
+    return tuple(replace(law, force=law.force.subs(values)) for law in laws)
+
+
+def _harmonics(given: Any) -> int | None:
+    if given is not None and (isinstance(given, bool) or not isinstance(given, SupportsIndex) or index(given) < 1):
+        raise ProblemError(f"harmonics is {given!r}: expected an integer ≥ 1, the highest harmonic to keep")
+    return None if given is None else index(given)
 
 
 def _jets(unknowns: Sequence[sp.Expr], time: sp.Symbol) -> dict[sp.Symbol, sp.Expr]:
@@ -311,7 +373,8 @@ def _rebuilt(
         named = {unknowns[x] if isinstance(x, int) else x: q for x, q in options["ordering"].items()}
         options = options | {"ordering": named}
     named = {unknowns[x] if isinstance(x, int) else x: y for x, y in options["resonances"]}
-    options = options | {"resonances": named}
+    laws = {sp.Function(name): law for name, law in options["laws"].items()}
+    options = options | {"resonances": named, "laws": laws}
     jets = _jets(unknowns, options["time"])
     return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
 
