@@ -50,3 +50,16 @@ def test_figures_are_written_where_matplotlib_is(study, result, tmp_path):
     pytest.importorskip("matplotlib")
     written = study["figures"](result, tmp_path)
     assert [path.stat().st_size > 10_000 for path in written] == [True, True]
+
+
+def test_approximants_reach_beyond_the_series():
+    reach = runpy.run_path(str(DOCS / "examples" / "reach_of_a_series.py"))
+    rows = {e: values for e, *values in reach["frequencies"]()}
+    # By integration to 13 digits: tests/checks/test_pade.py.
+    exact = {1.0: 0.942955847442, 2.0: 0.823497860144, 3.0: 0.709235531706}
+    for e, (series, rational, quadratic) in rows.items():
+        assert rational == pytest.approx(exact[e], abs=1e-7)
+        assert quadratic == pytest.approx(exact[e], abs=2e-8)
+        assert (abs(series - exact[e]) < 1e-8) == (e == 1.0)
+    amplitudes = [reach["reach"](order).amplitude for order in reach["ORDERS"]]
+    assert amplitudes == sorted(amplitudes)
