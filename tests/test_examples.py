@@ -81,3 +81,16 @@ def test_the_comparison_of_the_loop_sees_a_wrong_coefficient(loop):
     module, result, _, full = loop
     wrong = module["by_slow_flow"](result, module["PARAMETERS"] | {"alpha": 0.75})
     assert np.abs(wrong.frequency - full.frequency).max() > 8e-5
+
+
+def test_approximants_reach_beyond_the_series():
+    reach = runpy.run_path(str(DOCS / "examples" / "reach_of_a_series.py"))
+    rows = {e: values for e, *values in reach["frequencies"]()}
+    # By integration to 13 digits: tests/checks/test_pade.py.
+    exact = {1.0: 0.942955847442, 2.0: 0.823497860144, 3.0: 0.709235531706}
+    for e, (series, rational, quadratic) in rows.items():
+        assert rational == pytest.approx(exact[e], abs=1e-7)
+        assert quadratic == pytest.approx(exact[e], abs=2e-8)
+        assert (abs(series - exact[e]) < 1e-8) == (e == 1.0)
+    amplitudes = [reach["reach"](order).amplitude for order in reach["ORDERS"]]
+    assert amplitudes == sorted(amplitudes)
