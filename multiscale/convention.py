@@ -46,9 +46,10 @@ def obstacle(computation: Computation) -> str:
         return f"the problem has a drive of frequency {moving[0]}, and an extremum depends on the phase to it"
     if canonical.slow:
         return "the problem has parameters that vary slowly, and the peak would vary with them"
-    own = {computation.canonical.spec.pairs[0][0]}
-    if len(tower.ring.spec.pairs) != 1 or any(set(d.images) - own or d.real_images for d in tower.time[1:]):
-        return "the fields are no polynomials in the amplitude"
+    known = dict(canonical.meanings)
+    varying = any(d.real_images for d in tower.time[1:])
+    if varying or len(tower.ring.spec.pairs) != 1 or any(name not in known for name in canonical.spec.reals):
+        return "its coefficients depend on the amplitude otherwise than by powers"
     return ""
 
 
