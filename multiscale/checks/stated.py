@@ -26,6 +26,7 @@ __all__ = ["Stated", "stated"]
 Array = npt.NDArray[Any]
 RightHandSide = Callable[[float, Array], list[float]]
 ITERATIONS = 30
+ROUNDING = 1e-14
 
 
 @dataclass(frozen=True, eq=False)
@@ -77,9 +78,9 @@ def _newton(equations: Callable[[list[float]], Any], n: int) -> list[float]:
         residual, slope = equations(a.tolist())
         step = np.linalg.solve(np.array(slope, dtype=float).reshape(n, n), np.array(residual, dtype=float))
         a = a - step
-        if np.max(np.abs(step)) <= 1e-15 * np.max(np.abs(a)):
-            break
-    return a.tolist()
+        if np.max(np.abs(step)) <= ROUNDING * np.max(np.abs(a)):
+            return a.tolist()
+    raise ArithmeticError("the equations have no highest derivatives near zero")
 
 
 @lru_cache(maxsize=32)

@@ -187,3 +187,11 @@ def test_a_relation_for_a_mode_of_coupled_equations_is_refused():
         coupled.resonances = ((key, 3 + eps * sigma),)
         with pytest.raises(ms.EvaluationError, match="natural frequency of a mode of coupled equations"):
             stated.__wrapped__(coupled)
+
+
+def test_no_acceleration_solves_the_equation():
+    """u'' + ε u''² = −u − … has no real solution far from rest: not-a-number there, a value near rest."""
+    problem = ms.Problem(ddu + u + eps * ddu**2, u, small=eps)
+    near, far = (stated(problem).rhs({"epsilon": 1.0})(0.0, np.array([x, 0.0]))[1] for x in (0.1, 5.0))
+    assert near + 0.1 + near**2 == pytest.approx(0, abs=1e-14)
+    assert math.isnan(far)
