@@ -20,6 +20,9 @@ from multiscale.problem import Problem
 from multiscale.slow_flow import SlowFlow
 
 if TYPE_CHECKING:
+    from multiscale.codegen.c_source import write_c
+    from multiscale.codegen.module import write_module
+    from multiscale.estimate import TermEstimate, estimate_terms
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
@@ -58,12 +61,14 @@ __all__ = [
     "SmallDivisorWarning",
     "Special",
     "StorageError",
+    "TermEstimate",
     "UnsupportedTermError",
     "backbone",
     "critical_drive",
     "effective_cubic",
     "effective_damping",
     "equilibria",
+    "estimate_terms",
     "expand",
     "extend",
     "frequency_response",
@@ -73,39 +78,45 @@ __all__ = [
     "periodic_series",
     "threshold",
     "transition_curves",
+    "write_c",
+    "write_module",
 ]
 
-_RESPONSE = {
-    "Branch": "steady.branches",
-    "CriticalDrive": "steady.critical_drive",
-    "Equilibrium": "steady.equilibria",
-    "Jump": "steady.jumps",
-    "LimitCycle": "orbits.limit_cycles",
-    "Observable": "observable",
-    "Peak": "steady.peak",
-    "PeriodicSeries": "orbits.periodic_series",
-    "Response": "steady.frequency_response",
-    "Special": "steady.sweep",
-    "backbone": "steady.backbone",
-    "critical_drive": "steady.critical_drive",
-    "effective_cubic": "steady.backbone",
-    "effective_damping": "steady.backbone",
-    "equilibria": "steady.equilibria",
-    "frequency_response": "steady.frequency_response",
-    "harmonics": "observable",
-    "limit_cycles": "orbits.limit_cycles",
-    "observable": "observable",
-    "periodic_series": "orbits.periodic_series",
-    "threshold": "tongues.transition_curves",
-    "transition_curves": "tongues.transition_curves",
+_LATER = {
+    "Branch": "response.steady.branches",
+    "CriticalDrive": "response.steady.critical_drive",
+    "Equilibrium": "response.steady.equilibria",
+    "Jump": "response.steady.jumps",
+    "LimitCycle": "response.orbits.limit_cycles",
+    "Observable": "response.observable",
+    "Peak": "response.steady.peak",
+    "PeriodicSeries": "response.orbits.periodic_series",
+    "Response": "response.steady.frequency_response",
+    "Special": "response.steady.sweep",
+    "TermEstimate": "estimate",
+    "backbone": "response.steady.backbone",
+    "critical_drive": "response.steady.critical_drive",
+    "effective_cubic": "response.steady.backbone",
+    "effective_damping": "response.steady.backbone",
+    "equilibria": "response.steady.equilibria",
+    "estimate_terms": "estimate",
+    "frequency_response": "response.steady.frequency_response",
+    "harmonics": "response.observable",
+    "limit_cycles": "response.orbits.limit_cycles",
+    "observable": "response.observable",
+    "periodic_series": "response.orbits.periodic_series",
+    "threshold": "response.tongues.transition_curves",
+    "transition_curves": "response.tongues.transition_curves",
+    "write_c": "codegen.c_source",
+    "write_module": "codegen.module",
 }
 
 
 def __getattr__(name: str) -> Any:
     """The functions on results are imported when first used, which keeps ``import multiscale`` light."""
-    if name not in _RESPONSE:
+    if name not in _LATER:
         raise AttributeError(f"module 'multiscale' has no attribute {name!r}")
-    value = getattr(import_module(f"multiscale.response.{_RESPONSE[name]}"), name)
+    value = getattr(import_module(f"multiscale.{_LATER[name]}"), name)
     globals()[name] = value
     return value
 

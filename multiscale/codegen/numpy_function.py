@@ -6,13 +6,16 @@ import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from functools import cache
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import numpy.typing as npt
 import sympy as sp
 
 from multiscale.errors import EvaluationError
+
+if TYPE_CHECKING:
+    from multiscale.codegen.namespaces import NamespaceFunction
 
 __all__ = ["BoundFunction", "NumpyFunction"]
 
@@ -210,6 +213,12 @@ class NumpyFunction:
         return BoundFunction(
             self, tuple(float(x) if np.ndim(x) == 0 else np.asarray(x, dtype=np.float64) for x in values)
         )
+
+    def with_namespace(self, namespace: Any) -> NamespaceFunction:
+        """The same function on the arrays of another library, ``jax.numpy`` say, to compile, map or differentiate."""
+        from multiscale.codegen.namespaces import NamespaceFunction
+
+        return NamespaceFunction(self, namespace)
 
     def __hash__(self) -> int:
         return hash((self.source, self.parameters, self.shape))
