@@ -23,6 +23,7 @@ import sympy as sp
 from multiscale.computed import Computation
 from multiscale.errors import EvaluationError
 from multiscale.frame import turns
+from multiscale.latex import LONGEST, aligned, note
 from multiscale.level import Views
 from multiscale.problem import Problem
 from multiscale.symbols import Symbols
@@ -33,6 +34,8 @@ if TYPE_CHECKING:
 __all__ = ["SlowFlow"]
 
 FORMS = ("complex", "polar", "cartesian")
+LATEX_TERMS = 400
+"""A notebook shows longer slow flows as a note: already their SymPy form takes long to make."""
 
 
 class SlowFlow:
@@ -203,6 +206,12 @@ class SlowFlow:
             )
         return slow_flow_function(self._problem, self._computation, form, wrt)
 
+    def latex(self, full: bool = False) -> str:
+        """The polar form as displayed equations; long sums are cut after their first terms unless `full`."""
+        size = sum(self._computation.size(n)[1] for n in self._levels)
+        if size > LATEX_TERMS and not full:
+            return note(f"slow flow of order {self._computation.order} with {size} terms; use latex(full=True)")
+        return aligned(((rf"\dot{{{sp.latex(x)}}}", v) for x, v in self.polar.items()), None if full else LONGEST)
+
     def _repr_latex_(self) -> str:
-        rows = [rf"\dot{{{sp.latex(x)}}} &= {sp.latex(value)}" for x, value in self.polar.items()]
-        return r"$\displaystyle \begin{aligned}" + r" \\ ".join(rows) + r"\end{aligned}$"
+        return self.latex()

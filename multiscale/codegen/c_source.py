@@ -159,6 +159,8 @@ def _comment(lines: Iterable[str]) -> list[str]:
     safe = [plain(x).replace("*/", "* /").replace("/*", "/ *").replace("??", "? ?").rstrip("\\") for x in lines]
     if len(safe) == 1 and len(safe[0]) <= WIDTH:
         return [f"/* {safe[0]} */"]
+    if len(safe) == 1:
+        safe = textwrap.wrap(safe[0], WIDTH)
     return ["/*", *(f" * {x}".rstrip() for x in safe), " */"]
 
 

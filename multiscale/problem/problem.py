@@ -11,6 +11,7 @@ from typing import Any, SupportsIndex
 import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
+from multiscale.latex import shortened
 from multiscale.problem.canonical import Canonical, canonical_form
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.reading import unsupported
@@ -243,7 +244,7 @@ class Problem:
         return text if len(text) < 200 else text[:190] + " …"
 
     def _repr_latex_(self) -> str:
-        rows = r" \\ ".join(f"{sp.latex(x)} &= 0" for x in self.equations)
+        rows = r" \\ ".join(f"{shortened(x)} &= 0" for x in self.equations)
         return rf"$\displaystyle \begin{{aligned}}{rows}\end{{aligned}}$"
 
 
