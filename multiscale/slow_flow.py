@@ -171,8 +171,7 @@ class SlowFlow:
         return sp.Add(*p_rate), sp.Add(*q_rate)
 
     def _form(self, form: str) -> dict[sp.Symbol, sp.Expr]:
-        if form not in FORMS:
-            raise EvaluationError(f"form is {form!r}: expected one of {', '.join(map(repr, FORMS))}")
+        _check_form(form)
         return getattr(self, form)  # type: ignore[no-any-return]
 
     def jacobian(self, form: str = "cartesian") -> sp.Matrix:
@@ -197,7 +196,7 @@ class SlowFlow:
         """
         from multiscale.codegen.functions import slow_flow_function
 
-        self._form(form)
+        _check_form(form)
         if wrt not in (None, "state", "parameters"):
             raise EvaluationError(f"wrt is {wrt!r}: expected None, 'state' or 'parameters'")
         if form == "complex" and wrt == "state":
@@ -215,3 +214,8 @@ class SlowFlow:
 
     def _repr_latex_(self) -> str:
         return self.latex()
+
+
+def _check_form(form: str) -> None:
+    if form not in FORMS:
+        raise EvaluationError(f"form is {form!r}: expected one of {', '.join(map(repr, FORMS))}")
