@@ -52,7 +52,9 @@ def run(long: bool = False) -> list[Result]:
     rhs, generating = _once("library", result.slow_flow.to_numpy)
     source, writing = _once("library", lambda: module_source(result, functions=["rhs", "jacobian"]))
     values, state = _arguments(rhs)
+    bound, binding = _once("library", lambda: rhs.bind(dict(zip(rhs.parameters, values, strict=True))))
     calling = in_turns({"library": partial(rhs, 0.0, state, *values)}, repeats=5)
+    bound_calling = in_turns({"library": partial(bound, 0.0, state)}, repeats=5)
     told = f"predicted {estimate.total} terms in fields and D_nA after {estimate.computed} levels, found {actual}"
     rows = [
         alone(f"order {ORDER}: estimate of the number of terms", estimating, note=told),
@@ -60,6 +62,8 @@ def run(long: bool = False) -> list[Result]:
         alone(f"order {ORDER}: coefficients of the slow flow reduced", finishing, note=f"{terms} terms"),
         alone(f"order {ORDER}: function generated and compiled", generating, note=f"{len(rhs.source)} characters"),
         alone(f"order {ORDER}: one call", calling),
+        alone(f"order {ORDER}: parameters fixed, coefficients worked out", binding),
+        alone(f"order {ORDER}: one call at fixed parameters", bound_calling),
         alone(f"order {ORDER}: module with rhs and jacobian", writing, note=f"{len(source)} characters"),
     ]
     return rows + _compared(COMPARED) + (_compared(ORDER) if long else [])
@@ -85,13 +89,18 @@ def _compared(order: int) -> list[Result]:
     values, y = _arguments(rhs)
     if not np.allclose(other(*y, *values), rhs(0.0, y, *values), rtol=1e-9):
         raise RuntimeError("the opponent and the generated function disagree")
-    calling = in_turns(
-        {"library": partial(rhs, 0.0, y, *values), "opponent": partial(other, *y.tolist(), *values)}, repeats=5
-    )
+    bound = rhs.bind(dict(zip(rhs.parameters, values, strict=True)))
+    calls = {
+        "library": partial(rhs, 0.0, y, *values),
+        "bound": partial(bound, 0.0, y),
+        "opponent": partial(other, *y.tolist(), *values),
+    }
+    calling = in_turns(calls, repeats=5)
     made = Rounds(dict(generating.seconds) | dict(lambdifying.seconds))
     case = f"order {order}, {terms} terms"
     return [
         against(f"{case}: generated, against lambdify(cse=True)", made, sense="times faster"),
         against(f"{case}: one call, against lambdify(cse=True)", calling, sense="times faster"),
+        against(f"{case}: one call at fixed parameters", calling, library="bound", sense="times faster"),
         *([] if order == ORDER else [note(f"order {ORDER} by lambdify", "run with --long: takes many minutes")]),
     ]

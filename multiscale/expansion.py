@@ -106,7 +106,7 @@ class Expansion:
                 ) * sp.Symbol(f"omega_{self.problem.unknowns[j].func.__name__}")
         return expressed
 
-    def _frequency_parts(self, mode: int) -> tuple[sp.Expr, ...]:
+    def _check_frequency(self, mode: int) -> None:
         modes = self.computation.modes
         if not isinstance(mode, int) or mode not in range(modes):
             raise MultiscaleError(f"mode is {mode!r}: this expansion has the modes 0 … {modes - 1}")
@@ -116,6 +116,9 @@ class Expansion:
                 f"({', '.join(map(str, self.slow_flow.phases.values())) or self.problem.time}), so the frequency is no "
                 "function of the amplitude: use slow_flow.polar"
             )
+
+    def _frequency_parts(self, mode: int) -> tuple[sp.Expr, ...]:
+        self._check_frequency(mode)
         turns = [self.slow_flow._polar_part(n, mode)[1] for n in range(1, self.order + 1)]
         return (self.problem.natural_frequencies[mode], *turns)
 
@@ -198,7 +201,7 @@ class Expansion:
         """ω at a slow state y (Cartesian in the rotating frame): f(t, y, *parameters), shape B."""
         from multiscale.codegen.functions import frequency_function
 
-        self._frequency_parts(mode)
+        self._check_frequency(mode)
         return frequency_function(self.problem, self.computation, mode)
 
     def latex(self, full: bool = False) -> str:

@@ -20,6 +20,8 @@ if TYPE_CHECKING:
 __all__ = ["BoundFunction", "NumpyFunction"]
 
 Array = npt.NDArray[Any]
+LONG = 20_000
+"""Characters of source from which fixing the parameters works out the coefficients, which takes some milliseconds."""
 _SCALARS = {float, int, np.float64}
 _NUMPY = {"sin": np.sin, "cos": np.cos, "exp": np.exp, "log": np.log, "sqrt": np.sqrt, "conj": np.conjugate}
 _MATH = {"sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log, "sqrt": math.sqrt}
@@ -142,8 +144,17 @@ class NumpyFunction:
             return self._at_scalars(t, y, parameters)
         return self._at_arrays(t, y, parameters)
 
-    def _at_scalars(self, t: Any, y: npt.ArrayLike, parameters: tuple[Any, ...]) -> Array:
-        """One state and scalar parameters: plain Python numbers are several times faster than NumPy scalars."""
+    def _at_scalars(
+        self,
+        t: Any,
+        y: npt.ArrayLike,
+        parameters: tuple[Any, ...],
+        staged: Callable[..., tuple[Any, ...]] | None = None,
+    ) -> Array:
+        """One state and scalar parameters: plain Python numbers are several times faster than NumPy scalars.
+
+        `staged` is the kernel at these parameters, if there is one.
+        """
         state = np.asarray(y)
         if (
             state.ndim != 1
@@ -153,7 +164,9 @@ class NumpyFunction:
         ):
             return self._at_arrays(t, state, parameters)
         try:
-            result = np.array(self._scalar_kernel(t, *state.tolist(), *parameters), dtype=np.float64)
+            values = state.tolist()
+            rows = staged(t, *values) if staged is not None else self._scalar_kernel(t, *values, *parameters)
+            result = np.array(rows, dtype=np.float64)
         except (ArithmeticError, ValueError):
             # Python numbers raise where NumPy gives inf or nan; the array path answers as NumPy does.
             return self._at_arrays(t, state, parameters)
@@ -247,11 +260,25 @@ class BoundFunction:
     parameters: tuple[Any, ...]
 
     def __post_init__(self) -> None:
-        object.__setattr__(self, "_scalar", all(type(x) is float for x in self.parameters))
+        scalar = all(type(x) is float for x in self.parameters)
+        object.__setattr__(self, "_scalar", scalar)
+        object.__setattr__(self, "_staged", self._in_stages() if scalar else None)
+
+    def _in_stages(self) -> Callable[..., tuple[Any, ...]] | None:
+        """A long kernel with its coefficients worked out once."""
+        function = self.function
+        if len(function.source) < LONG or function.is_complex:
+            return None
+        from multiscale.codegen.staging import staged
+
+        return staged(function.source, {name: _MATH[name] for name in function.functions}, self.parameters)
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return type(self), (self.function, self.parameters)
 
     def __call__(self, t: npt.ArrayLike, y: npt.ArrayLike) -> Array:
         if self._scalar and type(t) in _SCALARS:  # type: ignore[attr-defined]
-            return self.function._at_scalars(t, y, self.parameters)
+            return self.function._at_scalars(t, y, self.parameters, self._staged)  # type: ignore[attr-defined]
         return self.function(t, y, *self.parameters)
 
 
