@@ -14,12 +14,13 @@ NAMES = (
     "against_flint_loop",
     "symbolic_parameters",
     "generated_call",
+    "large_flow",
     "frequency_response",
     "periodic_orbit",
     "certificate",
     "import_time",
 )
-LONG = {"periodic_orbit"}
+LONG = {"large_flow", "periodic_orbit"}
 """Benchmarks whose `run` has the option ``long``: opponents that take minutes."""
 RESULTS = Path(__file__).parent / "results"
 

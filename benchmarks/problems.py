@@ -2,11 +2,21 @@
 
 from __future__ import annotations
 
+from itertools import combinations_with_replacement
+
 import sympy as sp
 
 import multiscale as ms
 
-__all__ = ["damped_duffing", "driven_cubic", "one_to_two", "quadratic_and_cubic", "two_coupled", "van_der_pol"]
+__all__ = [
+    "damped_duffing",
+    "driven_cubic",
+    "one_to_two",
+    "quadratic_and_cubic",
+    "three_resonant",
+    "two_coupled",
+    "van_der_pol",
+]
 
 t = sp.Symbol("t", real=True)
 eps, mu, omega, omega_1, omega_2 = sp.symbols("epsilon mu omega omega_1 omega_2", positive=True)
@@ -53,3 +63,22 @@ def driven_cubic() -> ms.Problem:
 def one_to_two() -> ms.Problem:
     """The two coupled oscillators of `two_coupled` with ω_2 = 2ω_1 + εσ."""
     return ms.Problem(COUPLED, [u1, u2], small=eps, resonances={omega_2: 2 * omega_1 + eps * sigma})
+
+
+def three_resonant() -> ms.Problem:
+    """Three oscillators with frequencies ω, ω, 3ω, linear damping and every quartic term in their potential.
+
+    The fifteen coefficients of the potential and the three of damping are symbolic, so the slow flow is long.
+    """
+    unknowns = [sp.Function(f"u{k}")(t) for k in (1, 2, 3)]
+    quartic = combinations_with_replacement(range(3), 4)
+    potential = sum(
+        sp.Symbol("c_" + "".join(str(k + 1) for k in ks), real=True) * sp.prod([unknowns[k] for k in ks])
+        for ks in quartic
+    )
+    damping = sp.symbols("mu_1 mu_2 mu_3", positive=True)
+    equations = [
+        x.diff(t, 2) + (n * omega) ** 2 * x + 2 * eps * c * x.diff(t) + eps * sp.diff(potential, x)
+        for x, n, c in zip(unknowns, (1, 1, 3), damping, strict=True)
+    ]
+    return ms.Problem(equations, unknowns, small=eps)

@@ -29,6 +29,9 @@ if TYPE_CHECKING:
     from multiscale.checks.pade import pade
     from multiscale.checks.taylor_remainder import TaylorRemainder, taylor_remainder
     from multiscale.checks.validity import Validity, validity
+    from multiscale.codegen.c_source import write_c
+    from multiscale.codegen.module import write_module
+    from multiscale.estimate import TermEstimate, estimate_terms
     from multiscale.fitting.model import Fit, fit
     from multiscale.fitting.response import ResponseModel, response_model
     from multiscale.fitting.ring_down import RingDownModel, ring_down_model
@@ -85,6 +88,7 @@ __all__ = [
     "Special",
     "StorageError",
     "TaylorRemainder",
+    "TermEstimate",
     "UnsupportedTermError",
     "Validity",
     "backbone",
@@ -94,6 +98,7 @@ __all__ = [
     "effective_cubic",
     "effective_damping",
     "equilibria",
+    "estimate_terms",
     "expand",
     "extend",
     "fit",
@@ -116,6 +121,8 @@ __all__ = [
     "transition_curves",
     "validity",
     "with_amplitude",
+    "write_c",
+    "write_module",
 ]
 
 _LATER = {
@@ -139,6 +146,7 @@ _LATER = {
     "RingDownModel": "fitting.ring_down",
     "Special": "response.steady.sweep",
     "TaylorRemainder": "checks.taylor_remainder",
+    "TermEstimate": "estimate",
     "Validity": "checks.validity",
     "backbone": "response.steady.backbone",
     "certify": "checks.certificate",
@@ -147,6 +155,7 @@ _LATER = {
     "effective_cubic": "response.steady.backbone",
     "effective_damping": "response.steady.backbone",
     "equilibria": "response.steady.equilibria",
+    "estimate_terms": "estimate",
     "fit": "fitting.model",
     "frequency_response": "response.steady.frequency_response",
     "from_json": "storage.document",
@@ -166,6 +175,8 @@ _LATER = {
     "transition_curves": "response.tongues.transition_curves",
     "validity": "checks.validity",
     "with_amplitude": "checks.amplitude",
+    "write_c": "codegen.c_source",
+    "write_module": "codegen.module",
 }
 
 

@@ -62,6 +62,13 @@ class Computation:
     def modes(self) -> int:
         return len(self.hierarchy.linear_part.modes)
 
+    def size(self, level: int) -> tuple[int, int]:
+        """Terms of the fields of a level in all unknowns, and of its D_nA in all modes, as they stand in the ring."""
+        tower = self.hierarchy.tower
+        images = tower.time[level].images if level else {}
+        changes = (images.get(self._amplitude(a)) for a in range(self.modes))
+        return sum(map(len, tower.jets[0][level])), sum(len(x) for x in changes if x is not None)
+
     def further(self) -> Computation:
         """One more level."""
         return replace(self, hierarchy=next_level(self.hierarchy))

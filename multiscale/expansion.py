@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import logging
 import warnings
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
-from functools import cached_property
+from functools import cached_property, partial
 from operator import index
+from time import perf_counter
 from typing import TYPE_CHECKING, Any, SupportsIndex
 
 import sympy as sp
@@ -21,7 +23,7 @@ from multiscale.errors import (
     ResonanceError,
     SmallDivisorWarning,
 )
-from multiscale.level import Level, Views, polynomials_below
+from multiscale.level import Level, PendingLevel, Views, polynomials_below
 from multiscale.problem import Problem
 from multiscale.remarks import incomplete_cubic, remarks, small_divisors
 from multiscale.slow_flow import SlowFlow
@@ -33,7 +35,8 @@ if TYPE_CHECKING:
 
 __all__ = ["Expansion", "expand", "extend"]
 
-LATEX_LENGTH = 4000
+_LOG = logging.getLogger("multiscale")
+_LOG.addHandler(logging.NullHandler())
 
 
 class _Levels(Mapping[int, Level]):
@@ -112,7 +115,7 @@ class Expansion:
                 ) * sp.Symbol(f"omega_{self.problem.unknowns[j].func.__name__}")
         return expressed
 
-    def _frequency_parts(self, mode: int) -> tuple[sp.Expr, ...]:
+    def _check_frequency(self, mode: int) -> None:
         modes = self.computation.modes
         if not isinstance(mode, int) or mode not in range(modes):
             raise MultiscaleError(f"mode is {mode!r}: this expansion has the modes 0 … {modes - 1}")
@@ -122,6 +125,9 @@ class Expansion:
                 f"({', '.join(map(str, self.slow_flow.phases.values())) or self.problem.time}), so the frequency is no "
                 "function of the amplitude: use slow_flow.polar"
             )
+
+    def _frequency_parts(self, mode: int) -> tuple[sp.Expr, ...]:
+        self._check_frequency(mode)
         turns = [self.slow_flow._polar_part(n, mode)[1] for n in range(1, self.order + 1)]
         return (self.problem.natural_frequencies[mode], *turns)
 
@@ -219,21 +225,12 @@ class Expansion:
         """ω at a slow state y (Cartesian in the rotating frame): f(t, y, *parameters), shape B."""
         from multiscale.codegen.functions import frequency_function
 
-        self._frequency_parts(mode)
+        self._check_frequency(mode)
         return frequency_function(self.problem, self.computation, mode)
 
     def latex(self, full: bool = False) -> str:
         """The slow flow in polar form as LaTeX; results that would be very long are cut unless `full`."""
-        text = self.slow_flow._repr_latex_() if full or self._size < 200 else ""
-        if text and (full or len(text) <= LATEX_LENGTH):
-            return text
-        return rf"$\text{{slow flow of order {self.order} with {self._size} terms; use latex(full=True)}}$"
-
-    @property
-    def _size(self) -> int:
-        c = self.computation
-        changes = [c.change(n, a) for n in range(1, self.order + 1) for a in range(c.modes)]
-        return sum(len(q.numerator) for f in changes for x in f.values() for q in (x.real, x.imag))
+        return self.slow_flow.latex(full)
 
     def _repr_latex_(self) -> str:
         return self.latex()
@@ -251,10 +248,15 @@ def _taken_to(
     problem: Problem, computation: Computation, order: int, on_level: Callable[[Level], object] | None
 ) -> Expansion:
     while computation.order < order:
+        start = perf_counter()
         computation = computation.further()
+        if _LOG.isEnabledFor(logging.INFO):
+            n = computation.order
+            numbers = (n, order, *computation.size(n), perf_counter() - start)
+            _LOG.info("level %d of %d: %d terms in the fields, %d in the slow flow, %.3g s", *numbers)
         if on_level is not None:
-            partial = Expansion(problem, computation.order, computation=computation)
-            if on_level(partial.levels[computation.order]) is False:
+            so_far = Expansion(problem, computation.order, computation=computation)
+            if on_level(PendingLevel(so_far.order, partial(so_far.levels.__getitem__, so_far.order))) is False:
                 break
     return Expansion(problem, computation.order, computation=computation)
 
@@ -281,7 +283,13 @@ def expand(
     order : int ≥ 1
         N: the slow flow holds D_1 … D_N, the fields U_0 … U_N, and the residual of the equations is O(ε^{N+1}).
     on_level : callable, optional
-        Called with each finished `Level`; returning False ends the expansion there.
+        Called with each finished `Level`; returning False ends the expansion there. A `Level` is written out when it is
+        looked at, so a progress bar costs nothing::
+
+            with tqdm.tqdm(total=order) as bar:
+                result = ms.expand(problem, order, on_level=lambda level: bar.update())
+
+        The logger "multiscale" reports each level too, with its number of terms and its time, at the level INFO.
     representation : "auto", "flint" or "sympy"
         The polynomial arithmetic; all give identical results. "auto" takes FLINT when python-flint is installed.
     tolerance : float

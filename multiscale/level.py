@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass, fields
 from fractions import Fraction
 from functools import cached_property
+from typing import Any
 
 import sympy as sp
 
@@ -13,12 +14,13 @@ from multiscale.algebra.polynomial import Frozen
 from multiscale.computed import Computation, Finished
 from multiscale.expressions import Writer
 from multiscale.frame import turns
+from multiscale.latex import aligned
 from multiscale.problem import Problem
 from multiscale.problem.projection import TorusMean, amplitude_of
 from multiscale.symbols import Symbols
 from multiscale.torus import Torus
 
-__all__ = ["Level", "Views", "polynomials_below"]
+__all__ = ["Level", "PendingLevel", "Views", "polynomials_below"]
 
 
 @dataclass(frozen=True)
@@ -53,9 +55,25 @@ class Level:
     divisors: tuple[sp.Expr, ...]
 
     def _repr_latex_(self) -> str:
-        rows = [rf"{sp.latex(left)} &= {sp.latex(self.forcing[u])}" for u, left in self.operator.items()]
-        rows += [rf"{sp.latex(d)} &= {sp.latex(value)}" for d, value in self.solvability.items()]
-        return r"$\displaystyle \begin{aligned}" + r" \\ ".join(rows) + r"\end{aligned}$"
+        rows = [(sp.latex(left), self.forcing[u]) for u, left in self.operator.items()]
+        return aligned([*rows, *((sp.latex(d), value) for d, value in self.solvability.items())])
+
+
+class PendingLevel(Level):
+    """A level that is written out as SymPy when it is looked at: `make` does it."""
+
+    def __init__(self, order: int, make: Callable[[], Level]) -> None:
+        object.__setattr__(self, "order", order)
+        object.__setattr__(self, "_make", make)
+
+    def __getattr__(self, name: str) -> Any:
+        if name.startswith("_"):
+            raise AttributeError(name)
+        self.__dict__.update(self._make().__dict__)
+        return self.__dict__[name]
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return Level, tuple(getattr(self, f.name) for f in fields(self))
 
 
 def _phase(frequency: sp.Expr, time: sp.Symbol) -> sp.Expr:

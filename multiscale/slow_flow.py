@@ -23,6 +23,7 @@ import sympy as sp
 from multiscale.computed import Computation
 from multiscale.errors import EvaluationError
 from multiscale.frame import turns
+from multiscale.latex import LONGEST, aligned, note
 from multiscale.level import Views
 from multiscale.problem import Problem
 from multiscale.symbols import Symbols
@@ -33,6 +34,8 @@ if TYPE_CHECKING:
 __all__ = ["SlowFlow"]
 
 FORMS = ("complex", "polar", "cartesian")
+LATEX_TERMS = 400
+"""A notebook shows longer slow flows as a note: already their SymPy form takes long to make."""
 
 
 class SlowFlow:
@@ -168,8 +171,7 @@ class SlowFlow:
         return self._views.placed(sp.Add(*p_rate), "cartesian"), self._views.placed(sp.Add(*q_rate), "cartesian")
 
     def _form(self, form: str) -> dict[sp.Symbol, sp.Expr]:
-        if form not in FORMS:
-            raise EvaluationError(f"form is {form!r}: expected one of {', '.join(map(repr, FORMS))}")
+        _check_form(form)
         return getattr(self, form)  # type: ignore[no-any-return]
 
     def jacobian(self, form: str = "cartesian") -> sp.Matrix:
@@ -194,7 +196,7 @@ class SlowFlow:
         """
         from multiscale.codegen.functions import slow_flow_function
 
-        self._form(form)
+        _check_form(form)
         if wrt not in (None, "state", "parameters"):
             raise EvaluationError(f"wrt is {wrt!r}: expected None, 'state' or 'parameters'")
         if form == "complex" and wrt == "state":
@@ -203,6 +205,17 @@ class SlowFlow:
             )
         return slow_flow_function(self._problem, self._computation, form, wrt)
 
+    def latex(self, full: bool = False) -> str:
+        """The polar form as displayed equations; long sums are cut after their first terms unless `full`."""
+        size = sum(self._computation.size(n)[1] for n in self._levels)
+        if size > LATEX_TERMS and not full:
+            return note(f"slow flow of order {self._computation.order} with {size} terms; use latex(full=True)")
+        return aligned(((rf"\dot{{{sp.latex(x)}}}", v) for x, v in self.polar.items()), None if full else LONGEST)
+
     def _repr_latex_(self) -> str:
-        rows = [rf"\dot{{{sp.latex(x)}}} &= {sp.latex(value)}" for x, value in self.polar.items()]
-        return r"$\displaystyle \begin{aligned}" + r" \\ ".join(rows) + r"\end{aligned}$"
+        return self.latex()
+
+
+def _check_form(form: str) -> None:
+    if form not in FORMS:
+        raise EvaluationError(f"form is {form!r}: expected one of {', '.join(map(repr, FORMS))}")

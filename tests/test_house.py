@@ -19,8 +19,20 @@ EXACT_ROOMS = sorted(
     for path in ((PACKAGE / room).rglob("*.py") if (PACKAGE / room).is_dir() else [PACKAGE / room])
 )
 # Each room may import from those that stand before it.
-FLOORS = ["errors", "algebra", "tower", "forces", "linear_part", "clock", "hierarchy", "problem", "frame", "computed"]
-FLOORS += ["convention"]
+FLOORS = [
+    "errors",
+    "latex",
+    "algebra",
+    "tower",
+    "forces",
+    "linear_part",
+    "clock",
+    "hierarchy",
+    "problem",
+    "frame",
+    "computed",
+    "convention",
+]
 
 
 def _called_names(tree: ast.AST) -> set[str]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from dataclasses import dataclass
 from fractions import Fraction
 
 import sympy as sp
@@ -31,23 +32,34 @@ __all__ = [
 Key = tuple[int, int, tuple[int, ...]]
 
 
-def _function(
-    problem: Problem,
-    program: Program,
-    state: Sequence[str],
-    outputs: Sequence[Node],
-    shape: tuple[int, ...],
-    heading: str,
-    is_complex: bool = False,
-) -> NumpyFunction:
-    parameters = [str(s.name) for s in program.parameters]
-    arguments = ["time t", *state, *(f"parameter {name}" for name in parameters)]
-    text, functions = source(program.tape, outputs, arguments, heading)
-    defaults = {} if problem.ordering is None else {str(problem.small.name): 1.0}
-    inversions = tuple(_inversion(problem, d) for d in problem.detunings)
-    ready = tuple(defaults.items())
+@dataclass(frozen=True)
+class Routine:
+    """A computation ready to be written in some language: what its outputs are, on the tape of `program`.
+
+    `state` names the inputs that hold the state; `shape` is that of the outputs for one state.
+    """
+
+    program: Program
+    state: tuple[str, ...]
+    outputs: tuple[Node, ...]
+    shape: tuple[int, ...]
+    heading: str
+    is_complex: bool = False
+
+    @property
+    def arguments(self) -> list[str]:
+        """The inputs in the order of every generated function: time, state, parameters."""
+        return ["time t", *self.state, *(f"parameter {s.name}" for s in self.program.parameters)]
+
+
+def _function(problem: Problem, routine: Routine) -> NumpyFunction:
+    parameters = tuple(str(s.name) for s in routine.program.parameters)
+    text, functions = source(routine.program.tape, routine.outputs, routine.arguments, routine.heading)
+    ready = tuple(defaults(problem).items())
+    relations = tuple(_inversion(problem, d) for d in problem.detunings)
+    size, shape = len(routine.state), routine.shape
     laws = _laws_in(functions, problem)
-    return NumpyFunction(text, functions, tuple(parameters), len(state), shape, is_complex, ready, inversions, laws)
+    return NumpyFunction(text, functions, parameters, size, shape, routine.is_complex, ready, relations, laws)
 
 
 def _laws_in(functions: Sequence[str], problem: Problem) -> tuple[tuple[str, Callable[..., object]], ...]:
@@ -60,14 +72,29 @@ def _laws_in(functions: Sequence[str], problem: Problem) -> tuple[tuple[str, Cal
     return tuple((name, available[name]) for name in functions if name in available)
 
 
-def _inversion(problem: Problem, detuning: Detuning) -> Inversion:
+def defaults(problem: Problem) -> dict[str, float]:
+    """Values that a mapping may leave out: the bookkeeping symbol of an `ordering` is 1."""
+    return {} if problem.ordering is None else {str(problem.small.name): 1.0}
+
+
+def inversion_tape(detuning: Detuning) -> tuple[Tape, Node, list[str]]:
+    """(tape, the detuning on it, names of the parameters it is worked out from)."""
     tape = Tape()
     names = sorted(str(s.name) for s in detuning.formula.free_symbols)
-    output = evaluate(tape, detuning.formula, lambda s: tape.input(f"parameter {s.name}"))
-    text, functions = source(tape, [output], [f"parameter {name}" for name in names], "A detuning from frequencies.")
+    return tape, evaluate(tape, detuning.formula, lambda s: tape.input(f"parameter {s.name}")), names
+
+
+def eliminated_names(problem: Problem, detuning: Detuning) -> tuple[str, ...]:
+    """What may be given although it is no parameter any more."""
     parameters = {str(s.name) for s in (*problem.parameters, problem.small)}
     own = [detuning.eliminated] if detuning.eliminated is not None else detuning.formula.free_symbols
-    eliminated = tuple(sorted(name for s in own if (name := str(s.name)) not in parameters))
+    return tuple(sorted(name for s in own if (name := str(s.name)) not in parameters))
+
+
+def _inversion(problem: Problem, detuning: Detuning) -> Inversion:
+    tape, output, names = inversion_tape(detuning)
+    text, functions = source(tape, [output], [f"parameter {name}" for name in names], "A detuning from frequencies.")
+    eliminated = eliminated_names(problem, detuning)
     found = "" if detuning.detuning is None else str(detuning.detuning.name)
     return Inversion(eliminated, found, tuple(names), text, functions)
 
@@ -240,14 +267,19 @@ def _differentiated(
     return _jacobian(program, outputs, inputs), (len(outputs), len(inputs)), heading
 
 
-def slow_flow_function(problem: Problem, computation: Computation, form: str, wrt: str | None) -> NumpyFunction:
+def slow_flow_routine(problem: Problem, computation: Computation, form: str, wrt: str | None) -> Routine:
     """The slow flow in one form, or its Jacobian."""
     program = Program(problem, computation)
     build = {"polar": _polar, "cartesian": _cartesian, "complex": _complex}[form]
     names, outputs = build(program, computation)
     heading = f"Slow flow of order {computation.order}, {form} form"
     outputs, shape, heading = _differentiated(program, names, outputs, wrt, heading)
-    return _function(problem, program, names, outputs, shape, f"{heading}.", is_complex=form == "complex")
+    return Routine(program, tuple(names), tuple(outputs), shape, f"{heading}.", form == "complex")
+
+
+def slow_flow_function(problem: Problem, computation: Computation, form: str, wrt: str | None) -> NumpyFunction:
+    """The slow flow in one form, or its Jacobian, as a NumPy function."""
+    return _function(problem, slow_flow_routine(problem, computation, form, wrt))
 
 
 def _real_field(
@@ -270,9 +302,7 @@ def _real_field(
     return names, lambda series: program.summed(program.grouped(series, turns, half=True), moving, wave)[0]
 
 
-def displacement_function(
-    problem: Problem, computation: Computation, derivative: int, wrt: str | None = None
-) -> NumpyFunction:
+def displacement_routine(problem: Problem, computation: Computation, derivative: int, wrt: str | None) -> Routine:
     """The unknowns (or a time derivative of them) at time t from a slow state, or the Jacobian of these."""
     program = Program(problem, computation)
     names, field = _real_field(program, computation)
@@ -283,7 +313,14 @@ def displacement_function(
     what = ("Unknowns", "Velocities", "Accelerations")[derivative]
     heading = f"{what} through order {computation.order}"
     outputs, shape, heading = _differentiated(program, names, outputs, wrt, heading)
-    return _function(problem, program, names, outputs, shape, f"{heading}.")
+    return Routine(program, tuple(names), tuple(outputs), shape, f"{heading}.")
+
+
+def displacement_function(
+    problem: Problem, computation: Computation, derivative: int, wrt: str | None = None
+) -> NumpyFunction:
+    """The unknowns (or a time derivative of them), or the Jacobian of these, as a NumPy function."""
+    return _function(problem, displacement_routine(problem, computation, derivative, wrt))
 
 
 def observable_function(
@@ -297,22 +334,30 @@ def observable_function(
     for coefficient, products in terms:
         total.append(tape.mul(program.expression(coefficient), field(program.series(products))))
     heading = f"Quantity along the motion, through order {computation.order}."
-    return _function(problem, program, names, [tape.total(total)], (), heading)
+    return _function(problem, Routine(program, tuple(names), (tape.total(total),), (), heading))
 
 
-def frequency_function(problem: Problem, computation: Computation, mode: int) -> NumpyFunction:
-    """ω of one mode at a slow state."""
+def frequency_routine(problem: Problem, computation: Computation, modes: Sequence[int]) -> Routine:
+    """ω of each of `modes` at a slow state."""
     program = Program(problem, computation)
     tape = program.tape
     names, state = _cartesian_state(program, computation.modes)
-    series = {}
-    for m, (_, imag) in _flow(program, computation, mode).items():
-        lowered = (*m[: 2 * mode], m[2 * mode] - 1, *m[2 * mode + 1 :])
-        series[lowered] = (imag, tape.constant(0))
     one = (tape.constant(1), tape.constant(0))
-    correction = program.summed(program.grouped(series, turns), state, lambda key: one)[0]
-    outputs = [tape.add(program.natural_frequency(mode), correction)]
-    return _function(problem, program, names, outputs, (), f"Frequency through order {computation.order}.")
+    outputs = []
+    for mode in modes:
+        series = {}
+        for m, (_, imag) in _flow(program, computation, mode).items():
+            lowered = (*m[: 2 * mode], m[2 * mode] - 1, *m[2 * mode + 1 :])
+            series[lowered] = (imag, tape.constant(0))
+        correction = program.summed(program.grouped(series, turns), state, lambda key: one)[0]
+        outputs.append(tape.add(program.natural_frequency(mode), correction))
+    shape = () if len(outputs) == 1 else (len(outputs),)
+    return Routine(program, tuple(names), tuple(outputs), shape, f"Frequency through order {computation.order}.")
+
+
+def frequency_function(problem: Problem, computation: Computation, mode: int) -> NumpyFunction:
+    """ω of one mode at a slow state as a NumPy function."""
+    return _function(problem, frequency_routine(problem, computation, [mode]))
 
 
 def coefficient_function(problem: Problem, computation: Computation) -> tuple[tuple[Key, ...], NumpyFunction]:
@@ -333,8 +378,8 @@ def coefficient_function(problem: Problem, computation: Computation) -> tuple[tu
     for key, parts in collected.items():
         keys.append(key)
         outputs += [program.tape.total(x for x, _ in parts), program.tape.total(y for _, y in parts)]
-    shape = (len(keys), 2)
-    return tuple(keys), _function(problem, program, [], outputs, shape, "Coefficients of the slow flow, by level.")
+    heading = "Coefficients of the slow flow, by level."
+    return tuple(keys), _function(problem, Routine(program, (), tuple(outputs), (len(keys), 2), heading))
 
 
 def field_coefficient_function(problem: Problem, computation: Computation) -> tuple[tuple[Key, ...], NumpyFunction]:
@@ -343,5 +388,5 @@ def field_coefficient_function(problem: Problem, computation: Computation) -> tu
     levels, unknowns = range(computation.order + 1), range(len(problem.unknowns))
     found = {(n, k, m): c for n in levels for k in unknowns for m, c in computation.field(n, k).items()}
     outputs = [node for c in found.values() for node in (program.quotient(c.real), program.quotient(c.imag))]
-    shape = (len(found), 2)
-    return tuple(found), _function(problem, program, [], outputs, shape, "Coefficients of the fields, by level.")
+    heading = "Coefficients of the fields, by level."
+    return tuple(found), _function(problem, Routine(program, (), tuple(outputs), (len(found), 2), heading))

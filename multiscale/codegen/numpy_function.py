@@ -6,7 +6,7 @@ import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from functools import cache
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import numpy.typing as npt
@@ -15,9 +15,14 @@ import sympy as sp
 from multiscale.codegen.runtime import RUNTIME, IntegralError
 from multiscale.errors import EvaluationError
 
+if TYPE_CHECKING:
+    from multiscale.codegen.namespaces import NamespaceFunction
+
 __all__ = ["BoundFunction", "NumpyFunction"]
 
 Array = npt.NDArray[Any]
+LONG = 20_000
+"""Characters of source from which fixing the parameters works out the coefficients, which takes some milliseconds."""
 _SCALARS = {float, int, np.float64}
 _NUMPY: dict[str, Callable[..., Any]] = {
     "sin": np.sin,
@@ -153,8 +158,17 @@ class NumpyFunction:
             return self._at_scalars(t, y, parameters)
         return self._at_arrays(t, y, parameters)
 
-    def _at_scalars(self, t: Any, y: npt.ArrayLike, parameters: tuple[Any, ...]) -> Array:
-        """One state and scalar parameters: plain Python numbers are several times faster than NumPy scalars."""
+    def _at_scalars(
+        self,
+        t: Any,
+        y: npt.ArrayLike,
+        parameters: tuple[Any, ...],
+        staged: Callable[..., tuple[Any, ...]] | None = None,
+    ) -> Array:
+        """One state and scalar parameters: plain Python numbers are several times faster than NumPy scalars.
+
+        `staged` is the kernel at these parameters, if there is one.
+        """
         state = np.asarray(y)
         if (
             state.ndim != 1
@@ -164,7 +178,9 @@ class NumpyFunction:
         ):
             return self._at_arrays(t, state, parameters)
         try:
-            result = np.array(self._scalar_kernel(t, *state.tolist(), *parameters), dtype=np.float64)
+            values = state.tolist()
+            rows = staged(t, *values) if staged is not None else self._scalar_kernel(t, *values, *parameters)
+            result = np.array(rows, dtype=np.float64)
         except (ArithmeticError, ValueError):
             # Python numbers raise where NumPy gives inf or nan; the array path answers as NumPy does.
             return self._at_arrays(t, state, parameters)
@@ -228,6 +244,12 @@ class NumpyFunction:
             self, tuple(float(x) if np.ndim(x) == 0 else np.asarray(x, dtype=np.float64) for x in values)
         )
 
+    def with_namespace(self, namespace: Any) -> NamespaceFunction:
+        """The same function on the arrays of another library, ``jax.numpy`` say, to compile, map or differentiate."""
+        from multiscale.codegen.namespaces import NamespaceFunction
+
+        return NamespaceFunction(self, namespace)
+
     def __hash__(self) -> int:
         return hash((self.source, self.parameters, self.shape))
 
@@ -256,11 +278,25 @@ class BoundFunction:
     parameters: tuple[Any, ...]
 
     def __post_init__(self) -> None:
-        object.__setattr__(self, "_scalar", all(type(x) is float for x in self.parameters))
+        scalar = all(type(x) is float for x in self.parameters)
+        object.__setattr__(self, "_scalar", scalar)
+        object.__setattr__(self, "_staged", self._in_stages() if scalar else None)
+
+    def _in_stages(self) -> Callable[..., tuple[Any, ...]] | None:
+        """A long kernel with its coefficients worked out once."""
+        function = self.function
+        if len(function.source) < LONG or function.is_complex:
+            return None
+        from multiscale.codegen.staging import staged
+
+        return staged(function.source, {name: _MATH[name] for name in function.functions}, self.parameters)
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return type(self), (self.function, self.parameters)
 
     def __call__(self, t: npt.ArrayLike, y: npt.ArrayLike) -> Array:
         if self._scalar and type(t) in _SCALARS:  # type: ignore[attr-defined]
-            return self.function._at_scalars(t, y, self.parameters)
+            return self.function._at_scalars(t, y, self.parameters, self._staged)  # type: ignore[attr-defined]
         return self.function(t, y, *self.parameters)
 
 

@@ -12,6 +12,7 @@ from typing import Any, SupportsIndex
 import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
+from multiscale.latex import shortened
 from multiscale.problem.canonical import Canonical, canonical_form
 from multiscale.problem.force_law import ForceLaw, laws_of
 from multiscale.problem.laws import LAW, Law, separated
@@ -335,7 +336,7 @@ class Problem:
         return text if len(text) < 200 else text[:190] + " …"
 
     def _repr_latex_(self) -> str:
-        rows = r" \\ ".join(f"{sp.latex(x)} &= 0" for x in self.equations)
+        rows = r" \\ ".join(f"{shortened(x)} &= 0" for x in self.equations)
         return rf"$\displaystyle \begin{{aligned}}{rows}\end{{aligned}}$"
 
 
