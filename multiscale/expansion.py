@@ -98,9 +98,9 @@ class Expansion:
             if multiples:
                 j = multiples[0]
                 first = next(b for b, r in enumerate(rate) if r)
-                expressed[sp.Symbol(f"omega_{self.problem.unknowns[k].func.__name__}")] = sp.Rational(
-                    rate[first], bases.rates[j][first]
-                ) * sp.Symbol(f"omega_{self.problem.unknowns[j].func.__name__}")
+                ratio = sp.Rational(rate[first], bases.rates[j][first])
+                names = self.problem.frequency_names
+                expressed[sp.Symbol(names[k])] = ratio * sp.Symbol(names[j])
         return expressed
 
     def _frequency_parts(self, mode: int) -> tuple[sp.Expr, ...]:
@@ -147,7 +147,7 @@ class Expansion:
         """Divisors assumed non-zero, in slow flow and fields, that no assumption on the symbols makes positive."""
         c = self.computation
         finished = [c.change(n, a) for n in range(1, self.order + 1) for a in range(c.modes)]
-        finished += [c.field(n, k) for n in range(self.order + 1) for k in range(c.modes)]
+        finished += [c.field(n, k) for n in range(self.order + 1) for k in range(c.unknowns)]
         own = {p for _, p in c.canonical.spec.reciprocals}
         divisors = [self.views.writer.polynomial(p) for p in polynomials_below(finished) if p not in own]
         return tuple(d for d in divisors if not d.is_positive)
@@ -165,7 +165,7 @@ class Expansion:
     def _finished(self) -> tuple[Any, ...]:
         c = self.computation
         changes = tuple(tuple(c.change(n, a).items()) for n in range(1, self.order + 1) for a in range(c.modes))
-        return changes, tuple(tuple(c.field(n, k).items()) for n in range(self.order + 1) for k in range(c.modes))
+        return changes, tuple(tuple(c.field(n, k).items()) for n in range(self.order + 1) for k in range(c.unknowns))
 
     def __eq__(self, other: object) -> bool:
         return isinstance(other, Expansion) and self.problem == other.problem and self.equals(other)

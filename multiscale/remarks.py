@@ -54,7 +54,7 @@ def small_divisors(problem: Problem, computation: Computation, tolerance: float)
         return []
     frequencies = [_value(rate, values) / bases.unit for rate in (*bases.rates, *(d.rate for d in drives))]
     found: dict[tuple[int, ...], str] = {}
-    for k, rate in sorted(computation.hierarchy.met):
+    for k, rate in _met(computation):
         turning = _value(rate, values) / bases.unit
         own = bases.rates[k]
         if rate in (own, tuple(-r for r in own)):
@@ -65,6 +65,14 @@ def small_divisors(problem: Problem, computation: Computation, tolerance: float)
         if relation not in found:
             found[relation] = _near_resonance(problem, computation, relation, frequencies)
     return list(found.values())
+
+
+def _met(computation: Computation) -> list[tuple[int, Rate]]:
+    """(mode, rate) for the rates that levels solved for: an oscillator meets those of its own equation, a mode all."""
+    if computation.canonical.operator is None:
+        return sorted(computation.hierarchy.met)
+    rates = sorted({rate for _, rate in computation.hierarchy.met})
+    return [(a, rate) for rate in rates for a in range(computation.modes)]
 
 
 def _value(rate: Rate, values: Sequence[float]) -> float:
@@ -86,13 +94,16 @@ def _near_resonance(
     canonical, modes = computation.canonical, computation.modes
     single = [j for j, n in enumerate(relation) if abs(n) == 1]
     target = max(single or [j for j, n in enumerate(relation) if n], key=lambda j: (j >= modes, frequencies[j]))
-    names = [f"omega_{u.func.__name__}" for u in problem.unknowns] + [str(d.frequency) for d in canonical.drives]
+    names = [*problem.frequency_names, *(str(d.frequency) for d in canonical.drives)]
     exact = [*canonical.frequencies, *(d.frequency for d in canonical.drives)]
     shares = {j: sp.Rational(-n, relation[target]) for j, n in enumerate(relation) if n and j != target}
     text = " + ".join(f"{c}*{names[j]}" for j, c in shares.items())
     near = sum(float(c) * frequencies[j] for j, c in shares.items())
     value = sp.Add(*(c * exact[j] for j, c in shares.items()))
-    key = problem.unknowns[target] if target < modes else canonical.drives[target - modes].frequency
+    if target >= modes:
+        key = canonical.drives[target - modes].frequency
+    else:
+        key = problem.unknowns[target] if canonical.operator is None else sp.Symbol(names[target])
     hint = " (with a symbol for the drive frequency)" if target >= modes and key.is_number else ""
     return (
         f"small divisor: {text} = {near:.6g} is close to {names[target]} = {frequencies[target]:.6g}; "
@@ -104,7 +115,7 @@ def _near_resonance(
 def _all(computation: Computation) -> Iterator[Finished]:
     c = computation
     yield from (c.flow(n, a) for n in range(1, c.order + 1) for a in range(c.modes))
-    yield from (c.field(n, k) for n in range(c.order + 1) for k in range(c.modes))
+    yield from (c.field(n, k) for n in range(c.order + 1) for k in range(c.unknowns))
 
 
 def _unbalanced(computation: Computation) -> list[str]:

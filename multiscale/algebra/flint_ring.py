@@ -47,8 +47,6 @@ class FlintRing(NamedTerms):
         for name, value in spec.roots:
             k = spec.index[name]
             self._squares.append((k, self.generators[k] ** 2 - self.read(dict(value))))
-        # Later roots may have earlier ones in their squares, so they go first.
-        self._squares.reverse()
         self._inverses = [(g, h, self.generators[g] * self.generators[h] - 1) for g, h in spec.inverses]
 
     def constant(self, value: Fraction | int) -> Any:
@@ -69,9 +67,11 @@ class FlintRing(NamedTerms):
 
     def normal(self, x: Any) -> Any:
         degrees = x.degrees()
+        # The square of a root may contain roots after it, so that degrees are looked at again when one was reduced.
         for k, relation in self._squares:
             if degrees[k] > 1:
                 x = x % relation
+                degrees = x.degrees()
         for g, h, relation in self._inverses:
             if degrees[g] and degrees[h]:
                 x = x % relation

@@ -11,7 +11,8 @@ from typing import Any, SupportsIndex
 import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
-from multiscale.problem.canonical import Canonical, canonical_form
+from multiscale.problem.canonical import Canonical
+from multiscale.problem.coupled import Choice, form_of
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.reading import unsupported
 from multiscale.problem.relations import Detuning, relation_pairs
@@ -72,6 +73,8 @@ class Problem:
         ordering: Mapping[sp.Expr, int] | None = None,
         resonances: Mapping[sp.Expr, sp.Expr] | Sequence[sp.Eq] = (),
         time: sp.Symbol | None = None,
+        modes: Sequence[int] | None = None,
+        references: Mapping[int, sp.Expr] | None = None,
     ) -> None:
         self.unknowns: tuple[sp.Expr, ...] = _unknowns(unknowns)
         self.time: sp.Symbol = _time(self.unknowns, time)
@@ -84,6 +87,8 @@ class Problem:
             _ordering(ordering, self.unknowns, self.time) if ordering is not None else None
         )
         self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
+        self.modes: tuple[int, ...] | None = _modes(modes)
+        self.references: dict[int, sp.Expr] = _references(references, self.unknowns)
         beside = [x for x in (*(self.ordering or {}), small) if isinstance(x, sp.Symbol)]
         _check_names({*self._symbols, self.time, *beside}, self.unknowns)
         self._given_small = _small(small, self.ordering, self._symbols, self.time)
@@ -130,8 +135,16 @@ class Problem:
 
     @property
     def natural_frequencies(self) -> tuple[sp.Expr, ...]:
-        """ω of each unknown at leading order, in the user's symbols."""
+        """ω of each mode at leading order, in the user's symbols: of each unknown where the unknowns are uncoupled."""
         return self.canonical(1).frequencies
+
+    @property
+    def frequency_names(self) -> tuple[str, ...]:
+        """What the natural frequencies are called in messages: omega_u for an oscillator u, omega_1, … for modes."""
+        form = self.canonical(1)
+        if form.operator is None:
+            return tuple(f"omega_{u.func.__name__}" for u in self.unknowns)
+        return tuple(f"omega_{a + 1}" for a in range(len(form.frequencies)))
 
     @property
     def drives(self) -> tuple[sp.Expr, ...]:
@@ -158,7 +171,7 @@ class Problem:
             shown = _jets(self.unknowns, self.time) | prepared.shown
             if self.ordering is not None:
                 shown[self.small] = sp.Integer(1)
-            form = canonical_form(prepared, self._layout, shown, list(self.unknowns))
+            form = form_of(prepared, self._layout, shown, list(self.unknowns), self._choice)
             self._canonical[order if form.truncated else None] = form
             return form
         return self._canonical[order]
@@ -178,6 +191,10 @@ class Problem:
                     OrderingWarning,
                     stacklevel=3,
                 )
+
+    @property
+    def _choice(self) -> Choice:
+        return Choice(self.modes, tuple((a, self.unknowns.index(u)) for a, u in sorted(self.references.items())))
 
     @cached_property
     def _layout(self) -> Layout:
@@ -219,7 +236,8 @@ class Problem:
 
     def _key(self) -> tuple[Any, ...]:
         ordering = None if self.ordering is None else tuple(sorted(self.ordering.items(), key=str))
-        return (self.equations, self.unknowns, self._given_small, ordering, self.resonances)
+        references = tuple(sorted(self.references.items()))
+        return (self.equations, self.unknowns, self._given_small, ordering, self.resonances, self.modes, references)
 
     def __eq__(self, other: object) -> bool:
         return isinstance(other, Problem) and self._key() == other._key()
@@ -234,6 +252,10 @@ class Problem:
         if self.ordering is not None:
             indexed = {self.unknowns.index(x) if x in self.unknowns else x: q for x, q in self.ordering.items()}
             options["ordering"] = indexed
+        if self.modes is not None:
+            options["modes"] = self.modes
+        if self.references:
+            options["references"] = {a: self.unknowns.index(u) for a, u in self.references.items()}
         options["resonances"] = [(self.unknowns.index(x) if x in self.unknowns else x, y) for x, y in self.resonances]
         return _rebuilt, (self._hidden(), functions, options)
 
@@ -261,6 +283,8 @@ def _rebuilt(
         options = options | {"ordering": named}
     named = {unknowns[x] if isinstance(x, int) else x: y for x, y in options["resonances"]}
     options = options | {"resonances": named}
+    if "references" in options:
+        options = options | {"references": {a: unknowns[k] for a, k in options["references"].items()}}
     jets = _jets(unknowns, options["time"])
     return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
 
@@ -275,6 +299,26 @@ def _unknowns(given: Any) -> tuple[sp.Expr, ...]:
     if len(set(unknowns)) != len(unknowns):
         raise ProblemError(f"the unknowns {unknowns} repeat: name each once")
     return unknowns
+
+
+def _modes(given: Any) -> tuple[int, ...] | None:
+    if given is None:
+        return None
+    modes = tuple(given) if isinstance(given, Iterable) and not isinstance(given, str) else (given,)
+    if not all(isinstance(a, SupportsIndex) and not isinstance(a, bool) for a in modes):
+        raise ProblemError(f"modes={given!r}: expected the numbers of the modes to carry, by increasing frequency from 0")
+    return tuple(sorted({index(a) for a in modes}))
+
+
+def _references(given: Any, unknowns: tuple[sp.Expr, ...]) -> dict[int, sp.Expr]:
+    result = {}
+    for a, u in dict(given or {}).items():
+        if not isinstance(a, SupportsIndex) or isinstance(a, bool) or u not in unknowns:
+            raise ProblemError(
+                f"references has the entry {a!r}: {u!r}: expected {{number of a mode: unknown that measures it}}"
+            )
+        result[index(a)] = u
+    return result
 
 
 def _time(unknowns: tuple[sp.Expr, ...], given: sp.Symbol | None) -> sp.Symbol:

@@ -1,0 +1,387 @@
+"""The canonical form of problems whose leading order is not one oscillator for each equation.
+
+    L_0(d/dt) u = f,     L_0(s) = M s² + C s + K
+
+Row k of L_0 holds the terms of equation k that are linear in the unknowns and of the lowest power of ε among these;
+everything else is f. The purely imaginary roots of det L_0 are the modes; they must be semi-simple.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import sympy as sp
+
+from multiscale.algebra.matrices import adjugate
+from multiscale.algebra.polynomial import Frozen, freeze
+from multiscale.algebra.reciprocals import inverse, missing
+from multiscale.errors import ProblemError
+from multiscale.forces.polynomial import Term
+from multiscale.linear_part.general import FrozenMatrix, General, Operator
+from multiscale.linear_part.general import Root as ImaginaryRoot
+from multiscale.linear_part.kernel import block_of, covectors, scaled_shapes
+from multiscale.problem.canonical import Canonical, Working, canonical_form, completed, hide, working_copy
+from multiscale.problem.frequencies import Bases, bases_of, denested
+from multiscale.problem.leading import is_driven, misplaced, refuse_resonant_drives
+from multiscale.problem.preparation import Prepared
+from multiscale.problem.radicals import Eliminated, Radicals
+from multiscale.problem.reading import Reader, decimals
+from multiscale.problem.spectrum import Found, imaginary_roots
+from multiscale.problem.terms import Entry, Layout, show, tabulate
+
+__all__ = ["Choice", "form_of"]
+
+
+@dataclass(frozen=True)
+class Choice:
+    """What the user says about modes: which are carried (None: all), and the unknowns in which some are measured."""
+
+    carried: tuple[int, ...] | None = None
+    references: tuple[tuple[int, int], ...] = ()
+
+    def __bool__(self) -> bool:
+        return self.carried is not None or bool(self.references)
+
+
+def form_of(
+    prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr], choice: Choice
+) -> Canonical:
+    """The canonical form: oscillators where each equation is one, else the general form."""
+    reader = Reader(prepared.equations, (*layout.jets, layout.small), shown)
+    tables = [tabulate(reader, x, layout) for x in prepared.equations]
+    if not choice and _are_oscillators(tables):
+        return canonical_form(prepared, layout, shown, names)
+    return coupled_form(prepared, layout, shown, names, choice)
+
+
+def _linear(table: list[Entry]) -> list[Entry]:
+    return [e for e in table if len(e.factors) == 1 and not is_driven(e)]
+
+
+def _leading(table: list[Entry]) -> tuple[int, list[Entry]]:
+    """(power of the row, the terms of L_0 in it)."""
+    linear = _linear(table)
+    power = min((e.power for e in linear), default=0)
+    return power, [e for e in linear if e.power == power]
+
+
+def _are_oscillators(tables: list[list[Entry]]) -> bool:
+    """Whether every equation has the leading terms u'' and u of one unknown, or fewer (which is refused there)."""
+    owners = []
+    for table in tables:
+        jets = {e.factors[0] for e in _leading(table)[1]}
+        owners.append({k for k, _ in jets})
+        if len(owners[-1]) != 1 or not any(d == 2 for _, d in jets) or any(d == 1 for _, d in jets):
+            return False
+    return len(set().union(*owners)) == len(tables)
+
+
+def coupled_form(
+    prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr], choice: Choice
+) -> Canonical:
+    """Raises `ProblemError`, `ResonanceError` or `UnsupportedTermError`, naming the equation or the term."""
+    working = working_copy(prepared, layout)
+    while True:
+        reader = Reader(working.equations, (*layout.jets, layout.small), shown)
+        tables = [tabulate(reader, x, layout) for x in working.equations]
+        for k, table in enumerate(tables):
+            _refuse_misplaced(table, k, reader, layout, names)
+        scales = [_denominator(_leading(table)[1], reader) for table in tables]
+        if any(scale != 1 for scale in scales):
+            working.equations = [
+                sp.expand(scale) * x if scale != 1 else x for scale, x in zip(scales, working.equations, strict=True)
+            ]
+            continue
+        exact = [_with_exact_terms(x, table, layout) for x, table in zip(working.equations, tables, strict=True)]
+        if exact != working.equations:
+            working.equations = exact
+            continue
+        matrices = [_matrix(tables, reader, order) for order in (2, 1, 0)]
+        try:
+            found = imaginary_roots(*matrices, _radicals(working, layout.small), names)
+        except Eliminated:
+            continue
+        return _assembled(working, prepared, layout, shown, names, found, choice)
+
+
+def _refuse_misplaced(table: list[Entry], k: int, reader: Reader, layout: Layout, names: list[sp.Expr]) -> None:
+    power, leading = _leading(table)
+    if not leading:
+        raise ProblemError(
+            f"equation {k + 1} has no linear term: at leading order it must be linear in the unknowns {tuple(names)}"
+        )
+    for e in table:
+        if e not in leading and (e.power < power or (e.power == power and e.factors)):
+            raise misplaced(show(e, reader, layout), e, None, power, layout)
+
+
+def _denominator(entries: list[Entry], reader: Reader) -> sp.Expr:
+    """What makes the leading coefficients of an equation polynomials."""
+    powers: dict[str, int] = {}
+    for e in entries:
+        for monomial, _ in e.coefficient:
+            for name, n in monomial:
+                powers[name] = max(n, powers.get(name, 0))
+    below = {h: p for h, p in reader.ring.spec.reciprocals if h in powers}
+    return sp.Mul(*(reader.expression(p) ** powers[h] for h, p in below.items()))
+
+
+def _with_exact_terms(x: sp.Expr, table: list[Entry], layout: Layout) -> sp.Expr:
+    """Floats in L_0 become the decimals they print as, so that resonance is decided exactly."""
+    power, leading = _leading(table)
+    if not x.atoms(sp.Float):
+        return x
+    jets = {jet: s for s, jet in layout.jets.items()}
+    own = {jets[e.factors[0]] for e in leading}
+    terms = []
+    for term in sp.Add.make_args(sp.expand(x)):
+        found = term.free_symbols & set(layout.jets)
+        linear = len(found) == 1 and found <= own and sp.degree(term, min(found, key=str)) == 1
+        at_power = sp.degree(term, layout.small) == power if layout.small in term.free_symbols else power == 0
+        terms.append(decimals(term) if linear and at_power else term)
+    return sp.Add(*terms)
+
+
+def _matrix(tables: Sequence[list[Entry]], reader: Reader, order: int) -> sp.Matrix:
+    """M, C or K as expressions."""
+    size = len(tables)
+    entries = [[sp.Integer(0)] * size for _ in tables]
+    for k, table in enumerate(tables):
+        for e in _leading(table)[1]:
+            unknown, derivative = e.factors[0]
+            if derivative == order:
+                entries[k][unknown] = reader.expression(e.coefficient)
+    return sp.Matrix(entries)
+
+
+def _radicals(working: Working, small: sp.Symbol) -> Radicals:
+    for symbol, _ in working.relations:
+        working.hidden.pop(symbol, None)
+        working.slow.pop(symbol, None)
+    working.relations.clear()
+    written = {sp.expand(p.base) for x in working.equations for p in x.atoms(sp.Pow) if p.exp == 2 and p.base.is_Add}
+
+    def eliminate(symbol: sp.Symbol, square: sp.Expr) -> bool:
+        known = dict(working.hidden), dict(working.slow)
+        if hide(symbol, square, working):
+            return True
+        working.hidden, working.slow = known
+        return False
+
+    def adjoin(symbol: sp.Symbol, square: sp.Expr) -> None:
+        change = sp.Add(*(sp.diff(square, s) * rate for s, rate in working.slow.items())) / (2 * symbol)
+        working.hidden[symbol] = sp.sqrt(square.subs(working.hidden))
+        if change != 0:
+            working.slow[symbol] = change
+        working.relations.insert(0, (symbol, square))
+
+    return Radicals(eliminate, adjoin, working.relations, {b.subs(small, 0) for b in written})
+
+
+def _assembled(
+    working: Working,
+    prepared: Prepared,
+    layout: Layout,
+    shown: Mapping[sp.Symbol, sp.Expr],
+    names: list[sp.Expr],
+    found: list[Found],
+    choice: Choice,
+) -> Canonical:
+    found = [_positive(f, working.hidden) for f in found]
+    frequencies = denested([f.frequency for f in found])
+    flat = [x for series in working.rates for x in series]
+    reader = Reader(
+        [*working.equations, *frequencies, *flat, *working.slow.values()],
+        (*layout.jets, layout.small),
+        shown,
+        working.relations,
+    )
+    tables = [tabulate(reader, x, layout) for x in working.equations]
+    bases = bases_of(reader, [*frequencies, *(series[0] for series in working.rates)])
+    matrices = [_frozen(tables, order) for order in (2, 1, 0)]
+    meant = [w.subs(working.hidden).subs(prepared.leaves.meanings) for w in frequencies]
+    roots = _roots(matrices, bases, reader, found, meant, choice)
+    operator = Operator(*matrices, tuple(roots))
+    force = []
+    for table in tables:
+        power, leading = _leading(table)
+        weak = [e for e in table if e not in leading]
+        force.append(tuple(Term(e.power - power, e.factors, tuple((m, -c) for m, c in e.coefficient)) for e in weak))
+    carried = [meant[[b for b in bases.rates].index(root.rate)] for root, _ in operator.carried]
+    rates = tuple(root.rate for root, _ in operator.carried) + bases.rates[len(found) :]
+    bases = Bases(bases.values, rates, bases.unit, bases.assumed)
+    own = [frequencies[_place(meant, w)] for w in carried]
+    canonical = completed(working, prepared, reader, bases, force, own, operator)
+    every = [root.rate for root in roots]
+    refuse_resonant_drives(canonical.force, every, canonical.drives, [r.name for r in roots], None, layout)
+    return canonical
+
+
+def _place(values: Sequence[sp.Expr], x: sp.Expr) -> int:
+    return list(values).index(x)
+
+
+def _frozen(tables: Sequence[list[Entry]], order: int) -> FrozenMatrix:
+    size = len(tables)
+    rows: list[tuple[Frozen, ...]] = []
+    for table in tables:
+        row: list[Frozen] = [()] * size
+        for e in _leading(table)[1]:
+            if e.factors[0][1] == order:
+                row[e.factors[0][0]] = e.coefficient
+        rows.append(tuple(row))
+    return tuple(rows)
+
+
+@dataclass(frozen=True)
+class _Kernel:
+    rows: tuple[int, ...]
+    references: tuple[int, ...]
+    shapes: tuple[tuple[Frozen, ...], ...]
+
+
+def _roots(
+    matrices: Sequence[FrozenMatrix],
+    bases: Bases,
+    reader: Reader,
+    found: Sequence[Found],
+    frequencies: Sequence[sp.Expr],
+    choice: Choice,
+) -> list[ImaginaryRoot]:
+    """The roots with their kernels, numbered by increasing frequency where that is decided."""
+    mass, damping, stiffness = matrices
+    linear = General(
+        Operator(mass, damping, stiffness, ()), [dict(b) for b in bases.values], bases.unit, reader.ring
+    )
+    size = len(mass)
+    first_of = list(range(size))
+    kernels = [
+        _kernel(linear, reader, rate, f.multiplicity, w, first_of)
+        for rate, f, w in zip(bases.rates, found, frequencies, strict=False)
+    ]
+    order = _by_frequency(frequencies, kernels)
+    count = sum(f.multiplicity for f in found)
+    carried = range(count) if choice.carried is None else choice.carried
+    _check_choice(choice, count, frequencies)
+    number = taken = 0
+    roots = []
+    for k in order:
+        own = range(number, number + found[k].multiplicity)
+        wanted = {a: u for a, u in choice.references if a in own}
+        kernel = kernels[k]
+        if wanted:
+            preferred = [*wanted.values(), *(u for u in first_of if u not in wanted.values())]
+            kernel = _kernel(linear, reader, bases.rates[k], found[k].multiplicity, frequencies[k], preferred)
+            for a, u in wanted.items():
+                if u not in kernel.references:
+                    raise ProblemError(f"mode {a} does not move the unknown chosen for its amplitude: choose another")
+        inside = [a for a in own if a in carried]
+        if inside and len(inside) < len(own):
+            raise ProblemError(
+                f"modes {list(own)} share the frequency {frequencies[k]}: carry all of them or none, not {inside}"
+            )
+        roots.append(
+            ImaginaryRoot(
+                bases.rates[k],
+                kernel.rows,
+                kernel.references,
+                kernel.shapes,
+                taken if inside else None,
+                str(frequencies[k]),
+            )
+        )
+        number += len(own)
+        taken += len(inside)
+    return roots
+
+
+def _check_choice(choice: Choice, count: int, frequencies: Sequence[sp.Expr]) -> None:
+    asked = [*(choice.carried or ()), *(a for a, _ in choice.references)]
+    strange = [a for a in asked if a not in range(count)]
+    if strange or choice.carried == ():
+        listed = ", ".join(map(str, frequencies))
+        raise ProblemError(
+            f"mode {strange[0] if strange else '()'} was asked for: this problem has the modes 0 … {count - 1}, of "
+            f"frequencies {listed}"
+        )
+
+
+def _kernel(
+    linear: General, reader: Reader, rate: tuple[int, ...], multiplicity: int, frequency: sp.Expr, preferred: list[int]
+) -> _Kernel:
+    ring, linear = reader.ring, linear.in_ring(reader.ring)
+    matrix, slope = linear.matrix(rate), linear.slope(rate)
+    block = block_of(ring, matrix, multiplicity, preferred)
+    if block is not None and multiplicity > 1:
+        bracket = covectors(ring, matrix, slope, block).bracket
+        block = block if adjugate(ring, bracket)[0] else None
+    if block is None:
+        raise ProblemError(
+            f"the frequency {frequency} is a root of multiplicity {multiplicity} of det L_0(s) with fewer independent "
+            "shapes (a defective root, as at the onset of flutter): motions grow like t at leading order, and their "
+            "amplitudes scale with fractional powers of the small parameter, which this library does not expand in. "
+            "State a point beside the coalescence"
+        )
+    if more := missing(ring, [block.determinant]):
+        reader.ring = ring = ring.extended(more)
+        linear = linear.in_ring(ring)
+        matrix = linear.matrix(rate)
+        block = type(block)(
+            block.rows,
+            block.references,
+            [[ring.lift(x) for x in row] for row in block.adjugate],
+            ring.lift(block.determinant),
+        )
+    factor = inverse(ring, block.determinant)
+    shapes = [
+        tuple(freeze(_complex_reduced(reader, ring.normal(factor * x))) for x in shape)
+        for shape in scaled_shapes(ring, matrix, block)
+    ]
+    return _Kernel(block.rows, block.references, tuple(shapes))
+
+
+def _complex_reduced(reader: Reader, x: object) -> dict[tuple[tuple[str, int], ...], object]:
+    """A complex coefficient in reduced form, by name."""
+    ring = reader.ring
+    parts: tuple[dict[tuple[int, ...], object], dict[tuple[int, ...], object]] = ({}, {})
+    for m, c in ring.terms(x):
+        parts[m[0]][(0, *m[1:])] = c
+    real, imag = (reader.reduced(ring.from_terms(part)) if part else {} for part in parts)
+    return real | {tuple(sorted((*m, ("@i", 1)))): c for m, c in imag.items()}
+
+
+def _samples(x: sp.Expr) -> list[float]:
+    """Values of a real expression for a few values of its symbols that agree with their assumptions."""
+    symbols = sorted(x.free_symbols, key=str)
+    values = []
+    for n in range(1, 8):
+        size = [sp.Rational(3 * n + (k * k + 2 * n * k) % 7, 2 + (n + k) % 5) for k in range(len(symbols))]
+        at = {s: -v if s.is_negative else v for s, v in zip(symbols, size, strict=True)}
+        value = sp.N(x.subs(at))
+        if value.is_real:
+            values.append(float(value))
+    return values
+
+
+def _positive(found: Found, hidden: Mapping[sp.Symbol, sp.Expr]) -> Found:
+    """The sign of a root is free where only its square was known: the one that is positive as a rule."""
+    values = _samples(found.frequency.subs(hidden))
+    negative = sum(v < 0 for v in values) > len(values) / 2
+    return Found(-found.frequency, found.multiplicity) if negative else found
+
+
+def _by_frequency(frequencies: Sequence[sp.Expr], kernels: Sequence[_Kernel]) -> list[int]:
+    """By increasing frequency; where parameters may decide otherwise, by the first reference and the order found."""
+    order = sorted(range(len(frequencies)), key=lambda k: kernels[k].references)
+    for i in range(1, len(order)):
+        j = i
+        while j and _is_below(frequencies[order[j]], frequencies[order[j - 1]]):
+            order[j - 1], order[j] = order[j], order[j - 1]
+            j -= 1
+    return order
+
+
+def _is_below(x: sp.Expr, y: sp.Expr) -> bool:
+    values = _samples(y - x)
+    return bool(values) and min(values) > 0
