@@ -26,7 +26,8 @@ class Level:
     Attributes
     ----------
     operator : dict
-        {unknown: L_0 U_n}, the k-th equation standing under the k-th unknown, applied to U_n as a function of the fast time T_0.
+        {unknown: L_0 U_n}, applied to U_n as a function of the fast time T_0; the k-th equation stands under the k-th
+        unknown.
     forcing : dict
         {unknown: right-hand side}, with the solvability conditions of lower levels inserted and the term in D_nA left
         out.

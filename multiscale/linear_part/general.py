@@ -206,15 +206,10 @@ class General:
         return {a: ring.normal(minus * x) for a, x in zip(self.modes_at(rate), changes, strict=True) if x}
 
     def solve(self, part: Mapping[int, Any], rate: Rate) -> dict[int, Any]:
-        ring, plan = self._ring, self._plan(rate)
-        column = self._column(part)
-        if isinstance(plan, _Plain):
-            if plan.reciprocal is None:
-                plan.reciprocal = inverse(ring, plan.determinant)
-            scaled = [ring.normal(-(plan.reciprocal * x)) if x else x for x in column]
-            return {k: x for k, x in enumerate(applied(ring, plan.adjugate, scaled)) if x}
+        ring, column = self._ring, self._column(part)
         plan = self._solvable(rate)
-        assert plan is not None
+        if plan is None:
+            return self._inverted(column, rate)
         secular = self.bracket(self.project(part, rate))
         column = [ring.normal(x + secular[k]) if k in secular else x for k, x in enumerate(column)]
         inner = [x for k, x in enumerate(column) if k not in plan.block.rows]
@@ -222,6 +217,14 @@ class General:
         solved = applied(ring, plan.block.adjugate, [ring.normal(minus * x) if x else x for x in inner])
         others = [k for k in range(self.size) if k not in plan.block.references]
         return {k: x for k, x in zip(others, solved, strict=True) if x}
+
+    def _inverted(self, column: Sequence[Any], rate: Rate) -> dict[int, Any]:
+        ring, plan = self._ring, self._plan(rate)
+        assert isinstance(plan, _Plain)
+        if plan.reciprocal is None:
+            plan.reciprocal = inverse(ring, plan.determinant)
+        scaled = [ring.normal(-(plan.reciprocal * x)) if x else x for x in column]
+        return {k: x for k, x in enumerate(applied(ring, plan.adjugate, scaled)) if x}
 
     def act(self, part: Mapping[int, Any], rate: Rate) -> dict[int, Any]:
         moved = applied(self._ring, self.matrix(rate), self._column(part))

@@ -35,7 +35,7 @@ class Block:
 
 @dataclass(frozen=True)
 class Covectors:
-    """Multiples of the ψ^H and the bracket with the φ, times the same multiple: what the solvability condition needs."""
+    """Multiples of the ψ^H, and their bracket with the φ times the same: what the solvability condition needs."""
 
     rows: list[list[Any]]
     bracket: list[list[Any]]

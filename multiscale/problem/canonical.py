@@ -38,7 +38,8 @@ class Canonical:
     `spec` holds every generator (amplitude pairs ``@zk``, ``@zk~`` first), `meanings` what each coefficient generator
     stands for in the user's symbols, `force` the right-hand sides, `bases` the natural frequencies as rates, `drives`
     the phasors, `slow` the time derivative (in εt) of each slow generator, `detunings` how detunings follow from the
-    frequencies of their relations, `operator` the matrices of L_0 where it is not diag(s² + ω_k²). `truncated` says that a statement exact in ε
+    frequencies of their relations, `operator` the matrices of L_0 where it is not diag(s² + ω_k²). `truncated` says
+    that a statement exact in ε
     was expanded, so that a higher order needs the canonical form anew.
     """
 

@@ -9,39 +9,24 @@ everything else is f. The purely imaginary roots of det L_0 are the modes; they 
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 
 import sympy as sp
 
-from multiscale.algebra.matrices import adjugate
-from multiscale.algebra.polynomial import Frozen, freeze
-from multiscale.algebra.reciprocals import inverse, missing
+from multiscale.algebra.polynomial import Frozen
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
 from multiscale.linear_part.general import FrozenMatrix, General, Operator
-from multiscale.linear_part.general import Root as ImaginaryRoot
-from multiscale.linear_part.kernel import block_of, covectors, scaled_shapes
 from multiscale.problem.canonical import Canonical, Working, canonical_form, completed, hide, working_copy
 from multiscale.problem.frequencies import Bases, bases_of, denested
 from multiscale.problem.leading import is_driven, misplaced, refuse_resonant_drives
+from multiscale.problem.modes import Choice, positive, roots_of
 from multiscale.problem.preparation import Prepared
-from multiscale.problem.radicals import Eliminated, Radicals
+from multiscale.problem.radicals import EliminatedError, Radicals
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.spectrum import Found, imaginary_roots
 from multiscale.problem.terms import Entry, Layout, show, tabulate
 
-__all__ = ["Choice", "form_of"]
-
-
-@dataclass(frozen=True)
-class Choice:
-    """What the user says about modes: which are carried (None: all), and the unknowns in which some are measured."""
-
-    carried: tuple[int, ...] | None = None
-    references: tuple[tuple[int, int], ...] = ()
-
-    def __bool__(self) -> bool:
-        return self.carried is not None or bool(self.references)
+__all__ = ["form_of"]
 
 
 def form_of(
@@ -97,12 +82,19 @@ def coupled_form(
         if exact != working.equations:
             working.equations = exact
             continue
-        matrices = [_matrix(tables, reader, order) for order in (2, 1, 0)]
+        mass, damping, stiffness = (_matrix(tables, reader, order) for order in (2, 1, 0))
+        radicals, weak = _radicals(working, layout.small), _remedy(layout)
         try:
-            found = imaginary_roots(*matrices, _radicals(working, layout.small), names)
-        except Eliminated:
+            found = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
+        except EliminatedError:
             continue
         return _assembled(working, prepared, layout, shown, names, found, choice)
+
+
+def _remedy(layout: Layout) -> str:
+    if layout.ordered:
+        return "Give a symbol for the damping an order in `ordering`"
+    return f"Give damping a factor {layout.small}"
 
 
 def _refuse_misplaced(table: list[Entry], k: int, reader: Reader, layout: Layout, names: list[sp.Expr]) -> None:
@@ -188,7 +180,7 @@ def _assembled(
     found: list[Found],
     choice: Choice,
 ) -> Canonical:
-    found = [_positive(f, working.hidden) for f in found]
+    found = [positive(f, working.hidden) for f in found]
     frequencies = denested([f.frequency for f in found])
     flat = [x for series in working.rates for x in series]
     reader = Reader(
@@ -199,27 +191,24 @@ def _assembled(
     )
     tables = [tabulate(reader, x, layout) for x in working.equations]
     bases = bases_of(reader, [*frequencies, *(series[0] for series in working.rates)])
-    matrices = [_frozen(tables, order) for order in (2, 1, 0)]
-    meant = [w.subs(working.hidden).subs(prepared.leaves.meanings) for w in frequencies]
-    roots = _roots(matrices, bases, reader, found, meant, choice)
-    operator = Operator(*matrices, tuple(roots))
+    mass, damping, stiffness = (_frozen(tables, order) for order in (2, 1, 0))
+    written = [f.shown or w for f, w in zip(found, frequencies, strict=True)]
+    meant = [w.subs(working.hidden).subs(prepared.leaves.meanings) for w in written]
+    linear = General(Operator(mass, damping, stiffness, ()), [dict(b) for b in bases.values], bases.unit, reader.ring)
+    roots = roots_of(linear, bases, reader, found, meant, choice)
+    operator = Operator(mass, damping, stiffness, tuple(roots))
     force = []
     for table in tables:
         power, leading = _leading(table)
         weak = [e for e in table if e not in leading]
         force.append(tuple(Term(e.power - power, e.factors, tuple((m, -c) for m, c in e.coefficient)) for e in weak))
-    carried = [meant[[b for b in bases.rates].index(root.rate)] for root, _ in operator.carried]
+    own = [written[bases.rates.index(root.rate)] for root, _ in operator.carried]
     rates = tuple(root.rate for root, _ in operator.carried) + bases.rates[len(found) :]
     bases = Bases(bases.values, rates, bases.unit, bases.assumed)
-    own = [frequencies[_place(meant, w)] for w in carried]
     canonical = completed(working, prepared, reader, bases, force, own, operator)
     every = [root.rate for root in roots]
     refuse_resonant_drives(canonical.force, every, canonical.drives, [r.name for r in roots], None, layout)
     return canonical
-
-
-def _place(values: Sequence[sp.Expr], x: sp.Expr) -> int:
-    return list(values).index(x)
 
 
 def _frozen(tables: Sequence[list[Entry]], order: int) -> FrozenMatrix:
@@ -232,156 +221,3 @@ def _frozen(tables: Sequence[list[Entry]], order: int) -> FrozenMatrix:
                 row[e.factors[0][0]] = e.coefficient
         rows.append(tuple(row))
     return tuple(rows)
-
-
-@dataclass(frozen=True)
-class _Kernel:
-    rows: tuple[int, ...]
-    references: tuple[int, ...]
-    shapes: tuple[tuple[Frozen, ...], ...]
-
-
-def _roots(
-    matrices: Sequence[FrozenMatrix],
-    bases: Bases,
-    reader: Reader,
-    found: Sequence[Found],
-    frequencies: Sequence[sp.Expr],
-    choice: Choice,
-) -> list[ImaginaryRoot]:
-    """The roots with their kernels, numbered by increasing frequency where that is decided."""
-    mass, damping, stiffness = matrices
-    linear = General(
-        Operator(mass, damping, stiffness, ()), [dict(b) for b in bases.values], bases.unit, reader.ring
-    )
-    size = len(mass)
-    first_of = list(range(size))
-    kernels = [
-        _kernel(linear, reader, rate, f.multiplicity, w, first_of)
-        for rate, f, w in zip(bases.rates, found, frequencies, strict=False)
-    ]
-    order = _by_frequency(frequencies, kernels)
-    count = sum(f.multiplicity for f in found)
-    carried = range(count) if choice.carried is None else choice.carried
-    _check_choice(choice, count, frequencies)
-    number = taken = 0
-    roots = []
-    for k in order:
-        own = range(number, number + found[k].multiplicity)
-        wanted = {a: u for a, u in choice.references if a in own}
-        kernel = kernels[k]
-        if wanted:
-            preferred = [*wanted.values(), *(u for u in first_of if u not in wanted.values())]
-            kernel = _kernel(linear, reader, bases.rates[k], found[k].multiplicity, frequencies[k], preferred)
-            for a, u in wanted.items():
-                if u not in kernel.references:
-                    raise ProblemError(f"mode {a} does not move the unknown chosen for its amplitude: choose another")
-        inside = [a for a in own if a in carried]
-        if inside and len(inside) < len(own):
-            raise ProblemError(
-                f"modes {list(own)} share the frequency {frequencies[k]}: carry all of them or none, not {inside}"
-            )
-        roots.append(
-            ImaginaryRoot(
-                bases.rates[k],
-                kernel.rows,
-                kernel.references,
-                kernel.shapes,
-                taken if inside else None,
-                str(frequencies[k]),
-            )
-        )
-        number += len(own)
-        taken += len(inside)
-    return roots
-
-
-def _check_choice(choice: Choice, count: int, frequencies: Sequence[sp.Expr]) -> None:
-    asked = [*(choice.carried or ()), *(a for a, _ in choice.references)]
-    strange = [a for a in asked if a not in range(count)]
-    if strange or choice.carried == ():
-        listed = ", ".join(map(str, frequencies))
-        raise ProblemError(
-            f"mode {strange[0] if strange else '()'} was asked for: this problem has the modes 0 … {count - 1}, of "
-            f"frequencies {listed}"
-        )
-
-
-def _kernel(
-    linear: General, reader: Reader, rate: tuple[int, ...], multiplicity: int, frequency: sp.Expr, preferred: list[int]
-) -> _Kernel:
-    ring, linear = reader.ring, linear.in_ring(reader.ring)
-    matrix, slope = linear.matrix(rate), linear.slope(rate)
-    block = block_of(ring, matrix, multiplicity, preferred)
-    if block is not None and multiplicity > 1:
-        bracket = covectors(ring, matrix, slope, block).bracket
-        block = block if adjugate(ring, bracket)[0] else None
-    if block is None:
-        raise ProblemError(
-            f"the frequency {frequency} is a root of multiplicity {multiplicity} of det L_0(s) with fewer independent "
-            "shapes (a defective root, as at the onset of flutter): motions grow like t at leading order, and their "
-            "amplitudes scale with fractional powers of the small parameter, which this library does not expand in. "
-            "State a point beside the coalescence"
-        )
-    if more := missing(ring, [block.determinant]):
-        reader.ring = ring = ring.extended(more)
-        linear = linear.in_ring(ring)
-        matrix = linear.matrix(rate)
-        block = type(block)(
-            block.rows,
-            block.references,
-            [[ring.lift(x) for x in row] for row in block.adjugate],
-            ring.lift(block.determinant),
-        )
-    factor = inverse(ring, block.determinant)
-    shapes = [
-        tuple(freeze(_complex_reduced(reader, ring.normal(factor * x))) for x in shape)
-        for shape in scaled_shapes(ring, matrix, block)
-    ]
-    return _Kernel(block.rows, block.references, tuple(shapes))
-
-
-def _complex_reduced(reader: Reader, x: object) -> dict[tuple[tuple[str, int], ...], object]:
-    """A complex coefficient in reduced form, by name."""
-    ring = reader.ring
-    parts: tuple[dict[tuple[int, ...], object], dict[tuple[int, ...], object]] = ({}, {})
-    for m, c in ring.terms(x):
-        parts[m[0]][(0, *m[1:])] = c
-    real, imag = (reader.reduced(ring.from_terms(part)) if part else {} for part in parts)
-    return real | {tuple(sorted((*m, ("@i", 1)))): c for m, c in imag.items()}
-
-
-def _samples(x: sp.Expr) -> list[float]:
-    """Values of a real expression for a few values of its symbols that agree with their assumptions."""
-    symbols = sorted(x.free_symbols, key=str)
-    values = []
-    for n in range(1, 8):
-        size = [sp.Rational(3 * n + (k * k + 2 * n * k) % 7, 2 + (n + k) % 5) for k in range(len(symbols))]
-        at = {s: -v if s.is_negative else v for s, v in zip(symbols, size, strict=True)}
-        value = sp.N(x.subs(at))
-        if value.is_real:
-            values.append(float(value))
-    return values
-
-
-def _positive(found: Found, hidden: Mapping[sp.Symbol, sp.Expr]) -> Found:
-    """The sign of a root is free where only its square was known: the one that is positive as a rule."""
-    values = _samples(found.frequency.subs(hidden))
-    negative = sum(v < 0 for v in values) > len(values) / 2
-    return Found(-found.frequency, found.multiplicity) if negative else found
-
-
-def _by_frequency(frequencies: Sequence[sp.Expr], kernels: Sequence[_Kernel]) -> list[int]:
-    """By increasing frequency; where parameters may decide otherwise, by the first reference and the order found."""
-    order = sorted(range(len(frequencies)), key=lambda k: kernels[k].references)
-    for i in range(1, len(order)):
-        j = i
-        while j and _is_below(frequencies[order[j]], frequencies[order[j - 1]]):
-            order[j - 1], order[j] = order[j], order[j - 1]
-            j -= 1
-    return order
-
-
-def _is_below(x: sp.Expr, y: sp.Expr) -> bool:
-    values = _samples(y - x)
-    return bool(values) and min(values) > 0

@@ -12,7 +12,8 @@ import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical
-from multiscale.problem.coupled import Choice, form_of
+from multiscale.problem.coupled import form_of
+from multiscale.problem.modes import Choice
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.reading import unsupported
 from multiscale.problem.relations import Detuning, relation_pairs
@@ -306,7 +307,9 @@ def _modes(given: Any) -> tuple[int, ...] | None:
         return None
     modes = tuple(given) if isinstance(given, Iterable) and not isinstance(given, str) else (given,)
     if not all(isinstance(a, SupportsIndex) and not isinstance(a, bool) for a in modes):
-        raise ProblemError(f"modes={given!r}: expected the numbers of the modes to carry, by increasing frequency from 0")
+        raise ProblemError(
+            f"modes={given!r}: expected the numbers of the modes to carry, by increasing frequency from 0"
+        )
     return tuple(sorted({index(a) for a in modes}))
 
 

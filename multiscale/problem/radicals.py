@@ -16,10 +16,10 @@ from multiscale.algebra.quotient import reduced
 from multiscale.problem.frequencies import Root, square_root
 from multiscale.problem.reading import Reader
 
-__all__ = ["Eliminated", "Radicals"]
+__all__ = ["EliminatedError", "Radicals"]
 
 
-class Eliminated(Exception):
+class EliminatedError(Exception):
     """A parameter was eliminated: whatever was read before is to be read again."""
 
 
@@ -56,7 +56,7 @@ class Radicals:
         return root.outside if root.radicand == 1 and not _has_root(root.outside) else None
 
     def __call__(self, square: sp.Expr) -> sp.Expr:
-        """√square. Raises `Eliminated`."""
+        """√square. Raises `EliminatedError`."""
         if square.is_Rational:
             return sp.sqrt(square)
         outside = sp.Integer(1)
@@ -66,7 +66,7 @@ class Radicals:
             if not square.free_symbols:
                 return outside * sp.sqrt(square)
             if self._eliminate(sp.Symbol(f"sqrt({square})", positive=True), square):
-                raise Eliminated
+                raise EliminatedError
         above, below = sp.fraction(sp.together(square))
         radicand = sp.expand(above * below)
         symbol = next((s for s, x in self._relations if x == radicand), None)

@@ -15,39 +15,48 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import sympy as sp
 
 from multiscale.errors import MultiscaleError, ProblemError
 from multiscale.problem.radicals import Radicals
+from multiscale.problem.reading import unsupported
 
-__all__ = ["Found", "NoClosedForm", "imaginary_roots"]
+__all__ = ["Found", "NoClosedFormError", "imaginary_roots"]
 
 X = sp.Symbol("@x")
 S = sp.Symbol("@s")
 
 
-class NoClosedForm(MultiscaleError):
+class NoClosedFormError(MultiscaleError):
     """Frequencies that need roots of a polynomial of degree three or more in ω²."""
 
 
 @dataclass(frozen=True)
 class Found:
-    """A frequency and the multiplicity of the root iω in det L_0."""
+    """A frequency, the multiplicity of the root iω in det L_0, and the frequency in the form to print, where another."""
 
     frequency: sp.Expr
     multiplicity: int
+    shown: sp.Expr | None = None
 
 
 def imaginary_roots(
-    mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix, radical: Radicals, names: Sequence[sp.Expr]
+    mass: sp.Matrix,
+    damping: sp.Matrix,
+    stiffness: sp.Matrix,
+    radical: Radicals,
+    names: Sequence[sp.Expr],
+    weak: str,
 ) -> list[Found]:
-    """The frequencies of all oscillations that neither grow nor decay; raises `ProblemError` where there are none."""
+    """The frequencies of all oscillations that neither grow nor decay; raises `ProblemError` where there are none.
+
+    `weak` says how a term is made small.
+    """
     even, odd = _parts(mass, damping, stiffness)
     if even.is_zero and odd.is_zero:
-        missing = [
-            u for k, u in enumerate(names) if not any((*mass[:, k], *damping[:, k], *stiffness[:, k]))
-        ]
+        missing = [u for k, u in enumerate(names) if not any((*mass[:, k], *damping[:, k], *stiffness[:, k]))]
         hint = f"{missing[0]} does not stand in them; " if missing else ""
         raise ProblemError(
             f"the equations at leading order do not determine the unknowns {tuple(names)}: {hint}every unknown needs "
@@ -63,15 +72,29 @@ def imaginary_roots(
     common = sp.gcd(even, odd) if not odd.is_zero else even
     found: list[Found] = []
     for factor, multiplicity in common.factor_list()[1]:
-        found += [Found(w, multiplicity) for w in _frequencies(factor, radical)]
+        for w in _frequencies(factor, radical):
+            found.append(Found(w[0], multiplicity, w[1]) if isinstance(w, tuple) else Found(w, multiplicity))
     if not found:
-        growing = "" if odd.is_zero else " (damping of leading order makes every motion decay)"
-        raise ProblemError(
-            f"nothing oscillates at leading order: det L_0(s) = {_shown(even, odd)} has no root on the imaginary axis"
-            f"{growing}. Give damping a factor of the small parameter (or an order), and for an onset of oscillation "
-            "state the critical value of the parameter plus a small part"
-        )
+        raise _nothing_oscillates(_shown(even, odd), damping, names, weak)
     return found
+
+
+def _nothing_oscillates(
+    determinant: sp.Expr, damping: sp.Matrix, names: Sequence[sp.Expr], weak: str
+) -> MultiscaleError:
+    why = f"det L_0(s) = {determinant} has no root on the imaginary axis"
+    size = len(names)
+    terms = [damping[k, j] * names[j].diff() for k in range(size) for j in range(size) if damping[k, j]]
+    if terms and sp.degree(determinant, sp.Symbol("s")) == 2 * size:
+        return unsupported(
+            ", ".join(map(str, terms)),
+            f"damping stands at leading order, where some mode must be undamped, and {why}",
+            weak,
+        )
+    return ProblemError(
+        f"nothing oscillates at leading order: {why}. {weak}; for an onset of oscillation state the critical value of "
+        "the parameter plus a small part"
+    )
 
 
 def _shown(even: sp.Poly, odd: sp.Poly) -> sp.Expr:
@@ -93,10 +116,10 @@ def _parts(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> tuple[s
         term = c * (-X) ** (power // 2)
         even, odd = (even + term, odd) if power % 2 == 0 else (even, odd + term)
     back = {v: k for k, v in opaque.items()}
-    options = {"extension": radicals} if radicals else {}
     # Parameters stand in the coefficient domain, so that factors are those over the field of all of them.
-    parts = (sp.Poly(sp.expand(x.xreplace(back)), X, **({"field": True} if not options else options)) for x in (even, odd))
-    return next(parts), next(parts)
+    options: dict[str, object] = {"extension": radicals} if radicals else {"field": True}
+    even_part, odd_part = (sp.Poly(sp.expand(x.xreplace(back)), X, **options) for x in (even, odd))
+    return even_part, odd_part
 
 
 def _is_root(x: sp.Expr) -> bool:
@@ -109,8 +132,8 @@ def _opaque(entries: list[list[sp.Expr]]) -> dict[sp.Expr, sp.Expr]:
     return {f: sp.Dummy(f"leaf{k}") for k, f in enumerate(sorted(found, key=str))}
 
 
-def _frequencies(factor: sp.Poly, radical: Radicals) -> list[sp.Expr]:
-    """ω for the positive roots ω² of an irreducible factor."""
+def _frequencies(factor: sp.Poly, radical: Radicals) -> list[Any]:
+    """ω, or (ω, its form to print), for the positive roots ω² of an irreducible factor."""
     if factor.degree() == 1:
         a, b = factor.all_coeffs()
         square = sp.cancel(-b / a)
@@ -126,10 +149,10 @@ def _frequencies(factor: sp.Poly, radical: Radicals) -> list[sp.Expr]:
         )
     if not any(r > 0 for r in factor.real_roots()):
         return []
-    raise NoClosedForm(f"roots of {factor.as_expr()}")
+    raise NoClosedFormError(f"roots of {factor.as_expr()}")
 
 
-def _pair(total: sp.Expr, product: sp.Expr, radical: Radicals) -> list[sp.Expr]:
+def _pair(total: sp.Expr, product: sp.Expr, radical: Radicals) -> list[Any]:
     """The frequencies of x² − total x + product, the smaller first."""
     discriminant = sp.cancel(total**2 - 4 * product)
     if discriminant.is_negative or (discriminant.is_positive and total.is_nonpositive):
@@ -146,7 +169,7 @@ def _pair(total: sp.Expr, product: sp.Expr, radical: Radicals) -> list[sp.Expr]:
     if cyclic is not None:
         # ω_1 = √P/ω_2 with √P = √(PD)/√D, all of it in the field of ω_2.
         lower = cyclic * upper * (inner * total - discriminant) / (2 * product * discriminant)
-        return [sp.expand(lower), upper]
+        return [(sp.expand(lower), sp.sqrt((total - inner) / 2)), upper]
     return [_nested(total, -inner, radical), upper]
 
 
