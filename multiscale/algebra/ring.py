@@ -41,7 +41,8 @@ class RingSpec:
 
     `roots` are pairs (g, p) with g**2 = p, p free of g and of the roots before it; `pairs` are complex-conjugate
     partners, of which those whose first name is in `units` lie on the unit circle (partner = reciprocal): phases.
-    `reciprocals` are pairs (h, p) with h = 1/p, the p primitive (see `polynomial.primitive`), irreducible and pairwise coprime.
+    `reciprocals` are pairs (h, p) with h = 1/p, the p primitive (see `polynomial.primitive`), irreducible and pairwise
+    coprime.
     """
 
     pairs: tuple[tuple[str, str], ...]

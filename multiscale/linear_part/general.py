@@ -100,7 +100,7 @@ class General:
     """A `LinearPart`. Rates count in units of the base frequencies (polynomials by name) divided by `unit`."""
 
     def __init__(self, operator: Operator, bases: Sequence[Polynomial], unit: int, ring: Ring) -> None:
-        self._operator, self._bases, self._unit, self._ring = operator, tuple(bases), unit, ring
+        self.operator, self._bases, self._unit, self._ring = operator, tuple(bases), unit, ring
         self.modes = tuple(Mode(root.rate, root.shapes[k]) for root, k in operator.carried)
         self.size = len(operator.mass)
         self._values = [ring.read({m: c * Fraction(1, unit) for m, c in base.items()}) for base in self._bases]
@@ -112,7 +112,7 @@ class General:
         self._plans: dict[Rate, _Plain | _Singular] = {}
 
     def in_ring(self, ring: Ring) -> General:
-        lifted = General(self._operator, self._bases, self._unit, ring)
+        lifted = General(self.operator, self._bases, self._unit, ring)
         lifted._plans.update((rate, _lifted(ring, plan)) for rate, plan in self._plans.items())
         return lifted
 

@@ -39,8 +39,8 @@ class Canonical:
     stands for in the user's symbols, `force` the right-hand sides, `bases` the natural frequencies as rates, `drives`
     the phasors, `slow` the time derivative (in εt) of each slow generator, `detunings` how detunings follow from the
     frequencies of their relations, `operator` the matrices of L_0 where it is not diag(s² + ω_k²). `truncated` says
-    that a statement exact in ε
-    was expanded, so that a higher order needs the canonical form anew.
+    that a statement exact in ε was expanded, so that a higher order needs the canonical form anew.
+    `named_frequencies` are those of all modes of coupled equations, carried or not.
     """
 
     spec: RingSpec
@@ -53,10 +53,7 @@ class Canonical:
     detunings: tuple[Detuning, ...]
     truncated: bool
     operator: Operator | None = None
-
-    @property
-    def unknowns(self) -> int:
-        return len(self.force)
+    named_frequencies: tuple[sp.Expr, ...] = ()
 
 
 @dataclass
@@ -194,6 +191,7 @@ def completed(
     force: Sequence[tuple[Term, ...]],
     frequencies: Sequence[sp.Expr],
     operator: Operator | None = None,
+    named: Sequence[sp.Expr] = (),
 ) -> Canonical:
     """The canonical form from the forces and the rates of `frequencies` and, after them, of the phasors."""
     renamed = {f"1/({p.symbol.name})": f"{p.symbol.name}~" for p in prepared.phasors}
@@ -227,6 +225,7 @@ def completed(
         tuple(working.detunings),
         prepared.truncated,
         operator,
+        tuple(named),
     )
 
 

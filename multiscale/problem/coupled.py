@@ -8,21 +8,22 @@ everything else is f. The purely imaginary roots of det L_0 are the modes; they 
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 
 import sympy as sp
 
-from multiscale.algebra.polynomial import Frozen
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
-from multiscale.linear_part.general import FrozenMatrix, General, Operator
+from multiscale.linear_part.general import Operator
 from multiscale.problem.canonical import Canonical, Working, canonical_form, completed, hide, working_copy
-from multiscale.problem.frequencies import Bases, bases_of, denested
-from multiscale.problem.leading import is_driven, misplaced, refuse_resonant_drives
+from multiscale.problem.frequencies import Bases
+from multiscale.problem.leading import misplaced, refuse_resonant_drives
+from multiscale.problem.mode_relations import with_mode_relations
 from multiscale.problem.modes import Choice, positive, roots_of
 from multiscale.problem.preparation import Prepared
 from multiscale.problem.radicals import EliminatedError, Radicals
 from multiscale.problem.reading import Reader, decimals
+from multiscale.problem.rows import leading_terms, linear_part, matrix
 from multiscale.problem.spectrum import Found, imaginary_roots
 from multiscale.problem.terms import Entry, Layout, show, tabulate
 
@@ -30,32 +31,26 @@ __all__ = ["form_of"]
 
 
 def form_of(
-    prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr], choice: Choice
+    prepared: Prepared,
+    layout: Layout,
+    shown: Mapping[sp.Symbol, sp.Expr],
+    names: list[sp.Expr],
+    choice: Choice,
+    modes: Mapping[sp.Symbol, int],
 ) -> Canonical:
     """The canonical form: oscillators where each equation is one, else the general form."""
     reader = Reader(prepared.equations, (*layout.jets, layout.small), shown)
     tables = [tabulate(reader, x, layout) for x in prepared.equations]
     if not choice and _are_oscillators(tables):
         return canonical_form(prepared, layout, shown, names)
-    return coupled_form(prepared, layout, shown, names, choice)
-
-
-def _linear(table: list[Entry]) -> list[Entry]:
-    return [e for e in table if len(e.factors) == 1 and not is_driven(e)]
-
-
-def _leading(table: list[Entry]) -> tuple[int, list[Entry]]:
-    """(power of the row, the terms of L_0 in it)."""
-    linear = _linear(table)
-    power = min((e.power for e in linear), default=0)
-    return power, [e for e in linear if e.power == power]
+    return coupled_form(prepared, layout, shown, names, choice, modes)
 
 
 def _are_oscillators(tables: list[list[Entry]]) -> bool:
     """Whether every equation has the leading terms u'' and u of one unknown, or fewer (which is refused there)."""
     owners = []
     for table in tables:
-        jets = {e.factors[0] for e in _leading(table)[1]}
+        jets = {e.factors[0] for e in leading_terms(table)[1]}
         owners.append({k for k, _ in jets})
         if len(owners[-1]) != 1 or not any(d == 2 for _, d in jets) or any(d == 1 for _, d in jets):
             return False
@@ -63,7 +58,12 @@ def _are_oscillators(tables: list[list[Entry]]) -> bool:
 
 
 def coupled_form(
-    prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr], choice: Choice
+    prepared: Prepared,
+    layout: Layout,
+    shown: Mapping[sp.Symbol, sp.Expr],
+    names: list[sp.Expr],
+    choice: Choice,
+    modes: Mapping[sp.Symbol, int],
 ) -> Canonical:
     """Raises `ProblemError`, `ResonanceError` or `UnsupportedTermError`, naming the equation or the term."""
     working = working_copy(prepared, layout)
@@ -72,7 +72,7 @@ def coupled_form(
         tables = [tabulate(reader, x, layout) for x in working.equations]
         for k, table in enumerate(tables):
             _refuse_misplaced(table, k, reader, layout, names)
-        scales = [_denominator(_leading(table)[1], reader) for table in tables]
+        scales = [_denominator(leading_terms(table)[1], reader) for table in tables]
         if any(scale != 1 for scale in scales):
             working.equations = [
                 sp.expand(scale) * x if scale != 1 else x for scale, x in zip(scales, working.equations, strict=True)
@@ -82,13 +82,15 @@ def coupled_form(
         if exact != working.equations:
             working.equations = exact
             continue
-        mass, damping, stiffness = (_matrix(tables, reader, order) for order in (2, 1, 0))
+        mass, damping, stiffness = (matrix(tables, reader, order) for order in (2, 1, 0))
         radicals, weak = _radicals(working, layout.small), _remedy(layout)
         try:
             found = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
         except EliminatedError:
             continue
-        return _assembled(working, prepared, layout, shown, names, found, choice)
+        found = [positive(f, working.hidden) for f in found]
+        found = with_mode_relations(working, prepared, layout, shown, found, modes)
+        return _assembled(working, prepared, layout, shown, found, choice)
 
 
 def _remedy(layout: Layout) -> str:
@@ -98,7 +100,7 @@ def _remedy(layout: Layout) -> str:
 
 
 def _refuse_misplaced(table: list[Entry], k: int, reader: Reader, layout: Layout, names: list[sp.Expr]) -> None:
-    power, leading = _leading(table)
+    power, leading = leading_terms(table)
     if not leading:
         raise ProblemError(
             f"equation {k + 1} has no linear term: at leading order it must be linear in the unknowns {tuple(names)}"
@@ -121,7 +123,7 @@ def _denominator(entries: list[Entry], reader: Reader) -> sp.Expr:
 
 def _with_exact_terms(x: sp.Expr, table: list[Entry], layout: Layout) -> sp.Expr:
     """Floats in L_0 become the decimals they print as, so that resonance is decided exactly."""
-    power, leading = _leading(table)
+    power, leading = leading_terms(table)
     if not x.atoms(sp.Float):
         return x
     jets = {jet: s for s, jet in layout.jets.items()}
@@ -133,18 +135,6 @@ def _with_exact_terms(x: sp.Expr, table: list[Entry], layout: Layout) -> sp.Expr
         at_power = sp.degree(term, layout.small) == power if layout.small in term.free_symbols else power == 0
         terms.append(decimals(term) if linear and at_power else term)
     return sp.Add(*terms)
-
-
-def _matrix(tables: Sequence[list[Entry]], reader: Reader, order: int) -> sp.Matrix:
-    """M, C or K as expressions."""
-    size = len(tables)
-    entries = [[sp.Integer(0)] * size for _ in tables]
-    for k, table in enumerate(tables):
-        for e in _leading(table)[1]:
-            unknown, derivative = e.factors[0]
-            if derivative == order:
-                entries[k][unknown] = reader.expression(e.coefficient)
-    return sp.Matrix(entries)
 
 
 def _radicals(working: Working, small: sp.Symbol) -> Radicals:
@@ -176,48 +166,24 @@ def _assembled(
     prepared: Prepared,
     layout: Layout,
     shown: Mapping[sp.Symbol, sp.Expr],
-    names: list[sp.Expr],
     found: list[Found],
     choice: Choice,
 ) -> Canonical:
-    found = [positive(f, working.hidden) for f in found]
-    frequencies = denested([f.frequency for f in found])
-    flat = [x for series in working.rates for x in series]
-    reader = Reader(
-        [*working.equations, *frequencies, *flat, *working.slow.values()],
-        (*layout.jets, layout.small),
-        shown,
-        working.relations,
-    )
-    tables = [tabulate(reader, x, layout) for x in working.equations]
-    bases = bases_of(reader, [*frequencies, *(series[0] for series in working.rates)])
-    mass, damping, stiffness = (_frozen(tables, order) for order in (2, 1, 0))
-    written = [f.shown or w for f, w in zip(found, frequencies, strict=True)]
+    reader, tables, bases, linear = linear_part(working, layout, shown, found)
+    written = [f.shown or f.frequency for f in found]
     meant = [w.subs(working.hidden).subs(prepared.leaves.meanings) for w in written]
-    linear = General(Operator(mass, damping, stiffness, ()), [dict(b) for b in bases.values], bases.unit, reader.ring)
     roots = roots_of(linear, bases, reader, found, meant, choice)
-    operator = Operator(mass, damping, stiffness, tuple(roots))
+    operator = Operator(linear.operator.mass, linear.operator.damping, linear.operator.stiffness, tuple(roots))
     force = []
     for table in tables:
-        power, leading = _leading(table)
+        power, leading = leading_terms(table)
         weak = [e for e in table if e not in leading]
         force.append(tuple(Term(e.power - power, e.factors, tuple((m, -c) for m, c in e.coefficient)) for e in weak))
     own = [written[bases.rates.index(root.rate)] for root, _ in operator.carried]
     rates = tuple(root.rate for root, _ in operator.carried) + bases.rates[len(found) :]
+    named = [meant[bases.rates.index(root.rate)] for root in roots for _ in root.shapes]
     bases = Bases(bases.values, rates, bases.unit, bases.assumed)
-    canonical = completed(working, prepared, reader, bases, force, own, operator)
+    canonical = completed(working, prepared, reader, bases, force, own, operator, named)
     every = [root.rate for root in roots]
     refuse_resonant_drives(canonical.force, every, canonical.drives, [r.name for r in roots], None, layout)
     return canonical
-
-
-def _frozen(tables: Sequence[list[Entry]], order: int) -> FrozenMatrix:
-    size = len(tables)
-    rows: list[tuple[Frozen, ...]] = []
-    for table in tables:
-        row: list[Frozen] = [()] * size
-        for e in _leading(table)[1]:
-            if e.factors[0][1] == order:
-                row[e.factors[0][0]] = e.coefficient
-        rows.append(tuple(row))
-    return tuple(rows)

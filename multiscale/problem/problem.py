@@ -6,6 +6,7 @@ import warnings
 from collections.abc import Iterable, Mapping, Sequence
 from functools import cached_property
 from operator import index
+from re import fullmatch
 from typing import Any, SupportsIndex
 
 import sympy as sp
@@ -125,6 +126,8 @@ class Problem:
         # What only the natural frequency of an unknown contained is gone where a relation gives that frequency.
         natural = [d.formula.free_symbols for d in form.detunings if d.eliminated is None]
         gone |= set().union(*natural) - used - {self.small}
+        if form.operator is not None:
+            gone |= self._mode_symbols.keys()
         return tuple(sorted(self._symbols - {self._given_small} - gone, key=lambda s: str(s.name)))
 
     @property
@@ -161,7 +164,18 @@ class Problem:
         """An expression with the symbols that relations eliminate replaced by their values."""
         for symbol, value in self._prepared(1).relations.values:
             x = x.subs(symbol, value)
+        named = self._mode_symbols
+        if named and x.free_symbols & named.keys():
+            frequencies = self.canonical(1).named_frequencies
+            x = x.subs({s: frequencies[a] for s, a in named.items() if a < len(frequencies)})
         return x
+
+    @cached_property
+    def _mode_symbols(self) -> dict[sp.Symbol, int]:
+        """{omega_1: 0, …} for the symbols of relations that name natural frequencies of coupled equations."""
+        stated = {s for pair in self.resonances for x in pair if x not in self.unknowns for s in x.free_symbols}
+        apart = stated - set().union(*(x.free_symbols for x in self.equations))
+        return {s: int(m[1]) - 1 for s in apart if (m := fullmatch(r"omega_([1-9]\d*)", s.name))}
 
     def canonical(self, order: int) -> Canonical:
         """The canonical form for an expansion to the given order; most problems have one form for all orders."""
@@ -172,7 +186,7 @@ class Problem:
             shown = _jets(self.unknowns, self.time) | prepared.shown
             if self.ordering is not None:
                 shown[self.small] = sp.Integer(1)
-            form = form_of(prepared, self._layout, shown, list(self.unknowns), self._choice)
+            form = form_of(prepared, self._layout, shown, list(self.unknowns), self._choice, self._mode_symbols)
             self._canonical[order if form.truncated else None] = form
             return form
         return self._canonical[order]
@@ -214,7 +228,9 @@ class Problem:
         powers = {s: orders[u] for s, (k, _) in jets.items() if (u := self.unknowns[k]) in orders}
         powers |= {s: q for s, q in orders.items() if isinstance(s, sp.Symbol)}
         shown = _jets(self.unknowns, self.time)
-        return prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, shown, order)
+        return prepare(
+            hidden, self._layout, self.time, powers, self.resonances, self.unknowns, shown, order, self._mode_symbols
+        )
 
     def _hidden(self) -> list[sp.Expr]:
         """The equations with a symbol for each unknown and derivative."""

@@ -35,7 +35,7 @@ class NoClosedFormError(MultiscaleError):
 
 @dataclass(frozen=True)
 class Found:
-    """A frequency, the multiplicity of the root iω in det L_0, and the frequency in the form to print, where another."""
+    """A frequency, the multiplicity of the root iω in det L_0, and the form in which to print it, where another."""
 
     frequency: sp.Expr
     multiplicity: int
