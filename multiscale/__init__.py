@@ -22,6 +22,7 @@ from multiscale.slow_flow import SlowFlow
 if TYPE_CHECKING:
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
+    from multiscale.response.orbits.onset import Onset, onset
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
     from multiscale.response.steady.backbone import backbone, effective_cubic, effective_damping
     from multiscale.response.steady.branches import Branch
@@ -47,6 +48,7 @@ __all__ = [
     "MultiscaleError",
     "NumpyFunction",
     "Observable",
+    "Onset",
     "OrderingWarning",
     "Peak",
     "PeriodicSeries",
@@ -70,6 +72,7 @@ __all__ = [
     "harmonics",
     "limit_cycles",
     "observable",
+    "onset",
     "periodic_series",
     "threshold",
     "transition_curves",
@@ -82,6 +85,7 @@ _RESPONSE = {
     "Jump": "steady.jumps",
     "LimitCycle": "orbits.limit_cycles",
     "Observable": "observable",
+    "Onset": "orbits.onset",
     "Peak": "steady.peak",
     "PeriodicSeries": "orbits.periodic_series",
     "Response": "steady.frequency_response",
@@ -95,6 +99,7 @@ _RESPONSE = {
     "harmonics": "observable",
     "limit_cycles": "orbits.limit_cycles",
     "observable": "observable",
+    "onset": "orbits.onset",
     "periodic_series": "orbits.periodic_series",
     "threshold": "tongues.transition_curves",
     "transition_curves": "tongues.transition_curves",

@@ -13,15 +13,18 @@ from functools import cache, cached_property
 from typing import Any, TypeAlias
 
 from multiscale.algebra.choice import make_ring
+from multiscale.algebra.complex_ring import ComplexRing
 from multiscale.algebra.derivation import Derivation
 from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Coefficient, finish
-from multiscale.algebra.ring import Exponents, Ring
+from multiscale.algebra.ring import Exponents, Ring, RingSpec
 from multiscale.clock import Clock
+from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import PolynomialForce
 from multiscale.frame import Frame, frame_of
 from multiscale.hierarchy import Hierarchy, next_level, sorted_by_rate, start
 from multiscale.linear_part import LinearPart, Rate
+from multiscale.linear_part.dense import Dense
 from multiscale.linear_part.general import General
 from multiscale.linear_part.oscillators import Oscillators
 from multiscale.problem.canonical import Canonical
@@ -187,18 +190,32 @@ class Computation:
         return Snapshot(ring.spec.reciprocals, fields, changes)
 
 
+def _ring(canonical: Canonical, spec: RingSpec, representation: str) -> Ring:
+    if canonical.operator is None or not canonical.operator.numeric:
+        return make_ring(spec, representation)
+    if representation not in ("auto", "complex"):
+        raise ProblemError(
+            f"representation is {representation!r}, but the natural frequencies have no closed form: the coefficients "
+            "can only be floating-point numbers here, representation='complex' (or 'auto')"
+        )
+    values = {name: float(x) for name, x in canonical.meanings if x.is_number}
+    return ComplexRing(spec, values)
+
+
 def _linear_part(canonical: Canonical, ring: Ring) -> LinearPart:
     bases = canonical.bases
     values = [dict(b) for b in bases.values]
     if canonical.operator is None:
         return Oscillators(bases.rates, values, bases.unit, ring)
+    if canonical.operator.numeric:
+        return Dense(canonical.operator, values, bases.unit, ring)
     return General(canonical.operator, values, bases.unit, ring)
 
 
 def begin(canonical: Canonical, representation: str, reciprocals: Iterable[tuple[str, Frozen]] = ()) -> Computation:
     """Level 0 in a ring of the given representation."""
     more = [r for r in reciprocals if r not in canonical.spec.reciprocals]
-    ring = make_ring(canonical.spec.with_reciprocals(more), representation)
+    ring = _ring(canonical, canonical.spec.with_reciprocals(more), representation)
     bases, drives = canonical.bases, canonical.drives
     linear = _linear_part(canonical, ring)
     turning = [*bases.rates, *(d.rate for d in drives)]

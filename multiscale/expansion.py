@@ -16,6 +16,7 @@ from multiscale.errors import MultiscaleError, OrderingWarning, ProblemError, Re
 from multiscale.level import Level, Views, polynomials_below
 from multiscale.problem import Problem
 from multiscale.remarks import incomplete_cubic, remarks, small_divisors
+from multiscale.shapes import ModeShape, mode_shapes
 from multiscale.slow_flow import SlowFlow
 from multiscale.solution import FORMS, field_writer, solution
 from multiscale.symbols import Symbols, symbols_of
@@ -78,6 +79,16 @@ class Expansion:
     def views(self) -> Views:
         """How finished coefficients are written; for functions that work on an expansion."""
         return Views(self.problem, self.computation, self.symbols)
+
+    @cached_property
+    def modes(self) -> tuple[ModeShape, ...]:
+        """Frequency, shape and reference of each mode; where the unknowns are uncoupled, one for each unknown."""
+        return mode_shapes(self.problem, self.computation, self.views.writer)
+
+    @property
+    def representation(self) -> str:
+        """The arithmetic that computed the coefficients: "sympy" or "flint" (both exact), or "complex"."""
+        return self.computation.representation
 
     @cached_property
     def levels(self) -> Mapping[int, Level]:

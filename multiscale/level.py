@@ -79,7 +79,8 @@ class Views:
 
     @cached_property
     def writer(self) -> Writer:
-        return Writer(dict(self._computation.canonical.meanings))
+        canonical = self._computation.canonical
+        return Writer(dict(canonical.meanings), dict(canonical.spec.reciprocals))
 
     def phase_of(self, row: Sequence[Fraction]) -> sp.Expr:
         """Σ row_f ω_f t + Σ row_l θ_l: a combination of natural phases and angles of drives, in time."""

@@ -46,12 +46,13 @@ class Root:
 
 @dataclass(frozen=True)
 class Operator:
-    """The matrices of L_0 and its purely imaginary roots, as data."""
+    """The matrices of L_0 and its purely imaginary roots, as data; `numeric` where these have no closed form."""
 
     mass: FrozenMatrix
     damping: FrozenMatrix
     stiffness: FrozenMatrix
     roots: tuple[Root, ...]
+    numeric: bool = False
 
     @property
     def polynomials(self) -> list[Frozen]:

@@ -61,7 +61,8 @@ class Working:
     """Equations, phasor rates and slow rates, in which parameters are eliminated together.
 
     `hidden` are the symbols of radicals and what they stand for; those in `relations` eliminate no parameter, so that
-    their squares are relations of the ring, a radical standing before those inside it.
+    their squares are relations of the ring, a radical standing before those inside it; those in `numbers` have
+    no closed form.
     """
 
     equations: list[sp.Expr]
@@ -71,6 +72,7 @@ class Working:
     hidden: dict[sp.Symbol, sp.Expr]
     detunings: list[Detuning]
     relations: list[tuple[sp.Symbol, sp.Expr]] = field(default_factory=list)
+    numbers: list[sp.Symbol] = field(default_factory=list)
 
     def replace(self, symbol: sp.Symbol, value: sp.Expr) -> None:
         self.equations = [x.subs(symbol, value) for x in self.equations]

@@ -9,12 +9,12 @@ everything else is f. The purely imaginary roots of det L_0 are the modes; they 
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 import sympy as sp
 
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
-from multiscale.linear_part.general import Operator
 from multiscale.problem.canonical import Canonical, Working, canonical_form, completed, hide, working_copy
 from multiscale.problem.frequencies import Bases
 from multiscale.problem.leading import misplaced, refuse_resonant_drives
@@ -141,7 +141,10 @@ def _radicals(working: Working, small: sp.Symbol) -> Radicals:
     for symbol, _ in working.relations:
         working.hidden.pop(symbol, None)
         working.slow.pop(symbol, None)
+    for symbol in working.numbers:
+        working.hidden.pop(symbol, None)
     working.relations.clear()
+    working.numbers.clear()
     written = {sp.expand(p.base) for x in working.equations for p in x.atoms(sp.Pow) if p.exp == 2 and p.base.is_Add}
 
     def eliminate(symbol: sp.Symbol, square: sp.Expr) -> bool:
@@ -158,7 +161,13 @@ def _radicals(working: Working, small: sp.Symbol) -> Radicals:
             working.slow[symbol] = change
         working.relations.insert(0, (symbol, square))
 
-    return Radicals(eliminate, adjoin, working.relations, {b.subs(small, 0) for b in written})
+    def name(value: sp.Expr) -> sp.Symbol:
+        symbol = sp.Symbol(f"@w{len(working.numbers)}", positive=True)
+        working.numbers.append(symbol)
+        working.hidden[symbol] = sp.Float(value, 17)
+        return symbol
+
+    return Radicals(eliminate, adjoin, working.relations, name, {b.subs(small, 0) for b in written})
 
 
 def _assembled(
@@ -173,7 +182,7 @@ def _assembled(
     written = [f.shown or f.frequency for f in found]
     meant = [w.subs(working.hidden).subs(prepared.leaves.meanings) for w in written]
     roots = roots_of(linear, bases, reader, found, meant, choice)
-    operator = Operator(linear.operator.mass, linear.operator.damping, linear.operator.stiffness, tuple(roots))
+    operator = replace(linear.operator, roots=tuple(roots))
     force = []
     for table in tables:
         power, leading = leading_terms(table)

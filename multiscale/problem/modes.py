@@ -6,15 +6,16 @@ unknown. The shape of a mode is 1 in its *reference* (the first unknown that tak
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
-from typing import Any
+from operator import index
+from typing import Any, SupportsIndex
 
 import sympy as sp
 
 from multiscale.algebra.matrices import adjugate
-from multiscale.algebra.polynomial import Frozen, Monomial, freeze
+from multiscale.algebra.polynomial import Monomial, freeze
 from multiscale.algebra.reciprocals import inverse, missing
 from multiscale.algebra.ring import Exponents
 from multiscale.errors import ProblemError
@@ -22,10 +23,11 @@ from multiscale.linear_part.general import General
 from multiscale.linear_part.general import Root as ImaginaryRoot
 from multiscale.linear_part.kernel import block_of, covectors, scaled_shapes
 from multiscale.problem.frequencies import Bases
+from multiscale.problem.numeric import Kernel, defective, numeric_kernel
 from multiscale.problem.reading import Reader
 from multiscale.problem.spectrum import Found
 
-__all__ = ["Choice", "positive", "roots_of"]
+__all__ = ["Choice", "modes_given", "numbering", "positive", "references_given", "roots_of"]
 
 
 @dataclass(frozen=True)
@@ -39,28 +41,31 @@ class Choice:
         return self.carried is not None or bool(self.references)
 
 
-@dataclass(frozen=True)
-class _Kernel:
-    rows: tuple[int, ...]
-    references: tuple[int, ...]
-    shapes: tuple[tuple[Frozen, ...], ...]
+def modes_given(given: Any) -> tuple[int, ...] | None:
+    if given is None:
+        return None
+    modes = tuple(given) if isinstance(given, Iterable) and not isinstance(given, str) else (given,)
+    if not all(isinstance(a, SupportsIndex) and not isinstance(a, bool) for a in modes):
+        raise ProblemError(
+            f"modes={given!r}: expected the numbers of the modes to carry, by increasing frequency from 0"
+        )
+    return tuple(sorted({index(a) for a in modes}))
 
-    def arranged(self, number: int, wanted: Mapping[int, int]) -> _Kernel:
-        """The modes `number`, `number` + 1, … in the order that gives each its reference in `wanted`."""
-        free = [u for u in self.references if u not in wanted.values()]
-        order = [wanted[a] if a in wanted else free.pop(0) for a in range(number, number + len(self.references))]
-        if sorted(order) != sorted(self.references):
+
+def references_given(given: Any, unknowns: tuple[sp.Expr, ...]) -> dict[int, sp.Expr]:
+    result = {}
+    for a, u in dict(given or {}).items():
+        if not isinstance(a, SupportsIndex) or isinstance(a, bool) or u not in unknowns:
             raise ProblemError(
-                f"an unknown chosen in `references` for the modes {sorted(wanted)} does not move in them, or moves in "
-                "proportion to another one chosen: choose an unknown that takes part in the mode"
+                f"references has the entry {a!r}: {u!r}: expected {{number of a mode: unknown that measures it}}"
             )
-        places = [self.references.index(u) for u in order]
-        return _Kernel(self.rows, tuple(order), tuple(self.shapes[k] for k in places))
+        result[index(a)] = u
+    return result
 
 
 def _kernels(
     linear: General, bases: Bases, reader: Reader, found: Sequence[Found], frequencies: Sequence[sp.Expr]
-) -> list[_Kernel]:
+) -> list[Kernel]:
     return [
         _kernel(linear, reader, rate, f.multiplicity, w, list(range(linear.size)))
         for rate, f, w in zip(bases.rates, found, frequencies, strict=False)
@@ -132,7 +137,9 @@ def _check_choice(choice: Choice, count: int, frequencies: Sequence[sp.Expr]) ->
 
 def _kernel(
     linear: General, reader: Reader, rate: tuple[int, ...], multiplicity: int, frequency: sp.Expr, preferred: list[int]
-) -> _Kernel:
+) -> Kernel:
+    if linear.operator.numeric:
+        return numeric_kernel(linear.operator, reader, frequency, multiplicity, preferred)
     ring, linear = reader.ring, linear.in_ring(reader.ring)
     matrix, slope = linear.matrix(rate), linear.slope(rate)
     block = block_of(ring, matrix, multiplicity, preferred)
@@ -140,12 +147,7 @@ def _kernel(
         bracket = covectors(ring, matrix, slope, block).bracket
         block = block if adjugate(ring, bracket)[0] else None
     if block is None:
-        raise ProblemError(
-            f"the frequency {frequency} is a root of multiplicity {multiplicity} of det L_0(s) with fewer independent "
-            "shapes (a defective root, as at the onset of flutter): motions grow like t at leading order, and their "
-            "amplitudes scale with fractional powers of the small parameter, which this library does not expand in. "
-            "State a point beside the coalescence"
-        )
+        raise defective(frequency, multiplicity)
     if more := missing(ring, [block.determinant]):
         reader.ring = ring = ring.extended(more)
         linear = linear.in_ring(ring)
@@ -161,7 +163,7 @@ def _kernel(
         tuple(freeze(_complex_reduced(reader, ring.normal(factor * x))) for x in shape)
         for shape in scaled_shapes(ring, matrix, block)
     ]
-    return _Kernel(block.rows, block.references, tuple(shapes))
+    return Kernel(block.rows, block.references, tuple(shapes))
 
 
 def _complex_reduced(reader: Reader, x: Any) -> dict[Monomial, Fraction]:
@@ -194,7 +196,7 @@ def positive(found: Found, hidden: Mapping[sp.Symbol, sp.Expr]) -> Found:
     return replace(found, frequency=-found.frequency) if negative else found
 
 
-def _by_frequency(frequencies: Sequence[sp.Expr], kernels: Sequence[_Kernel]) -> list[int]:
+def _by_frequency(frequencies: Sequence[sp.Expr], kernels: Sequence[Kernel]) -> list[int]:
     """By increasing frequency; where parameters may decide otherwise, by the first reference and the order found."""
     order = sorted(range(len(frequencies)), key=lambda k: kernels[k].references)
     for i in range(1, len(order)):

@@ -14,7 +14,8 @@ import sympy as sp
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical
 from multiscale.problem.coupled import form_of
-from multiscale.problem.modes import Choice
+from multiscale.problem.matrices import equations_of, size_of
+from multiscale.problem.modes import Choice, modes_given, references_given
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.reading import unsupported
 from multiscale.problem.relations import Detuning, relation_pairs
@@ -29,9 +30,10 @@ class Problem:
     Parameters
     ----------
     equations : Expr, Eq, or a sequence of them
-        An expression means "= 0". Each equation describes one oscillator, u'' + ω²u + … = 0, where ω² is any positive
-        expression; everything else must be polynomial in the unknowns and their first and second time derivatives, and
-        small. Any consistent units.
+        An expression means "= 0". At leading order the equations are linear with constant coefficients: one oscillator
+        each, u'' + ω²u + … = 0, or coupled, gyroscopic, damped and of first or second order as they come, with at least
+        one motion that neither grows nor decays. Everything else must be polynomial in the unknowns and their first and
+        second time derivatives, and small. Any consistent units.
     unknowns : applied function, or a sequence of them
         ``u(t)``, as many as there are equations, all of the same time symbol.
     small : Symbol, optional
@@ -41,10 +43,17 @@ class Problem:
         then made by the library as a bookkeeping symbol whose value is 1, and results are in the user's own unknowns.
     resonances : mapping, or sequence of Eq, optional
         Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol,
-        its square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies
-        in exact rational ratio are resonant without a relation.
+        its square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. For coupled
+        equations the symbols ``omega_1``, ``omega_2``, … mean the natural frequencies of the modes, on either side.
+        Frequencies in exact rational ratio are resonant without a relation.
     time : Symbol, optional
         Needed only to check that it is the one meant.
+    modes : sequence of int, optional
+        The modes to carry, numbered from 0 by increasing frequency; default all. The others are taken to be at rest but
+        for what the carried ones force on them; modes that decay at leading order are never carried.
+    references : mapping, optional
+        ``{mode: unknown}``: the coordinate in which the amplitude of a mode is measured, if not the first unknown that
+        takes part in it.
 
     Raises
     ------
@@ -89,14 +98,77 @@ class Problem:
             _ordering(ordering, self.unknowns, self.time) if ordering is not None else None
         )
         self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
-        self.modes: tuple[int, ...] | None = _modes(modes)
-        self.references: dict[int, sp.Expr] = _references(references, self.unknowns)
+        self.modes: tuple[int, ...] | None = modes_given(modes)
+        self.references: dict[int, sp.Expr] = references_given(references, self.unknowns)
         beside = [x for x in (*(self.ordering or {}), small) if isinstance(x, sp.Symbol)]
         _check_names({*self._symbols, self.time, *beside}, self.unknowns)
         self._given_small = _small(small, self.ordering, self._symbols, self.time)
         self._canonical: dict[int | None, Canonical] = {}
         self.canonical(1)
         self._warn_of_finite_detunings()
+
+    @classmethod
+    def from_matrices(
+        cls,
+        M: Any = None,
+        C: Any = None,
+        G: Any = None,
+        K: Any = None,
+        *,
+        quadratic: Any = None,
+        cubic: Any = None,
+        drive: Sequence[sp.Expr] | None = None,
+        small: sp.Symbol | None = None,
+        unknowns: Sequence[sp.Expr] | None = None,
+        orders: Mapping[str, int] | None = None,
+        **options: Any,
+    ) -> Problem:
+        """The problem M u'' + (ε^p C + G) u' + K u + ε^q Q(u, u) + ε^r T(u, u, u) = ε^s drive.
+
+        Parameters
+        ----------
+        M, C, G, K : matrices (SymPy, NumPy or nested sequences)
+            Inertia, weak damping, gyroscopic (or other leading) damping, stiffness, of shape (N, N); K need not be
+            symmetric. Without M the equations are of first order, and C stands at leading order.
+        quadratic, cubic : mapping or array, optional
+            Coefficients Q_ijk and T_ijkl as ``{(i, j, k): c}``, ``{(i, j, k, l): c}`` with the equation first and every
+            product of unknowns written once or as often as wished (entries add up), or arrays (N, N, N), (N, N, N, N).
+        drive : sequence of N expressions, optional
+            Forces on the right-hand side, such as ``f*cos(Omega*t)``.
+        small : Symbol, optional
+            Default: a positive ``epsilon``.
+        unknowns : sequence of applied functions, optional
+            Default: ``u_1(t)``, ``u_2(t)``, …
+        orders : mapping, optional
+            The powers of `small`, by default ``{"C": 2, "quadratic": 1, "cubic": 2, "drive": 2}``: amplitudes of order
+            ε, damping of the size of the cubic terms. ``{"C": 0}`` puts damping at leading order.
+        **options
+            `resonances`, `modes`, `references` as for `Problem`.
+
+        Raises
+        ------
+        ProblemError
+            Shapes or indices that do not fit.
+
+        Examples
+        --------
+        >>> import multiscale as ms
+        >>> problem = ms.Problem.from_matrices([[1, 0], [0, 1]], K=[[3, -1], [-1, 3]], cubic={(0, 0, 0, 0): 1})
+        >>> problem.natural_frequencies
+        (sqrt(2), 2)
+        """
+        matrices = {"M": M, "C": C, "G": G, "K": K}
+        time = sp.Symbol("t", real=True)
+        if unknowns is None:
+            unknowns = [sp.Function(f"u_{k + 1}")(time) for k in range(size_of(matrices))]
+        else:
+            unknowns = _unknowns(unknowns)
+            time = _time(unknowns, None)
+        small = sp.Symbol("epsilon", positive=True) if small is None else small
+        tensors = {"quadratic": quadratic, "cubic": cubic}
+        return cls(
+            equations_of(matrices, tensors, drive, unknowns, time, small, orders), unknowns, small=small, **options
+        )
 
     @cached_property
     def small(self) -> sp.Symbol:
@@ -316,28 +388,6 @@ def _unknowns(given: Any) -> tuple[sp.Expr, ...]:
     if len(set(unknowns)) != len(unknowns):
         raise ProblemError(f"the unknowns {unknowns} repeat: name each once")
     return unknowns
-
-
-def _modes(given: Any) -> tuple[int, ...] | None:
-    if given is None:
-        return None
-    modes = tuple(given) if isinstance(given, Iterable) and not isinstance(given, str) else (given,)
-    if not all(isinstance(a, SupportsIndex) and not isinstance(a, bool) for a in modes):
-        raise ProblemError(
-            f"modes={given!r}: expected the numbers of the modes to carry, by increasing frequency from 0"
-        )
-    return tuple(sorted({index(a) for a in modes}))
-
-
-def _references(given: Any, unknowns: tuple[sp.Expr, ...]) -> dict[int, sp.Expr]:
-    result = {}
-    for a, u in dict(given or {}).items():
-        if not isinstance(a, SupportsIndex) or isinstance(a, bool) or u not in unknowns:
-            raise ProblemError(
-                f"references has the entry {a!r}: {u!r}: expected {{number of a mode: unknown that measures it}}"
-            )
-        result[index(a)] = u
-    return result
 
 
 def _time(unknowns: tuple[sp.Expr, ...], given: sp.Symbol | None) -> sp.Symbol:

@@ -27,7 +27,8 @@ class Radicals:
     """Takes square roots.
 
     `eliminate(symbol, square)` says whether a parameter was eliminated by symbol² = square, `adjoin(symbol, square)`
-    notes a relation of the ring; `relations` are those so far, a symbol before those in its square.
+    notes a relation of the ring, `name(value)` gives a symbol for a number; `relations` are those so far, a symbol
+    before those in its square.
     """
 
     def __init__(
@@ -35,9 +36,11 @@ class Radicals:
         eliminate: Callable[[sp.Symbol, sp.Expr], bool],
         adjoin: Callable[[sp.Symbol, sp.Expr], None],
         relations: Sequence[tuple[sp.Symbol, sp.Expr]],
+        name: Callable[[sp.Expr], sp.Symbol],
         written: Container[sp.Expr],
     ) -> None:
-        self._eliminate, self._adjoin, self._relations, self._written = eliminate, adjoin, relations, written
+        self._eliminate, self._adjoin, self._name = eliminate, adjoin, name
+        self._relations, self._written = relations, written
 
     def _split(self, square: sp.Expr) -> Root:
         reader = Reader([square], (), {})
@@ -47,6 +50,10 @@ class Radicals:
         if square.is_number:
             return not square.is_Rational
         return any(s in square.free_symbols for s, _ in self._relations)
+
+    def number(self, value: sp.Expr) -> sp.Expr:
+        """A symbol for a number without a closed form."""
+        return self._name(value)
 
     def rational(self, square: sp.Expr) -> sp.Expr | None:
         """The root of the square of a rational function, None for anything else."""

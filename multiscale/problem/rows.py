@@ -72,5 +72,6 @@ def linear_part(
     tables = [tabulate(reader, x, layout) for x in working.equations]
     bases = bases_of(reader, [*frequencies, *(series[0] for series in working.rates)])
     mass, damping, stiffness = (_frozen(tables, order) for order in (2, 1, 0))
-    linear = General(Operator(mass, damping, stiffness, ()), [dict(b) for b in bases.values], bases.unit, reader.ring)
+    operator = Operator(mass, damping, stiffness, (), bool(working.numbers))
+    linear = General(operator, [dict(b) for b in bases.values], bases.unit, reader.ring)
     return reader, tables, bases, linear

@@ -23,14 +23,14 @@ from multiscale.errors import MultiscaleError, ProblemError
 from multiscale.problem.radicals import Radicals
 from multiscale.problem.reading import unsupported
 
-__all__ = ["Found", "NoClosedFormError", "imaginary_roots"]
+__all__ = ["Found", "imaginary_roots"]
 
 X = sp.Symbol("@x")
 S = sp.Symbol("@s")
 
 
-class NoClosedFormError(MultiscaleError):
-    """Frequencies that need roots of a polynomial of degree three or more in ω²."""
+DIGITS = 30
+"""Digits of frequencies without a closed form."""
 
 
 @dataclass(frozen=True)
@@ -147,9 +147,8 @@ def _frequencies(factor: sp.Poly, radical: Radicals) -> list[Any]:
             f"{factor.degree()} in omega**2, which has no closed form: give numbers for the parameters of the linear "
             "part, or use modal coordinates"
         )
-    if not any(r > 0 for r in factor.real_roots()):
-        return []
-    raise NoClosedFormError(f"roots of {factor.as_expr()}")
+    squares = [r for r in sp.Poly(factor, X).nroots(n=DIGITS, maxsteps=500) if r.is_real and r > 0]
+    return [radical.number(sp.sqrt(x)) for x in squares]
 
 
 def _pair(total: sp.Expr, product: sp.Expr, radical: Radicals) -> list[Any]:
