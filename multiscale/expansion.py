@@ -186,7 +186,8 @@ class Expansion:
 
     def __repr__(self) -> str:
         unknowns = ", ".join(str(u) for u in self.problem.unknowns)
-        return f"Expansion of {unknowns} to order {self.order} in {self.problem.small}"[:199]
+        how = ", in floating point" if self.representation == "complex" else ""
+        return f"Expansion of {unknowns} to order {self.order} in {self.problem.small}"[: 199 - len(how)] + how
 
     def __reduce__(self) -> tuple[Any, ...]:
         return _rebuilt, (self.problem, self.order, self.amplitude, self.tolerance, self.computation.snapshot())

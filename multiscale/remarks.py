@@ -158,6 +158,11 @@ def _lost_parameters(problem: Problem, computation: Computation) -> list[str]:
 def _assumptions(computation: Computation) -> list[str]:
     bases = computation.canonical.bases
     found = [f"{name} is assumed to be rationally independent of the other frequencies" for name in bases.assumed]
+    if computation.representation == "complex":
+        found.append(
+            "some natural frequencies have no closed form: coefficients are floating-point numbers, and these "
+            "frequencies are assumed to be rationally independent of all others"
+        )
     for frequency in computation.canonical.frequencies:
         if not frequency.is_positive:
             found.append(f"the natural frequency {frequency} is assumed to be positive")

@@ -24,7 +24,7 @@ from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_d
 from multiscale.problem.preparation import Prepared
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import Detuning, detuning_of
-from multiscale.problem.terms import Layout, match, tabulate
+from multiscale.problem.terms import Entry, Layout, match, tabulate
 
 __all__ = ["Canonical", "Working", "canonical_form", "completed", "hide", "working_copy"]
 
@@ -93,16 +93,27 @@ def working_copy(prepared: Prepared, layout: Layout) -> Working:
 
 
 def canonical_form(
-    prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr]
+    prepared: Prepared,
+    layout: Layout,
+    shown: Mapping[sp.Symbol, sp.Expr],
+    names: list[sp.Expr],
+    known: tuple[Reader, list[list[Entry]]] | None = None,
 ) -> Canonical:
-    """Raises `ProblemError`, `ResonanceError` or `UnsupportedTermError`, naming the equation or the term."""
+    """Raises `ProblemError`, `ResonanceError` or `UnsupportedTermError`, naming the equation or the term.
+
+    `known` are the equations of `prepared` as they were read before.
+    """
     dynamic = (*layout.jets, layout.small)
     working = working_copy(prepared, layout)
     forced = dict(prepared.relations.frequencies)
     while True:
         current = working.equations
-        reader = Reader(current, dynamic, shown)
-        tables = [tabulate(reader, equation, layout) for equation in current]
+        if known is None or current != prepared.equations:
+            reader = Reader(current, dynamic, shown)
+            tables = [tabulate(reader, equation, layout) for equation in current]
+        else:
+            reader, tables = known
+        known = None
         leaders = match(tables, reader, layout, names)
         order = [leaders.index(k) for k in range(len(names))]
         current, tables = [current[j] for j in order], [tables[j] for j in order]

@@ -42,7 +42,7 @@ def form_of(
     reader = Reader(prepared.equations, (*layout.jets, layout.small), shown)
     tables = [tabulate(reader, x, layout) for x in prepared.equations]
     if not choice and _are_oscillators(tables):
-        return canonical_form(prepared, layout, shown, names)
+        return canonical_form(prepared, layout, shown, names, (reader, tables))
     return coupled_form(prepared, layout, shown, names, choice, modes)
 
 
