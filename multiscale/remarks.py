@@ -9,6 +9,7 @@ import sympy as sp
 from multiscale.computed import Computation, Finished
 from multiscale.frame import turns
 from multiscale.linear_part import Rate
+from multiscale.linear_part.growth import leading_growth
 from multiscale.problem import Problem
 
 __all__ = ["incomplete_cubic", "remarks", "small_divisors"]
@@ -22,6 +23,7 @@ def remarks(problem: Problem, computation: Computation, tolerance: float) -> tup
         *small_divisors(problem, computation, tolerance),
         *_unbalanced(computation),
         *_explicit_time(problem, computation),
+        *_growing(computation),
         *_lost_parameters(problem, computation),
         *_assumptions(computation),
     )
@@ -153,6 +155,20 @@ def _lost_parameters(problem: Problem, computation: Computation) -> list[str]:
     used.update(*(meanings[name].free_symbols for name in names))
     lost = [s for s in problem.parameters if s not in used]
     return [f"{s} has no effect up to order {c.order}: it enters at a higher order, or cancels" for s in lost]
+
+
+def _growing(computation: Computation) -> list[str]:
+    """Roots of the leading order with positive real part, where its matrices are numbers."""
+    operator = computation.canonical.operator
+    if operator is None:
+        return []
+    rates = leading_growth(operator, dict(computation.canonical.meanings))
+    if rates is None or max(rates) <= 1e-9:
+        return []
+    return [
+        f"the leading order has a motion that grows like exp({max(rates):.6g}*t) beside the modes carried: the "
+        "expansion describes the invariant set on which it is absent, and no motion near it stays there"
+    ]
 
 
 def _assumptions(computation: Computation) -> list[str]:

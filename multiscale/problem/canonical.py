@@ -97,23 +97,23 @@ def canonical_form(
     layout: Layout,
     shown: Mapping[sp.Symbol, sp.Expr],
     names: list[sp.Expr],
-    known: tuple[Reader, list[list[Entry]]] | None = None,
+    read: tuple[Reader, list[list[Entry]]] | None = None,
 ) -> Canonical:
     """Raises `ProblemError`, `ResonanceError` or `UnsupportedTermError`, naming the equation or the term.
 
-    `known` are the equations of `prepared` as they were read before.
+    `read` are the equations of `prepared` if they were read before.
     """
     dynamic = (*layout.jets, layout.small)
     working = working_copy(prepared, layout)
     forced = dict(prepared.relations.frequencies)
     while True:
         current = working.equations
-        if known is None or current != prepared.equations:
+        if read is None or current != prepared.equations:
             reader = Reader(current, dynamic, shown)
             tables = [tabulate(reader, equation, layout) for equation in current]
         else:
-            reader, tables = known
-        known = None
+            reader, tables = read
+        read = None
         leaders = match(tables, reader, layout, names)
         order = [leaders.index(k) for k in range(len(names))]
         current, tables = [current[j] for j in order], [tables[j] for j in order]

@@ -11,6 +11,9 @@ from support.residual import exponents
 
 import multiscale as ms
 
+# Order 1 with quadratic terms is asked for on purpose in a few places.
+pytestmark = pytest.mark.filterwarnings("ignore::multiscale.errors.OrderingWarning")
+
 t = sp.Symbol("t", real=True)
 eps, alpha, mu, f, sigma, Om, G, k, kappa = sp.symbols("epsilon alpha mu f sigma Omega G k kappa", positive=True)
 x, y, z, v, w = (sp.Function(name)(t) for name in "xyzvw")
@@ -65,9 +68,7 @@ def expanded(name, order=None):
     return ms.expand(ms.Problem(equations, unknowns, small=eps, **options), order or full, tolerance=0.0)
 
 
-@pytest.mark.parametrize(
-    "name", [pytest.param(n, marks=pytest.mark.slow) if SYSTEMS[n][2] * len(SYSTEMS[n][1]) > 5 else n for n in SYSTEMS]
-)
+@pytest.mark.parametrize("name", SYSTEMS)
 def test_residual_has_the_order_promised(name):
     result = expanded(name)
     found = exponents(result, VALUES | {Om: R(17, 7)}, AMPLITUDES[: result.computation.modes])
@@ -208,13 +209,8 @@ def gyroscopic(draw):
     equations = []
     for i, u in enumerate(unknowns):
         force = draw(st.integers(1, 3)) * sp.Mul(*(draw(st.sampled_from(jets)) for _ in range(draw(st.integers(2, 3)))))
-        other = unknowns[1 - i]
-        equations.append(
-            u.diff(t, 2)
-            + (-1) ** (i + 1) * g * other.diff(t)
-            + (stiffness[i, :] * sp.Matrix(unknowns))[0]
-            + eps * force
-        )
+        turning = (-1) ** (i + 1) * g * unknowns[1 - i].diff(t)
+        equations.append(u.diff(t, 2) + turning + (stiffness[i, :] * sp.Matrix(unknowns))[0] + eps * force)
     return equations, unknowns
 
 
@@ -255,15 +251,15 @@ def test_views_speak_of_modes():
 
 def test_forcing_is_what_the_operator_makes_of_the_corrections():
     """L_0 U_n = forcing for the equations as they stand, with the secular part taken out."""
-    result = expanded("two masses", 2)
+    result = expanded("thermal state", 2)
     T0 = result.symbols.T[0]
+    at = {T0: 0.7, mu: 0.3, kappa: 1.6, result.symbols.A[0]: 0.3 + 0.2j}
     for n in (1, 2):
         level = result.levels[n]
-        fields = {sp.Function(f"{u.func.__name__}_{n}")(T0): level.corrections[u] for u in (x, y)}
-        for u in (x, y):
+        fields = {sp.Function(f"{u.func.__name__}_{n}")(T0): level.corrections[u] for u in (x, z)}
+        for u in (x, z):
             left = level.operator[u].subs(fields).doit()
-            rest = sp.expand(left - level.forcing[u] + level.secular[u])
-            at = {T0: 0.7, mu: 0.3} | {A: 0.3 + 0.2j * (j + 1) for j, A in enumerate(result.symbols.A)}
+            rest = left - level.forcing[u] + level.secular[u]
             assert abs(complex(sp.N(rest.subs(at)))) < 1e-12
 
 
