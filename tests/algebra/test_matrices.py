@@ -19,13 +19,11 @@ LEAVES = [RING.generators[0], *RING.generators[3:], RING.one]
 
 def matrix(size: int, seed: int) -> list[list[object]]:
     numbers = random.Random(seed)
-    return [
-        [
-            RING.constant(numbers.randint(-3, 3)) * numbers.choice(LEAVES) + RING.constant(numbers.randint(-2, 2))
-            for _ in range(size)
-        ]
-        for _ in range(size)
-    ]
+
+    def entry() -> object:
+        return RING.constant(numbers.randint(-3, 3)) * numbers.choice(LEAVES) + RING.constant(numbers.randint(-2, 2))
+
+    return [[entry() for _ in range(size)] for _ in range(size)]
 
 
 @pytest.mark.parametrize("size", [1, 2, 3, 4, 5])
@@ -49,9 +47,8 @@ def test_derivative_of_the_determinant():
     a, b = matrix(3, 7), [[RING.constant(i - 2 * j) for j in range(3)] for i in range(3)]
 
     def determinant(s: Fraction) -> object:
-        return adjugate(
-            RING, [[x + RING.constant(s) * y for x, y in zip(p, q, strict=True)] for p, q in zip(a, b, strict=True)]
-        )[0]
+        moved = [[x + RING.constant(s) * y for x, y in zip(p, q, strict=True)] for p, q in zip(a, b, strict=True)]
+        return adjugate(RING, moved)[0]
 
     # A cubic in s: its slope at 0 from the values at ±1, ±2.
     near = determinant(Fraction(1)) - determinant(Fraction(-1))

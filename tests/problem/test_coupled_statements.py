@@ -235,3 +235,12 @@ def test_refused_with_a_reason(name):
     build, message = REFUSED[name]
     with pytest.raises((ms.ProblemError, ms.UnsupportedTermError, ms.ResonanceError), match=f"(?s){message}"):
         build()
+
+
+def test_a_growing_motion_is_remarked():
+    """x oscillates beside a y that grows: the carried motion is a solution, but nothing stays near it."""
+    growing = [x.diff(t, 2) + x + eps * x * y, y.diff(t) - 2 * y + eps * x**2]
+    decaying = [x.diff(t, 2) + x + eps * x * y, y.diff(t) + 2 * y + eps * x**2]
+    remarks, none = (ms.expand(ms.Problem(e, [x, y], small=eps), 2).warnings for e in (growing, decaying))
+    assert any("grows like exp(2*t)" in remark for remark in remarks)
+    assert not any("grows" in remark for remark in none)
