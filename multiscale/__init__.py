@@ -38,6 +38,7 @@ if TYPE_CHECKING:
     from multiscale.response.noise import NoisyFlow, noisy_flow
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
+    from multiscale.response.orbits.onset import Onset, onset
     from multiscale.response.orbits.periodic_series import PeriodicSeries, periodic_series
     from multiscale.response.ring_down import RingDown, ring_down
     from multiscale.response.steady.backbone import backbone, effective_cubic, effective_damping
@@ -71,6 +72,7 @@ __all__ = [
     "NoisyFlow",
     "NumpyFunction",
     "Observable",
+    "Onset",
     "OrderingWarning",
     "Peak",
     "PeriodicSeries",
@@ -109,6 +111,7 @@ __all__ = [
     "limit_cycles",
     "noisy_flow",
     "observable",
+    "onset",
     "pade",
     "periodic_series",
     "response_model",
@@ -137,6 +140,7 @@ _LATER = {
     "LimitCycle": "response.orbits.limit_cycles",
     "NoisyFlow": "response.noise",
     "Observable": "response.observable",
+    "Onset": "response.orbits.onset",
     "Peak": "response.steady.peak",
     "PeriodicSeries": "response.orbits.periodic_series",
     "QuadraticApproximant": "checks.approximants",
@@ -164,6 +168,7 @@ _LATER = {
     "limit_cycles": "response.orbits.limit_cycles",
     "noisy_flow": "response.noise",
     "observable": "response.observable",
+    "onset": "response.orbits.onset",
     "pade": "checks.pade",
     "periodic_series": "response.orbits.periodic_series",
     "response_model": "fitting.response",

@@ -13,17 +13,21 @@ from functools import cache, cached_property
 from typing import Any, TypeAlias
 
 from multiscale.algebra.choice import make_ring
+from multiscale.algebra.complex_ring import ComplexRing
 from multiscale.algebra.derivation import Derivation
 from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Coefficient, finish
-from multiscale.algebra.ring import Exponents, Ring
+from multiscale.algebra.ring import Exponents, Ring, RingSpec
 from multiscale.clock import Clock
+from multiscale.errors import ProblemError
 from multiscale.forces import Force
 from multiscale.forces.polynomial import PolynomialForce
 from multiscale.forces.projected import ProjectedForce, ProjectedTerm, Sum, Wave, WaveSlopes
 from multiscale.frame import Frame, frame_of
-from multiscale.hierarchy import Hierarchy, next_level, start
-from multiscale.linear_part import Rate
+from multiscale.hierarchy import Hierarchy, next_level, sorted_by_rate, start
+from multiscale.linear_part import LinearPart, Rate
+from multiscale.linear_part.dense import Dense
+from multiscale.linear_part.general import General
 from multiscale.linear_part.oscillators import Oscillators
 from multiscale.problem.canonical import Canonical
 from multiscale.problem.laws import LAW
@@ -61,6 +65,10 @@ class Computation:
     @property
     def modes(self) -> int:
         return len(self.hierarchy.linear_part.modes)
+
+    @property
+    def unknowns(self) -> int:
+        return self.hierarchy.linear_part.size
 
     def size(self, level: int) -> tuple[int, int]:
         """Terms of the fields of a level in all unknowns, and of its D_nA in all modes, as they stand in the ring."""
@@ -157,19 +165,30 @@ class Computation:
 
         The solvability conditions of the levels below are inserted; the term in D_levelA itself is left out.
         """
+        ring = self.hierarchy.tower.ring
+        moved, secular = self._acted(level)
+        return finish(ring, ring.normal(moved[unknown] + secular[unknown])), finish(ring, secular[unknown])
+
+    @cached_property
+    def _acted(self) -> Any:
+        """(L_0 U_level, what the D_levelA contribute), equation by equation."""
         linear, tower = self.hierarchy.linear_part, self.hierarchy.tower
         ring = tower.ring
-        total = ring.zero
-        field = tower.jets[0][level][unknown]
-        for rate, part in ring.split(field, ring.spec.pair_indices, self.hierarchy.rates).items():
-            acted = linear.act({unknown: part}, rate)[unknown]
-            total = total + (acted + ring.conjugate(acted) if any(rate) else acted)
-        changes = {
-            a: x for a in range(self.modes if level else 0) if (x := tower.time[level].images.get(self._amplitude(a)))
-        }
-        secular = linear.bracket(changes).get(unknown, ring.zero)
-        secular = secular + ring.conjugate(secular)
-        return finish(ring, ring.normal(total + secular)), finish(ring, secular)
+
+        @cache
+        def acted(level: int) -> tuple[list[Any], list[Any]]:
+            moved, secular = [ring.zero] * linear.size, [ring.zero] * linear.size
+            parts = sorted_by_rate(ring, tower.jets[0][level], self.hierarchy.rates)
+            for rate, part in parts.items():
+                for k, x in linear.act(part, rate).items():
+                    moved[k] = moved[k] + (x + ring.conjugate(x) if any(rate) else x)
+            images = tower.time[level].images
+            changes = {a: x for a in range(self.modes if level else 0) if (x := images.get(self._amplitude(a)))}
+            for k, x in linear.bracket(changes).items():
+                secular[k] = x + ring.conjugate(x)
+            return moved, secular
+
+        return acted
 
     def snapshot(self) -> Snapshot:
         tower = self.hierarchy.tower
@@ -182,12 +201,34 @@ class Computation:
         return Snapshot(ring.spec.reciprocals, fields, changes)
 
 
+def _ring(canonical: Canonical, spec: RingSpec, representation: str) -> Ring:
+    if canonical.operator is None or not canonical.operator.numeric:
+        return make_ring(spec, representation)
+    if representation not in ("auto", "complex"):
+        raise ProblemError(
+            f"representation is {representation!r}, but the natural frequencies have no closed form: the coefficients "
+            "can only be floating-point numbers here, representation='complex' (or 'auto')"
+        )
+    values = {name: float(x) for name, x in canonical.meanings if x.is_number}
+    return ComplexRing(spec, values)
+
+
+def _linear_part(canonical: Canonical, ring: Ring) -> LinearPart:
+    bases = canonical.bases
+    values = [dict(b) for b in bases.values]
+    if canonical.operator is None:
+        return Oscillators(bases.rates, values, bases.unit, ring)
+    if canonical.operator.numeric:
+        return Dense(canonical.operator, values, bases.unit, ring)
+    return General(canonical.operator, values, bases.unit, ring)
+
+
 def begin(canonical: Canonical, representation: str, reciprocals: Iterable[tuple[str, Frozen]] = ()) -> Computation:
     """Level 0 in a ring of the given representation."""
     more = [r for r in reciprocals if r not in canonical.spec.reciprocals]
-    ring = make_ring(canonical.spec.with_reciprocals(more), representation)
+    ring = _ring(canonical, canonical.spec.with_reciprocals(more), representation)
     bases, drives = canonical.bases, canonical.drives
-    linear = Oscillators(bases.rates, [dict(b) for b in bases.values], bases.unit, ring)
+    linear = _linear_part(canonical, ring)
     turning = [*bases.rates, *(d.rate for d in drives)]
     frequencies = {
         pair[0]: freeze(ring.write(linear.value(rate)))

@@ -26,6 +26,7 @@ from multiscale.errors import (
 from multiscale.level import Level, PendingLevel, Views, polynomials_below
 from multiscale.problem import Problem
 from multiscale.remarks import incomplete_cubic, remarks, small_divisors
+from multiscale.shapes import ModeShape, mode_shapes
 from multiscale.slow_flow import SlowFlow
 from multiscale.solution import FORMS, field_writer, solution
 from multiscale.symbols import Symbols, symbols_of
@@ -92,6 +93,16 @@ class Expansion:
         return Views(self.problem, self.computation, self.symbols)
 
     @cached_property
+    def modes(self) -> tuple[ModeShape, ...]:
+        """Frequency, shape and reference of each mode; where the unknowns are uncoupled, one for each unknown."""
+        return mode_shapes(self.problem, self.computation, self.views.writer)
+
+    @property
+    def representation(self) -> str:
+        """The arithmetic that computed the coefficients: "sympy" or "flint" (both exact), or "complex"."""
+        return self.computation.representation
+
+    @cached_property
     def levels(self) -> Mapping[int, Level]:
         """``levels[n]``, n = 0 … N."""
         return _Levels(self.views, self.order)
@@ -110,9 +121,9 @@ class Expansion:
             if multiples:
                 j = multiples[0]
                 first = next(b for b, r in enumerate(rate) if r)
-                expressed[sp.Symbol(f"omega_{self.problem.unknowns[k].func.__name__}")] = sp.Rational(
-                    rate[first], bases.rates[j][first]
-                ) * sp.Symbol(f"omega_{self.problem.unknowns[j].func.__name__}")
+                ratio = sp.Rational(rate[first], bases.rates[j][first])
+                names = self.problem.frequency_names
+                expressed[sp.Symbol(names[k])] = ratio * sp.Symbol(names[j])
         return expressed
 
     def _check_frequency(self, mode: int) -> None:
@@ -162,7 +173,7 @@ class Expansion:
         """Divisors assumed non-zero, in slow flow and fields, that no assumption on the symbols makes positive."""
         c = self.computation
         finished = [c.change(n, a) for n in range(1, self.order + 1) for a in range(c.modes)]
-        finished += [c.field(n, k) for n in range(self.order + 1) for k in range(c.modes)]
+        finished += [c.field(n, k) for n in range(self.order + 1) for k in range(c.unknowns)]
         own = {p for _, p in c.canonical.spec.reciprocals}
         divisors = [self.views.writer.polynomial(p) for p in polynomials_below(finished) if p not in own]
         return tuple(d for d in divisors if not d.is_positive)
@@ -192,7 +203,7 @@ class Expansion:
     def _finished(self) -> tuple[Any, ...]:
         c = self.computation
         changes = tuple(tuple(c.change(n, a).items()) for n in range(1, self.order + 1) for a in range(c.modes))
-        return changes, tuple(tuple(c.field(n, k).items()) for n in range(self.order + 1) for k in range(c.modes))
+        return changes, tuple(tuple(c.field(n, k).items()) for n in range(self.order + 1) for k in range(c.unknowns))
 
     def __eq__(self, other: object) -> bool:
         return isinstance(other, Expansion) and self.problem == other.problem and self.equals(other)
@@ -202,7 +213,8 @@ class Expansion:
 
     def __repr__(self) -> str:
         unknowns = ", ".join(str(u) for u in self.problem.unknowns)
-        return f"Expansion of {unknowns} to order {self.order} in {self.problem.small}"[:199]
+        how = ", in floating point" if self.representation == "complex" else ""
+        return f"Expansion of {unknowns} to order {self.order} in {self.problem.small}"[: 199 - len(how)] + how
 
     def __reduce__(self) -> tuple[Any, ...]:
         return _rebuilt, (self.problem, self.order, self.amplitude, self.tolerance, self.computation.snapshot())

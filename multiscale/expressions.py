@@ -16,24 +16,38 @@ from sympy.polys.rings import PolyRing
 
 from multiscale.algebra.polynomial import Frozen, Monomial, freeze, primitive
 from multiscale.algebra.quotient import Coefficient, Quotient
+from multiscale.algebra.ring import IMAGINARY
 
 __all__ = ["FACTOR_LIMIT", "Writer"]
 
 FACTOR_LIMIT = 40
 
 
-class Writer:
-    """Writes with `meanings`, the user's expression for each generator; those in `opaque` are written as they stand."""
+def _number(c: Fraction | float) -> sp.Expr:
+    return sp.Float(c) if isinstance(c, float) else sp.Rational(c.numerator, c.denominator)
 
-    def __init__(self, meanings: Mapping[str, sp.Expr], opaque: Iterable[str] = ()) -> None:
-        self._meanings, self._opaque = dict(meanings), frozenset(opaque)
+
+class Writer:
+    """Writes with `meanings`, the user's expression for each generator, and `reciprocals`, the denominators by name.
+
+    Those generators in `opaque` are written as they stand.
+    """
+
+    def __init__(
+        self,
+        meanings: Mapping[str, sp.Expr],
+        reciprocals: Mapping[str, Frozen] | None = None,
+        opaque: Iterable[str] = (),
+    ) -> None:
+        self._meanings, self._reciprocals = dict(meanings), dict(reciprocals or {})
+        self._opaque = frozenset(opaque)
         self._quotients: dict[Quotient, sp.Expr] = {}
 
     def monomial(self, monomial: Monomial) -> sp.Expr:
         return sp.Mul(*(self._meanings[name] ** e for name, e in monomial))
 
     def polynomial(self, terms: Iterable[tuple[Monomial, Fraction]]) -> sp.Expr:
-        return sp.Add(*(sp.Rational(c.numerator, c.denominator) * self.monomial(m) for m, c in terms))
+        return sp.Add(*(_number(c) * self.monomial(m) for m, c in terms))
 
     def quotient(self, q: Quotient) -> sp.Expr:
         if q not in self._quotients:
@@ -53,11 +67,25 @@ class Writer:
         parts = [(m, self._plain(Quotient(freeze(terms), q.denominator))) for m, terms in sorted(groups.items())]
         return sp.Add(*(self.monomial(m) * part for m, part in parts))
 
+    def named(self, terms: Frozen) -> sp.Expr:
+        """A complex polynomial that may hold i and reciprocals, as in shapes of modes."""
+        total = sp.Integer(0)
+        for monomial, c in terms:
+            total += _number(c) * sp.Mul(*(self._factor(name) ** e for name, e in monomial))
+        return sp.factor_terms(sp.cancel(total)) if total.free_symbols else sp.expand(sp.radsimp(total))
+
+    def _factor(self, name: str) -> sp.Expr:
+        if name == IMAGINARY:
+            return sp.I
+        return self._meanings[name] if name in self._meanings else 1 / self.polynomial(self._reciprocals[name])
+
     def coefficient(self, c: Coefficient) -> sp.Expr:
         return self.quotient(c.real) + sp.I * self.quotient(c.imag)
 
     def _numerator(self, terms: Frozen) -> list[sp.Expr]:
         """Content, common monomial and the factors of the rest."""
+        if any(isinstance(c, float) for _, c in terms):
+            return [self.polynomial(terms)]
         content, rest = primitive(dict(terms))
         lowest = dict(terms[0][0])
         for m, _ in terms[1:]:
@@ -77,7 +105,7 @@ class Writer:
                     factors[k] = (sp.Add(*(-term for term in factor.args)), power)
                     content = -content
                     break
-        return [sp.Rational(content.numerator, content.denominator), self.monomial(common), *(f**e for f, e in factors)]
+        return [_number(content), self.monomial(common), *(f**e for f, e in factors)]
 
     def _factors(self, terms: Mapping[Monomial, Fraction]) -> tuple[int, list[tuple[sp.Expr, int]]]:
         """Sign and (factor, power) of a primitive polynomial without a common monomial."""

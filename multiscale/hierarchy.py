@@ -22,7 +22,7 @@ from multiscale.forces import Force
 from multiscale.linear_part import LinearPart, Rate
 from multiscale.tower import Field, Tower
 
-__all__ = ["Hierarchy", "RateTable", "next_level", "start"]
+__all__ = ["Hierarchy", "RateTable", "next_level", "sorted_by_rate", "start"]
 
 
 Parts: TypeAlias = dict[Rate, dict[int, Any]]
@@ -80,23 +80,24 @@ class Hierarchy:
 def start(ring: Ring, linear_part: LinearPart, force: Force, clock: Clock) -> Hierarchy:
     """Level 0: U_0 = Σ φ_a z_a + conjugate, and the linear response to drives of order ε⁰; D_0 z_a = iω_a z_a."""
     motion = []
-    for k in range(len(linear_part.modes[0].shape)):
+    for k in range(linear_part.size):
         u = ring.zero
         for a, mode in enumerate(linear_part.modes):
             if mode.shape[k]:
-                u = u + ring.constant(mode.shape[k]) * ring.generators[ring.spec.first_pair + 2 * a]
+                u = u + ring.read(dict(mode.shape[k])) * ring.generators[ring.spec.first_pair + 2 * a]
         motion.append(u + ring.conjugate(u))
     rates = RateTable([mode.rate for mode in linear_part.modes], clock.rates)
     nothing = Tower.start(ring, clock.fast(), tuple(ring.zero for _ in motion))
     forcing = force.at_level(0, nothing)
-    parts = _sorted_by_rate(ring, tuple(-f for f in forcing), rates)
+    parts = sorted_by_rate(ring, tuple(-f for f in forcing), rates)
     ring, hierarchy, parts = _with_divisors(Hierarchy(linear_part, force, clock, rates, nothing), parts)
     response, _ = _solved(ring, hierarchy.linear_part, parts)
     displacement = tuple(ring.lift(u) + r for u, r in zip(motion, response, strict=True))
     return replace(hierarchy, tower=Tower.start(ring, hierarchy.clock.fast(), displacement))
 
 
-def _sorted_by_rate(ring: Ring, residual: Field, rates: RateTable) -> Parts:
+def sorted_by_rate(ring: Ring, residual: Field, rates: RateTable) -> Parts:
+    """{rate: {component: its part}}, one of each pair of opposite rates."""
     parts: Parts = {}
     for k, x in enumerate(residual):
         for rate, part in ring.split(x, ring.spec.pair_indices, rates).items():
@@ -123,7 +124,7 @@ def next_level(hierarchy: Hierarchy) -> Hierarchy:
     forcing = hierarchy.force.at_level(tower.height, tower)
     applied = hierarchy.linear_part.apply(pending)
     residual = tuple(tower.ring.normal(x - f) for x, f in zip(applied, forcing, strict=True))
-    ring, hierarchy, parts = _with_divisors(hierarchy, _sorted_by_rate(tower.ring, residual, hierarchy.rates))
+    ring, hierarchy, parts = _with_divisors(hierarchy, sorted_by_rate(tower.ring, residual, hierarchy.rates))
     if ring is not tower.ring:
         pending = tuple(ring.lift(x) for x in pending[0]), tuple(ring.lift(x) for x in pending[1])
         known = hierarchy.clock.at_level(tower.height)
@@ -134,7 +135,7 @@ def next_level(hierarchy: Hierarchy) -> Hierarchy:
 
 def _solved(ring: Ring, linear_part: LinearPart, parts: Parts) -> tuple[Field, Derivation]:
     """(U_n, the D_nA) from the residual sorted by rate."""
-    size = len(linear_part.modes[0].shape)
+    size = linear_part.size
     upper, constant = [ring.zero] * size, [ring.zero] * size
     images: dict[str, Any] = {}
     for rate, part in parts.items():

@@ -30,7 +30,8 @@ class Level:
     Attributes
     ----------
     operator : dict
-        {unknown: L_0 U_n}, applied to U_n as a function of the fast time T_0.
+        {unknown: L_0 U_n}, applied to U_n as a function of the fast time T_0; the k-th equation stands under the k-th
+        unknown.
     forcing : dict
         {unknown: right-hand side}, with the solvability conditions of lower levels inserted and the term in D_nA left
         out.
@@ -99,7 +100,7 @@ class Views:
     @cached_property
     def writer(self) -> Writer:
         canonical = self._computation.canonical
-        return Writer(dict(canonical.meanings), dict(canonical.numeric))
+        return Writer(dict(canonical.meanings), dict(canonical.spec.reciprocals), dict(canonical.numeric))
 
     def placed(self, x: sp.Expr, form: str) -> sp.Expr:
         """x with the amplitudes that Fourier coefficients of forces depend on written in the variables of a form."""
@@ -188,14 +189,30 @@ class Views:
         total = sp.Add(*(sp.Add(*terms) * sp.exp(sp.I * angles[row]) for row, terms in sorted(groups.items())))
         return self.placed(total, "complex")
 
+    def _operator(self, k: int, n: int) -> sp.Expr:
+        """Row k of L_0 U_n."""
+        T0, form = self._symbols.T[0], self._computation.canonical
+        fields = [sp.Function(f"{u.func.__name__}_{n}")(T0) for u in self._problem.unknowns]
+        if form.operator is None:
+            return fields[k].diff(T0, 2) + form.frequencies[k] ** 2 * fields[k]
+        rows = form.operator.mass[k], form.operator.damping[k], form.operator.stiffness[k]
+        terms = zip((2, 1, 0), rows, strict=True)
+        return sp.Add(
+            *(
+                sp.factor_terms(self.writer.polynomial(x)) * (u.diff(T0, d) if d else u)
+                for d, row in terms
+                for u, x in zip(fields, row, strict=True)
+                if x
+            )
+        )
+
     def level(self, n: int) -> Level:
         problem, computation = self._problem, self._computation
         T0 = self._symbols.T[0]
         operator, forcing, secular, corrections = {}, {}, {}, {}
         below: list[Finished] = []
-        for k, (u, omega) in enumerate(zip(problem.unknowns, problem.natural_frequencies, strict=True)):
-            unknown = sp.Function(f"{u.func.__name__}_{n}")(T0)
-            operator[u] = unknown.diff(T0, 2) + omega**2 * unknown
+        for k, u in enumerate(problem.unknowns):
+            operator[u] = self._operator(k, n)
             corrections[u] = self.field(computation.field(n, k)).subs(problem.time, T0)
             total, resonant = computation.forcing(n, k)
             forcing[u], secular[u] = (self.field(x).subs(problem.time, T0) for x in (total, resonant))

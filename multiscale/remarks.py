@@ -13,6 +13,7 @@ from multiscale.computed import Computation, Finished
 from multiscale.errors import SmallDivisorWarning
 from multiscale.frame import turns
 from multiscale.linear_part import Rate
+from multiscale.linear_part.growth import leading_growth
 from multiscale.omissions import drift, first_order_of, terms_beyond
 from multiscale.problem import Problem
 
@@ -33,6 +34,7 @@ def remarks(
         *computation.canonical.left_out,
         *_unbalanced(computation),
         *_explicit_time(problem, computation),
+        *_growing(computation),
         *terms_beyond(problem, computation),
         *_lost_parameters(problem, computation),
         *drift(problem, computation, write),
@@ -72,7 +74,7 @@ def small_divisors(
         return []
     frequencies = [_value(rate, values) / bases.unit for rate in (*bases.rates, *(d.rate for d in drives))]
     found: dict[tuple[int, ...], str] = {}
-    for k, rate in sorted(computation.hierarchy.met):
+    for k, rate in _met(computation):
         turning = _value(rate, values) / bases.unit
         own = bases.rates[k]
         if rate in (own, tuple(-r for r in own)):
@@ -98,6 +100,14 @@ def warn_at(expansion: Expansion, values: Mapping[str, Any]) -> None:
             warnings.warn(remark, SmallDivisorWarning, stacklevel=3)
 
 
+def _met(computation: Computation) -> list[tuple[int, Rate]]:
+    """(mode, rate) for the rates that levels solved for: an oscillator meets those of its own equation, a mode all."""
+    if computation.canonical.operator is None:
+        return sorted(computation.hierarchy.met)
+    rates = sorted({rate for _, rate in computation.hierarchy.met})
+    return [(a, rate) for rate in rates for a in range(computation.modes)]
+
+
 def _value(rate: Rate, values: Sequence[float]) -> float:
     return sum(r * v for r, v in zip(rate, values, strict=True))
 
@@ -117,13 +127,16 @@ def _near_resonance(
     canonical, modes = computation.canonical, computation.modes
     single = [j for j, n in enumerate(relation) if abs(n) == 1]
     target = max(single or [j for j, n in enumerate(relation) if n], key=lambda j: (j >= modes, frequencies[j]))
-    names = [f"omega_{u.func.__name__}" for u in problem.unknowns] + [str(d.frequency) for d in canonical.drives]
+    names = [*problem.frequency_names, *(str(d.frequency) for d in canonical.drives)]
     exact = [*canonical.frequencies, *(d.frequency for d in canonical.drives)]
     shares = {j: sp.Rational(-n, relation[target]) for j, n in enumerate(relation) if n and j != target}
     text = " + ".join(f"{c}*{names[j]}" for j, c in shares.items())
     near = sum(float(c) * frequencies[j] for j, c in shares.items())
     value = sp.Add(*(c * exact[j] for j, c in shares.items()))
-    key = problem.unknowns[target] if target < modes else canonical.drives[target - modes].frequency
+    if target >= modes:
+        key = canonical.drives[target - modes].frequency
+    else:
+        key = problem.unknowns[target] if canonical.operator is None else sp.Symbol(names[target])
     hint = " (with a symbol for the drive frequency)" if target >= modes and key.is_number else ""
     return (
         f"small divisor: {text} = {near:.6g} is close to {names[target]} = {frequencies[target]:.6g}; "
@@ -135,7 +148,7 @@ def _near_resonance(
 def _all(computation: Computation) -> Iterator[Finished]:
     c = computation
     yield from (c.flow(n, a) for n in range(1, c.order + 1) for a in range(c.modes))
-    yield from (c.field(n, k) for n in range(c.order + 1) for k in range(c.modes))
+    yield from (c.field(n, k) for n in range(c.order + 1) for k in range(c.unknowns))
 
 
 def _unbalanced(computation: Computation) -> list[str]:
@@ -183,9 +196,28 @@ def _where(computation: Computation, symbol: sp.Symbol) -> str:
     return "it enters at a higher order, or cancels"
 
 
+def _growing(computation: Computation) -> list[str]:
+    """Roots of the leading order with positive real part, where its matrices are numbers."""
+    operator = computation.canonical.operator
+    if operator is None:
+        return []
+    rates = leading_growth(operator, dict(computation.canonical.meanings))
+    if rates is None or max(rates) <= 1e-9:
+        return []
+    return [
+        f"the leading order has a motion that grows like exp({max(rates):.6g}*t) beside the modes carried: the "
+        "expansion describes the invariant set on which it is absent, and no motion near it stays there"
+    ]
+
+
 def _assumptions(computation: Computation) -> list[str]:
     bases = computation.canonical.bases
     found = [f"{name} is assumed to be rationally independent of the other frequencies" for name in bases.assumed]
+    if computation.representation == "complex":
+        found.append(
+            "some natural frequencies have no closed form: coefficients are floating-point numbers, and these "
+            "frequencies are assumed to be rationally independent of all others"
+        )
     for frequency in computation.canonical.frequencies:
         if not frequency.is_positive:
             found.append(f"the natural frequency {frequency} is assumed to be positive")

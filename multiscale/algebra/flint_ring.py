@@ -47,8 +47,6 @@ class FlintRing(NamedTerms):
         for name, value in spec.roots:
             k = spec.index[name]
             self._squares.append((k, self.generators[k] ** 2 - self.read(dict(value))))
-        # Later roots may have earlier ones in their squares, so they go first.
-        self._squares.reverse()
         # Moduli first: what they give may meet a reciprocal.
         generators = self.generators
         moduli = [(g, h, generators[g] * generators[h] - generators[r] ** 2) for g, h, r in spec.squared_moduli]
@@ -72,9 +70,11 @@ class FlintRing(NamedTerms):
 
     def normal(self, x: Any) -> Any:
         degrees = x.degrees()
+        # The square of a root may contain roots after it, so that degrees are looked at again when one was reduced.
         for k, relation in self._squares:
             if degrees[k] > 1:
                 x = x % relation
+                degrees = x.degrees()
         if self.spec.moduli and self._inverses:
             for _, _, relation in self._inverses:
                 x = x % relation

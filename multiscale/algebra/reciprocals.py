@@ -31,13 +31,13 @@ def _without_root(ring: Ring, x: Any, k: int) -> Any:
 def _rationalised(ring: Ring, x: Any) -> tuple[Any, Any]:
     """(n, d) with 1/x = n/d and d free of roots and reciprocals."""
     numerator = ring.one
-    used = {k for m, _ in ring.terms(x) for k, e in enumerate(m) if e}
-    # A later root may have an earlier one in its square, so the last goes first.
-    for k in range(len(ring.spec.roots), -1, -1):
-        if k in used and any(m[k] for m, _ in ring.terms(x)):
+    # A root may have roots after it in its square, so the first goes first; i comes last.
+    for k in (*range(1, len(ring.spec.roots) + 1), 0):
+        if any(m[k] for m, _ in ring.terms(x)):
             mirrored = _without_root(ring, x, k)
             numerator, x = ring.normal(numerator * mirrored), ring.normal(x * mirrored)
     index = ring.spec.index
+    used = {k for m, _ in ring.terms(x) for k, e in enumerate(m) if e}
     for h, p in ring.spec.reciprocals:
         if index[h] not in used:
             continue

@@ -39,9 +39,10 @@ Key = TypeVar("Key", bound=Hashable)
 class RingSpec:
     """The generators of a ring, by name.
 
-    `roots` are pairs (g, p) with g**2 = p, p free of roots that come later; `pairs` are complex-conjugate partners, of
-    which those whose first name is in `units` lie on the unit circle (partner = reciprocal): phases. `reciprocals`
-    are pairs (h, p) with h = 1/p, the p primitive (see `polynomial.primitive`), irreducible and pairwise coprime.
+    `roots` are pairs (g, p) with g**2 = p, p free of g and of the roots before it; `pairs` are complex-conjugate
+    partners, of which those whose first name is in `units` lie on the unit circle (partner = reciprocal): phases.
+    `reciprocals` are pairs (h, p) with h = 1/p, the p primitive (see `polynomial.primitive`), irreducible and pairwise
+    coprime.
     `moduli` are pairs (z, r): the real generator r is the modulus |z| of the pair that z belongs to.
     """
 

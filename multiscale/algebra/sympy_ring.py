@@ -78,7 +78,6 @@ class SympyRing(NamedTerms):
         self._squares = [(0, -self.one)]
         for name, value in spec.roots:
             self._squares.append((spec.index[name], self.read(dict(value))))
-        self._squares.reverse()
 
     def constant(self, value: Fraction | int) -> Any:
         value = Fraction(value)

@@ -1,6 +1,7 @@
-"""Linear parts: kernel, adjoint projection and inversion at a rate. The only rooms that know s² + ω².
+"""Linear parts: kernel, adjoint projection and inversion at a rate. The only rooms that know L_0(s).
 
-The contract, for residual = Σ_r residual|_r of rate r (a rate is an integer vector in units of the base frequencies):
+`size` counts unknowns and equations, `modes` the oscillations that are carried (fewer, where others decay). The
+contract, for residual = Σ_r residual|_r of rate r (a rate is an integer vector in units of the base frequencies):
 
     apply(pending)       [εⁿ] L_0(d/dt) u with U_n and the unknown D_nA left out
     modes_at(r)          the modes a whose rate is r
@@ -8,6 +9,7 @@ The contract, for residual = Σ_r residual|_r of rate r (a rate is an integer ve
     solve(part, r)       the particular solution of  L_0(ir) U = −(part + Σ_a L_0'(ir) φ_a D_nA_a)  with ℓ_a^H U = 0
     act(part, r)         L_0(ir) part
     bracket(changes)     Σ_a L_0'(iω_a) φ_a D_nA_a for given D_nA
+    value(r)             the frequency that a rate stands for, as a ring element
     divisors(pairs)      what `project` and `solve` divide by for the (equation, rate) pairs of a level
 
     Law:  act(solve(part, r), r) + bracket(project(part, r)) + part = 0
@@ -19,6 +21,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from typing import Any, Protocol, TypeAlias
 
+from multiscale.algebra.polynomial import Frozen
 from multiscale.algebra.ring import Ring
 from multiscale.tower import Field
 
@@ -29,17 +32,19 @@ Rate: TypeAlias = tuple[int, ...]
 
 @dataclass(frozen=True)
 class Mode:
-    """One oscillation of the leading-order problem: its rate and its shape φ, component by component."""
+    """One oscillation of the leading-order problem: its rate and its shape φ, component by component (by name)."""
 
     rate: Rate
-    shape: tuple[int, ...]
+    shape: tuple[Frozen, ...]
 
 
 class LinearPart(Protocol):
     """What the hierarchy asks of L_0; see the head of this module."""
 
     modes: tuple[Mode, ...]
+    size: int
 
+    def value(self, rate: Rate) -> Any: ...
     def in_ring(self, ring: Ring) -> LinearPart: ...
     def apply(self, pending: tuple[Field, Field]) -> Field: ...
     def modes_at(self, rate: Rate) -> tuple[int, ...]: ...

@@ -26,8 +26,11 @@ class Oscillators:
 
     def __init__(self, rates: Sequence[Rate], bases: Sequence[Polynomial], unit: int, ring: Ring) -> None:
         self._rates, self._bases, self._unit, self._ring = tuple(rates), tuple(bases), unit, ring
-        size = len(self._rates)
-        self.modes = tuple(Mode(rate, tuple(int(j == k) for j in range(size))) for k, rate in enumerate(self._rates))
+        self.size = size = len(self._rates)
+        one = (((), Fraction(1)),)
+        self.modes = tuple(
+            Mode(rate, tuple(one if j == k else () for j in range(size))) for k, rate in enumerate(self._rates)
+        )
         scale = Fraction(1, unit)
         self._values = [ring.read({m: c * scale for m, c in base.items()}) for base in self._bases]
         self._inverses: dict[tuple[int, Rate], Any] = {}

@@ -6,8 +6,8 @@ natural frequencies and their base frequencies, and eliminates the parameters th
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
 from fractions import Fraction
 
 import sympy as sp
@@ -18,6 +18,7 @@ from multiscale.algebra.ring import RingSpec
 from multiscale.clock import Modulus
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
+from multiscale.linear_part.general import Operator
 from multiscale.problem.drives import Drive
 from multiscale.problem.frequencies import Bases, bases_of, denested, eliminated, square_root
 from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_drives
@@ -25,9 +26,9 @@ from multiscale.problem.preparation import Prepared
 from multiscale.problem.projection import Harmonic, TorusMean
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import Detuning, detuning_of
-from multiscale.problem.terms import Layout, match, tabulate
+from multiscale.problem.terms import Entry, Layout, match, tabulate
 
-__all__ = ["Canonical", "canonical_form"]
+__all__ = ["Canonical", "Working", "canonical_form", "completed", "hide", "working_copy"]
 
 ONE = (((), Fraction(1)),)
 
@@ -39,10 +40,12 @@ class Canonical:
     `spec` holds every generator (amplitude pairs ``@zk``, ``@zk~`` first), `meanings` what each coefficient generator
     stands for in the user's symbols, `force` the right-hand sides, `bases` the natural frequencies as rates, `drives`
     the phasors, `slow` the time derivative (in εt) of each slow generator, `detunings` how detunings follow from the
-    frequencies of their relations. `truncated` says that a statement exact in ε was expanded, so that a higher order
-    needs the canonical form anew. `harmonics` are the Fourier coefficients of forces that are not polynomial, `numeric`
-    their spelling for evaluation, `moduli` the moduli of amplitudes among the generators, and `left_out` says in words
-    which harmonics are not there. `torus` are the averages of forces that depend on several phases.
+    frequencies of their relations, `operator` the matrices of L_0 where it is not diag(s² + ω_k²). `truncated` says
+    that a statement exact in ε was expanded, so that a higher order needs the canonical form anew.
+    `named_frequencies` are those of all modes of coupled equations, carried or not. `harmonics` are the Fourier
+    coefficients of forces that are not polynomial, `numeric` their spelling for evaluation, `moduli` the moduli of
+    amplitudes among the generators, and `left_out` says in words which harmonics are not there. `torus` are the
+    averages of forces that depend on several phases.
     """
 
     spec: RingSpec
@@ -59,11 +62,18 @@ class Canonical:
     moduli: tuple[Modulus, ...] = ()
     left_out: tuple[str, ...] = ()
     torus: tuple[TorusMean, ...] = ()
+    operator: Operator | None = None
+    named_frequencies: tuple[sp.Expr, ...] = ()
 
 
 @dataclass
-class _Working:
-    """Equations, phasor rates and slow rates, in which parameters are eliminated together."""
+class Working:
+    """Equations, phasor rates and slow rates, in which parameters are eliminated together.
+
+    `hidden` are the symbols of radicals and what they stand for; those in `relations` eliminate no parameter, so that
+    their squares are relations of the ring, a radical standing before those inside it; those in `numbers` have
+    no closed form.
+    """
 
     equations: list[sp.Expr]
     rates: list[list[sp.Expr]]
@@ -71,6 +81,8 @@ class _Working:
     slow: dict[sp.Symbol, sp.Expr]
     hidden: dict[sp.Symbol, sp.Expr]
     detunings: list[Detuning]
+    relations: list[tuple[sp.Symbol, sp.Expr]] = field(default_factory=list)
+    numbers: list[sp.Symbol] = field(default_factory=list)
 
     def replace(self, symbol: sp.Symbol, value: sp.Expr) -> None:
         self.equations = [x.subs(symbol, value) for x in self.equations]
@@ -79,12 +91,8 @@ class _Working:
         self.slow = {s: x.subs(symbol, value) for s, x in self.slow.items() if s != symbol}
 
 
-def canonical_form(
-    prepared: Prepared, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], names: list[sp.Expr]
-) -> Canonical:
-    """Raises `ProblemError`, `ResonanceError` or `UnsupportedTermError`, naming the equation or the term."""
-    dynamic = (*layout.jets, layout.small)
-    working = _Working(
+def working_copy(prepared: Prepared, layout: Layout) -> Working:
+    return Working(
         [with_exact_oscillators(x, layout) for x in prepared.equations],
         [list(series) for series in prepared.rates],
         list(prepared.exact_rates),
@@ -92,11 +100,30 @@ def canonical_form(
         {},
         list(prepared.relations.detunings),
     )
+
+
+def canonical_form(
+    prepared: Prepared,
+    layout: Layout,
+    shown: Mapping[sp.Symbol, sp.Expr],
+    names: list[sp.Expr],
+    read: tuple[Reader, list[list[Entry]]] | None = None,
+) -> Canonical:
+    """Raises `ProblemError`, `ResonanceError` or `UnsupportedTermError`, naming the equation or the term.
+
+    `read` are the equations of `prepared` if they were read before.
+    """
+    dynamic = (*layout.jets, layout.small)
+    working = working_copy(prepared, layout)
     forced = dict(prepared.relations.frequencies)
     while True:
         current = working.equations
-        reader = Reader(current, dynamic, shown)
-        tables = [tabulate(reader, equation, layout) for equation in current]
+        if read is None or current != prepared.equations:
+            reader = Reader(current, dynamic, shown)
+            tables = [tabulate(reader, equation, layout) for equation in current]
+        else:
+            reader, tables = read
+        read = None
         leaders = match(tables, reader, layout, names)
         order = [leaders.index(k) for k in range(len(names))]
         current, tables = [current[j] for j in order], [tables[j] for j in order]
@@ -120,7 +147,7 @@ def canonical_form(
 
 
 def _frequencies(
-    reader: Reader, squares: list[Quotient], names: list[sp.Expr], working: _Working, small: sp.Symbol
+    reader: Reader, squares: list[Quotient], names: list[sp.Expr], working: Working, small: sp.Symbol
 ) -> list[sp.Expr] | None:
     """The natural frequencies; None when a parameter was eliminated and the equations must be read again."""
     roots = []
@@ -137,13 +164,13 @@ def _frequencies(
         radical = sp.sqrt(root.radicand)
         if root.radicand.free_symbols:
             radical = sp.Symbol(f"sqrt({root.radicand})", positive=True)
-            if radical not in working.hidden and _hide(radical, root.radicand, working):
+            if radical not in working.hidden and hide(radical, root.radicand, working):
                 return None
         roots.append(root.outside * radical)
     return denested(roots)
 
 
-def _hide(radical: sp.Symbol, radicand: sp.Expr, working: _Working) -> bool:
+def hide(radical: sp.Symbol, radicand: sp.Expr, working: Working) -> bool:
     """Introduce w = √radicand; True if a parameter could be eliminated by it."""
     change = sp.Add(*(sp.diff(radicand, s) * rate for s, rate in working.slow.items())) / (2 * radical)
     replacement = eliminated(radicand, radical, frozenset(working.hidden))
@@ -156,7 +183,7 @@ def _hide(radical: sp.Symbol, radicand: sp.Expr, working: _Working) -> bool:
 
 
 def _assembled(
-    working: _Working,
+    working: Working,
     prepared: Prepared,
     layout: Layout,
     shown: Mapping[sp.Symbol, sp.Expr],
@@ -173,6 +200,24 @@ def _assembled(
         lead = inertia(table, k).power
         weak = [e for e in table if e.power > lead or not e.factors]
         force.append(tuple(Term(e.power - lead, e.factors, tuple((m, -c) for m, c in e.coefficient)) for e in weak))
+    canonical = completed(working, prepared, reader, bases, force, frequencies)
+    refuse_resonant_drives(
+        canonical.force, canonical.bases.rates, canonical.drives, canonical.frequencies, range(len(force)), layout
+    )
+    return canonical
+
+
+def completed(
+    working: Working,
+    prepared: Prepared,
+    reader: Reader,
+    bases: Bases,
+    force: Sequence[tuple[Term, ...]],
+    frequencies: Sequence[sp.Expr],
+    operator: Operator | None = None,
+    named: Sequence[sp.Expr] = (),
+) -> Canonical:
+    """The canonical form from the forces and the rates of `frequencies` and, after them, of the phasors."""
     renamed = {f"1/({p.symbol.name})": f"{p.symbol.name}~" for p in prepared.phasors}
     force = [tuple(Term(t.power, t.factors, _rename(t.coefficient, renamed)) for t in terms) for terms in force]
     count = len(frequencies)
@@ -189,10 +234,11 @@ def _assembled(
     )
     modes = Bases(bases.values, bases.rates[:count], bases.unit, bases.assumed)
     slow = {s.name: freeze(reader.reduced(reader.read(x))) for s, x in working.slow.items()}
-    spec, slow = _pruned(reader.ring.spec, force, modes, drives, slow)
+    linear = [] if operator is None else operator.polynomials
+    spec, slow = _pruned(reader.ring.spec, force, modes, drives, slow, linear)
     meanings = _meanings(reader, spec, working, prepared)
     shown_frequencies = tuple(f.subs(working.hidden).subs(prepared.leaves.meanings) for f in frequencies)
-    canonical = Canonical(
+    return Canonical(
         spec,
         meanings,
         tuple(force),
@@ -202,12 +248,12 @@ def _assembled(
         tuple(slow.items()),
         tuple(working.detunings),
         prepared.truncated,
+        operator=operator,
+        named_frequencies=tuple(named),
     )
-    refuse_resonant_drives(canonical.force, canonical.bases.rates, drives, shown_frequencies, layout)
-    return canonical
 
 
-def _meanings(reader: Reader, spec: RingSpec, working: _Working, prepared: Prepared) -> tuple[tuple[str, sp.Expr], ...]:
+def _meanings(reader: Reader, spec: RingSpec, working: Working, prepared: Prepared) -> tuple[tuple[str, sp.Expr], ...]:
     leaves = prepared.leaves.meanings
     named = {
         name: value.subs(working.hidden).subs(leaves) for name, value in reader.meanings.items() if name in spec.index
@@ -222,11 +268,16 @@ def _rename(polynomial: Frozen, names: Mapping[str, str]) -> Frozen:
 
 
 def _pruned(
-    spec: RingSpec, force: list[tuple[Term, ...]], bases: Bases, drives: tuple[Drive, ...], slow: dict[str, Frozen]
+    spec: RingSpec,
+    force: list[tuple[Term, ...]],
+    bases: Bases,
+    drives: tuple[Drive, ...],
+    slow: dict[str, Frozen],
+    linear: list[Frozen],
 ) -> tuple[RingSpec, dict[str, Frozen]]:
     """The generators in use, amplitude pairs and phasors first, and the slow ones among them."""
     polynomials = [term.coefficient for terms in force for term in terms] + list(bases.values)
-    polynomials += [p for d in drives for p in d.detunings]
+    polynomials += [*linear, *(p for d in drives for p in d.detunings)]
     below = dict(spec.reciprocals) | dict(spec.roots)
     used: set[str] = set()
     while polynomials:
@@ -234,7 +285,7 @@ def _pruned(
         used |= new
         polynomials = [slow[name] for name in new if name in slow] + [below[name] for name in new if name in below]
     phasors = tuple((d.generator, f"{d.generator}~") for d in drives)
-    pairs = (*((f"@z{k}", f"@z{k}~") for k in range(len(force))), *phasors)
+    pairs = (*((f"@z{k}", f"@z{k}~") for k in range(len(bases.rates))), *phasors)
     units = frozenset(e for e, _ in phasors)
     reciprocals = tuple((h, p) for h, p in spec.reciprocals if h in used)
     reals = tuple(r for r in spec.reals if r in used and r not in units)

@@ -15,7 +15,7 @@ from multiscale.problem.laws import LAW
 from multiscale.problem.reading import Reader, unsupported
 from multiscale.problem.terms import Entry, Layout, show
 
-__all__ = ["inertia", "own_stiffness", "refuse_resonant_drives"]
+__all__ = ["inertia", "is_driven", "misplaced", "own_stiffness", "refuse_resonant_drives"]
 
 
 def inertia(table: list[Entry], k: int) -> Entry:
@@ -23,7 +23,7 @@ def inertia(table: list[Entry], k: int) -> Entry:
     return min((e for e in table if e.factors == ((k, 2),)), key=lambda e: e.power)
 
 
-def _driven(entry: Entry) -> bool:
+def is_driven(entry: Entry) -> bool:
     return any("@e" in name for monomial, _ in entry.coefficient for name, _ in monomial)
 
 
@@ -32,8 +32,8 @@ def own_stiffness(table: list[Entry], k: int, reader: Reader, layout: Layout, po
     own = [e for e in table if e.factors == ((k, 0),) and e.power == power]
     for e in table:
         at_leading_order = e.power <= power and e.factors != ((k, 2),)
-        if at_leading_order and (e not in own or _driven(e)) and (e.factors or e.power < power):
-            raise _misplaced(show(e, reader, layout), e, k, power, layout)
+        if at_leading_order and (e not in own or is_driven(e)) and (e.factors or e.power < power):
+            raise misplaced(show(e, reader, layout), e, k, power, layout)
     if not own:
         u = reader.show(next(s for s, jet in layout.jets.items() if jet == (k, 0)))
         raise ProblemError(
@@ -43,11 +43,12 @@ def own_stiffness(table: list[Entry], k: int, reader: Reader, layout: Layout, po
     return reduced(reader.ring, reader.ring.read(dict(own[0].coefficient)))
 
 
-def _misplaced(term: sp.Expr, entry: Entry, k: int, power: int, layout: Layout) -> Exception:
+def misplaced(term: sp.Expr, entry: Entry, k: int | None, power: int, layout: Layout) -> Exception:
+    """Why a term cannot stand where it does; `k` is the unknown of its oscillator, None for coupled equations."""
     remedy = (
         f"Raise its order above {power} through `ordering`" if layout.ordered else f"Give it a factor {layout.small}"
     )
-    if not entry.factors and not _driven(entry):
+    if not entry.factors and not is_driven(entry):
         return unsupported(
             term,
             "a constant force is left, so the state of rest is not zero",
@@ -59,7 +60,7 @@ def _misplaced(term: sp.Expr, entry: Entry, k: int, power: int, layout: Layout) 
         reason = f"its order {entry.power} is below the order {power} of the unknown its equation belongs to"
     elif len(entry.factors) > 1 or entry.factors[0][1] == LAW:
         reason = "a nonlinear term stands at leading order"
-    elif _driven(entry):
+    elif is_driven(entry):
         reason = "a parametric drive stands at leading order, where coefficients must be constant or slow"
     elif entry.factors[0] == (k, 1):
         reason = "damping stands at leading order, where the oscillators must be undamped"
@@ -73,18 +74,24 @@ def refuse_resonant_drives(
     force: Sequence[Sequence[Term]],
     modes: Sequence[Rate],
     drives: Sequence[Drive],
-    frequencies: Sequence[sp.Expr],
+    frequencies: Sequence[sp.Expr | str],
+    reached: Sequence[int] | None,
     layout: Layout,
 ) -> None:
-    """A drive of order ε⁰ at a natural frequency has no bounded response."""
+    """A drive of order ε⁰ at a natural frequency has no bounded response.
+
+    `reached[k]` is the mode that the k-th equation drives, None where every equation may drive every mode.
+    """
     for k, terms in enumerate(force):
         for monomial, _ in (m for term in terms if not term.factors and not term.power for m in term.coefficient):
             powers = dict(monomial)
             counts = [powers.get(d.generator, 0) - powers.get(f"{d.generator}~", 0) for d in drives]
-            rate = tuple(sum(n * d.rate[b] for n, d in zip(counts, drives, strict=True)) for b in range(len(modes[k])))
-            if rate in (modes[k], tuple(-r for r in modes[k])):
+            rate = tuple(sum(n * d.rate[b] for n, d in zip(counts, drives, strict=True)) for b in range(len(modes[0])))
+            both = (rate, tuple(-r for r in rate))
+            met = next((a for a in (range(len(modes)) if reached is None else [reached[k]]) if modes[a] in both), None)
+            if met is not None:
                 combination = sp.Add(*(abs(n) * d.frequency for n, d in zip(counts, drives, strict=True)))
-                own = frequencies[k]
+                own = frequencies[met]
                 name = "Omega, a symbol of its own for the drive frequency," if combination == own else str(combination)
                 raise ResonanceError(
                     f"a drive at leading order has the frequency {combination}, the natural frequency {own} of its "

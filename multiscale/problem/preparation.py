@@ -55,8 +55,11 @@ def prepare(
     unknowns: Sequence[sp.Expr],
     shown: Mapping[sp.Symbol, sp.Expr],
     order: int,
+    modes: Mapping[sp.Symbol, int],
 ) -> Prepared:
-    """`orders` concern jets and parameters. Raises `UnsupportedTermError`, `ProblemError` or `ResonanceError`."""
+    """`orders` concern jets and parameters, `modes` are symbols for natural frequencies.
+
+    Raises `UnsupportedTermError`, `ProblemError` or `ResonanceError`."""
     small = layout.small
     carried = {s: small**q * s for s, q in orders.items()}
     plain = with_orders(list(equations), orders, small)
@@ -64,7 +67,7 @@ def prepare(
     plain, phasors = with_phasors(plain, time, small, set(layout.jets))
     drives = set().union(*(p.rate.free_symbols for p in phasors)) - {time, small}
     known = set().union(*(x.free_symbols for x in equations))
-    relations = relations_of(resonances, unknowns, small, drives, known, carried) if resonances else Relations()
+    relations = relations_of(resonances, unknowns, small, drives, known, carried, modes) if resonances else Relations()
     _check_used(relations, plain, phasors)
     leaves = SlowLeaves(time, small, shown=shown)
     result = []

@@ -7,15 +7,19 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import replace
 from functools import cached_property
 from operator import index
+from re import fullmatch
 from typing import Any, SupportsIndex
 
 import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.latex import shortened
-from multiscale.problem.canonical import Canonical, canonical_form
+from multiscale.problem.canonical import Canonical
+from multiscale.problem.coupled import form_of
 from multiscale.problem.force_law import ForceLaw, laws_of
 from multiscale.problem.laws import LAW, Law, separated
+from multiscale.problem.matrices import equations_of, size_of
+from multiscale.problem.modes import Choice, modes_given, references_given
 from multiscale.problem.ordering import with_orders
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.projected import with_projections
@@ -34,13 +38,14 @@ class Problem:
     Parameters
     ----------
     equations : Expr, Eq, or a sequence of them
-        An expression means "= 0". Each equation describes one oscillator, u'' + ω²u + … = 0, where ω² is any positive
-        expression; everything else must be small. Polynomials in the unknowns and their first and second time
-        derivatives go to any order, and so do analytic functions of unknowns that are small (`ordering`): sin(u),
-        1/(g - u)**2, exp(u), sin(u1 - u2), by their Taylor polynomials to the order that is asked for. Where unknowns
-        are not small, other forces, such as ``Abs(v)*v``, ``sign(v)``, ``sin(u)``, ``Max(u - g, 0)``, are averaged over
-        a cycle at first order (homogeneous ones with a continuous derivative also at second), each of one unknown. Any
-        consistent units.
+        An expression means "= 0". At leading order the equations are linear with constant coefficients: one oscillator
+        each, u'' + ω²u + … = 0, or coupled, gyroscopic, damped and of first or second order as they come, with at least
+        one motion that neither grows nor decays. Everything else must be small. Polynomials in the unknowns and their
+        first and second time derivatives go to any order, and so do analytic functions of unknowns that are small
+        (`ordering`): sin(u), 1/(g - u)**2, sin(u1 - u2), by their Taylor polynomials to the order that is asked for. Of
+        unknowns that are not small, other forces, such as ``Abs(v)*v``, ``sign(v)``, ``sin(u)``, ``Max(u - g, 0)``, are
+        averaged over a cycle at first order (homogeneous ones with a continuous derivative also at second), each of one
+        unknown. Any consistent units.
     unknowns : applied function, or a sequence of them
         ``u(t)``, as many as there are equations, all of the same time symbol.
     small : Symbol, optional
@@ -50,8 +55,9 @@ class Problem:
         then made by the library as a bookkeeping symbol whose value is 1, and results are in the user's own unknowns.
     resonances : mapping, or sequence of Eq, optional
         Relations with detuning, ``{Omega: w0 + eps*sigma}``; the left side is eliminated. It may be a symbol,
-        its square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. Frequencies
-        in exact rational ratio are resonant without a relation.
+        its square, a combination (``2*Omega1 + Omega2``) or an unknown, which means its natural frequency. For coupled
+        equations the symbols ``omega_1``, ``omega_2``, … mean the natural frequencies of the modes, on either side.
+        Frequencies in exact rational ratio are resonant without a relation.
     about : mapping, optional
         Positions of rest from which unknowns are measured: {u: u_s} puts u_s + u in the place of u, in `equations` and
         in every result. A new symbol u_s (or a number) eliminates a parameter by the equilibrium, preferably a load,
@@ -67,6 +73,12 @@ class Problem:
         Also carry forces with a kink, such as ``Abs(u)``, to second order, which is formal.
     time : Symbol, optional
         Needed only to check that it is the one meant.
+    modes : sequence of int, optional
+        The modes to carry, numbered from 0 by increasing frequency; default all. The others are taken to be at rest but
+        for what the carried ones force on them; modes that decay at leading order are never carried.
+    references : mapping, optional
+        ``{mode: unknown}``: the coordinate in which the amplitude of a mode is measured, if not the first unknown that
+        takes part in it.
 
     Raises
     ------
@@ -109,6 +121,8 @@ class Problem:
         laws: Mapping[Any, ForceLaw | Any] | None = None,
         harmonics: int | None = None,
         formal: bool = False,
+        modes: Sequence[int] | None = None,
+        references: Mapping[int, sp.Expr] | None = None,
     ) -> None:
         self.unknowns: tuple[sp.Expr, ...] = _unknowns(unknowns)
         self.time: sp.Symbol = _time(self.unknowns, time)
@@ -124,6 +138,8 @@ class Problem:
             _ordering(ordering, self.unknowns, self.time) if ordering is not None else None
         )
         self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
+        self.modes: tuple[int, ...] | None = modes_given(modes)
+        self.references: dict[int, sp.Expr] = references_given(references, self.unknowns)
         if about is not None:
             self._measure_from(rest_positions(about, self.unknowns, self.time, small), small)
         beside = [x for x in (*(self.ordering or {}), small) if isinstance(x, sp.Symbol)]
@@ -142,6 +158,69 @@ class Problem:
         shifted, relations = about_rest(self._hidden(), jets, about, vanishing, stated, self.time)
         self.equations = tuple(x.xreplace(jets) for x in shifted)
         self.resonances = (*self.resonances, *relations)
+
+    @classmethod
+    def from_matrices(
+        cls,
+        M: Any = None,
+        C: Any = None,
+        G: Any = None,
+        K: Any = None,
+        *,
+        quadratic: Any = None,
+        cubic: Any = None,
+        drive: Sequence[sp.Expr] | None = None,
+        small: sp.Symbol | None = None,
+        unknowns: Sequence[sp.Expr] | None = None,
+        orders: Mapping[str, int] | None = None,
+        **options: Any,
+    ) -> Problem:
+        """The problem M u'' + (ε^p C + G) u' + K u + ε^q Q(u, u) + ε^r T(u, u, u) = ε^s drive.
+
+        Parameters
+        ----------
+        M, C, G, K : matrices (SymPy, NumPy or nested sequences)
+            Inertia, weak damping, gyroscopic (or other leading) damping, stiffness, of shape (N, N); K need not be
+            symmetric. Without M the equations are of first order, and C stands at leading order.
+        quadratic, cubic : mapping or array, optional
+            Coefficients Q_ijk and T_ijkl as ``{(i, j, k): c}``, ``{(i, j, k, l): c}`` with the equation first and every
+            product of unknowns written once or as often as wished (entries add up), or arrays (N, N, N), (N, N, N, N).
+        drive : sequence of N expressions, optional
+            Forces on the right-hand side, such as ``f*cos(Omega*t)``.
+        small : Symbol, optional
+            Default: a positive ``epsilon``.
+        unknowns : sequence of applied functions, optional
+            Default: ``u_1(t)``, ``u_2(t)``, …
+        orders : mapping, optional
+            The powers of `small`, by default ``{"C": 2, "quadratic": 1, "cubic": 2, "drive": 2}``: amplitudes of order
+            ε, damping of the size of the cubic terms. ``{"C": 0}`` puts damping at leading order.
+        **options
+            `resonances`, `modes`, `references` as for `Problem`.
+
+        Raises
+        ------
+        ProblemError
+            Shapes or indices that do not fit.
+
+        Examples
+        --------
+        >>> import multiscale as ms
+        >>> problem = ms.Problem.from_matrices([[1, 0], [0, 1]], K=[[3, -1], [-1, 3]], cubic={(0, 0, 0, 0): 1})
+        >>> problem.natural_frequencies
+        (sqrt(2), 2)
+        """
+        matrices = {"M": M, "C": C, "G": G, "K": K}
+        time = sp.Symbol("t", real=True)
+        if unknowns is None:
+            unknowns = [sp.Function(f"u_{k + 1}")(time) for k in range(size_of(matrices))]
+        else:
+            unknowns = _unknowns(unknowns)
+            time = _time(unknowns, None)
+        small = sp.Symbol("epsilon", positive=True) if small is None else small
+        tensors = {"quadratic": quadratic, "cubic": cubic}
+        return cls(
+            equations_of(matrices, tensors, drive, unknowns, time, small, orders), unknowns, small=small, **options
+        )
 
     @cached_property
     def small(self) -> sp.Symbol:
@@ -171,6 +250,8 @@ class Problem:
         # What only the natural frequency of an unknown contained is gone where a relation gives that frequency.
         natural = [d.formula.free_symbols for d in form.detunings if d.eliminated is None]
         gone |= set().union(*natural) - used - {self.small}
+        if form.operator is not None:
+            gone |= self._mode_symbols.keys()
         return tuple(sorted(self._symbols - {self._given_small} - gone, key=lambda s: str(s.name)))
 
     @property
@@ -182,8 +263,16 @@ class Problem:
 
     @property
     def natural_frequencies(self) -> tuple[sp.Expr, ...]:
-        """ω of each unknown at leading order, in the user's symbols."""
+        """ω of each mode at leading order, in the user's symbols: of each unknown where the unknowns are uncoupled."""
         return self.canonical(1).frequencies
+
+    @property
+    def frequency_names(self) -> tuple[str, ...]:
+        """What the natural frequencies are called in messages: omega_u for an oscillator u, omega_1, … for modes."""
+        form = self.canonical(1)
+        if form.operator is None:
+            return tuple(f"omega_{u.func.__name__}" for u in self.unknowns)
+        return tuple(f"omega_{a + 1}" for a in range(len(form.frequencies)))
 
     @property
     def drives(self) -> tuple[sp.Expr, ...]:
@@ -199,7 +288,22 @@ class Problem:
         """An expression with the symbols that relations eliminate replaced by their values."""
         for symbol, value in self._prepared(1).relations.values:
             x = x.subs(symbol, value)
-        return x
+        return x.subs(self.mode_frequencies)
+
+    @cached_property
+    def mode_frequencies(self) -> dict[sp.Symbol, sp.Expr]:
+        """What the symbols omega_1, omega_2, … of relations stand for where the equations are coupled."""
+        if not self._mode_symbols:
+            return {}
+        frequencies = self.canonical(1).named_frequencies
+        return {s: frequencies[a] for s, a in self._mode_symbols.items() if a < len(frequencies)}
+
+    @cached_property
+    def _mode_symbols(self) -> dict[sp.Symbol, int]:
+        """{omega_1: 0, …} for the symbols of relations that name natural frequencies of coupled equations."""
+        stated = {s for pair in self.resonances for x in pair if x not in self.unknowns for s in x.free_symbols}
+        apart = stated - set().union(*(x.free_symbols for x in self.equations))
+        return {s: int(m[1]) - 1 for s in apart if (m := fullmatch(r"omega_([1-9]\d*)", s.name))}
 
     def canonical(self, order: int) -> Canonical:
         """The canonical form for an expansion to the given order; most problems have one form for all orders."""
@@ -211,7 +315,15 @@ class Problem:
             if self.ordering is not None:
                 shown[self.small] = sp.Integer(1)
             layout, shown = _with_laws(self._layout, shown, prepared.laws)
-            form = canonical_form(prepared, layout, shown, list(self.unknowns))
+            names = list(self.unknowns)
+            form = form_of(prepared, layout, shown, names, self._choice, self._mode_symbols)
+            if prepared.laws and form.operator is not None:
+                force = prepared.laws[0].force.xreplace({sp.Symbol(s.name, real=True): x for s, x in shown.items()})
+                raise unsupported(
+                    force,
+                    "forces that are not polynomial are averaged for oscillators that are uncoupled at leading order",
+                    "Write the equations in modal coordinates",
+                )
             if prepared.laws:
                 form = with_projections(
                     form, prepared.laws, layout, shown, self.phase, order, self.harmonics, self.formal
@@ -244,6 +356,10 @@ class Problem:
             name += "_u"
         return sp.Symbol(name, real=True)
 
+    @property
+    def _choice(self) -> Choice:
+        return Choice(self.modes, tuple((a, self.unknowns.index(u)) for a, u in sorted(self.references.items())))
+
     @cached_property
     def _layout(self) -> Layout:
         jets = {sp.Symbol(f"@{k}.{d}"): (k, d) for k in range(len(self.unknowns)) for d in (0, 1, 2)}
@@ -261,7 +377,17 @@ class Problem:
         laws: tuple[Law, ...] = ()
         if self.ordering is None:
             hidden, laws = separated(hidden, self._layout, self.time, shown, self.laws)
-        prepared = prepare(hidden, self._layout, self.time, self._powers, self.resonances, self.unknowns, shown, order)
+        prepared = prepare(
+            hidden,
+            self._layout,
+            self.time,
+            self._powers,
+            self.resonances,
+            self.unknowns,
+            shown,
+            order,
+            self._mode_symbols,
+        )
         return replace(prepared, laws=_at_resonance(laws, prepared, self.small))
 
     @property
@@ -310,7 +436,8 @@ class Problem:
     def _key(self) -> tuple[Any, ...]:
         ordering = None if self.ordering is None else tuple(sorted(self.ordering.items(), key=str))
         laws = tuple(sorted(self.laws.items(), key=lambda item: item[0]))
-        kept = (laws, self.harmonics, self.formal)
+        references = tuple(sorted(self.references.items()))
+        kept = (laws, self.harmonics, self.formal, self.modes, references)
         return (self.equations, self.unknowns, self._given_small, ordering, self.resonances, kept)
 
     def __eq__(self, other: object) -> bool:
@@ -327,6 +454,10 @@ class Problem:
             indexed = {self.unknowns.index(x) if x in self.unknowns else x: q for x, q in self.ordering.items()}
             options["ordering"] = indexed
         options |= {"laws": self.laws, "harmonics": self.harmonics, "formal": self.formal}
+        if self.modes is not None:
+            options["modes"] = self.modes
+        if self.references:
+            options["references"] = {a: self.unknowns.index(u) for a, u in self.references.items()}
         options["resonances"] = [(self.unknowns.index(x) if x in self.unknowns else x, y) for x, y in self.resonances]
         return _rebuilt, (self._hidden(), functions, options)
 
@@ -376,6 +507,8 @@ def _rebuilt(
     named = {unknowns[x] if isinstance(x, int) else x: y for x, y in options["resonances"]}
     laws = {sp.Function(name): law for name, law in options["laws"].items()}
     options = options | {"resonances": named, "laws": laws}
+    if "references" in options:
+        options = options | {"references": {a: unknowns[k] for a, k in options["references"].items()}}
     jets = _jets(unknowns, options["time"])
     return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
 

@@ -11,7 +11,8 @@ Nothing is rounded and nothing dropped: anything else raises `UnsupportedTermErr
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import replace
 from fractions import Fraction
 from math import isqrt, prod
 from numbers import Rational, Real
@@ -75,27 +76,35 @@ class Reader:
     """Reads expressions over one fixed set of leaves.
 
     Parameters: `dynamic`, the symbols of jets and of the small parameter, which may appear polynomially only; `shown`,
-    how each of them is spelled in messages; `expressions`, everything that is going to be read.
+    how each of them is spelled in messages; `expressions`, everything that is going to be read; `relations`, symbols
+    with their squares (polynomials), a symbol before those in its square.
     """
 
     def __init__(
-        self, expressions: Iterable[sp.Expr], dynamic: Iterable[sp.Symbol], shown: Mapping[sp.Symbol, sp.Expr]
+        self,
+        expressions: Iterable[sp.Expr],
+        dynamic: Iterable[sp.Symbol],
+        shown: Mapping[sp.Symbol, sp.Expr],
+        relations: Sequence[tuple[sp.Symbol, sp.Expr]] = (),
     ) -> None:
         self.dynamic = tuple(dynamic)
         self._shown = dict(shown)
         self.meanings: dict[str, sp.Expr] = {}
         roots: dict[str, int] = {}
         denominators: list[sp.Expr] = []
-        expressions = list(expressions)
-        for expression in expressions:
+        for expression in (*expressions, *(x for relation in relations for x in relation)):
             self._collect(expression, roots, denominators)
         pairs = self._pythagorean()
-        names = tuple(name for name in sorted(self.meanings) if name not in roots and name not in pairs)
+        taken = {*roots, *pairs, *(s.name for s, _ in relations)}
+        names = tuple(name for name in sorted(self.meanings) if name not in taken)
         root_relations = tuple(
             (name, freeze({(): Fraction(roots[name])})) for name in sorted(roots, key=lambda g: roots[g])
         ) + tuple(sorted(pairs.items()))
         reals = (*(s.name for s in self.dynamic), *names)
         self.ring = SympyRing(RingSpec(pairs=(), reals=reals, roots=root_relations))
+        for symbol, square in reversed(relations):
+            value = freeze(self.ring.write(self.ring.normal(self.read(square))))
+            self.ring = SympyRing(replace(self.ring.spec, roots=((symbol.name, value), *self.ring.spec.roots)))
         for base in denominators:
             # Innermost first: `_collect` appends a denominator after those inside it.
             value = self.read(base)

@@ -35,12 +35,13 @@ class Detuning:
 @dataclass(frozen=True)
 class Relations:
     """`stated` as the user gave them; `squares[symbol]` and `values[symbol]` replace eliminated symbols; `frequencies`
-    replace the natural frequency of an unknown (by index)."""
+    replace the natural frequency of an unknown (by index), `modes` that of a mode of coupled equations (from 0)."""
 
     stated: tuple[tuple[sp.Expr, sp.Expr], ...] = ()
     values: tuple[tuple[sp.Symbol, sp.Expr], ...] = ()
     frequencies: tuple[tuple[int, sp.Expr], ...] = ()
     detunings: tuple[Detuning, ...] = ()
+    modes: tuple[tuple[int, sp.Expr], ...] = ()
 
     def apply(self, x: sp.Expr, small: sp.Symbol, order: int) -> tuple[sp.Expr, bool]:
         """(x with eliminated symbols replaced, whether a series was cut at `order`)."""
@@ -97,19 +98,24 @@ def relations_of(
     drives: set[sp.Symbol],
     known: set[sp.Symbol],
     carried: Mapping[sp.Symbol, sp.Expr],
+    modes: Mapping[sp.Symbol, int],
 ) -> Relations:
     """Read the relations.
 
     `drives` are the symbols of drive frequencies, `known` all symbols of the equations (a detuning is likely not among
-    them), `carried` puts orders into detunings.
+    them), `carried` puts orders into detunings, `modes` are the names of modes of coupled equations.
     """
     stated: list[tuple[sp.Expr, sp.Expr]] = []
     values: list[tuple[sp.Symbol, sp.Expr]] = []
     frequencies: list[tuple[int, sp.Expr]] = []
     detunings: list[Detuning] = []
+    shifted: list[tuple[int, sp.Expr]] = []
     for key, value in given:
         stated.append((key, value))
         value = _replaced(value.subs(carried), values)
+        if key in modes:
+            shifted.append((modes[key], value))
+            continue
         if key in unknowns:
             frequencies.append((unknowns.index(key), value))
             continue
@@ -118,7 +124,8 @@ def relations_of(
         values = [(s, v.subs(symbol, solved)) for s, v in values] + [(symbol, solved)]
         detunings.append(detuning_of(symbol, key, stated[-1][1].subs(carried), small, known))
     settled = tuple((k, _replaced(value, values)) for k, value in frequencies)
-    return Relations(tuple(stated), tuple(values), settled, tuple(detunings))
+    named = tuple((a, _replaced(value, values)) for a, value in shifted)
+    return Relations(tuple(stated), tuple(values), settled, tuple(detunings), named)
 
 
 def _replaced(x: sp.Expr, values: Sequence[tuple[sp.Symbol, sp.Expr]]) -> sp.Expr:

@@ -20,7 +20,11 @@ SPEC = RingSpec(
     pairs=(("z", "z~"), ("y", "y~"), ("e", "e~")),
     units=frozenset({"e"}),
     reals=("a", "w"),
-    roots=(("sqrt(2)", freeze({(): Fraction(2)})), ("r", freeze({(("a", 1),): Fraction(1), (): Fraction(3)}))),
+    roots=(
+        ("q", freeze({(("a", 1),): Fraction(1), (("r", 1),): Fraction(2), (("sqrt(2)", 1),): Fraction(1)})),
+        ("sqrt(2)", freeze({(): Fraction(2)})),
+        ("r", freeze({(("a", 1),): Fraction(1), (): Fraction(3)})),
+    ),
     reciprocals=(("1/w", freeze({(("w", 1),): Fraction(1)})),),
 )
 REPRESENTATIONS = [
@@ -167,6 +171,7 @@ DIVISORS = {
     "rational": {(): Fraction(3, 7)},
     "generator": {(("w", 2),): Fraction(2)},
     "with a root": {(): Fraction(1), (("sqrt(2)", 1),): Fraction(-2)},
+    "with a nested root": {(("q", 1),): Fraction(1), (("w", 1),): Fraction(2)},
     "with two roots": {(("w", 1),): Fraction(1), (("r", 1), ("sqrt(2)", 1)): Fraction(1)},
     "linear form": {(("w", 1),): Fraction(2), (("a", 1),): Fraction(-4)},
     "square": {(("w", 2),): Fraction(1), (("a", 1), ("w", 1)): Fraction(-2), (("a", 2),): Fraction(1)},

@@ -69,19 +69,19 @@ REFUSED = {
         ms.UnsupportedTermError,
         r"u\(t\)\*\*3: a nonlinear term.*factor epsilon",
     ),
-    "stiffness coupling": (
+    "one-way coupling of equal frequencies": (
         lambda: small([linear + eps * v, v.diff(t, 2) + v + k * u], [u, v]),
-        ms.UnsupportedTermError,
-        r"k\*u\(t\): it couples the unknowns.*modal coordinates",
+        ms.ProblemError,
+        "frequency 1 is a root of multiplicity 2.*defective",
     ),
-    "mass coupling": (
+    "one-way inertia between equal frequencies": (
         lambda: small([linear + v.diff(t, 2), v.diff(t, 2) + v + eps * u], [u, v]),
-        ms.UnsupportedTermError,
-        "couples accelerations at leading order",
+        ms.ProblemError,
+        "frequency 1 is a root of multiplicity 2.*defective",
     ),
     "no restoring term": (lambda: small(u.diff(t, 2) + eps * u**3), ms.ProblemError, "zero frequency"),
     "negative stiffness": (lambda: small(u.diff(t, 2) - k * u + eps * u**3), ms.ProblemError, "-k, not positive"),
-    "first order": (lambda: small(u.diff(t) + u + eps * u**3), ms.ProblemError, "no second derivative"),
+    "first order": (lambda: small(u.diff(t) + u + eps * u**3), ms.ProblemError, "no root on the imaginary axis"),
     "too few equations": (lambda: small(linear + eps * v, [u, v]), ms.ProblemError, "1 equations for 2 unknowns"),
     "unknown missing": (
         lambda: small([linear + eps * u, linear + eps * u**2], [u, v]),

@@ -69,8 +69,14 @@ def stated(problem: Problem) -> Statement:
     """The statement of a problem; floats stand for the decimals they print as."""
     equations = [_decimals(x) for x in problem.equations]
     relations: list[tuple[sp.Symbol, sp.Expr]] = []
+    modes = problem.mode_frequencies
     for key, value in problem.resonances:
-        value = _decimals(value)
+        if key in modes:
+            raise EvaluationError(
+                f"the relation {key} = {value} changes the stiffness along a mode of coupled equations, which the "
+                "certificate cannot redo: state the equations in modal coordinates, with a frequency symbol for the mode"
+            )
+        value = _decimals(value.subs(modes))
         if key in problem.unknowns:
             equations = _with_frequency(equations, problem, key, value)
             continue

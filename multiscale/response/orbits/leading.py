@@ -30,9 +30,14 @@ class Leading:
     terms: dict[int, Quotient]
 
 
-def check_single(canonical: Canonical, wanted: str) -> None:
-    """One oscillator, no drives, no parameters that vary."""
-    if len(canonical.force) != 1:
+def check_single(canonical: Canonical, wanted: str, coupled: bool = False) -> None:
+    """One oscillator, no drives, no parameters that vary; with `coupled` one mode carried of any number of unknowns."""
+    if coupled and len(canonical.frequencies) != 1:
+        raise UnsupportedTermError(
+            f"the expansion carries {len(canonical.frequencies)} modes: {wanted} for one mode. Carry one through "
+            "`modes` where the others stay at rest, or integrate `slow_flow`"
+        )
+    if not coupled and (len(canonical.force) != 1 or canonical.operator is not None):
         raise UnsupportedTermError(
             f"the problem has {len(canonical.force)} unknowns: {wanted} for one oscillator. State one equation; for "
             "several, integrate `slow_flow`"

@@ -1,4 +1,4 @@
-"""Limit cycles of one undriven oscillator from its expansion: amplitude and frequency as series in ε, and stability.
+"""Limit cycles of one undriven mode from its expansion: amplitude and frequency as series in ε, and stability.
 
 With ρ = a²/4 the slow flow is a'/a = Σ εⁿ R_n(ρ) and the frequency ω_0 + Σ εⁿ T_n(ρ) (`leading`). A simple positive
 root ρ_0 of the first non-vanishing R_p is the beginning of one series ρ = ρ_0 + ερ_1 + … with
@@ -54,12 +54,12 @@ class LimitCycle:
 
 
 def limit_cycles(expansion: Expansion, parameters: Mapping[Any, Any] | None = None) -> tuple[LimitCycle, ...]:
-    """All limit cycles of one undriven oscillator whose amplitude tends to a simple positive root as ε → 0.
+    """All limit cycles of one undriven mode whose amplitude tends to a simple positive root as ε → 0.
 
     Parameters
     ----------
     expansion : Expansion
-        Of one undriven oscillator.
+        Of one undriven mode; the other unknowns may be slaved to it.
     parameters : mapping, optional
         Values of parameters by Symbol or name; the others stay symbols. Exact values give exact series where the
         leading roots have a closed form.
@@ -75,7 +75,7 @@ def limit_cycles(expansion: Expansion, parameters: Mapping[Any, Any] | None = No
     ProblemError
         No level has damping (every motion is periodic: use `Expansion.frequency`), or a leading root is repeated.
     UnsupportedTermError
-        Several unknowns or drives; symbolic parameters with a leading condition of degree above two in a².
+        Several modes, or drives; symbolic parameters with a leading condition of degree above two in a².
     EvaluationError
         A name that is no parameter.
 
@@ -93,7 +93,7 @@ def limit_cycles(expansion: Expansion, parameters: Mapping[Any, Any] | None = No
     if not isinstance(expansion, Expansion):
         raise ProblemError(f"limit_cycles was given a {type(expansion).__name__}: pass the result of multiscale.expand")
     computation, problem = expansion.computation, expansion.problem
-    check_single(computation.canonical, "limit cycles are given")
+    check_single(computation.canonical, "limit cycles are given", coupled=True)
     values = _values(parameters, problem.parameters, problem.small)
     write = _written(Writer(dict(computation.canonical.meanings)), values)
     levels = [parts(computation, n) for n in range(1, expansion.order + 1)]

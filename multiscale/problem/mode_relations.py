@@ -1,0 +1,94 @@
+"""Relations in which natural frequencies of coupled equations stand by name: omega_1, omega_2, …
+
+A drive near a mode, {Omega: omega_1 + ε σ}, only needs the frequency put in. A mode whose frequency is given,
+{omega_2: 2 omega_1 + ε σ}, has its share of the stiffness replaced by that frequency,
+
+    K + (Ω² − ω_k²) M φ ψ^T M / (ψ^T M φ),      M φ ψ^T M / (ψ^T M φ) = M adj(K − ω_k² M) M / tr(adj(K − ω_k² M) M)
+
+which leaves all shapes and all other frequencies as they are and makes L_0 exactly resonant.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import replace
+
+import sympy as sp
+
+from multiscale.errors import ProblemError
+from multiscale.problem.canonical import Working
+from multiscale.problem.modes import numbering
+from multiscale.problem.preparation import Prepared
+from multiscale.problem.reading import Reader
+from multiscale.problem.relations import detuning_of
+from multiscale.problem.rows import leading_terms, linear_part, matrix
+from multiscale.problem.spectrum import Found
+from multiscale.problem.terms import Layout, tabulate
+
+__all__ = ["with_mode_relations"]
+
+
+def with_mode_relations(
+    working: Working,
+    prepared: Prepared,
+    layout: Layout,
+    shown: Mapping[sp.Symbol, sp.Expr],
+    found: list[Found],
+    modes: Mapping[sp.Symbol, int],
+) -> list[Found]:
+    """The roots with the relations in force; equations and rates of `working` are changed to agree."""
+    meant = [(f.shown or f.frequency).subs(working.hidden).subs(prepared.leaves.meanings) for f in found]
+    order = _order(working, layout, shown, found, meant) if modes else []
+    if strange := [s for s, a in modes.items() if a >= len(order)]:
+        raise ProblemError(f"a relation names {strange[0]}, but the equations have {len(order)} modes at leading order")
+    named = {s: found[order[a]].frequency for s, a in modes.items()}
+    explicit = {m: f.frequency for m, f in zip(meant, found, strict=True) if not m.is_Rational}
+
+    def read(x: sp.Expr) -> sp.Expr:
+        return x.subs(named).subs(explicit)
+
+    working.rates = [[read(x) for x in series] for series in working.rates]
+    working.exact = [read(x) for x in working.exact]
+    by_name = {s: meant[order[a]] for s, a in modes.items()}
+    working.detunings = [replace(d, formula=d.formula.subs(by_name)) for d in working.detunings]
+    known = set().union(*(x.free_symbols for x in prepared.equations))
+    for a, value in prepared.relations.modes:
+        k, exact = order[a], read(value)
+        working.detunings.append(detuning_of(None, meant[k], value.subs(by_name), layout.small, known))
+        working.equations = _shifted(working.equations, layout, shown, found[k], exact)
+        found[k] = replace(found[k], frequency=sp.expand(exact.subs(layout.small, 0)), shown=None)
+    return found
+
+
+def _order(
+    working: Working,
+    layout: Layout,
+    shown: Mapping[sp.Symbol, sp.Expr],
+    found: list[Found],
+    meant: list[sp.Expr],
+) -> list[int]:
+    """For each mode by number the root it belongs to."""
+    reader, _, bases, linear = linear_part(replace(working, rates=[]), layout, shown, found)
+    return [k for k in numbering(linear, bases, reader, found, meant) for _ in range(found[k].multiplicity)]
+
+
+def _shifted(
+    equations: list[sp.Expr], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], mode: Found, value: sp.Expr
+) -> list[sp.Expr]:
+    reader = Reader(equations, (*layout.jets, layout.small), shown)
+    tables = [tabulate(reader, x, layout) for x in equations]
+    mass, damping, stiffness = (matrix(tables, reader, order) for order in (2, 1, 0))
+    if any(damping) or mode.multiplicity > 1:
+        raise ProblemError(
+            "a relation gives the frequency of a mode of equations with first derivatives at leading order, or of "
+            "several modes at once, which no change of the stiffness alone makes exact: split a parameter of the "
+            f"equations instead, such as k = k_c + {layout.small}*sigma, so that the leading order is resonant"
+        )
+    adjoint = (stiffness - mode.frequency**2 * mass).adjugate()
+    share = mass * adjoint * mass / (adjoint * mass).trace()
+    jets = {jet: s for s, jet in layout.jets.items()}
+    result = []
+    for k, (x, table) in enumerate(zip(equations, tables, strict=True)):
+        scale = layout.small ** leading_terms(table)[0] * (sp.expand(value**2) - mode.frequency**2)
+        result.append(x + scale * sp.Add(*(share[k, j] * jets[j, 0] for j in range(len(tables)))))
+    return result
