@@ -298,7 +298,7 @@ RESIDUALS: dict[str, tuple[Callable[[], ms.Problem], dict, dict]] = {
 @pytest.mark.parametrize("name", RESIDUALS)
 @pytest.mark.filterwarnings("ignore::multiscale.OrderingWarning")
 def test_residual_of_the_equations_as_stated(name: str, order: int):
-    """The functions themselves are evaluated, not their polynomials; powers written out or carried make no difference."""
+    """The functions themselves are evaluated, not their polynomials; orders carried or written out: no difference."""
     build, parameters, _ = RESIDUALS[name]
     problem = build()
     ordered = ms.expand(problem, order)

@@ -237,6 +237,111 @@ def test_several_modes():
     assert r.table["amplitude"].ndim == 3
 
 
+def lower_mode_driven():
+    """One-to-two internal resonance with the drive on the lower mode: quasi-periodic near exact resonance."""
+    v = sp.Function("v")(t)
+    equations = [
+        u.diff(t, 2) + w**2 * u + eps * (2 * mu * u.diff(t) + alpha * u * v - f * sp.cos(Om * t)),
+        v.diff(t, 2) + 4 * w**2 * v + eps * (2 * mu * v.diff(t) + alpha * u**2),
+    ]
+    with pytest.warns(ms.OrderingWarning):
+        return ms.expand(ms.Problem(equations, [u, v], small=eps, resonances={Om: w + eps * sigma}), 1)
+
+
+@pytest.mark.parametrize(("damping", "drive", "points"), [(0.05, 1.0, 61), (0.05, 1.0, 200), (0.1, 0.5, 61)])
+def test_hopf_points_of_several_modes(damping, drive, points):
+    """A pair on the imaginary axis to rounding, the others off it; the places are symmetric in σ and do not depend on
+    the grid."""
+    expansion = lower_mode_driven()
+    fixed = {"epsilon": 0.05, "mu": damping, "alpha": 1.0, "omega": 1.0, "f": drive}
+    r = ms.frequency_response(expansion, fixed, sweep={"sigma": np.linspace(-1.5, 1.5, points)})
+    rate, slope = expansion.slow_flow.to_numpy(), expansion.slow_flow.to_numpy(wrt="state")
+    assert len(r.hopf) == 2
+    assert r.hopf[0].parameter == pytest.approx(-r.hopf[1].parameter, rel=1e-10)
+    for x in r.hopf:
+        values = fixed | {"sigma": x.parameter}
+        assert np.max(abs(rate(0.0, x.state, *rate.values(values)))) < 1e-14
+        numbers = np.linalg.eigvals(slope(0.0, x.state, *slope.values(values)))
+        pair = sorted(numbers, key=lambda z: abs(z.real))
+        assert max(abs(z.real) for z in pair[:2]) < 1e-10 * np.max(abs(numbers))
+        assert pair[0] == pytest.approx(pair[1].conjugate())
+        assert abs(pair[0].imag) > 1e-3
+        # Damping alone: the eigenvalues add up to −2εμ for each of the two modes, so that the other pair decays.
+        assert np.sum(numbers).real == pytest.approx(-4 * 0.05 * damping, rel=1e-9)
+        assert max(z.real for z in pair[2:]) < -1e-3
+
+
+def test_the_motion_on_both_sides_of_a_hopf_point():
+    """The slow flow integrated from beside a steady state: it decays on one side of the point and grows on the other,
+    at the rate and with the period of the eigenvalue."""
+    integrate = pytest.importorskip("scipy.integrate")
+    expansion = lower_mode_driven()
+    fixed = {"epsilon": 0.05, "mu": 0.05, "alpha": 1.0, "omega": 1.0, "f": 1.0}
+    r = ms.frequency_response(expansion, fixed, sweep={"sigma": np.linspace(-1.5, 1.5, 61)})
+    rate, slope = expansion.slow_flow.to_numpy(), expansion.slow_flow.to_numpy(wrt="state")
+    place = max(x.parameter for x in r.hopf)
+    seen = []
+    for sigma_now in (place - 0.03, place + 0.03):
+        at = fixed | {"sigma": sigma_now}
+        (rest,) = (x for x in ms.equilibria(expansion, at))
+        numbers, vectors = np.linalg.eig(slope(0.0, rest.state, *slope.values(at)))
+        k = int(np.argmax(numbers.real))
+        period = 2 * np.pi / abs(numbers[k].imag)
+        times = np.arange(4) * period
+        found = integrate.solve_ivp(
+            lambda time, y, at=at: rate(time, y, *rate.values(at)),
+            (0, times[-1]),
+            rest.state + 1e-6 * vectors[:, k].real,
+            t_eval=times,
+            method="DOP853",
+            rtol=1e-12,
+            atol=1e-14,
+        )
+        distance = np.linalg.norm(found.y - np.reshape(rest.state, (-1, 1)), axis=0)
+        growth = np.log(distance[-1] / distance[0]) / times[-1]
+        assert growth == pytest.approx(numbers[k].real, rel=1e-3)
+        assert rest.stable == (growth < 0)
+        seen.append(growth)
+    assert seen[0] > 0 > seen[1]
+
+
+def test_islands_of_several_modes():
+    """Subharmonic response of a mode with a second one at twice its frequency: uncoupled, the folds of the three
+    islands are those of the first mode alone; coupled, they stay isolated, and rest loses its stability to both modes
+    at once (the drive at the sum of their frequencies) at two Hopf points."""
+    v = sp.Function("v")(t)
+    equations = [
+        u.diff(t, 2) + w**2 * u + eps * (2 * mu * u.diff(t) + alpha * u**3 + beta * u * v) - f * sp.cos(Om * t),
+        v.diff(t, 2) + 4 * w**2 * v + eps * (2 * mu * v.diff(t) + beta * u**2),
+    ]
+    with pytest.warns(ms.OrderingWarning):
+        expansion = ms.expand(ms.Problem(equations, [u, v], small=eps, resonances={Om: 3 * w + eps * sigma}), 1)
+    fixed = {"epsilon": 0.05, "mu": 0.02, "alpha": 1.0, "omega": 1.0, "sigma": 1.0}
+    sweep = {f: np.linspace(0.1, 30, 60)}
+    alone = ms.frequency_response(expanded("subharmonic", 1), fixed, sweep=sweep)
+    uncoupled = ms.frequency_response(expansion, fixed | {"beta": 0.0}, sweep=sweep)
+    coupled = ms.frequency_response(expansion, fixed | {"beta": 0.5}, sweep=sweep)
+    assert sorted(x.parameter for x in uncoupled.folds) == pytest.approx(
+        sorted(x.parameter for x in alone.folds), rel=1e-9
+    )
+    slope = expansion.slow_flow.to_numpy(wrt="state")
+    for r in (uncoupled, coupled):
+        islands = [b for b in r.branches if b.closed]
+        assert len(islands) == 3
+        assert all(len(b.folds) == 2 for b in islands)
+    assert len(coupled.folds) == 6
+    for x in coupled.folds:
+        assert x.amplitudes[1] > 1e-3
+        jacobian = slope(0.0, x.state, *slope.values(fixed | {"beta": 0.5, "f": x.parameter}))
+        assert np.min(abs(np.linalg.eigvals(jacobian))) < 1e-12
+    assert not uncoupled.hopf
+    assert len(coupled.hopf) == 2
+    for x in coupled.hopf:
+        assert max(x.amplitudes) < 1e-12
+        jacobian = slope(0.0, x.state, *slope.values(fixed | {"beta": 0.5, "f": x.parameter}))
+        assert sorted(np.linalg.eigvals(jacobian).real)[2:] == pytest.approx([0.0, 0.0], abs=1e-12)
+
+
 def test_limit_cycles_over_a_parameter():
     """a = 2√α for u'' + ε(u² − α)u' + u = 0 at the first order."""
     problem = ms.Problem(u.diff(t, 2) + u + eps * (u**2 - alpha) * u.diff(t), u, small=eps)
@@ -313,11 +418,30 @@ def test_missing_extras_are_named(monkeypatch, module, call):
         getattr(r, call)()
 
 
-def test_to_xarray():
-    pytest.importorskip("xarray")
-    r = response("primary", 1, {"sigma": np.linspace(-1, 4, 20)})
+@pytest.mark.parametrize("modes", [1, 2])
+def test_to_xarray(modes):
+    """Every column of the table under its name, with the right dimensions, and selectable by them."""
+    xarray = pytest.importorskip("xarray")
+    if modes == 1:
+        r = response("primary", 1, {"sigma": np.linspace(-1, 4, 20)})
+    else:
+        fixed = {"epsilon": 0.05, "mu": 0.05, "alpha": 1.0, "omega": 1.0, "f": 1.0}
+        r = ms.frequency_response(lower_mode_driven(), fixed, sweep={"sigma": np.linspace(-1.5, 1.5, 21)})
     data = r.to_xarray()
-    assert data["amplitude"].dims == ("branch", "point")
+    assert isinstance(data, xarray.Dataset)
+    assert set(data.data_vars) == set(r.table)
+    assert data.attrs == {"parameter": "sigma"}
+    assert data["amplitude"].dims == (("branch", "point") if modes == 1 else ("branch", "mode", "point"))
+    assert data["parameter"].dims == ("branch", "point")
+    assert data.sizes["branch"] == len(r.branches)
+    for name, column in r.table.items():
+        np.testing.assert_array_equal(data[name].values, column)
+    first = data.isel(branch=0)
+    length = len(r.branches[0].parameter)
+    shown = first["amplitude"] if modes == 1 else first["amplitude"].isel(mode=0)
+    wanted = r.branches[0].amplitude if modes == 1 else r.branches[0].amplitude[0]
+    assert shown.values[:length] == pytest.approx(wanted)
+    assert float(shown.max()) == pytest.approx(float(np.max(wanted)))
 
 
 @pytest.mark.parametrize("symbol", [beta, h])

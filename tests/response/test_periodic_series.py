@@ -174,6 +174,23 @@ def test_arithmetics_agree(name):
     assert first.harmonics == second.harmonics
 
 
+@pytest.mark.parametrize(
+    "name",
+    ["van der Pol", "several powers", "velocities", "damping at the second order", "damping at the third order"],
+)
+def test_levels_multiplied_in_runs_and_one_by_one_agree(monkeypatch, name):
+    """At an order where runs of several lengths occur, with one to three levels still to be changed."""
+    pytest.importorskip("flint")
+    from multiscale.response.orbits.waves.packed import PackedWaves
+
+    problem = stated(ISOLATED[name][0])
+    in_runs = ms.periodic_series(problem, 21, representation="flint")
+    monkeypatch.setattr(PackedWaves, "gathers", False)
+    one_by_one = ms.periodic_series(problem, 21, representation="flint")
+    assert in_runs == one_by_one
+    assert in_runs.harmonics == one_by_one.harmonics
+
+
 @pytest.mark.parametrize("representation", ["auto", "sympy"])
 @pytest.mark.parametrize("name", ["van der Pol", "quadratic", "irrational frequency", "irrational amplitude"])
 def test_digits_are_correct(name, representation):

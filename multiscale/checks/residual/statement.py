@@ -74,7 +74,7 @@ def stated(problem: Problem) -> Statement:
         if key in modes:
             raise EvaluationError(
                 f"the relation {key} = {value} changes the stiffness along a mode of coupled equations, which the "
-                "certificate cannot redo: state the equations in modal coordinates, with a frequency symbol for the mode"
+                "certificate cannot redo: state the equations in modal coordinates, with a symbol for that frequency"
             )
         value = _decimals(value.subs(modes))
         if key in problem.unknowns:
