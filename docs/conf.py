@@ -25,4 +25,6 @@ autodoc_typehints_description_target = "documented"
 autodoc_class_signature = "separated"
 napoleon_use_ivar = True
 napoleon_google_docstring = False
+# A word in single backticks in a docstring is a public name, linked where it stands in the reference.
+default_role = "py:obj"
 nitpicky = False
