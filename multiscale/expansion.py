@@ -220,7 +220,7 @@ class Expansion:
         return _rebuilt, (self.problem, self.order, self.amplitude, self.tolerance, self.computation.snapshot())
 
     def to_numpy(self, derivative: int = 0, wrt: str | None = None) -> NumpyFunction:
-        """The unknowns (or a time derivative of them) from a slow state: ``f(t, y, *parameters)``, shape (unknowns,) + B.
+        """The unknowns, or a time derivative, from a slow state: ``f(t, y, *parameters)``, shape (unknowns,) + B.
 
         y is Cartesian in the rotating frame, as in ``slow_flow.to_numpy("cartesian")``. With `wrt` "state" or
         "parameters" it is the Jacobian by these, at fixed time: (unknowns, n) + B.
