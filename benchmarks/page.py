@@ -37,7 +37,12 @@ def number(ratio: float) -> str:
 
 def row(result: dict[str, Any]) -> str:
     verdict = result["verdict"] or "none"
-    cells = [result["case"].replace("|", "\\|").replace("*", "\\*"), number(result["ratio"]), MEANING[result["sense"]], verdict]
+    cells = [
+        result["case"].replace("|", "\\|").replace("*", "\\*"),
+        number(result["ratio"]),
+        MEANING[result["sense"]],
+        verdict,
+    ]
     return f"| {' | '.join(cells)} |"
 
 

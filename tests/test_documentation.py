@@ -9,11 +9,12 @@ import re
 from pathlib import Path
 
 import pytest
-from benchmarks.page import PAGE, RESULTS, page as performance
 from checks.test_mutations import ALTERATIONS, SYSTEMS, examined
 from support.claims import terms
 
 import multiscale as ms
+from benchmarks.page import PAGE, RESULTS
+from benchmarks.page import page as performance
 
 DOCS = Path(__file__).parent.parent / "docs"
 PAGES = sorted(DOCS.rglob("*.md"))
