@@ -77,7 +77,7 @@ class Problem:
     >>> pulled = u.diff(t, 2) + k*u - V**2/(g - u)**2
     >>> problem = ms.Problem(pulled, u, ordering={u: 1}, about={u: u_s})
     >>> problem.resonances, problem.natural_frequencies
-    (((V**2, k*u_s*(g - u_s)**2),), (sqrt(k)*sqrt(g - 3*u_s)/sqrt(g - u_s),))
+    (((V**2, k*u_s*(g - u_s)**2),), (sqrt(k)*sqrt((g - 3*u_s)/(g - u_s)),))
     """
 
     def __init__(
