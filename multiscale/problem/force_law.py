@@ -68,7 +68,12 @@ class ForceLaw:
         if not (np.isfinite(points).all() and np.isfinite(values).all() and (np.diff(points) > 0).all()):
             raise ProblemError("table: expected finite numbers with increasing arguments")
         table = _Table(tuple(points.tolist()), tuple(values.tolist()))
-        return cls(table, tuple(points[1:-1].tolist()), table.slope)
+        return cls(table, tuple(points[1:-1].tolist()), _Slope(table))
+
+    @property
+    def points(self) -> tuple[tuple[float, ...], tuple[float, ...]] | None:
+        """(x, y) of a table, None for a function."""
+        return (self.function.x, self.function.y) if isinstance(self.function, _Table) else None
 
 
 @dataclass(frozen=True)
@@ -95,6 +100,16 @@ class _Table:
         slopes = np.diff(self.y) / np.diff(self.x)
         index = np.searchsorted(self.x, self._checked(x), side="right") - 1
         return slopes[np.clip(index, 0, len(slopes) - 1)]
+
+
+@dataclass(frozen=True)
+class _Slope:
+    """The derivative of a table; equal where the tables are."""
+
+    table: _Table
+
+    def __call__(self, x: Any) -> Any:
+        return self.table.slope(x)
 
 
 def law_name(function: Any) -> str:
