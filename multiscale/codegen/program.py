@@ -90,7 +90,7 @@ class Program:
         if symbol.name.startswith("@a"):
             raise EvaluationError(
                 "the slow flow contains forces that are not polynomial: its coefficients depend on the amplitude, and "
-                "what needs a polynomial slow flow cannot be applied to it"
+                "what needs a polynomial slow flow cannot be applied to it; integrate or solve slow_flow.to_numpy()"
             )
         return self.time if symbol == self._time_symbol else self.tape.input(f"parameter {symbol.name}")
 
