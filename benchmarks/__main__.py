@@ -14,6 +14,7 @@ NAMES = (
     "against_flint_loop",
     "symbolic_parameters",
     "generated_call",
+    "force_quadrature",
     "frequency_response",
     "periodic_orbit",
     "import_time",

@@ -1,4 +1,4 @@
-"""Generated code for forces that are not polynomial: shapes, derivatives, rest, special functions, first corrections."""
+"""Generated code for forces that are not polynomial: shapes, derivatives, rest, special functions, U_1."""
 
 from __future__ import annotations
 
@@ -94,11 +94,9 @@ def test_forms_agree(name):
 def test_symbolic_result_has_the_same_value(name):
     problem = ms.Problem(u.diff(t, 2) + w**2 * u + eps * FORCES[name], u, small=eps)
     expansion = ms.expand(problem, 1)
-    numbers = {x: sp.Rational(str(VALUES[x.name])) for x in (eps, w, g, k)} | {
-        expansion.symbols.a[0]: sp.Rational(6, 5)
-    }
-    found = [float(sp.N(x.subs(numbers).doit() if name == "clearance" else x.subs(numbers).evalf(20)))
-             for x in expansion.slow_flow.polar.values()]  # fmt: skip
+    numbers = {x: sp.Rational(str(VALUES[x.name])) for x in (eps, w, g, k)}
+    numbers[expansion.symbols.a[0]] = sp.Rational(6, 5)
+    found = [float(x.subs(numbers).evalf(15)) for x in expansion.slow_flow.polar.values()]
     f = expansion.slow_flow.to_numpy("polar")
     assert np.allclose(found, f(0.0, [1.2, 0.0], *values(f)), rtol=1e-12, atol=1e-14)
 
@@ -168,7 +166,7 @@ def test_averages_are_right_to_rounding():
 
 
 def test_a_jump_that_is_not_declared_is_found():
-    with pytest.raises(runtime.IntegralError, match="F.u.*does not converge"):
+    with pytest.raises(runtime.IntegralError, match=r"F\(u\).*does not converge"):
         runtime.circle(lambda x, b: np.sign(np.cos(x) - b), "F(u)", 0.3)
 
 
