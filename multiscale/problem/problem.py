@@ -14,7 +14,7 @@ import sympy as sp
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical, canonical_form
 from multiscale.problem.force_law import ForceLaw, laws_of
-from multiscale.problem.laws import LAW, Law, separated
+from multiscale.problem.laws import Law, at_resonance, layout_with_laws, separated
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.projected import with_projections
 from multiscale.problem.reading import unsupported
@@ -178,7 +178,7 @@ class Problem:
             shown = _jets(self.unknowns, self.time) | prepared.shown
             if self.ordering is not None:
                 shown[self.small] = sp.Integer(1)
-            layout, shown = _with_laws(self._layout, shown, prepared.laws)
+            layout, shown = layout_with_laws(self._layout, shown, prepared.laws)
             form = canonical_form(prepared, layout, shown, list(self.unknowns))
             if prepared.laws:
                 form = with_projections(
@@ -233,7 +233,7 @@ class Problem:
         if self.ordering is None:
             hidden, laws = separated(hidden, self._layout, self.time, shown, self.laws)
         prepared = prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, shown, order)
-        return replace(prepared, laws=_at_resonance(laws, prepared, self.small))
+        return replace(prepared, laws=at_resonance(laws, prepared.relations.values, self.small))
 
     def _hidden(self) -> list[sp.Expr]:
         """The equations with a symbol for each unknown and derivative."""
@@ -285,21 +285,6 @@ class Problem:
     def _repr_latex_(self) -> str:
         rows = r" \\ ".join(f"{sp.latex(x)} &= 0" for x in self.equations)
         return rf"$\displaystyle \begin{{aligned}}{rows}\end{{aligned}}$"
-
-
-def _with_laws(
-    layout: Layout, shown: dict[sp.Symbol, sp.Expr], laws: Sequence[Law]
-) -> tuple[Layout, dict[sp.Symbol, sp.Expr]]:
-    """Layout and spelling with the symbols of laws."""
-    real = {sp.Symbol(s.name, real=True): x for s, x in shown.items()}
-    jets = {**layout.jets, **{law.symbol: (n, LAW) for n, law in enumerate(laws)}}
-    return replace(layout, jets=jets), {**shown, **{law.symbol: law.force.xreplace(real) for law in laws}}
-
-
-def _at_resonance(laws: Sequence[Law], prepared: Prepared, small: sp.Symbol) -> tuple[Law, ...]:
-    """Laws with the frequencies that relations eliminate at their leading values."""
-    values = {s: value.subs(small, 0) for s, value in prepared.relations.values}
-    return tuple(replace(law, force=law.force.subs(values)) for law in laws)
 
 
 def _harmonics(given: Any) -> int | None:
