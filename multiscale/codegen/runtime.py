@@ -9,7 +9,9 @@ Needs NumPy and the standard library alone, so that its text can travel with exp
 
 Accuracy: two results in a row agree to `TOLERANCE` relative to the mean of |f|; the better one is returned. The
 trapezoidal rule converges geometrically for analytic f (its error at 2N nodes is about the square of that at N), so the
-value returned is then right to rounding. `IntegralError` where the doubling ends without agreement, or f is not finite.
+value returned is then right to rounding. Inside an average over another phase, a jump that the motion only just reaches
+may stay at `GRAZING`, since its place is known to half the digits; the outer average still has to agree to `TOLERANCE`.
+`IntegralError` where the doubling ends without agreement, or f is not finite.
 """
 
 from __future__ import annotations

@@ -13,7 +13,7 @@ import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical, canonical_form
-from multiscale.problem.force_law import ForceLaw, laws_of
+from multiscale.problem.force_law import ForceLaw, laws_of, with_calls, without_calls
 from multiscale.problem.laws import Law, at_resonance, layout_with_laws, separated, separated_by_degree
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.projected import with_projections
@@ -278,7 +278,7 @@ class Problem:
             options["ordering"] = indexed
         options |= {"laws": self.laws, "harmonics": self.harmonics, "formal": self.formal}
         options["resonances"] = [(self.unknowns.index(x) if x in self.unknowns else x, y) for x, y in self.resonances]
-        return _rebuilt, (self._hidden(), functions, options)
+        return _rebuilt, ([with_calls(x, self.laws) for x in self._hidden()], functions, options)
 
     def __repr__(self) -> str:
         names = ", ".join(str(u) for u in self.unknowns)
@@ -312,7 +312,7 @@ def _rebuilt(
     laws = {sp.Function(name): law for name, law in options["laws"].items()}
     options = options | {"resonances": named, "laws": laws}
     jets = _jets(unknowns, options["time"])
-    return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
+    return Problem([without_calls(x).xreplace(jets) for x in hidden], unknowns, **options)
 
 
 def _unknowns(given: Any) -> tuple[sp.Expr, ...]:
