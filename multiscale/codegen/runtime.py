@@ -262,7 +262,7 @@ RUNTIME: dict[str, Callable[..., Any]] = {
     "jump": jump,
     "besselj": besselj,
     "besseli": besseli,
-    "gamma": gamma,
+    "gamma_function": gamma,
     "digamma": digamma,
     "inverse_or_zero": inverse_or_zero,
     "nonzero": nonzero,

@@ -26,7 +26,7 @@ Evaluate = Callable[[Tape, sp.Expr, Symbols], Node]
 
 _CALLS = {
     Inverse: "inverse_or_zero", Reciprocal: "reciprocal", Root: "root", Clipped: "clipped",
-    sp.gamma: "gamma", sp.Abs: "absolute", sp.sign: "sign", sp.tanh: "tanh",
+    sp.gamma: "gamma_function", sp.Abs: "absolute", sp.sign: "sign", sp.tanh: "tanh",
     sp.asin: "arcsin", sp.acos: "arccos", sp.atan: "arctan", sp.asinh: "arcsinh",
 }  # fmt: skip
 _HALF = Fraction(1, 2)

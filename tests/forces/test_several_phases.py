@@ -167,3 +167,9 @@ def test_refused(name):
     build, message = REFUSED[name]
     with pytest.raises(ms.UnsupportedTermError, match=message):
         build()
+
+
+def test_what_needs_a_polynomial_flow_says_so():
+    expansion = coupled(sp.tanh(REST), {w2: w1 + eps * s})
+    with pytest.raises(ms.EvaluationError, match="not polynomial"):
+        ms.equilibria(expansion, {name: VALUES[name] for name in ("epsilon", "omega_1", "c", "sigma")})
