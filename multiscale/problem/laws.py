@@ -13,13 +13,11 @@ from dataclasses import dataclass, replace
 
 import sympy as sp
 
-from multiscale.problem.closed_forms import U, V, power_terms
-from multiscale.problem.homogeneous import degree_of
 from multiscale.problem.reading import unsupported
 from multiscale.problem.steps import expanded
 from multiscale.problem.terms import Layout
 
-__all__ = ["LAW", "Law", "at_resonance", "layout_with_laws", "separated", "separated_by_degree"]
+__all__ = ["LAW", "Law", "at_resonance", "layout_with_laws", "separated"]
 
 LAW = -1
 """What stands for the order of the derivative in the jet of a law."""
@@ -91,58 +89,6 @@ def separated(
             plain.append(free * law.symbol)
         result.append(sp.Add(*plain))
     return result, tuple(found.values())
-
-
-def separated_by_degree(
-    equations: Sequence[sp.Expr],
-    layout: Layout,
-    orders: Mapping[sp.Symbol, int],
-    time: sp.Symbol,
-    shown: Mapping[sp.Symbol, sp.Expr],
-) -> tuple[list[sp.Expr], tuple[Law, ...], dict[sp.Symbol, int]]:
-    """For unknowns that carry an order q: homogeneous laws of whole degree d alone, and the order q·d of each.
-
-    |ε^q u|^d = ε^{qd} |u|^d holds for a kink as it does for a power; every other term is left as it stands.
-    """
-    jets = set(layout.jets)
-    if all(_polynomial(x, jets) for x in equations):
-        return list(equations), (), {}
-    real = {s: _real(s) for s in jets}
-    spelled = {r: shown[s] for s, r in real.items()}
-    found: dict[sp.Expr, Law] = {}
-    carried: dict[sp.Symbol, int] = {}
-    result = []
-    for equation in equations:
-        plain = []
-        for term in sp.Add.make_args(equation):
-            number, (free, force) = sp.Integer(1), term.xreplace(real).as_independent(*real.values(), as_Add=False)
-            degree = None if _polynomial(term, jets) else _whole_degree(force, real, layout, orders)
-            if degree is None:
-                plain.append(term)
-                continue
-            number, free = free.as_coeff_Mul()
-            force = number * force
-            _check(force, layout.small, time, set(real.values()), spelled, set())
-            law = found.setdefault(force, Law(sp.Symbol(f"@f{len(found)}"), force))
-            carried[law.symbol] = degree
-            plain.append(free * law.symbol)
-        result.append(sp.Add(*plain))
-    return result, tuple(found.values()), carried
-
-
-def _whole_degree(
-    force: sp.Expr, real: Mapping[sp.Symbol, sp.Symbol], layout: Layout, orders: Mapping[sp.Symbol, int]
-) -> int | None:
-    """q·d of a homogeneous force with kinks of one unknown, None for any other."""
-    jets = {layout.jets[s]: r for s, r in real.items() if r in force.free_symbols}
-    if len({k for k, _ in jets}) != 1 or any(d == 2 for _, d in jets) or not force.has(sp.Abs, sp.sign, sp.Max, sp.Min):
-        return None
-    if force.free_symbols & orders.keys():
-        return None
-    terms = power_terms(force.xreplace({r: (U, V)[d] for (_, d), r in jets.items()}))
-    degree = degree_of(terms) if terms else None
-    order = next(orders.get(s, 0) for s, r in real.items() if r in jets.values())
-    return order * degree.whole if degree is not None and degree.rest == 0 else None
 
 
 def layout_with_laws(

@@ -14,7 +14,7 @@ import sympy as sp
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.problem.canonical import Canonical, canonical_form
 from multiscale.problem.force_law import ForceLaw, laws_of, with_calls, without_calls
-from multiscale.problem.laws import Law, at_resonance, layout_with_laws, separated, separated_by_degree
+from multiscale.problem.laws import Law, at_resonance, layout_with_laws, separated
 from multiscale.problem.preparation import Prepared, prepare
 from multiscale.problem.projected import with_projections
 from multiscale.problem.reading import unsupported
@@ -232,9 +232,6 @@ class Problem:
         laws: tuple[Law, ...] = ()
         if self.ordering is None:
             hidden, laws = separated(hidden, self._layout, self.time, shown, self.laws)
-        else:
-            hidden, laws, carried = separated_by_degree(hidden, self._layout, powers, self.time, shown)
-            powers |= carried
         prepared = prepare(hidden, self._layout, self.time, powers, self.resonances, self.unknowns, shown, order)
         return replace(prepared, laws=at_resonance(laws, prepared.relations.values, self.small))
 

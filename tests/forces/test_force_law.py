@@ -114,7 +114,7 @@ STATED = {
     "exponent of unknown sign": (sp.Abs(v) ** sp.Symbol("p", real=True) * v, "Declare the exponent p as nonneg"),
     "undefined function": (F(u), r"nothing says what the function F.*laws=\{F: function or table\}"),
     "unknown function": (sp.erf(u), r"erf.*laws"),
-    "small inside": (sp.exp(eps * u), r"epsilon stands inside.*Expand it"),
+    "small inside": (sp.Abs(v - eps), r"epsilon stands inside.*Expand it"),
     "drive inside": (sp.sign(v - sp.cos(3 * t)), r"contains t.*multiply such a force"),
 }
 

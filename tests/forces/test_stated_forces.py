@@ -1,4 +1,4 @@
-"""What may be stated with forces that are not polynomial: mixtures, orders, slow factors, resonances, offsets."""
+"""What may be stated with forces that are not polynomial: mixtures, slow factors, resonances, offsets."""
 
 from __future__ import annotations
 
@@ -101,22 +101,6 @@ def test_a_slowly_varying_factor():
     (a,) = expansion.symbols.a
     assert difference(expansion.slow_flow.polar[a], -4 * eps * M * w * a**2 / (3 * sp.pi)) == 0
     assert not expansion.slow_flow.autonomous
-
-
-def test_orders_of_a_homogeneous_force():
-    """With u of order 1 and mu of order 2, |u'|u' is one order above u: the statement with ε written out."""
-    ordered = ms.Problem(
-        u.diff(t, 2) + w**2 * u + c * DRAG + alpha * u**3 + mu * v, u, ordering={u: 1, mu: 2}, harmonics=7
-    )
-    written = ms.Problem(
-        u.diff(t, 2) + w**2 * u + eps * c * DRAG + eps**2 * (alpha * u**3 + mu * v), u, small=eps, harmonics=7
-    )
-    assert ms.expand(ordered, 2).equals(ms.expand(written, 2))
-
-
-def test_orders_that_leave_a_force_at_leading_order():
-    with pytest.raises(ms.UnsupportedTermError, match=r"Abs\(u\(t\)\): a nonlinear term stands at leading order"):
-        ms.Problem(u.diff(t, 2) + u + sp.Abs(u), u, ordering={u: 1})
 
 
 @pytest.mark.parametrize("function", [ms.limit_cycles, lambda e: ms.periodic_series(e.problem, 2)])
