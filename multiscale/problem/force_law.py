@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -12,7 +12,7 @@ import sympy as sp
 
 from multiscale.errors import EvaluationError, ProblemError
 
-__all__ = ["ForceLaw", "law_name", "laws_of"]
+__all__ = ["ForceLaw", "law_name", "laws_of", "with_calls", "without_calls"]
 
 
 @dataclass(frozen=True)
@@ -110,6 +110,25 @@ class _Slope:
 
     def __call__(self, x: Any) -> Any:
         return self.table.slope(x)
+
+
+class LawCall(sp.Function):  # type: ignore[misc]
+    """LawCall(name, arguments …) stands for an undefined function where an equation travels."""
+
+
+def with_calls(x: sp.Expr, names: Iterable[str]) -> sp.Expr:
+    """x with `LawCall` for the functions of these names, which do not pickle with every SymPy themselves."""
+    known = set(names)
+
+    def is_law(e: sp.Basic) -> bool:
+        return isinstance(e, sp.core.function.AppliedUndef) and str(e.func) in known
+
+    return x.replace(is_law, lambda e: LawCall(sp.Symbol(str(e.func)), *e.args)) if known else x
+
+
+def without_calls(x: sp.Expr) -> sp.Expr:
+    """The inverse of `with_calls`."""
+    return x.replace(lambda e: isinstance(e, LawCall), lambda e: sp.Function(e.args[0].name)(*e.args[1:]))
 
 
 def law_name(function: Any) -> str:
