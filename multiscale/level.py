@@ -86,9 +86,9 @@ def _phase(frequency: sp.Expr, time: sp.Symbol) -> sp.Expr:
 
 
 def polynomials_below(finished: Iterable[Finished]) -> list[Frozen]:
-    """The distinct denominators in finished coefficients, in a fixed order."""
+    """The distinct denominators in finished coefficients, in a fixed order; moduli of amplitudes are none."""
     found = {p for f in finished for c in f.values() for q in (c.real, c.imag) for p, _ in q.denominator}
-    return sorted(found)
+    return sorted(p for p in found if not any(name.startswith("@r") for m, _ in p for name, _ in m))
 
 
 class Views:

@@ -88,8 +88,8 @@ def taylor_remainder(
     >>> u = sp.Function("u")(t)
     >>> result = ms.expand(ms.Problem(u.diff(t, 2) + sp.sin(u), u, ordering={u: 1}), order=4)
     >>> found = ms.taylor_remainder(result, [0.5, 1.0, 2.0])
-    >>> found.relative.round(6)
-    array([[3.00000e-06, 1.96000e-04, 1.20180e-02]])
+    >>> [round(float(x), 6) for x in found.relative[0]]
+    [3e-06, 0.000196, 0.012018]
     >>> found.radius
     (inf,)
     """

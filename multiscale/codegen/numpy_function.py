@@ -33,7 +33,7 @@ _NUMPY: dict[str, Callable[..., Any]] = {
     "conj": np.conjugate,
     **RUNTIME,
 }
-_MATH = {"sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log, "sqrt": math.sqrt}
+_MATH = {"sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log, "sqrt": math.sqrt, "absolute": abs}
 
 
 @dataclass(frozen=True)
@@ -285,7 +285,7 @@ class BoundFunction:
     def _in_stages(self) -> Callable[..., tuple[Any, ...]] | None:
         """A long kernel with its coefficients worked out once."""
         function = self.function
-        if len(function.source) < LONG or function.is_complex:
+        if len(function.source) < LONG or function._scalar_kernel is None:
             return None
         from multiscale.codegen.staging import staged
 

@@ -139,7 +139,7 @@ def canonical_form(
             stiffness = reader.expression(reader.named(squares[k]).items())
             known = set().union(*(x.free_symbols for x in prepared.equations))
             working.detunings.append(detuning_of(None, sp.sqrt(stiffness), value, layout.small, known))
-            working.equations[k] = sp.expand(current[k] - stiffness * displacement) + value**2 * displacement
+            working.equations[k] = current[k] - stiffness * displacement + value**2 * displacement
             continue
         found = _frequencies(reader, squares, names, working, layout.small)
         if found is not None:

@@ -64,10 +64,10 @@ def about_rest(
     relations: list[Pair] = []
     balanced = []
     for given, equation in zip(hidden, shifted, strict=True):
-        static = _static(equation, rest, time)
+        force = _static(equation, rest, time)
         for key, value in (*stated, *relations):
-            static = static.subs(key, value.subs(rest))
-        static = sp.cancel(static) if stated or relations else static
+            force = force.subs(key, value.subs(rest))
+        static = sp.cancel(sp.together(force))
         if static != 0 and not static.equals(0):
             if not free:
                 raise ProblemError(
@@ -75,10 +75,10 @@ def about_rest(
                     "position, or a new symbol for it"
                 )
             relations.append(_relation(static, _static(given, rest, time).free_symbols, fixed, about))
-        elif static != 0:
-            # Zero by an identity that polynomial arithmetic does not know.
-            equation = equation - static
-        balanced.append(equation)
+            force = force.subs(*relations[-1])
+            static = sp.cancel(sp.together(force))
+        # What is left is zero, but roots and functions may hide that from polynomial arithmetic.
+        balanced.append(equation if static == 0 and not _has_roots(force) else equation - force)
     return balanced, relations
 
 
@@ -87,8 +87,11 @@ def _static(equation: sp.Expr, rest: Mapping[sp.Symbol, int], time: sp.Symbol) -
     value = equation.subs(rest)
     if value.has(sp.zoo, sp.nan):
         return sp.Integer(0)
-    value = sp.Add(*(x for x in sp.Add.make_args(sp.expand(value)) if time not in x.free_symbols))
-    return sp.cancel(sp.together(value)) if value.free_symbols else value
+    return sp.Add(*(x for x in sp.Add.make_args(sp.expand(value)) if time not in x.free_symbols))
+
+
+def _has_roots(x: sp.Expr) -> bool:
+    return any(not p.exp.is_Integer for p in x.atoms(sp.Pow)) or bool(x.atoms(sp.Function))
 
 
 def _relation(static: sp.Expr, loads: set[sp.Symbol], fixed: set[sp.Symbol], about: Mapping[sp.Expr, sp.Expr]) -> Pair:

@@ -17,7 +17,7 @@ from typing import Any
 import sympy as sp
 from sympy.polys.rings import PolyRing
 
-__all__ = ["KINKED", "UNKNOWN", "NotAnalyticError", "NotSmallError", "SeriesArithmetic", "needs_series"]
+__all__ = ["BRANCH", "KINKED", "UNKNOWN", "NotAnalyticError", "NotSmallError", "SeriesArithmetic", "needs_series"]
 
 QUOTIENTS: dict[Any, Callable[[sp.Expr], sp.Expr]] = {
     sp.cot: lambda x: sp.cos(x) / sp.sin(x),
@@ -88,9 +88,10 @@ def needs_series(x: sp.Expr, small: sp.Symbol, time: sp.Symbol, jets: Collection
 class SeriesArithmetic:
     """Series in `small` of expressions in `jets`, time and parameters; `_function` is left to be supplied."""
 
-    def __init__(self, small: sp.Symbol, time: sp.Symbol, jets: Collection[sp.Symbol]) -> None:
+    def __init__(self, small: sp.Symbol, time: sp.Symbol, jets: Collection[sp.Symbol], slow: bool = True) -> None:
+        """`slow` says that ε times time is slow time, at which series are taken; else ε only counts orders."""
         self.small, self.time, self.jets = small, time, frozenset(jets)
-        self._slow = sp.Symbol("@st", real=True)
+        self._stretched = {small * time: sp.Symbol("@st", real=True)} if slow else {}
         self._waves: dict[sp.Expr, sp.Symbol] = {}
         self._leaves: list[sp.Expr] = [small]
         self._restart()
@@ -102,7 +103,7 @@ class SeriesArithmetic:
 
     def coefficients(self, x: sp.Expr, order: int) -> list[sp.Expr]:
         """x_0 … x_order. Raises `NotAnalyticError` or `NotSmallError`."""
-        x = self._without_waves(x).subs(self.small * self.time, self._slow)
+        x = self._without_waves(x).subs(self._stretched)
         # As quotients in the product around them, where a vanishing denominator may cancel.
         x = x.replace(
             lambda f: type(f) in QUOTIENTS and self.small in f.free_symbols, lambda f: QUOTIENTS[type(f)](f.args[0])
@@ -121,8 +122,7 @@ class SeriesArithmetic:
 
     def shown(self, x: sp.Expr) -> sp.Expr:
         """An expression with the symbols that stand in for functions of time spelled out."""
-        back = {symbol: wave for wave, symbol in self._waves.items()} | {self._slow: self.small * self.time}
-        return x.xreplace(back)
+        return x.xreplace({symbol: wave for wave, symbol in (*self._waves.items(), *self._stretched.items())})
 
     def _without_waves(self, x: sp.Expr) -> sp.Expr:
         """A symbol for every function of time alone; the part of an angle that turns with time is split off."""

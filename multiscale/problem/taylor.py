@@ -16,7 +16,7 @@ import sympy as sp
 from multiscale.errors import UnsupportedTermError
 from multiscale.problem.reading import decimals, unsupported
 from multiscale.problem.series import ROUGH, EpsilonSeries
-from multiscale.problem.series_arithmetic import KINKED, NotAnalyticError, NotSmallError, needs_series
+from multiscale.problem.series_arithmetic import BRANCH, KINKED, NotAnalyticError, NotSmallError, needs_series
 from multiscale.problem.terms import Layout
 
 __all__ = ["with_taylor_polynomials"]
@@ -45,7 +45,7 @@ def with_taylor_polynomials(
         _refuse_kinks(terms, scaled, layout, shown)
         wanted = [x for x in terms if needs_series(x, small, time, jets)]
         exact = {x: decimals(x) for x in wanted}
-        series = EpsilonSeries(small, time, jets)
+        series = EpsilonSeries(small, time, jets, slow=not layout.ordered)
         depth = order + _lead(sp.Add(*(exact.get(x, x) for x in terms)), series, layout) if wanted else 0
         polynomials = {}
         for x in wanted:
@@ -85,10 +85,15 @@ def _refuse_kinks(
 ) -> None:
     """A small unknown at a kink stays there however small it is: ε·|u| is no power series of the motion."""
     for term in terms:
-        for f in sorted(term.atoms(*ROUGH), key=str):
-            if f.free_symbols & scaled and layout.small not in f.free_symbols:
+        for f in sorted(term.atoms(*ROUGH, sp.Pow), key=str):
+            if not f.free_symbols & scaled or layout.small in f.free_symbols:
+                continue
+            if isinstance(f, ROUGH):
                 reason = f"{f.func.__name__} has no Taylor series where it has a kink or a jump"
                 raise _refused(term, NotAnalyticError(f, reason, KINKED), layout, shown)
+            if not f.exp.is_Integer:
+                reason = f"the power {f.exp} of something that vanishes at rest has a branch point there"
+                raise _refused(term, NotAnalyticError(f, reason, BRANCH), layout, shown)
 
 
 def _refuse_singular(

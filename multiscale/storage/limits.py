@@ -6,11 +6,24 @@ The limits are far above what an expansion needs and far below what a machine ha
 from __future__ import annotations
 
 from collections.abc import Sequence
+from math import isfinite
 from typing import Any
 
 from multiscale.errors import StorageError
 
-__all__ = ["BITS", "CHARACTERS", "DEPTH", "NODES", "checked_name", "integer", "refuse", "sequence", "spelled"]
+__all__ = [
+    "BITS",
+    "CHARACTERS",
+    "DEPTH",
+    "NODES",
+    "checked_name",
+    "field",
+    "hexadecimal",
+    "integer",
+    "refuse",
+    "sequence",
+    "spelled",
+]
 
 CHARACTERS = 500_000_000
 NODES = 1_000_000
@@ -23,6 +36,13 @@ _NAME = 100
 def refuse(what: str) -> StorageError:
     """The error for a text that is not a stored expansion."""
     return StorageError(f"the text is not a stored expansion of this library: {what}")
+
+
+def field(document: Any, name: str) -> Any:
+    """An entry of a JSON object."""
+    if not isinstance(document, dict) or name not in document:
+        raise refuse(f"it has no field {name!r}")
+    return document[name]
 
 
 def spelled(value: int) -> int | str:
@@ -43,6 +63,17 @@ def integer(x: Any, what: str, least: int | None = None, most: int | None = None
     if (least is not None and x < least) or (most is not None and x > most):
         raise refuse(f"{what} is {str(x)[:40]}, outside {least} … {most}")
     return x
+
+
+def hexadecimal(x: Any, what: str) -> float:
+    """The finite float of its hexadecimal form."""
+    try:
+        value = float.fromhex(x)
+    except (TypeError, ValueError, OverflowError):
+        raise refuse(f"{what} is {str(x)[:40]!r}, expected a hexadecimal number") from None
+    if not isfinite(value):
+        raise refuse(f"{what} is {value}")
+    return value
 
 
 def sequence(x: Any, what: str, length: int | None = None) -> Sequence[Any]:

@@ -101,6 +101,23 @@ def test_a_drive_may_stand_in_the_angle():
     assert ms.expand(driven(sp.sin(u - W * t)), 3).equals(ms.expand(driven(written), 3))
 
 
+def test_a_load_that_varies():
+    """(V + f cos Ωt)², its square eliminated by the equilibrium: V itself becomes a root; the natural frequency by a
+    relation."""
+
+    def driven(load: sp.Expr, **options) -> ms.Expansion:
+        force = k * u - load / (g - u) ** 2
+        orders = {u: 1, f: 3, sigma: 2}
+        problem = one(force, ordering=orders, about={u: u_s}, resonances={u: W + sigma}, **options)
+        return ms.expand(problem, 2)
+
+    result = driven((V + f * sp.cos(W * t)) ** 2)
+    A = result.symbols.A[0]
+    constant = result.slow_flow.by_scale[2][A].subs(A, 0)
+    expected = -sp.I * f * sp.sqrt(k * u_s) * sp.Abs(g - u_s) / (2 * W * (g - u_s) ** 2)
+    assert sp.simplify(constant - expected) == 0
+
+
 def test_an_ordered_parameter_may_stand_inside():
     def stated(x: sp.Expr) -> ms.Problem:
         return ms.Problem(u.diff(t, 2) + u + x * u**3, u, ordering={u: 1, mu: 1})
@@ -174,6 +191,10 @@ def test_another_parameter_may_be_eliminated():
 ABOUT = {
     "symbol, linear load": (lambda: one(k * u + mu * u**3 - T, about={u: u_s}), {T: u_s * (k + mu * u_s**2)}),
     "number": (lambda: one(sp.sin(u) - T, about={u: sp.pi / 6}), {T: sp.Rational(1, 2)}),
+    "nested roots": (
+        lambda: one(sp.sin(u) - T, about={u: sp.pi / 5}),
+        {T: sp.sqrt(2) * sp.sqrt(5 - sp.sqrt(5)) / 4},
+    ),
     "upside down": (lambda: one(-sp.sin(u), about={u: sp.pi}), {}),
     "expression": (lambda: one(k * u - T + mu * (u - T / k) ** 3, about={u: T / k}), {}),
     "identity beyond polynomials": (
@@ -228,6 +249,12 @@ REFUSED = {
         lambda: one(u + sp.Piecewise((0, u < 1), (u - 1, True)) * u),
         ms.UnsupportedTermError,
         "Piecewise has no Taylor series",
+    ),
+    "root of a square": (lambda: one(u + sp.sqrt(u**2) * u), ms.UnsupportedTermError, "branch point.*small=epsilon"),
+    "root of a sum of squares": (
+        lambda: one(u + sp.sqrt(u**2 + u.diff(t) ** 2) * u),
+        ms.UnsupportedTermError,
+        "branch point.*small=epsilon",
     ),
     "floor": (lambda: one(u + u * sp.floor(u)), ms.UnsupportedTermError, "floor has no Taylor series"),
     "root": (lambda: one(u + sp.sqrt(u)), ms.UnsupportedTermError, r"sqrt\(u\(t\)\): the power 1/2 .*branch point"),

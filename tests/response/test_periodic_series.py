@@ -176,7 +176,7 @@ def test_arithmetics_agree(name):
 
 @pytest.mark.parametrize(
     "name",
-    ["van der Pol", "several powers", "velocities", "damping at the second order", "damping at the third order"],
+    ["van der Pol", "quadratic", "inertia", "damping at the second order", "damping at the third order"],
 )
 def test_levels_multiplied_in_runs_and_one_by_one_agree(monkeypatch, name):
     """At an order where runs of several lengths occur, with one to three levels still to be changed."""

@@ -37,7 +37,16 @@ def _stated_without_drives(problem: Problem) -> Problem:
     ]
     relations = [sp.Eq(key, value, evaluate=False) for key, value in kept]
     if problem.ordering is None:
-        return Problem(equations, problem.unknowns, small=problem.small, resonances=relations)
+        laws = {sp.Function(name): law for name, law in problem.laws.items()}
+        return Problem(
+            equations,
+            problem.unknowns,
+            small=problem.small,
+            resonances=relations,
+            laws=laws,
+            harmonics=problem.harmonics,
+            formal=problem.formal,
+        )
     ordering = {x: n for x, n in problem.ordering.items() if x in problem.unknowns or x.free_symbols & present}
     return Problem(equations, problem.unknowns, ordering=ordering, resonances=relations)
 

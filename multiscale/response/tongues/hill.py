@@ -18,7 +18,6 @@ from typing import Any, Protocol
 import sympy as sp
 
 from multiscale.algebra.choice import make_ring
-from multiscale.algebra.polynomial import freeze
 from multiscale.algebra.ring import IMAGINARY, Ring, RingSpec
 from multiscale.errors import ProblemError, UnsupportedTermError
 from multiscale.expressions import Writer
@@ -237,17 +236,10 @@ def _assembled(
 
 
 def _spec(reader: Reader) -> RingSpec:
-    """The generators without ε, p and phasors, and with sin² = 1 − cos² for every phase."""
+    """The generators without ε, p and phasors."""
     spec = reader.ring.spec
     dynamic = {s.name for s in reader.dynamic}
-    below = {name for _, p in spec.reciprocals for m, _ in p for name, _ in m}
-    circles = []
-    for name, value in sorted(reader.meanings.items()):
-        cosine = str(sp.cos(*value.args)) if isinstance(value, sp.sin) else ""
-        if cosine in reader.meanings and name not in below:
-            circles.append((name, freeze({(): Fraction(1), ((cosine, 2),): Fraction(-1)})))
-    taken = dynamic | {name for name, _ in circles}
-    return replace(spec, roots=(*spec.roots, *circles), reals=tuple(s for s in spec.reals if s not in taken))
+    return replace(spec, reals=tuple(s for s in spec.reals if s not in dynamic))
 
 
 def _check_leading(hill: Hill, u: sp.Expr) -> None:
