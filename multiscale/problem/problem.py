@@ -242,6 +242,11 @@ class Problem:
             x = x.subs({s: frequencies[a] for s, a in named.items() if a < len(frequencies)})
         return x
 
+    @property
+    def mode_names(self) -> frozenset[sp.Symbol]:
+        """The symbols of relations that name natural frequencies of coupled equations: omega_1, omega_2, …"""
+        return frozenset(self._mode_symbols) if self.canonical(1).operator is not None else frozenset()
+
     @cached_property
     def _mode_symbols(self) -> dict[sp.Symbol, int]:
         """{omega_1: 0, …} for the symbols of relations that name natural frequencies of coupled equations."""

@@ -59,6 +59,36 @@ SYSTEMS = {
         2,
         {"resonances": {Om: sp.sqrt(R(5, 2) - sp.sqrt(5) / 2) + eps * sigma}},
     ),
+    "slowly varying whirl": (
+        [
+            x.diff(t, 2) - (R(6, 5) + eps * t) * y.diff(t) + 2 * x + eps * x**2,
+            y.diff(t, 2) + (R(6, 5) + eps * t) * x.diff(t) + 2 * y,
+        ],
+        [x, y],
+        2,
+        {},
+    ),
+    "slowly varying coupled stiffness": (
+        [x.diff(t, 2) + (2 + eps * t) * x - y / 2 + eps * x**2, y.diff(t, 2) + 3 * y - x / 2],
+        [x, y],
+        1,
+        {},
+    ),
+    "denominators with several terms": (
+        [(k + mu) * x.diff(t, 2) + G * k * x + y, (k + kappa) * y.diff(t, 2) + (k + mu) * y + eps * alpha * x * y],
+        [x, y],
+        2,
+        {},
+    ),
+    "cart with a pendulum": (
+        [
+            (k + mu) * x.diff(t, 2) + mu * y.diff(t, 2) + kappa * x,
+            x.diff(t, 2) + y.diff(t, 2) + G * y + eps * alpha * y**3,
+        ],
+        [x, y],
+        1,
+        {},
+    ),
     "driven off resonance": ([MASSES[0] - f * sp.cos(Om * t), MASSES[1]], [x, y], 2, {}),
 }
 
