@@ -111,7 +111,8 @@ class Expansion:
                 first = next(b for b, r in enumerate(rate) if r)
                 ratio = sp.Rational(rate[first], bases.rates[j][first])
                 names = self.problem.frequency_names
-                expressed[sp.Symbol(names[k])] = ratio * sp.Symbol(names[j])
+                if names[k] not in {str(key) for key in expressed}:
+                    expressed[sp.Symbol(names[k])] = ratio * sp.Symbol(names[j])
         return expressed
 
     def _frequency_parts(self, mode: int) -> tuple[sp.Expr, ...]:

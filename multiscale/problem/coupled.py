@@ -85,6 +85,7 @@ def coupled_form(
         mass, damping, stiffness = (matrix(tables, reader, order) for order in (2, 1, 0))
         radicals, weak = _radicals(working, layout.small), _remedy(layout)
         try:
+            radicals.settle([*mass, *damping, *stiffness])
             found = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
         except EliminatedError:
             continue

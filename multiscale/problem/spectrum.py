@@ -18,6 +18,7 @@ from dataclasses import dataclass
 from typing import Any
 
 import sympy as sp
+from sympy.polys.matrices import DomainMatrix
 
 from multiscale.errors import MultiscaleError, ProblemError
 from multiscale.problem.radicals import Radicals
@@ -107,12 +108,12 @@ def _parts(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> tuple[s
     size = mass.shape[0]
     entries = [[S**2 * mass[i, j] + S * damping[i, j] + stiffness[i, j] for j in range(size)] for i in range(size)]
     opaque = _opaque(entries)
-    radicals = sorted({x for row in entries for e in row for x in e.atoms(sp.Pow) if _is_root(x)}, key=str)
-    plain = [[e.xreplace(opaque) for e in row] for row in entries]
-    determinant = sp.Matrix(plain).det(method="berkowitz")
-    polynomial = sp.Poly(sp.expand(determinant), S)
+    radicals = sorted((x for x in opaque if _is_root(x)), key=str)
+    plain = DomainMatrix.from_list_sympy(size, size, [[e.xreplace(opaque) for e in row] for row in entries])
+    # Without division over polynomials: the constant term of the characteristic polynomial.
+    determinant = plain.domain.to_sympy(plain.charpoly()[-1]) * (-1) ** size
     even, odd = sp.Integer(0), sp.Integer(0)
-    for (power,), c in polynomial.terms():
+    for (power,), c in sp.Poly(determinant, S).terms():
         term = c * (-X) ** (power // 2)
         even, odd = (even + term, odd) if power % 2 == 0 else (even, odd + term)
     back = {v: k for k, v in opaque.items()}
@@ -123,12 +124,16 @@ def _parts(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> tuple[s
 
 
 def _is_root(x: sp.Expr) -> bool:
-    return bool(x.base.is_Rational and not x.exp.is_Integer)
+    return bool(x.is_Pow and x.base.is_Rational and not x.exp.is_Integer)
 
 
 def _opaque(entries: list[list[sp.Expr]]) -> dict[sp.Expr, sp.Expr]:
-    """Functions of parameters and other leaves as symbols while the determinant is worked out."""
-    found = {f for row in entries for e in row for f in e.atoms(sp.Function) | e.atoms(sp.NumberSymbol)}
+    """Radicals, functions of parameters and other leaves as symbols while the determinant is worked out."""
+    found: set[sp.Expr] = set()
+    for e in (e for row in entries for e in row):
+        found |= e.atoms(sp.Function) | e.atoms(sp.NumberSymbol)
+        found |= {p.base ** (p.exp / p.exp.p) for p in e.atoms(sp.Pow) if p.exp.is_Rational and not p.exp.is_Integer}
+        found |= {p for p in e.atoms(sp.Pow) if not p.exp.is_Rational}
     return {f: sp.Dummy(f"leaf{k}") for k, f in enumerate(sorted(found, key=str))}
 
 

@@ -80,6 +80,15 @@ SYSTEMS = {
         2,
         {},
     ),
+    "radicals in the stiffness": (
+        [
+            x.diff(t, 2) + sp.sqrt(k) * x - sp.sqrt(2) * y / 3 + eps * x**3,
+            y.diff(t, 2) + k * sp.sin(kappa) * y - sp.sqrt(2) * x / 3,
+        ],
+        [x, y],
+        1,
+        {},
+    ),
     "cart with a pendulum": (
         [
             (k + mu) * x.diff(t, 2) + mu * y.diff(t, 2) + kappa * x,
