@@ -54,9 +54,10 @@ class Radicals:
     def settle(self, entries: Iterable[sp.Expr]) -> None:
         """Square roots of parameters in L_0 become symbols too, √k beside k = √k². Raises `EliminatedError`."""
         for p in sorted({p for x in entries for p in x.atoms(sp.Pow)}, key=str):
-            if p.exp.is_Rational and p.exp.q == 2 and p.base.free_symbols:
-                if self._eliminate(sp.Symbol(f"sqrt({p.base})", positive=True), p.base):
-                    raise EliminatedError
+            if not p.exp.is_Rational or p.exp.q != 2 or not p.base.free_symbols:
+                continue
+            if self._eliminate(sp.Symbol(f"sqrt({p.base})", positive=True), p.base):
+                raise EliminatedError
 
     def number(self, value: sp.Expr) -> sp.Expr:
         """A symbol for a number without a closed form."""

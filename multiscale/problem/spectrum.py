@@ -55,7 +55,7 @@ def imaginary_roots(
 
     `weak` says how a term is made small.
     """
-    even, odd = _parts(mass, damping, stiffness)
+    even, odd, back = _parts(mass, damping, stiffness)
     if even.is_zero and odd.is_zero:
         missing = [u for k, u in enumerate(names) if not any((*mass[:, k], *damping[:, k], *stiffness[:, k]))]
         hint = f"{missing[0]} does not stand in them; " if missing else ""
@@ -73,7 +73,7 @@ def imaginary_roots(
     common = sp.gcd(even, odd) if not odd.is_zero else even
     found: list[Found] = []
     for factor, multiplicity in common.factor_list()[1]:
-        for w in _frequencies(factor, radical):
+        for w in _frequencies(factor, back, radical):
             found.append(Found(w[0], multiplicity, w[1]) if isinstance(w, tuple) else Found(w, multiplicity))
     if not found:
         raise _nothing_oscillates(_shown(even, odd), damping, names, weak)
@@ -103,8 +103,10 @@ def _shown(even: sp.Poly, odd: sp.Poly) -> sp.Expr:
     return sp.expand(even.as_expr().subs(X, -(s**2)) + s * odd.as_expr().subs(X, -(s**2)))
 
 
-def _parts(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> tuple[sp.Poly, sp.Poly]:
-    """E(−x) and O(−x) of det L_0(s) = E(s²) + s O(s²), as polynomials in x."""
+def _parts(
+    mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix
+) -> tuple[sp.Poly, sp.Poly, dict[sp.Expr, sp.Expr]]:
+    """E(−x) and O(−x) of det L_0(s) = E(s²) + s O(s²), as polynomials in x, and what symbols for leaves stand for."""
     size = mass.shape[0]
     entries = [[S**2 * mass[i, j] + S * damping[i, j] + stiffness[i, j] for j in range(size)] for i in range(size)]
     opaque = _opaque(entries)
@@ -117,14 +119,25 @@ def _parts(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> tuple[s
         term = c * (-X) ** (power // 2)
         even, odd = (even + term, odd) if power % 2 == 0 else (even, odd + term)
     back = {v: k for k, v in opaque.items()}
-    # Parameters stand in the coefficient domain, so that factors are those over the field of all of them.
-    options: dict[str, object] = {"extension": radicals} if radicals else {"field": True}
-    even_part, odd_part = (sp.Poly(sp.expand(x.xreplace(back)), X, **options) for x in (even, odd))
-    return even_part, odd_part
+    even, odd = (sp.expand(x.xreplace(back)) for x in (even, odd))
+    radicals = [r for r in radicals if any(r in {_leaf(p) for p in x.atoms(sp.Pow)} for x in (even, odd))]
+    # Parameters stand in the coefficient domain, so that factors are those over the field of all of them. Beside
+    # parameters radicals count as independent: a factor may then be missed, but none is wrong.
+    options: dict[str, object] = {"field": True}
+    if radicals and (even.free_symbols | odd.free_symbols) == {X}:
+        options = {"extension": radicals}
+    elif radicals:
+        even, odd = (x.xreplace(opaque) for x in (even, odd))
+    return sp.Poly(even, X, **options), sp.Poly(odd, X, **options), back
 
 
 def _is_root(x: sp.Expr) -> bool:
     return bool(x.is_Pow and x.base.is_Rational and not x.exp.is_Integer)
+
+
+def _leaf(x: sp.Expr) -> sp.Expr:
+    """√2 of √2³: the radical that all powers of it share."""
+    return x.base ** sp.Rational(1, x.exp.q) if x.exp.is_Rational else x
 
 
 def _opaque(entries: list[list[sp.Expr]]) -> dict[sp.Expr, sp.Expr]:
@@ -132,19 +145,19 @@ def _opaque(entries: list[list[sp.Expr]]) -> dict[sp.Expr, sp.Expr]:
     found: set[sp.Expr] = set()
     for e in (e for row in entries for e in row):
         found |= e.atoms(sp.Function) | e.atoms(sp.NumberSymbol)
-        found |= {p.base ** (p.exp / p.exp.p) for p in e.atoms(sp.Pow) if p.exp.is_Rational and not p.exp.is_Integer}
+        found |= {_leaf(p) for p in e.atoms(sp.Pow) if p.exp.is_Rational and not p.exp.is_Integer}
         found |= {p for p in e.atoms(sp.Pow) if not p.exp.is_Rational}
     return {f: sp.Dummy(f"leaf{k}") for k, f in enumerate(sorted(found, key=str))}
 
 
-def _frequencies(factor: sp.Poly, radical: Radicals) -> list[Any]:
+def _frequencies(factor: sp.Poly, back: dict[sp.Expr, sp.Expr], radical: Radicals) -> list[Any]:
     """ω, or (ω, its form to print), for the positive roots ω² of an irreducible factor."""
     if factor.degree() == 1:
-        a, b = factor.all_coeffs()
+        a, b = (c.xreplace(back) for c in factor.all_coeffs())
         square = sp.cancel(-b / a)
         return [] if square.is_nonpositive else [radical(square)]
     if factor.degree() == 2:
-        a, b, c = factor.all_coeffs()
+        a, b, c = (c.xreplace(back) for c in factor.all_coeffs())
         return _pair(sp.cancel(-b / a), sp.cancel(c / a), radical)
     if factor.free_symbols_in_domain:
         raise ProblemError(
