@@ -86,12 +86,12 @@ def coupled_form(
         radicals, weak = _radicals(working, layout.small), _remedy(layout)
         try:
             radicals.settle([*mass, *damping, *stiffness])
-            found = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
+            found, others = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
         except EliminatedError:
             continue
         found = [positive(f, working.hidden) for f in found]
         found = with_mode_relations(working, prepared, layout, shown, found, modes)
-        return _assembled(working, prepared, layout, shown, found, choice)
+        return _assembled(working, prepared, layout, shown, found, others, choice)
 
 
 def _remedy(layout: Layout) -> str:
@@ -177,13 +177,14 @@ def _assembled(
     layout: Layout,
     shown: Mapping[sp.Symbol, sp.Expr],
     found: list[Found],
+    others: int,
     choice: Choice,
 ) -> Canonical:
     reader, tables, bases, linear = linear_part(working, layout, shown, found)
     written = [f.shown or f.frequency for f in found]
     meant = [w.subs(working.hidden).subs(prepared.leaves.meanings) for w in written]
     roots = roots_of(linear, bases, reader, found, meant, choice)
-    operator = replace(linear.operator, roots=tuple(roots))
+    operator = replace(linear.operator, roots=tuple(roots), others=others)
     force = []
     for table in tables:
         power, leading = leading_terms(table)

@@ -50,10 +50,10 @@ def imaginary_roots(
     radical: Radicals,
     names: Sequence[sp.Expr],
     weak: str,
-) -> list[Found]:
-    """The frequencies of all oscillations that neither grow nor decay; raises `ProblemError` where there are none.
+) -> tuple[list[Found], int]:
+    """The frequencies of all oscillations that neither grow nor decay, and the number of roots off the imaginary axis.
 
-    `weak` says how a term is made small.
+    `weak` says how a term is made small. Raises `ProblemError` where nothing oscillates.
     """
     even, odd, back = _parts(mass, damping, stiffness)
     if even.is_zero and odd.is_zero:
@@ -77,7 +77,8 @@ def imaginary_roots(
             found.append(Found(w[0], multiplicity, w[1]) if isinstance(w, tuple) else Found(w, multiplicity))
     if not found:
         raise _nothing_oscillates(_shown(even, odd), damping, names, weak)
-    return found
+    degree = max(2 * even.degree(), -1 if odd.is_zero else 2 * odd.degree() + 1)
+    return found, degree - 2 * sum(f.multiplicity for f in found)
 
 
 def _nothing_oscillates(

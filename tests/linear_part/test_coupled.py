@@ -264,6 +264,77 @@ def test_residuals_of_random_gyroscopic_systems():
     check()
 
 
+IRREDUCIBLE = [[3, -1, 0], [-1, 2, -R(1, 3)], [0, -1, 4]]
+
+
+def blocks(count):
+    """`count` equal blocks of three masses, whose frequencies have no closed form, with weak coupling of the blocks."""
+    unknowns = [[sp.Function(f"u{b}{i}")(t) for i in range(3)] for b in range(count)]
+    flat = [u for block in unknowns for u in block]
+    equations = []
+    for b, block in enumerate(unknowns):
+        for i, u in enumerate(block):
+            weak = eps * flat[0] * flat[-1] if (b, i) == (0, 0) else eps * mu * flat[0].diff(t) if i == 1 else 0
+            equations.append(u.diff(t, 2) + (sp.Matrix(IRREDUCIBLE)[i, :] * sp.Matrix(block))[0] + weak)
+    return equations, flat
+
+
+class TestFloatingPoint:
+    """Modes without a closed form, by the residual in floating point: |residual| = O(ε^{N+1}) above rounding."""
+
+    @pytest.mark.parametrize(("count", "options"), [(1, {}), (1, {"modes": [1]}), (2, {"modes": [0, 1]})])
+    def test_residual(self, count, options):
+        equations, unknowns = blocks(count)
+        result = ms.expand(ms.Problem(equations, unknowns, small=eps, **options), 2, tolerance=0.0)
+        assert result.representation == "complex"
+        state = [0.3, 0.1, -0.2, 0.25, 0.15, 0.2][: 2 * result.computation.modes]
+        small, errors = [0.08, 0.04], []
+        for e in small:
+            values = {"epsilon": e, "mu": 0.3}
+            flow = result.slow_flow.to_numpy().bind(values)
+            jets = [result.to_numpy(derivative=d).bind(values)(0.4, state) for d in (0, 1)]
+            # The second derivative from the first, along the slow flow, by a central difference.
+            h, speed = 1e-4, result.to_numpy(derivative=1).bind(values)
+            ahead, behind = (speed(0.4 + s * h, state + s * h * flow(0.4, state)) for s in (1, -1))
+            known = {u.diff(t, 2): (p - q) / (2 * h) for u, p, q in zip(unknowns, ahead, behind, strict=True)}
+            known |= {u.diff(t): x for u, x in zip(unknowns, jets[1], strict=True)}
+            place = dict(zip(unknowns, jets[0], strict=True))
+            plain = [x.xreplace(known).xreplace(place).subs({eps: e, mu: 0.3}) for x in equations]
+            errors.append(max(abs(float(x)) for x in plain))
+        assert slope(small, errors) > 2.7
+
+    def test_a_repeated_frequency(self):
+        equations, unknowns = blocks(2)
+        result = ms.expand(ms.Problem(equations, unknowns, small=eps), 1, tolerance=0.0)
+        frequencies = [float(mode.frequency) for mode in result.modes]
+        assert frequencies[::2] == pytest.approx(frequencies[1::2])
+        assert [mode.reference for mode in result.modes] == [unknowns[0], unknowns[3]] * 3
+
+
+SHORT = ["rotor", "thermal state", "two equal oscillators", "driven"]
+
+
+@pytest.mark.parametrize("name", SHORT)
+def test_extending_computes_nothing_again(name):
+    assert ms.extend(expanded(name, 1), 2) == expanded(name, 2)
+
+
+def test_extending_in_floating_point():
+    equations, unknowns = blocks(1)
+    problem = ms.Problem(equations, unknowns, small=eps)
+    assert ms.extend(ms.expand(problem, 1, tolerance=0.0), 2) == ms.expand(problem, 2, tolerance=0.0)
+
+
+@pytest.mark.parametrize("name", SHORT)
+def test_representations_agree(name):
+    pytest.importorskip("flint")
+    equations, unknowns, _, options = SYSTEMS[name]
+    problem = ms.Problem(equations, unknowns, small=eps, **options)
+    one, other = (ms.expand(problem, 2, representation=r, tolerance=0.0) for r in ("sympy", "flint"))
+    assert one == other
+    assert str(one.slow_flow.polar) == str(other.slow_flow.polar)
+
+
 def test_views_speak_of_modes():
     """Every view of a result whose modes are fewer than its unknowns."""
     result = expanded("thermal state", 2)
