@@ -164,7 +164,7 @@ def _frequencies(factor: sp.Poly, back: dict[sp.Expr, sp.Expr], radical: Radical
         raise ProblemError(
             f"the frequencies are the roots of {factor.as_expr().subs(X, sp.Symbol('omega') ** 2)} = 0, of degree "
             f"{factor.degree()} in omega**2, which has no closed form: give numbers for the parameters of the linear "
-            "part, or use modal coordinates"
+            "part, or write one of them in terms of a frequency (solve det L_0(i*omega) = 0 for it)"
         )
     squares = [r for r in sp.Poly(factor, X).nroots(n=DIGITS, maxsteps=500) if r.is_real and r > 0]
     return [radical.number(sp.sqrt(x)) for x in squares]

@@ -189,6 +189,23 @@ class TestEquivalentForms:
         assert set(other.problem.parameters) == {k, sigma}
         assert other.problem.natural_frequencies == (sp.sqrt(k), 2 * sp.sqrt(k))
 
+    def test_modes_made_equal_by_a_relation(self):
+        """Coupled masses near 1:1 against modal coordinates; both modes share one rate, and keep their shapes."""
+        w1, w2 = sp.symbols("omega_1 omega_2", positive=True)
+        q1, q2 = v, w
+        modal = [q1.diff(t, 2) + k * q1 + eps * q1 * q2**2, q2.diff(t, 2) + R(11, 10) * k * q2 + eps * q1**3]
+        inserted = [e.subs({q1: (x + y) / 2, q2: (x - y) / 2}, simultaneous=True).doit() for e in modal]
+        coupled = [sp.expand(inserted[0] + inserted[1]), sp.expand(inserted[0] - inserted[1])]
+        one, _ = flows(modal, [q1, q2], 1, resonances={q2: sp.sqrt(k) + eps * sigma})
+        other, _ = flows(coupled, [x, y], 1, resonances={w2: w1 + eps * sigma})
+        # The modes are measured in x = q_1 + q_2 and y = q_1 − q_2.
+        A, B = other.symbols.A
+        C, D = one.symbols.A
+        change = {A: C + D, B: C - D}
+        x_flow, y_flow = (e.subs(change, simultaneous=True) for e in other.slow_flow.by_scale[1].values())
+        q1_flow, q2_flow = one.slow_flow.by_scale[1].values()
+        assert agree([x_flow, y_flow], [q1_flow + q2_flow, q1_flow - q2_flow])
+
 
 MOTIONS = {
     "rotor": (ROTOR, [x, y], {}, {alpha: 0.7, mu: 0.3, G: 0.7, k: 2.0}, [0.5, 0.1, -0.3, 0.4]),
@@ -302,6 +319,18 @@ class TestFloatingPoint:
             plain = [x.xreplace(known).xreplace(place).subs({eps: e, mu: 0.3}) for x in equations]
             errors.append(max(abs(float(x)) for x in plain))
         assert slope(small, errors) > 2.7
+
+    def test_a_drive_near_a_mode(self):
+        equations, unknowns = blocks(1)
+        equations[2] -= eps * f * sp.cos(Om * t)
+        free = ms.Problem(equations[:2] + [equations[2].subs(f, 0)], unknowns, small=eps)
+        named, explicit = (
+            ms.Problem(equations, unknowns, small=eps, resonances={Om: w1 + eps * sigma})
+            for w1 in (sp.Symbol("omega_1", positive=True), free.natural_frequencies[0])
+        )
+        one, other = (ms.expand(p, 1, tolerance=0.0) for p in (named, explicit))
+        assert len(one.slow_flow.phases) == 1
+        assert one.equals(other)
 
     def test_a_repeated_frequency(self):
         equations, unknowns = blocks(2)
