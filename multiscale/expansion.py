@@ -87,7 +87,7 @@ class Expansion:
 
     @property
     def representation(self) -> str:
-        """The arithmetic that computed the coefficients: "sympy" or "flint" (both exact), or "complex"."""
+        """The arithmetic that computed the coefficients: "sympy" or "flint" (exact), "complex" or "mpmath"."""
         return self.computation.representation
 
     @cached_property
@@ -187,7 +187,7 @@ class Expansion:
 
     def __repr__(self) -> str:
         unknowns = ", ".join(str(u) for u in self.problem.unknowns)
-        how = ", in floating point" if self.representation == "complex" else ""
+        how = ", in floating point" if self.representation in ("complex", "mpmath") else ""
         return f"Expansion of {unknowns} to order {self.order} in {self.problem.small}"[: 199 - len(how)] + how
 
     def __reduce__(self) -> tuple[Any, ...]:
@@ -271,8 +271,10 @@ def expand(
         N: the slow flow holds D_1 … D_N, the fields U_0 … U_N, and the residual of the equations is O(ε^{N+1}).
     on_level : callable, optional
         Called with each finished `Level`; returning False ends the expansion there.
-    representation : "auto", "flint" or "sympy"
-        The polynomial arithmetic; all give identical results. "auto" takes FLINT when python-flint is installed.
+    representation : "auto", "flint", "sympy", "complex" or "mpmath"
+        The polynomial arithmetic; the exact ones, "flint" and "sympy", give identical results. "auto" takes FLINT when
+        python-flint is installed. Where frequencies have no closed form, "auto" takes "complex" (double precision), and
+        "mpmath" has 50 digits.
     tolerance : float
         Relative distance below which numeric frequencies count as close to resonance.
 

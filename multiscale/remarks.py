@@ -179,7 +179,7 @@ def _growing(computation: Computation) -> list[str]:
 def _assumptions(computation: Computation) -> list[str]:
     bases = computation.canonical.bases
     found = [f"{name} is assumed to be rationally independent of the other frequencies" for name in bases.assumed]
-    if computation.representation == "complex":
+    if computation.representation in ("complex", "mpmath"):
         found.append(
             "some natural frequencies have no closed form: coefficients are floating-point numbers, and these "
             "frequencies are assumed to be rationally independent of all others"

@@ -24,7 +24,7 @@ from multiscale.problem.preparation import Prepared
 from multiscale.problem.radicals import EliminatedError, Radicals
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.rows import leading_terms, linear_part, matrix
-from multiscale.problem.spectrum import Found, imaginary_roots
+from multiscale.problem.spectrum import DIGITS, Found, imaginary_roots
 from multiscale.problem.terms import Entry, Layout, show, tabulate
 
 __all__ = ["form_of"]
@@ -165,7 +165,7 @@ def _radicals(working: Working, small: sp.Symbol) -> Radicals:
     def name(value: sp.Expr) -> sp.Symbol:
         symbol = sp.Symbol(f"@w{len(working.numbers)}", positive=True)
         working.numbers.append(symbol)
-        working.hidden[symbol] = sp.Float(value, 17)
+        working.hidden[symbol] = sp.Float(value, DIGITS)
         return symbol
 
     return Radicals(eliminate, adjoin, working.relations, name, {b.subs(small, 0) for b in written})

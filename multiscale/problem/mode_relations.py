@@ -16,7 +16,7 @@ from dataclasses import replace
 import sympy as sp
 
 from multiscale.errors import ProblemError
-from multiscale.problem.canonical import Working
+from multiscale.problem.canonical import Working, in_double
 from multiscale.problem.modes import numbering
 from multiscale.problem.preparation import Prepared
 from multiscale.problem.reading import Reader, decimals
@@ -44,7 +44,7 @@ def with_mode_relations(
     named = {s: found[order[a]].frequency for s, a in modes.items()}
     explicit = {m: f.frequency for m, f in zip(meant, found, strict=True) if not m.is_Rational}
     # Relations hold numbers as the decimals they print as.
-    explicit |= {decimals(m): w for m, w in explicit.items() if m.is_Float}
+    explicit |= {decimals(in_double(m)): w for m, w in explicit.items() if m.is_Float}
 
     def read(x: sp.Expr) -> sp.Expr:
         return x.subs(named).subs(explicit)

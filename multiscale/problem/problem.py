@@ -12,7 +12,7 @@ from typing import Any, SupportsIndex
 import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
-from multiscale.problem.canonical import Canonical
+from multiscale.problem.canonical import Canonical, in_double
 from multiscale.problem.coupled import form_of
 from multiscale.problem.matrices import equations_of, size_of
 from multiscale.problem.modes import Choice, modes_given, references_given
@@ -212,7 +212,7 @@ class Problem:
     @property
     def natural_frequencies(self) -> tuple[sp.Expr, ...]:
         """ω of each mode at leading order, in the user's symbols: of each unknown where the unknowns are uncoupled."""
-        return self.canonical(1).frequencies
+        return tuple(map(in_double, self.canonical(1).frequencies))
 
     @property
     def frequency_names(self) -> tuple[str, ...]:

@@ -30,7 +30,7 @@ X = sp.Symbol("@x")
 S = sp.Symbol("@s")
 
 
-DIGITS = 30
+DIGITS = 60
 """Digits of frequencies without a closed form."""
 
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import pickle
+
 import pytest
 import sympy as sp
 from hypothesis import HealthCheck, given, settings
@@ -320,10 +322,27 @@ class TestFloatingPoint:
             errors.append(max(abs(float(x)) for x in plain))
         assert slope(small, errors) > 2.7
 
+    @pytest.mark.parametrize(
+        ("count", "options", "order"), [(1, {}, 2), (1, {"modes": [1]}, 3), (2, {"modes": [0, 1]}, 2)]
+    )
+    def test_residual_with_many_digits(self, count, options, order):
+        """50 digits leave room for ε = 10⁻⁹: the order is seen as in exact arithmetic."""
+        equations, unknowns = blocks(count)
+        problem = ms.Problem(equations, unknowns, small=eps, **options)
+        result = ms.expand(problem, order, representation="mpmath", tolerance=0.0)
+        assert result.representation == "mpmath"
+        found = exponents(result, VALUES, AMPLITUDES[: result.computation.modes])
+        assert min(found) > order + 1 - 0.01
+        double = ms.expand(problem, order, tolerance=0.0)
+        at, state = {"epsilon": 0.3, "mu": 0.7}, [0.4, 0.1, -0.2, 0.3, 0.2, 0.1][: 2 * len(result.modes)]
+        one, other = (e.slow_flow.to_numpy().bind(at)(0.0, state) for e in (result, double))
+        assert one == pytest.approx(other, rel=1e-11, abs=1e-14)
+        assert pickle.loads(pickle.dumps(result)) == result
+
     def test_a_drive_near_a_mode(self):
         equations, unknowns = blocks(1)
         equations[2] -= eps * f * sp.cos(Om * t)
-        free = ms.Problem(equations[:2] + [equations[2].subs(f, 0)], unknowns, small=eps)
+        free = ms.Problem([*equations[:2], equations[2].subs(f, 0)], unknowns, small=eps)
         named, explicit = (
             ms.Problem(equations, unknowns, small=eps, resonances={Om: w1 + eps * sigma})
             for w1 in (sp.Symbol("omega_1", positive=True), free.natural_frequencies[0])
