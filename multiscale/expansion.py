@@ -70,7 +70,7 @@ class Expansion:
     order : int
         N: the levels 0 … N, the slow derivatives D_1 … D_N.
     amplitude : str
-        "fundamental": |2A| is the amplitude of the fundamental harmonic, to all orders. "peak", made by
+        "fundamental": ``|2A|`` is the amplitude of the fundamental harmonic, to all orders. "peak", made by
         `with_amplitude`: it is half the distance from peak to peak, to the order of the expansion.
     tolerance : float
         Relative distance below which numeric frequencies count as close to resonance (`warnings`).
@@ -221,7 +221,7 @@ class Expansion:
         return _rebuilt, (self.problem, self.order, self.amplitude, self.tolerance, self.computation.snapshot())
 
     def to_numpy(self, derivative: int = 0, wrt: str | None = None) -> NumpyFunction:
-        """The unknowns (or a time derivative of them) from a slow state: f(t, y, *parameters), shape (unknowns,) + B.
+        """The unknowns, or a time derivative, from a slow state: ``f(t, y, *parameters)``, shape (unknowns,) + B.
 
         y is Cartesian in the rotating frame, as in ``slow_flow.to_numpy("cartesian")``. With `wrt` "state" or
         "parameters" it is the Jacobian by these, at fixed time: (unknowns, n) + B.
@@ -235,7 +235,7 @@ class Expansion:
         return displacement_function(self.problem, self.computation, derivative, wrt)
 
     def frequency_to_numpy(self, mode: int = 0) -> NumpyFunction:
-        """ω at a slow state y (Cartesian in the rotating frame): f(t, y, *parameters), shape B."""
+        """ω at a slow state y (Cartesian in the rotating frame): ``f(t, y, *parameters)``, shape B."""
         from multiscale.codegen.functions import frequency_function
 
         self._check_frequency(mode)

@@ -23,7 +23,7 @@ class ModeShape:
     shape : dict
         {unknown: its component of φ}; complex where components are out of phase.
     reference : Expr
-        The unknown whose component is 1: |2A| is the amplitude of the fundamental in it, to all orders.
+        The unknown whose component is 1: ``|2A|`` is the amplitude of the fundamental in it, to all orders.
     """
 
     frequency: sp.Expr

@@ -187,7 +187,7 @@ class SlowFlow:
         return sp.Matrix([[sp.diff(value, x) for x in flow] for value in flow.values()])
 
     def to_numpy(self, form: str = "cartesian", wrt: str | None = None) -> NumpyFunction:
-        """The slow flow, or its Jacobian, as a NumPy function f(t, y, *parameters).
+        """The slow flow, or its Jacobian, as a NumPy function ``f(t, y, *parameters)``.
 
         Parameters
         ----------

@@ -97,6 +97,34 @@ def test_approximants_reach_beyond_the_series():
 
 
 @pytest.fixture(scope="module")
+def drawn():
+    pytest.importorskip("matplotlib")
+    return runpy.run_path(str(DOCS / "examples" / "figures.py"))
+
+
+def test_every_figure_of_the_script_stands_on_a_page(drawn):
+    pages = "".join(page.read_text() for page in DOCS.glob("*.md"))
+    assert [name for name in drawn["FIGURES"] if f"(figures/{name})" not in pages] == []
+
+
+@pytest.mark.parametrize("name", ["tour_response.png", "decay.png", "exchange.png", "tongues.png"])
+def test_figures_are_drawn_again(drawn, name, tmp_path):
+    """The other figures take seconds each, for what they integrate."""
+    (path,) = drawn["write"](tmp_path, [name])
+    assert path.stat().st_size > 10_000
+
+
+def test_the_driven_oscillator_settles_where_the_figure_shows_it(drawn):
+    values = {"epsilon": 0.02, "mu": 0.15, "alpha": 1.0, "f": 0.6, "omega_0": 1.0, "Omega": 0.99}
+    (state,) = (s for s in ms.equilibria(drawn["driven"](3), values) if not s.spurious)
+    assert drawn["settled"](0.99, 1.6)[1] == pytest.approx(state.amplitudes[0], rel=2e-3)
+
+
+def test_the_cycle_has_the_frequency_that_the_figure_shows(drawn):
+    assert drawn["cycle_frequency"](1.0) == pytest.approx(0.942955847442, abs=1e-7)
+
+
+@pytest.fixture(scope="module")
 def fork():
     module = runpy.run_path(str(DOCS / "examples" / "ring_down_identification.py"))
     return module, module["record"]()

@@ -92,7 +92,7 @@ def _compiled(text: str, functions: tuple[str, ...]) -> Callable[..., tuple[Any,
 
 @dataclass(frozen=True, repr=False)
 class NumpyFunction:
-    """f(t, y, *parameters), generated from a finished result.
+    """``f(t, y, *parameters)``, generated from a finished result.
 
     Shapes: y is (n,) or (n,) + S, and with B the broadcast of t, S and the parameters the result is ``shape`` + B, also
     where a component is constant. Values are float64 (complex128 for the complex form). Any consistent units.
@@ -145,7 +145,7 @@ class NumpyFunction:
 
     @property
     def arguments(self) -> tuple[str, ...]:
-        """("t", "y", *parameters)."""
+        """``("t", "y", *parameters)``."""
         return ("t", "y", *self.parameters)
 
     def __call__(self, t: npt.ArrayLike, y: npt.ArrayLike, *parameters: npt.ArrayLike) -> Array:

@@ -19,6 +19,8 @@ __all__ = ["ForceLaw", "law_name", "laws_of", "with_calls", "without_calls"]
 class ForceLaw:
     """What an undefined function F in the equations stands for: ``Problem(…, laws={F: ForceLaw(function)})``.
 
+    A law that is a Python function cannot be written into a stand-alone module.
+
     Parameters
     ----------
     function : callable
@@ -30,8 +32,6 @@ class ForceLaw:
         phase average does not converge, and raises `EvaluationError`.
     derivative : callable, optional
         The derivative, needed only for Jacobians of the slow flow.
-
-    A law that is a Python function cannot be written into a stand-alone module.
 
     Examples
     --------
