@@ -134,8 +134,8 @@ class Views:
         """Σ row_f ω_f t + Σ row_l θ_l: a combination of natural phases and angles of drives, in time."""
         canonical = self._computation.canonical
         parts = [sp.Rational(x.numerator, x.denominator) for x in row]
-        modes = len(canonical.frequencies)
-        frequency = sp.Add(*(x * w for x, w in zip(parts[:modes], canonical.frequencies, strict=True)))
+        modes = self._computation.modes
+        frequency = sp.Add(*(x * w for x, w in zip(parts[:modes], self._computation.frequencies, strict=True)))
         driven = (x * d.angle for x, d in zip(parts[modes:], canonical.drives, strict=True))
         return sp.Add(_phase(frequency, self._problem.time), *driven)
 

@@ -15,6 +15,8 @@ import warnings
 from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any
 
+import sympy as sp
+
 from multiscale.algebra.polynomial import Frozen
 from multiscale.computed import Snapshot, restore
 from multiscale.errors import MultiscaleError, OrderingWarning, StorageError
@@ -184,7 +186,11 @@ def _snapshot(document: Mapping[str, Any], polynomials: PolynomialReader) -> Sna
         if not isinstance(name, str):
             raise refuse(f"{str(name)[:40]!r} where the name of a reciprocal was expected")
         reciprocals.append((name, polynomials.polynomial(rows)))
-    return Snapshot(tuple(reciprocals), levels("fields"), levels("changes"))
+    fields, changes = levels("fields"), levels("changes")
+    coefficients = (c for level in (*fields, *changes) for x in level for _, c in x)
+    # What exact arithmetic computed goes on in any; of floats only those of many digits are told apart by their type.
+    many = any(isinstance(c, sp.Float) for c in coefficients)
+    return Snapshot(tuple(reciprocals), fields, changes, "mpmath" if many else "auto")
 
 
 def _frozen(rows: Iterable[Any], polynomials: PolynomialReader) -> tuple[Frozen, ...]:

@@ -19,7 +19,7 @@ from sympy.core.function import AppliedUndef
 from sympy.functions.elementary.piecewise import ExprCondPair
 
 from multiscale.errors import StorageError
-from multiscale.storage.limits import BITS, DEPTH, NODES, checked_name, integer, refuse, sequence, spelled
+from multiscale.storage.limits import DEPTH, NODES, binary, checked_name, integer, refuse, sequence, spelled
 
 __all__ = ["Reader", "Writer"]
 
@@ -151,12 +151,7 @@ class Reader:
         return sp.Rational(integer(p, "a numerator"), integer(q, "a denominator", 1))
 
     def _float_node(self, sign: Any, mantissa: Any, exponent: Any, precision: Any) -> sp.Basic:
-        parts = (
-            integer(sign, "a sign", 0, 1),
-            integer(mantissa, "a mantissa", 0),
-            integer(exponent, "an exponent", -100_000, 100_000),
-        )
-        return sp.Float._new((*parts, parts[1].bit_length()), integer(precision, "a precision", 1, BITS))
+        return binary(sign, mantissa, exponent, precision)
 
     def _const_node(self, name: Any) -> sp.Basic:
         return _CONSTANTS[name]

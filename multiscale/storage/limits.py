@@ -9,6 +9,8 @@ from collections.abc import Sequence
 from math import isfinite
 from typing import Any
 
+import sympy as sp
+
 from multiscale.errors import StorageError
 
 __all__ = [
@@ -16,6 +18,7 @@ __all__ = [
     "CHARACTERS",
     "DEPTH",
     "NODES",
+    "binary",
     "checked_name",
     "field",
     "hexadecimal",
@@ -74,6 +77,16 @@ def hexadecimal(x: Any, what: str) -> float:
     if not isfinite(value):
         raise refuse(f"{what} is {value}")
     return value
+
+
+def binary(sign: Any, mantissa: Any, exponent: Any, precision: Any) -> sp.Float:
+    """A float of many digits, (−1)^sign · mantissa · 2^exponent."""
+    parts = (
+        integer(sign, "a sign", 0, 1),
+        integer(mantissa, "a mantissa", 0),
+        integer(exponent, "an exponent", -100_000, 100_000),
+    )
+    return sp.Float._new((*parts, parts[1].bit_length()), integer(precision, "a precision", 1, BITS))
 
 
 def sequence(x: Any, what: str, length: int | None = None) -> Sequence[Any]:

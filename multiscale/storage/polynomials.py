@@ -1,7 +1,8 @@
 """Polynomials by name as rows of integers: [numerator, denominator, name, exponent, name, exponent, …].
 
 Names are referred to by their place in one table for the whole text. A coefficient that is a float, from equations
-whose modes are known in floating-point numbers only, is ["hexadecimal float", 0, …].
+whose modes are known in floating-point numbers only, is ["hexadecimal float", 0, …], one of many digits is
+[[sign, mantissa, exponent, precision], 0, …] in binary.
 """
 
 from __future__ import annotations
@@ -9,8 +10,10 @@ from __future__ import annotations
 from fractions import Fraction
 from typing import Any
 
+import sympy as sp
+
 from multiscale.algebra.polynomial import Frozen
-from multiscale.storage.limits import NODES, hexadecimal, integer, refuse, sequence, spelled
+from multiscale.storage.limits import NODES, binary, hexadecimal, integer, refuse, sequence, spelled
 
 __all__ = ["PolynomialReader", "PolynomialWriter"]
 
@@ -33,6 +36,9 @@ class PolynomialWriter:
 
 
 def _spelled(c: Any) -> list[Any]:
+    if isinstance(c, sp.Float):
+        sign, mantissa, exponent, _ = c._mpf_
+        return [[int(sign), spelled(int(mantissa)), int(exponent), int(c._prec)], 0]
     return [c.hex(), 0] if isinstance(c, float) else [spelled(c.numerator), spelled(c.denominator)]
 
 
@@ -66,5 +72,7 @@ class PolynomialReader:
 
 def _coefficient(numerator: Any, denominator: Any) -> Any:
     if denominator == 0 and isinstance(denominator, int):
+        if isinstance(numerator, list):
+            return binary(*sequence(numerator, "a coefficient", 4))
         return hexadecimal(numerator, "a coefficient")
     return Fraction(integer(numerator, "a numerator"), integer(denominator, "a denominator", 1))

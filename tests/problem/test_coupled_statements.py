@@ -243,4 +243,5 @@ def test_a_growing_motion_is_remarked():
     decaying = [x.diff(t, 2) + x + eps * x * y, y.diff(t) + 2 * y + eps * x**2]
     remarks, none = (ms.expand(ms.Problem(e, [x, y], small=eps), 2).warnings for e in (growing, decaying))
     assert any("grows like exp(2*t)" in remark for remark in remarks)
+    assert any("1 of the roots of the leading order lie off the imaginary axis and decay" in remark for remark in none)
     assert not any("grows" in remark for remark in none)
