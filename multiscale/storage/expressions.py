@@ -19,7 +19,7 @@ from sympy.core.function import AppliedUndef
 from sympy.functions.elementary.piecewise import ExprCondPair
 
 from multiscale.errors import StorageError
-from multiscale.storage.limits import DEPTH, NODES, binary, checked_name, integer, refuse, sequence, spelled
+from multiscale.storage.limits import BITS, DEPTH, NODES, binary, checked_name, integer, refuse, sequence, spelled
 
 __all__ = ["Reader", "Writer"]
 
