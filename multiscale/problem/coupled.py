@@ -8,7 +8,7 @@ everything else is f. The purely imaginary roots of det L_0 are the modes; they 
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import sympy as sp
@@ -83,6 +83,7 @@ def coupled_form(
             working.equations = exact
             continue
         mass, damping, stiffness = (matrix(tables, reader, order) for order in (2, 1, 0))
+        _refuse_circular(modes, (mass, damping, stiffness))
         radicals, weak = _radicals(working, layout.small), _remedy(layout)
         try:
             radicals.settle([*mass, *damping, *stiffness])
@@ -92,6 +93,16 @@ def coupled_form(
         found = [positive(f, working.hidden) for f in found]
         found = with_mode_relations(working, prepared, layout, shown, found, modes)
         return _assembled(working, prepared, layout, shown, found, others, choice)
+
+
+def _refuse_circular(modes: Mapping[sp.Symbol, int], matrices: Sequence[sp.Matrix]) -> None:
+    """A frequency that a relation names cannot stand in the matrices that determine it."""
+    used = set().union(*(m.free_symbols for m in matrices))
+    if found := sorted(used & modes.keys(), key=str):
+        raise ProblemError(
+            f"a relation puts {found[0]} into the linear terms at leading order, whose natural frequency it means: "
+            "give the frequency there a symbol of its own, or the relation an explicit value"
+        )
 
 
 def _remedy(layout: Layout) -> str:

@@ -49,6 +49,8 @@ def with_mode_relations(
     def read(x: sp.Expr) -> sp.Expr:
         return x.subs(named).subs(explicit)
 
+    # A relation may have put a frequency into the forces too, as into an unbalance e Ω².
+    working.equations = [read(x) for x in working.equations]
     working.rates = [[read(x) for x in series] for series in working.rates]
     working.exact = [read(x) for x in working.exact]
     by_name = {s: meant[order[a]] for s, a in modes.items()}

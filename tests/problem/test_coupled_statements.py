@@ -212,6 +212,18 @@ REFUSED = {
         lambda: masses([[3, -1], [-1, 2]], resonances={sp.Symbol("omega_3"): sp.Symbol("omega_1") + eps * sigma}),
         "names omega_3, but the equations have 2 modes",
     ),
+    "frequency by name in the linear part": (
+        lambda: ms.Problem(
+            [
+                x.diff(t, 2) + Om * y.diff(t) + 3 * x + eps * f * sp.cos(Om * t),
+                y.diff(t, 2) - Om * x.diff(t) + 5 * y,
+            ],
+            [x, y],
+            small=eps,
+            resonances={Om: sp.Symbol("omega_1") + eps * sigma},
+        ),
+        "puts omega_1 into the linear terms",
+    ),
     "gyroscopic mode by name": (
         lambda: ms.Problem(
             [x.diff(t, 2) - 2 * y.diff(t) + 3 * x + eps * x**2, y.diff(t, 2) + 2 * x.diff(t) + 5 * y],
