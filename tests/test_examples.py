@@ -94,3 +94,33 @@ def test_approximants_reach_beyond_the_series():
         assert (abs(series - exact[e]) < 1e-8) == (e == 1.0)
     amplitudes = [reach["reach"](order).amplitude for order in reach["ORDERS"]]
     assert amplitudes == sorted(amplitudes)
+
+
+@pytest.fixture(scope="module")
+def fork():
+    module = runpy.run_path(str(DOCS / "examples" / "ring_down_identification.py"))
+    return module, module["record"]()
+
+
+def test_drag_damping_and_stiffness_are_identified(fork):
+    """The truth lies within three standard deviations, which are a small part of each value."""
+    module, data = fork
+    found = module["identify"](module["expansion"](), data)
+    for name, true in module["TRUTH"].items():
+        assert abs(found.values[name] - true) < 3 * found.uncertainties[name]
+        assert found.uncertainties[name] < 0.01 * true
+    assert found.misfit == pytest.approx(module["NOISE"], rel=0.03)
+
+
+def test_the_record_shows_that_there_is_drag(fork):
+    """Viscous damping alone leaves a misfit well above the noise."""
+    module, data = fork
+    guess = module["start"](data)
+    guess["c"] += guess.pop("d") * module["PLUCK"] * np.sqrt(guess["k"] / module["MASS"]) / 2
+    known = {"m": module["MASS"], "epsilon": 1.0, "d": 0.0}
+    short = len(data) // 10
+    for count in (short, len(data)):
+        model = ms.ring_down_model(module["expansion"](), module["TIMES"][:count], free=["c", "k", "k_3"], known=known)
+        found = ms.fit(model, data[:count], guess)
+        guess = found.values
+    assert found.misfit > 2 * module["NOISE"]
