@@ -36,12 +36,14 @@ class Level:
         {unknown: right-hand side}, with the solvability conditions of lower levels inserted and the term in D_nA left
         out.
     secular : dict
-        {unknown: the part of the forcing at the natural frequency}, both complex-conjugate halves.
+        {unknown: the part of the forcing that D_nA balances}, both complex-conjugate halves; for an oscillator all of its
+        forcing at the natural frequency, for coupled equations the part along L_0'(iω)φ.
     solvability : dict
         {D_nA: its value}, the condition that removes the secular terms; for a driven mode with what the turning of the
         frame adds, −iΦ_n A.
     corrections : dict
-        {unknown: U_n}, for n ≥ 1 without any part at the natural frequency where A is the amplitude of the fundamental
+        {unknown: U_n}, for n ≥ 1 without any part at the natural frequency of a mode in the reference of that mode (the
+        unknown itself for an oscillator; `Expansion.modes`), where A is the amplitude of the fundamental
         (`Expansion.amplitude`). As everywhere, A is taken in the rotating frame (`SlowFlow.frame`).
     divisors : tuple
         The polynomials in parameters that stand in denominators of this level, after reduction.

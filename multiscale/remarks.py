@@ -84,7 +84,27 @@ def small_divisors(
         relation = _relation(computation, k, rate, 1 if turning > 0 else -1)
         if relation not in found:
             found[relation] = _near_resonance(problem, computation, relation, frequencies)
-    return list(found.values())
+    return [*found.values(), *_left_aside(computation, values, tolerance)]
+
+
+def _left_aside(computation: Computation, values: Sequence[float], tolerance: float) -> list[str]:
+    """Modes that are not carried although a combination of the carried ones comes close to their frequency."""
+    operator, unit = computation.canonical.operator, computation.canonical.bases.unit
+    if operator is None:
+        return []
+    rates = {rate for _, rate in computation.hierarchy.met}
+    found = []
+    for root in operator.roots:
+        own = _value(root.rate, values) / unit
+        near = [v for rate in rates if abs((v := abs(_value(rate, values) / unit)) - own) < tolerance * own]
+        if root.first is None and near:
+            closest = min(near, key=lambda v: abs(v - own))
+            found.append(
+                f"small divisor: a combination of the modes carried and the drives has the frequency {closest:.6g}, "
+                f"close to the frequency {own:.6g} of a mode that is not carried, which it excites: add that mode to "
+                "`modes`"
+            )
+    return found
 
 
 def warn_at(expansion: Expansion, values: Mapping[str, Any]) -> None:

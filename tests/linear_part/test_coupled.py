@@ -248,7 +248,7 @@ def test_whirl_of_a_rotor():
             assert abs(sp.N(sp.diff(difference, eps, n).subs(eps, 0), 20)) < 1e-15
 
 
-FIXED = settings(derandomize=True, deadline=None, max_examples=5, suppress_health_check=[HealthCheck.too_slow])
+FIXED = settings(derandomize=True, deadline=None, max_examples=12, suppress_health_check=[HealthCheck.too_slow])
 entries = st.integers(-2, 2)
 
 

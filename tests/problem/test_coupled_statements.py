@@ -113,6 +113,15 @@ def test_a_mode_that_is_met_must_be_carried():
         ms.expand(problem, 2)
 
 
+def test_a_mode_nearly_met_and_not_carried_is_a_warning():
+    stiffness = [[R(5, 2), -R(3, 2)], [-R(3, 2), R(5, 2) + R(1, 100)]]  # frequencies 1.002… and 2.002…
+    equations = [e + eps * x * y for e in masses(stiffness).equations]
+    with pytest.warns(ms.SmallDivisorWarning, match="of a mode that is not carried, which it excites"):
+        ms.expand(ms.Problem(equations, [x, y], small=eps, modes=[0]), 2)
+    far = ms.expand(masses([[3, -1], [-1, 9]], modes=[0]), 2)
+    assert not any("not carried" in remark for remark in far.warnings)
+
+
 def test_references():
     result = ms.expand(masses([[3, -1], [-1, 2]], references={1: y}), 2, tolerance=0.0)
     assert [mode.reference for mode in result.modes] == [x, y]
