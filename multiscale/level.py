@@ -36,8 +36,8 @@ class Level:
         {unknown: right-hand side}, with the solvability conditions of lower levels inserted and the term in D_nA left
         out.
     secular : dict
-        {unknown: the part of the forcing that D_nA balances}, both complex-conjugate halves; for an oscillator all of its
-        forcing at the natural frequency, for coupled equations the part along L_0'(iω)φ.
+        {unknown: the part of the forcing that D_nA balances}, both complex-conjugate halves: for an oscillator all of
+        its forcing at the natural frequency, for coupled equations the part along L_0'(iω)φ.
     solvability : dict
         {D_nA: its value}, the condition that removes the secular terms; for a driven mode with what the turning of the
         frame adds, −iΦ_n A.
