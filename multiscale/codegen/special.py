@@ -110,6 +110,7 @@ def _integral(tape: Tape, x: sp.Integral, symbol: Symbols, evaluate: Evaluate) -
 
 def _force_in(integrand: sp.Expr, theta: sp.Symbol) -> str:
     """How an error spells the force: the integrand without its bare cosine or sine."""
+    integrand = integrand.replace(Magnitude, sp.Abs)
     factors = [f for f in sp.Mul.make_args(integrand) if not isinstance(f, sp.cos | sp.sin)]
     if isinstance(integrand, sp.Integral):
         return _force_in(integrand.function, theta)
@@ -141,8 +142,8 @@ def _grazing(x: sp.Integral, laws: dict[str, tuple[float, ...]]) -> set[sp.Expr]
         if theta not in h.free_symbols:
             found.add(h)
         elif (parts := _affine(h, theta)) is not None:
-            radius = sp.Abs(parts[0]) if parts[1] == 0 else sp.sqrt(parts[0] ** 2 + parts[1] ** 2)
-            radius = sp.Abs(parts[1]) if parts[0] == 0 else radius
+            radius = Magnitude(parts[0]) if parts[1] == 0 else sp.sqrt(parts[0] ** 2 + parts[1] ** 2)
+            radius = Magnitude(parts[1]) if parts[0] == 0 else radius
             found |= {parts[2] - radius, parts[2] + radius}
     return found
 
