@@ -99,7 +99,7 @@ class Expansion:
 
     @property
     def representation(self) -> str:
-        """The arithmetic that computed the coefficients: "sympy" or "flint" (both exact), or "complex"."""
+        """The arithmetic that computed the coefficients: "sympy" or "flint" (exact), "complex" or "mpmath"."""
         return self.computation.representation
 
     @cached_property
@@ -123,7 +123,8 @@ class Expansion:
                 first = next(b for b, r in enumerate(rate) if r)
                 ratio = sp.Rational(rate[first], bases.rates[j][first])
                 names = self.problem.frequency_names
-                expressed[sp.Symbol(names[k])] = ratio * sp.Symbol(names[j])
+                if names[k] not in {str(key) for key in expressed}:
+                    expressed[sp.Symbol(names[k])] = ratio * sp.Symbol(names[j])
         return expressed
 
     def _check_frequency(self, mode: int) -> None:
@@ -213,7 +214,7 @@ class Expansion:
 
     def __repr__(self) -> str:
         unknowns = ", ".join(str(u) for u in self.problem.unknowns)
-        how = ", in floating point" if self.representation == "complex" else ""
+        how = ", in floating point" if self.representation in ("complex", "mpmath") else ""
         return f"Expansion of {unknowns} to order {self.order} in {self.problem.small}"[: 199 - len(how)] + how
 
     def __reduce__(self) -> tuple[Any, ...]:
@@ -302,8 +303,10 @@ def expand(
                 result = ms.expand(problem, order, on_level=lambda level: bar.update())
 
         The logger "multiscale" reports each level too, with its number of terms and its time, at the level INFO.
-    representation : "auto", "flint" or "sympy"
-        The polynomial arithmetic; all give identical results. "auto" takes FLINT when python-flint is installed.
+    representation : "auto", "flint", "sympy", "complex" or "mpmath"
+        The polynomial arithmetic; the exact ones, "flint" and "sympy", give identical results. "auto" takes FLINT when
+        python-flint is installed. Where frequencies have no closed form, "auto" takes "complex" (double precision), and
+        "mpmath" has 50 digits.
     tolerance : float
         Relative distance below which numeric frequencies count as close to resonance.
 

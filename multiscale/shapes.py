@@ -40,7 +40,7 @@ def mode_shapes(problem: Problem, computation: Computation, writer: Writer) -> t
         references = [root.references[k] for root, k in canonical.operator.carried]
     modes = []
     for mode, frequency, k in zip(
-        computation.hierarchy.linear_part.modes, canonical.frequencies, references, strict=True
+        computation.hierarchy.linear_part.modes, computation.frequencies, references, strict=True
     ):
         components = (writer.named(x) for x in mode.shape)
         shape = dict(zip(problem.unknowns, components, strict=True))

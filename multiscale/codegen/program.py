@@ -171,7 +171,7 @@ class Program:
             exponents = [0] * len(names)
             for name, e in m:
                 exponents[place[name]] = e
-            table[tuple(exponents)] = self.tape.constant(c)
+            table[tuple(exponents)] = self.tape.constant(c if isinstance(c, Fraction) else float(c))
         return self.horner(table, [self._value(name) for name in names])
 
     def quotient(self, q: Quotient) -> Node:

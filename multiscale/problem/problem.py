@@ -14,7 +14,7 @@ import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.latex import shortened
-from multiscale.problem.canonical import Canonical
+from multiscale.problem.canonical import Canonical, in_double
 from multiscale.problem.coupled import form_of
 from multiscale.problem.force_law import ForceLaw, laws_of, with_calls, without_calls
 from multiscale.problem.laws import Law, at_resonance, layout_with_laws, separated
@@ -264,7 +264,7 @@ class Problem:
     @property
     def natural_frequencies(self) -> tuple[sp.Expr, ...]:
         """ω of each mode at leading order, in the user's symbols: of each unknown where the unknowns are uncoupled."""
-        return self.canonical(1).frequencies
+        return tuple(map(in_double, self.canonical(1).frequencies))
 
     @property
     def frequency_names(self) -> tuple[str, ...]:
@@ -297,6 +297,11 @@ class Problem:
             return {}
         frequencies = self.canonical(1).named_frequencies
         return {s: frequencies[a] for s, a in self._mode_symbols.items() if a < len(frequencies)}
+
+    @property
+    def mode_names(self) -> frozenset[sp.Symbol]:
+        """The symbols of relations that name natural frequencies of coupled equations: omega_1, omega_2, …"""
+        return frozenset(self._mode_symbols) if self.canonical(1).operator is not None else frozenset()
 
     @cached_property
     def _mode_symbols(self) -> dict[sp.Symbol, int]:

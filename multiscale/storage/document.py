@@ -1,8 +1,8 @@
 """An expansion as one JSON text.
 
     {"format": …, "version": 1, "library": …, "expressions": [nodes], "problem": {references},
-     "order": N, "amplitude": …, "tolerance": …, "generators": [names], "reciprocals": …, "fields": …, "changes": …,
-     "digest": SHA-256 of the rest}
+     "order": N, "amplitude": …, "tolerance": …, "representation": …, "generators": [names],
+     "reciprocals": …, "fields": …, "changes": …, "digest": SHA-256 of the rest}
 
 The problem is stored as stated and the levels as exact polynomials; everything else follows from these two.
 """
@@ -74,6 +74,7 @@ def to_json(expansion: Expansion) -> str:
         "order": expansion.order,
         "amplitude": expansion.amplitude,
         "tolerance": float(expansion.tolerance).hex(),
+        "representation": snapshot.representation,
         "reciprocals": [[name, polynomials.rows(p)] for name, p in snapshot.reciprocals],
         "fields": [[polynomials.rows(p) for p in level] for level in snapshot.fields],
         "changes": [[polynomials.rows(p) for p in level] for level in snapshot.changes],
@@ -184,7 +185,10 @@ def _snapshot(document: Mapping[str, Any], polynomials: PolynomialReader) -> Sna
         if not isinstance(name, str):
             raise refuse(f"{str(name)[:40]!r} where the name of a reciprocal was expected")
         reciprocals.append((name, polynomials.polynomial(rows)))
-    return Snapshot(tuple(reciprocals), levels("fields"), levels("changes"))
+    representation = field(document, "representation")
+    if representation not in ("auto", "complex", "mpmath"):
+        raise refuse(f"its representation is {str(representation)[:40]!r}")
+    return Snapshot(tuple(reciprocals), levels("fields"), levels("changes"), representation)
 
 
 def _frozen(rows: Iterable[Any], polynomials: PolynomialReader) -> tuple[Frozen, ...]:

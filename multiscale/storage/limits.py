@@ -9,6 +9,8 @@ from collections.abc import Sequence
 from math import isfinite
 from typing import Any
 
+import sympy as sp
+
 from multiscale.errors import StorageError
 
 __all__ = [
@@ -20,9 +22,11 @@ __all__ = [
     "field",
     "hexadecimal",
     "integer",
+    "read_float",
     "refuse",
     "sequence",
     "spelled",
+    "spelled_float",
 ]
 
 CHARACTERS = 500_000_000
@@ -91,3 +95,18 @@ def checked_name(x: Any) -> str:
     if any(c in "()[];:=\"'`@#" for c in x) or "__" in x:
         raise refuse(f"the name {x!r} has characters that no stored symbol has")
     return x
+
+
+def spelled_float(x: sp.Float) -> list[Any]:
+    """[sign, mantissa, exponent, precision] of (−1)^sign · mantissa · 2^exponent."""
+    sign, mantissa, exponent, _ = x._mpf_
+    return [int(sign), spelled(int(mantissa)), int(exponent), int(x._prec)]
+
+
+def read_float(parts: Any) -> sp.Float:
+    """The float of `spelled_float`."""
+    sign, mantissa, exponent, precision = sequence(parts, "a float", 4)
+    whole = integer(mantissa, "a mantissa", 0)
+    least = integer(exponent, "an exponent", -100_000, 100_000)
+    number = (integer(sign, "a sign", 0, 1), whole, least, whole.bit_length())
+    return sp.Float._new(number, integer(precision, "a precision", 1, BITS))

@@ -1,7 +1,8 @@
 """Polynomials by name as rows of integers: [numerator, denominator, name, exponent, name, exponent, …].
 
 Names are referred to by their place in one table for the whole text. A coefficient that is a float, from equations
-whose modes are known in floating-point numbers only, is ["hexadecimal float", 0, …].
+whose modes are known in floating-point numbers only, is ["hexadecimal float", 0, …], or with more digits
+[[sign, mantissa, exponent, precision], 0, …].
 """
 
 from __future__ import annotations
@@ -9,8 +10,10 @@ from __future__ import annotations
 from fractions import Fraction
 from typing import Any
 
+import sympy as sp
+
 from multiscale.algebra.polynomial import Frozen
-from multiscale.storage.limits import NODES, hexadecimal, integer, refuse, sequence, spelled
+from multiscale.storage.limits import NODES, hexadecimal, integer, read_float, refuse, sequence, spelled, spelled_float
 
 __all__ = ["PolynomialReader", "PolynomialWriter"]
 
@@ -33,7 +36,9 @@ class PolynomialWriter:
 
 
 def _spelled(c: Any) -> list[Any]:
-    return [c.hex(), 0] if isinstance(c, float) else [spelled(c.numerator), spelled(c.denominator)]
+    if isinstance(c, float):
+        return [c.hex(), 0]
+    return [spelled_float(c), 0] if isinstance(c, sp.Float) else [spelled(c.numerator), spelled(c.denominator)]
 
 
 class PolynomialReader:
@@ -66,5 +71,5 @@ class PolynomialReader:
 
 def _coefficient(numerator: Any, denominator: Any) -> Any:
     if denominator == 0 and isinstance(denominator, int):
-        return hexadecimal(numerator, "a coefficient")
+        return read_float(numerator) if isinstance(numerator, list) else hexadecimal(numerator, "a coefficient")
     return Fraction(integer(numerator, "a numerator"), integer(denominator, "a denominator", 1))

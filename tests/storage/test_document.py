@@ -48,7 +48,7 @@ PROBLEMS = {
         references={1: v},
     ),
     "floating-point modes": lambda: ms.Problem.from_matrices(
-        [[1, 0], [0, 1]], K=[[3.1, -1.0], [-1.0, 2.7]], cubic={(0, 0, 0, 0): 1}
+        np.eye(3), K=[[3.1, -1.0, 0.2], [-1.0, 2.7, 0.1], [0.2, 0.1, 5.0]], cubic={(0, 0, 0, 0): 1}
     ),
     "first order": lambda: ms.Problem(
         [u.diff(t) - v, v.diff(t) + 4 * u - mu * v + u**2 * v], [u, v], ordering={u: 1, v: 1, mu: 2}
@@ -110,6 +110,14 @@ def test_expressions_come_back(x):
     writer = Writer()
     place = writer.node(x)
     assert Reader(json.loads(json.dumps(writer.nodes))).expression(place) == x
+
+
+def test_fifty_digits_are_kept():
+    result = ms.expand(PROBLEMS["floating-point modes"](), 2, representation="mpmath")
+    again = ms.from_json(ms.to_json(result))
+    assert again == result
+    assert again.representation == "mpmath"
+    assert ms.extend(again, 3) == ms.extend(result, 3)
 
 
 def test_what_has_no_text_is_named():
