@@ -8,6 +8,7 @@ import sympy as sp
 from support.claims import examination_of, field_raised, flow_raised
 
 import multiscale as ms
+from multiscale.checks.stated import stated as as_stated
 
 t = sp.Symbol("t", real=True)
 eps, V, u_s, f, Om = sp.symbols("epsilon V u_s f Omega", positive=True)
@@ -107,3 +108,57 @@ def test_whole_numbers_beyond_64_bits():
     unit = ms.expand(ms.Problem(ddu + u + eps * u**3, u, small=eps), 1)
     wanted = ms.validity(unit, {eps: 0.1}, 0.01).amplitude
     assert ms.validity(result, {eps: 0.1}, 0.01).amplitude == pytest.approx(wanted, rel=1e-6)
+
+
+SCALES = [(1e-3, 1e3), (1e-6, 1e3), (1e-5, 1e-9)]
+
+
+def mixed(a: float, b: float) -> ms.Problem:
+    """The chain with its second and third unknown, and their equations, in other units."""
+    units = np.outer([1, a, b], [1, a, b])
+    M = np.array([[3, 1, 0.5], [1, 2, 0.3], [0.5, 0.3, 1]]) * units
+    cubic = {(0, 0, 0, 0): 1, (1, 1, 1, 1): 2 * a**4}
+    return ms.Problem.from_matrices(M, K=np.diag([1, 2, 5]) * units, cubic=cubic, orders={"cubic": 1})
+
+
+@pytest.mark.filterwarnings("ignore::multiscale.SmallDivisorWarning")
+@pytest.mark.parametrize("units", SCALES)
+def test_unknowns_in_different_units(units):
+    """Frequencies, and the slow flow of the first mode, whose amplitude is in the unit of the first unknown."""
+    plain, changed = (ms.expand(mixed(*x), 1) for x in ((1.0, 1.0), units))
+    find = [[float(w) for w in x.problem.natural_frequencies] for x in (plain, changed)]
+    assert find[1] == pytest.approx(find[0], rel=1e-12)
+    state = np.array([0.7, 0.0, 0.0, 0.0, 0.0, 0.0])
+    rates = [x.slow_flow.to_numpy()(0.0, state, 0.1)[1] for x in (plain, changed)]
+    assert rates[0] != 0
+    assert rates[1] == pytest.approx(rates[0], rel=1e-10)
+    assert ms.certify(changed).passed
+
+
+@pytest.mark.parametrize("units", SCALES)
+def test_accelerations_in_different_units(units):
+    """Coupled inertia, solved for by numbers."""
+    scale = np.array([1.0, *units])
+    start, found = np.array([0.3, 0.1, 0.3]), []
+    for x in (np.ones(3), scale):
+        rhs = as_stated(mixed(*x[1:])).rhs({"epsilon": 0.1})
+        found.append(np.array(rhs(0.0, np.concatenate([start / x, np.zeros(3)]))[3:]) * x)
+    np.testing.assert_allclose(found[1], found[0], rtol=1e-12)
+
+
+def test_inertia_that_is_nearly_singular():
+    """Newton's method for accelerations ends where rounding does: M with a condition number of 1e8."""
+    w = sp.Function("w")(t)
+    v = sp.Function("v")(t)
+    near = 1 - sp.Rational(1, 10**8)
+    rows = (
+        ddu + near * v.diff(t, 2) + u,
+        near * ddu + v.diff(t, 2) + v,
+        w.diff(t, 2) + 2 * w + eps * w.diff(t, 2) ** 3,
+    )
+    problem = ms.Problem(rows, (u, v, w), small=eps)
+    found = as_stated(problem).rhs({"epsilon": 0.01})(0.0, np.array([1e-8, -1e-8, 0.3, 0.0, 0.0, 0.0]))
+    assert np.isfinite(found).all()
+    values = dict(zip((u, v, w), (1e-8, -1e-8, 0.3), strict=True))
+    place = {x.diff(t, 2): a for x, a in zip((u, v, w), found[3:], strict=True)}
+    assert [abs(float(x.subs(place).subs(values).subs(eps, 0.01))) < 1e-9 for x in rows] == [True] * 3
