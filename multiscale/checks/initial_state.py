@@ -73,6 +73,11 @@ def initial_state(
     UnsupportedTermError
         A series for several modes, drives or slow parameters; fewer modes than unknowns.
 
+    Notes
+    -----
+    One residual is accepted for all unknowns, so that they should be in units in which their motions are of comparable
+    size.
+
     Examples
     --------
     >>> import sympy as sp, multiscale as ms
