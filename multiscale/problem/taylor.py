@@ -70,13 +70,18 @@ def _with_drives(series: EpsilonSeries, x: sp.Expr, depth: int) -> list[sp.Expr]
     """x_0 … x_depth, and further to where every function of time in x has appeared: a drive is part of the problem,
     with its relation, also where an expansion of this order does not feel it yet."""
     found = series.coefficients(x, depth)
-    drives = {f for f in x.atoms(sp.sin, sp.cos) if series.time in f.free_symbols and not f.free_symbols & series.jets}
-    wanted = {f.args[0] for f in drives}
+    wanted = {angle for f in x.atoms(sp.sin, sp.cos) if (angle := _turning(f.args[0], series)) != 0}
     for further in range(depth + 1, depth + DRIVEN + 1):
-        if all(any(c.has(angle) for c in found) for angle in wanted):
+        if all(any(c.has(angle, -angle) for c in found) for angle in wanted):
             break
         found = series.coefficients(x, further)
     return found
+
+
+def _turning(angle: sp.Expr, series: EpsilonSeries) -> sp.Expr:
+    """The terms of an angle that turn with time whatever the unknowns do."""
+    terms = sp.Add.make_args(angle)
+    return sp.Add(*(a for a in terms if series.time in a.free_symbols and not a.free_symbols & series.jets))
 
 
 def _lead(equation: sp.Expr, series: EpsilonSeries, layout: Layout) -> int:

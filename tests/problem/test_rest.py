@@ -77,6 +77,20 @@ def test_drives_inside_small_forces_belong_to_the_problem():
     assert ms.certify(ms.expand(problem, 2)).passed
 
 
+def test_a_wave_that_holds_the_unknown():
+    """f sin(u − Ωt), a travelling field, first felt at ε³."""
+    force = u.diff(t, 2) + sp.sin(u) + f * sp.sin(u - Om * t)
+    ordering, relation = {u: 1, f: 3, sigma: 2}, {Om: 1 + sigma}
+    problem = ms.Problem(force, u, ordering=ordering, resonances=relation)
+    by_hand = ms.Problem(
+        u.diff(t, 2) + u - u**3 / 6 + f * (u * sp.cos(Om * t) - sp.sin(Om * t)),
+        u,
+        ordering=ordering,
+        resonances=relation,
+    )
+    assert ms.expand(problem, 2).equals(ms.expand(by_hand, 2))
+
+
 def test_support_motion_inside_a_sine():
     problem = ms.Problem(
         u.diff(t, 2) + 2 * mu * u.diff(t) + sp.sin(u - f * sp.cos(Om * t)),
