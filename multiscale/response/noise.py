@@ -151,8 +151,8 @@ def noisy_flow(expansion: Expansion, densities: Mapping[sp.Expr, Any]) -> NoisyF
         )
     if problem.canonical(1).operator is not None:
         raise ProblemError(
-            f"{', '.join(map(str, problem.unknowns))} have no oscillators of their own at leading order, so a force on one "
-            "equation drives several modes: state the problem in modal coordinates, and the noise on these"
+            f"{', '.join(map(str, problem.unknowns))} have no oscillators of their own at leading order, so a force "
+            "on one equation drives several modes: state the problem in modal coordinates, and the noise on these"
         )
     intensity: dict[sp.Symbol, sp.Expr] = {}
     for k, u in enumerate(problem.unknowns):
