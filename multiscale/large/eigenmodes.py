@@ -1,0 +1,162 @@
+"""The few modes of M u'' + G u' + K u = 0 that are carried: (M s² + G s + K) φ = 0 at s = iω, by sparse Lanczos or
+Arnoldi iteration (SciPy). Shapes are 1 in their reference coordinate.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from numbers import Integral, Real
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from multiscale.errors import ProblemError
+from multiscale.large.matrices import scipy_sparse
+
+__all__ = ["LargeMode", "eigenmodes", "is_symmetric"]
+
+Array = npt.NDArray[Any]
+REAL = 1e-7
+"""Largest growth rate of a mode, relative to its frequency, that counts as rounding."""
+RIGID = 1e-13
+"""ω² relative to K_ii / M_ii below which a motion counts as rigid."""
+
+
+@dataclass(frozen=True, eq=False)
+class LargeMode:
+    """A carried mode: u = φ A e^{iωt} + conjugate, φ = 1 at the reference.
+
+    Attributes
+    ----------
+    frequency : float
+        ω, in radians per unit of time.
+    shape : array (n,)
+        φ; complex for gyroscopic systems.
+    reference : int
+        The degree of freedom in which the amplitude is measured.
+    """
+
+    frequency: float
+    shape: Array
+    reference: int
+
+
+def is_symmetric(matrix: Any) -> bool:
+    difference = matrix - matrix.T
+    return bool(difference.nnz == 0 or np.max(np.abs(difference.data)) <= 1e-12 * np.max(np.abs(matrix.data)))
+
+
+def eigenmodes(
+    mass: Any, gyroscopic: Any, stiffness: Any, chosen: Sequence[Any], references: Mapping[int, int]
+) -> list[LargeMode]:
+    """`chosen`: integers count from 0 by increasing frequency, floats ask for the mode nearest to a frequency."""
+    chosen = list(chosen)
+    if not chosen:
+        raise ProblemError("modes is empty: give at least one, such as modes=[0]")
+    for x in chosen:
+        if isinstance(x, bool) or not isinstance(x, Real) or x < 0:
+            raise ProblemError(f"modes has the entry {x!r}: expected an integer ≥ 0 (by frequency) or a frequency")
+    symmetric = gyroscopic is None and is_symmetric(mass) and is_symmetric(stiffness)
+    solve = _symmetric if symmetric else _general
+    matrices = (mass, stiffness) if symmetric else (mass, gyroscopic, stiffness)
+    found: list[tuple[float, Array]] = []
+    numbers = [int(x) for x in chosen if isinstance(x, Integral)]
+    lowest = solve(*matrices, 0.0, max(numbers) + 1) if numbers else []
+    if numbers and len(lowest) <= max(numbers):
+        raise ProblemError(f"mode {max(numbers)} was asked for, but only {len(lowest)} oscillations were found")
+    for x in chosen:
+        if isinstance(x, Integral):
+            found.append(lowest[int(x)])
+        else:
+            near = solve(*matrices, float(x), 2)
+            if not near:
+                raise ProblemError(f"no oscillation was found near the frequency {x}")
+            found.append(min(near, key=lambda pair: abs(pair[0] - float(x))))
+    frequencies = sorted(w for w, _ in found)
+    for a, b in zip(frequencies, frequencies[1:], strict=False):
+        if b - a <= 1e-12 * b:
+            raise ProblemError(f"modes asks twice for the mode of frequency {a:.10g}")
+    return [_normalised(w, shape, k, references) for k, (w, shape) in enumerate(found)]
+
+
+def _normalised(frequency: float, shape: Array, number: int, references: Mapping[int, int]) -> LargeMode:
+    largest = int(np.argmax(np.abs(shape)))
+    reference = references.get(number, largest)
+    if not isinstance(reference, Integral) or not 0 <= reference < len(shape):
+        raise ProblemError(f"references[{number}] is {reference!r}: expected a degree of freedom, 0 … {len(shape) - 1}")
+    own = shape[reference]
+    if abs(own) < 1e-9 * abs(shape[largest]):
+        raise ProblemError(
+            f"the mode of frequency {frequency:.10g} does not move the degree of freedom {reference}: measure its "
+            f"amplitude elsewhere, such as references={{{number}: {largest}}}"
+        )
+    return LargeMode(frequency, shape / own, int(reference))
+
+
+def _symmetric(mass: Any, stiffness: Any, near: float, count: int) -> list[tuple[float, Array]]:
+    """The `count` modes with ω nearest to `near`, by increasing frequency."""
+    size = mass.shape[0]
+    if count >= size - 1 or size <= 32:
+        values, shapes = _dense_pencil(stiffness, mass)
+        order = np.argsort(np.abs(np.sqrt(np.abs(values)) - near))[:count] if near else np.arange(count)
+    else:
+        from scipy.sparse.linalg import eigsh
+
+        # A little below zero, so that a stiffness with rigid motions can be factored too.
+        shift = near**2 * (1 + 1e-7) if near else -1e-6 * abs(stiffness.diagonal()).max() / abs(mass.diagonal()).max()
+        start = np.random.default_rng(0).normal(size=size)
+        values, shapes = eigsh(stiffness, k=count, M=mass, sigma=shift, v0=start)
+        order = np.arange(len(values))
+    scale = abs(stiffness.diagonal()).max() / abs(mass.diagonal()).max()
+    pairs = []
+    for k in order:
+        if values[k] <= RIGID * scale:
+            raise ProblemError(
+                f"a carried mode has ω² = {values[k]:.3g}: it does not oscillate (a rigid or an unstable motion). Hold "
+                "the structure, or choose other modes"
+            )
+        pairs.append((float(np.sqrt(values[k])), shapes[:, k]))
+    return sorted(pairs, key=lambda pair: pair[0])
+
+
+def _dense_pencil(stiffness: Any, mass: Any) -> tuple[Array, Array]:
+    from scipy.linalg import eigh
+
+    values, shapes = eigh(stiffness.toarray(), mass.toarray())
+    return values, shapes
+
+
+def _general(mass: Any, gyroscopic: Any, stiffness: Any, near: float, count: int) -> list[tuple[float, Array]]:
+    """Of the first-order pencil (u, v): u' = v, M v' = −K u − G v."""
+    sparse = scipy_sparse()
+    size = mass.shape[0]
+    one = sparse.identity(size, format="csr")
+    below = sparse.csr_matrix((size, size)) if gyroscopic is None else gyroscopic
+    left = sparse.bmat([[None, one], [-stiffness, -below]], format="csc")
+    right = sparse.block_diag([one, mass], format="csc")
+    if size <= 64 or 2 * count + 4 >= 2 * size - 1:
+        from scipy.linalg import eig
+
+        values, vectors = eig(left.toarray(), right.toarray())
+    else:
+        from scipy.sparse.linalg import eigs
+
+        scale = np.sqrt(abs(stiffness.diagonal()).max() / abs(mass.diagonal()).max())
+        shift = 1j * near * (1 + 1e-7) if near else 1e-3j * scale / size
+        start = np.random.default_rng(0).normal(size=2 * size).astype(complex)
+        values, vectors = eigs(left.astype(complex), k=2 * count + 4, M=right.astype(complex), sigma=shift, v0=start)
+    pairs = []
+    for value, vector in zip(values, vectors.T, strict=True):
+        if value.imag <= 1e-9 * abs(value) or not np.isfinite(value):
+            continue
+        if abs(value.real) > REAL * abs(value):
+            raise ProblemError(
+                f"a mode near the carried ones has the root {value:.6g}, which is not imaginary: at leading order it "
+                "grows or decays. What damps weakly goes into C"
+            )
+        shape = vector[:size]
+        pairs.append((float(value.imag), shape * np.exp(-1j * np.angle(shape[np.argmax(np.abs(shape))]))))
+    pairs.sort(key=lambda pair: abs(pair[0] - near))
+    return sorted(pairs[:count], key=lambda pair: pair[0])
