@@ -171,7 +171,7 @@ def mapped(act: Callable[[Array], Array], element: VectorElement) -> VectorEleme
 
 def columns_of(element: VectorElement) -> tuple[list[Exponents], Array]:
     """The monomials, and their coefficients as the columns of one array."""
-    return list(element.terms), np.stack(list(element.terms.values()), axis=1)
+    return list(element.terms), np.stack(list(element.terms.values())).T
 
 
 def _some(c: Any) -> bool:

@@ -142,15 +142,14 @@ class Bordered:
         """(U', x) stacked, for columns of −part."""
         factors = self.factored(rate, modes)
         start = perf_counter()
-        rhs = np.zeros((factors.shape[0], part.shape[1]), dtype=complex)
+        rhs = np.zeros((factors.shape[0], part.shape[1]), dtype=complex, order="F")
         rhs[: self.size] = -part
         if not self.symmetric:
             found = factors.solve(rhs)
         elif not np.any(rhs.imag):
-            found = factors.solve(np.ascontiguousarray(rhs.real))
+            found = factors.solve(np.asfortranarray(rhs.real))
         else:
-            found = factors.solve(np.hstack([rhs.real, rhs.imag]))
-            found = found[:, : part.shape[1]] + 1j * found[:, part.shape[1] :]
+            found = factors.solve(np.asfortranarray(rhs.real)) + 1j * factors.solve(np.asfortranarray(rhs.imag))
         self.watch.solving += perf_counter() - start
         self.watch.solved += part.shape[1]
         return np.asarray(found)
@@ -165,21 +164,24 @@ class Bordered:
         others = [j for j in range(len(self.references)) if j not in modes]
         if others:
             scale = np.array([self.leading[j] ** 2 - rate**2 for j in others])
-            across = across - self.shapes[:, others] @ (shares[others] / scale[:, None])
+            across = across - ((shares[others] / scale[:, None]).T @ self.shapes[:, others].T).T
         if not modes:
             return across, np.zeros((0, part.shape[1]))
         chosen, places = list(modes), [self.references[j] for j in modes]
         own = self.shapes[np.ix_(places, chosen)]
-        across = across - self.shapes[:, chosen] @ np.linalg.solve(own, across[places])
+        across = across - (np.linalg.solve(own, across[places]).T @ self.shapes[:, chosen].T).T
         return across, -shares[chosen] / (2j * rate)
 
     def across(self, columns: Array) -> Array:
         """What is left of columns without the carried modes."""
-        return np.asarray(columns - self.shapes @ (self.weighted.T @ columns / self.modal_masses[:, None]))
+        shares = self.weighted.T @ columns / self.modal_masses[:, None]
+        return np.asarray(columns - (shares.T @ self.shapes.T).T)
 
     def nearest(self, rate: float, modes: tuple[int, ...], steps: int) -> Nearest | None:
         """By inverse iteration; None where nothing real is near. Cheap and rough unless something is very near."""
         before = replace(self.watch)
+        if self.size <= len(self.references):
+            return None
         v = np.random.default_rng(0).normal(size=(self.size, 1)).astype(float if self.symmetric else complex)
         shift: complex = 0
         for _ in range(steps):
@@ -208,8 +210,10 @@ def singular(distance: float, frequency: float) -> bool:
     return distance <= SINGULAR * frequency
 
 
-def combination(exponents: Sequence[int], names: Sequence[str]) -> str:
-    """The frequency of a monomial in words, from its exponents in the paired generators."""
-    counts = [exponents[2 * k] - exponents[2 * k + 1] for k in range(len(names))]
+def combination(exponents: Sequence[int], names: Sequence[str], sign: int = 1) -> str:
+    """The frequency of a monomial, times `sign`, in words, from its exponents in the paired generators."""
+    counts = [sign * (exponents[2 * k] - exponents[2 * k + 1]) for k in range(len(names))]
+    order = sorted(range(len(names)), key=lambda k: counts[k] < 0)
+    counts, names = [counts[k] for k in order], [names[k] for k in order]
     text = " + ".join(f"{n}*{name}" if n != 1 else name for n, name in zip(counts, names, strict=True) if n)
     return text.replace("+ -", "- ") or "0"

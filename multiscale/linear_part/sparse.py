@@ -117,7 +117,7 @@ class Sparse:
             found, changes = self.bordered.solve(self.turning(rate), modes, part)
             self._examine(rate, modes, columns, part)
         except RuntimeError as error:  # SuperLU met a pivot that is exactly zero.
-            raise self._resonance(columns[0], self.turning(rate), abs(self.turning(rate))) from error
+            raise self._resonance(columns, self.turning(rate), abs(self.turning(rate))) from error
         solution = VectorElement(dict(zip(columns, np.ascontiguousarray(found.T), strict=True)))
         slow = {a: VectorElement({m: changes[j, k] for k, m in enumerate(columns)}) for j, a in enumerate(modes)}
         slow = {a: self._ring.normal(x) for a, x in slow.items()}
@@ -129,7 +129,7 @@ class Sparse:
         turning = self.turning(rate)
         for a, own in enumerate(self.bordered.leading):
             if a not in modes and self._close(turning, own) and _reached(self.bordered.shapes[:, a], part):
-                self.near[rate, a] = Near(self._name(columns), abs(turning), own, a)
+                self.near[rate, a] = Near(self._name(columns, turning), abs(turning), own, a)
         if rate in self._examined:
             return
         self._examined.add(rate)
@@ -140,21 +140,19 @@ class Sparse:
         if nearest is None or not self._close(turning, nearest.frequency) or not _reached(nearest.shape, part):
             return
         if singular(abs(abs(turning) - nearest.frequency), nearest.frequency):
-            raise self._resonance(self._simplest(columns), turning, nearest.frequency)
-        self.near[rate, None] = Near(self._name(columns), abs(turning), nearest.frequency, None)
+            raise self._resonance(columns, turning, nearest.frequency)
+        self.near[rate, None] = Near(self._name(columns, turning), abs(turning), nearest.frequency, None)
 
     def _close(self, turning: float, frequency: float, factor: float = 1.0) -> bool:
         return abs(abs(turning) - frequency) < factor * self.tolerance * frequency
 
-    def _simplest(self, columns: list[Any]) -> Any:
-        return min(columns, key=lambda m: (sum(m), m))
+    def _name(self, columns: list[Any], turning: float) -> str:
+        """The simplest of these monomials in words, its frequency counted positive."""
+        simplest = min(columns, key=lambda m: (sum(m), m))
+        return combination(simplest[self._ring.spec.first_pair :], self.names, 1 if turning >= 0 else -1)
 
-    def _name(self, columns: list[Any]) -> str:
-        first = self._ring.spec.first_pair
-        return combination(self._simplest(columns)[first:], self.names)
-
-    def _resonance(self, monomial: Any, turning: float, frequency: float) -> ResonanceError:
-        name = combination(monomial[self._ring.spec.first_pair :], self.names)
+    def _resonance(self, columns: list[Any], turning: float, frequency: float) -> ResonanceError:
+        name = self._name(columns, turning)
         number = len(self._rates) + 1
         return ResonanceError(
             f"the combination {name} = {abs(turning):.10g} meets the frequency {frequency:.10g} of a mode that is not "
