@@ -13,6 +13,7 @@ from typing import Any
 
 import numpy as np
 import numpy.typing as npt
+import sympy as sp
 
 from multiscale.algebra.polynomial import freeze
 from multiscale.algebra.quotient import finish
@@ -93,7 +94,7 @@ def begin_large(
     bordered = _bordered(canonical, ring, matrices, modes)
     bases, drives = canonical.bases, canonical.drives
     values = [dict(b) for b in bases.values]
-    names = [f"omega_{a + 1}" for a in range(len(modes))] + [str(d.frequency) for d in drives]
+    names = [f"omega_{a + 1}" for a in range(len(modes))] + [_called(d.frequency) for d in drives]
     linear = Sparse(bordered, bases.rates, values, bases.unit, names, tolerance, ring)
     force = MultilinearForce(_weak_terms(canonical, bordered, shapes, loads, hard), ring)
     turning = [*bases.rates, *(d.rate for d in drives)]
@@ -106,6 +107,13 @@ def begin_large(
     hierarchy = start(ring, linear, force, clock)
     _refuse_resonant_loads(hierarchy, linear)
     return LargeComputation(canonical, hierarchy, references=tuple(m.reference for m in modes))
+
+
+def _called(frequency: sp.Expr) -> str:
+    """The frequency of a drive in messages; "" for a constant phase."""
+    if frequency == 0:
+        return ""
+    return f"{float(frequency):.8g}" if frequency.is_number else str(frequency)
 
 
 def _ring(canonical: Canonical) -> VectorRing:

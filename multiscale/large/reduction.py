@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import warnings
 from collections.abc import Callable, Mapping, Sequence
+from time import perf_counter
 from typing import Any
 
 import sympy as sp
@@ -130,7 +131,9 @@ def reduce_model(
         raise ProblemError("the model is linear, undamped and free: give cubic, quadratic, springs, C or drive")
     if strange := set(scales or {}) - set(shapes):
         raise ProblemError(f"scales has {', '.join(sorted(strange))}: expected some of {', '.join(sorted(shapes))}")
+    begun_at = perf_counter()
     found = eigenmodes(M, G, K, modes, references or {})
+    finding = perf_counter() - begun_at
     factors = {name: (scales or {}).get(name, 1) for name in shapes}
     statement = state(
         [m.frequency for m in found], factors, [g for _, g in loads], powers, resonances, small, time
@@ -138,6 +141,8 @@ def reduce_model(
     matrices = {"M": M, "G": G, "K": K}
     hard = powers["drive"] == 0
     begun = begin_large(statement, order, matrices, found, shapes, [b for b, _ in loads], tolerance, hard)
+    linear: Any = begun.hierarchy.linear_part
+    linear.bordered.watch.finding = finding
     expansion = _taken_to(statement, begun, order, on_level)
     # Small divisors are looked for by the solves, also those of modes that are not carried.
     expansion = Expansion(statement, expansion.order, tolerance=0.0, computation=expansion.computation)
@@ -145,7 +150,6 @@ def reduce_model(
         warnings.warn(
             "order=1 with quadratic terms: their part in the frequency begins at the second order", OrderingWarning, 2
         )
-    linear: Any = expansion.computation.hierarchy.linear_part
     if linear.near:
         warnings.warn(_remark(list(linear.near.values())), SmallDivisorWarning, stacklevel=2)
     weak = _weak(statement, factors, shapes, loads, powers)

@@ -35,8 +35,10 @@ SINGULAR = 1e-8
 
 @dataclass
 class Stopwatch:
-    """Seconds spent in factorisations, in solves for levels and in looking for what is near; and how many there were."""
+    """Seconds spent in finding the modes, in factorisations, in solves for levels, and in looking for what is near them;
+    how many factorisations and right-hand sides there were."""
 
+    finding: float = 0.0
     factoring: float = 0.0
     solving: float = 0.0
     examining: float = 0.0
@@ -211,9 +213,14 @@ def singular(distance: float, frequency: float) -> bool:
 
 
 def combination(exponents: Sequence[int], names: Sequence[str], sign: int = 1) -> str:
-    """The frequency of a monomial, times `sign`, in words, from its exponents in the paired generators."""
+    """The frequency of a monomial, times `sign`, in words, from its exponents in the paired generators.
+
+    Generators without a name are constant phases.
+    """
     counts = [sign * (exponents[2 * k] - exponents[2 * k + 1]) for k in range(len(names))]
-    order = sorted(range(len(names)), key=lambda k: counts[k] < 0)
-    counts, names = [counts[k] for k in order], [names[k] for k in order]
-    text = " + ".join(f"{n}*{name}" if n != 1 else name for n, name in zip(counts, names, strict=True) if n)
-    return text.replace("+ -", "- ") or "0"
+    text = ""
+    for k in sorted(range(len(names)), key=lambda k: counts[k] < 0):
+        if counts[k] and names[k]:
+            size = abs(counts[k])
+            text += (" - " if counts[k] < 0 else " + ") + (names[k] if size == 1 else f"{size}*{names[k]}")
+    return text.removeprefix(" + ").lstrip() or "0"
