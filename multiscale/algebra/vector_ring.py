@@ -81,7 +81,7 @@ class VectorRing(ComplexRing):
         super().__init__(spec, values)
         zero, one = VectorElement({}), VectorElement({self._empty: 1.0})
         self.zero, self.one = zero, one  # type: ignore[assignment]
-        self.generators = tuple(VectorElement(x.terms) for x in self.generators)  # type: ignore[assignment]
+        self.generators = tuple(VectorElement(x.terms) for x in self.generators)
 
     def constant(self, value: Any) -> Any:
         if isinstance(value, int | Fraction):

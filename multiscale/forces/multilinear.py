@@ -3,8 +3,8 @@
     f = Σ ε^p · coefficient · S(u, …, u),      S one `Shape`: multilinear, symmetric where it is called with vectors
 
 `Products` is a sum of products of linear forms, f = out · Π_k (B_k u): springs (B u the elongations, out = B^T) and
-tensors given by indices and values (B_k picks coordinates). Its series in ε is a product of series of elongations, entry
-by entry, formed once for each level. `Called` is a function of vectors, called for every combination of monomials.
+tensors given by indices and values (B_k picks coordinates). Its series in ε is a product of series of elongations,
+entry by entry, formed once for each level. `Called` is a function of vectors, for every combination of monomials.
 `Matrix` is a linear force and `Load` a fixed shape.
 
 Fields are real, so one of each pair of conjugate monomials is worked out.
@@ -71,7 +71,7 @@ class Load:
 
 @dataclass(frozen=True, eq=False)
 class Products:
-    """out · Π_k (inputs_k u), the inputs sparse matrices (m, n); equal ones are one object, and their powers are shared.
+    """out · Π_k (inputs_k u), the inputs sparse matrices (m, n); equal ones are one object, their powers are shared.
 
     The memo holds series that follow from the fields of one tower and those that grow from it.
     """

@@ -4,7 +4,7 @@
 
 The hierarchy is the one of every other problem. Its fields have vectors over the degrees of freedom as coefficients
 (`algebra.vector_ring`), its linear part is inverted by sparse solves (`linear_part.sparse`), its forces are multilinear
-maps of vectors (`forces.multilinear`). This room states the problem (`statement`, `matrices`), finds
-the modes (`eigenmodes`), joins the rooms (`reduction`, `computation`), and hands out the result (`model`), whose slow flow is that of
-an ordinary `Expansion`; `residual` puts it back into the equations.
+maps of vectors (`forces.multilinear`). This room states the problem (`statement`, `matrices`), finds the modes
+(`eigenmodes`), joins the rooms (`reduction`, `computation`), and hands out the result (`model`), whose slow flow is
+that of an ordinary `Expansion`; `residual` puts it back into the equations.
 """

@@ -1,7 +1,7 @@
 """The computation behind a large model: the ordinary hierarchy over a ring of vectors.
 
-What an `Expansion` asks of a computation is asked of the reference coordinates: field k is that of the degree of freedom
-in which mode k is measured.
+What an `Expansion` asks of a computation is asked of the reference coordinates: field k is that of the degree of
+freedom in which mode k is measured.
 """
 
 from __future__ import annotations
@@ -75,7 +75,9 @@ class LargeComputation(Computation):
         return finish(ring, ring.normal(moved + secular)), finish(ring, secular)
 
     def snapshot(self) -> Snapshot:
-        raise MultiscaleError("an expansion of a large model has vectors in its fields and is not stored: reduce it again")
+        raise MultiscaleError(
+            "an expansion of a large model has vectors in its fields and is not stored: reduce it again"
+        )
 
 
 def begin_large(
@@ -88,7 +90,7 @@ def begin_large(
     tolerance: float,
     hard: bool,
 ) -> LargeComputation:
-    """Level 0; `shapes` are the maps of each kind of term, `matrices` M, G, K. With `hard` loads stand at leading order."""
+    """Level 0; `shapes` are the maps of each kind of term, `matrices` M, G, K. `hard` loads stand at leading order."""
     canonical = statement.canonical(order)
     ring = _ring(canonical)
     bordered = _bordered(canonical, ring, matrices, modes)

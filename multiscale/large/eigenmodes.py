@@ -4,6 +4,7 @@ Arnoldi iteration (SciPy). Shapes are 1 in their reference coordinate.
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from numbers import Integral, Real
@@ -59,23 +60,27 @@ def eigenmodes(
         if isinstance(x, bool) or not isinstance(x, Real) or x < 0:
             raise ProblemError(f"modes has the entry {x!r}: expected an integer ≥ 0 (by frequency) or a frequency")
     symmetric = gyroscopic is None and is_symmetric(mass) and is_symmetric(stiffness)
-    solve = _symmetric if symmetric else _general
-    matrices = (mass, stiffness) if symmetric else (mass, gyroscopic, stiffness)
+
+    def solve(near: float, count: int) -> list[tuple[float, Array]]:
+        if symmetric:
+            return _symmetric(mass, stiffness, near, count)
+        return _general(mass, gyroscopic, stiffness, near, count)
+
     found: list[tuple[float, Array]] = []
     numbers = [int(x) for x in chosen if isinstance(x, Integral)]
-    lowest = solve(*matrices, 0.0, max(numbers) + 1) if numbers else []
+    lowest = solve(0.0, max(numbers) + 1) if numbers else []
     if numbers and len(lowest) <= max(numbers):
         raise ProblemError(f"mode {max(numbers)} was asked for, but only {len(lowest)} oscillations were found")
     for x in chosen:
         if isinstance(x, Integral):
             found.append(lowest[int(x)])
         else:
-            near = solve(*matrices, float(x), 2)
+            near = solve(float(x), 2)
             if not near:
                 raise ProblemError(f"no oscillation was found near the frequency {x}")
             found.append(min(near, key=lambda pair: abs(pair[0] - float(x))))
     frequencies = sorted(w for w, _ in found)
-    for a, b in zip(frequencies, frequencies[1:], strict=False):
+    for a, b in itertools.pairwise(frequencies):
         if b - a <= 1e-12 * b:
             raise ProblemError(f"modes asks twice for the mode of frequency {a:.10g}")
     return [_normalised(w, shape, k, references) for k, (w, shape) in enumerate(found)]

@@ -46,7 +46,7 @@ def scipy_sparse() -> Any:
     """The module scipy.sparse."""
     try:
         import scipy.sparse
-        import scipy.sparse.linalg  # noqa: F401
+        import scipy.sparse.linalg
     except ImportError as error:
         raise ImportError(
             "large models need SciPy's sparse solvers: pip install 'multiscale-expansions[check]'"
@@ -79,8 +79,8 @@ def orders_of(given: Mapping[str, int] | None) -> dict[str, int]:
         least = 0 if name == "drive" else 1
         if name not in ORDERS or not isinstance(power, Integral) or isinstance(power, bool) or power < least:
             raise ProblemError(
-                f"orders has the entry {name!r}: {power!r}: expected integers ≥ 1 for {', '.join(map(repr, ORDERS))}, 0 "
-                "too for 'drive'; what acts at leading order goes into M, G and K"
+                f"orders has {name!r}: {power!r}: expected integers ≥ 1 for {', '.join(map(repr, ORDERS))}, "
+                "0 too for 'drive'; what acts at leading order goes into M, G and K"
             )
         powers[name] = int(power)
     return powers
@@ -104,7 +104,7 @@ def tensor_shape(name: str, given: Any, size: int, degree: int) -> Shape:
 
 def _entries(name: str, given: Any, size: int, rank: int) -> tuple[Array, Array]:
     if isinstance(given, Mapping):
-        pair = (list(given.keys()), list(given.values()))
+        pair: tuple[Any, Any] = (list(given.keys()), list(given.values()))
     elif isinstance(given, tuple) and len(given) == 2:
         pair = given
     else:
@@ -135,7 +135,9 @@ def _checked_function(name: str, given: Callable[..., Any], size: int, degree: i
     vectors = [rng.normal(size=size) + 1j * rng.normal(size=size) for _ in range(degree)]
     value = np.asarray(given(*vectors))
     if value.shape != (size,):
-        raise ProblemError(f"{name} returned the shape {value.shape} for vectors of shape ({size},): expected ({size},)")
+        raise ProblemError(
+            f"{name} returned the shape {value.shape} for vectors of shape ({size},): expected ({size},)"
+        )
     scale = float(np.max(np.abs(value), initial=1e-300))
     turned = np.asarray(given(*vectors[1:], vectors[0]))
     scaled = np.asarray(given(1j * vectors[0], *vectors[1:]))

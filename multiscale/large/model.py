@@ -1,6 +1,6 @@
 """The result of a reduction: a slow flow for a few modes, and the whole structure from a slow state.
 
-    u(t) = Σ_n ε^n Σ_m c_{n,m} · Π z_j^k z̄_j^l e_d^i …,     z_j = ½ (p_j − i q_j) e^{iΦ_j(t)},   c_{n,m} vectors
+u(t) = Σ_n ε^n Σ_m c_{n,m} · Π z_j^k z̄_j^l e_d^i …,     z_j = ½ (p_j − i q_j) e^{iΦ_j(t)},   c_{n,m} vectors
 """
 
 from __future__ import annotations
@@ -15,9 +15,9 @@ import sympy as sp
 
 from multiscale.errors import EvaluationError, MultiscaleError
 from multiscale.expansion import Expansion, extend
+from multiscale.forces.multilinear import Shape
 from multiscale.large.computation import LargeComputation
 from multiscale.large.eigenmodes import LargeMode
-from multiscale.forces.multilinear import Shape
 from multiscale.linear_part.bordered import Stopwatch
 
 if TYPE_CHECKING:
@@ -38,9 +38,9 @@ class ReducedModel:
     ----------
     expansion : Expansion
         Its slow flow, frequencies, steady states and generated functions are those of every expansion, so that
-        `equilibria`, `frequency_response`, `limit_cycles`, `backbone` (without drive) and `ring_down` take it. Its unknowns
-        are the displacements in which the modes are measured. The equations stand in the matrices: `certify`, `compare`
-        and `to_json` do not apply to it, the methods here do.
+        `equilibria`, `frequency_response`, `limit_cycles`, `initial_state` and, without drive, `backbone` take it. Its
+        unknowns are the displacements in which the modes are measured. The equations stand in the matrices: `certify`,
+        `compare` and `to_json` do not apply to it, the methods here do.
     modes : tuple of LargeMode
         Frequency, shape and reference of each carried mode.
     matrices : dict
@@ -97,10 +97,10 @@ class ReducedModel:
         worked out from their frequencies unless it is given."""
         given = {s.name if isinstance(s, sp.Symbol) else s: x for s, x in parameters.items()}
         for detuning in self.expansion.problem.detunings:
-            key = detuning.eliminated
-            own = key is not None and key.name.startswith("omega_") and key.name[6:].isdigit()
-            if own and key.name not in given and (detuning.detuning is None or detuning.detuning.name not in given):
-                given[key.name] = self.modes[int(key.name[6:]) - 1].frequency
+            key = "" if detuning.eliminated is None else str(detuning.eliminated.name)
+            own = key.startswith("omega_") and key[6:].isdigit()
+            if own and key not in given and (detuning.detuning is None or detuning.detuning.name not in given):
+                given[key] = self.modes[int(key[6:]) - 1].frequency
         function = self.expansion.slow_flow.to_numpy()
         return dict(zip(function.parameters, function.values(given), strict=True))
 
@@ -145,7 +145,7 @@ class ReducedModel:
         return np.asarray(total.real.reshape(-1, *t.shape))
 
     def turning(self, values: Mapping[str, Any]) -> list[tuple[Any, Any]]:
-        """(rate, angle at t = 0) of the fast angle of each paired generator: the modes in the frame, then the drives."""
+        """(rate, angle at t = 0) of the fast angle of each paired generator, modes first, then drives."""
         c, time = self.computation, self.expansion.problem.time
         natural: list[tuple[Any, Any]] = [(float(w), 0.0) for w in c.canonical.frequencies]
         driven: list[tuple[Any, Any]] = []
@@ -154,13 +154,15 @@ class ReducedModel:
             expression = d.reduced_frequency if moving else d.angle
             names = sorted(expression.free_symbols, key=str)
             if time in names:
-                raise MultiscaleError(f"the frequency of a drive varies in time ({expression}): that is not evaluated here")
+                raise MultiscaleError(
+                    f"the frequency of a drive varies in time ({expression}): that is not evaluated here"
+                )
             value = sp.lambdify(names, expression, "numpy")(*(values[s.name] for s in names))
             driven.append((value, 0.0) if moving else (0.0, value))
         angles = [*natural, *driven]
         rows = [[float(x) for x in row] for row in c.frame.angles]
         own = [tuple(sum(x * angle[k] for x, angle in zip(row, angles, strict=True)) for k in (0, 1)) for row in rows]
-        return [*own, *driven]  # type: ignore[list-item]
+        return [*own, *driven]
 
     def phasors(self, t: Array, y: Array, values: Mapping[str, Any]) -> dict[str, Array]:
         """The complex value of each paired generator at slow states y and times t."""

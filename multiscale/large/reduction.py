@@ -135,9 +135,7 @@ def reduce_model(
     found = eigenmodes(M, G, K, modes, references or {})
     finding = perf_counter() - begun_at
     factors = {name: (scales or {}).get(name, 1) for name in shapes}
-    statement = state(
-        [m.frequency for m in found], factors, [g for _, g in loads], powers, resonances, small, time
-    )
+    statement = state([m.frequency for m in found], factors, [g for _, g in loads], powers, resonances, small, time)
     matrices = {"M": M, "G": G, "K": K}
     hard = powers["drive"] == 0
     begun = begin_large(statement, order, matrices, found, shapes, [b for b, _ in loads], tolerance, hard)
@@ -181,6 +179,9 @@ def _remark(near: list[Near]) -> str:
         told.append(f"{x.name} = {x.value:.8g} is close to {x.frequency:.8g}, {whose}: {remedy} a relation for {key}")
     more = f"; and {len(near) - SHOWN} more" if len(near) > SHOWN else ""
     return (
-        "small divisors: " + "; ".join(told) + more + ". The result holds only while the frequencies shift by less than "
+        "small divisors: "
+        + "; ".join(told)
+        + more
+        + ". The result holds only while the frequencies shift by less than "
         "these distances"
     )

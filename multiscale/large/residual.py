@@ -2,9 +2,9 @@
 
     R = M u'' + (G + ε^p C) u' + K u + ε^q Q(u, u) + ε^r T(u, u, u) − ε^s Σ b g(t)
 
-u and its derivatives come from the published slow flow: z' = (dA/dt + iΦ' A) e^{iΦ}, and z'' from the same flow once more,
-as Taylor polynomials in t of the monomials. The force is evaluated at the one vector u, so nothing is shared with the
-hierarchy but the coefficients that are examined.
+u and its derivatives come from the published slow flow: z' = (dA/dt + iΦ' A) e^{iΦ}, and z'' from the same flow once
+more, as Taylor polynomials in t of the monomials. The force is evaluated at the one vector u, so nothing is shared with
+the hierarchy but the coefficients that are examined.
 """
 
 from __future__ import annotations
@@ -29,8 +29,8 @@ SHRINK = 0.5
 TRIALS = 3
 MARGIN = 0.3
 SIZES = (0.01, 0.03, 0.1, 0.2, 0.4)
-"""ε tried, in units of the one at which a level is as large as the leading one; the first whose R is well above rounding:
-a small one shows small errors."""
+"""ε tried, in units of the one at which a level is as large as the leading one; the first whose R is well above
+rounding is taken: a small one shows small errors."""
 ROUNDING = 1e-14
 CLEAR = 30
 
@@ -59,7 +59,9 @@ class ModelCertificate:
     def require(self) -> None:
         """Raises `MultiscaleError` unless it passed."""
         if not self.passed:
-            raise MultiscaleError(f"the residual of the reduced model falls too slowly with ε: exponents {self.exponents}")
+            raise MultiscaleError(
+                f"the residual of the reduced model falls too slowly with ε: exponents {self.exponents}"
+            )
 
 
 def _product(a: Array, b: Array) -> Array:
@@ -134,7 +136,6 @@ def _number(model: ReducedModel, coefficient: sp.Expr, t: float, values: Mapping
 def certify_model(model: ReducedModel, parameters: Mapping[Any, Any], seed: int) -> ModelCertificate:
     """Random states of the size that makes the weak terms O(ε), at two values of ε."""
     rng = np.random.default_rng(seed)
-    small = model.expansion.problem.small
     given = {getattr(s, "name", s): float(x) for s, x in parameters.items()}
     for s in model.expansion.problem.parameters:
         given.setdefault(s.name, float(rng.uniform(0.3, 1.0)))

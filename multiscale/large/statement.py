@@ -29,8 +29,8 @@ PLACES = {"C": ((0, 1),), "quadratic": ((0, 0),) * 2, "cubic": ((0, 0),) * 3}
 """The factors by which the terms of a kind are known."""
 REFUSAL = (
     "the equations of a large model stand in its matrices, not in this problem: what reads them (certify, compare, "
-    "to_json, backbone of a driven model, …) does not apply; use the methods of the ReducedModel, such as certify() and "
-    "residual()"
+    "to_json, backbone of a driven model, …) does not apply; use the methods of the ReducedModel, such as certify() "
+    "and residual()"
 )
 
 
@@ -40,7 +40,7 @@ def drive_place(number: int) -> tuple[tuple[int, int], ...]:
 
 
 class ModelStatement(Problem):
-    """A `Problem` in the references of the carried modes, whose frequencies are numbers and whose equations are shut."""
+    """A `Problem` in the references of the carried modes; its frequencies are numbers, its equations are shut."""
 
     def __init__(
         self,
@@ -59,7 +59,7 @@ class ModelStatement(Problem):
         self._shut = True
 
     @property
-    def equations(self) -> tuple[sp.Expr, ...]:  # type: ignore[override]
+    def equations(self) -> tuple[sp.Expr, ...]:
         """Shut once the statement has been read."""
         if self._shut:
             raise MultiscaleError(REFUSAL)
@@ -78,7 +78,7 @@ class ModelStatement(Problem):
             self._shut = shut
 
     @property
-    def parameters(self) -> tuple[sp.Symbol, ...]:  # type: ignore[override]
+    def parameters(self) -> tuple[sp.Symbol, ...]:
         """Those of loads, coefficients and detunings; the frequencies are numbers."""
         if "_own_parameters" not in self.__dict__:
             self._own_parameters = tuple(s for s in super().parameters if s not in self._numbers)

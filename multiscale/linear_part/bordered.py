@@ -35,8 +35,8 @@ SINGULAR = 1e-8
 
 @dataclass
 class Stopwatch:
-    """Seconds spent in finding the modes, in factorisations, in solves for levels, and in looking for what is near them;
-    how many factorisations and right-hand sides there were."""
+    """Seconds spent in finding the modes, in factorisations, in solves for levels, and in looking for what is near; how
+    many factorisations and right-hand sides there were."""
 
     finding: float = 0.0
     factoring: float = 0.0
@@ -95,7 +95,7 @@ class Bordered:
     @cached_property
     def modal_masses(self) -> Array:
         """m_j = φ_j^T M φ_j."""
-        return np.einsum("ij,ij->j", self.shapes, self.weighted)
+        return np.asarray(np.einsum("ij,ij->j", self.shapes, self.weighted))
 
     def along(self, j: int) -> Callable[[Array], Array]:
         """x -> M φ_j φ_j^T M x / m_j, which moves the squared frequency of mode j alone."""

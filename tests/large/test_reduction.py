@@ -26,13 +26,18 @@ def exact_chain(n, order, **options):
     force = [sum(c * b[s, i] * sum(b[s, j] * U[j] for j in range(n)) ** 2 for s, c in enumerate(k2)) for i in range(n)]
     cube = [sum(c * b[s, i] * sum(b[s, j] * U[j] for j in range(n)) ** 3 for s, c in enumerate(k3)) for i in range(n)]
     equations = [
-        U[i].diff(t, 2) + sum(stiffness[i, j] * U[j] for j in range(n)) + eps * force[i] + eps**2 * cube[i]
+        U[i].diff(t, 2)
+        + sum(stiffness[i, j] * U[j] for j in range(n))
+        + eps * force[i]
+        + eps**2 * cube[i]
         + eps**2 * U[i].diff(t) / 10
         for i in range(n)
     ]
     expansion = ms.expand(ms.Problem(equations, U[:n], small=eps, **options), order)
     numbers = {
-        "M": sparse.identity(n), "K": np.array(stiffness, dtype=float), "C": sparse.identity(n) / 10,
+        "M": sparse.identity(n),
+        "K": np.array(stiffness, dtype=float),
+        "C": sparse.identity(n) / 10,
         "springs": ms.Springs(np.array(b, dtype=float), np.array(k2, dtype=float), np.array(k3, dtype=float)),
     }
     return expansion, numbers
@@ -41,11 +46,11 @@ def exact_chain(n, order, **options):
 @pytest.mark.parametrize(("n", "modes", "order"), [(2, [0], 4), (2, [0, 1], 3), (3, [0], 3), (3, [2, 0], 2)])
 @pytest.mark.filterwarnings("ignore::multiscale.SmallDivisorWarning")
 def test_a_small_chain_agrees_with_exact_arithmetic(n, modes, order):
-    references = {a: U[0] for a in modes}
+    references = dict.fromkeys(modes, U[0])
     exact, numbers = exact_chain(n, order, modes=modes, references=references)
     assert exact.representation != "complex"
     own = sorted(modes)
-    model = ms.reduce_model(**numbers, order=order, modes=own, references={k: 0 for k in range(len(own))})
+    model = ms.reduce_model(**numbers, order=order, modes=own, references=dict.fromkeys(range(len(own)), 0))
     assert difference(coefficients(exact), coefficients(model.expansion)) < 1e-12
     y, parameters = np.random.default_rng(0).normal(size=2 * len(own)), {eps: 0.1}
     for derivative in (0, 1, 2):
@@ -126,11 +131,21 @@ def test_internal_resonance_splits_the_stiffness_along_the_mode():
     quadratic, cubic = tensors(springs)
     relation = {w2: 2 * w1 + eps * sigma}
     model = ms.reduce_model(
-        np.eye(2), np.diag([1.0, 2.07**2]), C=np.eye(2), springs=springs, modes=[0, 1], order=3, resonances=relation,
+        np.eye(2),
+        np.diag([1.0, 2.07**2]),
+        C=np.eye(2),
+        springs=springs,
+        modes=[0, 1],
+        order=3,
+        resonances=relation,
         scales={"C": mu},
     )
     problem = ms.Problem.from_matrices(
-        M=np.eye(2, dtype=int), K=[[1, 0], [0, w2**2]], C=mu * sp.eye(2), quadratic=quadratic, cubic=cubic,
+        M=np.eye(2, dtype=int),
+        K=[[1, 0], [0, w2**2]],
+        C=mu * sp.eye(2),
+        quadratic=quadratic,
+        cubic=cubic,
         resonances={w2: 2 + eps * sigma},
     )
     expansion = ms.expand(problem, 3)
@@ -221,7 +236,9 @@ def test_extension_and_progress(caplog):
     mass, stiffness, springs = chain(40, 0.08)
     seen = []
     with caplog.at_level(logging.INFO, logger="multiscale"):
-        model = ms.reduce_model(mass, stiffness, springs=springs, order=2, on_level=lambda level: seen.append(level.order))
+        model = ms.reduce_model(
+            mass, stiffness, springs=springs, order=2, on_level=lambda level: seen.append(level.order)
+        )
     assert seen == [1, 2]
     assert "level 2 of 2" in caplog.text
     longer = model.extended(4)
@@ -231,7 +248,9 @@ def test_extension_and_progress(caplog):
     # One factorisation for each rate 0 … 5 (4 and 5 first met at levels 3 and 4), whatever the number of monomials.
     assert watch.factorisations == 6
     assert watch.solved > watch.factorisations
-    stopped = ms.reduce_model(mass, stiffness, springs=springs, order=4, tolerance=1e-4, on_level=lambda level: level.order < 2)
+    stopped = ms.reduce_model(
+        mass, stiffness, springs=springs, order=4, tolerance=1e-4, on_level=lambda level: level.order < 2
+    )
     assert stopped.order == 2
 
 
