@@ -12,8 +12,10 @@ from dataclasses import dataclass, replace
 from functools import cache, cached_property
 from typing import Any, TypeAlias
 
+import sympy as sp
+
 from multiscale.algebra.choice import make_ring
-from multiscale.algebra.complex_ring import ComplexRing
+from multiscale.algebra.complex_ring import ComplexRing, MpmathRing
 from multiscale.algebra.derivation import Derivation
 from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.quotient import Coefficient, finish
@@ -29,7 +31,7 @@ from multiscale.linear_part import LinearPart, Rate
 from multiscale.linear_part.dense import Dense
 from multiscale.linear_part.general import General
 from multiscale.linear_part.oscillators import Oscillators
-from multiscale.problem.canonical import Canonical
+from multiscale.problem.canonical import Canonical, in_double
 from multiscale.problem.laws import LAW
 from multiscale.tower import Tower
 
@@ -40,11 +42,15 @@ Finished: TypeAlias = Mapping[Exponents, Coefficient]
 
 @dataclass(frozen=True)
 class Snapshot:
-    """A computation as plain data: the reciprocals in use, and per level the fields and the D_nA by name."""
+    """A computation as plain data: the reciprocals in use, and per level the fields and the D_nA by name.
+
+    `representation` is "auto" where the coefficients are exact: any exact arithmetic goes on from them.
+    """
 
     reciprocals: tuple[tuple[str, Frozen], ...]
     fields: tuple[tuple[Frozen, ...], ...]
     changes: tuple[tuple[Frozen, ...], ...]
+    representation: str = "auto"
 
 
 @dataclass(frozen=True)
@@ -69,6 +75,12 @@ class Computation:
     @property
     def unknowns(self) -> int:
         return self.hierarchy.linear_part.size
+
+    @property
+    def frequencies(self) -> tuple[sp.Expr, ...]:
+        """The natural frequencies of the modes, to the digits of this representation."""
+        exact = self.canonical.frequencies
+        return exact if self.representation == "mpmath" else tuple(map(in_double, exact))
 
     def size(self, level: int) -> tuple[int, int]:
         """Terms of the fields of a level in all unknowns, and of its D_nA in all modes, as they stand in the ring."""
@@ -198,19 +210,20 @@ class Computation:
             tuple(freeze(ring.write(d.images.get(self._amplitude(a), ring.zero))) for a in range(self.modes))
             for d in tower.time[1:]
         )
-        return Snapshot(ring.spec.reciprocals, fields, changes)
+        kept = ring.representation if isinstance(ring, ComplexRing) else "auto"
+        return Snapshot(ring.spec.reciprocals, fields, changes, kept)
 
 
 def _ring(canonical: Canonical, spec: RingSpec, representation: str) -> Ring:
     if canonical.operator is None or not canonical.operator.numeric:
         return make_ring(spec, representation)
-    if representation not in ("auto", "complex"):
+    if representation not in ("auto", "complex", "mpmath"):
         raise ProblemError(
             f"representation is {representation!r}, but the natural frequencies have no closed form: the coefficients "
-            "can only be floating-point numbers here, representation='complex' (or 'auto')"
+            "can only be floating-point numbers here, representation='complex' (or 'auto') or 'mpmath'"
         )
-    values = {name: float(x) for name, x in canonical.meanings if x.is_number}
-    return ComplexRing(spec, values)
+    values = {name: x for name, x in canonical.meanings if x.is_number}
+    return MpmathRing(spec, values) if representation == "mpmath" else ComplexRing(spec, values)
 
 
 def _linear_part(canonical: Canonical, ring: Ring) -> LinearPart:
@@ -218,7 +231,7 @@ def _linear_part(canonical: Canonical, ring: Ring) -> LinearPart:
     values = [dict(b) for b in bases.values]
     if canonical.operator is None:
         return Oscillators(bases.rates, values, bases.unit, ring)
-    if canonical.operator.numeric:
+    if isinstance(ring, ComplexRing):
         return Dense(canonical.operator, values, bases.unit, ring)
     return General(canonical.operator, values, bases.unit, ring)
 
@@ -267,6 +280,8 @@ def _projected(power: int, coefficient: Frozen, law: int, equation: int, canonic
 
 def restore(canonical: Canonical, snapshot: Snapshot, representation: str = "auto") -> Computation:
     """The computation of a snapshot; time derivatives are recomputed from the fields."""
+    if representation == "auto":
+        representation = snapshot.representation
     computation = begin(canonical, representation, snapshot.reciprocals)
     for field, changes in zip(snapshot.fields[1:], snapshot.changes, strict=True):
         hierarchy = computation.hierarchy

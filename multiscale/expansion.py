@@ -70,7 +70,7 @@ class Expansion:
     order : int
         N: the levels 0 … N, the slow derivatives D_1 … D_N.
     amplitude : str
-        "fundamental": |2A| is the amplitude of the fundamental harmonic, to all orders. "peak", made by
+        "fundamental": ``|2A|`` is the amplitude of the fundamental harmonic, to all orders. "peak", made by
         `with_amplitude`: it is half the distance from peak to peak, to the order of the expansion.
     tolerance : float
         Relative distance below which numeric frequencies count as close to resonance (`warnings`).
@@ -99,7 +99,7 @@ class Expansion:
 
     @property
     def representation(self) -> str:
-        """The arithmetic that computed the coefficients: "sympy" or "flint" (both exact), or "complex"."""
+        """The arithmetic that computed the coefficients: "sympy" or "flint" (exact), "complex" or "mpmath"."""
         return self.computation.representation
 
     @cached_property
@@ -123,7 +123,8 @@ class Expansion:
                 first = next(b for b, r in enumerate(rate) if r)
                 ratio = sp.Rational(rate[first], bases.rates[j][first])
                 names = self.problem.frequency_names
-                expressed[sp.Symbol(names[k])] = ratio * sp.Symbol(names[j])
+                if names[k] not in {str(key) for key in expressed}:
+                    expressed[sp.Symbol(names[k])] = ratio * sp.Symbol(names[j])
         return expressed
 
     def _check_frequency(self, mode: int) -> None:
@@ -213,14 +214,14 @@ class Expansion:
 
     def __repr__(self) -> str:
         unknowns = ", ".join(str(u) for u in self.problem.unknowns)
-        how = ", in floating point" if self.representation == "complex" else ""
+        how = ", in floating point" if self.representation in ("complex", "mpmath") else ""
         return f"Expansion of {unknowns} to order {self.order} in {self.problem.small}"[: 199 - len(how)] + how
 
     def __reduce__(self) -> tuple[Any, ...]:
         return _rebuilt, (self.problem, self.order, self.amplitude, self.tolerance, self.computation.snapshot())
 
     def to_numpy(self, derivative: int = 0, wrt: str | None = None) -> NumpyFunction:
-        """The unknowns (or a time derivative of them) from a slow state: f(t, y, *parameters), shape (unknowns,) + B.
+        """The unknowns, or a time derivative, from a slow state: ``f(t, y, *parameters)``, shape (unknowns,) + B.
 
         y is Cartesian in the rotating frame, as in ``slow_flow.to_numpy("cartesian")``. With `wrt` "state" or
         "parameters" it is the Jacobian by these, at fixed time: (unknowns, n) + B.
@@ -234,7 +235,7 @@ class Expansion:
         return displacement_function(self.problem, self.computation, derivative, wrt)
 
     def frequency_to_numpy(self, mode: int = 0) -> NumpyFunction:
-        """ω at a slow state y (Cartesian in the rotating frame): f(t, y, *parameters), shape B."""
+        """ω at a slow state y (Cartesian in the rotating frame): ``f(t, y, *parameters)``, shape B."""
         from multiscale.codegen.functions import frequency_function
 
         self._check_frequency(mode)
@@ -302,8 +303,10 @@ def expand(
                 result = ms.expand(problem, order, on_level=lambda level: bar.update())
 
         The logger "multiscale" reports each level too, with its number of terms and its time, at the level INFO.
-    representation : "auto", "flint" or "sympy"
-        The polynomial arithmetic; all give identical results. "auto" takes FLINT when python-flint is installed.
+    representation : "auto", "flint", "sympy", "complex" or "mpmath"
+        The polynomial arithmetic; the exact ones, "flint" and "sympy", give identical results. "auto" takes FLINT when
+        python-flint is installed. Where frequencies have no closed form, "auto" takes "complex" (double precision), and
+        "mpmath" has 50 digits.
     tolerance : float
         Relative distance below which numeric frequencies count as close to resonance.
 

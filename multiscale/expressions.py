@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 from fractions import Fraction
+from typing import Any
 
 import sympy as sp
 from sympy.polys.domains import ZZ
@@ -23,8 +24,13 @@ __all__ = ["FACTOR_LIMIT", "Writer"]
 FACTOR_LIMIT = 40
 
 
-def _number(c: Fraction | float) -> sp.Expr:
-    return sp.Float(c) if isinstance(c, float) else sp.Rational(c.numerator, c.denominator)
+FLOATING = (float, sp.Float)
+
+
+def _number(c: Any) -> sp.Expr:
+    if isinstance(c, FLOATING):
+        return sp.Float(c) if isinstance(c, float) else c
+    return sp.Rational(c.numerator, c.denominator)
 
 
 class Writer:
@@ -84,7 +90,7 @@ class Writer:
 
     def _numerator(self, terms: Frozen) -> list[sp.Expr]:
         """Content, common monomial and the factors of the rest."""
-        if any(isinstance(c, float) for _, c in terms):
+        if any(isinstance(c, FLOATING) for _, c in terms):
             return [self.polynomial(terms)]
         content, rest = primitive(dict(terms))
         lowest = dict(terms[0][0])

@@ -36,12 +36,14 @@ class Level:
         {unknown: right-hand side}, with the solvability conditions of lower levels inserted and the term in D_nA left
         out.
     secular : dict
-        {unknown: the part of the forcing at the natural frequency}, both complex-conjugate halves.
+        {unknown: the part of the forcing that D_nA balances}, both complex-conjugate halves: for an oscillator all of
+        its forcing at the natural frequency, for coupled equations the part along L_0'(iω)φ.
     solvability : dict
         {D_nA: its value}, the condition that removes the secular terms; for a driven mode with what the turning of the
         frame adds, −iΦ_n A.
     corrections : dict
-        {unknown: U_n}, for n ≥ 1 without any part at the natural frequency where A is the amplitude of the fundamental
+        {unknown: U_n}, for n ≥ 1 without any part at the natural frequency of a mode in the reference of that mode
+        (`Expansion.modes`), which for an oscillator is the unknown itself, where A is the amplitude of the fundamental
         (`Expansion.amplitude`). As everywhere, A is taken in the rotating frame (`SlowFlow.frame`).
     divisors : tuple
         The polynomials in parameters that stand in denominators of this level, after reduction.
@@ -86,9 +88,9 @@ def _phase(frequency: sp.Expr, time: sp.Symbol) -> sp.Expr:
 
 
 def polynomials_below(finished: Iterable[Finished]) -> list[Frozen]:
-    """The distinct denominators in finished coefficients, in a fixed order."""
+    """The distinct denominators in finished coefficients, in a fixed order; moduli of amplitudes are none."""
     found = {p for f in finished for c in f.values() for q in (c.real, c.imag) for p, _ in q.denominator}
-    return sorted(found)
+    return sorted(p for p in found if not any(name.startswith("@r") for m, _ in p for name, _ in m))
 
 
 class Views:
@@ -134,8 +136,8 @@ class Views:
         """Σ row_f ω_f t + Σ row_l θ_l: a combination of natural phases and angles of drives, in time."""
         canonical = self._computation.canonical
         parts = [sp.Rational(x.numerator, x.denominator) for x in row]
-        modes = len(canonical.frequencies)
-        frequency = sp.Add(*(x * w for x, w in zip(parts[:modes], canonical.frequencies, strict=True)))
+        modes = self._computation.modes
+        frequency = sp.Add(*(x * w for x, w in zip(parts[:modes], self._computation.frequencies, strict=True)))
         driven = (x * d.angle for x, d in zip(parts[modes:], canonical.drives, strict=True))
         return sp.Add(_phase(frequency, self._problem.time), *driven)
 

@@ -41,8 +41,11 @@ def plot_response(response: Response, ax: Axes | None = None, mode: int = 0) -> 
     for branch in response.branches:
         amplitude = branch.amplitude if branch.amplitude.ndim == 1 else branch.amplitude[mode]
         style = np.where(branch.spurious, "truncation only", np.where(branch.stable, "stable", "unstable"))
-        # A piece belongs to the style of its less stable end, so that pieces of one style are drawn in one stroke.
+        # A piece belongs to the style of its less stable end, so that pieces of one style are drawn in one stroke; one
+        # that ends at a fold to that of its other end, so that the style changes at the fold itself.
         pieces = [_worse(str(a), str(b)) for a, b in pairwise(style)]
+        for k in branch.folds:
+            pieces[k - 1], pieces[k] = str(style[k - 1]), str(style[k + 1])
         for name, group in groupby(range(len(pieces)), key=pieces.__getitem__):
             run = list(group)
             part = slice(run[0], run[-1] + 2)

@@ -84,7 +84,27 @@ def small_divisors(
         relation = _relation(computation, k, rate, 1 if turning > 0 else -1)
         if relation not in found:
             found[relation] = _near_resonance(problem, computation, relation, frequencies)
-    return list(found.values())
+    return [*found.values(), *_left_aside(computation, values, tolerance)]
+
+
+def _left_aside(computation: Computation, values: Sequence[float], tolerance: float) -> list[str]:
+    """Modes that are not carried although a combination of the carried ones comes close to their frequency."""
+    operator, unit = computation.canonical.operator, computation.canonical.bases.unit
+    if operator is None:
+        return []
+    rates = {rate for _, rate in computation.hierarchy.met}
+    found = []
+    for root in operator.roots:
+        own = _value(root.rate, values) / unit
+        near = [v for rate in rates if abs((v := abs(_value(rate, values) / unit)) - own) < tolerance * own]
+        if root.first is None and near:
+            closest = min(near, key=lambda v: abs(v - own))
+            found.append(
+                f"small divisor: a combination of the modes carried and the drives has the frequency {closest:.6g}, "
+                f"close to the frequency {own:.6g} of a mode that is not carried, which it excites: add that mode to "
+                "`modes`"
+            )
+    return found
 
 
 def warn_at(expansion: Expansion, values: Mapping[str, Any]) -> None:
@@ -197,13 +217,18 @@ def _where(computation: Computation, symbol: sp.Symbol) -> str:
 
 
 def _growing(computation: Computation) -> list[str]:
-    """Roots of the leading order with positive real part, where its matrices are numbers."""
+    """Motions of the leading order that are not carried because they decay, or should; growth where it is decided."""
     operator = computation.canonical.operator
-    if operator is None:
+    if operator is None or not operator.others:
         return []
     rates = leading_growth(operator, dict(computation.canonical.meanings))
     if rates is None or max(rates) <= 1e-9:
-        return []
+        assumed = "assumed to decay" if rates is None else "decay"
+        return [
+            f"{operator.others} of the roots of the leading order lie off the imaginary axis and {assumed}: the "
+            "expansion holds for the motion that is left, where the unknowns concerned follow the modes carried. "
+            "Damping that is meant to be weak needs a power of the small parameter"
+        ]
     return [
         f"the leading order has a motion that grows like exp({max(rates):.6g}*t) beside the modes carried: the "
         "expansion describes the invariant set on which it is absent, and no motion near it stays there"
@@ -213,7 +238,7 @@ def _growing(computation: Computation) -> list[str]:
 def _assumptions(computation: Computation) -> list[str]:
     bases = computation.canonical.bases
     found = [f"{name} is assumed to be rationally independent of the other frequencies" for name in bases.assumed]
-    if computation.representation == "complex":
+    if computation.representation in ("complex", "mpmath"):
         found.append(
             "some natural frequencies have no closed form: coefficients are floating-point numbers, and these "
             "frequencies are assumed to be rationally independent of all others"

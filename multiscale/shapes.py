@@ -23,7 +23,7 @@ class ModeShape:
     shape : dict
         {unknown: its component of φ}; complex where components are out of phase.
     reference : Expr
-        The unknown whose component is 1: |2A| is the amplitude of the fundamental in it, to all orders.
+        The unknown whose component is 1: ``|2A|`` is the amplitude of the fundamental in it, to all orders.
     """
 
     frequency: sp.Expr
@@ -40,7 +40,7 @@ def mode_shapes(problem: Problem, computation: Computation, writer: Writer) -> t
         references = [root.references[k] for root, k in canonical.operator.carried]
     modes = []
     for mode, frequency, k in zip(
-        computation.hierarchy.linear_part.modes, canonical.frequencies, references, strict=True
+        computation.hierarchy.linear_part.modes, computation.frequencies, references, strict=True
     ):
         components = (writer.named(x) for x in mode.shape)
         shape = dict(zip(problem.unknowns, components, strict=True))

@@ -16,17 +16,17 @@ from __future__ import annotations
 from collections.abc import Callable
 from fractions import Fraction
 from functools import cached_property
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import sympy as sp
 
-from multiscale.computed import Computation
+from multiscale.computed import Computation, Snapshot, restore
 from multiscale.errors import EvaluationError
 from multiscale.frame import turns
 from multiscale.latex import LONGEST, aligned, note
 from multiscale.level import Views
 from multiscale.problem import Problem
-from multiscale.symbols import Symbols
+from multiscale.symbols import Symbols, symbols_of
 
 if TYPE_CHECKING:
     from multiscale.codegen.numpy_function import NumpyFunction
@@ -59,6 +59,9 @@ class SlowFlow:
     def __repr__(self) -> str:
         order, modes = self._computation.order, self._computation.modes
         return f"SlowFlow(order {order}, {modes} mode{'s' if modes > 1 else ''}, phases {list(self.phases)})"
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return _rebuilt, (self._problem, self._computation.order, self._computation.snapshot())
 
     @property
     def _levels(self) -> range:
@@ -184,7 +187,7 @@ class SlowFlow:
         return sp.Matrix([[sp.diff(value, x) for x in flow] for value in flow.values()])
 
     def to_numpy(self, form: str = "cartesian", wrt: str | None = None) -> NumpyFunction:
-        """The slow flow, or its Jacobian, as a NumPy function f(t, y, *parameters).
+        """The slow flow, or its Jacobian, as a NumPy function ``f(t, y, *parameters)``.
 
         Parameters
         ----------
@@ -219,3 +222,9 @@ class SlowFlow:
 def _check_form(form: str) -> None:
     if form not in FORMS:
         raise EvaluationError(f"form is {form!r}: expected one of {', '.join(map(repr, FORMS))}")
+
+
+def _rebuilt(problem: Problem, order: int, snapshot: Snapshot) -> SlowFlow:
+    computation = restore(problem.canonical(order), snapshot)
+    symbols = symbols_of(problem, computation.modes, len(computation.frame.resonant), order)
+    return SlowFlow(problem, computation, Views(problem, computation, symbols), symbols)

@@ -94,3 +94,61 @@ def test_approximants_reach_beyond_the_series():
         assert (abs(series - exact[e]) < 1e-8) == (e == 1.0)
     amplitudes = [reach["reach"](order).amplitude for order in reach["ORDERS"]]
     assert amplitudes == sorted(amplitudes)
+
+
+@pytest.fixture(scope="module")
+def drawn():
+    pytest.importorskip("matplotlib")
+    return runpy.run_path(str(DOCS / "examples" / "figures.py"))
+
+
+def test_every_figure_of_the_script_stands_on_a_page(drawn):
+    pages = "".join(page.read_text() for page in DOCS.glob("*.md"))
+    assert [name for name in drawn["FIGURES"] if f"(figures/{name})" not in pages] == []
+
+
+@pytest.mark.parametrize("name", ["tour_response.png", "decay.png", "exchange.png", "tongues.png"])
+def test_figures_are_drawn_again(drawn, name, tmp_path):
+    """The other figures take seconds each, for what they integrate."""
+    (path,) = drawn["write"](tmp_path, [name])
+    assert path.stat().st_size > 10_000
+
+
+def test_the_driven_oscillator_settles_where_the_figure_shows_it(drawn):
+    values = {"epsilon": 0.02, "mu": 0.15, "alpha": 1.0, "f": 0.6, "omega_0": 1.0, "Omega": 0.99}
+    (state,) = (s for s in ms.equilibria(drawn["driven"](3), values) if not s.spurious)
+    assert drawn["settled"](0.99, 1.6)[1] == pytest.approx(state.amplitudes[0], rel=2e-3)
+
+
+def test_the_cycle_has_the_frequency_that_the_figure_shows(drawn):
+    assert drawn["cycle_frequency"](1.0) == pytest.approx(0.942955847442, abs=1e-7)
+
+
+@pytest.fixture(scope="module")
+def fork():
+    module = runpy.run_path(str(DOCS / "examples" / "ring_down_identification.py"))
+    return module, module["record"]()
+
+
+def test_drag_damping_and_stiffness_are_identified(fork):
+    """The truth lies within three standard deviations, which are a small part of each value."""
+    module, data = fork
+    found = module["identify"](module["expansion"](), data)
+    for name, true in module["TRUTH"].items():
+        assert abs(found.values[name] - true) < 3 * found.uncertainties[name]
+        assert found.uncertainties[name] < 0.01 * true
+    assert found.misfit == pytest.approx(module["NOISE"], rel=0.03)
+
+
+def test_the_record_shows_that_there_is_drag(fork):
+    """Viscous damping alone leaves a misfit well above the noise."""
+    module, data = fork
+    guess = module["start"](data)
+    guess["c"] += guess.pop("d") * module["PLUCK"] * np.sqrt(guess["k"] / module["MASS"]) / 2
+    known = {"m": module["MASS"], "epsilon": 1.0, "d": 0.0}
+    short = len(data) // 10
+    for count in (short, len(data)):
+        model = ms.ring_down_model(module["expansion"](), module["TIMES"][:count], free=["c", "k", "k_3"], known=known)
+        found = ms.fit(model, data[:count], guess)
+        guess = found.values
+    assert found.misfit > 2 * module["NOISE"]

@@ -14,7 +14,7 @@ import multiscale as ms
 t = sp.Symbol("t", real=True)
 eps, mu, f, Omega = sp.symbols("epsilon mu f Omega", positive=True)
 sigma = sp.Symbol("sigma", real=True)
-u = sp.Function("u")(t)
+u, v = sp.Function("u")(t), sp.Function("v")(t)
 VALUES = {"epsilon": 0.01, "mu": 0.1, "f": 0.4}
 
 FREE = ms.Problem(u.diff(t, 2) + u + eps * u**3, u, small=eps)
@@ -25,6 +25,9 @@ DRIVEN = ms.Problem(
     small=eps,
     resonances={Omega: 1 + eps * sigma},
 )
+
+
+ONSET = ms.Problem([u.diff(t) - v, v.diff(t) + u - mu * v + u**2 * v], [u, v], ordering={u: 1, v: 1, mu: 2})
 
 
 def free():
@@ -57,6 +60,15 @@ OBJECTS = {
         lambda: ms.response_model(driven(), {sigma: [0.0, 1.0]}, free=["f", "mu"], known={eps: 0.01}),
         "names",
     ),
+    "Certificate": (lambda: ms.certify(driven()), "exponents"),
+    "Approximant": (lambda: ms.pade([1, 2, 3, 5, 9], eps), "poles"),
+    "Validity": (lambda: ms.validity(free(), {eps: 0.1}, 0.01), "amplitude"),
+    "Comparison": (
+        lambda: ms.compare(free(), {}, {u: 1.0, u.diff(t): 0.0}, [0.1, 0.05], 1.0),
+        "order",
+    ),
+    "TermEstimate": (lambda: ms.estimate_terms(FREE, 4), "total"),
+    "Onset": (lambda: ms.onset(ms.expand(ONSET, 2), mu), "parameter"),
     "NoisyFlow": (lambda: ms.noisy_flow(driven(), {u: f}), "drift"),
 }
 

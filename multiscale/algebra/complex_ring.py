@@ -1,5 +1,7 @@
 """Ring elements with complex floating-point coefficients, for linear parts that have no closed form.
 
+Two representations: "complex" has double precision, "mpmath" has `DIGITS` digits, for checks that need small ε.
+
 An element is {exponents: complex}. Generators whose value is a number (i, square roots, constants, frequencies) are
 numbers here; amplitudes, phasors and symbolic parameters stay generators, so that the slow flow remains a polynomial in
 them. Results carry floats, correct to rounding: this is the one representation that is not exact.
@@ -15,13 +17,19 @@ from fractions import Fraction
 from operator import add, itemgetter
 from typing import Any
 
+import numpy as np
+import sympy as sp
+from mpmath.ctx_mp import MPContext
+
 from multiscale.algebra.polynomial import Frozen
 from multiscale.algebra.ring import Exponents, Key, NamedTerms, RingSpec
 from multiscale.errors import MultiscaleError
 
-__all__ = ["ComplexRing"]
+__all__ = ["DIGITS", "ComplexRing", "MpmathRing"]
 
 ROUNDING = 1e-14
+DIGITS = 50
+"""Digits of the representation "mpmath"."""
 
 
 class Element:
@@ -65,26 +73,39 @@ class Element:
 
 
 class ComplexRing(NamedTerms):
-    """A `Ring` of floating-point numbers; `values` are the generators that are numbers."""
+    """A `Ring` of floating-point numbers; `values` are the generators that are numbers, as SymPy numbers."""
 
     representation = "complex"
+    rounding: Any = ROUNDING
 
-    def __init__(self, spec: RingSpec, values: Mapping[str, float]) -> None:
+    def __init__(self, spec: RingSpec, values: Mapping[str, sp.Expr]) -> None:
         self.spec, self._numbers = spec, dict(values)
         self._empty = (0,) * len(spec.names)
-        self.zero, self.one = Element({}), Element({self._empty: 1.0})
-        self._values: dict[int, complex] = {spec.index[g]: v for g, v in values.items() if g in spec.index}
-        self._values[0] = 1j
+        unit = self.number(1)
+        self.zero, self.one = Element({}), Element({self._empty: unit})
+        self._values: dict[int, Any] = {spec.index[g]: self.number(v) for g, v in values.items() if g in spec.index}
+        self._values[0] = self.number(1j)
         self.generators = tuple(
-            self.constant(self._values[k]) if k in self._values else Element({self._single(k): 1.0})
+            self.constant(self._values[k]) if k in self._values else Element({self._single(k): unit})
             for k in range(len(spec.names))
         )
+
+    def number(self, value: Any) -> Any:
+        """A coefficient from an exact number, a Python or a SymPy one."""
+        return float(value) if isinstance(value, int | Fraction | sp.Expr) else value
+
+    def written(self, part: Any) -> Any:
+        """A real or imaginary part as it stands in finished coefficients."""
+        return float(part)
+
+    def inverted(self, matrix: list[list[Any]]) -> list[list[Any]]:
+        return [list(row) for row in np.linalg.inv(np.array(matrix, dtype=complex))]
 
     def _single(self, k: int) -> Exponents:
         return tuple(int(j == k) for j in range(len(self.spec.names)))
 
     def constant(self, value: Any) -> Any:
-        value = float(value) if isinstance(value, int | Fraction) else complex(value)
+        value = self.number(value)
         return Element({self._empty: value} if value else {})
 
     def rational(self, x: Any) -> Any:
@@ -96,7 +117,7 @@ class ComplexRing(NamedTerms):
     def from_terms(self, terms: Mapping[Exponents, Any]) -> Any:
         result: dict[Exponents, complex] = {}
         for m, c in terms.items():
-            value: complex = float(c) if isinstance(c, int | Fraction) else c
+            value = self.number(c)
             for k, number in self._values.items():
                 if m[k]:
                     value *= number ** m[k]
@@ -108,11 +129,10 @@ class ComplexRing(NamedTerms):
         """Real coefficients, those of i apart, as in the exact rings."""
         found = []
         for m, c in x.terms.items():
-            value = complex(c)
-            if value.real:
-                found.append((m, value.real))
-            if value.imag:
-                found.append(((1, *m[1:]), value.imag))
+            if c.real:
+                found.append((m, self.written(c.real)))
+            if c.imag:
+                found.append(((1, *m[1:]), self.written(c.imag)))
         return found
 
     def normal(self, x: Any) -> Any:
@@ -125,13 +145,13 @@ class ComplexRing(NamedTerms):
                     lowered[h] -= common
                     m = tuple(lowered)
             terms[m] = terms.get(m, 0) + c
-        least = ROUNDING * max((abs(c) for c in terms.values()), default=0.0)
-        cut = {m: _without_rounding(complex(c), least) for m, c in terms.items()}
+        least = self.rounding * max((abs(c) for c in terms.values()), default=0.0)
+        cut = {m: _without_rounding(c, least) for m, c in terms.items()}
         return Element({m: c for m, c in cut.items() if c})
 
     def conjugate(self, x: Any) -> Any:
         partner = self.spec.partner
-        return Element({tuple([m[k] for k in partner]): complex(c).conjugate() for m, c in x.terms.items()})
+        return Element({tuple([m[k] for k in partner]): c.conjugate() for m, c in x.terms.items()})
 
     def diff(self, x: Any, generator: int) -> Any:
         return Element(
@@ -162,12 +182,37 @@ class ComplexRing(NamedTerms):
         )
 
     def extended(self, reciprocals: Sequence[tuple[str, Frozen]]) -> ComplexRing:
-        return ComplexRing(self.spec.with_reciprocals(reciprocals), self._numbers)
+        return type(self)(self.spec.with_reciprocals(reciprocals), self._numbers)
 
     def lift(self, x: Any) -> Any:
         more = len(self.spec.names) - max((len(m) for m in x.terms), default=0)
         return Element({(*m, *(0,) * more): c for m, c in x.terms.items()}) if more else x
 
 
-def _without_rounding(c: complex, least: float) -> complex:
-    return complex(c.real if abs(c.real) > least else 0.0, c.imag if abs(c.imag) > least else 0.0)
+class MpmathRing(ComplexRing):
+    """The same with `DIGITS` digits, in an mpmath context of its own; finished coefficients are SymPy floats."""
+
+    representation = "mpmath"
+    context = MPContext()
+    context.dps = DIGITS + 5
+    rounding = context.mpf(10) ** (3 - DIGITS)
+
+    def number(self, value: Any) -> Any:
+        if isinstance(value, Fraction):
+            return self.context.mpf(value.numerator) / value.denominator
+        if isinstance(value, sp.Expr):
+            return self.context.make_mpf(sp.N(value, self.context.dps)._mpf_)
+        return self.context.convert(value)
+
+    def written(self, part: Any) -> Any:
+        return sp.Float._new(part._mpf_, sp.Float("1", DIGITS)._prec)
+
+    def inverted(self, matrix: list[list[Any]]) -> list[list[Any]]:
+        return self.context.inverse(self.context.matrix(matrix)).tolist()  # type: ignore[no-any-return]
+
+
+def _without_rounding(c: Any, least: Any) -> Any:
+    """c without a part that only rounding left; a real number stays real."""
+    if abs(c.imag) <= least:
+        return c.real if abs(c.real) > least else 0
+    return c if abs(c.real) > least else c - c.real

@@ -16,7 +16,7 @@ from typing import Any
 from multiscale.algebra.polynomial import Frozen, freeze
 from multiscale.algebra.ring import Exponents, Ring
 
-__all__ = ["Coefficient", "Quotient", "finish", "reduced"]
+__all__ = ["Coefficient", "Quotient", "finish", "reduced", "vanishes"]
 
 
 @dataclass(frozen=True)
@@ -92,3 +92,8 @@ def finish(ring: Ring, x: Any) -> dict[Exponents, Coefficient]:
         if coefficient := Coefficient(real, imag):
             finished[m] = coefficient
     return finished
+
+
+def vanishes(ring: Ring, x: Any) -> bool:
+    """Whether a reduced element is zero; reciprocals of several terms are no normal form, so that they are cleared."""
+    return not x or (any(len(p) > 1 for _, p in ring.spec.reciprocals) and not finish(ring, x))

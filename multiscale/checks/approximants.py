@@ -87,6 +87,8 @@ class _Algebraic:
 class Approximant(_Algebraic):
     """A rational approximant; made by `pade`.
 
+    Called with numbers or an array, it is evaluated in double precision.
+
     Attributes
     ----------
     variable : Symbol
@@ -96,8 +98,6 @@ class Approximant(_Algebraic):
         The re-expansion agrees with the series through this power.
     numerator, denominator : Expr
         Coprime polynomials in the variable.
-
-    Called with numbers or an array, it is evaluated in double precision.
     """
 
     numerator: sp.Expr
@@ -140,6 +140,10 @@ class Approximant(_Algebraic):
 class QuadraticApproximant(_Algebraic):
     """A quadratic approximant, which can show square-root singularities; made by ``pade(…, kind="quadratic")``.
 
+    Called with numbers or an array, it is evaluated in double precision, following the series outward from x = 0. The
+    cut of a branch point runs outward along its ray, that of a near-cancelling pair joins the two points. For real x
+    the values are real, and nan beyond a branch point.
+
     Attributes
     ----------
     variable : Symbol
@@ -151,10 +155,6 @@ class QuadraticApproximant(_Algebraic):
         Polynomials in the variable.
     factor, radicand : Expr
         √(Q² − 4PR) on the sheet of the series is factor·√radicand, with radicand 1 at x = 0.
-
-    Called with numbers or an array, it is evaluated in double precision, following the series outward from x = 0. The
-    cut of a branch point runs outward along its ray, that of a near-cancelling pair joins the two points. For real x
-    the values are real, and nan beyond a branch point.
     """
 
     P: sp.Expr

@@ -46,8 +46,8 @@ class Validity:
     residual : float
         At that amplitude, what the equations of motion leave over, relative to the restoring term.
     ratios : dict
-        At that amplitude, sizes of successive terms relative to each other: {"slow flow": (|εD_1A|/|ωA|, …),
-        u(t): (|εU_1|/|U_0|, …), …}, levels that vanish left out.
+        At that amplitude, sizes of successive terms relative to each other:
+        ``{"slow flow": (|εD_1A|/|ωA|, …), u(t): (|εU_1|/|U_0|, …), …}``, levels that vanish left out.
     least : float
         The smallest amplitude within the tolerance: 0, or more where a drive leaves an error that is no smaller for a
         smaller state.

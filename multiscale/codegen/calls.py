@@ -41,9 +41,6 @@ def evaluate(tape: Tape, x: sp.Expr, symbol: Callable[[sp.Symbol], Node]) -> Nod
         return tape.call(
             "exp", tape.mul(evaluate(tape, x.exp, symbol), tape.call("log", evaluate(tape, x.base, symbol)))
         )
-    if isinstance(x, sp.Abs):
-        inside = evaluate(tape, x.args[0], symbol)
-        return tape.call("sqrt", tape.mul(inside, inside))
     if isinstance(x, sp.tan):
         return tape.div(evaluate(tape, sp.sin(x.args[0]), symbol), evaluate(tape, sp.cos(x.args[0]), symbol))
     if x.func in FUNCTIONS:

@@ -77,8 +77,8 @@ def write_module(
     ...     flow = runpy.run_path(str(ms.write_module(result, pathlib.Path(folder) / "cubic.py")))
     >>> flow["PARAMETERS"]
     ('epsilon',)
-    >>> flow["rhs"](0.0, [0.0, 2.0], *flow["parameters"](epsilon=0.1))
-    array([0.3, 0. ])
+    >>> [float(x) for x in flow["rhs"](0.0, [0.5, 2.0], *flow["parameters"](epsilon=0.5))]
+    [1.59375, -0.3984375]
     """
     source = module_source(expansion, functions=functions, namespace=namespace)
     target = Path(path)

@@ -19,7 +19,7 @@ _NEEDED = ("asarray", "broadcast_arrays", "reshape", "stack")
 
 @dataclass(frozen=True)
 class NamespaceFunction:
-    """f(t, y, *parameters) like `function`, on arrays of `namespace`, in their own precision.
+    """``f(t, y, *parameters)`` like `function`, on arrays of `namespace`, in their own precision.
 
     It is functional: no in-place writes and no branches on values, so it can be compiled, mapped and differentiated by
     libraries that trace their arrays. Shapes are those of `NumpyFunction`.

@@ -33,7 +33,7 @@ _NUMPY: dict[str, Callable[..., Any]] = {
     "conj": np.conjugate,
     **RUNTIME,
 }
-_MATH = {"sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log, "sqrt": math.sqrt}
+_MATH = {"sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log, "sqrt": math.sqrt, "absolute": abs}
 
 
 @dataclass(frozen=True)
@@ -92,7 +92,7 @@ def _compiled(text: str, functions: tuple[str, ...]) -> Callable[..., tuple[Any,
 
 @dataclass(frozen=True, repr=False)
 class NumpyFunction:
-    """f(t, y, *parameters), generated from a finished result.
+    """``f(t, y, *parameters)``, generated from a finished result.
 
     Shapes: y is (n,) or (n,) + S, and with B the broadcast of t, S and the parameters the result is ``shape`` + B, also
     where a component is constant. Values are float64 (complex128 for the complex form). Any consistent units.
@@ -145,7 +145,7 @@ class NumpyFunction:
 
     @property
     def arguments(self) -> tuple[str, ...]:
-        """("t", "y", *parameters)."""
+        """``("t", "y", *parameters)``."""
         return ("t", "y", *self.parameters)
 
     def __call__(self, t: npt.ArrayLike, y: npt.ArrayLike, *parameters: npt.ArrayLike) -> Array:
@@ -285,7 +285,7 @@ class BoundFunction:
     def _in_stages(self) -> Callable[..., tuple[Any, ...]] | None:
         """A long kernel with its coefficients worked out once."""
         function = self.function
-        if len(function.source) < LONG or function.is_complex:
+        if len(function.source) < LONG or function._scalar_kernel is None:
             return None
         from multiscale.codegen.staging import staged
 

@@ -29,6 +29,13 @@ __all__ = ["Complex", "Program"]
 Complex = tuple[Node, Node]
 
 
+def _amplitude_needed() -> EvaluationError:
+    return EvaluationError(
+        "the slow flow contains forces that are not polynomial: its coefficients depend on the amplitude, and what "
+        "needs a polynomial slow flow cannot be applied to it; integrate or solve slow_flow.to_numpy()"
+    )
+
+
 class Program:
     """A tape on which the parameters of a problem are inputs, with the operations that results are made of."""
 
@@ -63,6 +70,8 @@ class Program:
 
     def torus_mean(self, mean: TorusMean) -> Complex:
         """G, the mean of a force of several phases times e^{−iΦ}."""
+        if not self._state:
+            raise _amplitude_needed()
         if mean not in self._torus:
             pairs = [sp.symbols(f"@p{j} @q{j}", real=True) for j in range(self._computation.modes)]
             nodes = {s: n for pair, own in zip(pairs, self._state, strict=True) for s, n in zip(pair, own, strict=True)}
@@ -75,10 +84,11 @@ class Program:
 
     def _torus_value(self, mean: TorusMean) -> Complex:
         """G/A with A = ½ (p − iq)."""
+        value = self.torus_mean(mean)
         tape, (p, q) = self.tape, self._state[mean.mode]
         square = tape.add(tape.mul(p, p), tape.mul(q, q))
         inverse = tape.mul(tape.constant(2), tape.call("inverse_or_zero", square))
-        return self.multiply(self.torus_mean(mean), (tape.mul(inverse, p), tape.mul(inverse, q)))
+        return self.multiply(value, (tape.mul(inverse, p), tape.mul(inverse, q)))
 
     def set_amplitudes(self, nodes: Iterable[Node]) -> None:
         """The amplitudes a_k, which the Fourier coefficients of forces that are not polynomial depend on."""
@@ -88,10 +98,7 @@ class Program:
         if symbol in self.amplitudes:
             return self.amplitudes[symbol]
         if symbol.name.startswith("@a"):
-            raise EvaluationError(
-                "the slow flow contains forces that are not polynomial: its coefficients depend on the amplitude, and "
-                "what needs a polynomial slow flow cannot be applied to it"
-            )
+            raise _amplitude_needed()
         return self.time if symbol == self._time_symbol else self.tape.input(f"parameter {symbol.name}")
 
     def expression(self, x: sp.Expr) -> Node:
@@ -164,7 +171,7 @@ class Program:
             exponents = [0] * len(names)
             for name, e in m:
                 exponents[place[name]] = e
-            table[tuple(exponents)] = self.tape.constant(c)
+            table[tuple(exponents)] = self.tape.constant(c if isinstance(c, Fraction) else float(c))
         return self.horner(table, [self._value(name) for name in names])
 
     def quotient(self, q: Quotient) -> Node:

@@ -50,7 +50,7 @@ _SLOPES: dict[str, Callable[[Any, int, int], int]] = {
     "arccos": lambda t, x, value: _over_root(t, x, -1),
     "arctan": lambda t, x, value: t.div(t.constant(1), t.add(t.constant(1), t.mul(x, x))),
     "arcsinh": lambda t, x, value: t.div(t.constant(1), t.call("sqrt", t.add(t.constant(1), t.mul(x, x)))),
-    "gamma": lambda t, x, value: t.mul(value, t.call("digamma", x)),
+    "gamma_function": lambda t, x, value: t.mul(value, t.call("digamma", x)),
     "positive": lambda t, x, value: t.constant(0),
 }
 

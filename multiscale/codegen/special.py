@@ -26,7 +26,7 @@ Evaluate = Callable[[Tape, sp.Expr, Symbols], Node]
 
 _CALLS = {
     Inverse: "inverse_or_zero", Reciprocal: "reciprocal", Root: "root", Clipped: "clipped",
-    sp.gamma: "gamma", sp.Abs: "absolute", sp.sign: "sign", sp.tanh: "tanh",
+    sp.gamma: "gamma_function", sp.Abs: "absolute", sp.sign: "sign", sp.tanh: "tanh",
     sp.asin: "arcsin", sp.acos: "arccos", sp.atan: "arctan", sp.asinh: "arcsinh",
 }  # fmt: skip
 _HALF = Fraction(1, 2)
@@ -177,7 +177,7 @@ def _zeros(tape: Tape, alpha: Node, beta: Node, gamma: Node) -> tuple[Node, Node
     elif alpha == zero:
         middle, radius = tape.mul(tape.constant(2), tape.call("arctan", one)), beta
     else:
-        radius = tape.call("sqrt", tape.add(tape.mul(alpha, alpha), tape.mul(beta, beta)))
+        radius = tape.call("root", tape.add(tape.mul(alpha, alpha), tape.mul(beta, beta)))
         # tan(θ_0/2) = β/(R + α)
         slope = tape.mul(beta, tape.call("inverse_or_zero", tape.add(radius, alpha)))
         middle = tape.mul(tape.constant(2), tape.call("arctan", slope))

@@ -13,11 +13,8 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
-import numpy as np
-import numpy.typing as npt
-
-from multiscale.algebra.polynomial import Polynomial
-from multiscale.algebra.ring import Ring
+from multiscale.algebra.complex_ring import ComplexRing
+from multiscale.algebra.polynomial import Polynomial, freeze
 from multiscale.errors import ResonanceError
 from multiscale.linear_part import Mode, Rate
 from multiscale.linear_part.general import FrozenMatrix, Operator
@@ -25,45 +22,55 @@ from multiscale.tower import Field
 
 __all__ = ["Dense"]
 
-Complex = npt.NDArray[np.complex128]
+Numbers = list[list[Any]]
 
 
 class Dense:
-    """A `LinearPart` over a ring whose constants are complex numbers."""
+    """A `LinearPart` over a ring whose constants are floating-point numbers."""
 
-    def __init__(self, operator: Operator, bases: Sequence[Polynomial], unit: int, ring: Ring) -> None:
+    def __init__(self, operator: Operator, bases: Sequence[Polynomial], unit: int, ring: ComplexRing) -> None:
         self.operator, self._bases, self._unit, self._ring = operator, tuple(bases), unit, ring
-        self.modes = tuple(Mode(root.rate, root.shapes[k]) for root, k in operator.carried)
         self.size = len(operator.mass)
-        self._values = [self._number(ring.read(dict(base))).real / unit for base in self._bases]
+        self._values = [self._number(ring.read(dict(base))) / unit for base in self._bases]
         self._mass, self._damping, self._stiffness = (
             self._numbers(x) for x in (operator.mass, operator.damping, operator.stiffness)
         )
         self._roots = {root.rate: root for root in operator.roots}
         self._references = [root.references[k] for root, k in operator.carried]
-        self._inverses: dict[Rate, Complex] = {}
+        self._inverses: dict[Rate, Numbers] = {}
+        self.modes: tuple[Mode, ...] = tuple(Mode(root.rate, root.shapes[k]) for root, k in operator.carried)
+        if ring.representation == "mpmath":
+            # The shapes came in double precision; the border they make is good enough to find them to all digits.
+            refined = [Mode(mode.rate, self._refined(a)) for a, mode in enumerate(self.modes)]
+            self.modes, self._inverses = tuple(refined), {}
 
-    def _number(self, x: Any) -> complex:
-        value: Any = self._ring.rational(x)
-        return complex(value)
+    def _refined(self, a: int) -> tuple[Any, ...]:
+        """φ_a from L_0 φ = 0 (up to the border), ℓ_b φ = δ_ab."""
+        rate = self.modes[a].rate
+        column = [row[self.size + self.modes_at(rate).index(a)] for row in self._inverse(rate)[: self.size]]
+        return tuple(freeze(self._ring.write(self._ring.normal(self._ring.constant(x)))) for x in column)
 
-    def _numbers(self, matrix: FrozenMatrix) -> Complex:
-        return np.array([[self._number(self._ring.read(dict(x))) for x in row] for row in matrix], dtype=complex)
+    def _number(self, x: Any) -> Any:
+        return self._ring.rational(x)
 
-    def in_ring(self, ring: Ring) -> Dense:
+    def _numbers(self, matrix: FrozenMatrix) -> Numbers:
+        return [[self._number(self._ring.read(dict(x))) for x in row] for row in matrix]
+
+    def in_ring(self, ring: Any) -> Dense:
         return Dense(self.operator, self._bases, self._unit, ring)
 
-    def _turning(self, rate: Rate) -> float:
-        return float(sum(count * value for count, value in zip(rate, self._values, strict=True)))
+    def _turning(self, rate: Rate) -> Any:
+        return sum((count * value for count, value in zip(rate, self._values, strict=True)), self._ring.number(0))
 
     def value(self, rate: Rate) -> Any:
-        return self._ring.constant(self._turning(rate))  # type: ignore[arg-type]
+        return self._ring.constant(self._turning(rate))
 
-    def _matrix(self, rate: Rate) -> Complex:
-        s = 1j * self._turning(rate)
-        return np.asarray(s * s * self._mass + s * self._damping + self._stiffness)
+    def _matrix(self, rate: Rate) -> Numbers:
+        s = self._ring.number(1j) * self._turning(rate)
+        entries = zip(self._mass, self._damping, self._stiffness, strict=True)
+        return [[s * s * m + s * c + k for m, c, k in zip(*rows, strict=True)] for rows in entries]
 
-    def _applied(self, matrix: Complex, column: Sequence[Any]) -> list[Any]:
+    def _applied(self, matrix: Numbers, column: Sequence[Any]) -> list[Any]:
         ring = self._ring
         result = []
         for row in matrix:
@@ -89,30 +96,31 @@ class Dense:
         """None: numbers are divided by as they come."""
         return []
 
-    def _shape(self, mode: int) -> Complex:
-        return np.array([self._number(self._ring.read(dict(x))) for x in self.modes[mode].shape])
+    def _pushed(self, mode: int) -> list[Any]:
+        """L_0'(iω) φ of a mode."""
+        rate = self.modes[mode].rate
+        shape = [self._number(self._ring.read(dict(x))) for x in self.modes[mode].shape]
+        turn = 2 * self._ring.number(1j) * self._turning(rate)
+        entries = zip(self._mass, self._damping, strict=True)
+        return [sum((c + turn * m) * x for m, c, x in zip(*rows, shape, strict=True)) for rows in entries]
 
-    def _slope(self, rate: Rate) -> Complex:
-        return np.asarray(2j * self._turning(rate) * self._mass + self._damping)
-
-    def _inverse(self, rate: Rate) -> Complex:
+    def _inverse(self, rate: Rate) -> Numbers:
         """The inverse of L_0(ir), bordered at the rate of modes."""
         if rate not in self._inverses:
-            mirrored = tuple(-r for r in rate)
-            root = self._roots.get(rate) or self._roots.get(mirrored)
+            root = self._roots.get(rate) or self._roots.get(tuple(-r for r in rate))
             if root is not None and root.first is None:
                 raise ResonanceError(
                     f"a combination of the modes carried and the drives has exactly the frequency {root.name} of a "
                     "mode that is not carried, whose response is unbounded: add that mode to `modes`"
                 )
-            matrix, modes = self._matrix(rate), self.modes_at(rate)
-            border = np.zeros((self.size, len(modes)), dtype=complex)
-            rows = np.zeros((len(modes), self.size), dtype=complex)
-            for k, a in enumerate(modes):
-                border[:, k] = self._slope(rate) @ self._shape(a)
-                rows[k, self._references[a]] = 1
-            corner = np.zeros((len(modes), len(modes)))
-            self._inverses[rate] = np.linalg.inv(np.block([[matrix, border], [rows, corner]]))
+            matrix, modes, zero = self._matrix(rate), self.modes_at(rate), self._ring.number(0)
+            borders = [self._pushed(a) for a in modes]
+            rows = [[*row, *(border[k] for border in borders)] for k, row in enumerate(matrix)]
+            for a in modes:
+                own = [zero] * (self.size + len(modes))
+                own[self._references[a]] = self._ring.number(1)
+                rows.append(own)
+            self._inverses[rate] = self._ring.inverted(rows)
         return self._inverses[rate]
 
     def _column(self, part: Mapping[int, Any]) -> list[Any]:
@@ -122,14 +130,13 @@ class Dense:
         modes = self.modes_at(rate)
         if not modes:
             return {}
-        rows = -self._inverse(rate)[self.size :, : self.size]
+        rows = [[-x for x in row[: self.size]] for row in self._inverse(rate)[self.size :]]
         return {a: x for a, x in zip(modes, self._applied(rows, self._column(part)), strict=True) if x}
 
     def solve(self, part: Mapping[int, Any], rate: Rate) -> dict[int, Any]:
-        rows = -self._inverse(rate)[: self.size, : self.size]
-        for a in self.modes_at(rate):
-            rows[self._references[a]] = 0
-        return {k: x for k, x in enumerate(self._applied(rows, self._column(part))) if x}
+        fixed = {self._references[a] for a in self.modes_at(rate)}
+        rows = [[-x for x in row[: self.size]] for row in self._inverse(rate)[: self.size]]
+        return {k: x for k, x in enumerate(self._applied(rows, self._column(part))) if x and k not in fixed}
 
     def act(self, part: Mapping[int, Any], rate: Rate) -> dict[int, Any]:
         return {k: x for k, x in enumerate(self._applied(self._matrix(rate), self._column(part))) if x}
@@ -138,7 +145,7 @@ class Dense:
         ring = self._ring
         total: dict[int, Any] = {}
         for a, change in changes.items():
-            for k, c in enumerate(self._slope(self.modes[a].rate) @ self._shape(a)):
+            for k, c in enumerate(self._pushed(a)):
                 if c:
                     total[k] = total.get(k, ring.zero) + ring.constant(c) * change
         return {k: ring.normal(x) for k, x in total.items()}

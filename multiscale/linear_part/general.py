@@ -46,13 +46,17 @@ class Root:
 
 @dataclass(frozen=True)
 class Operator:
-    """The matrices of L_0 and its purely imaginary roots, as data; `numeric` where these have no closed form."""
+    """The matrices of L_0 and its purely imaginary roots, as data; `numeric` where these have no closed form.
+
+    `others` counts the roots off the imaginary axis.
+    """
 
     mass: FrozenMatrix
     damping: FrozenMatrix
     stiffness: FrozenMatrix
     roots: tuple[Root, ...]
     numeric: bool = False
+    others: int = 0
 
     @property
     def polynomials(self) -> list[Frozen]:

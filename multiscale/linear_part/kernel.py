@@ -18,6 +18,7 @@ from itertools import combinations
 from typing import Any
 
 from multiscale.algebra.matrices import Matrix, adjugate, applied, minor, trace_of_product
+from multiscale.algebra.quotient import vanishes
 from multiscale.algebra.ring import Ring
 
 __all__ = ["Block", "Covectors", "block_of", "covectors", "scaled_shapes", "split_at"]
@@ -57,7 +58,7 @@ def block_of(ring: Ring, matrix: Matrix, dimension: int, preferred: Sequence[int
         found = []
         for rows in combinations(range(size), dimension):
             block = split_at(ring, matrix, rows, references)
-            if block.determinant:
+            if not vanishes(ring, block.determinant):
                 found.append(block)
         if found:
             best = min(found, key=lambda b: len(ring.terms(b.determinant)))
@@ -71,7 +72,7 @@ def _others(size: int, left_out: Sequence[int]) -> list[int]:
 
 def _is_kernel(ring: Ring, matrix: Matrix, block: Block) -> bool:
     """det(L_11) L_22 = L_21 adj(L_11) L_12."""
-    return all(not x for shape in scaled_shapes(ring, matrix, block) for x in applied(ring, matrix, shape))
+    return all(vanishes(ring, x) for shape in scaled_shapes(ring, matrix, block) for x in applied(ring, matrix, shape))
 
 
 def scaled_shapes(ring: Ring, matrix: Matrix, block: Block) -> list[list[Any]]:

@@ -28,7 +28,7 @@ from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import Detuning, detuning_of
 from multiscale.problem.terms import Entry, Layout, match, tabulate
 
-__all__ = ["Canonical", "Working", "canonical_form", "completed", "hide", "working_copy"]
+__all__ = ["Canonical", "Working", "canonical_form", "completed", "hide", "in_double", "working_copy"]
 
 ONE = (((), Fraction(1)),)
 
@@ -89,6 +89,11 @@ class Working:
         self.rates = [[x.subs(symbol, value) for x in series] for series in self.rates]
         self.exact = [x.subs(symbol, value) for x in self.exact]
         self.slow = {s: x.subs(symbol, value) for s, x in self.slow.items() if s != symbol}
+
+
+def in_double(frequency: sp.Expr) -> sp.Expr:
+    """A frequency without a closed form to double precision; any other as it is."""
+    return sp.Float(frequency, 17) if frequency.is_Float else frequency
 
 
 def working_copy(prepared: Prepared, layout: Layout) -> Working:

@@ -14,7 +14,7 @@ With θ' = θ + π/2, u' = aω cos θ': a function of u' is one of u at amplitud
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import sympy as sp
 
@@ -123,25 +123,28 @@ def _pure(p: sp.Expr, m: int) -> sp.Expr:
 
 def power_coefficient(t: PowerTerm, m: int) -> sp.Expr:
     """C_m of a term without special factor."""
-    size = t.factor * AMPLITUDE ** (t.x + t.y) * FREQUENCY**t.y * (-1) ** t.r
-    if t.y == 0 and t.r == 0 and m > 1:
-        return size * _pure(t.x, m) if t.s == m % 2 else _ZERO
-    if t.x == 0 and t.s == 0 and m > 1:
-        return size * (-sp.I) ** m * _pure(t.y, m) if t.r == m % 2 else _ZERO
+    size = t.factor * AMPLITUDE ** (t.x + t.y) * FREQUENCY**t.y
+    if m > 1:
+        # One factor that is no polynomial: the other is a short sum of e^{ijθ}.
+        if t.y.is_Integer and t.y % 2 == t.r:
+            series = _laurent(replace(t, x=_ZERO, s=0), m)
+            return size * sp.Add(*(q * _pure(t.x, abs(j)) for j, q in series.items() if (j - t.s) % 2 == 0))
+        if t.x.is_Integer and t.x % 2 == t.s:
+            series = _laurent(replace(t, y=_ZERO, r=0), m)
+            parts = [(-1) ** t.r * q * sp.I**j * _pure(t.y, abs(j)) for j, q in series.items() if (j - t.r) % 2 == 0]
+            return size * sp.Add(*parts)
     c = sp.Symbol("@c")
     if t.r:
         wave = sp.Poly(sp.chebyshevu(m - 1, c) if m else _ZERO, c)
-        turned = -sp.I
+        turned = sp.I
     else:
         wave, turned = sp.Poly(sp.chebyshevt(m, c), c), sp.Integer(1)
     parts = [q * _beta(t.x + j, t.y + t.r) for (j,), q in wave.terms() if (t.s + j) % 2 == 0]
     return size * turned * sp.Add(*parts)
 
 
-def _laurent(t: PowerTerm, m: int) -> dict[int, sp.Expr] | None:
-    """cos^x θ (−sin θ)^y e^{−imθ} = Σ_j q_j e^{ijθ}; None where a power is no polynomial."""
-    if not (t.x.is_Integer and t.y.is_Integer and t.x % 2 == t.s and t.y % 2 == t.r):
-        return None
+def _laurent(t: PowerTerm, m: int) -> dict[int, sp.Expr]:
+    """cos^x θ (−sin θ)^y e^{−imθ} = Σ_j q_j e^{ijθ} for powers that are polynomials."""
     series = {-m: sp.Integer(1)}
     half, turn = sp.Rational(1, 2), sp.I / 2
     for count, up, down in ((int(t.x), half, half), (int(t.y), turn, -turn)):
@@ -211,10 +214,10 @@ def closed_form(f: sp.Expr, m: int) -> Closed | None:
         if t.special is None:
             smooth.append(power_coefficient(t, m))
             continue
+        if not (t.x.is_Integer and t.y.is_Integer and t.x % 2 == t.s and t.y % 2 == t.r):
+            return None
         series = _laurent(t, m)
         x, slope, offset = _of(t.special.args[0])  # type: ignore[misc]
-        if series is None:
-            return None
         size = t.factor * AMPLITUDE ** (t.x + t.y) * FREQUENCY**t.y
         turned = {j: size * q * ((-sp.I) ** j if x == V else 1) for j, q in series.items()}
         if isinstance(t.special, sp.Heaviside):

@@ -8,7 +8,7 @@ everything else is f. The purely imaginary roots of det L_0 are the modes; they 
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import sympy as sp
@@ -24,7 +24,7 @@ from multiscale.problem.preparation import Prepared
 from multiscale.problem.radicals import EliminatedError, Radicals
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.rows import leading_terms, linear_part, matrix
-from multiscale.problem.spectrum import Found, imaginary_roots
+from multiscale.problem.spectrum import DIGITS, Found, imaginary_roots
 from multiscale.problem.terms import Entry, Layout, show, tabulate
 
 __all__ = ["form_of"]
@@ -83,14 +83,26 @@ def coupled_form(
             working.equations = exact
             continue
         mass, damping, stiffness = (matrix(tables, reader, order) for order in (2, 1, 0))
+        _refuse_circular(modes, (mass, damping, stiffness))
         radicals, weak = _radicals(working, layout.small), _remedy(layout)
         try:
-            found = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
+            radicals.settle([*mass, *damping, *stiffness])
+            found, others = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
         except EliminatedError:
             continue
         found = [positive(f, working.hidden) for f in found]
         found = with_mode_relations(working, prepared, layout, shown, found, modes)
-        return _assembled(working, prepared, layout, shown, found, choice)
+        return _assembled(working, prepared, layout, shown, found, others, choice)
+
+
+def _refuse_circular(modes: Mapping[sp.Symbol, int], matrices: Sequence[sp.Matrix]) -> None:
+    """A frequency that a relation names cannot stand in the matrices that determine it."""
+    used = set().union(*(m.free_symbols for m in matrices))
+    if found := sorted(used & modes.keys(), key=str):
+        raise ProblemError(
+            f"a relation puts {found[0]} into the linear terms at leading order, whose natural frequency it means: "
+            "give the frequency there a symbol of its own, or the relation an explicit value"
+        )
 
 
 def _remedy(layout: Layout) -> str:
@@ -164,7 +176,7 @@ def _radicals(working: Working, small: sp.Symbol) -> Radicals:
     def name(value: sp.Expr) -> sp.Symbol:
         symbol = sp.Symbol(f"@w{len(working.numbers)}", positive=True)
         working.numbers.append(symbol)
-        working.hidden[symbol] = sp.Float(value, 17)
+        working.hidden[symbol] = sp.Float(value, DIGITS)
         return symbol
 
     return Radicals(eliminate, adjoin, working.relations, name, {b.subs(small, 0) for b in written})
@@ -176,13 +188,14 @@ def _assembled(
     layout: Layout,
     shown: Mapping[sp.Symbol, sp.Expr],
     found: list[Found],
+    others: int,
     choice: Choice,
 ) -> Canonical:
     reader, tables, bases, linear = linear_part(working, layout, shown, found)
     written = [f.shown or f.frequency for f in found]
     meant = [w.subs(working.hidden).subs(prepared.leaves.meanings) for w in written]
     roots = roots_of(linear, bases, reader, found, meant, choice)
-    operator = replace(linear.operator, roots=tuple(roots))
+    operator = replace(linear.operator, roots=tuple(roots), others=others)
     force = []
     for table in tables:
         power, leading = leading_terms(table)

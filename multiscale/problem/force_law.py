@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -12,12 +12,14 @@ import sympy as sp
 
 from multiscale.errors import EvaluationError, ProblemError
 
-__all__ = ["ForceLaw", "law_name", "laws_of"]
+__all__ = ["ForceLaw", "law_name", "laws_of", "with_calls", "without_calls"]
 
 
 @dataclass(frozen=True)
 class ForceLaw:
     """What an undefined function F in the equations stands for: ``Problem(…, laws={F: ForceLaw(function)})``.
+
+    A law that is a Python function cannot be written into a stand-alone module.
 
     Parameters
     ----------
@@ -30,8 +32,6 @@ class ForceLaw:
         phase average does not converge, and raises `EvaluationError`.
     derivative : callable, optional
         The derivative, needed only for Jacobians of the slow flow.
-
-    A law that is a Python function cannot be written into a stand-alone module.
 
     Examples
     --------
@@ -68,7 +68,12 @@ class ForceLaw:
         if not (np.isfinite(points).all() and np.isfinite(values).all() and (np.diff(points) > 0).all()):
             raise ProblemError("table: expected finite numbers with increasing arguments")
         table = _Table(tuple(points.tolist()), tuple(values.tolist()))
-        return cls(table, tuple(points[1:-1].tolist()), table.slope)
+        return cls(table, tuple(points[1:-1].tolist()), _Slope(table))
+
+    @property
+    def points(self) -> tuple[tuple[float, ...], tuple[float, ...]] | None:
+        """(x, y) of a table, None for a function."""
+        return (self.function.x, self.function.y) if isinstance(self.function, _Table) else None
 
 
 @dataclass(frozen=True)
@@ -95,6 +100,35 @@ class _Table:
         slopes = np.diff(self.y) / np.diff(self.x)
         index = np.searchsorted(self.x, self._checked(x), side="right") - 1
         return slopes[np.clip(index, 0, len(slopes) - 1)]
+
+
+@dataclass(frozen=True)
+class _Slope:
+    """The derivative of a table; equal where the tables are."""
+
+    table: _Table
+
+    def __call__(self, x: Any) -> Any:
+        return self.table.slope(x)
+
+
+class LawCall(sp.Function):  # type: ignore[misc]
+    """LawCall(name, arguments …) stands for an undefined function where an equation travels."""
+
+
+def with_calls(x: sp.Expr, names: Iterable[str]) -> sp.Expr:
+    """x with `LawCall` for the functions of these names, which do not pickle with every SymPy themselves."""
+    known = set(names)
+
+    def is_law(e: sp.Basic) -> bool:
+        return isinstance(e, sp.core.function.AppliedUndef) and str(e.func) in known
+
+    return x.replace(is_law, lambda e: LawCall(sp.Symbol(str(e.func)), *e.args)) if known else x
+
+
+def without_calls(x: sp.Expr) -> sp.Expr:
+    """The inverse of `with_calls`."""
+    return x.replace(lambda e: isinstance(e, LawCall), lambda e: sp.Function(e.args[0].name)(*e.args[1:]))
 
 
 def law_name(function: Any) -> str:

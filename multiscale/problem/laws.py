@@ -9,7 +9,7 @@ that share their coefficient, numbers apart, are one law.
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import sympy as sp
 
@@ -17,7 +17,7 @@ from multiscale.problem.reading import unsupported
 from multiscale.problem.steps import expanded
 from multiscale.problem.terms import Layout
 
-__all__ = ["LAW", "Law", "separated"]
+__all__ = ["LAW", "Law", "at_resonance", "layout_with_laws", "separated"]
 
 LAW = -1
 """What stands for the order of the derivative in the jet of a law."""
@@ -38,6 +38,10 @@ class Law:
         """The unknowns and derivatives that the force depends on."""
         real = {_real(s): jet for s, jet in layout.jets.items()}
         return sorted(real[s] for s in self.force.free_symbols if s in real)
+
+    def spelled(self, shown: Mapping[sp.Symbol, sp.Expr]) -> sp.Expr:
+        """The force as the user wrote it."""
+        return self.force.xreplace({_real(s): x for s, x in shown.items()})
 
 
 def _real(s: sp.Symbol) -> sp.Symbol:
@@ -89,6 +93,23 @@ def separated(
             plain.append(free * law.symbol)
         result.append(sp.Add(*plain))
     return result, tuple(found.values())
+
+
+def layout_with_laws(
+    layout: Layout, shown: dict[sp.Symbol, sp.Expr], laws: Sequence[Law]
+) -> tuple[Layout, dict[sp.Symbol, sp.Expr]]:
+    """Layout and spelling with the symbols of laws."""
+    real = {sp.Symbol(s.name, real=True): x for s, x in shown.items()}
+    jets = {**layout.jets, **{law.symbol: (n, LAW) for n, law in enumerate(laws)}}
+    return replace(layout, jets=jets), {**shown, **{law.symbol: law.force.xreplace(real) for law in laws}}
+
+
+def at_resonance(
+    laws: Sequence[Law], relations: Sequence[tuple[sp.Symbol, sp.Expr]], small: sp.Symbol
+) -> tuple[Law, ...]:
+    """Laws with the frequencies that relations eliminate at their leading values."""
+    values = {s: value.subs(small, 0) for s, value in relations}
+    return tuple(replace(law, force=law.force.subs(values)) for law in laws)
 
 
 def _opened(x: sp.Expr, jets: set[sp.Symbol]) -> sp.Expr:

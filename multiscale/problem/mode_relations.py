@@ -16,10 +16,10 @@ from dataclasses import replace
 import sympy as sp
 
 from multiscale.errors import ProblemError
-from multiscale.problem.canonical import Working
+from multiscale.problem.canonical import Working, in_double
 from multiscale.problem.modes import numbering
 from multiscale.problem.preparation import Prepared
-from multiscale.problem.reading import Reader
+from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import detuning_of
 from multiscale.problem.rows import leading_terms, linear_part, matrix
 from multiscale.problem.spectrum import Found
@@ -43,10 +43,14 @@ def with_mode_relations(
         raise ProblemError(f"a relation names {strange[0]}, but the equations have {len(order)} modes at leading order")
     named = {s: found[order[a]].frequency for s, a in modes.items()}
     explicit = {m: f.frequency for m, f in zip(meant, found, strict=True) if not m.is_Rational}
+    # Relations hold numbers as the decimals they print as.
+    explicit |= {decimals(in_double(m)): w for m, w in explicit.items() if m.is_Float}
 
     def read(x: sp.Expr) -> sp.Expr:
         return x.subs(named).subs(explicit)
 
+    # A relation may have put a frequency into the forces too, as into an unbalance e Ω².
+    working.equations = [read(x) for x in working.equations]
     working.rates = [[read(x) for x in series] for series in working.rates]
     working.exact = [read(x) for x in working.exact]
     by_name = {s: meant[order[a]] for s, a in modes.items()}
@@ -57,7 +61,19 @@ def with_mode_relations(
         working.detunings.append(detuning_of(None, meant[k], value.subs(by_name), layout.small, known))
         working.equations = _shifted(working.equations, layout, shown, found[k], exact)
         found[k] = replace(found[k], frequency=sp.expand(exact.subs(layout.small, 0)), shown=None)
-    return found
+    return _merged(found)
+
+
+def _merged(found: list[Found]) -> list[Found]:
+    """Roots that a relation has made equal, as one root of several modes."""
+    result: list[Found] = []
+    for f in found:
+        same = next((k for k, g in enumerate(result) if sp.expand(f.frequency - g.frequency) == 0), None)
+        if same is None:
+            result.append(f)
+        else:
+            result[same] = replace(result[same], multiplicity=result[same].multiplicity + f.multiplicity)
+    return result
 
 
 def _order(

@@ -16,6 +16,7 @@ import sympy as sp
 
 from multiscale.algebra.matrices import adjugate
 from multiscale.algebra.polynomial import Monomial, freeze
+from multiscale.algebra.quotient import vanishes
 from multiscale.algebra.reciprocals import inverse, missing
 from multiscale.algebra.ring import Exponents
 from multiscale.errors import ProblemError
@@ -145,7 +146,7 @@ def _kernel(
     block = block_of(ring, matrix, multiplicity, preferred)
     if block is not None and multiplicity > 1:
         bracket = covectors(ring, matrix, slope, block).bracket
-        block = block if adjugate(ring, bracket)[0] else None
+        block = None if vanishes(ring, adjugate(ring, bracket)[0]) else block
     if block is None:
         raise defective(frequency, multiplicity)
     if more := missing(ring, [block.determinant]):

@@ -14,10 +14,10 @@ import sympy as sp
 
 from multiscale.errors import OrderingWarning, ProblemError
 from multiscale.latex import shortened
-from multiscale.problem.canonical import Canonical
+from multiscale.problem.canonical import Canonical, in_double
 from multiscale.problem.coupled import form_of
-from multiscale.problem.force_law import ForceLaw, laws_of
-from multiscale.problem.laws import LAW, Law, separated
+from multiscale.problem.force_law import ForceLaw, laws_of, with_calls, without_calls
+from multiscale.problem.laws import Law, at_resonance, layout_with_laws, separated
 from multiscale.problem.matrices import equations_of, size_of
 from multiscale.problem.modes import Choice, modes_given, references_given
 from multiscale.problem.ordering import with_orders
@@ -264,7 +264,7 @@ class Problem:
     @property
     def natural_frequencies(self) -> tuple[sp.Expr, ...]:
         """ω of each mode at leading order, in the user's symbols: of each unknown where the unknowns are uncoupled."""
-        return self.canonical(1).frequencies
+        return tuple(map(in_double, self.canonical(1).frequencies))
 
     @property
     def frequency_names(self) -> tuple[str, ...]:
@@ -298,6 +298,11 @@ class Problem:
         frequencies = self.canonical(1).named_frequencies
         return {s: frequencies[a] for s, a in self._mode_symbols.items() if a < len(frequencies)}
 
+    @property
+    def mode_names(self) -> frozenset[sp.Symbol]:
+        """The symbols of relations that name natural frequencies of coupled equations: omega_1, omega_2, …"""
+        return frozenset(self._mode_symbols) if self.canonical(1).operator is not None else frozenset()
+
     @cached_property
     def _mode_symbols(self) -> dict[sp.Symbol, int]:
         """{omega_1: 0, …} for the symbols of relations that name natural frequencies of coupled equations."""
@@ -314,7 +319,7 @@ class Problem:
             shown = _jets(self.unknowns, self.time) | prepared.shown
             if self.ordering is not None:
                 shown[self.small] = sp.Integer(1)
-            layout, shown = _with_laws(self._layout, shown, prepared.laws)
+            layout, shown = layout_with_laws(self._layout, shown, prepared.laws)
             names = list(self.unknowns)
             form = form_of(prepared, layout, shown, names, self._choice, self._mode_symbols)
             if prepared.laws and form.operator is not None:
@@ -388,7 +393,7 @@ class Problem:
             order,
             self._mode_symbols,
         )
-        return replace(prepared, laws=_at_resonance(laws, prepared, self.small))
+        return replace(prepared, laws=at_resonance(laws, prepared.relations.values, self.small))
 
     @property
     def _powers(self) -> dict[sp.Symbol, int]:
@@ -459,7 +464,7 @@ class Problem:
         if self.references:
             options["references"] = {a: self.unknowns.index(u) for a, u in self.references.items()}
         options["resonances"] = [(self.unknowns.index(x) if x in self.unknowns else x, y) for x, y in self.resonances]
-        return _rebuilt, (self._hidden(), functions, options)
+        return _rebuilt, ([with_calls(x, self.laws) for x in self._hidden()], functions, options)
 
     def __repr__(self) -> str:
         names = ", ".join(str(u) for u in self.unknowns)
@@ -469,21 +474,6 @@ class Problem:
     def _repr_latex_(self) -> str:
         rows = r" \\ ".join(f"{shortened(x)} &= 0" for x in self.equations)
         return rf"$\displaystyle \begin{{aligned}}{rows}\end{{aligned}}$"
-
-
-def _with_laws(
-    layout: Layout, shown: dict[sp.Symbol, sp.Expr], laws: Sequence[Law]
-) -> tuple[Layout, dict[sp.Symbol, sp.Expr]]:
-    """Layout and spelling with the symbols of laws."""
-    real = {sp.Symbol(s.name, real=True): x for s, x in shown.items()}
-    jets = {**layout.jets, **{law.symbol: (n, LAW) for n, law in enumerate(laws)}}
-    return replace(layout, jets=jets), {**shown, **{law.symbol: law.force.xreplace(real) for law in laws}}
-
-
-def _at_resonance(laws: Sequence[Law], prepared: Prepared, small: sp.Symbol) -> tuple[Law, ...]:
-    """Laws with the frequencies that relations eliminate at their leading values."""
-    values = {s: value.subs(small, 0) for s, value in prepared.relations.values}
-    return tuple(replace(law, force=law.force.subs(values)) for law in laws)
 
 
 def _harmonics(given: Any) -> int | None:
@@ -510,7 +500,7 @@ def _rebuilt(
     if "references" in options:
         options = options | {"references": {a: unknowns[k] for a, k in options["references"].items()}}
     jets = _jets(unknowns, options["time"])
-    return Problem([x.xreplace(jets) for x in hidden], unknowns, **options)
+    return Problem([without_calls(x).xreplace(jets) for x in hidden], unknowns, **options)
 
 
 def read_statement(equations: Any, unknowns: Any) -> tuple[tuple[sp.Expr, ...], tuple[sp.Expr, ...], sp.Symbol]:

@@ -17,15 +17,14 @@ import sympy as sp
 from multiscale.algebra.polynomial import Frozen
 from multiscale.clock import Modulus
 from multiscale.forces.polynomial import Term
-from multiscale.linear_part import Rate
 from multiscale.problem.canonical import Canonical
 from multiscale.problem.closed_forms import AMPLITUDE, FREQUENCY, PowerTerm, U, V, power_terms
 from multiscale.problem.guarded import Power
 from multiscale.problem.homogeneous import DEFAULT_HARMONICS, Degree, coefficients, degree_of, roughness, slope, tail
-from multiscale.problem.lattice import saturated_basis
 from multiscale.problem.laws import LAW, Law
 from multiscale.problem.projection import Harmonic, TorusMean, amplitude_of, harmonic, numeric_harmonic
 from multiscale.problem.reading import unsupported
+from multiscale.problem.several_phases import several_phases, torus_means, turning_of
 from multiscale.problem.terms import Layout
 
 __all__ = ["with_projections"]
@@ -83,8 +82,11 @@ def with_projections(
         if not places:
             continue
         power = min(t.power for _, t in places)
-        if (several := _several(law, canonical, layout)) is not None:
-            _add_torus(found, n, law, several, places, order, canonical, layout, shown)
+        if (several := several_phases(law, canonical, layout)) is not None:
+            for mean in torus_means(n, law, several, places, order, canonical, layout, shown):
+                found.torus.append(mean)
+                for name, symbol in zip((mean.real, mean.imag), mean.symbols, strict=True):
+                    found.meanings[name] = found.numeric[name] = symbol
             continue
         stated = _stated(n, law, layout, shown)
         if order > power:
@@ -120,27 +122,12 @@ def with_projections(
     )
 
 
-def _spelled(law: Law, shown: Mapping[sp.Symbol, sp.Expr]) -> sp.Expr:
-    return law.force.xreplace({sp.Symbol(s.name, real=True): x for s, x in shown.items()})
-
-
 def _stated(n: int, law: Law, layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]) -> _Stated:
     jets = law.jets(layout)
     k = jets[0][0]
     real = {jet: sp.Symbol(s.name, real=True) for s, jet in layout.jets.items()}
     along = {real[k, 0]: U, real[k, 1]: V, real[k, 2]: -(FREQUENCY**2) * U}
-    return _Stated(n, k, law.force.xreplace(along), _spelled(law, shown), (k, 2) in jets)
-
-
-def _turning(coefficient: Frozen, canonical: Canonical) -> set[Rate]:
-    """The rates of the drives that multiply a law."""
-    found = set()
-    for monomial, _ in coefficient:
-        powers = dict(monomial)
-        counts = [powers.get(d.generator, 0) - powers.get(f"{d.generator}~", 0) for d in canonical.drives]
-        size = len(canonical.bases.values)
-        found.add(tuple(sum(n * d.rate[b] for n, d in zip(counts, canonical.drives, strict=True)) for b in range(size)))
-    return found
+    return _Stated(n, k, law.force.xreplace(along), law.spelled(shown), (k, 2) in jets)
 
 
 def _numbers(canonical: Canonical, mode: int, places: Sequence[tuple[int, Term]], harmonics: int | None) -> list[int]:
@@ -150,83 +137,13 @@ def _numbers(canonical: Canonical, mode: int, places: Sequence[tuple[int, Term]]
     own = rates[mode]
     pivot = next(b for b, x in enumerate(own) if x)
     for k, term in places:
-        for turning in _turning(term.coefficient, canonical):
+        for turning in turning_of(term.coefficient, canonical):
             for sign in (1, -1):
                 target = tuple(sign * y - x for x, y in zip(turning, rates[k], strict=True))
                 m, rest = divmod(target[pivot], own[pivot])
                 if not rest and all(m * x == y for x, y in zip(own, target, strict=True)):
                     wanted.add(abs(m))
     return sorted(wanted)
-
-
-def _several(law: Law, canonical: Canonical, layout: Layout) -> tuple[int, ...] | None:
-    """The modes and hard drives of the leading motion of a law, where they are more than one mode alone."""
-    modes = sorted({k for k, _ in law.jets(layout)})
-    drives = set()
-    for k in modes:
-        for term in canonical.force[k]:
-            if not term.power and not term.factors:
-                names = {name.removesuffix("~") for monomial, _ in term.coefficient for name, _ in monomial}
-                drives |= {index for index, d in enumerate(canonical.drives) if d.generator in names}
-                drives |= {-1} if not all(any("@" in g for g, _ in m) for m, _ in term.coefficient) else set()
-    if len(modes) == 1 and not drives:
-        return None
-    return (*modes, *(len(canonical.force) + index for index in sorted(drives - {-1})))
-
-
-def _add_torus(
-    found: _Found,
-    n: int,
-    law: Law,
-    generators: tuple[int, ...],
-    places: Sequence[tuple[int, Term]],
-    order: int,
-    canonical: Canonical,
-    layout: Layout,
-    shown: Mapping[sp.Symbol, sp.Expr],
-) -> None:
-    rates = [*canonical.bases.rates, *(d.rate for d in canonical.drives)]
-    modes = len(canonical.force)
-
-    def refuse(reason: str, remedy: str) -> Exception:
-        return unsupported(_spelled(law, shown), f"a force of several phases {reason}", remedy)
-
-    moving = [rates[g] for g in generators if g >= modes and any(rates[g])]
-    if moving and sp.Matrix(moving).rank() < len(moving):
-        raise refuse("meets drives of nearly the same frequency, whose beats it cannot average", "Keep one of them")
-    if order > min(t.power for _, t in places):
-        raise refuse("is averaged at its leading order only", f"Use order={min(t.power for _, t in places)}")
-    if any(any(rate) for _, t in places for rate in _turning(t.coefficient, canonical)):
-        raise refuse("is multiplied by a drive", "Such a product is averaged for forces of one oscillator only")
-    real = {jet: sp.Symbol(s.name, real=True) for s, jet in layout.jets.items()}
-    for k in dict.fromkeys(k for k, _ in places):
-        involved = tuple(sorted({*generators, k}))
-        names = f"@T{n}.{k}c", f"@T{n}.{k}s"
-        mean = TorusMean(
-            n,
-            k,
-            *names,
-            law.force,
-            tuple((real[jet], jet) for jet in law.jets(layout)),
-            involved,
-            _zero_combinations(rates, involved),
-        )
-        found.torus.append(mean)
-        for name, symbol in zip(names, mean.symbols, strict=True):
-            found.meanings[name] = found.numeric[name] = symbol
-
-
-def _zero_combinations(rates: Sequence[Rate], generators: Sequence[int]) -> tuple[tuple[int, ...], ...]:
-    """A basis of the integer combinations of moving generators whose rate is zero."""
-    moving = [g for g in generators if any(rates[g])]
-    rows = []
-    for vector in sp.Matrix([rates[g] for g in moving]).T.nullspace():
-        scale = sp.ilcm(*(x.q for x in vector))
-        row = [0] * len(rates)
-        for g, x in zip(moving, vector, strict=True):
-            row[g] = int(x * scale)
-        rows.append(tuple(row))
-    return tuple(saturated_basis(rows, len(rates))) if rows else ()
 
 
 def _add_functions(found: _Found, law: _Stated, numbers: Sequence[int], canonical: Canonical, theta: sp.Symbol) -> None:

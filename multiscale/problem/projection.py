@@ -151,41 +151,53 @@ def _part(form: Closed, smooth: sp.Expr, k: int) -> Closed:
     return Closed(smooth, tuple(steps))
 
 
+def _parted(g: sp.Expr, m: int) -> tuple[sp.Expr, sp.Expr]:
+    """(the terms whose C_m has a closed form, the others)."""
+    closed: list[sp.Expr] = []
+    others: list[sp.Expr] = []
+    for term in sp.Add.make_args(g):
+        (others if closed_form(term, m) is None else closed).append(term)
+    return sp.Add(*closed), sp.Add(*others)
+
+
 def harmonic(g: sp.Expr, m: int, theta: sp.Symbol) -> tuple[sp.Expr, sp.Expr]:
     """Real and imaginary part of F_m as formulas in `AMPLITUDE` and `FREQUENCY`."""
-    form, scale = closed_form(g, m), (2 / AMPLITUDE) ** m
-    if form is None:
-        real, imag = _averaged(g, m, theta)
-    else:
-        real, imag = complex_parts(form.smooth)
-        real, imag = (_shown(_part(form, part, k), scale) for k, part in enumerate((real, imag)))
-        return real, imag
-    return scale * real, scale * imag
+    closed, others = _parted(g, m)
+    form, scale = closed_form(closed, m), (2 / AMPLITUDE) ** m
+    assert form is not None
+    real, imag = complex_parts(form.smooth)
+    real, imag = (_shown(_part(form, part, k), scale) for k, part in enumerate((real, imag)))
+    if others != 0:
+        averaged = _averaged(others, m, theta)
+        real, imag = real + scale * averaged[0], imag + scale * averaged[1]
+    return real, imag
 
 
 def numeric_harmonic(g: sp.Expr, m: int, theta: sp.Symbol) -> tuple[sp.Expr, sp.Expr]:
     """The same for evaluation at any amplitude ≥ 0."""
-    if closed_form(g, m) is None:
-        smooth = not g.has(*NONSMOOTH)
-        if m == 1 and smooth:
-            return _by_parts_averaged(g, theta)
-        real, imag = _averaged(g, m, theta)
+    closed, others = _parted(g, m)
+    real, imag = complex_parts(_numeric_closed(closed, m))
+    if others != 0 and m == 1 and not others.has(*NONSMOOTH):
+        averaged = _by_parts_averaged(others, theta)
+    else:
         scale = (2 * Inverse(AMPLITUDE)) ** m if m else sp.Integer(1)
-        return scale * real, scale * imag
-    # Waves by parts, which leaves no division by the amplitude; powers and thresholds directly.
+        averaged = tuple(scale * x for x in _averaged(others, m, theta)) if others != 0 else (0, 0)
+    return real + averaged[0], imag + averaged[1]
+
+
+def _numeric_closed(g: sp.Expr, m: int) -> sp.Expr:
+    """F_m of a force with a closed form: waves by parts, which divides by no amplitude, powers and steps directly."""
     waves: list[sp.Expr] = []
     rest: list[sp.Expr] = []
     for term in sp.Add.make_args(with_steps(g, (U, V))):
         (waves if m == 1 and not term.has(sp.Heaviside, sp.Abs, sp.sign) else rest).append(term)
-    total = sp.Integer(0)
+    total = _by_parts(sp.Add(*waves)) if waves else sp.Integer(0)
     if rest:
         form = closed_form(sp.Add(*rest), m)
         assert form is not None
-        smooth_part = sp.expand(form.smooth * (2 / AMPLITUDE) ** m, power_base=False, power_exp=False, log=False)
-        total += guarded(smooth_part, AMPLITUDE) + _guarded_steps(form, m)
-    if waves:
-        total += _by_parts(sp.Add(*waves))
-    return complex_parts(total)
+        smooth = sp.expand(form.smooth * (2 / AMPLITUDE) ** m, power_base=False, power_exp=False, log=False)
+        total += guarded(smooth, AMPLITUDE) + _guarded_steps(form, m)
+    return total
 
 
 def _by_parts(g: sp.Expr) -> sp.Expr:

@@ -8,7 +8,7 @@ Square roots of rational numbers stay as they are: the reader splits them into r
 
 from __future__ import annotations
 
-from collections.abc import Callable, Container, Sequence
+from collections.abc import Callable, Container, Iterable, Sequence
 
 import sympy as sp
 
@@ -50,6 +50,14 @@ class Radicals:
         if square.is_number:
             return not square.is_Rational
         return any(s in square.free_symbols for s, _ in self._relations)
+
+    def settle(self, entries: Iterable[sp.Expr]) -> None:
+        """Square roots of parameters in L_0 become symbols too, √k beside k = √k². Raises `EliminatedError`."""
+        for p in sorted({p for x in entries for p in x.atoms(sp.Pow)}, key=str):
+            if not p.exp.is_Rational or p.exp.q != 2 or not p.base.free_symbols:
+                continue
+            if self._eliminate(sp.Symbol(f"sqrt({p.base})", positive=True), p.base):
+                raise EliminatedError
 
     def number(self, value: sp.Expr) -> sp.Expr:
         """A symbol for a number without a closed form."""

@@ -18,6 +18,7 @@ from dataclasses import dataclass
 from typing import Any
 
 import sympy as sp
+from sympy.polys.matrices import DomainMatrix
 
 from multiscale.errors import MultiscaleError, ProblemError
 from multiscale.problem.radicals import Radicals
@@ -29,7 +30,7 @@ X = sp.Symbol("@x")
 S = sp.Symbol("@s")
 
 
-DIGITS = 30
+DIGITS = 60
 """Digits of frequencies without a closed form."""
 
 
@@ -49,12 +50,12 @@ def imaginary_roots(
     radical: Radicals,
     names: Sequence[sp.Expr],
     weak: str,
-) -> list[Found]:
-    """The frequencies of all oscillations that neither grow nor decay; raises `ProblemError` where there are none.
+) -> tuple[list[Found], int]:
+    """The frequencies of all oscillations that neither grow nor decay, and the number of roots off the imaginary axis.
 
-    `weak` says how a term is made small.
+    `weak` says how a term is made small. Raises `ProblemError` where nothing oscillates.
     """
-    even, odd = _parts(mass, damping, stiffness)
+    even, odd, back = _parts(mass, damping, stiffness)
     if even.is_zero and odd.is_zero:
         missing = [u for k, u in enumerate(names) if not any((*mass[:, k], *damping[:, k], *stiffness[:, k]))]
         hint = f"{missing[0]} does not stand in them; " if missing else ""
@@ -72,11 +73,12 @@ def imaginary_roots(
     common = sp.gcd(even, odd) if not odd.is_zero else even
     found: list[Found] = []
     for factor, multiplicity in common.factor_list()[1]:
-        for w in _frequencies(factor, radical):
+        for w in _frequencies(factor, back, radical):
             found.append(Found(w[0], multiplicity, w[1]) if isinstance(w, tuple) else Found(w, multiplicity))
     if not found:
         raise _nothing_oscillates(_shown(even, odd), damping, names, weak)
-    return found
+    degree = max(2 * even.degree(), -1 if odd.is_zero else 2 * odd.degree() + 1)
+    return found, degree - 2 * sum(f.multiplicity for f in found)
 
 
 def _nothing_oscillates(
@@ -102,50 +104,67 @@ def _shown(even: sp.Poly, odd: sp.Poly) -> sp.Expr:
     return sp.expand(even.as_expr().subs(X, -(s**2)) + s * odd.as_expr().subs(X, -(s**2)))
 
 
-def _parts(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> tuple[sp.Poly, sp.Poly]:
-    """E(−x) and O(−x) of det L_0(s) = E(s²) + s O(s²), as polynomials in x."""
+def _parts(
+    mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix
+) -> tuple[sp.Poly, sp.Poly, dict[sp.Expr, sp.Expr]]:
+    """E(−x) and O(−x) of det L_0(s) = E(s²) + s O(s²), as polynomials in x, and what symbols for leaves stand for."""
     size = mass.shape[0]
     entries = [[S**2 * mass[i, j] + S * damping[i, j] + stiffness[i, j] for j in range(size)] for i in range(size)]
     opaque = _opaque(entries)
-    radicals = sorted({x for row in entries for e in row for x in e.atoms(sp.Pow) if _is_root(x)}, key=str)
-    plain = [[e.xreplace(opaque) for e in row] for row in entries]
-    determinant = sp.Matrix(plain).det(method="berkowitz")
-    polynomial = sp.Poly(sp.expand(determinant), S)
+    radicals = sorted((x for x in opaque if _is_root(x)), key=str)
+    plain = DomainMatrix.from_list_sympy(size, size, [[e.xreplace(opaque) for e in row] for row in entries])
+    # Without division over polynomials: the constant term of the characteristic polynomial.
+    determinant = plain.domain.to_sympy(plain.charpoly()[-1]) * (-1) ** size
     even, odd = sp.Integer(0), sp.Integer(0)
-    for (power,), c in polynomial.terms():
+    for (power,), c in sp.Poly(determinant, S).terms():
         term = c * (-X) ** (power // 2)
         even, odd = (even + term, odd) if power % 2 == 0 else (even, odd + term)
     back = {v: k for k, v in opaque.items()}
-    # Parameters stand in the coefficient domain, so that factors are those over the field of all of them.
-    options: dict[str, object] = {"extension": radicals} if radicals else {"field": True}
-    even_part, odd_part = (sp.Poly(sp.expand(x.xreplace(back)), X, **options) for x in (even, odd))
-    return even_part, odd_part
+    even, odd = (sp.expand(x.xreplace(back)) for x in (even, odd))
+    radicals = [r for r in radicals if any(r in {_leaf(p) for p in x.atoms(sp.Pow)} for x in (even, odd))]
+    # Parameters stand in the coefficient domain, so that factors are those over the field of all of them. Beside
+    # parameters radicals count as independent: a factor may then be missed, but none is wrong.
+    options: dict[str, object] = {"field": True}
+    if radicals and (even.free_symbols | odd.free_symbols) == {X}:
+        options = {"extension": radicals}
+    elif radicals:
+        even, odd = (x.xreplace(opaque) for x in (even, odd))
+    return sp.Poly(even, X, **options), sp.Poly(odd, X, **options), back
 
 
 def _is_root(x: sp.Expr) -> bool:
-    return bool(x.base.is_Rational and not x.exp.is_Integer)
+    return bool(x.is_Pow and x.base.is_Rational and not x.exp.is_Integer)
+
+
+def _leaf(x: sp.Expr) -> sp.Expr:
+    """√2 of √2³: the radical that all powers of it share."""
+    return x.base ** sp.Rational(1, x.exp.q) if x.exp.is_Rational else x
 
 
 def _opaque(entries: list[list[sp.Expr]]) -> dict[sp.Expr, sp.Expr]:
-    """Functions of parameters and other leaves as symbols while the determinant is worked out."""
-    found = {f for row in entries for e in row for f in e.atoms(sp.Function) | e.atoms(sp.NumberSymbol)}
+    """Radicals, functions of parameters and other leaves as symbols while the determinant is worked out."""
+    found: set[sp.Expr] = set()
+    for e in (e for row in entries for e in row):
+        found |= e.atoms(sp.Function) | e.atoms(sp.NumberSymbol)
+        found |= {_leaf(p) for p in e.atoms(sp.Pow) if p.exp.is_Rational and not p.exp.is_Integer}
+        found |= {p for p in e.atoms(sp.Pow) if not p.exp.is_Rational}
     return {f: sp.Dummy(f"leaf{k}") for k, f in enumerate(sorted(found, key=str))}
 
 
-def _frequencies(factor: sp.Poly, radical: Radicals) -> list[Any]:
+def _frequencies(factor: sp.Poly, back: dict[sp.Expr, sp.Expr], radical: Radicals) -> list[Any]:
     """ω, or (ω, its form to print), for the positive roots ω² of an irreducible factor."""
     if factor.degree() == 1:
-        a, b = factor.all_coeffs()
+        a, b = (c.xreplace(back) for c in factor.all_coeffs())
         square = sp.cancel(-b / a)
         return [] if square.is_nonpositive else [radical(square)]
     if factor.degree() == 2:
-        a, b, c = factor.all_coeffs()
+        a, b, c = (c.xreplace(back) for c in factor.all_coeffs())
         return _pair(sp.cancel(-b / a), sp.cancel(c / a), radical)
     if factor.free_symbols_in_domain:
         raise ProblemError(
             f"the frequencies are the roots of {factor.as_expr().subs(X, sp.Symbol('omega') ** 2)} = 0, of degree "
             f"{factor.degree()} in omega**2, which has no closed form: give numbers for the parameters of the linear "
-            "part, or use modal coordinates"
+            "part, or write one of them in terms of a frequency (solve det L_0(i*omega) = 0 for it)"
         )
     squares = [r for r in sp.Poly(factor, X).nroots(n=DIGITS, maxsteps=500) if r.is_real and r > 0]
     return [radical.number(sp.sqrt(x)) for x in squares]

@@ -116,7 +116,7 @@ class Observable:
         return sp.Add(*terms)
 
     def to_numpy(self) -> NumpyFunction:
-        """f(t, y, *parameters) of shape B, y the slow state, Cartesian in the rotating frame."""
+        """``f(t, y, *parameters)`` of shape B, y the slow state, Cartesian in the rotating frame."""
         from multiscale.codegen.functions import observable_function
 
         known = {*self.expansion.problem.parameters, self.expansion.problem.small}

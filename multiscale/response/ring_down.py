@@ -117,15 +117,22 @@ def ring_down(
     )
     if not done.success:
         raise EvaluationError(f"the slow flow cannot be integrated over the times asked for: {done.message}")
-    stop = _stop(flow, done)
+    stop, exponent = _stop(flow, done)
     count = done.y.shape[1]
     amplitude, phase = np.zeros(len(times)), np.zeros(len(times))
     amplitude[:count], phase[:count] = np.exp(done.y[0]), done.y[1]
-    lost = half_period_lost(times[0], first) <= 0
-    until = times[0] if lost else (done.t_events[1][0] if len(done.t_events[1]) else math.inf)
+    if half_period_lost(times[0], first) <= 0:
+        until = float(times[0])
+    elif len(done.t_events[1]):
+        until = float(done.t_events[1][0])
+    elif stop is not None:
+        # Below the floor: with f ~ −a^p the loss is the amplitude (half a period)/(1 − p) before the stop.
+        until = stop - math.pi / float(frequency(times[-1], [0.0, 0.0])) / (1 - exponent)
+    else:
+        until = math.inf
     # A = ½ a e^{iβ} = ½ (p − iq).
     state = np.array([amplitude * np.cos(phase), -amplitude * np.sin(phase)])
-    return RingDown(times, state, amplitude, stop, float(until))
+    return RingDown(times, state, amplitude, stop, until)
 
 
 def _integrator() -> Any:
@@ -136,17 +143,17 @@ def _integrator() -> Any:
     return solve_ivp
 
 
-def _stop(flow: Any, done: Any) -> float | None:
-    """The time at the floor plus what is left of the way, ∫ da/|f| with f ~ −a^p; None for p ≥ 1 (viscous decay)."""
+def _stop(flow: Any, done: Any) -> tuple[float | None, float]:
+    """(time, p): time at the floor plus what is left of the way, ∫ da/|f| with f ~ −a^p; None for p ≥ 1 (viscous)."""
     if not len(done.t_events[0]):
-        return None
+        return None, math.nan
     time, (logarithm, phase) = float(done.t_events[0][0]), done.y_events[0][0]
     amplitude = math.exp(logarithm)
     rate, above = (float(flow(time, [x, phase])[0]) for x in (amplitude, 2 * amplitude))
     exponent = math.log2(above / rate)
     if exponent > 1 - 1e-6:
-        return None
-    return time + amplitude / (-rate * (1 - exponent))
+        return None, exponent
+    return time + amplitude / (-rate * (1 - exponent)), exponent
 
 
 def _checked(

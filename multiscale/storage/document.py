@@ -1,8 +1,8 @@
 """An expansion as one JSON text.
 
     {"format": …, "version": 1, "library": …, "expressions": [nodes], "problem": {references},
-     "order": N, "amplitude": …, "tolerance": …, "generators": [names], "reciprocals": …, "fields": …, "changes": …,
-     "digest": SHA-256 of the rest}
+     "order": N, "amplitude": …, "tolerance": …, "representation": …, "generators": [names],
+     "reciprocals": …, "fields": …, "changes": …, "digest": SHA-256 of the rest}
 
 The problem is stored as stated and the levels as exact polynomials; everything else follows from these two.
 """
@@ -15,16 +15,14 @@ import warnings
 from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any
 
-import sympy as sp
-
 from multiscale.algebra.polynomial import Frozen
 from multiscale.computed import Snapshot, restore
 from multiscale.errors import MultiscaleError, OrderingWarning, StorageError
 from multiscale.expansion import Expansion
-from multiscale.problem import Problem
 from multiscale.storage.expressions import Reader, Writer
-from multiscale.storage.limits import CHARACTERS, checked_name, integer, refuse, sequence
+from multiscale.storage.limits import CHARACTERS, field, hexadecimal, integer, refuse, sequence
 from multiscale.storage.polynomials import PolynomialReader, PolynomialWriter
+from multiscale.storage.statement import read_problem, written_problem
 
 if TYPE_CHECKING:
     from collections.abc import Iterable
@@ -72,10 +70,11 @@ def to_json(expansion: Expansion) -> str:
         "format": FORMAT,
         "version": VERSION,
         "library": __version__,
-        "problem": _written_problem(expansion.problem, expressions),
+        "problem": written_problem(expansion.problem, expressions),
         "order": expansion.order,
         "amplitude": expansion.amplitude,
         "tolerance": float(expansion.tolerance).hex(),
+        "representation": snapshot.representation,
         "reciprocals": [[name, polynomials.rows(p)] for name, p in snapshot.reciprocals],
         "fields": [[polynomials.rows(p) for p in level] for level in snapshot.fields],
         "changes": [[polynomials.rows(p) for p in level] for level in snapshot.changes],
@@ -91,19 +90,6 @@ def _spelled(document: Mapping[str, Any]) -> str:
 def _digest(document: Mapping[str, Any]) -> str:
     """Tells damage, not malice: whoever alters a text can renew it."""
     return hashlib.sha256(_spelled(document).encode()).hexdigest()
-
-
-def _written_problem(problem: Problem, into: Writer) -> dict[str, Any]:
-    written: dict[str, Any] = {
-        "equations": [into.node(x) for x in problem.equations],
-        "unknowns": [into.node(x) for x in problem.unknowns],
-        "resonances": [[into.node(x), into.node(y)] for x, y in problem.resonances],
-    }
-    if problem.ordering is None:
-        written["small"] = into.node(problem.small)
-    else:
-        written["ordering"] = [[into.node(x), q] for x, q in problem.ordering.items()]
-    return written
 
 
 def from_json(text: str) -> Expansion:
@@ -133,9 +119,9 @@ def from_json(text: str) -> Expansion:
     multiscale.errors.StorageError: the text is not a stored expansion of this library: it has no field 'format'
     """
     document = _document(text)
-    expressions, polynomials = Reader(_field(document, "expressions")), PolynomialReader(_field(document, "generators"))
-    order = integer(_field(document, "order"), "the order", 0, 10_000)
-    amplitude = _field(document, "amplitude")
+    expressions, polynomials = Reader(field(document, "expressions")), PolynomialReader(field(document, "generators"))
+    order = integer(field(document, "order"), "the order", 0, 10_000)
+    amplitude = field(document, "amplitude")
     if amplitude not in ("fundamental", "peak"):
         raise refuse(f"amplitude is {str(amplitude)[:40]!r}")
     snapshot = _snapshot(document, polynomials)
@@ -144,7 +130,7 @@ def from_json(text: str) -> Expansion:
     try:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore", OrderingWarning)  # given when the problem was stated
-            problem = _read_problem(_field(document, "problem"), expressions)
+            problem = read_problem(field(document, "problem"), expressions)
         computation = restore(problem.canonical(max(order, 1)), snapshot)
     except StorageError:
         raise
@@ -166,14 +152,14 @@ def _document(text: Any) -> Mapping[str, Any]:
         raise refuse(f"it is not JSON ({error})") from None
     if not isinstance(document, dict):
         raise refuse("it is no JSON object")
-    if _field(document, "format") != FORMAT:
+    if field(document, "format") != FORMAT:
         raise refuse(f"its format is {str(document['format'])[:40]!r}, expected {FORMAT!r}")
-    version = integer(_field(document, "version"), "the version", 1)
+    version = integer(field(document, "version"), "the version", 1)
     if version > VERSION:
         raise StorageError(
             f"the text is of version {version}, this library reads up to version {VERSION}: install a newer one"
         )
-    if _field(document, "digest") != _digest({name: x for name, x in document.items() if name != "digest"}):
+    if field(document, "digest") != _digest({name: x for name, x in document.items() if name != "digest"}):
         raise refuse("its digest does not fit, so it was damaged on the way")
     return document
 
@@ -182,17 +168,8 @@ def _no_constant(name: str) -> Any:
     raise ValueError(f"{name} is not a number")
 
 
-def _field(document: Mapping[str, Any], name: str) -> Any:
-    if not isinstance(document, dict) or name not in document:
-        raise refuse(f"it has no field {name!r}")
-    return document[name]
-
-
 def _tolerance(document: Mapping[str, Any]) -> float:
-    try:
-        value = float.fromhex(_field(document, "tolerance"))
-    except (TypeError, ValueError, OverflowError):
-        raise refuse("the tolerance is not a hexadecimal number") from None
+    value = hexadecimal(field(document, "tolerance"), "the tolerance")
     if not 0 <= value < 1e6:
         raise refuse(f"the tolerance is {value}")
     return value
@@ -200,33 +177,19 @@ def _tolerance(document: Mapping[str, Any]) -> float:
 
 def _snapshot(document: Mapping[str, Any], polynomials: PolynomialReader) -> Snapshot:
     def levels(name: str) -> tuple[tuple[Frozen, ...], ...]:
-        return tuple(_frozen(sequence(x, name), polynomials) for x in sequence(_field(document, name), name))
+        return tuple(_frozen(sequence(x, name), polynomials) for x in sequence(field(document, name), name))
 
     reciprocals = []
-    for pair in sequence(_field(document, "reciprocals"), "the reciprocals"):
+    for pair in sequence(field(document, "reciprocals"), "the reciprocals"):
         name, rows = sequence(pair, "a reciprocal", 2)
         if not isinstance(name, str):
             raise refuse(f"{str(name)[:40]!r} where the name of a reciprocal was expected")
         reciprocals.append((name, polynomials.polynomial(rows)))
-    return Snapshot(tuple(reciprocals), levels("fields"), levels("changes"))
+    representation = field(document, "representation")
+    if representation not in ("auto", "complex", "mpmath"):
+        raise refuse(f"its representation is {str(representation)[:40]!r}")
+    return Snapshot(tuple(reciprocals), levels("fields"), levels("changes"), representation)
 
 
 def _frozen(rows: Iterable[Any], polynomials: PolynomialReader) -> tuple[Frozen, ...]:
     return tuple(polynomials.polynomial(x) for x in rows)
-
-
-def _read_problem(stored: Any, expressions: Reader) -> Problem:
-    def several(name: str) -> list[sp.Expr]:
-        return [expressions.scalar(k) for k in sequence(_field(stored, name), name)]
-
-    unknowns = several("unknowns")
-    for u in unknowns:
-        checked_name(getattr(u.func, "__name__", ""))
-    pairs = [sequence(p, "a relation", 2) for p in sequence(_field(stored, "resonances"), "the relations")]
-    options: dict[str, Any] = {"resonances": {expressions.scalar(x): expressions.scalar(y) for x, y in pairs}}
-    if "ordering" in stored:
-        orders = [sequence(p, "an order", 2) for p in sequence(stored["ordering"], "the ordering")]
-        options["ordering"] = {expressions.scalar(x): integer(q, "an order", 0, 1000) for x, q in orders}
-    else:
-        options["small"] = expressions.scalar(_field(stored, "small"))
-    return Problem(several("equations"), unknowns, **options)

@@ -19,7 +19,18 @@ from sympy.core.function import AppliedUndef
 from sympy.functions.elementary.piecewise import ExprCondPair
 
 from multiscale.errors import StorageError
-from multiscale.storage.limits import BITS, DEPTH, NODES, checked_name, integer, refuse, sequence, spelled
+from multiscale.storage.limits import (
+    BITS,
+    DEPTH,
+    NODES,
+    checked_name,
+    integer,
+    read_float,
+    refuse,
+    sequence,
+    spelled,
+    spelled_float,
+)
 
 __all__ = ["Reader", "Writer"]
 
@@ -64,8 +75,7 @@ class Writer:
         if isinstance(x, sp.Rational):
             return ["rat", spelled(int(x.p)), spelled(int(x.q))]
         if isinstance(x, sp.Float):
-            sign, mantissa, exponent, _ = x._mpf_
-            return ["float", int(sign), spelled(int(mantissa)), int(exponent), int(x._prec)]
+            return ["float", *spelled_float(x)]
         for name, constant in _CONSTANTS.items():
             if x == constant:
                 return ["const", name]
@@ -150,13 +160,8 @@ class Reader:
     def _rat_node(self, p: Any, q: Any) -> sp.Basic:
         return sp.Rational(integer(p, "a numerator"), integer(q, "a denominator", 1))
 
-    def _float_node(self, sign: Any, mantissa: Any, exponent: Any, precision: Any) -> sp.Basic:
-        parts = (
-            integer(sign, "a sign", 0, 1),
-            integer(mantissa, "a mantissa", 0),
-            integer(exponent, "an exponent", -100_000, 100_000),
-        )
-        return sp.Float._new((*parts, parts[1].bit_length()), integer(precision, "a precision", 1, BITS))
+    def _float_node(self, *parts: Any) -> sp.Basic:
+        return read_float(list(parts))
 
     def _const_node(self, name: Any) -> sp.Basic:
         return _CONSTANTS[name]

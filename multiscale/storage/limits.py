@@ -6,11 +6,28 @@ The limits are far above what an expansion needs and far below what a machine ha
 from __future__ import annotations
 
 from collections.abc import Sequence
+from math import isfinite
 from typing import Any
+
+import sympy as sp
 
 from multiscale.errors import StorageError
 
-__all__ = ["BITS", "CHARACTERS", "DEPTH", "NODES", "checked_name", "integer", "refuse", "sequence", "spelled"]
+__all__ = [
+    "BITS",
+    "CHARACTERS",
+    "DEPTH",
+    "NODES",
+    "checked_name",
+    "field",
+    "hexadecimal",
+    "integer",
+    "read_float",
+    "refuse",
+    "sequence",
+    "spelled",
+    "spelled_float",
+]
 
 CHARACTERS = 500_000_000
 NODES = 1_000_000
@@ -23,6 +40,13 @@ _NAME = 100
 def refuse(what: str) -> StorageError:
     """The error for a text that is not a stored expansion."""
     return StorageError(f"the text is not a stored expansion of this library: {what}")
+
+
+def field(document: Any, name: str) -> Any:
+    """An entry of a JSON object."""
+    if not isinstance(document, dict) or name not in document:
+        raise refuse(f"it has no field {name!r}")
+    return document[name]
 
 
 def spelled(value: int) -> int | str:
@@ -45,6 +69,17 @@ def integer(x: Any, what: str, least: int | None = None, most: int | None = None
     return x
 
 
+def hexadecimal(x: Any, what: str) -> float:
+    """The finite float of its hexadecimal form."""
+    try:
+        value = float.fromhex(x)
+    except (TypeError, ValueError, OverflowError):
+        raise refuse(f"{what} is {str(x)[:40]!r}, expected a hexadecimal number") from None
+    if not isfinite(value):
+        raise refuse(f"{what} is {value}")
+    return value
+
+
 def sequence(x: Any, what: str, length: int | None = None) -> Sequence[Any]:
     """A JSON array, of a given length where one is named."""
     if not isinstance(x, list) or (length is not None and len(x) != length):
@@ -60,3 +95,18 @@ def checked_name(x: Any) -> str:
     if any(c in "()[];:=\"'`@#" for c in x) or "__" in x:
         raise refuse(f"the name {x!r} has characters that no stored symbol has")
     return x
+
+
+def spelled_float(x: sp.Float) -> list[Any]:
+    """[sign, mantissa, exponent, precision] of (−1)^sign · mantissa · 2^exponent."""
+    sign, mantissa, exponent, _ = x._mpf_
+    return [int(sign), spelled(int(mantissa)), int(exponent), int(x._prec)]
+
+
+def read_float(parts: Any) -> sp.Float:
+    """The float of `spelled_float`."""
+    sign, mantissa, exponent, precision = sequence(parts, "a float", 4)
+    whole = integer(mantissa, "a mantissa", 0)
+    least = integer(exponent, "an exponent", -100_000, 100_000)
+    number = (integer(sign, "a sign", 0, 1), whole, least, whole.bit_length())
+    return sp.Float._new(number, integer(precision, "a precision", 1, BITS))

@@ -1,6 +1,8 @@
 """Polynomials by name as rows of integers: [numerator, denominator, name, exponent, name, exponent, …].
 
-Names are referred to by their place in one table for the whole text.
+Names are referred to by their place in one table for the whole text. A coefficient that is a float, from equations
+whose modes are known in floating-point numbers only, is ["hexadecimal float", 0, …], or with more digits
+[[sign, mantissa, exponent, precision], 0, …].
 """
 
 from __future__ import annotations
@@ -8,8 +10,10 @@ from __future__ import annotations
 from fractions import Fraction
 from typing import Any
 
+import sympy as sp
+
 from multiscale.algebra.polynomial import Frozen
-from multiscale.storage.limits import NODES, integer, refuse, sequence, spelled
+from multiscale.storage.limits import NODES, hexadecimal, integer, read_float, refuse, sequence, spelled, spelled_float
 
 __all__ = ["PolynomialReader", "PolynomialWriter"]
 
@@ -22,10 +26,7 @@ class PolynomialWriter:
         self._index: dict[str, int] = {}
 
     def rows(self, polynomial: Frozen) -> list[list[Any]]:
-        return [
-            [spelled(c.numerator), spelled(c.denominator), *(part for g, e in m for part in (self._place(g), e))]
-            for m, c in polynomial
-        ]
+        return [[*_spelled(c), *(part for g, e in m for part in (self._place(g), e))] for m, c in polynomial]
 
     def _place(self, name: str) -> int:
         if name not in self._index:
@@ -34,8 +35,14 @@ class PolynomialWriter:
         return self._index[name]
 
 
+def _spelled(c: Any) -> list[Any]:
+    if isinstance(c, float):
+        return [c.hex(), 0]
+    return [spelled_float(c), 0] if isinstance(c, sp.Float) else [spelled(c.numerator), spelled(c.denominator)]
+
+
 class PolynomialReader:
-    """The polynomials of rows; every name must be one of `known` or come from `admit`."""
+    """The polynomials of rows."""
 
     def __init__(self, names: Any) -> None:
         names = sequence(names, "the table of generators")
@@ -49,10 +56,10 @@ class PolynomialReader:
             raise refuse("a polynomial has the same monomial twice")
         return tuple(terms)
 
-    def _term(self, row: Any) -> tuple[tuple[tuple[str, int], ...], Fraction]:
+    def _term(self, row: Any) -> tuple[tuple[tuple[str, int], ...], Any]:
         if len(row) < 2 or len(row) % 2:
             raise refuse(f"{str(row)[:40]} where a term was expected")
-        coefficient = Fraction(integer(row[0], "a numerator"), integer(row[1], "a denominator", 1))
+        coefficient = _coefficient(row[0], row[1])
         factors = tuple(
             (self._names[integer(k, "a generator", 0, len(self._names) - 1)], integer(e, "an exponent", 1, 10_000))
             for k, e in zip(row[2::2], row[3::2], strict=True)
@@ -60,3 +67,9 @@ class PolynomialReader:
         if not coefficient or len({g for g, _ in factors}) != len(factors):
             raise refuse(f"{str(row)[:40]} is not a term in lowest form")
         return factors, coefficient
+
+
+def _coefficient(numerator: Any, denominator: Any) -> Any:
+    if denominator == 0 and isinstance(denominator, int):
+        return read_float(numerator) if isinstance(numerator, list) else hexadecimal(numerator, "a coefficient")
+    return Fraction(integer(numerator, "a numerator"), integer(denominator, "a denominator", 1))

@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-import math
 import random
 from fractions import Fraction
 
 import pytest
+import sympy as sp
 
-from multiscale.algebra.complex_ring import ComplexRing
+from multiscale.algebra.complex_ring import ComplexRing, MpmathRing
 from multiscale.algebra.polynomial import freeze
 from multiscale.algebra.quotient import finish
 from multiscale.algebra.ring import RingSpec
@@ -21,7 +21,9 @@ SPEC = RingSpec(
     roots=(("sqrt(2)", freeze({(): Fraction(2)})),),
     reciprocals=(("1/a", freeze({(("a", 1),): Fraction(1)})),),
 )
-RING = ComplexRing(SPEC, {"sqrt(2)": math.sqrt(2), "w": 0.7})
+VALUES = {"sqrt(2)": sp.sqrt(2), "w": sp.Rational(7, 10)}
+RING = ComplexRing(SPEC, VALUES)
+MANY = MpmathRing(SPEC, VALUES)
 
 
 def element(seed: int):
@@ -71,3 +73,14 @@ def test_division_by_symbols_is_refused():
     assert RING.quotient(RING.one, RING.one) is None
     with pytest.raises(MultiscaleError, match="give numbers"):
         RING.factor(RING.one)
+
+
+def test_many_digits():
+    root = MANY.generators[1]
+    assert abs(MANY.rational(root * root) - 2) < 1e-50
+    third = MANY.rational(MANY.constant(Fraction(1, 3)))
+    assert abs(3 * third - 1) < 1e-50
+    (_, c), *_ = MANY.terms(MANY.constant(Fraction(1, 3)))
+    assert abs(c - sp.Rational(1, 3)) < sp.Float(10, 20) ** -49
+    inverse = MANY.inverted([[third, third], [third * 0, 2 * third]])
+    assert abs(inverse[0][0] * third - 1) < 1e-50

@@ -113,6 +113,15 @@ def test_a_mode_that_is_met_must_be_carried():
         ms.expand(problem, 2)
 
 
+def test_a_mode_nearly_met_and_not_carried_is_a_warning():
+    stiffness = [[R(5, 2), -R(3, 2)], [-R(3, 2), R(5, 2) + R(1, 100)]]  # frequencies 1.002… and 2.002…
+    equations = [e + eps * x * y for e in masses(stiffness).equations]
+    with pytest.warns(ms.SmallDivisorWarning, match="of a mode that is not carried, which it excites"):
+        ms.expand(ms.Problem(equations, [x, y], small=eps, modes=[0]), 2)
+    far = ms.expand(masses([[3, -1], [-1, 9]], modes=[0]), 2)
+    assert not any("not carried" in remark for remark in far.warnings)
+
+
 def test_references():
     result = ms.expand(masses([[3, -1], [-1, 2]], references={1: y}), 2, tolerance=0.0)
     assert [mode.reference for mode in result.modes] == [x, y]
@@ -212,6 +221,18 @@ REFUSED = {
         lambda: masses([[3, -1], [-1, 2]], resonances={sp.Symbol("omega_3"): sp.Symbol("omega_1") + eps * sigma}),
         "names omega_3, but the equations have 2 modes",
     ),
+    "frequency by name in the linear part": (
+        lambda: ms.Problem(
+            [
+                x.diff(t, 2) + Om * y.diff(t) + 3 * x + eps * f * sp.cos(Om * t),
+                y.diff(t, 2) - Om * x.diff(t) + 5 * y,
+            ],
+            [x, y],
+            small=eps,
+            resonances={Om: sp.Symbol("omega_1") + eps * sigma},
+        ),
+        "puts omega_1 into the linear terms",
+    ),
     "gyroscopic mode by name": (
         lambda: ms.Problem(
             [x.diff(t, 2) - 2 * y.diff(t) + 3 * x + eps * x**2, y.diff(t, 2) + 2 * x.diff(t) + 5 * y],
@@ -243,4 +264,5 @@ def test_a_growing_motion_is_remarked():
     decaying = [x.diff(t, 2) + x + eps * x * y, y.diff(t) + 2 * y + eps * x**2]
     remarks, none = (ms.expand(ms.Problem(e, [x, y], small=eps), 2).warnings for e in (growing, decaying))
     assert any("grows like exp(2*t)" in remark for remark in remarks)
+    assert any("1 of the roots of the leading order lie off the imaginary axis and decay" in remark for remark in none)
     assert not any("grows" in remark for remark in none)

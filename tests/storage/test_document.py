@@ -6,6 +6,7 @@ import contextlib
 import json
 import random
 
+import numpy as np
 import pytest
 import sympy as sp
 from hypothesis import given, settings
@@ -18,7 +19,7 @@ from multiscale.storage.expressions import Reader, Writer
 t = sp.Symbol("t", real=True)
 eps, w0, mu, alpha, f, Omega = sp.symbols("epsilon omega_0 mu alpha f Omega", positive=True)
 sigma = sp.Symbol("sigma", real=True)
-u, v = sp.Function("u")(t), sp.Function("v")(t)
+u, v, F = sp.Function("u")(t), sp.Function("v")(t), sp.Function("F")
 oscillator = u.diff(t, 2) + w0**2 * u
 
 PROBLEMS = {
@@ -39,12 +40,35 @@ PROBLEMS = {
     "floats": lambda: ms.Problem(u.diff(t, 2) + 1.7 * u + eps * 0.1 * u**3, u, small=eps),
     "slow": lambda: ms.Problem(oscillator + eps * sp.exp(-eps * t) * u**3, u, small=eps),
     "parametric": lambda: ms.Problem(u.diff(t, 2) + u + eps * sp.cos(2 * t) * u + eps * alpha * u**3, u, small=eps),
+    "coupled": lambda: ms.Problem(
+        [u.diff(t, 2) + 3 * u - v + eps * u**2, v.diff(t, 2) + 2 * v - u + eps * mu * v.diff(t)],
+        [u, v],
+        small=eps,
+        modes=[1],
+        references={1: v},
+    ),
+    "floating-point modes": lambda: ms.Problem.from_matrices(
+        np.eye(3), K=[[3.1, -1.0, 0.2], [-1.0, 2.7, 0.1], [0.2, 0.1, 5.0]], cubic={(0, 0, 0, 0): 1}
+    ),
+    "first order": lambda: ms.Problem(
+        [u.diff(t) - v, v.diff(t) + 4 * u - mu * v + u**2 * v], [u, v], ordering={u: 1, v: 1, mu: 2}
+    ),
+    "about a state of rest": lambda: ms.Problem(
+        u.diff(t, 2) + mu * u - f / (alpha - u) ** 2, u, ordering={u: 1}, about={u: sigma}
+    ),
+    "pendulum": lambda: ms.Problem(u.diff(t, 2) + sp.sin(u), u, ordering={u: 1}),
+    "drag": lambda: ms.Problem(oscillator + eps * sp.Abs(u.diff(t)) * u.diff(t), u, small=eps, harmonics=5),
+    "measured law": lambda: ms.Problem(
+        oscillator + eps * F(u), u, small=eps, laws={F: ([-2.0, 0.1, 2.0], [-1.0, 0.3, 1.5])}
+    ),
 }
+FIRST = {"measured law"}
+"""Problems that have no second order."""
 
 
 @pytest.fixture(scope="module", params=PROBLEMS)
 def expansion(request):
-    return ms.expand(PROBLEMS[request.param](), 2)
+    return ms.expand(PROBLEMS[request.param](), 1 if request.param in FIRST else 2)
 
 
 def test_the_way_back_is_exact(expansion):
@@ -56,7 +80,9 @@ def test_the_way_back_is_exact(expansion):
     assert ms.to_json(again) == text
 
 
-def test_a_stored_expansion_extends(expansion):
+@pytest.mark.parametrize("name", [name for name in PROBLEMS if name not in {*FIRST, "drag"}])
+def test_a_stored_expansion_extends(name):
+    expansion = ms.expand(PROBLEMS[name](), 2)
     assert ms.extend(ms.from_json(ms.to_json(expansion)), 3) == ms.extend(expansion, 3)
 
 
@@ -86,10 +112,21 @@ def test_expressions_come_back(x):
     assert Reader(json.loads(json.dumps(writer.nodes))).expression(place) == x
 
 
+def test_fifty_digits_are_kept():
+    result = ms.expand(PROBLEMS["floating-point modes"](), 2, representation="mpmath")
+    again = ms.from_json(ms.to_json(result))
+    assert again == result
+    assert again.representation == "mpmath"
+    assert ms.extend(again, 3) == ms.extend(result, 3)
+
+
 def test_what_has_no_text_is_named():
     odd = sp.Symbol("import os; x()", positive=True)
     with pytest.raises(ms.StorageError, match="import os"):
         ms.to_json(ms.expand(ms.Problem(u.diff(t, 2) + odd**2 * u + eps * u**3, u, small=eps), 1))
+    law = ms.Problem(oscillator + eps * F(u), u, small=eps, laws={F: np.tanh})
+    with pytest.raises(ms.StorageError, match="F is a Python function"):
+        ms.to_json(ms.expand(law, 1))
     with pytest.raises(ms.StorageError, match="LambertW"):
         Writer().node(sp.LambertW(w0))
 

@@ -15,6 +15,7 @@ from multiscale.computed import Computation, begin
 from multiscale.errors import UnsupportedTermError
 from multiscale.problem import Problem
 from multiscale.problem.canonical import Canonical
+from multiscale.problem.laws import LAW
 
 __all__ = ["SEARCHED", "Leading", "check_single", "is_reversible", "leading_damping", "parts"]
 
@@ -41,6 +42,11 @@ def check_single(canonical: Canonical, wanted: str, coupled: bool = False) -> No
         raise UnsupportedTermError(
             f"the problem has {len(canonical.force)} unknowns: {wanted} for one oscillator. State one equation; for "
             "several, integrate `slow_flow`"
+        )
+    if any(d == LAW for terms in canonical.force for term in terms for _, d in term.factors):
+        raise UnsupportedTermError(
+            f"the problem has a force that is not polynomial: {wanted} for polynomial forces. Find the zeros of da/dt "
+            "from slow_flow.to_numpy('polar'), or integrate it"
         )
     if canonical.drives or canonical.slow:
         what = canonical.drives[0].frequency if canonical.drives else "parameters that vary slowly"

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import warnings
 from functools import cache
+from typing import Any
 
 import sympy as sp
 
@@ -33,13 +34,16 @@ def _stated_without_drives(problem: Problem) -> Problem:
     kept = [
         (key, value)
         for key, value in problem.resonances
-        if key in problem.unknowns or key.free_symbols & present - {problem.small}
+        if key in problem.unknowns or key in problem.mode_names or key.free_symbols & present - {problem.small}
     ]
     relations = [sp.Eq(key, value, evaluate=False) for key, value in kept]
+    chosen: dict[str, Any] = {"resonances": relations, "modes": problem.modes, "references": problem.references}
     if problem.ordering is None:
-        return Problem(equations, problem.unknowns, small=problem.small, resonances=relations)
+        chosen |= {"laws": {sp.Function(name): law for name, law in problem.laws.items()}}
+        chosen |= {"harmonics": problem.harmonics, "formal": problem.formal}
+        return Problem(equations, problem.unknowns, small=problem.small, **chosen)
     ordering = {x: n for x, n in problem.ordering.items() if x in problem.unknowns or x.free_symbols & present}
-    return Problem(equations, problem.unknowns, ordering=ordering, resonances=relations)
+    return Problem(equations, problem.unknowns, ordering=ordering, **chosen)
 
 
 @cache
