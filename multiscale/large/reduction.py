@@ -111,8 +111,16 @@ def reduce_model(
     >>> K = stretch.T @ stretch + 0.003 * sparse.identity(n)
     >>> model = ms.reduce_model(sparse.identity(n), K, order=3, springs=ms.Springs(stretch, cubic=1.0))
     >>> model
-    ReducedModel of 200 degrees of freedom, order 3, frequencies 0.0569627
-    >>> model.frequency().subs({"epsilon": 1.0, "a": 2.0}).round(6)
+    ReducedModel of 200 degrees of freedom, order 3, frequencies 0.0569586
+
+    The frequency at an amplitude of 20, far less than the length of the chain (so ε may be 1), and the displacement of
+    two masses in that motion:
+
+    >>> round(float(model.expansion.frequency_to_numpy().bind(epsilon=1.0)(0.0, [20.0, 0.0])), 6)
+    0.057077
+    >>> model.displacement(0.0, [20.0, 0.0], {"epsilon": 1.0}, dofs=[49, 100]).round(3)
+    >>> model.certify().passed
+    True
     """
     scipy_sparse()
     order = _checked_order(order, 1)

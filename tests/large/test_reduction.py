@@ -74,6 +74,7 @@ CASES = {
 
 
 @pytest.mark.parametrize("case", CASES)
+@pytest.mark.filterwarnings("ignore::multiscale.SmallDivisorWarning")
 def test_it_agrees_with_the_dense_route(case):
     options, order, _ = CASES[case]
     stated, sparse_form = dense(**options)
@@ -85,6 +86,7 @@ def test_it_agrees_with_the_dense_route(case):
     assert found == pytest.approx(expansion.to_numpy().bind(epsilon=0.2)(0.3, y), abs=1e-12)
 
 
+@pytest.mark.filterwarnings("ignore::multiscale.SmallDivisorWarning")
 def test_a_drive_at_resonance_and_its_response():
     stated, sparse_form = dense(C=0.1 * np.eye(4))
     load = np.array([1.0, 0.5, -0.2, 0.3])
@@ -110,6 +112,7 @@ def test_a_drive_at_resonance_and_its_response():
     assert batch[:, 1] == pytest.approx(single[[2, 0]], abs=1e-12)
 
 
+@pytest.mark.filterwarnings("ignore::multiscale.SmallDivisorWarning")
 def test_loads_of_different_shape_at_leading_order():
     stated, sparse_form = dense()
     waves = f * sp.cos(3.1 * t), 0.3 * sp.sin(0.35 * t + mu)
