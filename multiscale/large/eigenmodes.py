@@ -105,7 +105,7 @@ def _symmetric(mass: Any, stiffness: Any, near: float, count: int) -> list[tuple
     size = mass.shape[0]
     if count >= size - 1 or size <= 32:
         values, shapes = _dense_pencil(stiffness, mass)
-        order = np.argsort(np.abs(np.sqrt(np.abs(values)) - near))[:count] if near else np.arange(count)
+        order = np.argsort(np.abs(np.sqrt(np.abs(values)) - near))[:count] if near else np.arange(min(count, size))
     else:
         from scipy.sparse.linalg import eigsh
 

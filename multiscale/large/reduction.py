@@ -119,6 +119,7 @@ def reduce_model(
     >>> round(float(model.expansion.frequency_to_numpy().bind(epsilon=1.0)(0.0, [20.0, 0.0])), 6)
     0.057077
     >>> model.displacement(0.0, [20.0, 0.0], {"epsilon": 1.0}, dofs=[49, 100]).round(3)
+    array([13.897, 20.   ])
     >>> model.certify().passed
     True
     """

@@ -185,25 +185,24 @@ class Bordered:
         if self.size <= len(self.references):
             return None
         v = np.random.default_rng(0).normal(size=(self.size, 1)).astype(float if self.symmetric else complex)
-        shift: complex = 0
+        share: complex = 0
         for _ in range(steps):
-            if self.symmetric:
-                v = self.across(v)
-                v = v / np.linalg.norm(v)
-                w = -self.across(self._solved(rate, modes, self.mass @ v)[: self.size])
-                shift = complex(1 / (v.T @ w)[0, 0]) * complex((v.T @ v)[0, 0])
-            else:
-                v = v / np.linalg.norm(v)
-                w = -self._solved(rate, modes, self.slope(rate, v))[: self.size]
-                shift = -1 / complex((v.conj().T @ w)[0, 0])
+            v = self.across(v) if self.symmetric else v
+            v = v / np.linalg.norm(v)
+            weighted = self.mass @ v if self.symmetric else self.slope(rate, v)
+            w = -self._solved(rate, modes, weighted)[: self.size]
+            w = self.across(w) if self.symmetric else w
+            share = complex((v.conj().T @ w)[0, 0])
+            if abs(share) == 0:
+                return None
             v = w
         self.watch.examining += self.watch.solving - before.solving
         self.watch.solving, self.watch.solved = before.solving, before.solved
         shape = v[:, 0] / np.linalg.norm(v)
         if self.symmetric:
-            square = rate**2 + shift.real
+            square = rate**2 + (1 / share).real
             return Nearest(float(np.sqrt(square)), shape) if square > 0 else None
-        found = 1j * rate + shift
+        found = 1j * rate - 1 / share
         return Nearest(abs(found.imag), shape) if abs(found.real) < 0.5 * abs(found.imag) else None
 
 
