@@ -19,6 +19,7 @@ from multiscale.forces.multilinear import Shape
 from multiscale.large.computation import LargeComputation
 from multiscale.large.eigenmodes import LargeMode
 from multiscale.linear_part.bordered import Stopwatch
+from multiscale.linear_part.sparse import Near
 
 if TYPE_CHECKING:
     from multiscale.large.residual import ModelCertificate
@@ -28,6 +29,8 @@ if TYPE_CHECKING:
 __all__ = ["ReducedModel"]
 
 Array = npt.NDArray[Any]
+SHOWN = 3
+"""Small divisors told of, the smallest."""
 
 
 @dataclass(frozen=True, eq=False, repr=False)
@@ -47,6 +50,23 @@ class ReducedModel:
         M, G, K as sparse matrices, None where absent.
     weak : tuple of (Expr, shape)
         Coefficient, in the small parameter, the parameters and time, and map of every other term of the left-hand side.
+
+    The functions it gives can be pickled, the model itself cannot.
+
+    Examples
+    --------
+    Two of three masses measured, under a load on the first, in resonance with the first mode:
+
+    >>> import numpy as np, sympy as sp, multiscale as ms
+    >>> t, eps, f, Omega, w = (sp.Symbol(name, positive=True) for name in ("t", "epsilon", "f", "Omega", "omega_1"))
+    >>> sigma, K = sp.Symbol("sigma", real=True), np.array([[2.0, -1.0, 0.0], [-1.0, 2.5, -1.0], [0.0, -1.0, 2.2]])
+    >>> model = ms.reduce_model(
+    ...     np.eye(3), K, C=0.2 * np.eye(3), springs=ms.Springs(np.eye(3), cubic=1.0), order=2,
+    ...     drive=([1.0, 0.0, 0.0], f * sp.cos(Omega * t)), resonances={Omega: w + eps**2 * sigma},
+    ... )
+    >>> (state,) = ms.equilibria(model.expansion, {eps: 0.3, f: 0.2, sigma: 0.5})
+    >>> model.displacement(0.0, state.state, {eps: 0.3, f: 0.2, sigma: 0.5}, dofs=[0, 2]).round(4)
+    array([-0.0584, -0.0624])
     """
 
     expansion: Expansion
@@ -83,6 +103,17 @@ class ReducedModel:
         """Seconds spent in factorisations, solves, and in looking for modes nearby."""
         linear: Any = self.computation.hierarchy.linear_part
         return linear.bordered.watch  # type: ignore[no-any-return]
+
+    @property
+    def small_divisors(self) -> str:
+        """The combinations of frequencies in the forcing that come close to a mode, carried or not; or ""."""
+        linear: Any = self.computation.hierarchy.linear_part
+        return _remark(list(linear.near.values())) if linear.near else ""
+
+    @property
+    def warnings(self) -> tuple[str, ...]:
+        """What a careful analyst would say about this result; see `Expansion.warnings`."""
+        return (*([self.small_divisors] if self.small_divisors else []), *self.expansion.warnings)
 
     def frequency(self, mode: int = 0) -> sp.Expr:
         """ω(a) of a mode as a series in the small parameter; see `Expansion.frequency`."""
@@ -204,3 +235,21 @@ class ReducedModel:
         from multiscale.large.residual import certify_model
 
         return certify_model(self, parameters or {}, seed)
+
+
+def _remark(near: list[Near]) -> str:
+    near = sorted(near, key=lambda x: abs(x.value / x.frequency - 1))
+    told = []
+    for x in near[:SHOWN]:
+        whose = "a mode that is not carried" if x.mode is None else f"omega_{x.mode + 1}"
+        remedy = f"add {x.frequency:.10g} to modes, with" if x.mode is None else "declare"
+        key = "that frequency" if x.mode is None else f"omega_{x.mode + 1}"
+        told.append(f"{x.name} = {x.value:.8g} is close to {x.frequency:.8g}, {whose}: {remedy} a relation for {key}")
+    more = f"; and {len(near) - SHOWN} more" if len(near) > SHOWN else ""
+    return (
+        "small divisors: "
+        + "; ".join(told)
+        + more
+        + ". The result holds only while the frequencies shift by less than "
+        "these distances"
+    )

@@ -18,11 +18,8 @@ from multiscale.large.matrices import loads_of, matrix_of, orders_of, scipy_spar
 from multiscale.large.model import ReducedModel
 from multiscale.large.statement import ModelStatement, state
 from multiscale.level import Level
-from multiscale.linear_part.sparse import Near
 
 __all__ = ["reduce_model"]
-
-SHOWN = 3
 
 
 def reduce_model(
@@ -157,11 +154,12 @@ def reduce_model(
         warnings.warn(
             "order=1 with quadratic terms: their part in the frequency begins at the second order", OrderingWarning, 2
         )
-    if linear.near:
-        warnings.warn(_remark(list(linear.near.values())), SmallDivisorWarning, stacklevel=2)
     weak = _weak(statement, factors, shapes, loads, powers)
     weak += [(x, Matrix(linear.bordered.along(j), 0)) for j, x in enumerate(statement.shifts) if x != 0]
-    return ReducedModel(expansion, tuple(found), matrices, tuple(weak))
+    model = ReducedModel(expansion, tuple(found), matrices, tuple(weak))
+    if remark := model.small_divisors:
+        warnings.warn(remark, SmallDivisorWarning, stacklevel=2)
+    return model
 
 
 def _weak(
@@ -176,21 +174,3 @@ def _weak(
     terms = [(small ** powers[name] * sp.sympify(factors[name]), x) for name, maps in shapes.items() for x in maps]
     terms += [(-(small ** powers["drive"]) * sp.sympify(g), Load(b)) for b, g in loads]
     return [(statement.in_numbers(x), shape) for x, shape in terms]
-
-
-def _remark(near: list[Near]) -> str:
-    near = sorted(near, key=lambda x: abs(x.value / x.frequency - 1))
-    told = []
-    for x in near[:SHOWN]:
-        whose = "a mode that is not carried" if x.mode is None else f"omega_{x.mode + 1}"
-        remedy = f"add {x.frequency:.10g} to modes, with" if x.mode is None else "declare"
-        key = "that frequency" if x.mode is None else f"omega_{x.mode + 1}"
-        told.append(f"{x.name} = {x.value:.8g} is close to {x.frequency:.8g}, {whose}: {remedy} a relation for {key}")
-    more = f"; and {len(near) - SHOWN} more" if len(near) > SHOWN else ""
-    return (
-        "small divisors: "
-        + "; ".join(told)
-        + more
-        + ". The result holds only while the frequencies shift by less than "
-        "these distances"
-    )
