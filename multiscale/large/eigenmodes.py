@@ -15,14 +15,13 @@ import numpy.typing as npt
 
 from multiscale.errors import ProblemError
 from multiscale.large.matrices import scipy_sparse
+from multiscale.linear_part.bordered import RIGID
 
 __all__ = ["LargeMode", "eigenmodes", "is_symmetric"]
 
 Array = npt.NDArray[Any]
 REAL = 1e-7
 """Largest growth rate of a mode, relative to its frequency, that counts as rounding."""
-RIGID = 1e-13
-"""ω² relative to K_ii / M_ii below which a motion counts as rigid."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -107,16 +106,13 @@ def _symmetric(mass: Any, stiffness: Any, near: float, count: int) -> list[tuple
         values, shapes = _dense_pencil(stiffness, mass)
         order = np.argsort(np.abs(np.sqrt(np.abs(values)) - near))[:count] if near else np.arange(min(count, size))
     else:
-        from scipy.sparse.linalg import eigsh
-
-        # A little below zero, so that a stiffness with rigid motions can be factored too.
-        shift = near**2 * (1 + 1e-7) if near else -1e-6 * abs(stiffness.diagonal()).max() / abs(mass.diagonal()).max()
-        start = np.random.default_rng(0).normal(size=size)
-        values, shapes = eigsh(stiffness, k=count, M=mass, sigma=shift, v0=start)
+        values, shapes = _lanczos(stiffness, mass, near, count)
         order = np.arange(len(values))
     scale = abs(stiffness.diagonal()).max() / abs(mass.diagonal()).max()
     pairs = []
     for k in order:
+        if values[k] <= RIGID * scale and near:
+            continue
         if values[k] <= RIGID * scale:
             raise ProblemError(
                 f"a carried mode has ω² = {values[k]:.3g}: it does not oscillate (a rigid or an unstable motion). Hold "
@@ -124,6 +120,20 @@ def _symmetric(mass: Any, stiffness: Any, near: float, count: int) -> list[tuple
             )
         pairs.append((float(np.sqrt(values[k])), shapes[:, k]))
     return sorted(pairs, key=lambda pair: pair[0])
+
+
+def _lanczos(stiffness: Any, mass: Any, near: float, count: int) -> tuple[Array, Array]:
+    """Shift-invert iteration about ω² = near²."""
+    from scipy.sparse.linalg import eigsh
+
+    start = np.random.default_rng(0).normal(size=mass.shape[0])
+    # A shift that is an eigenvalue cannot be factored; exactly zero is one where there are rigid motions.
+    shift = near**2 * (1 + 1e-7)
+    try:
+        return eigsh(stiffness, k=count, M=mass, sigma=shift, v0=start)  # type: ignore[no-any-return]
+    except RuntimeError:
+        lower = 1e-6 * abs(stiffness.diagonal()).max() / abs(mass.diagonal()).max()
+        return eigsh(stiffness, k=count, M=mass, sigma=shift - lower, v0=start)  # type: ignore[no-any-return]
 
 
 def _dense_pencil(stiffness: Any, mass: Any) -> tuple[Array, Array]:

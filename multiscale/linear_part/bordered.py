@@ -20,22 +20,24 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
 from functools import cached_property
-from time import perf_counter
+from time import thread_time
 from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
-__all__ = ["Bordered", "Nearest", "Stopwatch", "combination", "singular"]
+__all__ = ["RIGID", "Bordered", "Nearest", "Stopwatch", "combination", "singular"]
 
 Array = npt.NDArray[Any]
 SINGULAR = 1e-8
 """Relative distance of a rate from a frequency that is not carried, below which no bounded solution is claimed."""
+RIGID = 1e-13
+"""ω² relative to that of the stiffest parts, below which a motion counts as rigid."""
 
 
 @dataclass
 class Stopwatch:
-    """Seconds spent in finding the modes, in factorisations, in solves for levels, and in looking for what is near; how
+    """Seconds of this thread's processor time spent in finding the modes, in factorisations, in solves for levels, and in looking for what is near; how
     many factorisations and right-hand sides there were."""
 
     finding: float = 0.0
@@ -75,6 +77,11 @@ class Bordered:
     @property
     def size(self) -> int:
         return int(self.mass.shape[0])
+
+    @cached_property
+    def scale(self) -> float:
+        """The size of ω² of the stiffest parts, against which rounding is measured."""
+        return float(abs(self.stiffness.diagonal()).max() / abs(self.mass.diagonal()).max())
 
     @cached_property
     def weighted(self) -> Array:
@@ -127,7 +134,7 @@ class Bordered:
             from scipy.sparse import bmat, coo_matrix
             from scipy.sparse.linalg import splu
 
-            start = perf_counter()
+            start = thread_time()
             chosen = tuple(range(len(self.references))) if self.symmetric else modes
             matrix = self.matrix(rate)
             if chosen:
@@ -136,14 +143,14 @@ class Bordered:
                 rows = coo_matrix((np.ones(count), (np.arange(count), places)), shape=(count, self.size))
                 matrix = bmat([[matrix, coo_matrix(border)], [rows, None]])
             self._factored[key] = splu(matrix.tocsc().astype(float if self.symmetric else complex))
-            self.watch.factoring += perf_counter() - start
+            self.watch.factoring += thread_time() - start
             self.watch.factorisations += 1
         return self._factored[key]
 
     def _solved(self, rate: float, modes: tuple[int, ...], part: Array) -> Array:
         """(U', x) stacked, for columns of −part."""
         factors = self.factored(rate, modes)
-        start = perf_counter()
+        start = thread_time()
         rhs = np.zeros((factors.shape[0], part.shape[1]), dtype=complex, order="F")
         rhs[: self.size] = -part
         if not self.symmetric:
@@ -152,7 +159,7 @@ class Bordered:
             found = factors.solve(np.asfortranarray(rhs.real))
         else:
             found = factors.solve(np.asfortranarray(rhs.real)) + 1j * factors.solve(np.asfortranarray(rhs.imag))
-        self.watch.solving += perf_counter() - start
+        self.watch.solving += thread_time() - start
         self.watch.solved += part.shape[1]
         return np.asarray(found)
 
@@ -201,7 +208,7 @@ class Bordered:
         shape = v[:, 0] / np.linalg.norm(v)
         if self.symmetric:
             square = rate**2 + (1 / share).real
-            return Nearest(float(np.sqrt(square)), shape) if square > 0 else None
+            return Nearest(float(np.sqrt(max(square, 0.0))), shape) if square > -RIGID * self.scale else None
         found = 1j * rate - 1 / share
         return Nearest(abs(found.imag), shape) if abs(found.real) < 0.5 * abs(found.imag) else None
 

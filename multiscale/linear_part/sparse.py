@@ -20,7 +20,7 @@ from multiscale.algebra.polynomial import Polynomial
 from multiscale.algebra.vector_ring import VectorElement, VectorRing, columns_of, mapped
 from multiscale.errors import ResonanceError
 from multiscale.linear_part import Mode, Rate
-from multiscale.linear_part.bordered import Bordered, combination, singular
+from multiscale.linear_part.bordered import RIGID, Bordered, combination, singular
 from multiscale.tower import Field
 
 __all__ = ["Near", "Sparse"]
@@ -134,6 +134,8 @@ class Sparse:
             return
         self._examined.add(rate)
         nearest = self.bordered.nearest(turning, modes, 3)
+        if turning == 0 and nearest is not None and nearest.frequency**2 <= RIGID * self.bordered.scale:
+            raise self._resonance(columns, 0.0, 0.0)
         if nearest is None or not self._close(turning, nearest.frequency, 4.0):
             return
         nearest = self.bordered.nearest(turning, modes, REFINED)
@@ -152,6 +154,11 @@ class Sparse:
         return combination(simplest[self._ring.spec.first_pair :], self.names, 1 if turning >= 0 else -1)
 
     def _resonance(self, columns: list[Any], turning: float, frequency: float) -> ResonanceError:
+        if turning == 0:
+            return ResonanceError(
+                "K is singular, so the response to the constant part of the forcing is not determined: hold the "
+                "structure, or leave its rigid motions out"
+            )
         name = self._name(columns, turning)
         number = len(self._rates) + 1
         return ResonanceError(

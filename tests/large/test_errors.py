@@ -96,6 +96,19 @@ def test_a_mode_in_resonance_that_is_not_carried_is_named():
     assert len(both.slow_flow.phases) == 1
 
 
+def test_rigid_motions():
+    """A chain that is free at both ends: cubic springs do not move it as a whole, a constant part is not resisted."""
+    n = 60
+    b = stretches(n)[1:-1]
+    model = {"M": sparse.identity(n), "K": b.T @ b, "modes": [0.0524], "order": 2, "tolerance": 1e-9}
+    free = ms.reduce_model(**model, springs=ms.Springs(b, cubic=1.0), orders={"cubic": 2})
+    assert free.certify().passed
+    with pytest.raises(ms.ResonanceError, match="K is singular"):
+        ms.reduce_model(**model, springs=ms.Springs(b, quadratic=1.0))
+    with pytest.raises(ms.ProblemError, match="does not oscillate"):
+        ms.reduce_model(**model | {"modes": [0]}, springs=ms.Springs(b, cubic=1.0))
+
+
 def test_a_mode_near_resonance_is_warned_of():
     with pytest.warns(ms.SmallDivisorWarning, match=r"3\*omega_1 = 3 is close to 3.01, a mode that is not carried"):
         ms.reduce_model(**one_to_three(0.01), order=2)
