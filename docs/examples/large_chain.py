@@ -65,7 +65,10 @@ def reduced(model: tuple, order: int, modes: tuple[int, ...] = (0,)) -> ms.Reduc
 
 
 def timed(model: tuple, order: int, modes: tuple[int, ...] = (0,)) -> tuple[float, float]:
-    """(seconds of processor time, share of them in the sparse solver: finding the modes, factorising, solving), the quickest of a few."""
+    """(seconds, share of them in the sparse solver: finding the modes, factorising, solving), the quickest of a few.
+
+    Seconds are processor time of this thread, so that other work on the machine does not count.
+    """
     rows = []
     for _ in range(5 if model[1].shape[0] <= COMPARED else 1):
         start = thread_time()
