@@ -138,6 +138,13 @@ class ComplexRing(NamedTerms):
     def normal(self, x: Any) -> Any:
         terms: dict[Exponents, complex] = {}
         for m, c in x.terms.items():
+            for g, h, r in self.spec.squared_moduli:
+                if common := min(m[g], m[h]):
+                    lowered = list(m)
+                    lowered[g] -= common
+                    lowered[h] -= common
+                    lowered[r] += 2 * common
+                    m = tuple(lowered)
             for g, h in self.spec.inverses:
                 if common := min(m[g], m[h]):
                     lowered = list(m)

@@ -9,8 +9,9 @@ Needs NumPy and the standard library alone, so that its text can travel with exp
 
 Accuracy: two results in a row agree to `TOLERANCE` relative to the mean of |f|; the better one is returned. The
 trapezoidal rule converges geometrically for analytic f (its error at 2N nodes is about the square of that at N), so the
-value returned is then right to rounding. Inside an average over another phase, a jump that the motion only just reaches
-may stay at `GRAZING`, since its place is known to half the digits; the outer average still has to agree to `TOLERANCE`.
+value returned is then right to rounding. Where rounding in f itself, such as a small difference of large numbers, keeps
+the results apart, `NOISE` is enough. Inside an average over another phase, a jump that the motion only just reaches may
+stay at `GRAZING`, since its place is known to half the digits; the outer average still has to agree to `TOLERANCE`.
 `IntegralError` where the doubling ends without agreement, or f is not finite.
 """
 
@@ -27,6 +28,7 @@ import numpy as np
 __all__ = ["RUNTIME", "IntegralError"]
 
 TOLERANCE = 1e-13
+NOISE = 1e-9
 GRAZING = 1e-6
 CIRCLE = (32, 16384)
 ARC = (16, 1024)
@@ -156,8 +158,7 @@ def _refine(
         while len(waiting):
             n *= 2
             if n > limits[1]:
-                if _SIZE.depth > 1 and (change <= GRAZING * size).all():
-                    # A jump that the motion only just reaches is placed to half the digits; the outer average decides.
+                if (change <= (GRAZING if _SIZE.depth > 1 else NOISE) * size).all():
                     result[waiting] = old[0]
                     return largest
                 raise IntegralError(

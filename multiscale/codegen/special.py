@@ -17,7 +17,7 @@ import sympy as sp
 from multiscale.codegen.tape import Integrand, Node, Tape
 from multiscale.errors import EvaluationError
 from multiscale.problem.force_law import law_name
-from multiscale.problem.guarded import Clipped, Inverse, Power, Reciprocal, Root
+from multiscale.problem.guarded import Clipped, Inverse, Magnitude, Power, Reciprocal, Root
 
 __all__ = ["special"]
 
@@ -26,7 +26,7 @@ Evaluate = Callable[[Tape, sp.Expr, Symbols], Node]
 
 _CALLS = {
     Inverse: "inverse_or_zero", Reciprocal: "reciprocal", Root: "root", Clipped: "clipped",
-    sp.gamma: "gamma_function", sp.Abs: "absolute", sp.sign: "sign", sp.tanh: "tanh",
+    sp.gamma: "gamma_function", sp.Abs: "absolute", Magnitude: "absolute", sp.sign: "sign", sp.tanh: "tanh",
     sp.asin: "arcsin", sp.acos: "arccos", sp.atan: "arctan", sp.asinh: "arcsinh",
 }  # fmt: skip
 _HALF = Fraction(1, 2)
@@ -102,7 +102,7 @@ def _integral(tape: Tape, x: sp.Integral, symbol: Symbols, evaluate: Evaluate) -
     inner = Tape(tape.laws)
     phase = inner.input("theta")
     inputs = {s: inner.input(f"x{k}") for k, s in enumerate(names)}
-    output = evaluate(inner, integrand, lambda s: phase if s == theta else inputs[s])
+    output = evaluate(inner, integrand.replace(sp.Abs, Magnitude), lambda s: phase if s == theta else inputs[s])
     body = Integrand(inner, output, len(names), sp.srepr(x), _force_in(integrand, theta))
     kinks = _kinks(tape, integrand, theta, symbol, evaluate)
     return tape.quadrature(body, kinks, [symbol(s) for s in names])
@@ -110,6 +110,7 @@ def _integral(tape: Tape, x: sp.Integral, symbol: Symbols, evaluate: Evaluate) -
 
 def _force_in(integrand: sp.Expr, theta: sp.Symbol) -> str:
     """How an error spells the force: the integrand without its bare cosine or sine."""
+    integrand = integrand.replace(Magnitude, sp.Abs)
     factors = [f for f in sp.Mul.make_args(integrand) if not isinstance(f, sp.cos | sp.sin)]
     if isinstance(integrand, sp.Integral):
         return _force_in(integrand.function, theta)
@@ -121,7 +122,7 @@ def _edges(x: sp.Expr, laws: dict[str, tuple[float, ...]]) -> set[sp.Expr]:
     if isinstance(x, sp.Integral):
         return _grazing(x, laws)
     found: set[sp.Expr] = set()
-    for f in x.atoms(sp.Abs, sp.sign, sp.Heaviside):
+    for f in x.atoms(sp.Abs, Magnitude, sp.sign, sp.Heaviside):
         found.update(sp.Mul.make_args(f.args[0]))
     for f in x.atoms(sp.Max, sp.Min):
         found.update(a - b for k, a in enumerate(f.args) for b in f.args[k + 1 :])
@@ -141,8 +142,8 @@ def _grazing(x: sp.Integral, laws: dict[str, tuple[float, ...]]) -> set[sp.Expr]
         if theta not in h.free_symbols:
             found.add(h)
         elif (parts := _affine(h, theta)) is not None:
-            radius = sp.Abs(parts[0]) if parts[1] == 0 else sp.sqrt(parts[0] ** 2 + parts[1] ** 2)
-            radius = sp.Abs(parts[1]) if parts[0] == 0 else radius
+            radius = Magnitude(parts[0]) if parts[1] == 0 else sp.sqrt(parts[0] ** 2 + parts[1] ** 2)
+            radius = Magnitude(parts[1]) if parts[0] == 0 else radius
             found |= {parts[2] - radius, parts[2] + radius}
     return found
 

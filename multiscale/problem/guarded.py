@@ -5,6 +5,7 @@
     Root(x)         √x, whose slope at x = 0 counts as zero
     Power(x, e)     x**e for x > 0, and 0 at x = 0
     Clipped(x)      x cut off to −1 … 1
+    Magnitude(x)    |x| inside an average, where its slope is the sign of x and zero at x = 0
 
 A force that is singular at rest, such as Coulomb friction, thereby counts as zero at zero amplitude.
 """
@@ -13,7 +14,7 @@ from __future__ import annotations
 
 import sympy as sp
 
-__all__ = ["Clipped", "Inverse", "Power", "Reciprocal", "Root", "guarded"]
+__all__ = ["Clipped", "Inverse", "Magnitude", "Power", "Reciprocal", "Root", "guarded"]
 
 
 class Inverse(sp.Function):  # type: ignore[misc]
@@ -30,6 +31,10 @@ class Root(sp.Function):  # type: ignore[misc]
 
 class Power(sp.Function):  # type: ignore[misc]
     nargs = 2
+
+
+class Magnitude(sp.Function):  # type: ignore[misc]
+    nargs = 1
 
 
 class Clipped(sp.Function):  # type: ignore[misc]

@@ -2,21 +2,31 @@
 
 from __future__ import annotations
 
-import warnings
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from functools import cached_property
-from operator import index
 from re import fullmatch
-from typing import Any, SupportsIndex
+from typing import Any
 
 import sympy as sp
 
-from multiscale.errors import OrderingWarning, ProblemError
+from multiscale.errors import ProblemError
 from multiscale.latex import shortened
 from multiscale.problem.canonical import Canonical, in_double
 from multiscale.problem.coupled import form_of
 from multiscale.problem.force_law import ForceLaw, laws_of, with_calls, without_calls
+from multiscale.problem.given import (
+    check_names,
+    check_read,
+    equations_given,
+    harmonics_given,
+    jets_of,
+    ordering_given,
+    small_given,
+    time_given,
+    unknowns_given,
+    warn_of_finite_detunings,
+)
 from multiscale.problem.laws import Law, at_resonance, layout_with_laws, separated
 from multiscale.problem.matrices import equations_of, size_of
 from multiscale.problem.modes import Choice, modes_given, references_given
@@ -29,7 +39,7 @@ from multiscale.problem.rest import about_rest, rest_positions
 from multiscale.problem.taylor import with_taylor_polynomials
 from multiscale.problem.terms import Layout
 
-__all__ = ["Problem", "read_statement"]
+__all__ = ["Problem"]
 
 
 class Problem:
@@ -124,18 +134,18 @@ class Problem:
         modes: Sequence[int] | None = None,
         references: Mapping[int, sp.Expr] | None = None,
     ) -> None:
-        self.unknowns: tuple[sp.Expr, ...] = _unknowns(unknowns)
-        self.time: sp.Symbol = _time(self.unknowns, time)
-        self.equations: tuple[sp.Expr, ...] = _equations(equations)
+        self.unknowns: tuple[sp.Expr, ...] = unknowns_given(unknowns)
+        self.time: sp.Symbol = time_given(self.unknowns, time)
+        self.equations: tuple[sp.Expr, ...] = equations_given(equations)
         self.laws: dict[str, ForceLaw] = laws_of(laws or {})
-        self.harmonics: int | None = _harmonics(harmonics)
+        self.harmonics: int | None = harmonics_given(harmonics)
         self.formal = bool(formal)
         if len(self.equations) != len(self.unknowns):
             raise ProblemError(
                 f"{len(self.equations)} equations for {len(self.unknowns)} unknowns: as many of each are needed"
             )
         self.ordering: dict[sp.Expr, int] | None = (
-            _ordering(ordering, self.unknowns, self.time) if ordering is not None else None
+            ordering_given(ordering, self.unknowns, self.time) if ordering is not None else None
         )
         self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
         self.modes: tuple[int, ...] | None = modes_given(modes)
@@ -143,15 +153,15 @@ class Problem:
         if about is not None:
             self._measure_from(rest_positions(about, self.unknowns, self.time, small), small)
         beside = [x for x in (*(self.ordering or {}), small) if isinstance(x, sp.Symbol)]
-        _check_names({*self._symbols, self.time, *beside}, self.unknowns)
-        self._given_small = _small(small, self.ordering, self._symbols, self.time)
+        check_names({*self._symbols, self.time, *beside}, self.unknowns)
+        self._given_small = small_given(small, self.ordering, self._symbols, self.time)
         self._canonical: dict[int | None, Canonical] = {}
         self.canonical(1)
-        self._warn_of_finite_detunings()
+        warn_of_finite_detunings(self.equations, self.resonances, self.small, self.ordering)
 
     def _measure_from(self, about: dict[sp.Expr, sp.Expr], small: Any) -> None:
         """Put the deviation from rest in the place of each unknown, and the equilibrium among the relations."""
-        jets = _jets(self.unknowns, self.time)
+        jets = jets_of(self.unknowns, self.time)
         vanishing = {s for s, q in (self.ordering or {}).items() if isinstance(s, sp.Symbol) and q}
         vanishing |= {small} if isinstance(small, sp.Symbol) else set()
         stated = [pair for pair in self.resonances if pair[0] not in self.unknowns]
@@ -214,8 +224,8 @@ class Problem:
         if unknowns is None:
             unknowns = [sp.Function(f"u_{k + 1}")(time) for k in range(size_of(matrices))]
         else:
-            unknowns = _unknowns(unknowns)
-            time = _time(unknowns, None)
+            unknowns = unknowns_given(unknowns)
+            time = time_given(unknowns, None)
         small = sp.Symbol("epsilon", positive=True) if small is None else small
         tensors = {"quadratic": quadratic, "cubic": cubic}
         return cls(
@@ -316,7 +326,7 @@ class Problem:
             return self._canonical[None]
         if order not in self._canonical:
             prepared = self._prepared(order)
-            shown = _jets(self.unknowns, self.time) | prepared.shown
+            shown = jets_of(self.unknowns, self.time) | prepared.shown
             if self.ordering is not None:
                 shown[self.small] = sp.Integer(1)
             layout, shown = layout_with_laws(self._layout, shown, prepared.laws)
@@ -336,22 +346,6 @@ class Problem:
             self._canonical[order if form.truncated or prepared.laws else None] = form
             return form
         return self._canonical[order]
-
-    def _warn_of_finite_detunings(self) -> None:
-        """A relation without ε whose value has a symbol of its own: most likely a detuning without its power of ε."""
-        present = set().union(*(x.free_symbols for x in self.equations))
-        for key, value in self.resonances:
-            strange = value.free_symbols - present - {self.small}
-            carried = self._given_small in value.free_symbols or any(s in (self.ordering or {}) for s in strange)
-            if strange and not carried:
-                s = min(strange, key=str)
-                remedy = f"{self.small}*{s}" if self.ordering is None else f"an order for {s} in `ordering`"
-                warnings.warn(
-                    f"the relation {key} = {value} has no small part: it moves {key} away from resonance by a finite "
-                    f"amount; if {s} is a detuning, write {remedy}",
-                    OrderingWarning,
-                    stacklevel=3,
-                )
 
     @property
     def phase(self) -> sp.Symbol:
@@ -373,12 +367,12 @@ class Problem:
     def _prepared(self, order: int) -> Prepared:
         jets = self._layout.jets
         hidden = self._hidden()
-        for x, given in zip(hidden, self.equations, strict=True):
-            self._check_hidden(x, given)
+        for x in hidden:
+            check_read(x, self.unknowns, self.time)
         for k, u in enumerate(self.unknowns):
             if not any(x.free_symbols & {s for s, jet in jets.items() if jet[0] == k} for x in hidden):
                 raise ProblemError(f"the unknown {u} does not appear in the equations")
-        shown = _jets(self.unknowns, self.time)
+        shown = jets_of(self.unknowns, self.time)
         laws: tuple[Law, ...] = ()
         if self.ordering is None:
             hidden, laws = separated(hidden, self._layout, self.time, shown, self.laws)
@@ -413,7 +407,7 @@ class Problem:
         >>> ms.Problem(u.diff(t, 2) + sp.sin(u), u, ordering={u: 1}).polynomials(order=4)
         (u(t)**5/120 - u(t)**3/6 + u(t) + Derivative(u(t), (t, 2)),)
         """
-        shown = _jets(self.unknowns, self.time)
+        shown = jets_of(self.unknowns, self.time)
         ordered = with_orders(self._hidden(), self._powers, self.small)
         found, _ = with_taylor_polynomials(ordered, self._layout, self.time, self._powers, shown, order)
         spelled = shown | ({self.small: sp.Integer(1)} if self.ordering is not None else {})
@@ -421,22 +415,9 @@ class Problem:
 
     def _hidden(self) -> list[sp.Expr]:
         """The equations with a symbol for each unknown and derivative."""
-        names = {x: s for s, x in _jets(self.unknowns, self.time).items()}
+        names = {x: s for s, x in jets_of(self.unknowns, self.time).items()}
         derivatives = {x: s for x, s in names.items() if x.is_Derivative}
         return [x.xreplace(derivatives).xreplace(names) for x in self.equations]
-
-    def _check_hidden(self, x: sp.Expr, given: sp.Expr) -> None:
-        own = {u.func for u in self.unknowns}
-        if derivatives := [d for d in x.atoms(sp.Derivative) if d.expr.func in own]:
-            term = min(derivatives, key=str).subs(_jets(self.unknowns, self.time))
-            reason = "only first and second time derivatives of the unknowns are accepted"
-            raise unsupported(term, reason, "Rewrite the equations as a system of second order")
-        functions = {f for f in x.atoms(sp.core.function.AppliedUndef) if self.time in f.args}
-        if functions:
-            f = min(functions, key=str)
-            raise ProblemError(
-                f"{f} depends on time but is not among the unknowns {self.unknowns}: add it, or make it a parameter"
-            )
 
     def _key(self) -> tuple[Any, ...]:
         ordering = None if self.ordering is None else tuple(sorted(self.ordering.items(), key=str))
@@ -476,17 +457,6 @@ class Problem:
         return rf"$\displaystyle \begin{{aligned}}{rows}\end{{aligned}}$"
 
 
-def _harmonics(given: Any) -> int | None:
-    if given is not None and (isinstance(given, bool) or not isinstance(given, SupportsIndex) or index(given) < 1):
-        raise ProblemError(f"harmonics is {given!r}: expected an integer ≥ 1, the highest harmonic to keep")
-    return None if given is None else index(given)
-
-
-def _jets(unknowns: Sequence[sp.Expr], time: sp.Symbol) -> dict[sp.Symbol, sp.Expr]:
-    """{symbol that stands in for it: unknown or derivative}."""
-    return {sp.Symbol(f"@{k}.{d}"): u.diff(time, d) if d else u for k, u in enumerate(unknowns) for d in (0, 1, 2)}
-
-
 def _rebuilt(
     hidden: list[sp.Expr], functions: Sequence[tuple[str, dict[str, Any]]], options: dict[str, Any]
 ) -> Problem:
@@ -499,107 +469,5 @@ def _rebuilt(
     options = options | {"resonances": named, "laws": laws}
     if "references" in options:
         options = options | {"references": {a: unknowns[k] for a, k in options["references"].items()}}
-    jets = _jets(unknowns, options["time"])
+    jets = jets_of(unknowns, options["time"])
     return Problem([without_calls(x).xreplace(jets) for x in hidden], unknowns, **options)
-
-
-def read_statement(equations: Any, unknowns: Any) -> tuple[tuple[sp.Expr, ...], tuple[sp.Expr, ...], sp.Symbol]:
-    """(equations as expressions, unknowns, time), checked for what they are but not for what they mean."""
-    names = _unknowns(unknowns)
-    return _equations(equations), names, _time(names, None)
-
-
-def _unknowns(given: Any) -> tuple[sp.Expr, ...]:
-    unknowns = tuple(given) if isinstance(given, Iterable) and not isinstance(given, str | sp.Basic) else (given,)
-    for u in unknowns:
-        if not isinstance(u, sp.core.function.AppliedUndef) or len(u.args) != 1:
-            raise ProblemError(f"unknown {u!r} is not a function of time: write u = sympy.Function('u')(t) and pass u")
-    if not unknowns:
-        raise ProblemError("no unknowns were given: pass the functions of time to solve for")
-    if len(set(unknowns)) != len(unknowns):
-        raise ProblemError(f"the unknowns {unknowns} repeat: name each once")
-    return unknowns
-
-
-def _time(unknowns: tuple[sp.Expr, ...], given: sp.Symbol | None) -> sp.Symbol:
-    times = {u.args[0] for u in unknowns}
-    if len(times) > 1 or not all(isinstance(x, sp.Symbol) for x in times):
-        raise ProblemError(f"the unknowns {unknowns} must all be functions of one time symbol")
-    time = times.pop()
-    if given is not None and given != time:
-        raise ProblemError(f"time={given}, but the unknowns are functions of {time}: use the same symbol")
-    return time
-
-
-def _equations(given: Any) -> tuple[sp.Expr, ...]:
-    if isinstance(given, str):
-        raise ProblemError("the equations are a string: build them from SymPy symbols and functions")
-    several = isinstance(given, Iterable) and not isinstance(given, sp.Basic)
-    result = []
-    for x in given if several else (given,):
-        if isinstance(x, sp.Eq):
-            x = x.lhs - x.rhs
-        if not isinstance(x, sp.Expr):
-            raise ProblemError(
-                f"equation {x!r} of type {type(x).__name__}: expected a SymPy expression (meaning = 0) or an Eq"
-            )
-        if x.has(sp.nan, sp.oo, -sp.oo, sp.zoo):
-            raise ProblemError(
-                f"equation {x} contains an infinite or undefined number: every coefficient must be finite"
-            )
-        # `doit` carries out derivatives of products and the like that the user left unevaluated.
-        result.append(x.doit().replace(_float_power, lambda p: p.base ** int(p.exp)))
-    return tuple(result)
-
-
-def _float_power(x: sp.Expr) -> bool:
-    """u**3.0, which means u**3."""
-    return isinstance(x, sp.Pow) and isinstance(x.exp, sp.Float) and float(x.exp).is_integer()
-
-
-def _check_names(symbols: set[sp.Symbol], unknowns: tuple[sp.Expr, ...]) -> None:
-    by_name: dict[str, sp.Symbol] = {}
-    for s in sorted(symbols, key=lambda x: (str(x.name), str(x.assumptions0))):
-        if by_name.setdefault(s.name, s) != s:
-            raise ProblemError(
-                f"two different symbols are both called {s.name!r}: rename one, or give both the same assumptions"
-            )
-        if s.name.startswith("@"):
-            raise ProblemError(f"the symbol {s.name!r} begins with '@', which the library keeps for itself: rename it")
-        if s.is_real is False:
-            raise ProblemError(f"the symbol {s} is assumed not to be real: parameters and time are real")
-    for u in unknowns:
-        if u.func.__name__ in by_name:
-            raise ProblemError(f"the unknown {u} and a symbol are both called {u.func.__name__!r}: rename one")
-
-
-def _ordering(given: Mapping[sp.Expr, int], unknowns: tuple[sp.Expr, ...], time: sp.Symbol) -> dict[sp.Expr, int]:
-    result = {}
-    for key, order in given.items():
-        if key not in unknowns and not (isinstance(key, sp.Symbol) and key != time):
-            raise ProblemError(f"ordering has the key {key!r}: expected an unknown or a parameter of the equations")
-        if isinstance(order, bool) or not isinstance(order, SupportsIndex) or index(order) < 0:
-            raise ProblemError(f"ordering gives {key} the order {order!r}: expected an integer ≥ 0")
-        result[key] = index(order)
-    return result
-
-
-def _small(
-    small: Any, ordering: Mapping[sp.Expr, int] | None, symbols: set[sp.Symbol], time: sp.Symbol
-) -> sp.Symbol | None:
-    if (small is None) == (ordering is None):
-        which = "neither was" if small is None else "both were"
-        raise ProblemError(
-            f"exactly one of `small` and `ordering` is needed, {which} given: pass small=eps, or ordering={{u: 1, …}}"
-        )
-    if ordering is not None:
-        if lost := [s for s in ordering if isinstance(s, sp.Symbol) and s not in symbols]:
-            raise ProblemError(f"ordering names {lost[0]}, which does not appear in the equations")
-        return None
-    if not isinstance(small, sp.Symbol) or small == time:
-        raise ProblemError(f"small={small!r}: expected the SymPy symbol of the small parameter")
-    if small not in symbols:
-        raise ProblemError(
-            f"the small parameter {small} does not appear in the equations: multiply weak terms by it, or use ordering"
-        )
-    return small

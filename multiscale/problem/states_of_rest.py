@@ -16,7 +16,7 @@ import mpmath
 import sympy as sp
 
 from multiscale.errors import EvaluationError
-from multiscale.problem.problem import read_statement
+from multiscale.problem.given import read_statement
 from multiscale.problem.reading import decimals, given_expression
 
 __all__ = ["RestState", "states_of_rest"]

@@ -69,6 +69,14 @@ def test_the_jacobian_of_a_table_and_of_a_law_with_derivative():
         assert np.abs(jacobian(0.0, y) - np.array(expected).T).max() < 1e-9
 
 
+def test_a_force_that_is_a_small_difference():
+    """(x − g + |x − g|)/2, expanded, is max(x − g, 0) with rounding of its own: right to that, and no error."""
+    law = ms.ForceLaw(lambda x: x / 2 + np.abs(x - 0.6) / 2 - 0.3, kinks=(0.6,))
+    found = polar(F(u), laws={F: law})(0.0, [[0.6001, 0.61, 2.0], [0.0] * 3])
+    exact = polar(sp.Max(u - sp.Rational(6, 10), 0))(0.0, [[0.6001, 0.61, 2.0], [0.0] * 3])
+    assert np.allclose(found, exact, rtol=1e-9, atol=1e-16)
+
+
 def test_a_law_travels_with_the_expansion():
     expansion = ms.expand(stated(F(v), laws={F: partial(cubic, factor=0.5)}), 1)
     copy = pickle.loads(pickle.dumps(expansion))

@@ -90,7 +90,7 @@ def test_forms_agree(name):
     assert np.allclose([growth, turn], [y @ rate / a, (y[1] * rate[0] - y[0] * rate[1]) / a**2], atol=1e-15)
 
 
-@pytest.mark.parametrize("name", ["tanh", "rational", "clearance", "sine"])
+@pytest.mark.parametrize("name", ["rational", "clearance", "sine"])
 def test_symbolic_result_has_the_same_value(name):
     problem = ms.Problem(u.diff(t, 2) + w**2 * u + eps * FORCES[name], u, small=eps)
     expansion = ms.expand(problem, 1)

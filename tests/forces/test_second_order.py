@@ -27,6 +27,7 @@ def shift(expansion: ms.Expansion) -> sp.Expr:
 
 
 def test_both_representations_agree():
+    pytest.importorskip("flint")
     problem = ms.Problem(u.diff(t, 2) + w**2 * u + eps * sp.Abs(v) * v, u, small=eps, harmonics=9)
     assert ms.expand(problem, 2, representation="sympy").equals(ms.expand(problem, 2, representation="flint"))
 
@@ -86,6 +87,7 @@ def test_quadratic_damping_against_direct_integration():
     assert errors[-1] < controls[-1] / 3
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(
     "force", [sp.Abs(v) * v, sp.Abs(u) * u, sp.Abs(v) ** THREE_HALVES * sp.sign(v), sp.Abs(v) * v * u**2], ids=str
 )

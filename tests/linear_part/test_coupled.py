@@ -328,6 +328,7 @@ class TestFloatingPoint:
         assert result.representation == "mpmath"
         ms.certify(result).require()
         double = ms.expand(problem, order, tolerance=0.0)
+        ms.certify(double).require()
         at, state = {"epsilon": 0.3, "mu": 0.7}, [0.4, 0.1, -0.2, 0.3, 0.2, 0.1][: 2 * len(result.modes)]
         one, other = (e.slow_flow.to_numpy().bind(at)(0.0, state) for e in (result, double))
         assert one == pytest.approx(other, rel=1e-11, abs=1e-14)

@@ -7,7 +7,8 @@ number less; were it so small as to mix with the next power, the exponent would 
 shows. The arithmetic has digits enough for a residual two orders smaller than promised to be told from zero.
 
 Claims that contain floats are right to about 16 digits of U_1 and D_1A: there ε^N stays above 10^-13, exponents are
-read less sharply, and a residual below ε·10^-15 counts as zero.
+read less sharply, and a residual below ε·10^-15 counts as zero. Where modes have no closed form, floats stand in U_0
+too, and ε^{N+1} stays above 10^-13.
 """
 
 from __future__ import annotations
@@ -50,9 +51,10 @@ class Examination:
         self._context: Any = mpmath.MPContext()
         self._context.dps = max(self.digits, 40) + 15
         ten = self._context.mpf(10)
-        last, step = (min(POWER + 1, 13 / claim.order), 0.5) if rounded else (POWER + 1, 1)
+        leading = any(x.has(sp.Float) for x in claim.fields[0])
+        last, step = (min(POWER + 1, 13 / (claim.order + leading)), 0.5) if rounded else (POWER + 1, 1)
         self.small = (ten ** (step - last), ten**-last)
-        self._zero = ten**-15 * self.small[1] if rounded else ten**-self.digits
+        self._zero = ten**-15 * (1 if leading else self.small[1]) if rounded else ten**-self.digits
         self.draws = tuple(self._drawn(rng) for _ in range(points))
         self._instants = [self._pair(draw) for draw in self.draws]
 
