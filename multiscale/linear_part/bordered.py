@@ -37,7 +37,7 @@ RIGID = 1e-13
 
 @dataclass
 class Stopwatch:
-    """Seconds of this thread's processor time spent in finding the modes, in factorisations, in solves for levels, and in
+    """Processor seconds of this thread spent in finding the modes, in factorisations, in solves for levels, and in
     looking for what is near; how many factorisations and right-hand sides there were."""
 
     finding: float = 0.0
