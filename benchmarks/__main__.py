@@ -15,6 +15,7 @@ NAMES = (
     "symbolic_parameters",
     "generated_call",
     "large_flow",
+    "large_chain",
     "force_quadrature",
     "frequency_response",
     "periodic_orbit",

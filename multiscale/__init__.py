@@ -35,6 +35,9 @@ if TYPE_CHECKING:
     from multiscale.fitting.model import Fit, fit
     from multiscale.fitting.response import ResponseModel, response_model
     from multiscale.fitting.ring_down import RingDownModel, ring_down_model
+    from multiscale.large.matrices import Springs
+    from multiscale.large.model import ReducedModel
+    from multiscale.large.reduction import reduce_model
     from multiscale.response.noise import NoisyFlow, noisy_flow
     from multiscale.response.observable import Observable, harmonics, observable
     from multiscale.response.orbits.limit_cycles import LimitCycle, limit_cycles
@@ -79,6 +82,7 @@ __all__ = [
     "Problem",
     "ProblemError",
     "QuadraticApproximant",
+    "ReducedModel",
     "ResonanceError",
     "Response",
     "ResponseModel",
@@ -88,6 +92,7 @@ __all__ = [
     "SlowFlow",
     "SmallDivisorWarning",
     "Special",
+    "Springs",
     "StorageError",
     "TaylorRemainder",
     "TermEstimate",
@@ -114,6 +119,7 @@ __all__ = [
     "onset",
     "pade",
     "periodic_series",
+    "reduce_model",
     "response_model",
     "ring_down",
     "ring_down_model",
@@ -144,10 +150,12 @@ _LATER = {
     "Peak": "response.steady.peak",
     "PeriodicSeries": "response.orbits.periodic_series",
     "QuadraticApproximant": "checks.approximants",
+    "ReducedModel": "large.model",
     "Response": "response.steady.frequency_response",
     "ResponseModel": "fitting.response",
     "RingDown": "response.ring_down",
     "RingDownModel": "fitting.ring_down",
+    "Springs": "large.matrices",
     "Special": "response.steady.sweep",
     "TaylorRemainder": "checks.taylor_remainder",
     "TermEstimate": "estimate",
@@ -171,6 +179,7 @@ _LATER = {
     "onset": "response.orbits.onset",
     "pade": "checks.pade",
     "periodic_series": "response.orbits.periodic_series",
+    "reduce_model": "large.reduction",
     "response_model": "fitting.response",
     "ring_down": "response.ring_down",
     "ring_down_model": "fitting.ring_down",
