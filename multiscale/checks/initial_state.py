@@ -73,6 +73,11 @@ def initial_state(
     UnsupportedTermError
         A series for several modes, drives or slow parameters; fewer modes than unknowns.
 
+    Notes
+    -----
+    One residual is accepted for all unknowns, so that they should be in units in which their motions are of comparable
+    size.
+
     Examples
     --------
     >>> import sympy as sp, multiscale as ms
@@ -113,9 +118,14 @@ def state_by(
 ) -> Array:
     """The same by the functions of displacement and velocity, once they are made."""
     motion = _Motion(functions, problem, parameters, time, *_read(problem, conditions))
+    form = problem.canonical(1)
     with np.errstate(all="ignore"):
-        state, within = _solved(motion)
+        state, within = _solved(motion, LINEAR)
         size = _largest(motion.residual(state))
+        if not within and (form.harmonics or form.torus):
+            # Corrections by a force that jumps, such as dry friction, do not fall with the amplitude.
+            state, within = _solved(motion, 1.0)
+            size = _largest(motion.residual(state))
     _check(size, within, motion.batch)
     return state
 
@@ -211,13 +221,14 @@ class _Motion:
         return change
 
 
-def _solved(motion: _Motion) -> tuple[Array, bool]:
+def _solved(motion: _Motion, small: float) -> tuple[Array, bool]:
     """(state, whether it lies where the correction terms are smaller than the motion itself), entry by entry.
 
-    Newton's method on all entries together; each step is halved until the residual of its entry falls.
+    Newton's method on all entries together; each step is halved until the residual of its entry falls. The linear
+    motion is read off at the amplitude `small`, relative to the size of the motion.
     """
     zero = np.zeros((len(motion._directions), *motion.batch))
-    plain, mean = motion.slope(zero, LINEAR)
+    plain, mean = motion.slope(zero, small)
     linear = motion.step(plain, mean)
     state, residual = linear, motion.residual(linear)
     for _ in range(ITERATIONS):
@@ -259,7 +270,10 @@ def _largest_frequency(problem: Problem, given: Mapping[str, Array]) -> Array:
     found = []
     for x in map(sp.sympify, problem.natural_frequencies):
         symbols = sorted(x.free_symbols, key=str)
-        found.append(np.asarray(sp.lambdify(symbols, x, "numpy")(*(given[s.name] for s in symbols)), dtype=float))
+        # As floats, since NumPy has no root of a whole number beyond 64 bits.
+        found.append(
+            np.asarray(sp.lambdify(symbols, sp.N(x, 17), "numpy")(*(given[s.name] for s in symbols)), dtype=float)
+        )
     largest: Array = np.max(np.broadcast_arrays(*found), axis=0)
     return largest
 

@@ -20,10 +20,13 @@ RELATIVE = (1e-12, 1e-11)
 """Relative tolerances of the two integrations; what they differ by is the error of the second."""
 
 
-def integrated(rhs: Callable[[float, Array], Any], start: Array, times: Array, size: float, what: str) -> list[Array]:
+def integrated(
+    rhs: Callable[[float, Array], Any], start: Array, times: Array, size: float | Array, what: str
+) -> list[Array]:
     """The states at `times` (columns, the first is the start), once for each tolerance of `RELATIVE`.
 
-    `size` is that of the solution; absolute tolerances are a tenth of the relative ones times it.
+    `size` is that of the solution, or of each of its components; absolute tolerances are a tenth of the relative ones
+    times it.
     """
     try:
         from scipy.integrate import solve_ivp
@@ -62,16 +65,19 @@ def motion_as_stated(
     end: float,
     points: int,
     size: int,
+    speed: int,
 ) -> tuple[Array, ...]:
     """Displacements (unknowns, points) from 0 to `end` for each tolerance, by the equations as stated.
 
-    `places` and `velocities` are those at the start; the size of the motion is 10^`size`. Orders of one expansion are
+    `places` and `velocities` are those at the start; displacements are of the size 10^`size` and velocities of
+    10^`speed`, which differ by the frequency and thus by the unit of time. Orders of one expansion are
     compared with the same motion, so the latest ones are kept.
     """
     times = np.linspace(0.0, end, points)
     equations = stated(problem)
     start = np.array(equations.start(places, velocities))
-    found = integrated(equations.rhs(dict(values)), start, times, 10.0**size, "the equations as stated")
+    sizes = np.array([10.0**size] * equations.size + [10.0**speed] * len(equations.second))
+    found = integrated(equations.rhs(dict(values)), start, times, sizes, "the equations as stated")
     motion = tuple(y[: equations.size].copy() for y in found)
     for y in motion:
         y.flags.writeable = False

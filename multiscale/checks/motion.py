@@ -122,6 +122,12 @@ def motion_of(expansion: Any, parameters: Mapping[Any, Any]) -> Motion:
     """With finite numbers for all parameters, or refused."""
     if not isinstance(expansion, Expansion):
         raise EvaluationError(f"an Expansion was expected, got a {type(expansion).__name__}: call expand first")
+    canonical = expansion.computation.canonical
+    if canonical.harmonics or canonical.torus or canonical.left_out:
+        raise EvaluationError(
+            "the range of validity is worked out for forces that are polynomial or given by Taylor polynomials; this "
+            "expansion averages a force over a cycle. Use compare(expansion, …) at the amplitudes in question"
+        )
     flow = expansion.slow_flow.to_numpy("cartesian")
     values = flow.values(parameters)
     for name, value in zip(flow.parameters, values, strict=True):
@@ -178,8 +184,9 @@ def _compiled(problem: Problem) -> tuple[Any, Any]:
             plain[j] = sp.expand(plain[j] + (mass * problem.with_relations(value) ** 2 - stiffness) * jets[key])
     mass = sp.Matrix(plain).jacobian(accelerations).subs(rest)
     # In the order in which jets were made: accelerations, velocities, displacements.
-    run = sp.lambdify([t, list(jets.values()), symbols], plain, "numpy", cse=True)
-    weigh = sp.lambdify([symbols], mass, "numpy")
+    # In floats: NumPy makes objects of whole numbers beyond 64 bits.
+    run = sp.lambdify([t, list(jets.values()), symbols], [sp.N(x, 17) for x in plain], "numpy", cse=True)
+    weigh = sp.lambdify([symbols], sp.N(mass, 17), "numpy")
 
     def forces(time: Array, u: Array, v: Array, w: Array, values: Mapping[str, float]) -> list[Array]:
         return run(time, [*w, *v, *u], [values[str(s.name)] for s in symbols])  # type: ignore[no-any-return]

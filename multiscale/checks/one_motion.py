@@ -56,7 +56,7 @@ class Run:
             reach = np.nan
         if not 0 < reach < np.inf:
             raise EvaluationError(f"horizon is {horizon!r}: expected a positive number, the time is horizon/ε^power")
-        if isinstance(initial, Mapping) or expansion.problem.ordering is not None:
+        if isinstance(initial, Mapping):
             check_free(expansion)
         start: Mapping[sp.Expr, float] | Array = initial if isinstance(initial, Mapping) else _state(expansion, initial)
         if isinstance(start, Mapping) and (several := [key for key, x in start.items() if np.ndim(x)]):
@@ -78,9 +78,9 @@ class Run:
         span = float(np.max(np.abs([*slow, *(end * flow(0.0, slow))])))
         slow_motions = integrated(flow, slow, times, span or 1.0, "the slow flow")
         approximate = [place(times, y) for y in slow_motions]
-        size = int(np.floor(np.log10(max(float(np.abs(approximate[0]).max()), 1e-300))))
+        sizes = (_decade(approximate[0]), _decade(velocity(times, slow_motions[0])))
         numbers = tuple(sorted(bound.items()))
-        exact = motion_as_stated(problem, numbers, tuple(start[:count]), tuple(start[count:]), end, self.points, size)
+        exact = motion_as_stated(problem, numbers, tuple(start[:count]), tuple(start[count:]), end, self.points, *sizes)
         largest = float(np.abs(exact[0]).max())
         if not largest > 0:
             raise EvaluationError("the motion stays at rest: give initial conditions that are not zero")
@@ -116,8 +116,18 @@ class Run:
         if self.expansion.problem.ordering is None:
             return self.initial
         scales = [self._own(u, small) for u in self.expansion.problem.unknowns]
+        if len(set(scales)) == 1:
+            # Unknowns of one order: so are the modes, however many are carried.
+            scales = scales[:1] * self.expansion.computation.modes
+        else:
+            check_free(self.expansion)
         state: Array = self.initial * np.repeat(scales, 2)
         return state
+
+
+def _decade(motion: Array) -> int:
+    """The power of ten below the largest value."""
+    return int(np.floor(np.log10(max(float(np.abs(motion).max()), 1e-300))))
 
 
 def _values(expansion: Expansion, parameters: Mapping[Any, Any]) -> dict[str, float]:

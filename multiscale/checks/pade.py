@@ -11,7 +11,8 @@ t(0) = 0. Quadratic ones from the kernel of the linear equations for Q and R. Al
 from __future__ import annotations
 
 from collections.abc import Iterator
-from typing import Any, Literal, overload
+from operator import index
+from typing import Any, Literal, SupportsIndex, overload
 
 import sympy as sp
 from sympy.polys.matrices import DomainMatrix
@@ -89,7 +90,9 @@ def _checked(degrees: Any, count: int, order: int) -> tuple[int, ...]:
         given = tuple(degrees)
     except TypeError:
         given = ()
-    if len(given) != count or any(isinstance(d, bool) or not isinstance(d, int) or d < 0 for d in given):
+    whole = all(isinstance(d, SupportsIndex) and not isinstance(d, bool) for d in given)
+    given = tuple(map(index, given)) if whole else ()
+    if len(given) != count or any(d < 0 for d in given):
         names = "(L, M)" if count == 2 else "(L, M, K)"
         raise EvaluationError(f"degrees={degrees!r}: expected {count} integers {names} ≥ 0")
     needed = sum(given) + count - 2

@@ -20,6 +20,7 @@ import sympy as sp
 
 from multiscale.errors import EvaluationError
 from multiscale.problem import Problem
+from multiscale.problem.force_law import law_name
 
 __all__ = ["Stated", "stated"]
 
@@ -27,18 +28,21 @@ Array = npt.NDArray[Any]
 RightHandSide = Callable[[float, Array], list[float]]
 ITERATIONS = 30
 ROUNDING = 1e-14
+STALLED = 1e-10
 
 
 @dataclass(frozen=True, eq=False)
 class Stated:
-    """`compiled` gives the highest derivatives, or (F, its Jacobian) at given ones where `implicit`; its last arguments
-    are the `parameters`. `second` are the unknowns that have a velocity of their own."""
+    """`compiled` gives the highest derivatives, or (F, its Jacobian) at given ones: where F is `linear` in them one
+    step solves it, where they are `implicit` several. Its last arguments are the `parameters`; `second` are the
+    unknowns that have a velocity of their own."""
 
     size: int
     second: tuple[int, ...]
     parameters: tuple[str, ...]
     compiled: Callable[..., Any]
     implicit: bool
+    linear: bool = False
 
     def start(self, places: Sequence[float], velocities: Sequence[float]) -> tuple[float, ...]:
         """y of given displacements and velocities."""
@@ -53,7 +57,13 @@ class Stated:
             try:
                 if self.implicit:
                     return _newton(lambda x: compiled(time, *state, *x, *numbers), n)
+                if self.linear:
+                    residual, slope = compiled(time, *state, *[0.0] * n, *numbers)
+                    return (-_step(residual, slope, n)[0]).tolist()  # type: ignore[no-any-return]
                 return list(compiled(time, *state, *numbers))
+            except EvaluationError:
+                # A table was asked for beyond its ends, and says so.
+                raise
             except (ArithmeticError, ValueError, np.linalg.LinAlgError):
                 return nowhere
 
@@ -72,14 +82,27 @@ class Stated:
         return all_second if len(self.second) == n else mixed
 
 
+def _step(residual: Any, slope: Any, n: int) -> tuple[Array, Array]:
+    """(slope⁻¹ residual, units of its components): rows and columns are brought to one size first, as equations and
+    unknowns may be in any units."""
+    matrix = np.array(slope, dtype=float).reshape(n, n)
+    rows = 1 / np.abs(matrix).max(axis=1)
+    columns = 1 / np.abs(rows[:, None] * matrix).max(axis=0)
+    found = np.linalg.solve(rows[:, None] * matrix * columns, rows * np.array(residual, dtype=float))
+    return columns * found, columns
+
+
 def _newton(equations: Callable[[list[float]], Any], n: int) -> list[float]:
-    a = np.zeros(n)
+    a, before = np.zeros(n), np.inf
     for _ in range(ITERATIONS):
         residual, slope = equations(a.tolist())
-        step = np.linalg.solve(np.array(slope, dtype=float).reshape(n, n), np.array(residual, dtype=float))
+        step, units = _step(residual, slope, n)
         a = a - step
-        if np.max(np.abs(step)) <= ROUNDING * np.max(np.abs(a)):
+        change, size = np.max(np.abs(step / units)), np.max(np.abs(a / units))
+        # Steps end where rounding does, which is later for inertia matrices that are nearly singular.
+        if change <= ROUNDING * size or before / 2 < change <= STALLED * size:
             return a.tolist()
+        before = change
     raise ArithmeticError("the equations have no highest derivatives near zero")
 
 
@@ -95,7 +118,7 @@ def stated(problem: Problem) -> Stated:
     equations = _hidden(problem, x, v, a)
     time = sp.Dummy("t", real=True)
     plain = {problem.time: time} | ({problem.small: sp.Integer(1)} if problem.ordering is not None else {})
-    equations = [e.subs(plain) for e in equations]
+    equations, laws = _named_laws(problem, [e.subs(plain) for e in equations])
     names = {s.name: s for s in (*problem.parameters, problem.small)}
     present = set().union(*(e.free_symbols for e in equations))
     used = present - {time, *x, *v, *a}
@@ -104,19 +127,41 @@ def stated(problem: Problem) -> Stated:
     state = [*x, *(v[k] for k in second)]
     if strange := sorted(used - set(names.values()), key=str):
         raise EvaluationError(f"the equations contain {strange[0]}, which is no parameter of the problem")
-    if unknown := sorted(set().union(*(e.atoms(sp.core.function.AppliedUndef) for e in equations)), key=str):
+    applied = set().union(*(e.atoms(sp.core.function.AppliedUndef) for e in equations))
+    if unknown := sorted((f for f in applied if str(f.func) not in laws), key=str):
         shown = unknown[0].subs(time, problem.time)
         raise EvaluationError(f"{shown} has no numeric value: state the problem with a known function in its place")
     parameters = sorted((s for s in used), key=lambda s: str(s.name))
     inertia = sp.Matrix([[sp.diff(e, y) for y in highest] for e in equations])
+    if inertia.has(sp.Derivative):
+        raise EvaluationError(
+            "a force law depends on an acceleration, so that the equations cannot be solved for it: state the law in "
+            "displacements and velocities"
+        )
     rest = sp.Matrix([e.subs(dict.fromkeys(highest, 0)) for e in equations])
-    explicit = None if inertia.free_symbols & set(highest) else _explicit(inertia, rest)
+    linear = not inertia.free_symbols & set(highest)
+    explicit = _explicit(inertia, rest) if linear else None
     if explicit is not None:
         arguments, output = [time, *state, *parameters], explicit
     else:
         arguments, output = [time, *state, *highest, *parameters], [equations, list(inertia)]
-    compiled = sp.lambdify(arguments, output, modules="math", cse=True)
-    return Stated(len(x), second, tuple(str(s.name) for s in parameters), compiled, explicit is None)
+    compiled = sp.lambdify(arguments, output, modules=[laws, "math"], cse=True)
+    return Stated(
+        len(x), second, tuple(str(s.name) for s in parameters), compiled, not linear, linear and explicit is None
+    )
+
+
+def _named_laws(
+    problem: Problem, equations: Sequence[sp.Expr]
+) -> tuple[list[sp.Expr], dict[str, Callable[..., float]]]:
+    """The equations with force laws under names that source code can hold, and what these names stand for."""
+    called = {name: sp.Function(law_name(name)) for name in problem.laws}
+
+    def is_law(x: sp.Basic) -> bool:
+        return isinstance(x, sp.core.function.AppliedUndef) and str(x.func) in called
+
+    laws = {law_name(name): lambda *x, function=law.function: float(function(*x)) for name, law in problem.laws.items()}
+    return [e.replace(is_law, lambda x: called[str(x.func)](*x.args)) for e in equations], laws
 
 
 def _explicit(inertia: sp.Matrix, rest: sp.Matrix) -> list[sp.Expr] | None:

@@ -1,16 +1,17 @@
 """What the Taylor polynomials of an expansion leave out at a working amplitude.
 
-    ρ_k = max |f_k − T_k| / (K_k a_k)        over |u_j| ≤ a_j, |du_j/dt| ≤ ω_j a_j, all times
+    ρ_k = max |f_k − T_k| / max_j |K_kj| a_j        over |u_j| ≤ a_j, |du_j/dt| ≤ ω_j a_j, all times
 
-f_k is equation k as stated, T_k its Taylor polynomial as the expansion uses it, K_k a_k the linear restoring force of
-its unknown. Points of a grid, its corners among them; in double precision, so that below about 1e-15 there is no
-telling. A small ρ does not bound the error of the expansion; a large one says that it cannot be right.
+f_k is equation k as stated, T_k its Taylor polynomial as the expansion uses it, K_kj a_j the largest linear restoring
+force in it. For coupled equations the largest frequency stands for each ω_j. Points of a grid, its corners among them;
+in double precision, so that below about 1e-15 there is no telling. A small ρ does not bound the error of the expansion;
+a large one says that it cannot be right.
 """
 
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -44,7 +45,7 @@ class TaylorRemainder:
     amplitude : tuple of arrays
         a_j, one entry for each unknown.
     relative : array, (equations,) + S
-        Largest remainder in each equation over the linear restoring force K_k a_k.
+        Largest remainder in each equation over the largest linear restoring force in it, max_j |K_kj| a_j.
     radius : tuple of float or None
         For each unknown the distance to the nearest singularity, real or complex, with the others at rest: the radius
         of convergence. Infinite for entire functions, None where it is not decided.
@@ -98,16 +99,15 @@ def taylor_remainder(
     problem = expansion.problem
     sizes = _amplitudes(problem, amplitude)
     values = _numbers(expansion, parameters or {})
-    frequencies = _frequencies(problem, values)
+    frequencies = _frequencies(expansion, values)
     jets = {sp.Symbol(f"@{k}.{d}", real=True): (k, d) for k in range(len(problem.unknowns)) for d in (0, 1, 2)}
     stated = [_plain(x, problem, jets, values) for x in problem.equations]
     polynomials = [_plain(x, problem, jets, values) for x in problem.polynomials(expansion.order)]
     radii = tuple(_radius(stated, polynomials, jets, k, sizes[k], problem) for k in range(len(problem.unknowns)))
     relative = []
-    for k, (x, y) in enumerate(zip(stated, polynomials, strict=True)):
-        stiffness = _stiffness(y, jets, k, problem)
+    for x, y in zip(stated, polynomials, strict=True):
         remainder = _largest(x - y, jets, problem, sizes, frequencies, values)
-        relative.append(remainder / (stiffness * sizes[k]))
+        relative.append(remainder / _restoring(y, jets, sizes, problem))
     return TaylorRemainder(tuple(sizes), np.stack(np.broadcast_arrays(*relative)), radii, expansion.order)
 
 
@@ -134,16 +134,19 @@ def _numbers(expansion: Expansion, parameters: Mapping[Any, Any]) -> dict[sp.Sym
     return {by_name[name]: float(x) for name, x in zip(function.parameters, values, strict=True)}
 
 
-def _frequencies(problem: Problem, values: Mapping[sp.Symbol, float]) -> list[float]:
-    found = []
-    for u, w in zip(problem.unknowns, problem.natural_frequencies, strict=True):
+def _frequencies(expansion: Expansion, values: Mapping[sp.Symbol, float]) -> list[float]:
+    """One for each unknown: its own, or for coupled equations the largest."""
+    problem, found = expansion.problem, []
+    for name, w in zip(problem.frequency_names, problem.natural_frequencies, strict=True):
         value = complex(w.subs({problem.time: 0}).subs(values))
         if not (value.real > 0 and abs(value.imag) < 1e-12 * value.real):
             raise EvaluationError(
-                f"the squared frequency of {u} at the state of rest is {(value**2).real:.6g}, not positive: the rest "
-                "is unstable there (pull-in, buckling) and no oscillation is expanded about it"
+                f"the squared frequency {name}**2 at the state of rest is {(value**2).real:.6g}, not positive: the "
+                "rest is unstable there (pull-in, buckling) and no oscillation is expanded about it"
             )
         found.append(value.real)
+    if expansion.computation.canonical.operator is not None:
+        return [max(found)] * len(problem.unknowns)
     return found
 
 
@@ -156,12 +159,18 @@ def _plain(
     return problem.with_relations(x).xreplace(named).xreplace(named_zero).subs(values)
 
 
-def _stiffness(x: sp.Expr, jets: Mapping[sp.Symbol, tuple[int, int]], k: int, problem: Problem) -> float:
-    """The constant part of the own linear force: drives are left out."""
-    own = next(s for s, jet in jets.items() if jet == (k, 0))
-    slope = sp.diff(x, own).subs(dict.fromkeys(jets, 0))
-    steady = sp.Add(*(term for term in sp.Add.make_args(sp.expand(slope)) if problem.time not in term.free_symbols))
-    return abs(float(steady))
+def _restoring(
+    x: sp.Expr, jets: Mapping[sp.Symbol, tuple[int, int]], sizes: Sequence[Array], problem: Problem
+) -> Array:
+    """max_j |K_kj| a_j in equation k, K its constant part: drives are left out."""
+    forces = []
+    for s, (j, derivative) in jets.items():
+        if derivative == 0:
+            slope = sp.expand(sp.diff(x, s).subs(dict.fromkeys(jets, 0)))
+            steady = sp.Add(*(term for term in sp.Add.make_args(slope) if problem.time not in term.free_symbols))
+            forces.append(abs(float(steady)) * sizes[j])
+    found: Array = np.max(np.broadcast_arrays(*forces), axis=0)
+    return found
 
 
 def _radius(
@@ -173,12 +182,14 @@ def _radius(
     problem: Problem,
 ) -> float | None:
     own = next(s for s, jet in jets.items() if jet == (k, 0))
-    others = {s: 0 for s in jets if s != own}
+    others, ones = ({s: value for s in jets if s != own} for value in (0, 1))
     radius: float | None = math.inf
     for x, y in zip(stated, polynomials, strict=True):
         if x == y:
             continue
-        alone = sp.Add(*(term.subs(others) for term in sp.Add.make_args(x) if own in term.free_symbols))
+        terms = [term for term in sp.Add.make_args(x) if own in term.free_symbols]
+        # A factor that vanishes at rest, such as a velocity, hides no singularity of the rest of its term.
+        alone = sp.Add(*(term.subs(others) or term.subs(ones) for term in terms))
         if alone.has(sp.zoo, sp.nan):
             return None
         places = singular_places(alone, own)

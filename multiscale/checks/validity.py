@@ -129,7 +129,9 @@ def validity(
     -----
     What the equations of motion leave over drives an error: its resonant part one that grows with time, the rest one
     that does not (`multiscale.checks.error_growth`). That holds for motions that are neutrally stable or stable; where
-    the motion is unstable, errors grow faster than is promised. Unknowns share one unit.
+    the motion is unstable, errors grow faster than is promised. An error of amplitude also turns the phase, by its
+    effect on the frequency: over horizons of several 1/(a dω/da) the error of the motion may be several times the
+    tolerance, and `compare` gives it. Unknowns share one unit.
 
     Examples
     --------

@@ -68,6 +68,10 @@ _KEYWORDS = frozenset(
         "parameters",
         "result",
         "main",
+        # What math.h defines as macros may not be declared.
+        *("NAN", "INFINITY", "HUGE_VAL", "HUGE_VALF", "HUGE_VALL", "MATH_ERRNO", "MATH_ERREXCEPT"),
+        *("FP_INFINITE", "FP_NAN", "FP_NORMAL", "FP_SUBNORMAL", "FP_ZERO", "FP_ILOGB0", "FP_ILOGBNAN"),
+        *("FP_FAST_FMA", "FP_FAST_FMAF", "FP_FAST_FMAL", "math_errhandling"),
     ]
 )
 

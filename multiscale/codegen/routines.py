@@ -14,6 +14,7 @@ from multiscale.codegen.functions import (
     inversion_tape,
     slow_flow_routine,
 )
+from multiscale.codegen.runtime import RUNTIME
 from multiscale.codegen.tape import Node, Tape
 from multiscale.errors import EvaluationError, MultiscaleError
 from multiscale.expansion import Expansion
@@ -92,12 +93,18 @@ def _frequency(expansion: Expansion) -> Routine:
 
 
 def _check_functions(routine: Routine) -> None:
+    """Raises `EvaluationError` where the routine calls more than elementary functions, or holds an average."""
     tape = routine.program.tape
-    called = {tape.steps[node][1] for node in tape.live(routine.outputs) if tape.steps[node][0] == "call"}
-    if strange := sorted(map(str, called - _ELEMENTARY)):
+    live = [tape.steps[node] for node in tape.live(routine.outputs)]
+    called = {str(step[1]) for step in live if step[0] in ("call", "apply")}
+    averages = any(step[0] in ("quad", "jump") for step in live)
+    remedy = "which a file of its own cannot hold: use slow_flow.to_numpy"
+    if laws := sorted(called - _ELEMENTARY - RUNTIME.keys()):
+        raise EvaluationError(f"the problem contains a force given as a Python function ({', '.join(laws)}), {remedy}")
+    if averages or called - _ELEMENTARY:
         raise EvaluationError(
-            f"the problem contains a force given as a Python function ({', '.join(strange)}), which cannot be written "
-            "into a file of its own: use slow_flow.to_numpy, or state the force as an expression"
+            f"the problem contains a force that is no polynomial; its average over a cycle needs quadrature or special "
+            f"functions, {remedy}, or state the force as a Taylor polynomial"
         )
 
 

@@ -11,9 +11,11 @@ import numpy.typing as npt
 
 from multiscale.errors import EvaluationError
 
-__all__ = ["Fit", "Model", "fit"]
+__all__ = ["Fit", "Model", "amplitude_slope", "fit"]
 
 Array = npt.NDArray[Any]
+UNDETERMINED = 1e-8
+"""Combinations of parameters whose influence is smaller than this, relative to that of each, are not determined."""
 
 
 class Model(Protocol):
@@ -33,7 +35,8 @@ class Fit:
     ----------
     values, uncertainties : {name: float}
         The uncertainty is the standard deviation for independent errors of equal size; with ``noise=None`` their size
-        is taken from the misfit.
+        is taken from the misfit. It is infinite for values that the data do not determine, such as two parameters of
+        which only the product matters.
     covariance : array (K, K)
         In the order of `values`.
     misfit : float
@@ -71,12 +74,14 @@ def fit(
     noise : float, optional
         Standard deviation of the errors of the data, where it is known.
     **options
-        Handed to ``scipy.optimize.least_squares``; by default every value is scaled by its start.
+        Handed to ``scipy.optimize.least_squares``; by default every value is scaled by its start. ``bounds`` keep the
+        search among values where the model exists, positive damping for instance.
 
     Raises
     ------
     EvaluationError
-        A start that does not name every value; data of another length; no convergence.
+        A start that does not name every value once; data that are not finite or of another length; a noise that is not
+        positive; no convergence.
     ImportError
         SciPy (extra ``check``) is not installed.
 
@@ -102,6 +107,10 @@ def fit(
     x = _start(model.names, start)
     if record.shape != (shape := model.predict(x).shape):
         raise EvaluationError(f"the data have shape {record.shape}, the model predicts {shape}: give as many")
+    if not np.isfinite(record).all():
+        raise EvaluationError("the data hold values that are not finite: leave them out of data and model")
+    if noise is not None and not (np.isfinite(noise) and noise > 0):
+        raise EvaluationError(f"noise is {noise!r}: expected a standard deviation > 0")
     if record.size <= len(x):
         raise EvaluationError(f"{record.size} data for {len(x)} unknown values: more data are needed")
     scale = np.where(x == 0, 1.0, np.abs(x))
@@ -110,9 +119,7 @@ def fit(
     if not done.success:
         raise EvaluationError(f"the fit did not converge ({done.message}): start nearer, or give max_nfev")
     variance = noise**2 if noise is not None else 2 * done.cost / (record.size - len(x))
-    # With columns of very different units the normal matrix is inverted in units of the start values.
-    scaled = done.jac * scale
-    covariance = np.linalg.pinv(scaled.T @ scaled) * variance * np.outer(scale, scale)
+    covariance = _covariance(done.jac * scale) * variance * np.outer(scale, scale)
     deviation = np.sqrt(np.diag(covariance))
     return Fit(
         dict(zip(model.names, done.x.tolist(), strict=True)),
@@ -122,11 +129,30 @@ def fit(
     )
 
 
+def _covariance(jacobian: Array) -> Array:
+    """(JᵀJ)^{-1}, with infinite variances for what J does not determine, J being right to about ten digits."""
+    # In units that make every column a unit vector; a parameter without influence is its own null vector.
+    norms = np.linalg.norm(jacobian, axis=0)
+    units = np.where(norms > 0, norms, 1.0)
+    _, sizes, rows = np.linalg.svd(jacobian / units, full_matrices=False)
+    kept = sizes > UNDETERMINED
+    inverse = (rows[kept].T / sizes[kept] ** 2) @ rows[kept] / np.outer(units, units)
+    free = np.linalg.norm(rows[~kept], axis=0) > np.sqrt(UNDETERMINED)
+    inverse[free, free] = np.inf
+    return np.asarray(inverse)
+
+
+def amplitude_slope(p: Array, q: Array, slope_p: Array, slope_q: Array) -> Array:
+    """The derivative of √(p² + q²); 0 at rest, where it has none."""
+    size = np.hypot(p, q)
+    return np.asarray((p * slope_p + q * slope_q) / np.where(size > 0, size, 1.0))
+
+
 def _start(names: Sequence[str], start: Mapping[str, float] | Sequence[float]) -> Array:
     if isinstance(start, Mapping):
         given = {str(getattr(key, "name", key)): value for key, value in start.items()}
-        if given.keys() != set(names):
-            raise EvaluationError(f"start names {', '.join(given)}: expected a value for each of {', '.join(names)}")
+        if given.keys() != set(names) or len(given) < len(start):
+            raise EvaluationError(f"start names {', '.join(given)}: expected one value for each of {', '.join(names)}")
         start = [given[name] for name in names]
     x = np.array(start, dtype=float)
     if x.shape != (len(names),) or not np.isfinite(x).all():

@@ -19,6 +19,7 @@ import sympy as sp
 from multiscale.codegen.numpy_function import NumpyFunction
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
+from multiscale.fitting.model import amplitude_slope
 from multiscale.fitting.unknowns import Unknowns
 from multiscale.response.steady.frequency_response import Response, frequency_response
 from multiscale.response.steady.search import states_at
@@ -76,7 +77,7 @@ class ResponseModel:
         if self.observed == "quadratures":
             return np.concatenate([slope_p, slope_q])
         p, q = states[2 * self.mode : 2 * self.mode + 2, :, None]
-        return np.asarray((p * slope_p + q * slope_q) / np.hypot(p, q))
+        return amplitude_slope(p, q, slope_p, slope_q)
 
     def _checked(self, x: npt.ArrayLike) -> Array:
         x = np.asarray(x, dtype=float)
@@ -95,7 +96,11 @@ class ResponseModel:
         for value in self.sweep.tolist():
             found = table.get(value, [])
             if not found:
-                raise EvaluationError(f"no stable steady state at {self.swept} = {value}: leave it out of the sweep")
+                at = ", ".join(f"{name} = {x:.6g}" for name, x in zip(self.names, free.tolist(), strict=True))
+                raise EvaluationError(
+                    f"no stable steady state at {self.swept} = {value} for {at}: leave it out of the sweep, "
+                    "or keep a fit away from such values with bounds"
+                )
             # The first point of a sweep has no history: the smallest motion is what a settled system shows there.
             before = states[-1] if states else np.zeros_like(found[0])
             states.append(min(found, key=lambda y: float(np.linalg.norm(y - before))))
@@ -177,9 +182,9 @@ def response_model(
         raise EvaluationError(f"sweep has {len(sweep)} entries: expected one, {{parameter: values}}")
     ((key, given),) = sweep.items()
     values = np.asarray(given, dtype=float)
-    steps = np.diff(values)
-    if values.ndim != 1 or not ((steps > 0).all() or (steps < 0).all()):
-        raise EvaluationError("the values of the sweep must be 1-D and rise, or fall, throughout")
+    steps = np.diff(np.atleast_1d(values))
+    if values.ndim != 1 or not len(values) or not ((steps > 0).all() or (steps < 0).all()):
+        raise EvaluationError("the values of the sweep must be 1-D, at least one, and rise, or fall, throughout")
     if observed not in ("amplitude", "quadratures"):
         raise EvaluationError(f"observed is {observed!r}: expected 'amplitude' or 'quadratures'")
     modes = len(expansion.symbols.A)
@@ -187,6 +192,8 @@ def response_model(
         raise EvaluationError(f"mode is {mode!r}: this expansion has the modes 0 … {modes - 1}")
     flow = expansion.slow_flow
     name = str(key.name) if isinstance(key, sp.Symbol) else str(key)
+    if name in {str(getattr(k, "name", k)) for k in known or {}}:
+        raise EvaluationError(f"parameter {name!r} is given twice: it is either swept or known")
     functions = (flow.to_numpy(wrt="state"), flow.to_numpy(wrt="parameters"))
     listed = {**(known or {}), name: float(values[0])}
     unknowns = Unknowns.of(expansion.problem, functions[0], free, listed)

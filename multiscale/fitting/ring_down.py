@@ -17,6 +17,7 @@ import numpy.typing as npt
 from multiscale.codegen.numpy_function import NumpyFunction
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
+from multiscale.fitting.model import amplitude_slope
 from multiscale.fitting.unknowns import Unknowns
 
 __all__ = ["RingDownModel", "ring_down_model"]
@@ -71,8 +72,7 @@ class RingDownModel:
         states, slopes = self._with_slopes(free, start)
         if self._seen is None:
             p, q = states[2 * self.index : 2 * self.index + 2]
-            rate = p * slopes[2 * self.index] + q * slopes[2 * self.index + 1]
-            return np.asarray(rate / np.hypot(p, q)).T
+            return amplitude_slope(p, q, slopes[2 * self.index], slopes[2 * self.index + 1]).T
         by_state = self._seen[1](self.times, states, *values)[self.index]
         by_parameter = self._seen[2](self.times, states, *values)[self.index]
         result = np.einsum("nt,nkt->tk", by_state, slopes)
@@ -105,11 +105,12 @@ class RingDownModel:
             turning[:, : len(free)] += by_parameter(t, y, *values) @ chain * units[: len(free)]
             return np.concatenate([flow(t, y, *values), turning.ravel()])
 
-        floor = _TOLERANCE * max(size, np.finfo(float).tiny)
+        # At rest the state itself gives no scale, its derivatives do.
+        floor = _TOLERANCE * np.where(np.arange(n + first.size) < n, max(size, np.finfo(float).tiny), size or 1.0)
         found = self._integrated(rate, np.concatenate([start, first.ravel()]), floor)
         return found[:n], found[n:].reshape(n, -1, len(self.times)) / units[:, None]
 
-    def _integrated(self, rate: Any, start: Array, floor: float) -> Array:
+    def _integrated(self, rate: Any, start: Array, floor: Any) -> Array:
         from scipy.integrate import solve_ivp
 
         span = (self.times[0], self.times[-1])
@@ -170,8 +171,8 @@ def ring_down_model(
     except ImportError:
         raise ImportError("ring_down_model needs SciPy: pip install 'multiscale-expansions[check]'") from None
     record = np.asarray(times, dtype=float)
-    if record.ndim != 1 or len(record) < 2 or not (np.diff(record) > 0).all():
-        raise EvaluationError("times must be a 1-D array of at least two increasing values")
+    if record.ndim != 1 or len(record) < 2 or not (np.isfinite(record).all() and (np.diff(record) > 0).all()):
+        raise EvaluationError("times must be a 1-D array of at least two increasing, finite values")
     if observed not in ("displacement", "velocity", "amplitude"):
         raise EvaluationError(f"observed is {observed!r}: expected 'displacement', 'velocity' or 'amplitude'")
     flow = expansion.slow_flow

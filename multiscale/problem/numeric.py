@@ -1,7 +1,8 @@
 """Shapes of modes: what a kernel is, and how it is found in floating point where frequencies have no closed form.
 
 The kernel of L_0(iω) is read off a singular value decomposition; the references are the first unknowns on which its
-block is well conditioned.
+block is well conditioned. Both are asked of R L_0 S with diagonal R and S that make the entries of one size, so that
+unknowns may be in different units: kernel of L_0 = S · kernel of R L_0 S.
 """
 
 from __future__ import annotations
@@ -61,8 +62,9 @@ def numeric_kernel(
     """Shapes with 1 in their references, the first unknowns in the order `preferred` that make a well-posed choice."""
     mass, damping, stiffness = (_numbers(x, reader) for x in (operator.mass, operator.damping, operator.stiffness))
     s = 1j * float(frequency)
-    slope = 2 * s * mass + damping
-    left, values, right = np.linalg.svd(s * s * mass + s * damping + stiffness)
+    rows, columns = _scales(abs(s * s * mass) + abs(s * damping) + abs(stiffness))
+    slope = rows[:, None] * (2 * s * mass + damping) * columns
+    left, values, right = np.linalg.svd(rows[:, None] * (s * s * mass + s * damping + stiffness) * columns)
     size, scale = len(mass), values[0] if values[0] else 1.0
     shapes, covectors = right[size - multiplicity :].conj().T, left[:, size - multiplicity :]
     if values[size - multiplicity] > SINGULAR * scale:
@@ -73,9 +75,19 @@ def numeric_kernel(
     for references in combinations(preferred, multiplicity):
         block = shapes[list(references)]
         if np.linalg.svd(block)[1][-1] > WELL_CONDITIONED * largest:
-            scaled = shapes @ np.linalg.inv(block)
+            scaled = (columns[:, None] * shapes) @ np.linalg.inv(columns[list(references), None] * block)
             return Kernel((), references, tuple(tuple(map(_frozen, column)) for column in scaled.T))
     raise defective(frequency, multiplicity)
+
+
+def _scales(sizes: Any) -> tuple[Any, Any]:
+    """Powers of two for rows and columns after which the largest entry of each is about 1."""
+    rows, columns = np.ones(len(sizes)), np.ones(len(sizes))
+    for _ in range(4):
+        for scales, axis in ((rows, 1), (columns, 0)):
+            largest = (rows[:, None] * sizes * columns).max(axis=axis)
+            scales *= np.exp2(-np.round(np.log2(np.where(largest > 0, largest, 1.0)) / 2))
+    return rows, columns
 
 
 def _numbers(matrix: FrozenMatrix, reader: Reader) -> Any:

@@ -19,12 +19,14 @@ from multiscale.problem.reading import decimals, given_expression
 __all__ = ["about_rest", "rest_positions"]
 
 Pair = tuple[sp.Expr, sp.Expr]
+ROUNDING = 1e-12
+"""By how much a position given by floats may be off, relative to itself."""
 
 
 def rest_positions(
     given: Any, unknowns: Sequence[sp.Expr], time: sp.Symbol, small: sp.Symbol | None
 ) -> dict[sp.Expr, sp.Expr]:
-    """{unknown: position of rest}, checked."""
+    """{unknown: position of rest}, checked; floats are left in them."""
     if not isinstance(given, Mapping):
         raise ProblemError(f"about={given!r}: expected a mapping {{unknown: position of rest}}")
     result = {}
@@ -34,7 +36,6 @@ def rest_positions(
             raise ProblemError(f"about has the key {u!r}: expected one of the unknowns {unknowns}")
         if position is None:
             raise ProblemError(f"about gives {u} the position {value!r}: expected a SymPy expression or a number")
-        position = decimals(position)
         if time in position.free_symbols or small in position.free_symbols:
             raise ProblemError(f"about gives {u} the position {position}: a state of rest is constant")
         result[u] = position
@@ -52,8 +53,13 @@ def about_rest(
     """(equations in the deviation from rest, the relations between parameters that make it a state of rest).
 
     `hidden` are the equations in jets, `jets` what these stand for; `vanishing` symbols are zero at leading order,
-    `stated` are the relations that the user declares, whose symbols are not to be eliminated.
+    `stated` are the relations that the user declares, whose symbols are not to be eliminated. Floats stand for the
+    decimals they print as, those of a position in double precision; a position that has floats is right to their digits
+    only, and what force they leave is dropped.
     """
+    rounded = any(x.has(sp.Float) for x in about.values())
+    about = {u: decimals(x.xreplace({f: sp.Float(f, 15) for f in x.atoms(sp.Float)})) for u, x in about.items()}
+    hidden = [decimals(x) for x in hidden]
     shift = {s: s + about[x] for s, x in jets.items() if x in about}
     known = set().union(*(x.free_symbols for x in hidden))
     placed = set().union(*(x.free_symbols for x in about.values()))
@@ -68,7 +74,7 @@ def about_rest(
         for key, value in (*stated, *relations):
             force = force.subs(key, value.subs(rest))
         static = sp.cancel(sp.together(force))
-        if static != 0 and not static.equals(0):
+        if static != 0 and not static.equals(0) and not (rounded and _is_rounding(force, equation, shift, rest)):
             if not free:
                 raise ProblemError(
                     f"about={about} is no state of rest: the force {sp.factor(static)} is left there. Give the exact "
@@ -78,7 +84,8 @@ def about_rest(
             force = force.subs(*relations[-1])
             static = sp.cancel(sp.together(force))
         # What is left is zero, but roots and functions may hide that from polynomial arithmetic.
-        balanced.append(equation if static == 0 and not _has_roots(force) else equation - force)
+        left = equation if static == 0 and not _has_roots(force) else equation - force
+        balanced.append(_without_constant(left, rest, time) if any(map(_has_roots, about.values())) else left)
     return balanced, relations
 
 
@@ -88,6 +95,27 @@ def _static(equation: sp.Expr, rest: Mapping[sp.Symbol, int], time: sp.Symbol) -
     if value.has(sp.zoo, sp.nan):
         return sp.Integer(0)
     return sp.Add(*(x for x in sp.Add.make_args(sp.expand(value)) if time not in x.free_symbols))
+
+
+def _without_constant(equation: sp.Expr, rest: Mapping[sp.Symbol, int], time: sp.Symbol) -> sp.Expr:
+    """An equation whose constant force is known to vanish, with its powers of the deviation multiplied out.
+
+    Roots in the position are leaves of their own where products are read, and would not cancel there.
+    """
+    if not equation.is_polynomial(*rest):
+        return equation
+    kept = {time, *rest}
+    return sp.Add(*(x for x in sp.Add.make_args(sp.expand(equation)) if x.free_symbols & kept))
+
+
+def _is_rounding(
+    force: sp.Expr, equation: sp.Expr, shift: Mapping[sp.Symbol, sp.Expr], rest: Mapping[sp.Symbol, int]
+) -> bool:
+    """Whether the force left is no more than what the rounding of the positions makes, by the stiffness there."""
+    if force.free_symbols:
+        return False
+    sizes = [abs((sp.diff(equation, s).subs(rest) * (x - s)).evalf(30)) for s, x in shift.items()]
+    return all(x.is_number for x in sizes) and bool(abs(force.evalf(30)) <= ROUNDING * sp.Add(*sizes))
 
 
 def _has_roots(x: sp.Expr) -> bool:

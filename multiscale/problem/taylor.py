@@ -22,6 +22,8 @@ from multiscale.problem.terms import Layout
 __all__ = ["with_taylor_polynomials"]
 
 HIGHEST_LEAD = 60
+DRIVEN = 8
+"""How many powers of ε beyond the order of an expansion a drive is looked for."""
 
 
 def with_taylor_polynomials(
@@ -50,7 +52,7 @@ def with_taylor_polynomials(
         polynomials = {}
         for x in wanted:
             try:
-                found = series.coefficients(exact[x], depth)
+                found = _with_drives(series, exact[x], depth)
             except NotSmallError:
                 continue
             except NotAnalyticError as error:
@@ -62,6 +64,24 @@ def with_taylor_polynomials(
         _refuse_singular([polynomials.get(x, x) for x in terms], scaled, layout, shown)
         result.append(sp.Add(*(polynomials.get(x, x) for x in terms)) if polynomials else equation)
     return result, cut
+
+
+def _with_drives(series: EpsilonSeries, x: sp.Expr, depth: int) -> list[sp.Expr]:
+    """x_0 … x_depth, and further to where every function of time in x has appeared: a drive is part of the problem,
+    with its relation, also where an expansion of this order does not feel it yet."""
+    found = series.coefficients(x, depth)
+    wanted = {angle for f in x.atoms(sp.sin, sp.cos) if (angle := _turning(f.args[0], series)) != 0}
+    for further in range(depth + 1, depth + DRIVEN + 1):
+        if all(any(c.has(angle, -angle) for c in found) for angle in wanted):
+            break
+        found = series.coefficients(x, further)
+    return found
+
+
+def _turning(angle: sp.Expr, series: EpsilonSeries) -> sp.Expr:
+    """The terms of an angle that turn with time whatever the unknowns do."""
+    terms = sp.Add.make_args(angle)
+    return sp.Add(*(a for a in terms if series.time in a.free_symbols and not a.free_symbols & series.jets))
 
 
 def _lead(equation: sp.Expr, series: EpsilonSeries, layout: Layout) -> int:

@@ -131,7 +131,7 @@ def noisy_flow(expansion: Expansion, densities: Mapping[sp.Expr, Any]) -> NoisyF
     Raises
     ------
     ProblemError
-        A key that is no unknown, or an unknown without a mode of its own.
+        A key that is no unknown; unknowns that are coupled at leading order; a density that depends on time.
 
     Examples
     --------
@@ -149,27 +149,28 @@ def noisy_flow(expansion: Expansion, densities: Mapping[sp.Expr, Any]) -> NoisyF
         raise ProblemError(
             f"{unknown[0]} is not an unknown of the problem: expected {', '.join(map(str, problem.unknowns))}"
         )
+    if problem.canonical(1).operator is not None:
+        raise ProblemError(
+            f"{', '.join(map(str, problem.unknowns))} have no oscillators of their own at leading order, so a force "
+            "on one equation drives several modes: state the problem in modal coordinates, and the noise on these"
+        )
     intensity: dict[sp.Symbol, sp.Expr] = {}
     for k, u in enumerate(problem.unknowns):
-        density = sp.sympify(densities.get(u, 0))
+        density = problem.with_relations(sp.sympify(densities.get(u, 0)))
+        if density.has(problem.time, *problem.unknowns):
+            raise ProblemError(f"the density {densities[u]} depends on time: expected that of a stationary force")
         rate = density / (2 * (_inertia(expansion, u) * problem.natural_frequencies[k]) ** 2)
         intensity[expansion.symbols.p[k]] = intensity[expansion.symbols.q[k]] = sp.cancel(rate)
     return NoisyFlow(expansion, intensity)
 
 
 def _inertia(expansion: Expansion, u: sp.Expr) -> sp.Expr:
-    """The coefficient of u'' at rest and at leading order."""
+    """The coefficient of u'' at rest and at leading order, in the one equation that has it."""
     problem = expansion.problem
-    second = u.diff(problem.time, 2)
     acceleration = sp.Dummy("acceleration")
+    small = [problem.small, *(x for x in problem.ordering or () if isinstance(x, sp.Symbol))]
     rest: dict[sp.Expr, Any] = {x.diff(problem.time, d): 0 for x in problem.unknowns for d in (2, 1)}
-    rest |= dict.fromkeys(problem.unknowns, 0)
-    found = [
-        c
-        for equation in problem.equations
-        if (c := sp.diff(equation.xreplace({second: acceleration}).subs(rest), acceleration).subs(problem.small, 0))
-        != 0
-    ]
-    if len(found) != 1:
-        raise ProblemError(f"{u} has no oscillator of its own at leading order: state the noise on its modes")
-    return found[0]
+    rest |= dict.fromkeys([*problem.unknowns, *small], 0)
+    second = u.diff(problem.time, 2)
+    slopes = (sp.diff(x.xreplace({second: acceleration}).subs(rest), acceleration) for x in problem.equations)
+    return next(slope for slope in slopes if slope != 0)

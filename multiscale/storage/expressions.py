@@ -6,12 +6,14 @@
     ["call", name, *arguments]                     a function of the list `KNOWN`, and nothing else
 
 Equal parts are written once. Reading builds every node by its constructor; no text is parsed or evaluated, and the size
-of a node is bounded before it is made: bits of numbers, depth, and length when written out without sharing.
+of a node is bounded before it is made: bits of numbers, depth, length when written out without sharing, and the number
+of terms when multiplied out.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
+from math import comb, prod
 from typing import Any
 
 import sympy as sp
@@ -23,6 +25,8 @@ from multiscale.storage.limits import (
     BITS,
     DEPTH,
     NODES,
+    ROOTS,
+    TERMS,
     checked_name,
     integer,
     read_float,
@@ -53,6 +57,8 @@ _FUNCTIONS = [
 KNOWN: dict[str, Any] = {f.__name__: f for f in _FUNCTIONS}
 _CLASSES = {"add": sp.Add, "mul": sp.Mul, "pow": sp.Pow}
 _GROWING = {"gamma": 1000, "besselj": 1000, "besseli": 1000}  # SymPy evaluates these at integers
+_EXPANDED = {"re", "im"}  # SymPy multiplies their arguments out, in real and imaginary parts
+_PARTS = 64  # arguments of one call (SymPy compares each with each), and terms of what is multiplied out
 
 
 class Writer:
@@ -112,7 +118,7 @@ class Reader:
         if len(sequence(nodes, "the table of expressions")) > NODES:
             raise refuse(f"{len(nodes)} expressions, more than {NODES}")
         self._made: list[sp.Basic] = []
-        self._sizes: list[tuple[int, int]] = []  # depth, length written out
+        self._sizes: list[tuple[int, int, int]] = []  # depth, length written out, terms multiplied out
         for row in nodes:
             self._add(sequence(row, "an expression"))
 
@@ -134,6 +140,7 @@ class Reader:
         length = 1 + sum(self._sizes[k][1] for k in below)
         if depth > DEPTH or length > NODES:
             raise refuse(f"an expression of depth {depth} and length {length}, more than {DEPTH} and {NODES}")
+        terms = self._terms(row, below)
         try:
             made = reading(*row[1:])
         except StorageError:
@@ -143,7 +150,23 @@ class Reader:
         if not isinstance(made, sp.Basic) or made.has(sp.nan, sp.zoo):
             raise refuse(f"the expression {str(row)[:60]} has no value")
         self._made.append(made)
-        self._sizes.append((depth, length))
+        self._sizes.append((depth, length, terms))
+
+    def _terms(self, row: Sequence[Any], below: Sequence[int]) -> int:
+        """A bound for the terms of a node when everything in it is multiplied out, as stating a problem does."""
+        inside = [self._sizes[k][2] for k in below]
+        kind = row[0]
+        if kind == "call" and (len(inside) > _PARTS or (row[1] in _EXPANDED and sum(inside) > _PARTS)):
+            raise refuse(f"{str(row[1])[:40]} of more than {_PARTS} terms")
+        terms = prod(inside) if kind in ("mul", "call", "fun") else max(1, sum(inside))
+        if kind == "pow" and len(below) == 2:
+            exponent, terms = self._made[below[1]], prod(inside)
+            if inside[0] > 1 and exponent.is_Rational and (n := abs(int(exponent))) > 0:
+                # Pascal: no more than 20 terms or powers of two terms reach the limit slowly.
+                terms = TERMS + 1 if min(n, inside[0] - 1) > 20 else comb(n + inside[0] - 1, n)
+        if terms > TERMS:
+            raise refuse(f"an expression of more than {TERMS} terms when it is multiplied out")
+        return terms
 
     def _references(self, row: Sequence[Any]) -> Sequence[int]:
         start = {"add": 1, "mul": 1, "pow": 1, "diff": 1, "call": 2, "fun": 3}.get(row[0], len(row))
@@ -184,6 +207,8 @@ class Reader:
 
     def _pow_node(self, base: Any, exponent: Any) -> sp.Basic:
         x, n = self.scalar(base), self.scalar(exponent)
+        if not n.is_Integer and _bits(x) > ROOTS:  # SymPy looks for factors
+            raise refuse("a root of a number of excessive size")
         if n.is_Rational and (_bits(n) > 64 or max(1, _bits(x)) * abs(n.p) > BITS):
             raise refuse("a power of excessive size")
         return sp.Pow(x, n)

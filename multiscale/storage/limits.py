@@ -18,6 +18,9 @@ __all__ = [
     "CHARACTERS",
     "DEPTH",
     "NODES",
+    "PRECISION",
+    "ROOTS",
+    "TERMS",
     "checked_name",
     "field",
     "hexadecimal",
@@ -33,6 +36,12 @@ CHARACTERS = 500_000_000
 NODES = 1_000_000
 DEPTH = 200
 BITS = 1_000_000
+ROOTS = 4_000
+"""Bits of a number under a root."""
+PRECISION = 20_000
+"""Bits of a float, since functions of it are evaluated."""
+TERMS = 100_000
+"""Terms of an expression when it is multiplied out."""
 _DECIMAL = 4000  # Python refuses decimal integers of more digits; longer ones are written in base 16.
 _NAME = 100
 
@@ -109,4 +118,4 @@ def read_float(parts: Any) -> sp.Float:
     whole = integer(mantissa, "a mantissa", 0)
     least = integer(exponent, "an exponent", -100_000, 100_000)
     number = (integer(sign, "a sign", 0, 1), whole, least, whole.bit_length())
-    return sp.Float._new(number, integer(precision, "a precision", 1, BITS))
+    return sp.Float._new(number, integer(precision, "a precision", 1, PRECISION))

@@ -331,3 +331,11 @@ def test_digits_of_the_pendulum_frequency_at_120_degrees(order, plain, rational,
     assert digits(series, exact) < plain + 0.2
     assert digits(found[0](angle), exact) > rational - 0.2
     assert digits(found[1](angle), exact) > quadratic - 0.2
+
+
+def test_degrees_may_be_numpy_integers():
+    """As counts from an array are."""
+    coefficients, (above, below) = [1, 1, 2, 3], np.array([1, 2])
+    assert ms.pade(coefficients, x, (above, below)).degrees == ms.pade(coefficients, x, (1, 2)).degrees
+    with pytest.raises(ms.EvaluationError, match="2 integers"):
+        ms.pade(coefficients, x, (1.0, 2.0))

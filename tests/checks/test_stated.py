@@ -163,6 +163,7 @@ def test_first_order_equations_among_others():
         ordering=None,
         resonances=(),
         parameters=(alpha, w),
+        laws={},
         with_relations=lambda x: x,
     )
     equations = stated.__wrapped__(problem)

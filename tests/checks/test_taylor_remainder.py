@@ -127,3 +127,28 @@ def test_refused(name):
 def test_a_problem_is_no_expansion():
     with pytest.raises(ms.EvaluationError, match="pass an Expansion"):
         ms.taylor_remainder(plate(2).problem, 0.1)
+
+
+def test_the_order_of_the_equations_does_not_matter():
+    """Each equation is measured by the largest restoring force in it, whichever unknown it is written for."""
+    pair = (u.diff(t, 2) + sp.sin(u) + u * v, v.diff(t, 2) + 4 * sp.sin(v) + u**2)
+    there, back = (
+        ms.taylor_remainder(ms.expand(ms.Problem(x, (u, v), ordering={u: 1, v: 1}), 2), 0.5).relative
+        for x in (pair, pair[::-1])
+    )
+    assert there[0] == pytest.approx((math.sin(0.5) - 0.5 + 0.5**3 / 6) / 0.5, rel=1e-9)
+    assert list(back) == list(there[::-1])
+
+
+def test_fewer_modes_than_unknowns():
+    """Coupled pendula, one mode carried: θ − sin θ of 0.5 in both, over the force 1.5 · 0.5."""
+    pair = (u.diff(t, 2) + sp.sin(u) + (u - v) / 2, v.diff(t, 2) + sp.sin(v) + (v - u) / 2)
+    result = ms.expand(ms.Problem(pair, (u, v), ordering={u: 1, v: 1}, modes=[0]), 2)
+    found = ms.taylor_remainder(result, 0.5)
+    assert list(found.relative) == pytest.approx([(math.sin(0.5) - 0.5 + 0.5**3 / 6) / 0.75] * 2, rel=1e-9)
+
+
+def test_a_velocity_in_front_hides_no_singularity():
+    """log(1 + u²) u' converges for |u| < 1 only."""
+    result = ms.expand(ms.Problem(u.diff(t, 2) + u + sp.log(1 + u**2) * u.diff(t), u, ordering={u: 1}), 3)
+    assert ms.taylor_remainder(result, 0.5).radius == pytest.approx((1.0,))

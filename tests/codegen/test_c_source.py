@@ -31,6 +31,11 @@ STATEMENTS = {
         [u, v],
         {},
     ),
+    "macros": (
+        u.diff(t, 2) + u + eps * sum(sp.symbols("NAN INFINITY HUGE_VAL FP_NAN M_PI class", positive=True)) * u**3,
+        u,
+        {},
+    ),
     "odd names": (u.diff(t, 2) + u + eps * sum(ODD) * u**3 + eps * u.diff(t), u, {}),
 }
 COMPILER = shutil.which("cc") or shutil.which("gcc")

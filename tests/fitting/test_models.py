@@ -152,7 +152,7 @@ def test_errors_say_what_to_write(free_motion, driven, call, words):
 
 def test_errors_of_a_fit(free_motion):
     model = ms.ring_down_model(free_motion, np.linspace(0, 9, 40), free=[mu], known={eps: 0.1, alpha: 1.0, w0: 1.0})
-    with pytest.raises(ms.EvaluationError, match="expected a value for each of mu, p, q"):
+    with pytest.raises(ms.EvaluationError, match="expected one value for each of mu, p, q"):
         ms.fit(model, np.zeros(40), {"mu": 1.0})
     with pytest.raises(ms.EvaluationError, match="shape"):
         ms.fit(model, np.zeros(41), [0.1, 1.0, 0.0])
@@ -160,3 +160,80 @@ def test_errors_of_a_fit(free_motion):
         model.predict([1.0, 2.0])
     with pytest.raises(ms.EvaluationError, match="3 finite values"):
         ms.fit(model, np.zeros(40), [0.1, np.nan, 0.0])
+
+
+def test_values_that_data_do_not_determine_have_infinite_uncertainty():
+    """Only ε μ and ε α matter to a first-order flow."""
+    result = ms.expand(ms.Problem(damped.subs(w0, 1), u, small=eps), 1)
+    times = np.linspace(0, 60, 120)
+    model = ms.ring_down_model(result, times, free=[mu, eps], known={alpha: 0})
+    data = model.predict([0.3, 0.05, 1.0, 0.2]) + np.random.default_rng(3).normal(0, 0.01, 120)
+    found = ms.fit(model, data, [0.25, 0.06, 1.0, 0.1], noise=0.01)
+    assert found.uncertainties["mu"] == found.uncertainties["epsilon"] == np.inf
+    known = ms.fit(ms.ring_down_model(result, times, free=[mu], known={alpha: 0, eps: 0.05}), data, [0.25, 1.0, 0.1])
+    assert found.uncertainties["p"] == pytest.approx(known.uncertainties["p"], rel=0.2)
+    assert found.values["mu"] * found.values["epsilon"] == pytest.approx(0.05 * known.values["mu"], rel=1e-6)
+
+
+def test_a_parameter_without_influence_is_not_determined():
+    class Line:
+        names = ("slope", "idle")
+
+        def predict(self, x):
+            return x[0] * np.arange(5.0)
+
+        def jacobian(self, x):
+            return np.array([np.arange(5.0), np.zeros(5)]).T
+
+    found = ms.fit(Line(), 2 * np.arange(5.0), [1.0, 1.0], noise=1.0)
+    assert found.uncertainties["idle"] == np.inf
+    assert found.uncertainties["slope"] == pytest.approx(1 / np.sqrt(30))
+
+
+@pytest.mark.parametrize("times", [[0, 1, np.inf], [-np.inf, 0, 1]])
+def test_times_are_finite(free_motion, times):
+    with pytest.raises(ms.EvaluationError, match="finite"):
+        ms.ring_down_model(free_motion, times, free=[mu], known={alpha: 1, eps: 0.1, w0: 1})
+
+
+@pytest.mark.parametrize("sweep", [np.array([]), np.array(2.0), [[1.0, 2.0]]])
+def test_a_sweep_is_one_dimensional_and_has_values(driven, sweep):
+    with pytest.raises(ms.EvaluationError, match="1-D, at least one"):
+        ms.response_model(driven, {Omega: sweep}, free=[mu])
+
+
+def test_a_swept_parameter_is_not_known_too(driven):
+    with pytest.raises(ms.EvaluationError, match="'f' is given twice: it is either swept or known"):
+        ms.response_model(driven, {f: [1.0, 2.0]}, free=[mu], known={"f": 3.0})
+
+
+def test_values_without_a_steady_state_are_told(driven):
+    known = {eps: 0.05, f: 0.4, alpha: 1, w0: 1}
+    model = ms.response_model(driven, {Omega: [0.98, 1.02]}, free=[mu], known=known)
+    with pytest.raises(ms.EvaluationError, match=r"Omega = 0.98 for mu = -0.1: .* with bounds"):
+        model.predict([-0.1])
+
+
+@pytest.mark.filterwarnings("error")
+def test_amplitude_at_rest_has_no_slope(free_motion):
+    known = {eps: 0.1, alpha: 1.0, w0: 1.0}
+    model = ms.ring_down_model(free_motion, [0, 1, 2], free=[mu], known=known, observed="amplitude")
+    assert not model.jacobian([0.1, 0.0, 0.0]).any()
+
+
+@pytest.mark.parametrize(
+    ("change", "words"),
+    [
+        ({"noise": 0.0}, "noise is 0.0"),
+        ({"noise": -1.0}, "noise is -1.0"),
+        ({"noise": np.nan}, "noise is nan"),
+        ({"data": np.full(9, np.nan)}, "not finite"),
+        ({"start": {mu: 0.1, "mu": 0.2, "p": 1, "q": 0}}, "one value for each"),
+    ],
+    ids=str,
+)
+def test_what_a_fit_refuses(free_motion, change, words):
+    model = ms.ring_down_model(free_motion, np.arange(9.0), free=[mu], known={eps: 0.1, alpha: 1.0, w0: 1.0})
+    given = {"data": np.ones(9), "start": [0.1, 1.0, 0.0], "noise": None} | change
+    with pytest.raises(ms.EvaluationError, match=words):
+        ms.fit(model, given["data"], given["start"], noise=given["noise"])

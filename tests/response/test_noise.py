@@ -131,3 +131,50 @@ def test_growing_fluctuations_are_refused():
     van_der_pol = ms.expand(ms.Problem(u.diff(t, 2) + u + eps * (u**2 - 1) * u.diff(t), u, small=eps), 1)
     with pytest.raises(ms.EvaluationError, match="do not settle"):
         ms.noisy_flow(van_der_pol, {u: 1}).covariance([0.0, 0.0], {eps: 0.1})
+
+
+COUPLED = {
+    "stiffness": [u.diff(t, 2) + 2 * u - v + eps * u**3, v.diff(t, 2) + 2 * v - u],
+    "mass": [2 * u.diff(t, 2) + v.diff(t, 2) + 2 * u + eps * u**3, 3 * v.diff(t, 2) + u.diff(t, 2) + 2 * v],
+    "gyroscopic": [u.diff(t, 2) + u - v.diff(t) / 2, v.diff(t, 2) + u.diff(t) / 2 + 2 * v + eps * v**3],
+    "one way": [u.diff(t, 2) + u - v / 2, v.diff(t, 2) + 2 * v + eps * v**3],
+}
+
+
+@pytest.mark.parametrize("name", COUPLED)
+def test_noise_on_coupled_unknowns_is_refused(name):
+    result = ms.expand(ms.Problem(COUPLED[name], [u, v], small=eps), 1)
+    with pytest.raises(ms.ProblemError, match="have no oscillators of their own at leading order"):
+        ms.noisy_flow(result, {u: S})
+
+
+def test_the_order_of_equations_and_unknowns_does_not_matter():
+    first, second = 2 * (u.diff(t, 2) + u) + eps * u * v**2, 3 * (v.diff(t, 2) + 5 * v)
+    expected = {u: S / 8, v: S / 45}
+    for unknowns in ([u, v], [v, u]):
+        for equations in ([first, second], [second, first]):
+            result = ms.expand(ms.Problem(equations, unknowns, small=eps), 1)
+            found = ms.noisy_flow(result, {u: S, v: 2 * S}).intensity
+            for k, x in enumerate(unknowns):
+                assert found[result.symbols.p[k]] == found[result.symbols.q[k]] == expected[x]
+
+
+def test_small_parts_of_the_inertia_do_not_count():
+    h = sp.Symbol("h", positive=True)
+    equation = m * (1 + h * sp.cos(2 * Omega * t)) * u.diff(t, 2) + m * u + alpha * u**3
+    relation = {Omega: 1 + sigma}
+    ordered = ms.Problem(equation, u, ordering={u: 1, h: 2, sigma: 2}, resonances=relation)
+    assert set(ms.noisy_flow(ms.expand(ordered, 2), {u: S}).intensity.values()) == {S / (2 * m**2)}
+
+
+@pytest.mark.parametrize("given", [{"Omega": 1.506}, {"sigma": 0.3}])
+def test_density_in_terms_of_an_eliminated_frequency(driven, given):
+    values = {s.name: x for s, x in VALUES.items() if s != Omega} | given
+    found = ms.noisy_flow(driven, {u: S * Omega**2}).intensities({**values, "S": 0.1})
+    assert found == pytest.approx([0.1 * 1.506**2 / (2 * (MASS * OMEGA0) ** 2)] * 2, rel=1e-12)
+
+
+@pytest.mark.parametrize("density", [S * t, S * u])
+def test_noise_that_is_not_stationary_is_refused(driven, density):
+    with pytest.raises(ms.ProblemError, match="depends on time: expected that of a stationary force"):
+        ms.noisy_flow(driven, {u: density})

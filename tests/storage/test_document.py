@@ -141,6 +141,18 @@ def _renewed(document, **changes):
     return json.dumps(changed | {"digest": _digest(changed)})
 
 
+_POWER = [["add", *range(7)], ["int", 60], ["pow", 7, 8]]
+
+
+def _product_of_sums(name):
+    """(x_0 + i y_0)(x_1 + i y_1)…: few letters, 2^12 terms."""
+    rows = [["const", "i"]]
+    for k in range(12):
+        n = len(rows)
+        rows += [["sym", f"x{k}", {}], ["sym", f"y{k}", {}], ["mul", 0, n + 1], ["add", n, n + 2]]
+    return [*rows, ["mul", *range(4, len(rows), 4)], ["call", name, len(rows)]]
+
+
 @pytest.mark.parametrize(
     ("changes", "words"),
     [
@@ -169,8 +181,14 @@ def _renewed(document, **changes):
         ({"expressions": [["int", 10**9], ["call", "gamma", 0]]}, "gamma"),
         ({"expressions": [["int", 3], *[["mul", k, k] for k in range(60)]]}, "excessive|length"),
         ({"expressions": [["sym", "x", {}], *[["call", "sin", k] for k in range(300)]]}, "depth"),
-        ({"expressions": [["sym", "x", {}], *[["add", k, k, 0] for k in range(60)]]}, "length"),
+        ({"expressions": [["sym", "x", {}], *[["add", k, k, 0] for k in range(60)]]}, "length|multiplied out"),
         ({"expressions": [["int", 1], ["int", 0], ["int", -1], ["pow", 1, 2]]}, "no value"),
+        ({"expressions": _product_of_sums("re")}, "re of more than 64 terms"),
+        ({"expressions": _product_of_sums("im")}, "im of more than 64 terms"),
+        ({"expressions": [*(["sym", f"x{k}", {}] for k in range(7)), *_POWER]}, "multiplied out"),
+        ({"expressions": [["sym", "x", {}], ["call", "Max", *[0] * 65]]}, "Max of more than 64"),
+        ({"expressions": [["int", hex(2**20000 - 1)], ["rat", 1, 3], ["pow", 0, 1]]}, "a root of a number"),
+        ({"expressions": [["float", 0, 1, 0, 10**6], ["call", "sin", 0]]}, "precision"),
         ({"expressions": {}}, "array"),
         ({"problem": []}, "unknowns"),
     ],

@@ -60,7 +60,7 @@ def _levels_with_kernel(
             excess = abs((there / whole).imag) + abs(back - there.conjugate())
         else:
             excess = abs(there) + abs(back)
-        if excess > rounding * (1 + abs(whole)):
+        if excess > rounding * (waves.size + abs(whole)):
             found.append(n)
     return found
 
@@ -74,7 +74,11 @@ class _Waves:
         self._of = {x: {w for w in x.atoms(sp.exp) if times & w.free_symbols} for level in claim.fields for x in level}
         here = instant.published(claim, instant.start, 2)
         self.rates = {w: _rate(here(w.args[0])) for waves in self._of.values() for w in waves}
-        self._near = abs(instant.small) ** 0.5
+        self.size = instant.size
+        # Detuned waves are as near as ε, harmonics as far as the slowest frequency, in whatever unit of time.
+        here = instant.published(claim, instant.start, 1)
+        slowest = min((abs(leading(here(x))) for x in claim.frequencies), default=1)
+        self._near = min(abs(instant.small) ** 0.5 * max(1, slowest), slowest / 4)
 
     def value(self, x: sp.Expr, known: dict[sp.Basic, Value] | None = None) -> Value:
         return leading(self._instant.published(self._claim, self._instant.start, 1, known)(x))
@@ -122,7 +126,9 @@ def peak_exponent(claim: Claim, instants: Sequence[Instant], rounding: Value) ->
     slopes = []
     for (a, b), (x, y) in zip(pairwise(errors), pairwise(instants), strict=True):
         context = x.context
-        slopes.append(float("inf") if b < rounding else float(context.log(a / b) / context.log(x.small / y.small)))
+        slopes.append(
+            float("inf") if b < rounding * y.size else float(context.log(a / b) / context.log(x.small / y.small))
+        )
     return min(slopes)
 
 

@@ -26,11 +26,20 @@ UNIT = 1_000_003
 
 @dataclass(frozen=True)
 class Draw:
-    """Values of the parameters (of their scaled forms where they carry orders), of the amplitudes, and of time."""
+    """Values of the parameters (of their scaled forms where they carry orders), of the amplitudes, and of time.
+
+    Amplitudes are of the order of `size`.
+    """
 
     values: Mapping[sp.Symbol, sp.Rational]
     amplitudes: tuple[tuple[sp.Rational, sp.Rational], ...]
     time: sp.Rational
+    size: sp.Rational = sp.S.One
+
+    def scaled(self, factor: sp.Rational) -> Draw:
+        """The same with other amplitudes: `size` is what they are multiplied by in all."""
+        amplitudes = tuple((x * factor, y * factor) for x, y in self.amplitudes)
+        return replace(self, amplitudes=amplitudes, size=self.size * factor)
 
 
 def _between(rng: Random, low: float, high: float) -> sp.Rational:

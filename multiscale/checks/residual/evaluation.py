@@ -22,6 +22,8 @@ Value = Any
 """A number of the context, or a jet of them."""
 
 NAMES = {"Abs": "fabs", "ceiling": "ceil", "LambertW": "lambertw", "Heaviside": "heaviside"}
+SEVERAL = ("atan2", "besselj", "bessely", "besseli", "besselk")
+"""Functions of several arguments that mean the same in SymPy and in mpmath."""
 
 
 @cache
@@ -76,6 +78,8 @@ class Evaluation:
             return self._integral(x)
         if isinstance(x, sp.Function) and len(x.args) == 1:
             return self._function(x.func, self(x.args[0]), x)
+        if type(x).__name__ in SEVERAL and not any(isinstance(self(a), Jet) for a in x.args):
+            return getattr(self._context, type(x).__name__)(*map(self, x.args))
         if x.is_number:
             return self._context.convert(sp.N(x, self._context.dps + 5))
         if x.has(sp.Derivative):

@@ -7,12 +7,14 @@ number less; were it so small as to mix with the next power, the exponent would 
 shows. The arithmetic has digits enough for a residual two orders smaller than promised to be told from zero.
 
 Claims that contain floats are right to about 16 digits of U_1 and D_1A: there ε^N stays above 10^-13, exponents are
-read less sharply, and a residual below ε·10^-15 counts as zero. Where modes have no closed form, floats stand in U_0
-too, and ε^{N+1} stays above 10^-13.
+read less sharply, and a residual below ε·10^-15 counts as zero. Where the leading order itself holds floats, as modes
+without a closed form do, that is one power of ε less: ε^{N+1} stays above 10^-13, and 10^-14 counts as zero.
+At such ε the sizes of numbers matter: amplitudes are drawn where the corrections are as large as the leading motion.
 """
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from math import inf, isfinite, isinf
 from random import Random
 from typing import Any
@@ -34,6 +36,8 @@ LEAST_DIVISOR = 0.1
 DRAWS = 300
 USABLE = 20
 """So many draws are tried, and among so many usable ones that with the largest divisors is taken."""
+DOUBLINGS = 100
+"""How far amplitudes are moved from 1 either way, by powers of two."""
 
 
 class Examination:
@@ -51,11 +55,13 @@ class Examination:
         self._context: Any = mpmath.MPContext()
         self._context.dps = max(self.digits, 40) + 15
         ten = self._context.mpf(10)
-        leading = any(x.has(sp.Float) for x in claim.fields[0])
-        last, step = (min(POWER + 1, 13 / (claim.order + leading)), 0.5) if rounded else (POWER + 1, 1)
+        # The power of ε at which floats first stand.
+        first = int(not any(x.has(sp.Float) for x in (*claim.fields[0], *claim.frequencies)))
+        last, step = (min(POWER + 1, 13 / (claim.order + 1 - first)), 0.5) if rounded else (POWER + 1, 1)
         self.small = (ten ** (step - last), ten**-last)
-        self._zero = ten**-15 * (1 if leading else self.small[1]) if rounded else ten**-self.digits
-        self.draws = tuple(self._drawn(rng) for _ in range(points))
+        self._zero = (ten**-15 * self.small[1] if first else ten**-14) if rounded else ten**-self.digits
+        drawn = (self._drawn(rng) for _ in range(points))
+        self.draws = tuple(self._in_range(x) if rounded else x for x in drawn)
         self._instants = [self._pair(draw) for draw in self.draws]
 
     def _pair(self, draw: Draw) -> tuple[Instant, Instant]:
@@ -81,6 +87,27 @@ class Examination:
                 "as positive=True"
             )
         return max(found, key=lambda x: x[0])[1]
+
+    def _in_range(self, draw: Draw) -> Draw:
+        """The largest amplitudes, by powers of two, at which no correction exceeds the leading motion."""
+        rising = self._is_moderate(draw)
+        for k in range(DOUBLINGS):
+            after = draw.scaled(sp.Integer(2) ** (k + 1 if rising else -k - 1))
+            if self._is_moderate(after) is not rising:
+                return draw.scaled(sp.Integer(2) ** k) if rising else after
+        return draw
+
+    def _is_moderate(self, draw: Draw) -> bool:
+        """Whether |U_n| ≤ |U_0| and |D_nA| ≤ ω|A| for all n."""
+        coarse, _ = self._pair(draw)
+        here, rate = coarse.published(self.claim, coarse.start, 1), coarse.rate(self.claim)
+
+        def largest(level: Sequence[sp.Expr]) -> Any:
+            return max(abs(leading(here(x))) for x in level)
+
+        fields = [largest(level) for level in self.claim.fields]
+        changes = [largest(level) for level in self.claim.flow]
+        return bool(max(fields) <= fields[0] and max(changes) <= rate * max(map(abs, coarse.start)))
 
     def _least_divisor(self, draw: Draw) -> float | None:
         """The smallest divisor in size, None where the draw cannot be used."""

@@ -32,6 +32,7 @@ class Instant:
     def __init__(self, context: Any, statement: Statement, draw: Draw, small: Value, fixed: dict[Any, Any]) -> None:
         self.context, self._statement, self._draw, self._fixed = context, statement, draw, fixed
         self.small = small
+        self.size = context.mpf(int(draw.size.p)) / int(draw.size.q)
         number = Evaluation(context, fixed, {})
         fixed.update({s: number(x) for s, x in draw.values.items()})
         self.start = [context.mpc(number(x), number(y)) for x, y in draw.amplitudes]
@@ -80,7 +81,10 @@ class Instant:
         return self._followed[1]
 
     def residuals(self, claim: Claim) -> list[Value]:
-        """|R| of every equation in units of its slopes."""
+        """|R| of every equation in units of its slopes and of the amplitudes.
+
+        A slope ∂R/∂u^(d) counts with the d-th power of the largest natural frequency, whatever the unit of time.
+        """
         here, statement = self.followed(claim), self._statement
         moved = [self.summed(here, level, 0) for level in zip(*claim.fields, strict=True)]
         power = dict(statement.orders)
@@ -89,10 +93,16 @@ class Instant:
             for k, d, x in statement.jets
         }
         there = Evaluation(self.context, {}, self._drawn() | self.scaled() | numbers, (statement.time,))
-        found = []
+        rate, found = self.rate(claim), []
         for equation, slopes in zip(statement.equations, statement.slopes, strict=True):
-            found.append(abs(there(equation)) / max(abs(there(x)) for x in slopes))
+            unit = max(abs(there(x)) * rate**d for d, x in slopes)
+            found.append(abs(there(equation)) / unit / self.size)
         return found
+
+    def rate(self, claim: Claim) -> Value:
+        """The largest natural frequency, 1 where none is known."""
+        here = self.published(claim, self.start, 1)
+        return max((abs(leading(here(x))) for x in claim.frequencies), default=self.context.mpf(1))
 
     def _real(self, x: Value) -> Value:
         """x without an imaginary part that is rounding alone."""

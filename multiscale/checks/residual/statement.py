@@ -3,8 +3,9 @@
     Ω = ω + εσ, ω² = Ω² + εδ, 2Ω_1 + Ω_2 = ω + εσ     a symbol of the left side has the value that follows
     u_2: ω_2 = 2ω_1 + εσ                              the stiffness of u_2 is put equal to (2ω_1 + εσ)²
 
-A residual is compared with max |∂R/∂x| ε^q over the unknowns and derivatives x in its equation, q the order that the
-unknown carries, so that powers of ε common to a whole equation, as `ordering` makes them, divide out.
+A residual is compared with max |∂R/∂x| ω^d ε^q over the unknowns and derivatives x in its equation, d the order of the
+derivative, ω the largest natural frequency and q the order that the unknown carries, so that units, and powers of ε
+common to a whole equation, as `ordering` makes them, divide out.
 """
 
 from __future__ import annotations
@@ -48,11 +49,13 @@ class Statement:
         return max(d for _, d, _ in self.jets)
 
     @cached_property
-    def slopes(self) -> tuple[tuple[sp.Expr, ...], ...]:
-        """For each equation ∂R/∂x · ε^q for all jets x in it."""
+    def slopes(self) -> tuple[tuple[tuple[int, sp.Expr], ...], ...]:
+        """For each equation (order of the derivative, ∂R/∂x · ε^q) for all jets x in it."""
         orders = dict(self.orders)
         return tuple(
-            tuple(sp.diff(r, x) * self.small ** orders.get(self.unknowns[k], 0) for k, _, x in self.jets if r.has(x))
+            tuple(
+                (d, sp.diff(r, x) * self.small ** orders.get(self.unknowns[k], 0)) for k, d, x in self.jets if r.has(x)
+            )
             for r in self.equations
         )
 
