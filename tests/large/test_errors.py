@@ -109,6 +109,26 @@ def test_rigid_motions():
         ms.reduce_model(**model | {"modes": [0]}, springs=ms.Springs(b, cubic=1.0))
 
 
+def square_net(side=8):
+    """Equal tensions in both directions: the second and the third mode have one frequency."""
+    h, one = 1 / (side + 1), sparse.identity(side)
+    b = sparse.vstack([sparse.kron(stretches(side), one), sparse.kron(one, stretches(side))]).tocsr()
+    mass = h**2 * sparse.identity(side * side)
+    return {"M": mass, "K": b.T @ b + 7.3 * mass, "springs": ms.Springs(b / h, cubic=h**2)}
+
+
+def test_modes_of_one_frequency():
+    """Carried together with a relation, refused without, and refused where one of them is forgotten."""
+    with pytest.raises(ms.ResonanceError, match=r"omega_1 = .* meets the frequency .* not carried"):
+        ms.reduce_model(**square_net(), order=2, modes=[1])
+    with pytest.raises(ms.ResonanceError, match=r"meets omega_2, the frequency of a carried mode: declare it"):
+        ms.reduce_model(**square_net(), order=2, modes=[1, 2])
+    both = ms.reduce_model(**square_net(), order=3, modes=[1, 2], resonances={w2: w1 + eps**2 * sigma})
+    assert both.certify().passed
+    assert both.values({eps: 0.1})["sigma"] == pytest.approx(0.0, abs=1e-8)
+    assert both.slow_flow.phases
+
+
 def test_a_mode_near_resonance_is_warned_of():
     with pytest.warns(ms.SmallDivisorWarning, match=r"3\*omega_1 = 3 is close to 3.01, a mode that is not carried"):
         ms.reduce_model(**one_to_three(0.01), order=2)
