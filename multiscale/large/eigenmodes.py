@@ -4,7 +4,6 @@ Arnoldi iteration (SciPy). Shapes are 1 in their reference coordinate.
 
 from __future__ import annotations
 
-import itertools
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from numbers import Integral, Real
@@ -78,10 +77,10 @@ def eigenmodes(
             if not near:
                 raise ProblemError(f"no oscillation was found near the frequency {x}")
             found.append(min(near, key=lambda pair: abs(pair[0] - float(x))))
-    frequencies = sorted(w for w, _ in found)
-    for a, b in itertools.pairwise(frequencies):
-        if b - a <= 1e-12 * b:
-            raise ProblemError(f"modes asks twice for the mode of frequency {a:.10g}")
+    for k, (w, shape) in enumerate(found):
+        for _, other in found[:k]:
+            if abs(shape.conj() @ other) > 0.999 * np.linalg.norm(shape) * np.linalg.norm(other):
+                raise ProblemError(f"modes asks twice for the mode of frequency {w:.10g}")
     return [_normalised(w, shape, k, references) for k, (w, shape) in enumerate(found)]
 
 

@@ -16,7 +16,7 @@ from multiscale.forces.multilinear import Called, Products, Shape
 __all__ = ["Springs", "loads_of", "matrix_of", "orders_of", "scipy_sparse", "spring_shapes", "tensor_shape"]
 
 Array = npt.NDArray[Any]
-ORDERS = {"C": 2, "quadratic": 1, "cubic": 2, "drive": 2}
+ORDERS = {"C": 2, "K1": 2, "quadratic": 1, "cubic": 2, "drive": 2}
 
 
 @dataclass(frozen=True, eq=False)

@@ -29,6 +29,7 @@ def reduce_model(
     order: int,
     C: Any = None,
     G: Any = None,
+    K1: Any = None,
     quadratic: Any = None,
     cubic: Any = None,
     springs: Any = None,
@@ -43,7 +44,7 @@ def reduce_model(
     tolerance: float = 0.01,
     on_level: Callable[[Level], object] | None = None,
 ) -> ReducedModel:
-    """Reduce M u'' + (ε^p C + G) u' + K u + ε^q Q(u, u) + ε^r T(u, u, u) = ε^s Σ b g(t) to a slow flow of a few modes.
+    """Reduce M u'' + (ε^p C + G) u' + (K + ε^o K_1) u + ε^q Q(u, u) + ε^r T(u, u, u) = ε^s Σ b g(t) to a few modes.
 
     For models of hundreds to some ten thousands of degrees of freedom. Coefficients are floating-point numbers; the
     other modes are not left out but follow the carried ones at every level, by sparse solves.
@@ -55,7 +56,9 @@ def reduce_model(
     order : int ≥ 1
         As in `expand`.
     C, G : matrices (n, n), optional
-        Weak damping, and gyroscopic or circulatory terms of leading order.
+        Weak damping, and gyroscopic or other velocity terms of leading order.
+    K1 : matrix (n, n), optional
+        Weak stiffness. With ``scales={"K1": h*cos(Omega*t)}`` it is a parametric excitation.
     quadratic, cubic : optional
         Q and T on the left-hand side, as ``(indices, values)`` with indices of shape (entries, 3) or (entries, 4), the
         equation first; as a mapping ``{(i, j, k): c}``; as an array; or as a symmetric multilinear function of two or
@@ -72,9 +75,9 @@ def reduce_model(
     references : mapping, optional
         ``{place in modes: degree of freedom}`` in which the amplitude is measured; default: where the mode is largest.
     scales : mapping, optional
-        Expressions in parameters that multiply "C", "quadratic", "cubic", such as ``{"C": mu}``.
+        Expressions in parameters that multiply "C", "K1", "quadratic", "cubic", such as ``{"C": mu}``.
     orders : mapping, optional
-        The powers of ε, by default ``{"C": 2, "quadratic": 1, "cubic": 2, "drive": 2}``.
+        The powers of ε, by default ``{"C": 2, "K1": 2, "quadratic": 1, "cubic": 2, "drive": 2}``.
     small, time : Symbol, optional
         Default: a positive ``epsilon``, and the ``t`` of the drives.
     tolerance : float
@@ -125,16 +128,18 @@ def reduce_model(
     K = matrix_of("K", K)
     size = K.shape[0]
     M = matrix_of("M", M, size)
-    C, G = (None if x is None else matrix_of(name, x, size) for name, x in (("C", C), ("G", G)))
+    C, G, K1 = (None if x is None else matrix_of(name, x, size) for name, x in (("C", C), ("G", G), ("K1", K1)))
     powers, loads = orders_of(orders), loads_of(drive, size)
     shapes: dict[str, list[Shape]] = {} if springs is None else spring_shapes(springs, size)
     if C is not None:
         shapes["C"] = [Matrix(lambda x: C @ x, 1)]
+    if K1 is not None:
+        shapes["K1"] = [Matrix(lambda x: K1 @ x, 0)]
     for name, given, degree in (("quadratic", quadratic, 2), ("cubic", cubic, 3)):
         if given is not None:
             shapes.setdefault(name, []).append(tensor_shape(name, given, size, degree))
     if not shapes and not loads:
-        raise ProblemError("the model is linear, undamped and free: give cubic, quadratic, springs, C or drive")
+        raise ProblemError("the model is linear, undamped and free: give cubic, quadratic, springs, C, K1 or drive")
     if strange := set(scales or {}) - set(shapes):
         raise ProblemError(f"scales has {', '.join(sorted(strange))}: expected some of {', '.join(sorted(shapes))}")
     begun_at = thread_time()
@@ -142,6 +147,7 @@ def reduce_model(
     finding = thread_time() - begun_at
     factors = {name: (scales or {}).get(name, 1) for name in shapes}
     statement = state([m.frequency for m in found], factors, [g for _, g in loads], powers, resonances, small, time)
+    statement.check_detunings()
     matrices = {"M": M, "G": G, "K": K}
     hard = powers["drive"] == 0
     begun = begin_large(statement, order, matrices, found, shapes, [b for b, _ in loads], tolerance, hard)

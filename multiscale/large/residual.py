@@ -1,6 +1,6 @@
 """The residual of a large model along its slow flow, in double precision.
 
-    R = M u'' + (G + ε^p C) u' + K u + ε^q Q(u, u) + ε^r T(u, u, u) − ε^s Σ b g(t)
+    R = M u'' + (G + ε^p C) u' + (K + ε^o K_1) u + ε^q Q(u, u) + ε^r T(u, u, u) − ε^s Σ b g(t)
 
 u and its derivatives come from the published slow flow: z' = (dA/dt + iΦ' A) e^{iΦ}, and z'' from the same flow once
 more, as Taylor polynomials in t of the monomials. The force is evaluated at the one vector u, so nothing is shared with

@@ -1,7 +1,7 @@
 """The symbolic side of a large model: a problem in the carried modes that says what the ring, the clock and the
 coefficients of the weak terms are. What the terms do to vectors is said elsewhere.
 
-    u_j'' + ω_j² u_j + ε^p c u_1' + ε^q c u_1² + ε^r c u_1³ = Σ_d ε^s g_d(t) u_1^(5+2d)
+    u_j'' + ω_j² u_j + ε^p c u_1' + ε^o c u_1'³ + ε^q c u_1² + ε^r c u_1³ = Σ_d ε^s g_d(t) u_1^(5+2d)
 
 Frequencies are symbols here, so that relations between them are read as they are everywhere, and become numbers at the
 end; the weak terms stand in the first equation as place holders for the matrix or tensor that they multiply, each
@@ -16,7 +16,7 @@ from typing import Any
 
 import sympy as sp
 
-from multiscale.errors import MultiscaleError, ProblemError
+from multiscale.errors import MultiscaleError, ProblemError, ResonanceError
 from multiscale.problem import Problem
 from multiscale.problem.canonical import Canonical
 from multiscale.problem.preparation import Prepared
@@ -25,7 +25,7 @@ from multiscale.problem.relations import relation_pairs
 
 __all__ = ["PLACES", "ModelStatement", "drive_place", "state"]
 
-PLACES = {"C": ((0, 1),), "quadratic": ((0, 0),) * 2, "cubic": ((0, 0),) * 3}
+PLACES = {"C": ((0, 1),), "K1": ((0, 1),) * 3, "quadratic": ((0, 0),) * 2, "cubic": ((0, 0),) * 3}
 """The factors by which the terms of a kind are known."""
 REFUSAL = (
     "the equations of a large model stand in its matrices, not in this problem: what reads them (certify, compare, "
@@ -95,6 +95,15 @@ class ModelStatement(Problem):
         """An expression in parameters and time, relations and frequencies put in."""
         return self.with_relations(x).subs(self._numbers)
 
+    def check_detunings(self) -> None:
+        """Refuses a relation that would move a frequency of the matrices by a fixed amount."""
+        for (symbol, own), shift in zip(self._numbers.items(), self.shifts, strict=True):
+            if not shift.free_symbols - {self.small} and abs(shift.subs(self.small, 0)) > 1e-9 * own**2:
+                raise ResonanceError(
+                    f"the relation for {symbol} makes it {self.in_numbers(symbol).subs(self.small, 0):.10g}, but the "
+                    f"matrices have {own:.10g}: add a detuning, {{{symbol}: … + {self.small}*sigma}}"
+                )
+
     @property
     def shifts(self) -> list[sp.Expr]:
         """ω² by its relation less the ω² of the matrices, for each carried mode; 0 where no relation moves it."""
@@ -155,7 +164,7 @@ def state(
     symbols = [sp.Symbol(f"omega_{k + 1}", positive=True) for k in range(len(frequencies))]
     equations = [u.diff(time, 2) + w**2 * u for u, w in zip(unknowns, symbols, strict=True)]
     first = unknowns[0]
-    held = {"C": first.diff(time), "quadratic": first**2, "cubic": first**3}
+    held = {"C": first.diff(time), "K1": first.diff(time) ** 3, "quadratic": first**2, "cubic": first**3}
     for name, scale in scales.items():
         equations[0] += small ** orders[name] * _expression(f"scale of {name}", scale) * held[name]
     for d, g in enumerate(drives):

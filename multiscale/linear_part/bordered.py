@@ -172,7 +172,11 @@ class Bordered:
         across = self.across(found[: self.size])
         others = [j for j in range(len(self.references)) if j not in modes]
         if others:
-            scale = np.array([self.leading[j] ** 2 - rate**2 for j in others])
+            # A mode that is met although the forcing does not reach it stays at rest.
+            met = [singular(abs(self.leading[j] - abs(rate)), self.leading[j]) for j in others]
+            scale = np.array(
+                [np.inf if m else self.leading[j] ** 2 - rate**2 for j, m in zip(others, met, strict=True)]
+            )
             across = across - ((shares[others] / scale[:, None]).T @ self.shapes[:, others].T).T
         if not modes:
             return across, np.zeros((0, part.shape[1]))

@@ -113,6 +113,7 @@ class Sparse:
             return self._last[2], self._last[3]
         columns, part = columns_of(element)
         modes = self.modes_at(rate)
+        self._look_at_carried(rate, modes, columns, part)
         try:
             found, changes = self.bordered.solve(self.turning(rate), modes, part)
             self._examine(rate, modes, columns, part)
@@ -125,11 +126,8 @@ class Sparse:
         return solution, slow
 
     def _examine(self, rate: Rate, modes: tuple[int, ...], columns: list[Any], part: Array) -> None:
-        """What this rate is close to, carried or not, if the forcing reaches it."""
+        """What this rate is close to that is not carried, if the forcing reaches it."""
         turning = self.turning(rate)
-        for a, own in enumerate(self.bordered.leading):
-            if a not in modes and self._close(turning, own) and _reached(self.bordered.shapes[:, a], part):
-                self.near[rate, a] = Near(self._name(columns, turning), abs(turning), own, a)
         if rate in self._examined:
             return
         self._examined.add(rate)
@@ -144,6 +142,21 @@ class Sparse:
         if singular(abs(abs(turning) - nearest.frequency), nearest.frequency):
             raise self._resonance(columns, turning, nearest.frequency)
         self.near[rate, None] = Near(self._name(columns, turning), abs(turning), nearest.frequency, None)
+
+    def _look_at_carried(self, rate: Rate, modes: tuple[int, ...], columns: list[Any], part: Array) -> None:
+        """What this rate is close to among the carried modes, or meets undeclared, if the forcing reaches it."""
+        turning = self.turning(rate)
+        for a, own in enumerate(self.bordered.leading):
+            if a in modes or not _reached(self.bordered.shapes[:, a], part):
+                continue
+            if singular(abs(abs(turning) - own), own):
+                name = self._name(columns, turning)
+                raise ResonanceError(
+                    f"the combination {name} = {abs(turning):.10g} meets omega_{a + 1}, the frequency of a carried "
+                    f"mode: declare it, as in resonances={{omega_{a + 1}: {name} + epsilon*sigma}}"
+                )
+            if self._close(turning, own):
+                self.near[rate, a] = Near(self._name(columns, turning), abs(turning), own, a)
 
     def _close(self, turning: float, frequency: float, factor: float = 1.0) -> bool:
         return abs(abs(turning) - frequency) < factor * self.tolerance * frequency

@@ -128,6 +128,29 @@ def test_loads_of_different_shape_at_leading_order():
     assert model.certify(parameters=values).passed
 
 
+@pytest.mark.filterwarnings("ignore::multiscale.SmallDivisorWarning")
+def test_a_pulsating_stiffness():
+    """Principal parametric resonance, Ω = 2ω_1 + ε²σ, against the same equations written out."""
+    stated, sparse_form = dense(C=0.1 * np.eye(4))
+    pulsating = np.diag([1.0, 0.5, 0.2, 0.7]) + 0.1 * np.eye(4, k=1) + 0.1 * np.eye(4, k=-1)
+    wave, relation = f * sp.cos(Omega * t), {Omega: 2 * w1 + eps**2 * sigma}
+    plain = ms.Problem.from_matrices(**stated, modes=[0]).equations
+    equations = [
+        x + eps**2 * wave * sum(float(c) * u for c, u in zip(row, U, strict=True))
+        for x, row in zip(plain, pulsating, strict=True)
+    ]
+    problem = ms.Problem(equations, U, small=eps, modes=[0], references={0: U[1]}, resonances=relation)
+    expansion = ms.expand(problem, 3)
+    model = ms.reduce_model(
+        **sparse_form, K1=pulsating, scales={"K1": wave}, order=3, references={0: 1}, resonances=relation
+    )
+    values = {"f": 0.7, "sigma": 0.4}
+    found = coefficients(model.expansion, **values)
+    assert difference(coefficients(expansion, **values), found) < 1e-12
+    assert (2, 0, (0, 1)) in found
+    assert model.certify(parameters=values).passed
+
+
 def test_internal_resonance_splits_the_stiffness_along_the_mode():
     """ω_2 = 2.07 against 2ω_1 = 2: uncoupled at leading order, so that the exact route can state it."""
     _, _, springs = chain(2, 0.3)
