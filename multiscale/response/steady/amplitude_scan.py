@@ -30,6 +30,9 @@ LOWEST, HIGHEST, PER_DECADE = -9, 6, 24
 FAR = 3.0
 PARTS, ROUNDS = 8, 3
 TINY = 1e-9
+SEED = 20261201
+TOUCHING = 1e-3
+"""A least |ln|W|| from which Newton's method is tried."""
 EDGE = 50.0
 """ln|W| is cut off there: a root at 0 or at infinity."""
 
@@ -39,8 +42,8 @@ def harmonics(flow: SteadyFlow, a: Array, values: tuple[Any, ...]) -> dict[int, 
     found: dict[int, Array] = {}
     for (_, _, m), c in flow.coefficients(values, a).items():
         k = m[0] - m[1]
-        found[k] = found.get(k, np.zeros(np.shape(a), dtype=complex)) + c * (a / 2) ** sum(m)
-    return found
+        found[k] = found.get(k, 0.0) + c * (a / 2) ** sum(m)
+    return dict(zip(found, np.broadcast_arrays(*found.values()), strict=True))
 
 
 def _roots(parts: dict[int, Array]) -> tuple[Array, int]:
@@ -80,12 +83,19 @@ def _marks(flow: SteadyFlow, a: Array, values: tuple[Any, ...]) -> Array:
     return np.asarray(np.clip(logarithms, -EDGE, EDGE))
 
 
+def _collapsed(values: tuple[Any, ...]) -> tuple[Any, ...]:
+    """Values that do not change over the points once only, so that averages are computed once."""
+    return tuple(v[:1] if np.ndim(v) and np.all(v == v[0]) else v for v in values)
+
+
 def _ladder(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tuple[Array, Array]:
     """(amplitudes (M,), marks (D, M, points)) over the whole scan."""
     decade = np.arange(PER_DECADE) / PER_DECADE
+    values = _collapsed(values)
 
     def marks(exponents: Array) -> Array:
-        return _marks(flow, np.broadcast_to(10.0 ** exponents[:, None], (len(exponents), points)), values)
+        found = _marks(flow, 10.0 ** exponents[:, None], values)
+        return np.broadcast_to(found, (len(found), len(exponents), points))
 
     exponents = np.concatenate([k + decade for k in range(LOWEST, 1)])
     columns, places = [marks(exponents)], [exponents]
@@ -108,7 +118,7 @@ def _wanted(marks: Array) -> Array:
     result[:, :-1] |= least
     result[:, 1:] |= least
     # Up to where the force ends.
-    return result | (np.isfinite(marks[:, :-1]) & np.isnan(marks[:, 1:]))
+    return result | ((size[:, :-1] < 1) & np.isnan(marks[:, 1:]))
 
 
 def scanned_starts(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tuple[Array, Array, bool]:
@@ -130,8 +140,11 @@ def scanned_starts(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tu
         order, place, column = np.nonzero(_wanted(marks))
         low, high, point = a[place, column], a[place + 1, column], point[column]
         ends = marks[order, place, column], marks[order, place + 1, column]
+    crossing = ends[0] * ends[1] < 0
+    kept = crossing | (np.minimum(abs(ends[0]), abs(ends[1])) < TOUCHING)
+    low, high, point, order, crossing = (x[kept] for x in (low, high, point, order, crossing))
     with np.errstate(divide="ignore", invalid="ignore"):
-        share = np.where(ends[0] * ends[1] < 0, ends[0] / (ends[0] - ends[1]), 0.5)
+        share = np.where(crossing, (ends[0] / (ends[0] - ends[1]))[kept], 0.5)
     a = low ** (1 - share) * high**share
     if not flow.phases:
         return point, np.stack([a, np.zeros(len(a))]), True
@@ -158,14 +171,30 @@ def held_at_rest(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> Arra
 
 def typical_amplitude(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> Array:
     """The amplitude at which the other terms of the flow reach the size of the drive, 1 where there is none."""
-    a = 10.0 ** np.arange(-6, 4.5, 0.5)
     push = flow.at_rest(values, points)
+    if flow.modes > 1 or flow.several_phases:
+        return _balance(flow, values, push)
+    a = 10.0 ** np.arange(-6, 4.5, 0.5)
     size = np.zeros((len(a), points))
     constant = np.zeros((len(a), points))
-    for (_, _, m), c in flow.coefficients(values, np.broadcast_to(a[:, None], size.shape)).items():
+    for (_, _, m), c in flow.coefficients(_collapsed(values), a[:, None]).items():
         target = size if sum(m) else constant
         target += abs(c) * (a[:, None] / 2) ** sum(m)
     with np.errstate(invalid="ignore"):
         beyond = size >= np.maximum(push, constant)
     first = np.argmax(beyond, axis=0)
     return np.where((push > 0) & beyond.any(axis=0) & (first > 0), a[first], 1.0)
+
+
+def _balance(flow: SteadyFlow, values: tuple[Any, ...], push: Array) -> Array:
+    """|y| at which G(y) − G(0) reaches the size of G(0), in the middle of a few directions."""
+    random = np.random.default_rng(SEED)
+    sizes, ways = 10.0 ** np.arange(-4, 3), random.normal(size=(2 * flow.modes, 3))
+    y = sizes[:, None, None] * (ways / np.linalg.norm(ways, axis=0))[:, None, :, None]
+    y = np.broadcast_to(y, (*y.shape[:3], len(push)))
+    start = flow.rate(np.zeros((2 * flow.modes, len(push))), tuple(np.broadcast_to(v, push.shape) for v in values))
+    moved = np.linalg.norm(flow.rate(y, values) - start[:, None, None], axis=0)
+    with np.errstate(invalid="ignore"):
+        beyond = np.median(moved, axis=1) >= push
+    first = np.argmax(beyond, axis=0)
+    return np.where((push > 0) & beyond.any(axis=0), sizes[first], 1.0)

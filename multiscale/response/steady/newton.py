@@ -70,6 +70,7 @@ def polished(
     nu = rotation_rates(flow, y, values)
     size = len(y)
     converged = np.zeros(y.shape[1:], dtype=bool)
+    lost = np.zeros(y.shape[1:], dtype=bool)
     with np.errstate(over="ignore", invalid="ignore"):
         for _ in range(steps):
             rest, matrix = flow.rate(y, values), turning_jacobian(flow, y, nu, values)
@@ -82,11 +83,15 @@ def polished(
             length, bound = np.linalg.norm(step[:size], axis=0), np.linalg.norm(y, axis=0) + scale
             if np.isfinite(reach):
                 step = step * np.minimum(1.0, reach * bound / np.where(length > 0, length, 1.0))
+            if not flow.polynomial:
+                # Beyond the range of a force: not asked for again.
+                lost |= ~np.isfinite(length)
+                step, y, nu = np.where(lost, 0.0, step), np.where(lost, 0.0, y), np.where(lost, 0.0, nu)
             y, nu = y - step[:size], nu - step[size:]
             converged = length <= 1e-11 * np.linalg.norm(y, axis=0) + 1e-14 * np.asarray(scale)
-            if np.all(converged | ~np.isfinite(length)):
+            if np.all(converged | lost | ~np.isfinite(length)):
                 break
-    return y, nu, converged
+    return y, nu, converged & ~lost
 
 
 def reduced_eigenvalues(flow: SteadyFlow, y: Array, nu: Array, values: tuple[Any, ...]) -> Array:

@@ -23,8 +23,8 @@ __all__ = ["distinct", "refuse_continua", "scale_of", "states_at"]
 
 Array = npt.NDArray[Any]
 STARTS = 600
-FEW_STARTS = 120
-"""For forces that are not polynomial, whose averages take longer."""
+FEW_STARTS = 24
+"""For averages over several phases, of which each takes milliseconds."""
 SEED = 20240229
 SAME = 1e-7
 
@@ -72,7 +72,7 @@ def states_at(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tuple[A
         if not changing:
             raise EvaluationError(CONSERVED)
     elif not flow.polynomial:
-        index, starts = _seeded(flow, points, scale, FEW_STARTS)
+        index, starts = _seeded(flow, points, scale, FEW_STARTS if flow.several_phases else STARTS // 3)
     elif flow.modes == 1 and flow.phases:
         terms, _ = _one_mode_terms(flow, values, points)
         _refuse_free_circles(terms)
@@ -86,7 +86,7 @@ def states_at(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tuple[A
     else:
         index, starts = _seeded(flow, points, scale)
     reach = np.inf if complete else 0.1 if scanned else 0.5
-    steps = 30 if complete or scanned else 80
+    steps = 30 if complete or scanned or flow.several_phases else 80
     y, _, converged = polished(flow, starts, tuple(v[index] for v in values), scale[index], steps, reach)
     converged &= np.linalg.norm(y, axis=0) > 1e-9 * scale[index]
     # What is left of a mode that is at rest is rounding.

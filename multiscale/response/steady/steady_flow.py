@@ -38,6 +38,7 @@ Coefficients = dict[tuple[int, int, tuple[int, ...]], Array]
 STEP = 1e-30
 DIFFERENCE = 1e-5
 """Relative step where derivatives are differences: averages of forces are right to 10⁻¹³ or so."""
+WIDE = 1e-3
 
 
 @dataclass(frozen=True, eq=False)
@@ -46,7 +47,7 @@ class SteadyFlow:
 
     expansion: Expansion
     flow: NumpyFunction
-    slope: NumpyFunction
+    slope: NumpyFunction | None
     keys: tuple[tuple[int, int, tuple[int, ...]], ...]
     levels: NumpyFunction
 
@@ -64,7 +65,14 @@ class SteadyFlow:
             )
         projected = bool(expansion.computation.canonical.numeric)
         keys, levels = coefficient_function(expansion.problem, expansion.computation, at_amplitudes=projected)
-        return cls(expansion, flow.to_numpy("cartesian"), flow.to_numpy("cartesian", wrt="state"), keys, levels)
+        try:
+            slope = flow.to_numpy("cartesian", wrt="state")
+        except EvaluationError:
+            # A force law without a derivative.
+            if not projected:
+                raise
+            slope = None
+        return cls(expansion, flow.to_numpy("cartesian"), slope, keys, levels)
 
     @property
     def modes(self) -> int:
@@ -109,7 +117,12 @@ class SteadyFlow:
     def at_rest(self, values: tuple[Any, ...], points: int) -> Array:
         """|G(0)| at every point: what drives the state of rest."""
         batch = tuple(np.broadcast_to(v, (points,)) for v in values)
-        return np.asarray(np.linalg.norm(self.rate(np.zeros((2 * self.modes, points)), batch), axis=0))
+        zero = np.zeros((2 * self.modes, points))
+        push = np.linalg.norm(self.rate(zero, batch), axis=0)
+        if self.several_phases:
+            # Averages that vanish are rounding.
+            push = np.where(push < 1e-11 * np.linalg.norm(self.rate(zero + 0.1, batch), axis=0), 0.0, push)
+        return np.asarray(push)
 
     def values(self, parameters: Mapping[Any, Any]) -> tuple[Any, ...]:
         """The parameter values in the order of the generated functions, finite or refused."""
@@ -129,9 +142,32 @@ class SteadyFlow:
         """dG/dy of shape (2n, 2n) + B, also for complex arguments."""
         batch = np.broadcast_shapes(np.shape(y)[1:], *(np.shape(v) for v in values))
         if not self.polynomial:
-            return _where_defined(self.slope, len(y) ** 2, y, values).reshape(len(y), len(y), *batch)
+            return self._slope_or_difference(y, values, batch)
+        assert self.slope is not None
         rows = self.slope.kernel(0.0, *y, *values)
         return np.array([np.broadcast_to(x, batch) for x in rows]).reshape(len(y), len(y), *batch)
+
+    def _slope_or_difference(self, y: Array, values: tuple[Any, ...], batch: tuple[int, ...]) -> Array:
+        """dG/dy where its averages are known well enough, by differences of the fourth order elsewhere."""
+        size = len(y)
+        if self.slope is None or (self.several_phases and not self._slope_known(y, values)):
+            found = np.full((size, size, *batch), np.nan)
+        else:
+            found = _where_defined(self.slope, size**2, y, values).reshape(size, size, *batch)
+        if np.isfinite(found).all():
+            return found
+        step = WIDE * (np.linalg.norm(y, axis=0) + WIDE)
+        columns = []
+        for e in np.eye(size).reshape(size, size, *(1,) * (np.ndim(y) - 1)):
+            one, two = (self.rate(y + k * step * e, values) - self.rate(y - k * step * e, values) for k in (1, 2))
+            columns.append((8 * one - two) / (12 * step))
+        return np.where(np.isfinite(found), found, np.stack(np.broadcast_arrays(*columns), axis=1))
+
+    def _slope_known(self, y: Array, values: tuple[Any, ...]) -> bool:
+        """Whether the averages in the slope converge at one of the states; over several phases they are costly."""
+        assert self.slope is not None
+        one = np.reshape(y, (len(y), -1))[:, 0]
+        return bool(np.isfinite(_where_defined(self.slope, len(y) ** 2, one, tuple(np.ravel(v)[0] for v in values))).all())
 
     def coefficients(self, values: tuple[Any, ...], amplitude: Array | None = None) -> Coefficients:
         """The coefficients of dA/dt in A and its conjugate, level by level, each with its power of ε.
@@ -172,17 +208,24 @@ def _where_defined(function: NumpyFunction, count: int, y: Array, values: tuple[
         with np.errstate(all="ignore"):
             rows = function.kernel(0.0, *y, *values)
         return np.array([np.broadcast_to(x, batch) for x in rows])
-    except IntegralError:
-        size = int(np.prod(batch))
-        if size <= 1:
+    except (IntegralError, EvaluationError):
+        axis = next((k for k, n in enumerate(batch) if n > 1), None)
+        if axis is None:
             return np.full((count, *batch), np.nan)
-        flat = np.broadcast_to(y, (len(y), *batch)).reshape(len(y), size)
-        rest = [np.broadcast_to(v, batch).reshape(size) for v in values]
+        middle, depth = batch[axis] // 2, len(batch) - axis
         halves = [
-            _where_defined(function, count, flat[:, part], tuple(v[part] for v in rest))
-            for part in (slice(None, size // 2), slice(size // 2, None))
+            _where_defined(function, count, np.stack([_cut(x, depth, part) for x in y]), rest)
+            for part in (slice(None, middle), slice(middle, None))
+            for rest in (tuple(_cut(np.asarray(v), depth, part) for v in values),)
         ]
-        return np.concatenate(halves, axis=1).reshape(count, *batch)
+        return np.concatenate(halves, axis=axis + 1)
+
+
+def _cut(x: Array, depth: int, part: slice) -> Array:
+    """A part of an array along the `depth`-th axis from the end, where it has one."""
+    if x.ndim < depth or x.shape[-depth] == 1:
+        return x
+    return x[(slice(None),) * (x.ndim - depth) + (part,)]
 
 
 def checked_name(flow: SteadyFlow, symbol: Any) -> str:
