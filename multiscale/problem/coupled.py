@@ -89,9 +89,9 @@ def coupled_form(
         try:
             radicals.settle([*mass, *damping, *stiffness])
             if choice.shapes:
-                known = [g.mapped(lambda x: _in_force(x, prepared, working, layout)) for g in choice.shapes]
+                related = [g.mapped(lambda x: _at_leading_order(x, prepared, layout)) for g in choice.shapes]
                 meanings = prepared.leaves.meanings
-                found = roots_given(known, (mass, damping, stiffness), working, radicals, meanings)
+                found = roots_given(related, (mass, damping, stiffness), working, radicals, meanings)
                 others = roots_at_most(mass, damping, stiffness) - 2 * sum(f.multiplicity for f in found)
             else:
                 found, others = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
@@ -102,14 +102,11 @@ def coupled_form(
         return _assembled(working, prepared, layout, shown, found, others, choice)
 
 
-def _in_force(x: sp.Expr, prepared: Prepared, working: Working, layout: Layout) -> sp.Expr:
-    """What a user's expression means at leading order when relations and eliminations are in force."""
+def _at_leading_order(x: sp.Expr, prepared: Prepared, layout: Layout) -> sp.Expr:
+    """What a user's expression means there with the relations in force."""
     for symbol, value in prepared.relations.values:
         x = x.subs(symbol, value)
-    x = x.subs({meaning: leaf for leaf, meaning in prepared.leaves.meanings.items()}).subs(layout.small, 0)
-    for symbol, value in working.changes:
-        x = x.subs(symbol, value)
-    return x
+    return x.subs({meaning: leaf for leaf, meaning in prepared.leaves.meanings.items()}).subs(layout.small, 0)
 
 
 def _refuse_circular(modes: Mapping[sp.Symbol, int], matrices: Sequence[sp.Matrix]) -> None:

@@ -63,6 +63,9 @@ def _vectors(given: Any, unknowns: Sequence[sp.Expr], name: str) -> tuple[Vector
         if strange := [u for u in given if u not in unknowns]:
             raise ProblemError(f"{name} has the key {strange[0]!r}: expected unknowns, {tuple(unknowns)}")
         given = [given.get(u, 0) for u in unknowns]
+    if hasattr(given, "tolist") and len(given.shape) == 2:
+        # Shapes are the columns of a matrix.
+        given = [list(column) for column in zip(*given.tolist(), strict=True)]
     if isinstance(given, str) or not isinstance(given, Iterable):
         raise ProblemError(f"{name} is {given!r}: expected one component for each of {tuple(unknowns)}")
     items = list(given)
@@ -110,11 +113,12 @@ def roots_given(
     meanings: Mapping[sp.Symbol, sp.Expr],
 ) -> list[Found]:
     """The roots, verified. Raises `ProblemError` with what is left over, and `EliminatedError`."""
-    settled = [g.mapped(lambda x: _settled(x, radicals)) for g in shapes]
+    settled = [g.mapped(lambda x: _settled(_in_force(x, working), radicals)) for g in shapes]
     leaves = [x.xreplace({sp.I: IMAGINARY_UNIT}) for g in settled for v in (*g.right, *g.left) for x in v]
     entries = [x for m in matrices for x in m]
     reader = Reader([*entries, *(g.frequency for g in settled), *leaves], (), {}, working.relations)
-    ring, known = reader.ring, []
+    ring = reader.ring
+    known: list[Any] = []
     read = [[[reader.read(x) for x in m.row(k)] for k in range(m.rows)] for m in matrices]
     for g, stated in zip(settled, shapes, strict=True):
         w = ring.normal(reader.read(g.frequency))
@@ -128,10 +132,18 @@ def roots_given(
         transposed = [list(column) for column in zip(*matrix, strict=True)]
         for side, vectors in (("", g.right), ("left ", g.left)):
             for v in vectors:
-                _verify(side, v, g.frequency, (reader, transposed if side else matrix), matrices, working, meanings)
+                used = (reader, transposed if side else matrix)
+                _verify(side, v, g.frequency, stated.frequency, used, matrices, working, meanings)
         if _dependent(ring, [[reader.read(x.xreplace({sp.I: IMAGINARY_UNIT})) for x in v] for v in g.right]):
             raise ProblemError(f"the shapes given for the frequency {stated.frequency} are not independent")
-    return [Found(g.frequency, len(g.right), None, True) for g in settled]
+    return [Found(g.frequency, len(g.right), s.frequency, True) for g, s in zip(settled, shapes, strict=True)]
+
+
+def _in_force(x: sp.Expr, working: Working) -> sp.Expr:
+    """x without the parameters that were eliminated."""
+    for symbol, value in working.changes:
+        x = x.subs(symbol, value)
+    return x
 
 
 def _settled(x: sp.Expr, radicals: Radicals) -> sp.Expr:
@@ -160,6 +172,7 @@ def _verify(
     side: str,
     vector: Vector,
     frequency: sp.Expr,
+    stated: sp.Expr,
     read: tuple[Reader, Matrix],
     matrices: tuple[sp.Matrix, sp.Matrix, sp.Matrix],
     working: Working,
@@ -168,21 +181,28 @@ def _verify(
     reader, matrix = read
     # ψ^H L = 0 is L^T conj(ψ) = 0.
     own = [x.subs(sp.I, -sp.I) if side else x for x in vector]
-    column = [reader.read(x.xreplace({sp.I: IMAGINARY_UNIT})) for x in own]
-    rest = applied(reader.ring, matrix, column)
-    wrong = [k for k, x in enumerate(rest) if not vanishes(reader.ring, x)]
+    wrong = _left_over(reader, matrix, own)
     if not wrong:
         return
     mass, damping, stiffness = (m.T if side else m for m in matrices)
     left = (stiffness + sp.I * frequency * damping - frequency**2 * mass) * sp.Matrix(own)
     shown = [sp.factor(left[k].subs(working.hidden).subs(meanings)) for k in wrong]
-    spelled = frequency.subs(working.hidden).subs(meanings)
     law = "psi^H L_0(i*omega)" if side else "L_0(i*omega) phi"
     text = str(shown[0])
+    if own != (mirrored := [x.subs(sp.I, -sp.I) for x in own]) and not _left_over(reader, matrix, mirrored):
+        remedy = ". Its complex conjugate is one: motions are written phi*exp(+i*omega*t) with a positive frequency"
+    else:
+        remedy = _remedy(stated, shown)
     raise ProblemError(
-        f"the {side}shape given for the frequency {spelled} is none: component {wrong[0] + 1} of {law} is "
-        f"{text if len(text) < 300 else text[:290] + ' …'}, not zero{_remedy(frequency, shown)}"
+        f"the {side}shape given for the frequency {stated} is none: component {wrong[0] + 1} of {law} is "
+        f"{text if len(text) < 300 else text[:290] + ' …'}, not zero{remedy}"
     )
+
+
+def _left_over(reader: Reader, matrix: Matrix, vector: Sequence[sp.Expr]) -> list[int]:
+    """The components of the product that are not zero."""
+    rest = applied(reader.ring, matrix, [reader.read(x.xreplace({sp.I: IMAGINARY_UNIT})) for x in vector])
+    return [k for k, x in enumerate(rest) if not vanishes(reader.ring, x)]
 
 
 def _remedy(frequency: sp.Expr, left: Sequence[sp.Expr]) -> str:

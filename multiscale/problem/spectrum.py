@@ -89,7 +89,8 @@ def roots_at_most(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> 
     """A bound on the degree of det L_0(s), by rows and by columns."""
     size = mass.shape[0]
     orders = [[2 if mass[i, j] else 1 if damping[i, j] else 0 for j in range(size)] for i in range(size)]
-    return min(sum(map(max, orders)), sum(map(max, zip(*orders, strict=True))))
+    columns = zip(*orders, strict=True)
+    return min(sum(max(row) for row in orders), sum(max(column) for column in columns))
 
 
 def _nothing_oscillates(
@@ -174,8 +175,10 @@ def _frequencies(factor: sp.Poly, back: dict[sp.Expr, sp.Expr], radical: Radical
     if factor.free_symbols_in_domain:
         raise ProblemError(
             f"the frequencies are the roots of {factor.as_expr().subs(X, sp.Symbol('omega') ** 2)} = 0, of degree "
-            f"{factor.degree()} in omega**2, which has no closed form: give numbers for the parameters of the linear "
-            "part, or write one of them in terms of a frequency (solve det L_0(i*omega) = 0 for it)"
+            f"{factor.degree()} in omega**2, for which no closed form was found. If you know a mode, give it by "
+            "`shapes={frequency: shape}`; any mode can be given with a symbol for its frequency if a parameter p is "
+            "eliminated by `resonances={p: <p from det L_0(i*omega) = 0>}`. Or give numbers for the parameters of the "
+            "linear part"
         )
     squares = [r for r in sp.Poly(factor, X).nroots(n=DIGITS, maxsteps=500) if r.is_real and r > 0]
     return [radical.number(sp.sqrt(x)) for x in squares]
