@@ -14,10 +14,12 @@ from os import PathLike
 from pathlib import Path
 
 import multiscale
+from multiscale.codegen.c_functions import check, helpers, spelling
+from multiscale.codegen.c_names import words_of
 from multiscale.codegen.description import describe, plain, wrapped
 from multiscale.codegen.functions import Routine
 from multiscale.codegen.printer import identifiers
-from multiscale.codegen.routines import FUNCTIONS, Exported, exported
+from multiscale.codegen.routines import FUNCTIONS, Exported, exported, functions_called
 from multiscale.codegen.statements import Assignment, Listing, listing, names_in
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
@@ -27,53 +29,6 @@ __all__ = ["c_source", "write_c"]
 WIDTH = 84
 PART = 200
 """Assignments in one part of a split function."""
-_KEYWORDS = frozenset(
-    [
-        "auto",
-        "break",
-        "case",
-        "char",
-        "const",
-        "continue",
-        "default",
-        "do",
-        "double",
-        "else",
-        "enum",
-        "extern",
-        "float",
-        "for",
-        "goto",
-        "if",
-        "inline",
-        "int",
-        "long",
-        "register",
-        "restrict",
-        "return",
-        "short",
-        "signed",
-        "sizeof",
-        "static",
-        "struct",
-        "switch",
-        "typedef",
-        "union",
-        "unsigned",
-        "void",
-        "volatile",
-        "while",
-        "y",
-        "w",
-        "parameters",
-        "result",
-        "main",
-        # What math.h defines as macros may not be declared.
-        *("NAN", "INFINITY", "HUGE_VAL", "HUGE_VALF", "HUGE_VALL", "MATH_ERRNO", "MATH_ERREXCEPT"),
-        *("FP_INFINITE", "FP_NAN", "FP_NORMAL", "FP_SUBNORMAL", "FP_ZERO", "FP_ILOGB0", "FP_ILOGBNAN"),
-        *("FP_FAST_FMA", "FP_FAST_FMAF", "FP_FAST_FMAL", "math_errhandling"),
-    ]
-)
 
 
 def write_c(
@@ -97,7 +52,8 @@ def write_c(
     Raises
     ------
     EvaluationError
-        The file name is no C identifier followed by ``.c``; otherwise as for `write_module`.
+        The file name is no C identifier followed by ``.c``; the functions need quadrature over a phase or Bessel
+        functions, which C99 does not have; otherwise as for `write_module`.
 
     Examples
     --------
@@ -124,18 +80,20 @@ def write_c(
 def c_source(expansion: Expansion, stem: str, *, functions: Sequence[str] = FUNCTIONS) -> tuple[str, str]:
     """The texts of source and header that `write_c` writes."""
     made = exported(expansion, functions)
-    blocks, prototypes = [], []
+    names = functions_called(made)
+    check(names)
+    blocks, prototypes = helpers(names, stem), []
     for name, routine in made.routines.items():
-        lines, places = _function(f"{stem}_{name}", routine, made)
+        lines, places = _function(stem, name, routine, made)
         blocks.append(lines)
         count = len(routine.outputs)
         told = f"{_purpose(made)[name]}: {count} value{'s' if count > 1 else ''}"
         told += f"; {8 * places} bytes of stack for intermediate values" if places else ""
         prototypes += [*_comment([told]), *_prototype(f"{stem}_{name}", f"{stem.upper()}_RESTRICT", ";"), ""]
     for k, relation in enumerate(made.relations, start=1):
-        words = identifiers(relation.arguments, _KEYWORDS)
+        words = words_of(relation.arguments, stem)
         inputs = dict(zip((f"parameter {x}" for x in relation.arguments), words, strict=True))
-        found = listing(relation.tape, [relation.output], inputs)
+        found = listing(relation.tape, [relation.output], inputs, (), spelling(stem))
         head = f"double {stem}_relation_{k}({', '.join(f'double {word}' for word in words)})"
         body = [f"    const double {x.name} = {x.text};" for x in found.coefficients]
         blocks.append([head, "{", *body, f"    return {found.results[0]};", "}"])
@@ -220,10 +178,12 @@ def _header(made: Exported, stem: str, prototypes: Sequence[str]) -> list[str]:
     ]
 
 
-def _function(name: str, routine: Routine, made: Exported) -> tuple[list[str], int]:
+def _function(stem: str, title: str, routine: Routine, made: Exported) -> tuple[list[str], int]:
     """The lines of one function, and how many intermediate values it keeps on the stack (0 if it is not split)."""
-    words = dict(zip(routine.arguments, identifiers(["t", *made.state, *made.parameters], _KEYWORDS), strict=True))
-    found = listing(routine.program.tape, routine.outputs, words, ("time t", *routine.state))
+    name = f"{stem}_{title}"
+    words = dict(zip(routine.arguments, words_of(["t", *made.state, *made.parameters], stem), strict=True))
+    moving = ("time t", *routine.state)
+    found = listing(routine.program.tape, routine.outputs, words, moving, spelling(stem))
     sources = {words[x]: f"y[{k}]" for k, x in enumerate(routine.state)}
     sources |= {
         words[x]: f"parameters[{k}]" for k, x in enumerate(a for a in routine.arguments if a.startswith("parameter "))

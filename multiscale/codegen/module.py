@@ -3,7 +3,8 @@
 The file holds ``rhs``, ``jacobian``, ``frequency`` and ``displacement``, called as f(t, y, *parameters) like every
 generated function of the library, ``parameters`` to order values by name, and the change between Cartesian and polar
 state. Under each function lies its kernel, which takes and returns scalars and has neither branches nor in-place
-writes, so that just-in-time compilers accept it as it stands.
+writes, so that just-in-time compilers accept it as it stands where it calls nothing but NumPy. Averages over a phase
+bring their integrands and the quadrature along (`multiscale.codegen.travelling`).
 """
 
 from __future__ import annotations
@@ -15,11 +16,22 @@ from os import PathLike
 from pathlib import Path
 
 import multiscale
+from multiscale.codegen.averages_text import about_kernels, brought_along, imported, integrand_functions
 from multiscale.codegen.description import Paragraph, describe, plain, wrapped
 from multiscale.codegen.module_text import COMPLETED, EVALUATED, MISSING, POLAR
-from multiscale.codegen.python_kernel import call, identifiers_of, kernel, quoted, sequence, signature, words_for
-from multiscale.codegen.routines import FUNCTIONS, Exported, exported
-from multiscale.codegen.statements import listing
+from multiscale.codegen.python_kernel import (
+    assigned,
+    call,
+    identifiers_of,
+    kernel,
+    quoted,
+    sequence,
+    signature,
+    words_for,
+)
+from multiscale.codegen.routines import FUNCTIONS, Exported, exported, functions_called
+from multiscale.codegen.statements import Integrands, listing
+from multiscale.codegen.travelling import NUMPY, QUADRATURE, travelling
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
 
@@ -27,7 +39,8 @@ __all__ = ["module_source", "write_module"]
 
 WIDTH = 84
 _ALWAYS = ("PARAMETERS", "PHASES", "STATE", "parameters", "to_cartesian", "to_polar")
-_TAKEN = {"np", "y", "PARAMETERS", "_evaluated", *FUNCTIONS, *(f"{name}_kernel" for name in FUNCTIONS)}
+_INTEGRANDS = (name for k in range(1, 1000) for name in (f"_integrand_{k}", f"_FORCE_{k}"))
+_TAKEN = {"np", "y", "PARAMETERS", "_evaluated", *_INTEGRANDS, *FUNCTIONS, *(f"{name}_kernel" for name in FUNCTIONS)}
 _SUMMARIES = {
     "rhs": "Rate of change of the slow state",
     "jacobian": "Derivative of the rate of change by the state, row by row",
@@ -59,12 +72,14 @@ def write_module(
     Path
         Where the file was written. It documents equations, order, conventions, relations, assumptions and remarks.
         Its functions have the shapes of `NumpyFunction`; ``frequency`` has one component for each mode if there are
-        several, and raises where the frequency is no function of the amplitude.
+        several, and raises where the frequency is no function of the amplitude. Averages over a phase that have no
+        closed form are computed by the quadrature of the library, which the file brings along.
 
     Raises
     ------
     EvaluationError
-        `expansion` is no Expansion; a name in `functions` or `namespace` is none; a force is a Python function.
+        `expansion` is no Expansion; a name in `functions` or `namespace` is none; a force is a Python function or a
+        table; `namespace` is not NumPy, but averages over a phase or special functions are to be computed.
 
     Examples
     --------
@@ -91,27 +106,32 @@ def module_source(expansion: Expansion, *, functions: Sequence[str] = FUNCTIONS,
     if not isinstance(namespace, str) or not re.fullmatch(r"[A-Za-z_]\w*(\.[A-Za-z_]\w*)*", namespace, re.ASCII):
         raise EvaluationError(f"namespace is {namespace!r}: expected the name of a module, such as 'jax.numpy'")
     made = exported(expansion, functions)
-    called: set[str] = set()
-    blocks = [
-        *_flow_functions(made, called),
-        *_parameter_functions(made, called),
-        POLAR.strip().splitlines(),
-        EVALUATED.strip().splitlines(),
-    ]
-    lines = [*_docstring(made, namespace), "", f"import {namespace} as np"]
-    lines += [f"from {namespace} import {', '.join(sorted(called))}"] if called else []
-    lines += ["", *_constants(made)]
-    for block in blocks:
+    names = functions_called(made)
+    if namespace != "numpy" and (needed := sorted(names & QUADRATURE)):
+        raise EvaluationError(
+            f"the functions call {', '.join(needed)}, whose number of nodes or steps depends on the values: that needs "
+            f"NumPy itself, not {namespace}. Leave namespace out, or use slow_flow.to_numpy"
+        )
+    integrands = Integrands()
+    parts = [*_flow_functions(made, integrands), *_parameter_functions(made)]
+    brought = travelling(names)
+    blocks = [*integrand_functions(integrands), *parts]
+    blocks += [POLAR.strip().splitlines(), EVALUATED.strip().splitlines()]
+    lines = [*_docstring(made, namespace, names), "", *brought.imports, *([""] if brought.imports else [])]
+    lines += [f"import {namespace} as np"]
+    lines += imported(namespace, names)
+    lines += ["", *_constants(made, names)]
+    for block in [*blocks, *brought_along(brought)]:
         lines += ["", "", *block]
     return "\n".join(lines) + "\n"
 
 
-def _docstring(made: Exported, namespace: str) -> list[str]:
+def _docstring(made: Exported, namespace: str, names: set[str]) -> list[str]:
     expansion = made.expansion
     unknowns = ", ".join(str(u) for u in expansion.problem.unknowns)
     title = f"Slow flow of {unknowns} to order {expansion.order} in {expansion.problem.small}."
     lines = textwrap.wrap(plain(title), WIDTH)
-    for paragraph in (*describe(expansion, fields="displacement" in made.routines), _contents(made)):
+    for paragraph in (*describe(expansion, fields="displacement" in made.routines), _contents(made, names)):
         lines += ["", *wrapped(paragraph, WIDTH)]
     needs = "NumPy" if namespace == "numpy" else namespace
     lines += ["", f"Made by multiscale {multiscale.__version__}; needs {needs} only."]
@@ -123,7 +143,7 @@ def _inside_docstring(line: str) -> str:
     return line.replace("\\", "\\\\").replace('"', '\\"' if '"""' in line else '"').rstrip()
 
 
-def _contents(made: Exported) -> Paragraph:
+def _contents(made: Exported, names: set[str]) -> Paragraph:
     problem, order = made.expansion.problem, made.expansion.order
     state, polar = ", ".join(made.state), ", ".join(_polar_names(made))
     unknowns = ", ".join(u.func.__name__ for u in problem.unknowns)
@@ -141,8 +161,7 @@ def _contents(made: Exported) -> Paragraph:
         "makes that tuple from names.",
         "y has shape (n,) or (n,) + S. With B the broadcast of t, S and the parameters, vectors have shape (n,) + B "
         "and Jacobians (n, n) + B. Any consistent units.",
-        "The kernel of a function, such as rhs_kernel, takes and returns scalars (or arrays of one shape), without "
-        "branches or in-place writes: just-in-time compilers accept it.",
+        *about_kernels(names),
     ]
     return Paragraph("Contents", formulas=tuple(plain(row) for row in rows))
 
@@ -152,11 +171,12 @@ def _polar_names(made: Exported) -> list[str]:
     return [str(x) for x in (*s.a, *s.gamma, *made.expansion.slow_flow.cyclic)]
 
 
-def _constants(made: Exported) -> list[str]:
+def _constants(made: Exported, names: set[str]) -> list[str]:
     frame = made.expansion.computation.frame
     phases = [*frame.resonant, *(tuple(int(k == j) for k in range(frame.modes)) for j in frame.cyclic)]
     rows = [f"({', '.join(map(str, row))}{',' if len(row) == 1 else ''})" for row in phases]
-    public = sorted([*_ALWAYS, *made.routines, *made.absent, *(f"{name}_kernel" for name in made.routines)])
+    errors = ["IntegralError"] if names & {"circle", "arcs"} else []
+    public = sorted([*_ALWAYS, *errors, *made.routines, *made.absent, *(f"{name}_kernel" for name in made.routines)])
     return [
         *sequence("__all__", [quoted(x) for x in public], "[]"),
         "",
@@ -171,8 +191,8 @@ def _constants(made: Exported) -> list[str]:
     ]
 
 
-def _flow_functions(made: Exported, called: set[str]) -> list[list[str]]:
-    """Each function and its kernel; the NumPy functions that they call are added to `called`."""
+def _flow_functions(made: Exported, integrands: Integrands) -> list[list[str]]:
+    """Each function and its kernel; what they average over a phase goes into `integrands`."""
     blocks = []
     for name, routine in made.routines.items():
         words = words_for(routine, made.state, _TAKEN)
@@ -181,8 +201,7 @@ def _flow_functions(made: Exported, called: set[str]) -> list[list[str]]:
         lines = [*signature(name, [time, "y", *values]), f'    """{_SUMMARIES[name]}."""']
         lines += sequence("values", values, indent=4)
         lines += call("return _evaluated", [f"{name}_kernel", str(routine.shape), time, "y", "values"], indent=4)
-        inside, found = kernel(f"{name}_kernel", routine, words, f"{_SUMMARIES[name]}, as scalars.")
-        called |= set(found.functions)
+        inside, _ = kernel(f"{name}_kernel", routine, words, f"{_SUMMARIES[name]}, as scalars.", integrands)
         blocks += [lines, inside]
     for name, reason in made.absent.items():
         parts = textwrap.wrap(plain(reason), 60)
@@ -195,17 +214,16 @@ def _flow_functions(made: Exported, called: set[str]) -> list[list[str]]:
     return blocks
 
 
-def _parameter_functions(made: Exported, called: set[str]) -> list[list[str]]:
+def _parameter_functions(made: Exported) -> list[list[str]]:
     """``parameters``, and the relations that it inverts."""
     blocks, steps = [], []
     for k, relation in enumerate(made.relations, start=1):
         words = identifiers_of(relation.arguments, _TAKEN)
         inputs = dict(zip((f"parameter {name}" for name in relation.arguments), words, strict=True))
-        found = listing(relation.tape, [relation.output], inputs)
-        called |= set(found.functions)
+        found = listing(relation.tape, [relation.output], inputs, (), NUMPY)
         heading = _inside_docstring(plain(f"{relation.detuning or 'The detuning'} from its relation."))
         lines = [*signature(f"_relation_{k}", words), f'    """{heading}"""']
-        lines += [f"    {x.name} = {x.text}" for x in found.coefficients]
+        lines += [line for x in found.coefficients for line in assigned(x)]
         blocks.append([*lines, f"    return {found.results[0]}"])
         names = [_tuple(relation.given), quoted(relation.detuning), _tuple(relation.arguments), f"_relation_{k}"]
         steps += call("found = _completed", ["found", *names], indent=4)

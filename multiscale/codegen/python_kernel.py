@@ -6,9 +6,22 @@ from collections.abc import Iterable, Mapping, Sequence
 
 from multiscale.codegen.functions import Routine
 from multiscale.codegen.printer import identifiers
-from multiscale.codegen.statements import Listing, listing
+from multiscale.codegen.statements import Assignment, Integrands, Listing, listing
+from multiscale.codegen.tape import Integrand
+from multiscale.codegen.travelling import NUMPY
 
-__all__ = ["LINE", "call", "identifiers_of", "kernel", "quoted", "sequence", "signature", "words_for"]
+__all__ = [
+    "LINE",
+    "assigned",
+    "call",
+    "identifiers_of",
+    "integrand_function",
+    "kernel",
+    "quoted",
+    "sequence",
+    "signature",
+    "words_for",
+]
 
 LINE = 88
 LONGEST = 32
@@ -57,17 +70,50 @@ def sequence(name: str, items: Sequence[str], brackets: str = "()", indent: int 
     )
 
 
-def kernel(name: str, routine: Routine, words: Mapping[str, str], heading: str) -> tuple[list[str], Listing]:
+def assigned(x: Assignment, start: str = "") -> list[str]:
+    """An assignment in the body of a function, one argument a line where a call does not fit.
+
+    `start` replaces ``name =``.
+    """
+    start = start or f"{x.name} ="
+    line = f"    {start} {x.text}"
+    if len(line) <= LINE or not x.call:
+        return [line]
+    lines = [f"    {start} {x.call}("]
+    for argument in x.arguments:
+        if isinstance(argument, str):
+            lines.append(f"        {argument},")
+            continue
+        several = f"        ({', '.join(argument)}{',' if len(argument) == 1 else ''}),"
+        fits = len(several) <= LINE
+        lines += [several] if fits else ["        (", *(f"            {y}," for y in argument), "        ),"]
+    return [*lines, "    )"]
+
+
+def kernel(
+    name: str, routine: Routine, words: Mapping[str, str], heading: str, integrands: Integrands
+) -> tuple[list[str], Listing]:
     """The lines of ``name(t, state, parameters) -> tuple``, and the listing they were made from."""
-    found = listing(routine.program.tape, routine.outputs, words, ("time t", *routine.state))
+    moving = ("time t", *routine.state)
+    found = listing(routine.program.tape, routine.outputs, words, moving, NUMPY, integrands)
     lines = [*signature(name, [words[x] for x in routine.arguments]), f'    """{heading}"""']
     if found.coefficients:
         lines.append("    # From the parameters alone.")
-        lines += [f"    {x.name} = {x.text}" for x in found.coefficients]
+        lines += [line for x in found.coefficients for line in assigned(x)]
     if found.steps:
         lines.append("    # From time and state.")
-        lines += [f"    {x.name} = {x.text}" for x in found.steps]
+        lines += [line for x in found.steps for line in assigned(x)]
     return [*lines, *_returned(found.results)], found
+
+
+def integrand_function(name: str, integrand: Integrand, found: Listing) -> list[str]:
+    """The lines of ``name(theta, x0, …)``."""
+    lines = signature(name, ["theta", *(f"x{k}" for k in range(integrand.count))])
+    lines.append('    """What is averaged over the phase theta."""')
+    steps, result = [*found.coefficients, *found.steps], found.results[0]
+    last = steps.pop() if steps and steps[-1].name == result else None
+    lines += [line for x in steps for line in assigned(x)]
+    return [*lines, *(assigned(last, "return") if last else [f"    return {result}"])]
 
 
 def _returned(results: Sequence[str]) -> list[str]:

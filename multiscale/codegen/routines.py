@@ -16,13 +16,13 @@ from multiscale.codegen.functions import (
 )
 from multiscale.codegen.runtime import RUNTIME
 from multiscale.codegen.tape import Node, Tape
+from multiscale.codegen.travelling import ELEMENTARY
 from multiscale.errors import EvaluationError, MultiscaleError
 from multiscale.expansion import Expansion
 
-__all__ = ["FUNCTIONS", "Exported", "Relation", "exported"]
+__all__ = ["FUNCTIONS", "Exported", "Relation", "exported", "functions_called"]
 
 FUNCTIONS = ("rhs", "jacobian", "frequency", "displacement")
-_ELEMENTARY = {"sin", "cos", "exp", "log", "sqrt"}
 
 
 @dataclass(frozen=True)
@@ -92,19 +92,36 @@ def _frequency(expansion: Expansion) -> Routine:
     return frequency_routine(expansion.problem, expansion.computation, range(expansion.computation.modes))
 
 
+def functions_called(made: Exported) -> set[str]:
+    """Everything that the routines and the relations call."""
+    found: set[str] = set()
+    for routine in made.routines.values():
+        found |= _called(routine.program.tape, routine.outputs)
+    for relation in made.relations:
+        found |= _called(relation.tape, [relation.output])
+    return found
+
+
+def _called(tape: Tape, outputs: Sequence[Node]) -> set[str]:
+    """The functions that a computation calls, those of the integrands of its phase averages included."""
+    found = set()
+    for node in tape.live(outputs):
+        step = tape.steps[node]
+        if step[0] in ("call", "apply"):
+            found.add(str(step[1]))
+        elif step[0] in ("quad", "jump"):
+            function = "jump" if step[0] == "jump" else "arcs" if step[2] else "circle"
+            found |= {function, *_called(step[1].tape, [step[1].output])}
+    return found
+
+
 def _check_functions(routine: Routine) -> None:
-    """Raises `EvaluationError` where the routine calls more than elementary functions, or holds an average."""
-    tape = routine.program.tape
-    live = [tape.steps[node] for node in tape.live(routine.outputs)]
-    called = {str(step[1]) for step in live if step[0] in ("call", "apply")}
-    averages = any(step[0] in ("quad", "jump") for step in live)
-    remedy = "which a file of its own cannot hold: use slow_flow.to_numpy"
-    if laws := sorted(called - _ELEMENTARY - RUNTIME.keys()):
-        raise EvaluationError(f"the problem contains a force given as a Python function ({', '.join(laws)}), {remedy}")
-    if averages or called - _ELEMENTARY:
+    known = ELEMENTARY.keys() | RUNTIME.keys()
+    if strange := sorted(_called(routine.program.tape, routine.outputs) - known):
+        named = ", ".join(name.removeprefix("law_") for name in strange)
         raise EvaluationError(
-            f"the problem contains a force that is no polynomial; its average over a cycle needs quadrature or special "
-            f"functions, {remedy}, or state the force as a Taylor polynomial"
+            f"the problem contains a force given as a Python function or a table ({named}), which cannot be written "
+            "into a file of its own: use slow_flow.to_numpy, or state the force as an expression"
         )
 
 

@@ -225,20 +225,6 @@ def test_a_python_function_as_force_is_refused():
         _check_functions(routine)
 
 
-FORCES = {
-    "special function": sp.sin(mu * u),
-    "closed form": mu * sp.Abs(u.diff(t)) * u.diff(t),
-    "quadrature": mu * sp.tanh(u.diff(t) / alpha),
-}
-
-
-@pytest.mark.parametrize("name", FORCES)
-def test_a_force_that_is_averaged_is_refused_by_what_it_is(name):
-    result = ms.expand(ms.Problem(u.diff(t, 2) + u + eps * FORCES[name], u, small=eps), 1)
-    with pytest.raises(ms.EvaluationError, match="a force that is no polynomial; its average over a cycle needs"):
-        module_source(result)
-
-
 @pytest.mark.slow
 def test_numba_compiles_the_kernels(tmp_path):
     numba = pytest.importorskip("numba")
