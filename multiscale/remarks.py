@@ -222,6 +222,12 @@ def _growing(computation: Computation) -> list[str]:
     if operator is None or not operator.others:
         return []
     rates = leading_growth(operator, dict(computation.canonical.meanings))
+    if operator.given and (rates is None or max(rates) <= 1e-9):
+        return [
+            f"the other roots of the leading order ({operator.others} at most) were not looked for: their motions are "
+            "assumed to decay or to be at rest but for what the modes given force on them, and no combination of "
+            "frequencies to meet theirs"
+        ]
     if rates is None or max(rates) <= 1e-9:
         assumed = "assumed to decay" if rates is None else "decay"
         return [

@@ -360,12 +360,20 @@ def frequency_function(problem: Problem, computation: Computation, mode: int) ->
     return _function(problem, frequency_routine(problem, computation, [mode]))
 
 
-def coefficient_function(problem: Problem, computation: Computation) -> tuple[tuple[Key, ...], NumpyFunction]:
+def coefficient_function(
+    problem: Problem, computation: Computation, at_amplitudes: bool = False
+) -> tuple[tuple[Key, ...], NumpyFunction]:
     """The coefficients of an autonomous slow flow in complex form as functions of the parameters alone.
 
     dA_a/dt = Σ εⁿ c Π A_l^{p_l} Ā_l^{q_l}: the keys (n, a, (p_1, q_1, …)), and c at each as (real, imaginary).
+    With `at_amplitudes` c may depend on the amplitudes a_l = 2|A_l|, which are then the state; averages over several
+    phases are left out.
     """
     program = Program(problem, computation)
+    names: tuple[str, ...] = ()
+    if at_amplitudes:
+        names, program.without_torus = tuple(f"state a{k + 1}" for k in range(computation.modes)), True
+        program.set_amplitudes([program.tape.input(name) for name in names])
     keys: list[Key] = []
     outputs: list[Node] = []
     collected: dict[Key, list[Complex]] = {}
@@ -379,7 +387,7 @@ def coefficient_function(problem: Problem, computation: Computation) -> tuple[tu
         keys.append(key)
         outputs += [program.tape.total(x for x, _ in parts), program.tape.total(y for _, y in parts)]
     heading = "Coefficients of the slow flow, by level."
-    return tuple(keys), _function(problem, Routine(program, (), tuple(outputs), (len(keys), 2), heading))
+    return tuple(keys), _function(problem, Routine(program, names, tuple(outputs), (len(keys), 2), heading))
 
 
 def field_coefficient_function(problem: Problem, computation: Computation) -> tuple[tuple[Key, ...], NumpyFunction]:

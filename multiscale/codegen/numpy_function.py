@@ -62,15 +62,20 @@ class Inversion:
             return dict(found)
         with np.errstate(all="ignore"):
             # Complex values pass: the derivative of a detuning by its frequency may be taken by a complex step.
-            numbers = (
+            numbers = [
                 _array(found[name], np.complex128 if np.iscomplexobj(found[name]) else np.float64, name)
                 for name in self.arguments
-            )
-            (value,) = _compiled(self.source, self.functions)(*numbers)
+            ]
+            formula = _compiled(self.source, self.functions)
+            (value,) = formula(*numbers)
         if self.detuning in found:
             own = _array(found[self.detuning], np.float64, self.detuning)
             stated = ", ".join(f"{name} = {found[name]}" for name in given if name != self.detuning) or "the others"
-            if not np.allclose(own, value, rtol=1e-9, atol=1e-12):
+            # A detuning is a small difference of frequencies: it is known as well as these are, to twelve digits.
+            with np.errstate(all="ignore"):
+                changed = [[*numbers[:k], x * (1 + 1e-12), *numbers[k + 1 :]] for k, x in enumerate(numbers)]
+                slack = np.abs([formula(*others)[0] - value for others in changed]).sum(axis=0)
+            if not np.allclose(own - value, 0.0, rtol=0.0, atol=1e-9 * np.abs(value) + slack):
                 raise EvaluationError(
                     f"{self.detuning} = {found[self.detuning]} contradicts {stated}, "
                     f"which needs {self.detuning} = {value}: give one of them"
@@ -169,7 +174,10 @@ class NumpyFunction:
 
         `staged` is the kernel at these parameters, if there is one.
         """
-        state = np.asarray(y)
+        try:
+            state = np.asarray(y)
+        except ValueError:
+            return self._at_arrays(t, y, parameters)  # which says what is wrong with it
         if (
             state.ndim != 1
             or self._scalar_kernel is None
@@ -241,7 +249,7 @@ class NumpyFunction:
         for name, value in zip(self.parameters, values, strict=True):
             _array(value, np.float64, name)
         return BoundFunction(
-            self, tuple(float(x) if np.ndim(x) == 0 else np.asarray(x, dtype=np.float64) for x in values)
+            self, tuple(float(x) if np.ndim(x) == 0 else np.array(x, dtype=np.float64) for x in values)
         )
 
     def with_namespace(self, namespace: Any) -> NamespaceFunction:
@@ -309,9 +317,11 @@ def _array(x: Any, kind: Any, name: str) -> Array:
         if result.dtype.kind in "USmM":
             raise TypeError
         if result.dtype.kind not in "fiucb":
+            if any(x is None for x in result.flat):  # which NumPy would make nan
+                raise TypeError
             result = result.astype(np.complex128 if kind is np.complex128 else np.float64)
         return result.astype(kind, copy=False)
-    except (TypeError, ValueError) as error:
+    except (TypeError, ValueError, OverflowError) as error:
         if isinstance(error, EvaluationError):
             raise
-        raise EvaluationError(f"{name} is {x!r}: expected numbers") from None
+        raise EvaluationError(f"{name} is {repr(x)[:60]}: expected numbers") from None

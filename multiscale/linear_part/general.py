@@ -16,7 +16,8 @@ from fractions import Fraction
 from typing import Any
 
 from multiscale.algebra.matrices import adjugate, applied
-from multiscale.algebra.polynomial import Frozen, Polynomial
+from multiscale.algebra.polynomial import Frozen, Polynomial, describe
+from multiscale.algebra.quotient import vanishes
 from multiscale.algebra.reciprocals import inverse
 from multiscale.algebra.ring import Ring
 from multiscale.errors import ResonanceError
@@ -48,7 +49,8 @@ class Root:
 class Operator:
     """The matrices of L_0 and its purely imaginary roots, as data; `numeric` where these have no closed form.
 
-    `others` counts the roots off the imaginary axis.
+    `others` counts the roots off the imaginary axis; `given` says that the user gave the roots, and that nothing is
+    known of the `others`.
     """
 
     mass: FrozenMatrix
@@ -57,6 +59,7 @@ class Operator:
     roots: tuple[Root, ...]
     numeric: bool = False
     others: int = 0
+    given: bool = False
 
     @property
     def polynomials(self) -> list[Frozen]:
@@ -163,6 +166,13 @@ class General:
 
     def _plain(self, rate: Rate) -> _Plain:
         determinant, adjoint = adjugate(self._ring, self.matrix(rate))
+        if self.operator.given and vanishes(self._ring, determinant):
+            raise ResonanceError(
+                f"a combination of the modes given and the drives has the frequency "
+                f"{describe(self._ring.write(self.value(rate)))}, at which det L_0 vanishes: another mode has exactly "
+                "this frequency (or, where it is zero, the stiffness is singular), and its response is unbounded. Give "
+                "that mode in `shapes` too"
+            )
         return _Plain(adjoint, determinant)
 
     def _singular(self, rate: Rate, root: Root) -> _Singular:

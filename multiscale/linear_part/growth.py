@@ -18,6 +18,9 @@ __all__ = ["leading_growth"]
 INFINITE = 1e-12
 """|σ| below which a root counts as infinite, relative to the largest."""
 
+SINGULAR = 1e14
+"""Condition number beyond which a root is taken to be zero."""
+
 
 def leading_growth(operator: Operator, meanings: Mapping[str, Any]) -> list[float] | None:
     """Re s for every finite root; None where the matrices contain symbols. `meanings` gives generators by name."""
@@ -26,6 +29,8 @@ def leading_growth(operator: Operator, meanings: Mapping[str, Any]) -> list[floa
         return None
     mass, damping, stiffness = matrices
     size = len(operator.mass)
+    if np.linalg.cond(stiffness) > SINGULAR:
+        return None
     inverse = np.linalg.inv(stiffness)
     companion = np.block([[-inverse @ damping, -inverse @ mass], [np.eye(size), np.zeros((size, size))]])
     roots = np.linalg.eigvals(companion)

@@ -72,7 +72,7 @@ class Working:
 
     `hidden` are the symbols of radicals and what they stand for; those in `relations` eliminate no parameter, so that
     their squares are relations of the ring, a radical standing before those inside it; those in `numbers` have
-    no closed form.
+    no closed form. `changes` are the parameters eliminated by radicals so far, in order.
     """
 
     equations: list[sp.Expr]
@@ -83,8 +83,10 @@ class Working:
     detunings: list[Detuning]
     relations: list[tuple[sp.Symbol, sp.Expr]] = field(default_factory=list)
     numbers: list[sp.Symbol] = field(default_factory=list)
+    changes: list[tuple[sp.Symbol, sp.Expr]] = field(default_factory=list)
 
     def replace(self, symbol: sp.Symbol, value: sp.Expr) -> None:
+        self.changes.append((symbol, value))
         self.equations = [x.subs(symbol, value) for x in self.equations]
         self.rates = [[x.subs(symbol, value) for x in series] for series in self.rates]
         self.exact = [x.subs(symbol, value) for x in self.exact]

@@ -17,6 +17,7 @@ from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
 from multiscale.problem.canonical import Canonical, Working, canonical_form, completed, hide, working_copy
 from multiscale.problem.frequencies import Bases
+from multiscale.problem.given_shapes import roots_given
 from multiscale.problem.leading import misplaced, refuse_resonant_drives
 from multiscale.problem.mode_relations import with_mode_relations
 from multiscale.problem.modes import Choice, positive, roots_of
@@ -24,7 +25,7 @@ from multiscale.problem.preparation import Prepared
 from multiscale.problem.radicals import EliminatedError, Radicals
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.rows import leading_terms, linear_part, matrix
-from multiscale.problem.spectrum import DIGITS, Found, imaginary_roots
+from multiscale.problem.spectrum import DIGITS, Found, imaginary_roots, roots_at_most
 from multiscale.problem.terms import Entry, Layout, show, tabulate
 
 __all__ = ["form_of"]
@@ -87,12 +88,25 @@ def coupled_form(
         radicals, weak = _radicals(working, layout.small), _remedy(layout)
         try:
             radicals.settle([*mass, *damping, *stiffness])
-            found, others = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
+            if choice.shapes:
+                related = [g.mapped(lambda x: _at_leading_order(x, prepared, layout)) for g in choice.shapes]
+                meanings = prepared.leaves.meanings
+                found = roots_given(related, (mass, damping, stiffness), working, radicals, meanings)
+                others = roots_at_most(mass, damping, stiffness) - 2 * sum(f.multiplicity for f in found)
+            else:
+                found, others = imaginary_roots(mass, damping, stiffness, radicals, names, weak)
         except EliminatedError:
             continue
         found = [positive(f, working.hidden) for f in found]
         found = with_mode_relations(working, prepared, layout, shown, found, modes)
         return _assembled(working, prepared, layout, shown, found, others, choice)
+
+
+def _at_leading_order(x: sp.Expr, prepared: Prepared, layout: Layout) -> sp.Expr:
+    """What a user's expression means there with the relations in force."""
+    for symbol, value in prepared.relations.values:
+        x = x.subs(symbol, value)
+    return x.subs({meaning: leaf for leaf, meaning in prepared.leaves.meanings.items()}).subs(layout.small, 0)
 
 
 def _refuse_circular(modes: Mapping[sp.Symbol, int], matrices: Sequence[sp.Matrix]) -> None:
@@ -195,7 +209,7 @@ def _assembled(
     written = [f.shown or f.frequency for f in found]
     meant = [w.subs(working.hidden).subs(prepared.leaves.meanings) for w in written]
     roots = roots_of(linear, bases, reader, found, meant, choice)
-    operator = replace(linear.operator, roots=tuple(roots), others=others)
+    operator = replace(linear.operator, roots=tuple(roots), others=others, given=bool(choice.shapes) and others > 0)
     force = []
     for table in tables:
         power, leading = leading_terms(table)

@@ -24,6 +24,7 @@ from multiscale.linear_part.general import General
 from multiscale.linear_part.general import Root as ImaginaryRoot
 from multiscale.linear_part.kernel import block_of, covectors, scaled_shapes
 from multiscale.problem.frequencies import Bases
+from multiscale.problem.given_shapes import GivenShape
 from multiscale.problem.numeric import Kernel, defective, numeric_kernel
 from multiscale.problem.reading import Reader
 from multiscale.problem.spectrum import Found
@@ -33,13 +34,15 @@ __all__ = ["Choice", "modes_given", "numbering", "positive", "references_given",
 
 @dataclass(frozen=True)
 class Choice:
-    """What the user says about modes: which are carried (None: all), and the unknowns in which some are measured."""
+    """What the user says about modes: which are carried (None: all), the unknowns in which some are measured, and
+    frequencies with their shapes where these are not to be found by machine."""
 
     carried: tuple[int, ...] | None = None
     references: tuple[tuple[int, int], ...] = ()
+    shapes: tuple[GivenShape, ...] = ()
 
     def __bool__(self) -> bool:
-        return self.carried is not None or bool(self.references)
+        return self.carried is not None or bool(self.references) or bool(self.shapes)
 
 
 def modes_given(given: Any) -> tuple[int, ...] | None:
@@ -68,7 +71,7 @@ def _kernels(
     linear: General, bases: Bases, reader: Reader, found: Sequence[Found], frequencies: Sequence[sp.Expr]
 ) -> list[Kernel]:
     return [
-        _kernel(linear, reader, rate, f.multiplicity, w, list(range(linear.size)))
+        _kernel(linear, reader, rate, f, w, list(range(linear.size)))
         for rate, f, w in zip(bases.rates, found, frequencies, strict=False)
     ]
 
@@ -103,7 +106,7 @@ def roots_of(
         kernel = kernels[k]
         if wanted:
             preferred = [*wanted.values(), *(u for u in first_of if u not in wanted.values())]
-            kernel = _kernel(linear, reader, bases.rates[k], found[k].multiplicity, frequencies[k], preferred)
+            kernel = _kernel(linear, reader, bases.rates[k], found[k], frequencies[k], preferred)
             kernel = kernel.arranged(number, wanted)
         inside = [a for a in own if a in carried]
         if inside and len(inside) < len(own):
@@ -137,14 +140,20 @@ def _check_choice(choice: Choice, count: int, frequencies: Sequence[sp.Expr]) ->
 
 
 def _kernel(
-    linear: General, reader: Reader, rate: tuple[int, ...], multiplicity: int, frequency: sp.Expr, preferred: list[int]
+    linear: General, reader: Reader, rate: tuple[int, ...], root: Found, frequency: sp.Expr, preferred: list[int]
 ) -> Kernel:
+    multiplicity = root.multiplicity
     if linear.operator.numeric:
         return numeric_kernel(linear.operator, reader, frequency, multiplicity, preferred)
     ring, linear = reader.ring, linear.in_ring(reader.ring)
     matrix, slope = linear.matrix(rate), linear.slope(rate)
     block = block_of(ring, matrix, multiplicity, preferred)
-    if block is not None and multiplicity > 1:
+    if block is None and root.given:
+        raise ProblemError(
+            f"the frequency {frequency} has more shapes than the {multiplicity} given in `shapes`: give all of them, "
+            "{frequency: [shape, shape, …]}"
+        )
+    if block is not None and (multiplicity > 1 or root.given):
         bracket = covectors(ring, matrix, slope, block).bracket
         block = None if vanishes(ring, adjugate(ring, bracket)[0]) else block
     if block is None:

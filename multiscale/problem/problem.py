@@ -27,6 +27,7 @@ from multiscale.problem.given import (
     unknowns_given,
     warn_of_finite_detunings,
 )
+from multiscale.problem.given_shapes import Shapes, check_symbols, given_shapes, shapes_given
 from multiscale.problem.laws import Law, at_resonance, layout_with_laws, separated
 from multiscale.problem.matrices import equations_of, size_of
 from multiscale.problem.modes import Choice, modes_given, references_given
@@ -89,6 +90,14 @@ class Problem:
     references : mapping, optional
         ``{mode: unknown}``: the coordinate in which the amplitude of a mode is measured, if not the first unknown that
         takes part in it.
+    shapes : mapping, optional
+        ``{frequency: shape}``, modes that you know, for linear parts whose frequencies have no closed form that a
+        machine finds: shapes as sequences in the order of the unknowns or ``{unknown: component}``, up to a factor,
+        several of one frequency as a sequence of them. They are verified exactly. The frequency is an expression in the
+        parameters, or a symbol that a relation in `resonances` ties to them, ``{k: m*w**2}``. Modes that are not given
+        are not looked for: they are taken to be at rest but for what the modes given force on them.
+    left_shapes : mapping, optional
+        ``{frequency: left vector}``, also verified; they follow from the matrices where they are not given.
 
     Raises
     ------
@@ -133,6 +142,8 @@ class Problem:
         formal: bool = False,
         modes: Sequence[int] | None = None,
         references: Mapping[int, sp.Expr] | None = None,
+        shapes: Mapping[sp.Expr, Any] | None = None,
+        left_shapes: Mapping[sp.Expr, Any] | None = None,
     ) -> None:
         self.unknowns: tuple[sp.Expr, ...] = unknowns_given(unknowns)
         self.time: sp.Symbol = time_given(self.unknowns, time)
@@ -150,14 +161,20 @@ class Problem:
         self.resonances: tuple[tuple[sp.Expr, sp.Expr], ...] = relation_pairs(resonances)
         self.modes: tuple[int, ...] | None = modes_given(modes)
         self.references: dict[int, sp.Expr] = references_given(references, self.unknowns)
+        self.shapes: Shapes = shapes_given(shapes, self.unknowns, "shapes")
+        self.left_shapes: Shapes = shapes_given(left_shapes, self.unknowns, "left_shapes")
+        self._given_shapes = given_shapes(self.shapes, self.left_shapes)
         if about is not None:
             self._measure_from(rest_positions(about, self.unknowns, self.time, small), small)
         beside = [x for x in (*(self.ordering or {}), small) if isinstance(x, sp.Symbol)]
         check_names({*self._symbols, self.time, *beside}, self.unknowns)
+        check_symbols(self._given_shapes, self._symbols)
         self._given_small = small_given(small, self.ordering, self._symbols, self.time)
         self._canonical: dict[int | None, Canonical] = {}
         self.canonical(1)
-        warn_of_finite_detunings(self.equations, self.resonances, self.small, self.ordering)
+        # A relation that gives a frequency of `shapes` its symbol, {k: m*w**2}, detunes nothing.
+        present = (*self.equations, *self.shapes)
+        warn_of_finite_detunings(present, self.resonances, self.small, self.ordering)
 
     def _measure_from(self, about: dict[sp.Expr, sp.Expr], small: Any) -> None:
         """Put the deviation from rest in the place of each unknown, and the equilibrium among the relations."""
@@ -205,7 +222,7 @@ class Problem:
             The powers of `small`, by default ``{"C": 2, "quadratic": 1, "cubic": 2, "drive": 2}``: amplitudes of order
             ε, damping of the size of the cubic terms. ``{"C": 0}`` puts damping at leading order.
         **options
-            `resonances`, `modes`, `references` as for `Problem`.
+            `resonances`, `modes`, `references`, `shapes`, `left_shapes` as for `Problem`.
 
         Raises
         ------
@@ -317,7 +334,7 @@ class Problem:
     def _mode_symbols(self) -> dict[sp.Symbol, int]:
         """{omega_1: 0, …} for the symbols of relations that name natural frequencies of coupled equations."""
         stated = {s for pair in self.resonances for x in pair if x not in self.unknowns for s in x.free_symbols}
-        apart = stated - set().union(*(x.free_symbols for x in self.equations))
+        apart = stated - set().union(*(x.free_symbols for x in (*self.equations, *self.shapes)))
         return {s: int(m[1]) - 1 for s in apart if (m := fullmatch(r"omega_([1-9]\d*)", s.name))}
 
     def canonical(self, order: int) -> Canonical:
@@ -357,7 +374,8 @@ class Problem:
 
     @property
     def _choice(self) -> Choice:
-        return Choice(self.modes, tuple((a, self.unknowns.index(u)) for a, u in sorted(self.references.items())))
+        references = tuple((a, self.unknowns.index(u)) for a, u in sorted(self.references.items()))
+        return Choice(self.modes, references, self._given_shapes)
 
     @cached_property
     def _layout(self) -> Layout:
@@ -423,7 +441,8 @@ class Problem:
         ordering = None if self.ordering is None else tuple(sorted(self.ordering.items(), key=str))
         laws = tuple(sorted(self.laws.items(), key=lambda item: item[0]))
         references = tuple(sorted(self.references.items()))
-        kept = (laws, self.harmonics, self.formal, self.modes, references)
+        shapes = (frozenset(self.shapes.items()), frozenset(self.left_shapes.items()))
+        kept = (laws, self.harmonics, self.formal, self.modes, references, shapes)
         return (self.equations, self.unknowns, self._given_small, ordering, self.resonances, kept)
 
     def __eq__(self, other: object) -> bool:
@@ -444,6 +463,7 @@ class Problem:
             options["modes"] = self.modes
         if self.references:
             options["references"] = {a: self.unknowns.index(u) for a, u in self.references.items()}
+        options |= {name: x for name, x in (("shapes", self.shapes), ("left_shapes", self.left_shapes)) if x}
         options["resonances"] = [(self.unknowns.index(x) if x in self.unknowns else x, y) for x, y in self.resonances]
         return _rebuilt, ([with_calls(x, self.laws) for x in self._hidden()], functions, options)
 

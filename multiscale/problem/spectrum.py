@@ -24,7 +24,7 @@ from multiscale.errors import MultiscaleError, ProblemError
 from multiscale.problem.radicals import Radicals
 from multiscale.problem.reading import unsupported
 
-__all__ = ["Found", "imaginary_roots"]
+__all__ = ["Found", "imaginary_roots", "roots_at_most"]
 
 X = sp.Symbol("@x")
 S = sp.Symbol("@s")
@@ -36,11 +36,15 @@ DIGITS = 60
 
 @dataclass(frozen=True)
 class Found:
-    """A frequency, the multiplicity of the root iω in det L_0, and the form in which to print it, where another."""
+    """A frequency, the multiplicity of the root iω in det L_0, and the form in which to print it, where another.
+
+    `given` says that the user gave it with as many shapes, so that it may be defective, or have more shapes.
+    """
 
     frequency: sp.Expr
     multiplicity: int
     shown: sp.Expr | None = None
+    given: bool = False
 
 
 def imaginary_roots(
@@ -79,6 +83,14 @@ def imaginary_roots(
         raise _nothing_oscillates(_shown(even, odd), damping, names, weak)
     degree = max(2 * even.degree(), -1 if odd.is_zero else 2 * odd.degree() + 1)
     return found, degree - 2 * sum(f.multiplicity for f in found)
+
+
+def roots_at_most(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> int:
+    """A bound on the degree of det L_0(s), by rows and by columns."""
+    size = mass.shape[0]
+    orders = [[2 if mass[i, j] else 1 if damping[i, j] else 0 for j in range(size)] for i in range(size)]
+    columns = zip(*orders, strict=True)
+    return min(sum(max(row) for row in orders), sum(max(column) for column in columns))
 
 
 def _nothing_oscillates(
@@ -163,8 +175,10 @@ def _frequencies(factor: sp.Poly, back: dict[sp.Expr, sp.Expr], radical: Radical
     if factor.free_symbols_in_domain:
         raise ProblemError(
             f"the frequencies are the roots of {factor.as_expr().subs(X, sp.Symbol('omega') ** 2)} = 0, of degree "
-            f"{factor.degree()} in omega**2, which has no closed form: give numbers for the parameters of the linear "
-            "part, or write one of them in terms of a frequency (solve det L_0(i*omega) = 0 for it)"
+            f"{factor.degree()} in omega**2, for which no closed form was found. If you know a mode, give it by "
+            "`shapes={frequency: shape}`; any mode can be given with a symbol for its frequency if a parameter p is "
+            "eliminated by `resonances={p: <p from det L_0(i*omega) = 0>}`. Or give numbers for the parameters of the "
+            "linear part"
         )
     squares = [r for r in sp.Poly(factor, X).nroots(n=DIGITS, maxsteps=500) if r.is_real and r > 0]
     return [radical.number(sp.sqrt(x)) for x in squares]

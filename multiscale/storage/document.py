@@ -31,6 +31,7 @@ __all__ = ["from_json", "to_json"]
 
 FORMAT = "multiscale expansion"
 VERSION = 1
+ORDER = 500
 
 
 def to_json(expansion: Expansion) -> str:
@@ -120,7 +121,7 @@ def from_json(text: str) -> Expansion:
     """
     document = _document(text)
     expressions, polynomials = Reader(field(document, "expressions")), PolynomialReader(field(document, "generators"))
-    order = integer(field(document, "order"), "the order", 0, 10_000)
+    order = integer(field(document, "order"), "the order", 0, ORDER)
     amplitude = field(document, "amplitude")
     if amplitude not in ("fundamental", "peak"):
         raise refuse(f"amplitude is {str(amplitude)[:40]!r}")

@@ -230,6 +230,10 @@ REFUSED = {
     "unknown": (lambda f, p: f.bind(p, gamma=1), "unknown parameter 'gamma'"),
     "missing": (lambda f, p: f.bind(epsilon=0.1), "missing parameter alpha, beta_2, k, m, mu"),
     "twice": (lambda f, p: f.bind(p, epsilon=0.1), "'epsilon' is given twice"),
+    "no value": (lambda f, p: f.bind({**p, "k": None}), "k is None: expected numbers"),
+    "no time": (lambda f, p: f(None, [1.0, 0.0], *f.values(p)), "t is None: expected numbers"),
+    "ragged state": (lambda f, p: f.bind(p)(0.0, [[1.0, 2.0], [1.0]]), "y is .*: expected numbers"),
+    "huge state": (lambda f, p: f.bind(p)(0.0, [10**400, 1]), "(?s)y is .*: expected numbers"),
     "text": (lambda f, p: f.bind({**p, "k": "two"}), "k is 'two': expected numbers"),
     "complex parameter": (lambda f, p: f.bind({**p, "k": 1j}), "k is complex"),
     "complex state": (lambda f, p: f.bind(p)(0.0, [1j, 0]), "y is complex"),
@@ -245,6 +249,47 @@ def test_refused(rhs, parameters, name):
     call, message = REFUSED[name]
     with pytest.raises(ms.EvaluationError, match=message):
         call(rhs, parameters)
+
+
+def test_a_bound_array_is_a_copy(rhs, parameters):
+    values = np.array([0.7, 0.9])
+    bound = rhs.bind({**parameters, "k": values})
+    before = bound(0.0, [0.3, 0.1])
+    values[:] = 99.0
+    np.testing.assert_array_equal(bound(0.0, [0.3, 0.1]), before)
+
+
+@pytest.fixture(scope="module")
+def detuned():
+    omega = sp.Symbol("Omega", positive=True)
+    equation = u.diff(t, 2) + u + eps * (u.diff(t) + alpha * u**3 - sp.cos(omega * t))
+    relation = {omega: 1 + eps * sp.Symbol("sigma", real=True)}
+    return ms.expand(ms.Problem(equation, u, small=eps, resonances=relation), 1)
+
+
+@pytest.mark.parametrize(
+    ("small", "sigma", "frequency", "agree"),
+    [
+        (1e-9, 0.3, 1 + 0.3e-9, True),  # the detuning is a difference that has lost nine digits
+        (0.1, 0.0, 1.0, True),
+        (0.1, 0.5, 1.05, True),
+        (1e-3, 1e-7, 1.0, False),
+        (0.1, 0.5, 1.0500001, False),
+    ],
+)
+def test_detuning_and_frequency_agree_as_far_as_they_are_known(detuned, small, sigma, frequency, agree):
+    from multiscale.codegen.module import module_source
+
+    scope: dict = {}
+    exec(compile(module_source(detuned), "<flow>", "exec"), scope)
+    given = {"alpha": 1.0, "epsilon": small, "sigma": sigma, "Omega": frequency}
+    calls = {
+        detuned.slow_flow.to_numpy().values: (ms.EvaluationError, "contradicts Omega"),
+        scope["parameters"]: (ValueError, "but the relation needs"),
+    }
+    for function, (error, words) in calls.items():
+        with nullcontext() if agree else pytest.raises(error, match=words):
+            function(given)
 
 
 def test_singular_parameters_answer_as_numpy_does(rhs, parameters):

@@ -178,3 +178,7 @@ def test_density_in_terms_of_an_eliminated_frequency(driven, given):
 def test_noise_that_is_not_stationary_is_refused(driven, density):
     with pytest.raises(ms.ProblemError, match="depends on time: expected that of a stationary force"):
         ms.noisy_flow(driven, {u: density})
+
+
+def test_a_noisy_flow_prints_its_intensities(driven):
+    assert repr(ms.noisy_flow(driven, {u: S})) == "NoisyFlow(d_p = S/(2*m**2*omega_0**2), d_q = S/(2*m**2*omega_0**2))"

@@ -190,6 +190,9 @@ def _product_of_sums(name):
         ({"expressions": [["int", hex(2**20000 - 1)], ["rat", 1, 3], ["pow", 0, 1]]}, "a root of a number"),
         ({"expressions": [["float", 0, 1, 0, 10**6], ["call", "sin", 0]]}, "precision"),
         ({"expressions": {}}, "array"),
+        ({"representation": "sparse"}, "representation is 'sparse'"),
+        ({"reciprocals": [[3, []]]}, "name of a reciprocal"),
+        ({"tolerance": (-1.0).hex()}, "the tolerance is -1.0"),
         ({"problem": []}, "unknowns"),
     ],
     ids=lambda x: str(x)[:50],
@@ -209,6 +212,17 @@ def test_what_is_not_such_json_is_refused(text):
 def test_only_text_is_read(given):
     with pytest.raises(ms.StorageError, match="text"):
         ms.from_json(given)
+
+
+def test_a_formal_expansion_comes_back():
+    force = sp.Abs(u) * u**2
+    stated = ms.Problem(u.diff(t, 2) + u + eps * force, u, small=eps, formal=True)
+    result = ms.expand(stated, 1)
+    stored = json.loads(ms.to_json(result))
+    assert stored["problem"]["formal"] is True
+    assert ms.from_json(ms.to_json(result)) == result
+    with pytest.raises(ms.StorageError, match="formal is '1'"):
+        ms.from_json(_renewed(stored, problem=stored["problem"] | {"formal": 1}))
 
 
 def test_damage_is_told(document):

@@ -38,6 +38,7 @@ def _stated_without_drives(problem: Problem) -> Problem:
     ]
     relations = [sp.Eq(key, value, evaluate=False) for key, value in kept]
     chosen: dict[str, Any] = {"resonances": relations, "modes": problem.modes, "references": problem.references}
+    chosen |= {"shapes": problem.shapes, "left_shapes": problem.left_shapes}
     if problem.ordering is None:
         chosen |= {"laws": {sp.Function(name): law for name, law in problem.laws.items()}}
         chosen |= {"harmonics": problem.harmonics, "formal": problem.formal}

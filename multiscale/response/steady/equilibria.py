@@ -62,7 +62,8 @@ class Equilibrium:
 
 def kind_of(eigenvalues: Array) -> str:
     """The name of the stability that eigenvalues decide."""
-    rounding = 1e-10 * float(np.max(abs(eigenvalues), initial=1e-300))
+    sizes = abs(eigenvalues)
+    rounding = 1e-10 * float(np.max(sizes[np.isfinite(sizes)], initial=1e-300))
     growing = eigenvalues[eigenvalues.real > rounding]
     if len(growing) == 0:
         return "stable" if np.all(eigenvalues.real < -rounding) else "neutral"

@@ -155,7 +155,7 @@ def frequency_response(expansion: Expansion, parameters: Mapping[Any, Any], *, s
     swept = Sweep.of(flow, parameters, sweep)
     warn_at(expansion, {getattr(key, "name", key): value for key, value in parameters.items()})
     one = flow.modes == 1
-    arcs, folds, branchings = linked_arcs(swept) if one else followed_arcs(swept)
+    arcs, folds, branchings = followed_arcs(swept) if not one or flow.several_phases else linked_arcs(swept)
     branches = tuple(branch_of(swept, arc) for arc in arcs)
     artefacts = [float(b.parameter[k]) for b in branches for k in b.folds if b.spurious[k]]
     folds = [x for x in folds if x.parameter not in artefacts]
@@ -170,7 +170,7 @@ def frequency_response(expansion: Expansion, parameters: Mapping[Any, Any], *, s
         tuple(sorted(branchings, key=lambda x: x.parameter)),
         ups,
         downs,
-        one,
+        one and flow.polynomial,
         tuple(sp.latex(a) for a in expansion.symbols.a),
         swept,
     )

@@ -87,6 +87,10 @@ def _followed(sweep: Sweep, grid: _Grid, step: int) -> Array:
         bound = 0.3 * (np.linalg.norm(y, axis=0) + scale)
         move = np.where(np.isfinite(length), move * np.minimum(1.0, bound / np.where(length > 0, length, 1.0)), 0.0)
         found, _, converged = polished(sweep.flow, y + move, sweep.values(then), scale, 15, 0.5)
+    if not sweep.flow.polynomial:
+        # Dry friction holds the state of rest, where the flow has no slope.
+        held = ~np.any(y, axis=0)
+        found, converged = np.where(held, 0.0, found), converged | held
     distance = np.linalg.norm(grid.states[here + step] - found.T[:, None, :], axis=2)
     distance = np.where(np.isfinite(distance), distance, np.inf)
     best = np.argmin(distance, axis=1)

@@ -16,7 +16,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from multiscale.response.steady.steady_flow import STEP, SteadyFlow
+from multiscale.response.steady.steady_flow import DIFFERENCE, STEP, SteadyFlow
 
 __all__ = ["fold", "hopf", "polished", "reduced_eigenvalues", "rotation_rates", "solve_batch", "turning_jacobian"]
 
@@ -70,6 +70,7 @@ def polished(
     nu = rotation_rates(flow, y, values)
     size = len(y)
     converged = np.zeros(y.shape[1:], dtype=bool)
+    lost = np.zeros(y.shape[1:], dtype=bool)
     with np.errstate(over="ignore", invalid="ignore"):
         for _ in range(steps):
             rest, matrix = flow.rate(y, values), turning_jacobian(flow, y, nu, values)
@@ -82,16 +83,27 @@ def polished(
             length, bound = np.linalg.norm(step[:size], axis=0), np.linalg.norm(y, axis=0) + scale
             if np.isfinite(reach):
                 step = step * np.minimum(1.0, reach * bound / np.where(length > 0, length, 1.0))
+            if not flow.polynomial:
+                # Beyond the range of a force: not asked for again.
+                lost |= ~np.isfinite(length)
+                step, y, nu = np.where(lost, 0.0, step), np.where(lost, 0.0, y), np.where(lost, 0.0, nu)
             y, nu = y - step[:size], nu - step[size:]
             converged = length <= 1e-11 * np.linalg.norm(y, axis=0) + 1e-14 * np.asarray(scale)
-            if np.all(converged | ~np.isfinite(length)):
+            if np.all(converged | lost | ~np.isfinite(length)):
                 break
-    return y, nu, converged
+    return y, nu, converged & ~lost
 
 
 def reduced_eigenvalues(flow: SteadyFlow, y: Array, nu: Array, values: tuple[Any, ...]) -> Array:
-    """Eigenvalues of one state, those of its cyclic phases left out; fewest oscillations last."""
+    """Eigenvalues of one state, those of its cyclic phases left out; fewest oscillations last.
+
+    A mode that dry friction brings to rest in finite time has −∞ twice.
+    """
     matrix = turning_jacobian(flow, y, nu, values)
+    if not flow.polynomial and (sudden := _sudden_rates(flow, y, values)).any():
+        slow = np.repeat(sudden == 0, 2)
+        others = np.linalg.eigvals(matrix[np.ix_(slow, slow)]) if slow.any() else np.zeros(0)
+        return np.concatenate([np.repeat(np.sort(sudden[sudden != 0]), 2), others]).astype(complex)
     directions = [d for T in flow.rotations if np.linalg.norm(d := T @ y) > 1e-9 * np.linalg.norm(y)]
     if directions:
         left, sizes, _ = np.linalg.svd(np.array(directions).T)
@@ -101,16 +113,39 @@ def reduced_eigenvalues(flow: SteadyFlow, y: Array, nu: Array, values: tuple[Any
     return found[np.lexsort((found.imag, found.real))]
 
 
-def _newton(residual: Callable[[Array], Array], x: Array, scale: Array, steps: int = 40) -> Array | None:
-    """A root of an analytic real system, its Jacobian by complex steps; None without convergence.
+def _sudden_rates(flow: SteadyFlow, y: Array, values: tuple[Any, ...]) -> Array:
+    """∓∞ for each mode at rest whose (da/dt)/a has no limit there, 0 for the others."""
+    result = np.zeros(flow.modes)
+    size = max(float(np.linalg.norm(y)), 1.0)
+    for k in np.flatnonzero((y[::2] == 0) & (y[1::2] == 0)).tolist():
+        direction = np.zeros(len(y))
+        direction[2 * k] = 1.0
+        far, near = (
+            float(direction @ (flow.rate(y + h * direction, values) - flow.rate(y, values))) / h
+            for h in (1e-6 * size, 1e-8 * size)
+        )
+        if abs(near) > 4 * abs(far) and np.isfinite(near):
+            result[k] = np.copysign(np.inf, near)
+    return result
+
+
+def _newton(
+    residual: Callable[[Array], Array], x: Array, scale: Array, steps: int = 40, analytic: bool = True
+) -> Array | None:
+    """A root of a real system, its Jacobian by complex steps if `analytic`, else by differences; None without
+    convergence.
 
     The last steps are taken until they no longer shrink, so that the root is as good as rounding allows.
     """
     last = np.inf
     for _ in range(steps):
         with np.errstate(all="ignore"):
-            value = residual(x.astype(complex)).real
-            columns = [residual(x + 1j * STEP * s * e).imag / STEP for s, e in zip(scale, np.eye(len(x)), strict=True)]
+            if analytic:
+                value = residual(x.astype(complex)).real
+                columns = [residual(x + 1j * STEP * e).imag / STEP for e in np.diag(scale)]
+            else:
+                value, h = residual(x), DIFFERENCE
+                columns = [(residual(x + h * e) - residual(x - h * e)) / (2 * h) for e in np.diag(scale)]
         matrix = np.array(columns).T
         if not (np.isfinite(value).all() and np.isfinite(matrix).all()):
             return None
@@ -160,7 +195,7 @@ def fold(
     unit = max(float(np.linalg.norm(matrix)), 1e-300)
     start = np.concatenate([y, direction, [at], nu, np.zeros(len(nu))])
     scales = np.concatenate([np.full(size, scale), np.ones(size), [span], np.full(2 * len(nu), unit)])
-    found = _newton(residual, start, scales)
+    found = _newton(residual, start, scales, analytic=flow.polynomial)
     return None if found is None else (float(found[2 * size]), found[:size])
 
 
@@ -194,5 +229,5 @@ def hopf(
     unit = max(float(np.linalg.norm(matrix)), 1e-300)
     start = np.concatenate([y, wave.real, wave.imag, [at, rate], nu])
     scales = np.concatenate([np.full(size, scale), np.ones(2 * size), [span], np.full(1 + len(nu), unit)])
-    found = _newton(residual, start, scales)
+    found = _newton(residual, start, scales, analytic=flow.polynomial)
     return None if found is None or found[3 * size + 1] <= 0 else (float(found[3 * size]), found[:size])

@@ -2,6 +2,7 @@
 
 One driven mode: by elimination, complete. One mode without phases: the positive roots of the polynomial a'/a in a²,
 complete. Several modes: Newton's method from many seeded starts, which proves nothing about what it did not find.
+Forces that are not polynomial: by a scan over the amplitude of one mode, by seeded starts otherwise.
 """
 
 from __future__ import annotations
@@ -13,6 +14,7 @@ import numpy as np
 import numpy.typing as npt
 
 from multiscale.errors import EvaluationError
+from multiscale.response.steady.amplitude_scan import held_at_rest, scanned_starts, typical_amplitude
 from multiscale.response.steady.elimination import candidates, natural_scale
 from multiscale.response.steady.newton import polished, turning_jacobian
 from multiscale.response.steady.steady_flow import SteadyFlow
@@ -21,6 +23,8 @@ __all__ = ["distinct", "refuse_continua", "scale_of", "states_at"]
 
 Array = npt.NDArray[Any]
 STARTS = 600
+FEW_STARTS = 24
+"""For averages over several phases, of which each takes milliseconds."""
 SEED = 20240229
 SAME = 1e-7
 
@@ -37,6 +41,8 @@ def _one_mode_terms(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> t
 
 def scale_of(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> Array:
     """A typical amplitude at each point."""
+    if not flow.polynomial:
+        return typical_amplitude(flow, values, points)
     if flow.modes == 1:
         return 2 * natural_scale(*_one_mode_terms(flow, values, points), points)
     sizes = np.zeros(points)
@@ -59,8 +65,15 @@ def states_at(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tuple[A
     """
     values = tuple(np.broadcast_to(np.asarray(v, dtype=float), (points,)) for v in values)
     scale = scale_of(flow, values, points)
-    complete = flow.modes == 1
-    if flow.modes == 1 and flow.phases:
+    complete = flow.modes == 1 and flow.polynomial
+    scanned = flow.modes == 1 and not flow.polynomial and not flow.several_phases
+    if scanned:
+        index, starts, changing = scanned_starts(flow, values, points)
+        if not changing:
+            raise EvaluationError(CONSERVED)
+    elif not flow.polynomial:
+        index, starts = _seeded(flow, points, scale, FEW_STARTS if flow.several_phases else STARTS // 3)
+    elif flow.modes == 1 and flow.phases:
         terms, _ = _one_mode_terms(flow, values, points)
         _refuse_free_circles(terms)
         # Roots far above the natural scale (made by the truncation, mostly) are separated well at their own.
@@ -72,21 +85,30 @@ def states_at(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> tuple[A
         index, starts = _limit_cycles(flow, values, points, scale)
     else:
         index, starts = _seeded(flow, points, scale)
-    reach = np.inf if flow.modes == 1 else 0.5
-    steps = 30 if flow.modes == 1 else 80
+    reach = np.inf if complete else 0.1 if scanned else 0.5
+    steps = 30 if complete or scanned or flow.several_phases else 80
     y, _, converged = polished(flow, starts, tuple(v[index] for v in values), scale[index], steps, reach)
     converged &= np.linalg.norm(y, axis=0) > 1e-9 * scale[index]
     # What is left of a mode that is at rest is rounding.
     y = np.where(np.repeat(np.hypot(y[::2], y[1::2]) < 1e-13 * scale[index], 2, axis=0), 0.0, y)
     index, y = index[converged], y[:, converged]
-    pushed = [c for (_, _, m), c in flow.coefficients(values).items() if sum(m) == 0]
-    resting = np.flatnonzero(~np.any(np.array(pushed) != 0, axis=0)) if pushed else np.arange(points)
+    resting = _resting(flow, values, points)
     index = np.concatenate([resting, index])
     y = np.concatenate([np.zeros((len(y), len(resting))), y], axis=1)
     order = np.lexsort((*y[::-1], np.round(np.linalg.norm(y, axis=0) / scale[index], 9), index))
     index, y = index[order], y[:, order]
     kept = distinct(flow, index, y, scale)
     return index[kept], y[:, kept], complete
+
+
+def _resting(flow: SteadyFlow, values: tuple[Any, ...], points: int) -> Array:
+    """The points at which the state of zero amplitude is a steady state."""
+    if flow.polynomial:
+        pushed = [c for (_, _, m), c in flow.coefficients(values).items() if sum(m) == 0]
+        return np.flatnonzero(~np.any(np.array(pushed) != 0, axis=0)) if pushed else np.arange(points)
+    if flow.modes == 1 and not flow.several_phases:
+        return np.flatnonzero(held_at_rest(flow, values, points))
+    return np.flatnonzero(flow.at_rest(values, points) == 0)
 
 
 def distinct(flow: SteadyFlow, index: Array, y: Array, scale: Array) -> Array:
@@ -153,14 +175,14 @@ def _limit_cycles(flow: SteadyFlow, values: tuple[Any, ...], points: int, scale:
     return np.array(index, dtype=int), np.stack([np.array(starts, dtype=float), np.zeros(len(starts))])
 
 
-def _seeded(flow: SteadyFlow, points: int, scale: Array) -> tuple[Array, Array]:
+def _seeded(flow: SteadyFlow, points: int, scale: Array, count: int = STARTS) -> tuple[Array, Array]:
     """Starts of amplitudes spread over decades and of all phases, the same at every point."""
     random = np.random.default_rng(SEED)
-    sizes = 10 ** random.uniform(-2.5, 1.0, (flow.modes, STARTS))
-    angles = random.uniform(0, 2 * np.pi, (flow.modes, STARTS))
-    one = np.empty((2 * flow.modes, STARTS))
+    sizes = 10 ** random.uniform(-2.5, 1.0, (flow.modes, count))
+    angles = random.uniform(0, 2 * np.pi, (flow.modes, count))
+    one = np.empty((2 * flow.modes, count))
     one[::2], one[1::2] = sizes * np.cos(angles), sizes * np.sin(angles)
-    index = np.repeat(np.arange(points), STARTS)
+    index = np.repeat(np.arange(points), count)
     return index, np.tile(one, points) * scale[index]
 
 

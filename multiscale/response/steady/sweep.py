@@ -11,7 +11,7 @@ import numpy.typing as npt
 
 from multiscale.errors import EvaluationError
 from multiscale.response.steady.newton import fold, rotation_rates, solve_batch, turning_jacobian
-from multiscale.response.steady.steady_flow import STEP, SteadyFlow, checked_name
+from multiscale.response.steady.steady_flow import DIFFERENCE, STEP, SteadyFlow, checked_name
 
 __all__ = ["Arc", "Special", "Sweep"]
 
@@ -84,6 +84,10 @@ class Sweep:
 
     def drift(self, y: Array, at: Array) -> Array:
         """∂G/∂λ."""
+        if not self.flow.polynomial:
+            step = DIFFERENCE * self.span
+            ahead, behind = (self.flow.rate(y, self.values(at + h)) for h in (step, -step))
+            return np.asarray((ahead - behind) / (2 * step))
         small = STEP * self.span
         return np.asarray(self.flow.rate(y.astype(complex), self.values(at + 1j * small)).imag / small)
 

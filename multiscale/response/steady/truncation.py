@@ -16,6 +16,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from multiscale.response.steady.newton import polished
 from multiscale.response.steady.steady_flow import Coefficients, SteadyFlow
 
 __all__ = ["spurious_reason"]
@@ -29,6 +30,8 @@ def spurious_reason(flow: SteadyFlow, y: Array, values: tuple[Any, ...]) -> str:
     """Why a state is no equilibrium of the expansion as ε → 0, or ""."""
     if flow.expansion.order == flow.leading or not np.any(y):
         return ""
+    if not flow.polynomial:
+        return _by_real_path(flow, y, values)
     path = _Path(flow, flow.coefficients(values))
     start = (y[::2] - 1j * y[1::2]) / 2
     x = np.concatenate([start, start.conj(), path.rates(start)])
@@ -52,6 +55,24 @@ def spurious_reason(flow: SteadyFlow, y: Array, values: tuple[Any, ...]) -> str:
         f"its amplitude grows like {small}**{exponent:.2g} as {small} → 0 instead of tending to an equilibrium of "
         f"level {flow.leading}: terms of different order balance in it"
     )
+
+
+def _by_real_path(flow: SteadyFlow, y: Array, values: tuple[Any, ...]) -> str:
+    """With coefficients that depend on the amplitude s stays real; a fold on the way decides nothing."""
+    place, now, start = flow.flow.parameters.index(str(flow.expansion.problem.small.name)), y, np.linalg.norm(y)
+    small = flow.expansion.problem.small
+    for s in np.exp(np.linspace(0.0, np.log(LAST), 60))[1:]:
+        fewer = tuple(v * s if k == place else v for k, v in enumerate(values))
+        found, _, done = polished(flow, now, fewer, start, reach=0.1)
+        if not done or np.linalg.norm(found - now) > 0.5 * np.linalg.norm(now):
+            return ""
+        now = found
+        if np.linalg.norm(now) > 10 * start:
+            return (
+                f"its amplitude grows without bound as {small} → 0 instead of tending to an equilibrium of level "
+                f"{flow.leading}: terms of different order balance in it"
+            )
+    return ""
 
 
 def _exponent(sizes: list[tuple[float, float]]) -> float:
