@@ -104,8 +104,8 @@ class VectorRing(ComplexRing):
         """Of elements with numbers as coefficients."""
         if any(isinstance(c, np.ndarray) for c in x.terms.values()):
             raise MultiscaleError(
-                "this works on numbers, but the fields of a large model are vectors: take displacement() at the degrees "
-                "of freedom that matter, or the slow flow"
+                "this works on numbers, but the fields of a large model are vectors: take displacement() at the "
+                "degrees of freedom that matter, or the slow flow"
             )
         return super().terms(x)
 
