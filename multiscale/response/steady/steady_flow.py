@@ -167,9 +167,7 @@ class SteadyFlow:
         """Whether the averages in the slope converge at one of the states; over several phases they are costly."""
         assert self.slope is not None
         one = np.reshape(y, (len(y), -1))[:, 0]
-        return bool(
-            np.isfinite(_where_defined(self.slope, len(y) ** 2, one, tuple(np.ravel(v)[0] for v in values))).all()
-        )
+        return bool(np.isfinite(_where_defined(self.slope, len(y) ** 2, one, tuple(np.ravel(v)[0] for v in values))).all())
 
     def coefficients(self, values: tuple[Any, ...], amplitude: Array | None = None) -> Coefficients:
         """The coefficients of dA/dt in A and its conjugate, level by level, each with its power of ε.
