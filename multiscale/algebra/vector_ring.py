@@ -23,6 +23,7 @@ import numpy.typing as npt
 from multiscale.algebra.complex_ring import ROUNDING, ComplexRing
 from multiscale.algebra.polynomial import Frozen
 from multiscale.algebra.ring import Exponents, Key, RingSpec
+from multiscale.errors import MultiscaleError
 
 __all__ = ["VectorElement", "VectorRing", "columns_of", "mapped"]
 
@@ -98,6 +99,15 @@ class VectorRing(ComplexRing):
                     m = (*m[:k], 0, *m[k + 1 :])
             result[m] = result[m] + value if m in result else value
         return VectorElement({m: c for m, c in result.items() if _some(c)})
+
+    def terms(self, x: Any) -> list[tuple[Exponents, Any]]:
+        """Of elements with numbers as coefficients."""
+        if any(isinstance(c, np.ndarray) for c in x.terms.values()):
+            raise MultiscaleError(
+                "this works on numbers, but the fields of a large model are vectors: take displacement() at the "
+                "degrees of freedom that matter, or the slow flow"
+            )
+        return super().terms(x)
 
     def normal(self, x: Any) -> Any:
         terms: dict[Exponents, Any] = {}

@@ -29,8 +29,8 @@ PLACES = {"C": ((0, 1),), "K1": ((0, 1),) * 3, "quadratic": ((0, 0),) * 2, "cubi
 """The factors by which the terms of a kind are known."""
 REFUSAL = (
     "the equations of a large model stand in its matrices, not in this problem: what reads them (certify, compare, "
-    "to_json, backbone of a driven model, …) does not apply; use the methods of the ReducedModel, such as certify() "
-    "and residual()"
+    "to_json, write_module, backbone of a driven model, …) does not apply; use the methods of a ReducedModel, such as "
+    "certify() and residual()"
 )
 
 

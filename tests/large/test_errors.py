@@ -179,6 +179,12 @@ def test_the_equations_are_shut():
         ms.to_json(model.expansion)
     with pytest.raises(ms.MultiscaleError, match=r"stand in its matrices|vectors in its fields"):
         pickle.dumps(model.expansion)
+    with pytest.raises(ms.MultiscaleError, match="stand in its matrices"):
+        ms.write_module(model.expansion, "unwritten.py")
+    with pytest.raises(ms.MultiscaleError, match="are vectors"):
+        ms.harmonics(model.expansion)
+    with pytest.raises(ms.MultiscaleError, match="are vectors"):
+        ms.with_amplitude(model.expansion, "peak")
     with pytest.raises(ms.EvaluationError, match="derivative is 3"):
         model.displacement(0.0, [1.0, 0.0], {eps: 0.1}, derivative=3)
     with pytest.raises(ms.EvaluationError, match=r"y has the shape \(3,\)"):
