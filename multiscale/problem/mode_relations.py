@@ -17,6 +17,7 @@ import sympy as sp
 
 from multiscale.errors import ProblemError
 from multiscale.problem.canonical import Working, in_double
+from multiscale.problem.critical_values import critical_value
 from multiscale.problem.modes import numbering
 from multiscale.problem.preparation import Prepared
 from multiscale.problem.reading import Reader, decimals
@@ -59,6 +60,8 @@ def with_mode_relations(
     for a, value in prepared.relations.modes:
         k, exact = order[a], read(value)
         working.detunings.append(detuning_of(None, meant[k], value.subs(by_name), layout.small, known))
+        if any(_matrices(working.equations, layout, shown)[1]) or found[k].multiplicity > 1:
+            raise _refused(modes, a, value, _matrices(prepared.equations, layout, shown), layout)
         working.equations = _shifted(working.equations, layout, shown, found[k], exact)
         found[k] = replace(found[k], frequency=sp.expand(exact.subs(layout.small, 0)), shown=None)
     return _merged(found)
@@ -88,18 +91,49 @@ def _order(
     return [k for k in numbering(linear, bases, reader, found, meant) for _ in range(found[k].multiplicity)]
 
 
+def _matrices(
+    equations: list[sp.Expr], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr]
+) -> tuple[sp.Matrix, sp.Matrix, sp.Matrix]:
+    reader = Reader(equations, (*layout.jets, layout.small), shown)
+    tables = [tabulate(reader, x, layout) for x in equations]
+    mass, damping, stiffness = (matrix(tables, reader, order) for order in (2, 1, 0))
+    return mass, damping, stiffness
+
+
+def _refused(
+    modes: Mapping[sp.Symbol, int],
+    mode: int,
+    value: sp.Expr,
+    matrices: tuple[sp.Matrix, sp.Matrix, sp.Matrix],
+    layout: Layout,
+) -> ProblemError:
+    """What to write instead of a relation that no change of the stiffness alone makes exact."""
+    text = (
+        "a relation gives the frequency of a mode of equations with first derivatives at leading order, or of several "
+        "modes at once, which no change of the stiffness alone makes exact: split a parameter of the equations "
+        "instead, "
+    )
+    ratio = next((r for s in modes if (r := value.subs(layout.small, 0) / s).is_Rational), None)
+    found = critical_value(*matrices, ratio) if ratio is not None and len(modes) == 2 and ratio != 1 else None
+    if found is None:
+        return ProblemError(
+            f"{text}such as resonances={{k: k_c + {layout.small}*sigma}} with the value k_c at which the leading order "
+            "is resonant and a symbol k in the place of a number; where k_c is no rational function of the other "
+            "parameters, write two of them in terms of a frequency w, so that det L_0 vanishes at both frequencies"
+        )
+    name = next(s for s, a in modes.items() if a == mode)
+    return ProblemError(
+        f"{text}here resonances={{{found[0]}: {found[1]} + {layout.small}*sigma}}, at which {name} = "
+        f"{value.subs(layout.small, 0)} exactly; sigma then detunes {found[0]}"
+    )
+
+
 def _shifted(
     equations: list[sp.Expr], layout: Layout, shown: Mapping[sp.Symbol, sp.Expr], mode: Found, value: sp.Expr
 ) -> list[sp.Expr]:
     reader = Reader(equations, (*layout.jets, layout.small), shown)
     tables = [tabulate(reader, x, layout) for x in equations]
-    mass, damping, stiffness = (matrix(tables, reader, order) for order in (2, 1, 0))
-    if any(damping) or mode.multiplicity > 1:
-        raise ProblemError(
-            "a relation gives the frequency of a mode of equations with first derivatives at leading order, or of "
-            "several modes at once, which no change of the stiffness alone makes exact: split a parameter of the "
-            f"equations instead, such as k = k_c + {layout.small}*sigma, so that the leading order is resonant"
-        )
+    mass, stiffness = (matrix(tables, reader, order) for order in (2, 0))
     adjoint = (stiffness - mode.frequency**2 * mass).adjugate()
     share = mass * adjoint * mass / (adjoint * mass).trace()
     jets = {jet: s for s, jet in layout.jets.items()}

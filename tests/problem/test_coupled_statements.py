@@ -266,3 +266,28 @@ def test_a_growing_motion_is_remarked():
     assert any("grows like exp(2*t)" in remark for remark in remarks)
     assert any("1 of the roots of the leading order lie off the imaginary axis and decay" in remark for remark in none)
     assert not any("grows" in remark for remark in none)
+
+
+G, K = sp.symbols("G K", positive=True)
+WHIRLING = [x.diff(t, 2) - G * y.diff(t) + k * x + eps * x**2, y.diff(t, 2) + G * x.diff(t) + k * y + eps * x * y]
+TURNING = [x.diff(t, 2) - 2 * y.diff(t) + 3 * x + eps * x**2, y.diff(t, 2) + 2 * x.diff(t) + K * y + eps * x * y]
+
+
+@pytest.mark.parametrize(
+    ("equations", "ratio", "written", "parameter", "frequencies"),
+    [
+        (WHIRLING, 2, "{k: 2*G**2 + epsilon*sigma}", k, (G, 2 * G)),
+        (WHIRLING, 3, "{k: 3*G**2/4 + epsilon*sigma}", k, (G / 2, 3 * G / 2)),
+        (TURNING, 3, "{K: 3 + epsilon*sigma}", K, (1, 3)),
+    ],
+)
+def test_the_line_that_the_refusal_of_a_named_gyroscopic_mode_writes(equations, ratio, written, parameter, frequencies):
+    """It is the split at which the modes are in that ratio exactly, and it certifies."""
+    first, second = (sp.Symbol(f"omega_{n}", positive=True) for n in (1, 2))
+    with pytest.raises(ms.ProblemError) as refusal:
+        ms.Problem(equations, [x, y], small=eps, resonances={second: ratio * first + eps * sigma})
+    assert f"resonances={written}" in str(refusal.value)
+    value = sp.sympify(written.split(": ")[1][:-1], locals={"G": G, "epsilon": eps, "sigma": sigma})
+    problem = ms.Problem(equations, [x, y], small=eps, resonances={parameter: value})
+    assert problem.natural_frequencies == frequencies
+    ms.certify(ms.expand(problem, 2, tolerance=0.0)).require()
