@@ -7,9 +7,10 @@ sorted by size, ln|W_1(a)| ≤ ln|W_2(a)| ≤ … are continuous in a, and stead
 drive, f_0 + f_1 W, that is |f_1(a)| = |f_0|: the phase is eliminated exactly. Without resonant phases the zeros are
 those of Re f_1, the limit cycles.
 
-The scan takes `PER_DECADE` amplitudes in every decade from `LOWEST` up to where every |ln|W|| has stayed above `FAR` for
-a decade, at most to `HIGHEST`, or to where the force has no value any more. Intervals with a change of sign, and those
-about a least |ln|W||, are divided. Two states closer than that may be missed, so nothing is claimed to be complete.
+The scan takes `PER_DECADE` amplitudes in every decade from 10**`LOWEST` up to where every |ln|W|| has stayed above
+`FAR` for a decade, at most to 10**`HIGHEST`, or to where the force has no value any more. Intervals with a change of
+sign, and those about a least |ln|W||, are divided. Two states closer than that may be missed, so nothing is claimed to
+be complete.
 """
 
 from __future__ import annotations
@@ -61,7 +62,7 @@ def _roots(parts: dict[int, Array]) -> tuple[Array, int]:
         with np.errstate(invalid="ignore"):
             return -rows[:1] / rows[1:], step
     degree = len(rows) - 1
-    usable = np.isfinite(rows).all(axis=0)
+    usable: Array = np.asarray(np.isfinite(rows).all(axis=0))
     companion = np.zeros((*rows.shape[1:], degree, degree), dtype=complex)
     companion[..., 0, :] = np.where(usable, -rows[-2::-1] / rows[-1], 0).transpose(*range(1, rows.ndim), 0)
     companion[..., range(1, degree), range(degree - 1)] = 1

@@ -70,7 +70,7 @@ def branch_of(sweep: Sweep, arc: Arc) -> Branch:
     else:
         jacobian = np.moveaxis(flow.jacobian(arc.state, values), -1, 0)
         eigenvalues = np.linalg.eigvals(jacobian).astype(complex)
-        for k in np.flatnonzero(~np.any(arc.state, axis=0)) if not flow.polynomial else ():
+        for k in np.flatnonzero(~np.any(arc.state, axis=0)).tolist() if not flow.polynomial else ():
             one = tuple(v if np.ndim(v) == 0 else v[k] for v in values)
             eigenvalues[k] = reduced_eigenvalues(flow, arc.state[:, k], np.zeros(0), one)
         eigenvalues = np.take_along_axis(eigenvalues, np.lexsort((eigenvalues.imag, eigenvalues.real), axis=-1), -1)

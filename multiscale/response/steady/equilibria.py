@@ -79,6 +79,11 @@ def equilibria(expansion: Expansion, parameters: Mapping[Any, Any]) -> tuple[Equ
     cycles and the state of rest. Several modes: those that Newton's method finds from many starts, ``complete`` being
     False. Stability is that of the Cartesian form, which is regular at zero amplitude.
 
+    With forces that are not polynomial, one mode is scanned over its amplitude, from 1e-9 in the unit of the unknown to
+    where the drive is outweighed or the force ends; ``complete`` is then False, since two states closer than the step
+    of the scan may be missed. Dry friction that outweighs the drive holds the mode at rest: the eigenvalues there are
+    −∞, because the rest is reached in finite time. Averaging cannot tell sticking and sliding within a period.
+
     Parameters
     ----------
     expansion : Expansion

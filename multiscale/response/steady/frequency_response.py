@@ -47,7 +47,7 @@ class Response:
     jumps_up, jumps_down : tuple of Jump
         Where a slow sweep leaves a stable branch at a fold, for a larger or a smaller amplitude.
     complete : bool
-        Whether these are all the branches (one mode), or those that a search found.
+        Whether these are all the branches (one mode, polynomial forces), or those that a search found.
     """
 
     symbol: sp.Symbol
@@ -116,6 +116,7 @@ def frequency_response(expansion: Expansion, parameters: Mapping[Any, Any], *, s
     One mode: every equilibrium at every value by elimination, isolated branches included. A pair of folds or an island
     that lies wholly between two neighbouring values is seen only where a branch is steep, so choose the values closer
     than the features looked for. Several modes: the branches through the states that a search finds at a few values.
+    Forces that are not polynomial: by a scan over the amplitude of one mode (see `equilibria`), ``complete`` is False.
 
     Parameters
     ----------

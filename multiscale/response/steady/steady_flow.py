@@ -10,8 +10,8 @@ is a *relative* equilibrium, at rest but for that rotation,
 and its stability is that of J − Σ ν_c T_c on the directions across the T_c y, along which the eigenvalue is zero.
 
 Derivatives that are not generated are taken with a complex step, Im f(x + ih)/h, which is exact to rounding because the
-generated kernels are analytic. With forces that are not polynomial they are not: differences take the place of the step,
-and what lies beyond the range of a force is nan.
+generated kernels are analytic. With forces that are not polynomial they are not: differences take the place of the
+step, and what lies beyond the range of a force is nan.
 """
 
 from __future__ import annotations
@@ -166,10 +166,8 @@ class SteadyFlow:
     def _slope_known(self, y: Array, values: tuple[Any, ...]) -> bool:
         """Whether the averages in the slope converge at one of the states; over several phases they are costly."""
         assert self.slope is not None
-        one = np.reshape(y, (len(y), -1))[:, 0]
-        return bool(
-            np.isfinite(_where_defined(self.slope, len(y) ** 2, one, tuple(np.ravel(v)[0] for v in values))).all()
-        )
+        one, first = np.reshape(y, (len(y), -1))[:, 0], tuple(np.ravel(v)[0] for v in values)
+        return bool(np.isfinite(_where_defined(self.slope, len(y) ** 2, one, first)).all())
 
     def coefficients(self, values: tuple[Any, ...], amplitude: Array | None = None) -> Coefficients:
         """The coefficients of dA/dt in A and its conjugate, level by level, each with its power of ε.
