@@ -106,10 +106,16 @@ def fit(
         raise EvaluationError(f"{record.size} data for {len(x)} unknown values: more data are needed")
     scale = np.where(x == 0, 1.0, np.abs(x))
     options = {"x_scale": scale, "xtol": 1e-12, "ftol": 1e-12, "gtol": 1e-12, **options}
-    done = least_squares(lambda x: model.predict(x) - record, x, jac=lambda x: model.jacobian(x), **options)
+    # In units of the data, since SciPy's gtol is no ratio: records in metres may be of the size of 1e-11.
+    unit = float(np.abs(record).max()) or 1.0
+    if "f_scale" in options:
+        options["f_scale"] = options["f_scale"] / unit
+    done = least_squares(
+        lambda x: (model.predict(x) - record) / unit, x, jac=lambda x: model.jacobian(x) / unit, **options
+    )
     if not done.success:
         raise EvaluationError(f"the fit did not converge ({done.message}): start nearer, or give max_nfev")
-    variance = noise**2 if noise is not None else 2 * done.cost / (record.size - len(x))
+    variance = (noise / unit) ** 2 if noise is not None else 2 * done.cost / (record.size - len(x))
     # With columns of very different units the normal matrix is inverted in units of the start values.
     scaled = done.jac * scale
     covariance = np.linalg.pinv(scaled.T @ scaled) * variance * np.outer(scale, scale)
@@ -118,7 +124,7 @@ def fit(
         dict(zip(model.names, done.x.tolist(), strict=True)),
         dict(zip(model.names, deviation.tolist(), strict=True)),
         covariance,
-        float(np.sqrt(np.mean(done.fun**2))),
+        unit * float(np.sqrt(np.mean(done.fun**2))),
     )
 
 

@@ -19,7 +19,7 @@ import sympy as sp
 from multiscale.codegen.numpy_function import NumpyFunction
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
-from multiscale.fitting.unknowns import Unknowns
+from multiscale.fitting.unknowns import Unknowns, per_amplitude
 from multiscale.response.steady.frequency_response import Response, frequency_response
 from multiscale.response.steady.search import states_at
 from multiscale.response.steady.steady_flow import SteadyFlow
@@ -76,7 +76,7 @@ class ResponseModel:
         if self.observed == "quadratures":
             return np.concatenate([slope_p, slope_q])
         p, q = states[2 * self.mode : 2 * self.mode + 2, :, None]
-        return np.asarray((p * slope_p + q * slope_q) / np.hypot(p, q))
+        return per_amplitude(p * slope_p + q * slope_q, np.hypot(p, q))
 
     def _checked(self, x: npt.ArrayLike) -> Array:
         x = np.asarray(x, dtype=float)
@@ -177,9 +177,11 @@ def response_model(
         raise EvaluationError(f"sweep has {len(sweep)} entries: expected one, {{parameter: values}}")
     ((key, given),) = sweep.items()
     values = np.asarray(given, dtype=float)
-    steps = np.diff(values)
-    if values.ndim != 1 or not ((steps > 0).all() or (steps < 0).all()):
-        raise EvaluationError("the values of the sweep must be 1-D and rise, or fall, throughout")
+    steps = np.diff(values) if values.ndim == 1 and values.size else np.array([np.nan])
+    if not np.isfinite(values).all() or not ((steps > 0).all() or (steps < 0).all()):
+        raise EvaluationError(
+            "the values of the sweep must be 1-D and finite, at least one, and rise, or fall, throughout"
+        )
     if observed not in ("amplitude", "quadratures"):
         raise EvaluationError(f"observed is {observed!r}: expected 'amplitude' or 'quadratures'")
     modes = len(expansion.symbols.A)

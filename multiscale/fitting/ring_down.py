@@ -17,7 +17,7 @@ import numpy.typing as npt
 from multiscale.codegen.numpy_function import NumpyFunction
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
-from multiscale.fitting.unknowns import Unknowns
+from multiscale.fitting.unknowns import Unknowns, per_amplitude
 
 __all__ = ["RingDownModel", "ring_down_model"]
 
@@ -25,6 +25,8 @@ Array = npt.NDArray[Any]
 Observed = Literal["displacement", "velocity", "amplitude"]
 _DERIVATIVE = {"displacement": 0, "velocity": 1}
 _TOLERANCE = 1e-10
+_SMALLEST = 1e-200
+"""Below it the tolerance of the integration would leave the range of floating-point numbers."""
 
 
 @dataclass(frozen=True, eq=False, repr=False)
@@ -72,7 +74,7 @@ class RingDownModel:
         if self._seen is None:
             p, q = states[2 * self.index : 2 * self.index + 2]
             rate = p * slopes[2 * self.index] + q * slopes[2 * self.index + 1]
-            return np.asarray(rate / np.hypot(p, q)).T
+            return per_amplitude(rate, np.hypot(p, q)).T
         by_state = self._seen[1](self.times, states, *values)[self.index]
         by_parameter = self._seen[2](self.times, states, *values)[self.index]
         result = np.einsum("nt,nkt->tk", by_state, slopes)
@@ -87,16 +89,22 @@ class RingDownModel:
 
     def _states(self, free: Array, start: Array) -> Array:
         values, flow = self.unknowns.values(free), self._flow[0]
-        floor = _TOLERANCE * max(float(np.abs(start).max()), np.finfo(float).tiny)
-        return self._integrated(lambda t, y: flow(t, y, *values), start, floor)
+        return self._integrated(lambda t, y: flow(t, y, *values), start, _TOLERANCE * self._size(start, values))
+
+    def _size(self, start: Array, values: tuple[Any, ...]) -> float:
+        """The size of the motion: where it starts, or what a drive makes of rest in the time recorded."""
+        size = float(np.abs(start).max())
+        if size == 0:
+            size = float(np.abs(self._flow[0](self.times[0], start, *values)).max() * np.ptp(self.times))
+        return max(size, _SMALLEST) if size else 1.0
 
     def _with_slopes(self, free: Array, start: Array) -> tuple[Array, Array]:
         """States (n, T) and their derivatives by x (n, len(x), T)."""
         values, chain = self.unknowns.values(free), self.unknowns.chain(free)
         flow, by_state, by_parameter = self._flow
-        n, size = len(start), float(np.abs(start).max())
+        n, size = len(start), self._size(start, values)
         # Every derivative in units that make it as large as the state, so that one tolerance suits all.
-        units = np.concatenate([np.where(free == 0, 1.0, np.abs(free)), np.full(n, size or 1.0)])
+        units = np.concatenate([np.where(free == 0, 1.0, np.abs(free)), np.full(n, size)])
         first = np.concatenate([np.zeros((n, len(free))), np.eye(n)], axis=1) * units
 
         def rate(t: float, z: Array) -> Array:
@@ -105,8 +113,7 @@ class RingDownModel:
             turning[:, : len(free)] += by_parameter(t, y, *values) @ chain * units[: len(free)]
             return np.concatenate([flow(t, y, *values), turning.ravel()])
 
-        floor = _TOLERANCE * max(size, np.finfo(float).tiny)
-        found = self._integrated(rate, np.concatenate([start, first.ravel()]), floor)
+        found = self._integrated(rate, np.concatenate([start, first.ravel()]), _TOLERANCE * size)
         return found[:n], found[n:].reshape(n, -1, len(self.times)) / units[:, None]
 
     def _integrated(self, rate: Any, start: Array, floor: float) -> Array:
@@ -170,8 +177,8 @@ def ring_down_model(
     except ImportError:
         raise ImportError("ring_down_model needs SciPy: pip install 'multiscale-expansions[check]'") from None
     record = np.asarray(times, dtype=float)
-    if record.ndim != 1 or len(record) < 2 or not (np.diff(record) > 0).all():
-        raise EvaluationError("times must be a 1-D array of at least two increasing values")
+    if record.ndim != 1 or len(record) < 2 or not (np.isfinite(record).all() and (np.diff(record) > 0).all()):
+        raise EvaluationError("times must be a 1-D array of at least two finite, increasing values")
     if observed not in ("displacement", "velocity", "amplitude"):
         raise EvaluationError(f"observed is {observed!r}: expected 'displacement', 'velocity' or 'amplitude'")
     flow = expansion.slow_flow

@@ -20,7 +20,7 @@ from multiscale.codegen.numpy_function import NumpyFunction
 from multiscale.errors import EvaluationError
 from multiscale.problem import Problem
 
-__all__ = ["Unknowns"]
+__all__ = ["Unknowns", "per_amplitude"]
 
 Array = npt.NDArray[Any]
 
@@ -43,6 +43,11 @@ class Unknowns:
         given = {_name(key): value for key, value in (known or {}).items()}
         if repeated := [x for k, x in enumerate(names) if x in names[:k] or x in given]:
             raise EvaluationError(f"parameter {repeated[0]!r} is given twice: it is either free, once, or known")
+        if several := [x for x, value in given.items() if np.size(value) != 1]:
+            raise EvaluationError(
+                f"parameter {several[0]!r} has {np.size(given[several[0]])} values: expected one number"
+            )
+        given = {x: np.reshape(value, ())[()] for x, value in given.items()}
         found = cls(problem, function, names, tuple(given.items()))
         function.values({**given, **dict.fromkeys(names, 1.0)})
         return found
@@ -90,3 +95,9 @@ def _name(x: Any) -> str:
     if not isinstance(x, str | sp.Symbol):
         raise EvaluationError(f"{x!r} is no parameter: give symbols or names")
     return str(x.name) if isinstance(x, sp.Symbol) else x
+
+
+def per_amplitude(rate: Array, amplitude: Array) -> Array:
+    """rate/amplitude, and 0 at rest, where the amplitude has no derivative."""
+    rate, amplitude = np.broadcast_arrays(rate, amplitude)
+    return np.divide(rate, amplitude, out=np.zeros_like(rate), where=amplitude != 0)

@@ -131,7 +131,7 @@ def noisy_flow(expansion: Expansion, densities: Mapping[sp.Expr, Any]) -> NoisyF
     Raises
     ------
     ProblemError
-        A key that is no unknown, or an unknown without a mode of its own.
+        A key that is no unknown; equations that are coupled at leading order or contain slaved unknowns.
 
     Examples
     --------
@@ -148,6 +148,12 @@ def noisy_flow(expansion: Expansion, densities: Mapping[sp.Expr, Any]) -> NoisyF
     if unknown:
         raise ProblemError(
             f"{unknown[0]} is not an unknown of the problem: expected {', '.join(map(str, problem.unknowns))}"
+        )
+    if expansion.computation.canonical.operator is not None:
+        raise ProblemError(
+            "the equations are coupled at leading order, or contain an unknown without an oscillator of its own: a "
+            "force on one equation then acts on several modes, which noisy_flow does not treat. State the problem in "
+            "modal coordinates"
         )
     intensity: dict[sp.Symbol, sp.Expr] = {}
     for k, u in enumerate(problem.unknowns):

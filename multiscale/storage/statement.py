@@ -17,7 +17,7 @@ from multiscale.errors import StorageError
 from multiscale.problem import Problem
 from multiscale.problem.force_law import ForceLaw
 from multiscale.storage.expressions import Reader, Writer
-from multiscale.storage.limits import checked_name, field, hexadecimal, integer, refuse, sequence
+from multiscale.storage.limits import checked_name, field, hexadecimal, integer, refuse, sequence, shown
 
 __all__ = ["read_problem", "written_problem"]
 
@@ -85,7 +85,7 @@ def read_problem(stored: Any, expressions: Reader) -> Problem:
         options["harmonics"] = integer(stored["harmonics"], "the number of harmonics", 0, 1000)
     if "formal" in stored:
         if stored["formal"] is not True:
-            raise refuse(f"formal is {str(stored['formal'])[:40]!r}")
+            raise refuse(f"formal is {shown(stored['formal'])!r}")
         options["formal"] = True
     if "laws" in stored:
         rows = [sequence(row, "a force law", 3) for row in sequence(stored["laws"], "the force laws")]

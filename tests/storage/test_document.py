@@ -169,7 +169,7 @@ def _renewed(document, **changes):
         ({"expressions": [["int", 10**9], ["call", "gamma", 0]]}, "gamma"),
         ({"expressions": [["int", 3], *[["mul", k, k] for k in range(60)]]}, "excessive|length"),
         ({"expressions": [["sym", "x", {}], *[["call", "sin", k] for k in range(300)]]}, "depth"),
-        ({"expressions": [["sym", "x", {}], *[["add", k, k, 0] for k in range(60)]]}, "length"),
+        ({"expressions": [["sym", "x", {}], *[["add", k, k, 0] for k in range(60)]]}, "length|terms"),
         ({"expressions": [["int", 1], ["int", 0], ["int", -1], ["pow", 1, 2]]}, "no value"),
         ({"expressions": {}}, "array"),
         ({"problem": []}, "unknowns"),
