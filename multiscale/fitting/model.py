@@ -113,19 +113,27 @@ def fit(
         raise EvaluationError(f"noise is {noise!r}: expected a standard deviation > 0")
     if record.size <= len(x):
         raise EvaluationError(f"{record.size} data for {len(x)} unknown values: more data are needed")
-    scale = np.where(x == 0, 1.0, np.abs(x))
+    # In units of the data, since SciPy's gtol is no ratio: records in metres may be of the size of 1e-11.
+    unit = float(np.abs(record).max()) or 1.0
+    # A value that starts at zero is measured by the change that makes as much of a difference as the data are large.
+    effect = np.sqrt(np.mean(np.square(model.jacobian(x) / unit), axis=0)) if (x == 0).any() else np.ones(len(x))
+    scale = np.where(x == 0, 1 / np.where(effect > 0, effect, 1.0), np.abs(x))
     options = {"x_scale": scale, "xtol": 1e-12, "ftol": 1e-12, "gtol": 1e-12, **options}
-    done = least_squares(lambda x: model.predict(x) - record, x, jac=lambda x: model.jacobian(x), **options)
+    if "f_scale" in options:
+        options["f_scale"] = options["f_scale"] / unit
+    done = least_squares(
+        lambda x: (model.predict(x) - record) / unit, x, jac=lambda x: model.jacobian(x) / unit, **options
+    )
     if not done.success:
         raise EvaluationError(f"the fit did not converge ({done.message}): start nearer, or give max_nfev")
-    variance = noise**2 if noise is not None else 2 * done.cost / (record.size - len(x))
+    variance = (noise / unit) ** 2 if noise is not None else 2 * done.cost / (record.size - len(x))
     covariance = _covariance(done.jac * scale) * variance * np.outer(scale, scale)
     deviation = np.sqrt(np.diag(covariance))
     return Fit(
         dict(zip(model.names, done.x.tolist(), strict=True)),
         dict(zip(model.names, deviation.tolist(), strict=True)),
         covariance,
-        float(np.sqrt(np.mean(done.fun**2))),
+        unit * float(np.sqrt(np.mean(done.fun**2))),
     )
 
 

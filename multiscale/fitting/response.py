@@ -183,8 +183,11 @@ def response_model(
     ((key, given),) = sweep.items()
     values = np.asarray(given, dtype=float)
     steps = np.diff(np.atleast_1d(values))
-    if values.ndim != 1 or not len(values) or not ((steps > 0).all() or (steps < 0).all()):
-        raise EvaluationError("the values of the sweep must be 1-D, at least one, and rise, or fall, throughout")
+    rising = bool((steps > 0).all() or (steps < 0).all())
+    if values.ndim != 1 or not len(values) or not rising or not np.isfinite(values).all():
+        raise EvaluationError(
+            "the values of the sweep must be 1-D and finite, at least one, and rise, or fall, throughout"
+        )
     if observed not in ("amplitude", "quadratures"):
         raise EvaluationError(f"observed is {observed!r}: expected 'amplitude' or 'quadratures'")
     modes = len(expansion.symbols.A)

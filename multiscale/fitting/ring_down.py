@@ -26,6 +26,8 @@ Array = npt.NDArray[Any]
 Observed = Literal["displacement", "velocity", "amplitude"]
 _DERIVATIVE = {"displacement": 0, "velocity": 1}
 _TOLERANCE = 1e-10
+_SMALLEST = 1e-200
+"""Below it the tolerance of the integration would leave the range of floating-point numbers."""
 
 
 @dataclass(frozen=True, eq=False, repr=False)
@@ -87,16 +89,22 @@ class RingDownModel:
 
     def _states(self, free: Array, start: Array) -> Array:
         values, flow = self.unknowns.values(free), self._flow[0]
-        floor = _TOLERANCE * max(float(np.abs(start).max()), np.finfo(float).tiny)
-        return self._integrated(lambda t, y: flow(t, y, *values), start, floor)
+        return self._integrated(lambda t, y: flow(t, y, *values), start, _TOLERANCE * self._size(start, values))
+
+    def _size(self, start: Array, values: tuple[Any, ...]) -> float:
+        """The size of the motion: where it starts, or what a drive makes of rest in the time recorded."""
+        size = float(np.abs(start).max())
+        if size == 0:
+            size = float(np.abs(self._flow[0](self.times[0], start, *values)).max() * np.ptp(self.times))
+        return max(size, _SMALLEST) if size else 1.0
 
     def _with_slopes(self, free: Array, start: Array) -> tuple[Array, Array]:
         """States (n, T) and their derivatives by x (n, len(x), T)."""
         values, chain = self.unknowns.values(free), self.unknowns.chain(free)
         flow, by_state, by_parameter = self._flow
-        n, size = len(start), float(np.abs(start).max())
+        n, size = len(start), self._size(start, values)
         # Every derivative in units that make it as large as the state, so that one tolerance suits all.
-        units = np.concatenate([np.where(free == 0, 1.0, np.abs(free)), np.full(n, size or 1.0)])
+        units = np.concatenate([np.where(free == 0, 1.0, np.abs(free)), np.full(n, size)])
         first = np.concatenate([np.zeros((n, len(free))), np.eye(n)], axis=1) * units
 
         def rate(t: float, z: Array) -> Array:
@@ -105,12 +113,10 @@ class RingDownModel:
             turning[:, : len(free)] += by_parameter(t, y, *values) @ chain * units[: len(free)]
             return np.concatenate([flow(t, y, *values), turning.ravel()])
 
-        # At rest the state itself gives no scale, its derivatives do.
-        floor = _TOLERANCE * np.where(np.arange(n + first.size) < n, max(size, np.finfo(float).tiny), size or 1.0)
-        found = self._integrated(rate, np.concatenate([start, first.ravel()]), floor)
+        found = self._integrated(rate, np.concatenate([start, first.ravel()]), _TOLERANCE * size)
         return found[:n], found[n:].reshape(n, -1, len(self.times)) / units[:, None]
 
-    def _integrated(self, rate: Any, start: Array, floor: Any) -> Array:
+    def _integrated(self, rate: Any, start: Array, floor: float) -> Array:
         from scipy.integrate import solve_ivp
 
         span = (self.times[0], self.times[-1])
@@ -172,7 +178,7 @@ def ring_down_model(
         raise ImportError("ring_down_model needs SciPy: pip install 'multiscale-expansions[check]'") from None
     record = np.asarray(times, dtype=float)
     if record.ndim != 1 or len(record) < 2 or not (np.isfinite(record).all() and (np.diff(record) > 0).all()):
-        raise EvaluationError("times must be a 1-D array of at least two increasing, finite values")
+        raise EvaluationError("times must be a 1-D array of at least two finite, increasing values")
     if observed not in ("displacement", "velocity", "amplitude"):
         raise EvaluationError(f"observed is {observed!r}: expected 'displacement', 'velocity' or 'amplitude'")
     flow = expansion.slow_flow

@@ -43,6 +43,11 @@ class Unknowns:
         given = {_name(key): value for key, value in (known or {}).items()}
         if repeated := [x for k, x in enumerate(names) if x in names[:k] or x in given]:
             raise EvaluationError(f"parameter {repeated[0]!r} is given twice: it is either free, once, or known")
+        if several := [x for x, value in given.items() if np.size(value) != 1]:
+            raise EvaluationError(
+                f"parameter {several[0]!r} has {np.size(given[several[0]])} values: expected one number"
+            )
+        given = {x: np.reshape(value, ())[()] for x, value in given.items()}
         found = cls(problem, function, names, tuple(given.items()))
         function.values({**given, **dict.fromkeys(names, 1.0)})
         return found

@@ -20,7 +20,7 @@ from multiscale.computed import Snapshot, restore
 from multiscale.errors import MultiscaleError, OrderingWarning, StorageError
 from multiscale.expansion import Expansion
 from multiscale.storage.expressions import Reader, Writer
-from multiscale.storage.limits import CHARACTERS, field, hexadecimal, integer, refuse, sequence
+from multiscale.storage.limits import CHARACTERS, field, hexadecimal, integer, refuse, sequence, shown
 from multiscale.storage.polynomials import PolynomialReader, PolynomialWriter
 from multiscale.storage.statement import read_problem, written_problem
 
@@ -31,7 +31,6 @@ __all__ = ["from_json", "to_json"]
 
 FORMAT = "multiscale expansion"
 VERSION = 1
-ORDER = 500
 
 
 def to_json(expansion: Expansion) -> str:
@@ -121,10 +120,10 @@ def from_json(text: str) -> Expansion:
     """
     document = _document(text)
     expressions, polynomials = Reader(field(document, "expressions")), PolynomialReader(field(document, "generators"))
-    order = integer(field(document, "order"), "the order", 0, ORDER)
+    order = integer(field(document, "order"), "the order", 0, 1000)
     amplitude = field(document, "amplitude")
     if amplitude not in ("fundamental", "peak"):
-        raise refuse(f"amplitude is {str(amplitude)[:40]!r}")
+        raise refuse(f"amplitude is {shown(amplitude)!r}")
     snapshot = _snapshot(document, polynomials)
     if len(snapshot.fields) != order + 1 or len(snapshot.changes) != order:
         raise refuse(f"order {order} with {len(snapshot.fields)} levels")
@@ -154,11 +153,11 @@ def _document(text: Any) -> Mapping[str, Any]:
     if not isinstance(document, dict):
         raise refuse("it is no JSON object")
     if field(document, "format") != FORMAT:
-        raise refuse(f"its format is {str(document['format'])[:40]!r}, expected {FORMAT!r}")
+        raise refuse(f"its format is {shown(document['format'])!r}, expected {FORMAT!r}")
     version = integer(field(document, "version"), "the version", 1)
     if version > VERSION:
         raise StorageError(
-            f"the text is of version {version}, this library reads up to version {VERSION}: install a newer one"
+            f"the text is of version {shown(version)}, this library reads up to version {VERSION}: install a newer one"
         )
     if field(document, "digest") != _digest({name: x for name, x in document.items() if name != "digest"}):
         raise refuse("its digest does not fit, so it was damaged on the way")
@@ -184,11 +183,11 @@ def _snapshot(document: Mapping[str, Any], polynomials: PolynomialReader) -> Sna
     for pair in sequence(field(document, "reciprocals"), "the reciprocals"):
         name, rows = sequence(pair, "a reciprocal", 2)
         if not isinstance(name, str):
-            raise refuse(f"{str(name)[:40]!r} where the name of a reciprocal was expected")
+            raise refuse(f"{shown(name)!r} where the name of a reciprocal was expected")
         reciprocals.append((name, polynomials.polynomial(rows)))
     representation = field(document, "representation")
     if representation not in ("auto", "complex", "mpmath"):
-        raise refuse(f"its representation is {str(representation)[:40]!r}")
+        raise refuse(f"its representation is {shown(representation)!r}")
     return Snapshot(tuple(reciprocals), levels("fields"), levels("changes"), representation)
 
 

@@ -6,8 +6,8 @@
     ["call", name, *arguments]                     a function of the list `KNOWN`, and nothing else
 
 Equal parts are written once. Reading builds every node by its constructor; no text is parsed or evaluated, and the size
-of a node is bounded before it is made: bits of numbers, depth, length when written out without sharing, and the number
-of terms when multiplied out.
+of a node is bounded before it is made: bits of numbers, depth, length when written out without sharing, and number of
+terms when multiplied out.
 """
 
 from __future__ import annotations
@@ -25,13 +25,12 @@ from multiscale.storage.limits import (
     BITS,
     DEPTH,
     NODES,
-    ROOTS,
-    TERMS,
     checked_name,
     integer,
     read_float,
     refuse,
     sequence,
+    shown,
     spelled,
     spelled_float,
 )
@@ -56,9 +55,15 @@ _FUNCTIONS = [
 ]
 KNOWN: dict[str, Any] = {f.__name__: f for f in _FUNCTIONS}
 _CLASSES = {"add": sp.Add, "mul": sp.Mul, "pow": sp.Pow}
-_GROWING = {"gamma": 1000, "besselj": 1000, "besseli": 1000}  # SymPy evaluates these at integers
-_EXPANDED = {"re", "im"}  # SymPy multiplies their arguments out, in real and imaginary parts
-_PARTS = 64  # arguments of one call (SymPy compares each with each), and terms of what is multiplied out
+_GROWING = {"gamma": 1000, "besselj": 1000, "besseli": 1000}  # SymPy evaluates these at numbers
+_SEVERAL = {"Max": 64, "Min": 64, "And": 64, "Or": 64, "Piecewise": 64}  # SymPy compares the arguments pairwise
+_MULTIPLIED_OUT = ("re", "im", "conjugate", "Abs", "sign")
+_PARTS = 128  # terms of what SymPy takes apart into real and imaginary parts
+TERMS = 20_000
+"""Terms of an expression when its products and powers of sums are multiplied out."""
+_ROOT = 2000  # bits of a number whose root SymPy looks for
+_DEGREE = 300, 10_000  # of a power of a sum, and of anything else that is no number
+_EXPONENT = 2**20  # of a power of or with a floating-point number
 
 
 class Writer:
@@ -119,6 +124,7 @@ class Reader:
             raise refuse(f"{len(nodes)} expressions, more than {NODES}")
         self._made: list[sp.Basic] = []
         self._sizes: list[tuple[int, int, int]] = []  # depth, length written out, terms multiplied out
+        self._clean: set[sp.Basic] = set()
         for row in nodes:
             self._add(sequence(row, "an expression"))
 
@@ -129,44 +135,60 @@ class Reader:
         """An expression in the narrow sense, neither a condition nor a tuple."""
         x = self.expression(index)
         if not isinstance(x, sp.Expr) or isinstance(x, ExprCondPair):
-            raise refuse(f"{str(x)[:40]!r} where an expression was expected")
+            raise refuse(f"{shown(x)!r} where an expression was expected")
         return x
 
     def _add(self, row: Sequence[Any]) -> None:
         if not row or not isinstance(row[0], str) or (reading := getattr(self, f"_{row[0]}_node", None)) is None:
-            raise refuse(f"unknown kind of expression {str(row[:1])[:40]}")
+            raise refuse(f"unknown kind of expression {shown(row[:1])}")
         below = list(self._references(row))
         depth = 1 + max((self._sizes[k][0] for k in below), default=0)
         length = 1 + sum(self._sizes[k][1] for k in below)
         if depth > DEPTH or length > NODES:
             raise refuse(f"an expression of depth {depth} and length {length}, more than {DEPTH} and {NODES}")
         terms = self._terms(row, below)
+        if terms > TERMS:
+            raise refuse(f"an expression of more than {TERMS} terms when multiplied out")
         try:
             made = reading(*row[1:])
         except StorageError:
             raise
         except Exception as error:
-            raise refuse(f"the expression {str(row)[:60]} cannot be made ({type(error).__name__})") from None
-        if not isinstance(made, sp.Basic) or made.has(sp.nan, sp.zoo):
-            raise refuse(f"the expression {str(row)[:60]} has no value")
+            raise refuse(f"the expression {shown(row)} cannot be made ({type(error).__name__})") from None
+        if not isinstance(made, sp.Basic) or not self._has_value(made):
+            raise refuse(f"the expression {shown(row)} has no value")
         self._made.append(made)
         self._sizes.append((depth, length, terms))
 
+    def _has_value(self, made: sp.Basic) -> bool:
+        """Whether nothing in an expression is undefined; what was looked at before is not looked at again."""
+        waiting = [made]
+        while waiting:
+            x = waiting.pop()
+            if x in (sp.nan, sp.zoo):
+                return False
+            if x not in self._clean:
+                self._clean.add(x)
+                waiting += x.args
+        return True
+
     def _terms(self, row: Sequence[Any], below: Sequence[int]) -> int:
-        """A bound for the terms of a node when everything in it is multiplied out, as stating a problem does."""
-        inside = [self._sizes[k][2] for k in below]
-        kind = row[0]
-        if kind == "call" and (len(inside) > _PARTS or (row[1] in _EXPANDED and sum(inside) > _PARTS)):
-            raise refuse(f"{str(row[1])[:40]} of more than {_PARTS} terms")
-        terms = prod(inside) if kind in ("mul", "call", "fun") else max(1, sum(inside))
-        if kind == "pow" and len(below) == 2:
-            exponent, terms = self._made[below[1]], prod(inside)
-            if inside[0] > 1 and exponent.is_Rational and (n := abs(int(exponent))) > 0:
-                # Pascal: no more than 20 terms or powers of two terms reach the limit slowly.
-                terms = TERMS + 1 if min(n, inside[0] - 1) > 20 else comb(n + inside[0] - 1, n)
-        if terms > TERMS:
-            raise refuse(f"an expression of more than {TERMS} terms when it is multiplied out")
-        return terms
+        """An upper bound for the terms of a node that is multiplied out; no more than is needed to refuse it."""
+        counts = [self._sizes[k][2] for k in below]
+        if row[0] == "add":
+            return sum(counts)
+        if row[0] == "mul":
+            return min(prod(counts), TERMS + 1)
+        if row[0] == "pow" and len(below) == 2 and counts[0] > 1:
+            n = self._made[below[1]]
+            # (x_1 + … + x_T)^n has binomial(n + T − 1, n) terms, at least n + 1.
+            if n.is_Integer and n.is_positive:
+                if n > _DEGREE[0]:
+                    raise refuse(f"a sum to a power above {_DEGREE[0]}")
+                return min(comb(int(n) + counts[0] - 1, int(n)), TERMS + 1)
+        if row[0] == "call" and row[1] in _MULTIPLIED_OUT and max(counts, default=0) > _PARTS:
+            raise refuse(f"{row[1]} of a sum of more than {_PARTS} terms")
+        return 1
 
     def _references(self, row: Sequence[Any]) -> Sequence[int]:
         start = {"add": 1, "mul": 1, "pow": 1, "diff": 1, "call": 2, "fun": 3}.get(row[0], len(row))
@@ -207,10 +229,18 @@ class Reader:
 
     def _pow_node(self, base: Any, exponent: Any) -> sp.Basic:
         x, n = self.scalar(base), self.scalar(exponent)
-        if not n.is_Integer and _bits(x) > ROOTS:  # SymPy looks for factors
-            raise refuse("a root of a number of excessive size")
         if n.is_Rational and (_bits(n) > 64 or max(1, _bits(x)) * abs(n.p) > BITS):
             raise refuse("a power of excessive size")
+        if n.is_Integer and not x.is_number and abs(n) > _DEGREE[1]:
+            raise refuse(f"a power above {_DEGREE[1]}")
+        if n.is_Integer is not True and any(
+            max(int(r.p).bit_length(), int(r.q).bit_length()) > _ROOT for r in x.atoms(sp.Rational)
+        ):
+            raise refuse(f"a root of a number of more than {_ROOT} bits")
+        if any(abs(r) > _EXPONENT for r in n.atoms(sp.Float)) or (
+            x.has(sp.Float) and n.is_number and abs(n) > _EXPONENT
+        ):
+            raise refuse(f"a power above {_EXPONENT} with floating-point numbers")
         return sp.Pow(x, n)
 
     def _diff_node(self, expression: Any, *steps: Any) -> sp.Basic:
@@ -224,8 +254,10 @@ class Reader:
         function = KNOWN[name]
         given = [self.expression(k) for k in arguments]
         for x in given if name in _GROWING else ():
-            if any(_bits(n) > 32 or abs(n) > _GROWING[name] for n in x.atoms(sp.Rational)):
+            if any(_bits(n) > 32 or abs(n) > _GROWING[name] for n in x.atoms(sp.Rational, sp.Float)):
                 raise refuse(f"{name} of a number above {_GROWING[name]}")
+        if len(given) > _SEVERAL.get(name, NODES):
+            raise refuse(f"{name} of {len(given)} expressions, more than {_SEVERAL[name]}")
         return function(*given)
 
 
@@ -236,7 +268,7 @@ def _bits(x: sp.Basic) -> int:
 
 def _read_assumptions(given: Any) -> dict[str, bool]:
     if not isinstance(given, dict) or len(given) > 50 or not all(isinstance(v, bool) for v in given.values()):
-        raise refuse(f"{str(given)[:40]!r} where the assumptions of a symbol were expected")
+        raise refuse(f"{shown(given)!r} where the assumptions of a symbol were expected")
     from sympy.core.assumptions import _assume_defined
 
     if not set(given) <= set(_assume_defined):

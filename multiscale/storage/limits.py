@@ -18,9 +18,6 @@ __all__ = [
     "CHARACTERS",
     "DEPTH",
     "NODES",
-    "PRECISION",
-    "ROOTS",
-    "TERMS",
     "checked_name",
     "field",
     "hexadecimal",
@@ -28,6 +25,7 @@ __all__ = [
     "read_float",
     "refuse",
     "sequence",
+    "shown",
     "spelled",
     "spelled_float",
 ]
@@ -36,12 +34,8 @@ CHARACTERS = 500_000_000
 NODES = 1_000_000
 DEPTH = 200
 BITS = 1_000_000
-ROOTS = 4_000
-"""Bits of a number under a root."""
-PRECISION = 20_000
-"""Bits of a float, since functions of it are evaluated."""
-TERMS = 100_000
-"""Terms of an expression when it is multiplied out."""
+PRECISION = 10_000
+"""Bits of a floating-point number."""
 _DECIMAL = 4000  # Python refuses decimal integers of more digits; longer ones are written in base 16.
 _NAME = 100
 
@@ -63,6 +57,13 @@ def spelled(value: int) -> int | str:
     return int(value) if abs(value) < 2**53 else str(value) if value.bit_length() < 3 * _DECIMAL else hex(value)
 
 
+def shown(x: Any) -> str:
+    """The beginning of a value, for an error: neither a long number nor deep nesting may make an error of its own."""
+    if isinstance(x, int) and x.bit_length() > 256:
+        return f"a number of {x.bit_length()} bits"
+    return str(x)[:40] if isinstance(x, str | int | float) or x is None else f"a {type(x).__name__}"
+
+
 def integer(x: Any, what: str, least: int | None = None, most: int | None = None) -> int:
     """The integer of its JSON form, within bounds."""
     if isinstance(x, str) and len(x) <= BITS // 4:
@@ -72,9 +73,9 @@ def integer(x: Any, what: str, least: int | None = None, most: int | None = None
         elif digits.isascii() and digits.isdigit() and len(digits) <= _DECIMAL:
             x = int(x)
     if isinstance(x, bool) or not isinstance(x, int):
-        raise refuse(f"{what} is {str(x)[:40]!r}, expected an integer")
+        raise refuse(f"{what} is {shown(x)!r}, expected an integer")
     if (least is not None and x < least) or (most is not None and x > most):
-        raise refuse(f"{what} is {str(x)[:40]}, outside {least} … {most}")
+        raise refuse(f"{what} is {shown(x)}, outside {least} … {most}")
     return x
 
 
@@ -83,7 +84,7 @@ def hexadecimal(x: Any, what: str) -> float:
     try:
         value = float.fromhex(x)
     except (TypeError, ValueError, OverflowError):
-        raise refuse(f"{what} is {str(x)[:40]!r}, expected a hexadecimal number") from None
+        raise refuse(f"{what} is {shown(x)!r}, expected a hexadecimal number") from None
     if not isfinite(value):
         raise refuse(f"{what} is {value}")
     return value
@@ -93,14 +94,14 @@ def sequence(x: Any, what: str, length: int | None = None) -> Sequence[Any]:
     """A JSON array, of a given length where one is named."""
     if not isinstance(x, list) or (length is not None and len(x) != length):
         size = "" if length is None else f" of length {length}"
-        raise refuse(f"{what} is {str(x)[:40]!r}, expected an array{size}")
+        raise refuse(f"{what} is {shown(x)!r}, expected an array{size}")
     return x
 
 
 def checked_name(x: Any) -> str:
     """A name of a symbol or function: printable, short, and free of what could be taken for code."""
     if not isinstance(x, str) or not x or len(x) > _NAME or not x.isprintable():
-        raise refuse(f"the name {str(x)[:40]!r} is not a short printable text")
+        raise refuse(f"the name {shown(x)!r} is not a short printable text")
     if any(c in "()[];:=\"'`@#" for c in x) or "__" in x:
         raise refuse(f"the name {x!r} has characters that no stored symbol has")
     return x

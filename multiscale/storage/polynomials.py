@@ -13,7 +13,17 @@ from typing import Any
 import sympy as sp
 
 from multiscale.algebra.polynomial import Frozen
-from multiscale.storage.limits import NODES, hexadecimal, integer, read_float, refuse, sequence, spelled, spelled_float
+from multiscale.storage.limits import (
+    NODES,
+    hexadecimal,
+    integer,
+    read_float,
+    refuse,
+    sequence,
+    shown,
+    spelled,
+    spelled_float,
+)
 
 __all__ = ["PolynomialReader", "PolynomialWriter"]
 
@@ -58,14 +68,14 @@ class PolynomialReader:
 
     def _term(self, row: Any) -> tuple[tuple[tuple[str, int], ...], Any]:
         if len(row) < 2 or len(row) % 2:
-            raise refuse(f"{str(row)[:40]} where a term was expected")
+            raise refuse(f"{shown(row)} where a term was expected")
         coefficient = _coefficient(row[0], row[1])
         factors = tuple(
             (self._names[integer(k, "a generator", 0, len(self._names) - 1)], integer(e, "an exponent", 1, 10_000))
             for k, e in zip(row[2::2], row[3::2], strict=True)
         )
         if not coefficient or len({g for g, _ in factors}) != len(factors):
-            raise refuse(f"{str(row)[:40]} is not a term in lowest form")
+            raise refuse(f"{shown(row)} is not a term in lowest form")
         return factors, coefficient
 
 

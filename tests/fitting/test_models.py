@@ -198,7 +198,7 @@ def test_times_are_finite(free_motion, times):
 
 @pytest.mark.parametrize("sweep", [np.array([]), np.array(2.0), [[1.0, 2.0]]])
 def test_a_sweep_is_one_dimensional_and_has_values(driven, sweep):
-    with pytest.raises(ms.EvaluationError, match="1-D, at least one"):
+    with pytest.raises(ms.EvaluationError, match="1-D and finite, at least one"):
         ms.response_model(driven, {Omega: sweep}, free=[mu])
 
 
