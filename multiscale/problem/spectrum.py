@@ -92,7 +92,7 @@ def roots_at_most(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> 
         [2 if mass[i, j] else 1 if damping[i, j] else 0 for j in range(size)] for i in range(size)
     ]
     columns = zip(*orders, strict=True)
-    return min(sum(max(row) for row in orders), sum(max(column) for column in columns))
+    return int(min(sum(max(row) for row in orders), sum(max(column) for column in columns)))
 
 
 def _nothing_oscillates(
