@@ -83,7 +83,8 @@ class ComplexRing(NamedTerms):
         self._empty = (0,) * len(spec.names)
         unit = self.number(1)
         self.zero, self.one = Element({}), Element({self._empty: unit})
-        self._values: dict[int, Any] = {spec.index[g]: self.number(v) for g, v in values.items() if g in spec.index}
+        known = _with_reciprocals(spec, values)
+        self._values: dict[int, Any] = {spec.index[g]: self.number(v) for g, v in known.items() if g in spec.index}
         self._values[0] = self.number(1j)
         self.generators = tuple(
             self.constant(self._values[k]) if k in self._values else Element({self._single(k): unit})
@@ -194,6 +195,16 @@ class ComplexRing(NamedTerms):
     def lift(self, x: Any) -> Any:
         more = len(self.spec.names) - max((len(m) for m in x.terms), default=0)
         return Element({(*m, *(0,) * more): c for m, c in x.terms.items()}) if more else x
+
+
+def _with_reciprocals(spec: RingSpec, values: Mapping[str, sp.Expr]) -> dict[str, sp.Expr]:
+    """The values, and those of the reciprocals of polynomials in them, to more digits than any ring here has."""
+    known = dict(values)
+    for h, p in spec.reciprocals:
+        if all(g in known for m, _ in p for g, _ in m):
+            terms = [sp.Rational(c.numerator, c.denominator) * sp.Mul(*(known[g] ** e for g, e in m)) for m, c in p]
+            known[h] = sp.N(1 / sp.Add(*terms), DIGITS + 10)
+    return known
 
 
 class MpmathRing(ComplexRing):

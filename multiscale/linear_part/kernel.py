@@ -24,6 +24,10 @@ from multiscale.algebra.ring import Ring
 __all__ = ["Block", "Covectors", "block_of", "covectors", "scaled_shapes", "split_at"]
 
 
+SEARCHED = 6
+"""Size of matrices up to which all rows are compared: each costs an adjugate."""
+
+
 @dataclass(frozen=True)
 class Block:
     """L_11 by the rows and columns it leaves out, its adjugate and its determinant."""
@@ -51,12 +55,14 @@ def block_of(ring: Ring, matrix: Matrix, dimension: int, preferred: Sequence[int
     """The block for a kernel of this dimension, None where the kernel is smaller (or larger).
 
     References are the first possible ones in the order `preferred`; among the rows those count first that make the
-    determinant shortest.
+    determinant shortest, or in large matrices the references' own and then the first that serve.
     """
     size = len(matrix)
     for references in combinations(preferred, dimension):
-        found = []
-        for rows in combinations(range(size), dimension):
+        found: list[Block] = []
+        for rows in sorted(combinations(range(size), dimension), key=lambda rows: rows != tuple(sorted(references))):
+            if found and size > SEARCHED:
+                break
             block = split_at(ring, matrix, rows, references)
             if not vanishes(ring, block.determinant):
                 found.append(block)

@@ -91,7 +91,7 @@ def _scales(sizes: Any) -> tuple[Any, Any]:
 
 
 def _numbers(matrix: FrozenMatrix, reader: Reader) -> Any:
-    entries = [[reader.expression(x) for x in row] for row in matrix]
+    entries = [[reader.expression(x).xreplace(reader.numbers) if x else sp.S.Zero for x in row] for row in matrix]
     symbols = set().union(*(x.free_symbols for row in entries for x in row))
     if symbols:
         raise ProblemError(

@@ -90,6 +90,8 @@ class Reader:
         self.dynamic = tuple(dynamic)
         self._shown = dict(shown)
         self.meanings: dict[str, sp.Expr] = {}
+        self.numbers: dict[sp.Symbol, sp.Expr] = {}
+        """Values of symbols that stand for numbers without a closed form, where there are any."""
         roots: dict[str, int] = {}
         denominators: list[sp.Expr] = []
         for expression in (*expressions, *(x for relation in relations for x in relation)):

@@ -69,6 +69,7 @@ def linear_part(
         shown,
         working.relations,
     )
+    reader.numbers = {s: working.hidden[s] for s in working.numbers}
     tables = [tabulate(reader, x, layout) for x in working.equations]
     bases = bases_of(reader, [*frequencies, *(series[0] for series in working.rates)])
     mass, damping, stiffness = (_frozen(tables, order) for order in (2, 1, 0))

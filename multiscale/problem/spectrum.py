@@ -87,10 +87,12 @@ def imaginary_roots(
 
 def roots_at_most(mass: sp.Matrix, damping: sp.Matrix, stiffness: sp.Matrix) -> int:
     """A bound on the degree of det L_0(s), by rows and by columns."""
-    size = mass.shape[0]
-    orders = [[2 if mass[i, j] else 1 if damping[i, j] else 0 for j in range(size)] for i in range(size)]
+    size = int(mass.shape[0])
+    orders: list[list[int]] = [
+        [2 if mass[i, j] else 1 if damping[i, j] else 0 for j in range(size)] for i in range(size)
+    ]
     columns = zip(*orders, strict=True)
-    return min(sum(max(row) for row in orders), sum(max(column) for column in columns))
+    return int(min(sum(max(row) for row in orders), sum(max(column) for column in columns)))
 
 
 def _nothing_oscillates(

@@ -98,6 +98,11 @@ def test_library_gives_the_published_value(row):
     assert row.difference() == []
 
 
+@pytest.mark.parametrize("problem", [BRUSSELATOR, PLANAR], ids=["Brusselator", "planar"])
+def test_residual_has_the_order_promised(problem):
+    ms.certify(ms.expand(problem, 2)).require()
+
+
 def test_the_comparison_can_fail():
     assert difference(leading(ms.expand(BRUSSELATOR, 2))[0], BRUSSELATOR.parameters[0]) != []
 

@@ -93,6 +93,11 @@ def test_orbit_at_the_onset(name, order):
     assert slope(sizes, turning) > order + 1.4
 
 
+@pytest.mark.parametrize("name", MODELS)
+def test_residual_has_the_order_promised(name):
+    ms.certify(series(name, 2)[2]).require()
+
+
 @pytest.mark.slow
 def test_a_wrong_parameter_is_seen():
     sizes = [0.2, 0.1, 0.05]
