@@ -94,6 +94,34 @@ def jump(f: Callable[..., Any], kink: Any, *args: Any) -> Any:
     return result
 
 
+def wave_zero(index: Any, *coefficients: Any) -> Any:
+    """The index-th of the 2K angles, rising, at which h = c_0 + Σ (a_k cos kθ + b_k sin kθ), k ≤ K, can change sign.
+
+    They are the arguments of the roots of h as a polynomial in e^{iθ}; those of roots off the unit circle are no zeros
+    of h, and harmless. `coefficients` are c_0, a_1, b_1, a_2, …
+    """
+    mean, *waves = np.broadcast_arrays(*(np.asarray(x, dtype=float) for x in coefficients))
+    above = [(a - 1j * b) / 2 for a, b in zip(waves[::2], waves[1::2], strict=True)]
+    rows = np.array([x.conj() for x in above[::-1]] + [mean + 0j, *above])
+    size = np.max(np.abs(rows), axis=0)
+    rows = np.where(np.isfinite(size) & (size > 0), rows / np.where(size > 0, size, 1.0), 1.0)
+    # A highest harmonic that vanishes would be a root at infinity: the angles are corrected below.
+    rows[-1] = np.where(np.abs(rows[-1]) < 1e-8, 1e-8, rows[-1])
+    degree = len(rows) - 1
+    companion = np.zeros((*rows.shape[1:], degree, degree), dtype=complex)
+    companion[..., 0, :] = np.moveaxis(-rows[-2::-1] / rows[-1], 0, -1)
+    companion[..., range(1, degree), range(degree - 1)] = 1
+    angle = np.sort(np.angle(np.linalg.eigvals(companion)), axis=-1)[..., int(index)]
+    for _ in range(4):
+        value, slope = mean, 0.0
+        for k, (a, b) in enumerate(zip(waves[::2], waves[1::2], strict=True), start=1):
+            cosine, sine = np.cos(k * angle), np.sin(k * angle)
+            value, slope = value + a * cosine + b * sine, slope + k * (b * cosine - a * sine)
+        step = value / np.where(slope == 0, np.inf, slope)
+        angle = angle - np.where(np.abs(step) < 0.05, step, 0.0)
+    return angle
+
+
 @cache
 def _smoothed_legendre(n: int) -> tuple[Any, Any]:
     """Nodes and weights on −1 … 1 after x = (15 s − 10 s³ + 3 s⁵)/8."""
@@ -261,6 +289,7 @@ RUNTIME: dict[str, Callable[..., Any]] = {
     "circle": circle,
     "arcs": arcs,
     "jump": jump,
+    "wave_zero": wave_zero,
     "besselj": besselj,
     "besseli": besseli,
     "gamma_function": gamma,
