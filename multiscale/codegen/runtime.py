@@ -32,6 +32,7 @@ NOISE = 1e-9
 GRAZING = 1e-6
 CIRCLE = (32, 16384)
 ARC = (16, 1024)
+LARGEST = 1e7
 BLOCK = 2**18
 """Values of f held at a time."""
 
@@ -228,7 +229,13 @@ def _quarter(f: Callable[..., Any], wave: Callable[..., Any], x: Any, order: int
     N = 1.4|x| + n + 40.
     """
     z = np.asarray(x, dtype=float)
-    n = math.ceil((1.4 * float(np.max(np.abs(z), initial=0.0)) + order + 40) / 4)
+    largest = float(np.max(np.abs(z), initial=0.0))
+    if not largest < LARGEST:
+        raise IntegralError(
+            f"a Bessel function is asked for at {largest:.3g}, that is a force with an argument so large on the cycle: "
+            f"keep it below {LARGEST:.0e}"
+        )
+    n = math.ceil((1.4 * largest + order + 40) / 4)
     tau = math.pi / 2 * (np.arange(n) + 0.5) / n
     flat, sine, weights = z.reshape(-1, 1), np.sin(tau), wave(order * tau) / n
     step = max(1, BLOCK // n)

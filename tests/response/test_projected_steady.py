@@ -230,3 +230,18 @@ def test_second_order_with_drag():
     assert not response.branches[0].spurious.any()
     first = ms.frequency_response(driven(c * sp.Abs(v) * v), values, sweep={sigma: np.linspace(-1, 1, 41)})
     assert response.peak().amplitude == pytest.approx(first.peak().amplitude, rel=1e-2)
+
+
+def test_stability_of_rest_is_that_of_small_motion():
+    """A table is linear between its points: the rest has the damping of its first stretch, −F'(0)/2."""
+    F = sp.Function("F")
+    problem = ms.Problem(u.diff(t, 2) + u + eps * F(v), u, small=eps, laws={F: ([-2, 0, 2], [-0.6, 0.0, 0.6])})
+    (rest,) = ms.equilibria(ms.expand(problem, 1), {"epsilon": 0.1})
+    assert rest.kind == "stable"
+    assert rest.eigenvalues.real == pytest.approx(-0.015, rel=1e-9)
+
+
+def test_a_bessel_function_at_an_absurd_amplitude():
+    expansion = ms.expand(ms.Problem(u.diff(t, 2) + u + eps * (sp.exp(v) - 1), u, small=eps), 1)
+    with pytest.raises(ms.EvaluationError, match="Bessel function is asked for at 1e\\+12"):
+        expansion.slow_flow.to_numpy()(0.0, [1e12, 0.0], 0.1)
