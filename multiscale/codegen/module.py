@@ -16,9 +16,11 @@ from pathlib import Path
 
 import multiscale
 from multiscale.codegen.description import Paragraph, describe, plain, wrapped
+from multiscale.codegen.module_averages import averaging_kernel, averaging_runtime
 from multiscale.codegen.module_text import COMPLETED, EVALUATED, MISSING, POLAR
 from multiscale.codegen.python_kernel import call, identifiers_of, kernel, quoted, sequence, signature, words_for
-from multiscale.codegen.routines import FUNCTIONS, Exported, exported
+from multiscale.codegen.routines import FUNCTIONS, Exported, averages, exported
+from multiscale.codegen.runtime import RUNTIME
 from multiscale.codegen.statements import listing
 from multiscale.errors import EvaluationError
 from multiscale.expansion import Expansion
@@ -90,7 +92,7 @@ def module_source(expansion: Expansion, *, functions: Sequence[str] = FUNCTIONS,
     """The text that `write_module` writes."""
     if not isinstance(namespace, str) or not re.fullmatch(r"[A-Za-z_]\w*(\.[A-Za-z_]\w*)*", namespace, re.ASCII):
         raise EvaluationError(f"namespace is {namespace!r}: expected the name of a module, such as 'jax.numpy'")
-    made = exported(expansion, functions)
+    made = exported(expansion, functions, averaging=namespace == "numpy")
     called: set[str] = set()
     blocks = [
         *_flow_functions(made, called),
@@ -99,8 +101,10 @@ def module_source(expansion: Expansion, *, functions: Sequence[str] = FUNCTIONS,
         EVALUATED.strip().splitlines(),
     ]
     lines = [*_docstring(made, namespace), "", f"import {namespace} as np"]
-    lines += [f"from {namespace} import {', '.join(sorted(called))}"] if called else []
+    plain_functions = sorted(called - RUNTIME.keys())
+    lines += [f"from {namespace} import {', '.join(plain_functions)}"] if plain_functions else []
     lines += ["", *_constants(made)]
+    lines += ["", "", *averaging_runtime(called)] if called & RUNTIME.keys() else []
     for block in blocks:
         lines += ["", "", *block]
     return "\n".join(lines) + "\n"
@@ -181,8 +185,12 @@ def _flow_functions(made: Exported, called: set[str]) -> list[list[str]]:
         lines = [*signature(name, [time, "y", *values]), f'    """{_SUMMARIES[name]}."""']
         lines += sequence("values", values, indent=4)
         lines += call("return _evaluated", [f"{name}_kernel", str(routine.shape), time, "y", "values"], indent=4)
-        inside, found = kernel(f"{name}_kernel", routine, words, f"{_SUMMARIES[name]}, as scalars.")
-        called |= set(found.functions)
+        if averages(routine):
+            inside, needed = averaging_kernel(f"{name}_kernel", routine, f"{_SUMMARIES[name]}, as scalars.")
+        else:
+            inside, found = kernel(f"{name}_kernel", routine, words, f"{_SUMMARIES[name]}, as scalars.")
+            needed = found.functions
+        called |= set(needed)
         blocks += [lines, inside]
     for name, reason in made.absent.items():
         parts = textwrap.wrap(plain(reason), 60)

@@ -14,11 +14,13 @@ from multiscale.codegen.functions import (
     inversion_tape,
     slow_flow_routine,
 )
+from multiscale.codegen.printer import source
+from multiscale.codegen.runtime import RUNTIME
 from multiscale.codegen.tape import Node, Tape
 from multiscale.errors import EvaluationError, MultiscaleError
 from multiscale.expansion import Expansion
 
-__all__ = ["FUNCTIONS", "Exported", "Relation", "exported"]
+__all__ = ["FUNCTIONS", "Exported", "Relation", "averages", "exported"]
 
 FUNCTIONS = ("rhs", "jacobian", "frequency", "displacement")
 _ELEMENTARY = {"sin", "cos", "exp", "log", "sqrt"}
@@ -52,8 +54,8 @@ class Exported:
     relations: tuple[Relation, ...]
 
 
-def exported(expansion: Expansion, functions: Sequence[str]) -> Exported:
-    """The routines called `functions`."""
+def exported(expansion: Expansion, functions: Sequence[str], averaging: bool = False) -> Exported:
+    """The routines called `functions`; `averaging` says whether averages of forces can be written."""
     if not isinstance(expansion, Expansion):
         raise EvaluationError(f"an expansion is needed, not a {type(expansion).__name__}: call expand first")
     asked = [functions] if isinstance(functions, str) else list(functions)
@@ -76,7 +78,7 @@ def exported(expansion: Expansion, functions: Sequence[str]) -> Exported:
                 raise
             absent[name] = str(error)
         else:
-            _check_functions(routines[name])
+            _check_functions(routines[name], averaging)
     names = tuple(sorted(str(s.name) for s in (*problem.parameters, problem.small)))
     pairs = zip(expansion.symbols.p, expansion.symbols.q, strict=True)
     state = tuple(str(x.name) for pair in pairs for x in pair)
@@ -91,14 +93,28 @@ def _frequency(expansion: Expansion) -> Routine:
     return frequency_routine(expansion.problem, expansion.computation, range(expansion.computation.modes))
 
 
-def _check_functions(routine: Routine) -> None:
+def averages(routine: Routine) -> bool:
+    """Whether a routine calls more than elementary functions: averages of forces, or what they are made of."""
     tape = routine.program.tape
-    called = {tape.steps[node][1] for node in tape.live(routine.outputs) if tape.steps[node][0] == "call"}
-    if strange := sorted(map(str, called - _ELEMENTARY)):
-        raise EvaluationError(
-            f"the problem contains a force given as a Python function ({', '.join(strange)}), which cannot be written "
-            "into a file of its own: use slow_flow.to_numpy, or state the force as an expression"
-        )
+    steps = [tape.steps[node] for node in tape.live(routine.outputs)]
+    return any(s[0] in ("apply", "quad", "jump") or (s[0] == "call" and s[1] not in _ELEMENTARY) for s in steps)
+
+
+def _check_functions(routine: Routine, averaging: bool = False) -> None:
+    """Only elementary functions, with `averaging` also those that averages of forces need."""
+    if averages(routine):
+        tape = routine.program.tape
+        called = set(source(tape, routine.outputs, routine.arguments, "")[1])
+        if strange := sorted(called - _ELEMENTARY - RUNTIME.keys()):
+            raise EvaluationError(
+                f"the problem contains a force given as a Python function ({', '.join(strange)}), which cannot be "
+                "written into a file of its own: use slow_flow.to_numpy, or state the force as an expression"
+            )
+        if not averaging:
+            raise EvaluationError(
+                "the slow flow averages forces that are not polynomial, which is written for NumPy alone: use "
+                "write_module with namespace='numpy', or slow_flow.to_numpy"
+            )
 
 
 def _relations(expansion: Expansion) -> tuple[Relation, ...]:
