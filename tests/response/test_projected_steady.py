@@ -261,3 +261,8 @@ def test_limit_cycles_against_dry_friction():
         assert float(cycle.exponent.coeff(eps)) == pytest.approx(0.5 - 3 * 2.25 * a**2 / 8, rel=1e-7)
     with pytest.raises(ms.UnsupportedTermError, match="give `parameters` values for omega"):
         ms.limit_cycles(expansion, {c: 0.1})
+
+
+def test_the_critical_drive_is_refused():
+    with pytest.raises(ms.EvaluationError, match="not polynomial.*folds of frequency_response"):
+        ms.critical_drive(driven(DRAG))
