@@ -264,5 +264,5 @@ def test_limit_cycles_against_dry_friction():
 
 
 def test_the_critical_drive_is_refused():
-    with pytest.raises(ms.EvaluationError, match="not polynomial.*folds of frequency_response"):
+    with pytest.raises(ms.EvaluationError, match=r"not polynomial.*folds of frequency_response"):
         ms.critical_drive(driven(DRAG))
