@@ -38,6 +38,8 @@ CIRCLE = (32, 16384)
 """Nodes on the circle, from and to."""
 ARC = (16, 1024)
 """Nodes on an arc, from and to."""
+LARGEST = 1e7
+"""Arguments of Bessel functions end here."""
 BLOCK = 2**18
 """Values of f held at a time."""
 
@@ -118,6 +120,40 @@ def jump(f: Callable[..., Any], kink: Any, *args: Any) -> Any:
         before, after = f(kink - 1e-4 * k, *args), f(kink + 1e-4 * k, *args)
         result = result + weight * (before - after)
     return result
+
+
+def wave_zero(index: Any, *coefficients: Any) -> Any:
+    """One of the 2K angles, rising, at which a wave h can change its sign.
+
+    h = c_0 + sum over k = 1 ... K of (a_k cos kx + b_k sin kx), and `coefficients` are
+    c_0, a_1, b_1, a_2, ... The angles are the arguments of the roots of h as a
+    polynomial in exp(ix); those of roots off the unit circle are no zeros of h, and
+    harmless.
+    """
+    mean, *waves = np.broadcast_arrays(*(np.asarray(x, dtype=float) for x in coefficients))
+    pairs = list(zip(waves[::2], waves[1::2], strict=True))
+    above = [(a - 1j * b) / 2 for a, b in pairs]
+    rows = np.array([x.conj() for x in above[::-1]] + [mean + 0j, *above])
+    size = np.max(np.abs(rows), axis=0)
+    usable = np.isfinite(size) & (size > 0)
+    rows = np.where(usable, rows / np.where(size > 0, size, 1.0), 1.0)
+    # A highest harmonic that vanishes would be a root at infinity: corrected below.
+    rows[-1] = np.where(np.abs(rows[-1]) < 1e-8, 1e-8, rows[-1])
+    degree = len(rows) - 1
+    companion = np.zeros((*rows.shape[1:], degree, degree), dtype=complex)
+    companion[..., 0, :] = np.moveaxis(-rows[-2::-1] / rows[-1], 0, -1)
+    companion[..., range(1, degree), range(degree - 1)] = 1
+    roots = np.linalg.eigvals(companion)
+    angle = np.sort(np.angle(roots), axis=-1)[..., int(index)]
+    for _ in range(4):
+        value, slope = mean, 0.0
+        for k, (a, b) in enumerate(pairs, start=1):
+            cosine, sine = np.cos(k * angle), np.sin(k * angle)
+            value = value + a * cosine + b * sine
+            slope = slope + k * (b * cosine - a * sine)
+        step = value / np.where(slope == 0, np.inf, slope)
+        angle = angle - np.where(np.abs(step) < 0.05, step, 0.0)
+    return angle
 
 
 @cache
@@ -243,6 +279,11 @@ def _quarter(f: Callable[..., Any], wave: Callable[..., Any], x: Any, n: int) ->
     """
     z = np.asarray(x, dtype=float)
     largest = float(np.max(np.abs(z), initial=0.0))
+    if not largest < LARGEST:
+        raise IntegralError(
+            f"a Bessel function is asked for at {largest:.3g}, that is a force with an "
+            f"argument so large on the cycle: keep it below {LARGEST:.0e}"
+        )
     count = math.ceil((1.4 * largest + n + 40) / 4)
     tau = math.pi / 2 * (np.arange(count) + 0.5) / count
     flat, sine, weights = z.reshape(-1, 1), np.sin(tau), wave(n * tau) / count
@@ -313,6 +354,7 @@ RUNTIME: dict[str, Callable[..., Any]] = {
     "circle": circle,
     "arcs": arcs,
     "jump": jump,
+    "wave_zero": wave_zero,
     "besselj": besselj,
     "besseli": besseli,
     "gamma_function": gamma_function,

@@ -70,6 +70,8 @@ def slope_of_several(tape: Tape, name: str, arguments: Sequence[int], rates: Map
     if name == "where":
         condition, first, second = arguments
         return tape.apply("where", condition, rates[first], rates[second])
+    if name == "wave_zero":
+        return _slope_of_zero(tape, arguments, rates)
     law = next((law for key, law in tape.laws.items() if _word(key) == name), None)
     if law is None or law.derivative is None or len(arguments) != 1:
         raise EvaluationError(
@@ -77,6 +79,20 @@ def slope_of_several(tape: Tape, name: str, arguments: Sequence[int], rates: Map
             "pass ForceLaw(function, derivative=…) (a function of one argument), or do without the Jacobian"
         )
     return tape.mul(tape.apply(f"{name}_slope", *arguments), rates[arguments[0]])
+
+
+def _slope_of_zero(t: Tape, arguments: Sequence[int], rates: Mapping[int, int]) -> int:
+    """−(∂h/∂s)/(∂h/∂θ) at an angle where h = c_0 + Σ (a_k cos kθ + b_k sin kθ) vanishes."""
+    angle = t.apply("wave_zero", *arguments)
+    _, mean, *waves = arguments
+    change, slope_there = rates[mean], t.constant(0)
+    for k, (a, b) in enumerate(zip(waves[::2], waves[1::2], strict=True), start=1):
+        number = t.constant(k)
+        turned = t.mul(number, angle)
+        cosine, sine = t.call("cos", turned), t.call("sin", turned)
+        change = t.add(change, t.add(t.mul(rates[a], cosine), t.mul(rates[b], sine)))
+        slope_there = t.add(slope_there, t.mul(number, t.sub(t.mul(b, cosine), t.mul(a, sine))))
+    return t.neg(t.mul(change, t.call("inverse_or_zero", slope_there)))
 
 
 def _word(name: str) -> str:

@@ -159,6 +159,32 @@ def _affine(h: sp.Expr, theta: sp.Symbol) -> tuple[sp.Expr, sp.Expr, sp.Expr] | 
     return None if sp.expand(flat - alpha * cosine - beta * sine - gamma) != 0 else (alpha, beta, gamma)
 
 
+def _waves(h: sp.Expr, theta: sp.Symbol) -> list[sp.Expr] | None:
+    """[c_0, a_1, b_1, a_2, …] with h = c_0 + Σ (a_k cos kθ + b_k sin kθ), None where h is no such sum."""
+    parts: dict[int, list[sp.Expr]] = {0: [sp.Integer(0), sp.Integer(0)]}
+    for term in sp.Add.make_args(sp.expand(h)):
+        factor, wave = term.as_independent(theta, as_Add=False)
+        if wave == 1:
+            parts[0][0] += factor
+            continue
+        if not isinstance(wave, sp.cos | sp.sin):
+            return None
+        angle = sp.expand(wave.args[0])
+        number = angle.coeff(theta, 1)
+        phase = angle - number * theta
+        if not number.is_Integer or theta in phase.free_symbols:
+            return None
+        cosine, sine = sp.cos(phase), -sp.sin(phase)
+        if isinstance(wave, sp.sin):
+            cosine, sine = sp.sin(phase), sp.cos(phase)
+        own = parts.setdefault(abs(int(number)), [sp.Integer(0), sp.Integer(0)])
+        own[0] += factor * cosine
+        own[1] += factor * sine * sp.sign(number)
+    highest = max(parts)
+    rows = [parts.get(k, [sp.Integer(0), sp.Integer(0)]) for k in range(highest + 1)]
+    return [rows[0][0], *(x for row in rows[1:] for x in row)] if highest else None
+
+
 def _kinks(tape: Tape, integrand: sp.Expr, theta: sp.Symbol, symbol: Symbols, evaluate: Evaluate) -> list[Node]:
     result: list[Node] = []
     known = {name: law.kinks for name, law in tape.laws.items()}
@@ -167,6 +193,9 @@ def _kinks(tape: Tape, integrand: sp.Expr, theta: sp.Symbol, symbol: Symbols, ev
         if (parts := _affine(h, theta)) is not None:
             a, b, c = (evaluate(tape, part, symbol) for part in parts)
             result += [angle for angle in _zeros(tape, a, b, c) if angle not in result]
+        elif (waves := _waves(h, theta)) is not None:
+            nodes = [evaluate(tape, part, symbol) for part in waves]
+            result += [tape.apply("wave_zero", tape.constant(k), *nodes) for k in range(len(nodes) - 1)]
     return result
 
 

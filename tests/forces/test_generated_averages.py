@@ -170,10 +170,27 @@ def test_a_jump_that_is_not_declared_is_found():
         runtime.circle(lambda x, b: np.sign(np.cos(x) - b), "F(u)", 0.3)
 
 
-def test_what_needs_a_polynomial_flow_says_so():
-    driven = ms.Problem(
-        u.diff(t, 2) + w**2 * u + eps * (sp.Abs(v) * v - k * sp.cos(Omega * t)), u, small=eps,
-        resonances={Omega: w + eps * s},
-    )  # fmt: skip
-    with pytest.raises(ms.EvaluationError, match="not polynomial"):
-        ms.equilibria(ms.expand(driven, 1), {eps: 0.1, w: 1.0, k: 0.3, s: 0.1})
+@pytest.mark.parametrize(
+    "waves",
+    [
+        [0.3, 1.0, 0.2, -0.7, 0.4],
+        [0.3, 1.0, 0.2, 0.0, 0.0],
+        [0.0, 0.0, 0.0, 0.5, 0.1],
+        [-0.2, 0.1, 0.3, 0.2, 0.1, -1.0, 0.6],
+    ],
+)
+def test_zeros_of_a_sum_of_waves(waves):
+    """Every change of sign on a fine grid is next to one of the angles, where the sum vanishes to rounding."""
+
+    def h(x):
+        rows = zip(waves[1::2], waves[2::2], strict=True)
+        return waves[0] + sum(a * np.cos(n * x) + b * np.sin(n * x) for n, (a, b) in enumerate(rows, start=1))
+
+    angles = np.array([runtime.wave_zero(j, *waves) for j in range(len(waves) - 1)]) % (2 * np.pi)
+    grid = np.linspace(0, 2 * np.pi, 2001)
+    changes = grid[np.flatnonzero(np.diff(np.sign(h(grid))))]
+    assert len(changes) >= 2
+    for x in changes:
+        nearest = angles[np.argmin(abs(angles - x - 0.0015))]
+        assert abs(nearest - x) < 0.004
+        assert abs(h(nearest)) < 1e-13

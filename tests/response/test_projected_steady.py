@@ -230,3 +230,39 @@ def test_second_order_with_drag():
     assert not response.branches[0].spurious.any()
     first = ms.frequency_response(driven(c * sp.Abs(v) * v), values, sweep={sigma: np.linspace(-1, 1, 41)})
     assert response.peak().amplitude == pytest.approx(first.peak().amplitude, rel=1e-2)
+
+
+def test_stability_of_rest_is_that_of_small_motion():
+    """A table is linear between its points: the rest has the damping of its first stretch, −F'(0)/2."""
+    F = sp.Function("F")
+    problem = ms.Problem(u.diff(t, 2) + u + eps * F(v), u, small=eps, laws={F: ([-2, 0, 2], [-0.6, 0.0, 0.6])})
+    (rest,) = ms.equilibria(ms.expand(problem, 1), {"epsilon": 0.1})
+    assert rest.kind == "stable"
+    assert rest.eigenvalues.real == pytest.approx(-0.015, rel=1e-9)
+
+
+def test_a_bessel_function_at_an_absurd_amplitude():
+    expansion = ms.expand(ms.Problem(u.diff(t, 2) + u + eps * (sp.exp(v) - 1), u, small=eps), 1)
+    with pytest.raises(ms.EvaluationError, match="Bessel function is asked for at 1e\\+12"):
+        expansion.slow_flow.to_numpy()(0.0, [1e12, 0.0], 0.1)
+
+
+def test_limit_cycles_against_dry_friction():
+    """u'' + ω²u + ε(c sgn u' − u' + u'³/3 + u³) = 0: da/dt = ε(a/2 − ω²a³/8 − 2c/(πω)), dβ/dt = 3εa²/(8ω)."""
+    omega = sp.Symbol("omega", positive=True)
+    problem = ms.Problem(u.diff(t, 2) + omega**2 * u + eps * (DRY - v + v**3 / 3 + u**3), u, small=eps)
+    expansion = ms.expand(problem, 1)
+    inner, outer = ms.limit_cycles(expansion, {c: sp.Rational(1, 10), omega: sp.Rational(3, 2)})
+    roots = np.sort(np.roots([-(1.5**2) / 8, 0, 1 / 2, -0.2 / (1.5 * np.pi)]))[1:]
+    assert [float(x.amplitude) for x in (inner, outer)] == pytest.approx(roots, rel=1e-10)
+    assert (inner.stable, outer.stable) == (False, True)
+    for cycle, a in zip((inner, outer), roots, strict=True):
+        assert float(cycle.frequency.subs(eps, 0.01)) == pytest.approx(1.5 + 0.01 * 3 * a**2 / 12, rel=1e-10)
+        assert float(cycle.exponent.coeff(eps)) == pytest.approx(0.5 - 3 * 2.25 * a**2 / 8, rel=1e-7)
+    with pytest.raises(ms.UnsupportedTermError, match="give `parameters` values for omega"):
+        ms.limit_cycles(expansion, {c: 0.1})
+
+
+def test_the_critical_drive_is_refused():
+    with pytest.raises(ms.EvaluationError, match=r"not polynomial.*folds of frequency_response"):
+        ms.critical_drive(driven(DRAG))

@@ -31,8 +31,11 @@ class Leading:
     terms: dict[int, Quotient]
 
 
-def check_single(canonical: Canonical, wanted: str, coupled: bool = False) -> None:
-    """One oscillator, no drives, no parameters that vary; with `coupled` one mode carried of any number of unknowns."""
+def check_single(canonical: Canonical, wanted: str, coupled: bool = False, laws: bool = False) -> None:
+    """One oscillator, no drives, no parameters that vary; with `coupled` one mode carried of any number of unknowns.
+
+    Forces that are not polynomial pass with `laws`.
+    """
     if coupled and len(canonical.frequencies) != 1:
         raise UnsupportedTermError(
             f"the expansion carries {len(canonical.frequencies)} modes: {wanted} for one mode. Carry one through "
@@ -43,7 +46,7 @@ def check_single(canonical: Canonical, wanted: str, coupled: bool = False) -> No
             f"the problem has {len(canonical.force)} unknowns: {wanted} for one oscillator. State one equation; for "
             "several, integrate `slow_flow`"
         )
-    if any(d == LAW for terms in canonical.force for term in terms for _, d in term.factors):
+    if not laws and any(d == LAW for terms in canonical.force for term in terms for _, d in term.factors):
         raise UnsupportedTermError(
             f"the problem has a force that is not polynomial: {wanted} for polynomial forces. Find the zeros of da/dt "
             "from slow_flow.to_numpy('polar'), or integrate it"

@@ -22,6 +22,7 @@ from multiscale.expansion import Expansion
 from multiscale.expressions import Writer
 from multiscale.problem.reading import given_expression
 from multiscale.response.orbits.leading import check_single, parts
+from multiscale.response.orbits.numeric_cycles import numeric_cycles
 
 __all__ = ["LimitCycle", "limit_cycles", "positive_roots"]
 
@@ -56,6 +57,8 @@ class LimitCycle:
 def limit_cycles(expansion: Expansion, parameters: Mapping[Any, Any] | None = None) -> tuple[LimitCycle, ...]:
     """All limit cycles of one undriven mode whose amplitude tends to a simple positive root as ε → 0.
 
+    With forces that are not polynomial: at first order, as numbers, those that the scan of `equilibria` finds.
+
     Parameters
     ----------
     expansion : Expansion
@@ -75,7 +78,8 @@ def limit_cycles(expansion: Expansion, parameters: Mapping[Any, Any] | None = No
     ProblemError
         No level has damping (every motion is periodic: use `Expansion.frequency`), or a leading root is repeated.
     UnsupportedTermError
-        Several modes, or drives; symbolic parameters with a leading condition of degree above two in a².
+        Several modes, or drives; symbolic parameters with a leading condition of degree above two in a², or with a
+        force that is not polynomial, which also needs order 1.
     EvaluationError
         A name that is no parameter.
 
@@ -93,8 +97,10 @@ def limit_cycles(expansion: Expansion, parameters: Mapping[Any, Any] | None = No
     if not isinstance(expansion, Expansion):
         raise ProblemError(f"limit_cycles was given a {type(expansion).__name__}: pass the result of multiscale.expand")
     computation, problem = expansion.computation, expansion.problem
-    check_single(computation.canonical, "limit cycles are given", coupled=True)
+    check_single(computation.canonical, "limit cycles are given", coupled=True, laws=True)
     values = _values(parameters, problem.parameters, problem.small)
+    if computation.canonical.numeric:
+        return tuple(LimitCycle(*cycle) for cycle in numeric_cycles(expansion, values))
     write = _written(Writer(dict(computation.canonical.meanings)), values)
     levels = [parts(computation, n) for n in range(1, expansion.order + 1)]
     rates = [{m: write(q) for m, q in real.items()} for real, _ in levels]

@@ -91,6 +91,11 @@ def critical_drive(
     (256*sqrt(3)*mu**3*omega_0**3/(27*alpha), sqrt(3)*mu)
     """
     flow = SteadyFlow.of(expansion)
+    if not flow.polynomial:
+        raise EvaluationError(
+            "the flow has forces that are not polynomial, so that the onset of bistability has no formula: follow the "
+            "folds of frequency_response at several levels of the drive"
+        )
     leading = _leading(flow, drive, detuning)
     level, at, offset = _onset(leading)
     force = sp.sqrt(sp.factor(level / leading.force))

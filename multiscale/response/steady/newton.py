@@ -21,6 +21,7 @@ from multiscale.response.steady.steady_flow import DIFFERENCE, STEP, SteadyFlow
 __all__ = ["fold", "hopf", "polished", "reduced_eigenvalues", "rotation_rates", "solve_batch", "turning_jacobian"]
 
 Array = npt.NDArray[Any]
+NEXT_TO_REST = 1e-8
 Values = Callable[[Any], tuple[Any, ...]]
 
 
@@ -99,7 +100,9 @@ def reduced_eigenvalues(flow: SteadyFlow, y: Array, nu: Array, values: tuple[Any
 
     A mode that dry friction brings to rest in finite time has −∞ twice.
     """
-    matrix = turning_jacobian(flow, y, nu, values)
+    # At exactly zero amplitude the average of a force counts as zero, so that rest is seen from next to it.
+    shown = y if flow.polynomial else np.where(np.repeat((y[::2] == 0) & (y[1::2] == 0), 2), NEXT_TO_REST, y)
+    matrix = turning_jacobian(flow, shown, nu, values)
     if not flow.polynomial and (sudden := _sudden_rates(flow, y, values)).any():
         slow = np.repeat(sudden == 0, 2)
         others = np.linalg.eigvals(matrix[np.ix_(slow, slow)]) if slow.any() else np.zeros(0)
