@@ -182,3 +182,27 @@ def test_noise_that_is_not_stationary_is_refused(driven, density):
 
 def test_a_noisy_flow_prints_its_intensities(driven):
     assert repr(ms.noisy_flow(driven, {u: S})) == "NoisyFlow(d_p = S/(2*m**2*omega_0**2), d_q = S/(2*m**2*omega_0**2))"
+
+
+@pytest.mark.parametrize(
+    "equations",
+    [
+        [u.diff(t, 2) + 3 * u - v + eps * mu * u.diff(t), v.diff(t, 2) + 4 * v - u],
+        [u.diff(t, 2) + 3 * u - v.diff(t), v.diff(t, 2) + 4 * v + u.diff(t) + eps * mu * v.diff(t)],
+        [u.diff(t, 2) + 3 * u + eps * u**3 + eps * mu * u.diff(t), v.diff(t) + v],
+    ],
+    ids=["stiffness", "gyroscopic", "slaved"],
+)
+def test_coupled_leading_orders_are_refused(equations):
+    """A force on one equation acts on several modes there: no intensity of one oscillator alone is right."""
+    coupled = ms.expand(ms.Problem(equations, [u, v], small=eps), 1)
+    with pytest.raises(ms.ProblemError, match="no oscillators of their own"):
+        ms.noisy_flow(coupled, {u: S})
+
+
+def test_the_order_of_the_equations_does_not_matter():
+    equations = [3 * v.diff(t, 2) + 6 * v + eps * mu * v.diff(t), u.diff(t, 2) + u + eps * mu * u.diff(t)]
+    pair = ms.expand(ms.Problem(equations, [u, v], small=eps), 1)
+    assert list(ms.noisy_flow(pair, {v: S}).intensity.values()) == [0, 0, S / 36, S / 36]
+    ordered = ms.Problem(2 * u.diff(t, 2) + 8 * u + mu * u.diff(t) + u**3, u, ordering={u: 1, mu: 2})
+    assert list(ms.noisy_flow(ms.expand(ordered, 2), {u: S}).intensity.values()) == [S / 32, S / 32]
