@@ -31,8 +31,8 @@ from multiscale.linear_part import LinearPart, Rate
 from multiscale.linear_part.dense import Dense
 from multiscale.linear_part.general import General
 from multiscale.linear_part.oscillators import Oscillators
+from multiscale.problem.averaged.laws import LAW
 from multiscale.problem.canonical import Canonical, in_double
-from multiscale.problem.laws import LAW
 from multiscale.tower import Tower
 
 __all__ = ["Computation", "Finished", "Snapshot", "begin", "restore"]

@@ -16,7 +16,7 @@ from multiscale.expressions import Writer
 from multiscale.frame import turns
 from multiscale.latex import aligned
 from multiscale.problem import Problem
-from multiscale.problem.projection import TorusMean, amplitude_of
+from multiscale.problem.averaged.projection import TorusMean, amplitude_of
 from multiscale.symbols import Symbols
 from multiscale.torus import Torus
 

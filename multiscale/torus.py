@@ -17,8 +17,8 @@ import sympy as sp
 from multiscale.computed import Computation, Finished
 from multiscale.expressions import Writer
 from multiscale.frame import turns
+from multiscale.problem.averaged.projection import TorusMean
 from multiscale.problem.lattice import lattice_basis
-from multiscale.problem.projection import TorusMean
 
 __all__ = ["Torus"]
 

@@ -21,7 +21,7 @@ from multiscale.computed import Computation, Finished
 from multiscale.errors import EvaluationError
 from multiscale.frame import turns
 from multiscale.problem import Problem
-from multiscale.problem.projection import TorusMean, amplitude_of
+from multiscale.problem.averaged.projection import TorusMean, amplitude_of
 from multiscale.torus import Torus
 
 __all__ = ["Complex", "Program"]

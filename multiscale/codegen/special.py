@@ -16,8 +16,8 @@ import sympy as sp
 
 from multiscale.codegen.tape import Integrand, Node, Tape
 from multiscale.errors import EvaluationError
+from multiscale.problem.averaged.guarded import Clipped, Inverse, Magnitude, Power, Reciprocal, Root
 from multiscale.problem.force_law import law_name
-from multiscale.problem.guarded import Clipped, Inverse, Magnitude, Power, Reciprocal, Root
 
 __all__ = ["special"]
 

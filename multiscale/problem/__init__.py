@@ -1,6 +1,6 @@
 """From what the user states to the canonical form that the hierarchy works on."""
 
 from multiscale.problem.problem import Problem
-from multiscale.problem.states_of_rest import RestState, states_of_rest
+from multiscale.problem.small.states_of_rest import RestState, states_of_rest
 
 __all__ = ["Problem", "RestState", "states_of_rest"]

@@ -19,11 +19,11 @@ from multiscale.clock import Modulus
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
 from multiscale.linear_part.general import Operator
+from multiscale.problem.averaged.projection import Harmonic, TorusMean
 from multiscale.problem.drives import Drive
 from multiscale.problem.frequencies import Bases, bases_of, denested, eliminated, square_root
 from multiscale.problem.leading import inertia, own_stiffness, refuse_resonant_drives
 from multiscale.problem.preparation import Prepared
-from multiscale.problem.projection import Harmonic, TorusMean
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import Detuning, detuning_of
 from multiscale.problem.terms import Entry, Layout, match, tabulate

@@ -10,8 +10,8 @@ from multiscale.algebra.quotient import Quotient, reduced
 from multiscale.errors import ProblemError, ResonanceError
 from multiscale.forces.polynomial import Term
 from multiscale.linear_part import Rate
+from multiscale.problem.averaged.laws import LAW
 from multiscale.problem.drives import Drive
-from multiscale.problem.laws import LAW
 from multiscale.problem.reading import Reader, unsupported
 from multiscale.problem.terms import Entry, Layout, show
 

@@ -16,12 +16,12 @@ from dataclasses import dataclass
 import sympy as sp
 
 from multiscale.errors import ProblemError
+from multiscale.problem.averaged.laws import Law
 from multiscale.problem.drives import Phasor, with_phasors
-from multiscale.problem.laws import Law
 from multiscale.problem.ordering import with_orders
 from multiscale.problem.relations import Relations, relations_of, taylor
 from multiscale.problem.slow_time import SlowLeaves
-from multiscale.problem.taylor import with_taylor_polynomials
+from multiscale.problem.small.taylor import with_taylor_polynomials
 from multiscale.problem.terms import Layout
 
 __all__ = ["Prepared", "prepare"]

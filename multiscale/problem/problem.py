@@ -12,8 +12,12 @@ import sympy as sp
 
 from multiscale.errors import ProblemError
 from multiscale.latex import shortened
+from multiscale.problem.averaged.laws import Law, at_resonance, layout_with_laws, separated
+from multiscale.problem.averaged.projected import with_projections
 from multiscale.problem.canonical import Canonical, in_double
-from multiscale.problem.coupled import form_of
+from multiscale.problem.coupled.form import form_of
+from multiscale.problem.coupled.given_shapes import Shapes, check_symbols, given_shapes, shapes_given
+from multiscale.problem.coupled.modes import Choice, modes_given, references_given
 from multiscale.problem.force_law import ForceLaw, laws_of, with_calls, without_calls
 from multiscale.problem.given import (
     check_names,
@@ -27,17 +31,13 @@ from multiscale.problem.given import (
     unknowns_given,
     warn_of_finite_detunings,
 )
-from multiscale.problem.given_shapes import Shapes, check_symbols, given_shapes, shapes_given
-from multiscale.problem.laws import Law, at_resonance, layout_with_laws, separated
 from multiscale.problem.matrices import equations_of, size_of
-from multiscale.problem.modes import Choice, modes_given, references_given
 from multiscale.problem.ordering import with_orders
 from multiscale.problem.preparation import Prepared, prepare
-from multiscale.problem.projected import with_projections
 from multiscale.problem.reading import unsupported
 from multiscale.problem.relations import Detuning, relation_pairs
-from multiscale.problem.rest import about_rest, rest_positions
-from multiscale.problem.taylor import with_taylor_polynomials
+from multiscale.problem.small.rest import about_rest, rest_positions
+from multiscale.problem.small.taylor import with_taylor_polynomials
 from multiscale.problem.terms import Layout
 
 __all__ = ["Problem"]

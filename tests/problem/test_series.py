@@ -5,8 +5,8 @@ from __future__ import annotations
 import pytest
 import sympy as sp
 
-from multiscale.problem.series import EpsilonSeries
-from multiscale.problem.series_arithmetic import NotAnalyticError, NotSmallError
+from multiscale.problem.small.series import EpsilonSeries
+from multiscale.problem.small.series_arithmetic import NotAnalyticError, NotSmallError
 
 e, t = sp.symbols("epsilon t")
 u, v = sp.symbols("u v", real=True)

@@ -14,8 +14,8 @@ from multiscale.algebra.quotient import Quotient
 from multiscale.computed import Computation, begin
 from multiscale.errors import UnsupportedTermError
 from multiscale.problem import Problem
+from multiscale.problem.averaged.laws import LAW
 from multiscale.problem.canonical import Canonical
-from multiscale.problem.laws import LAW
 
 __all__ = ["SEARCHED", "Leading", "check_single", "is_reversible", "leading_damping", "parts"]
 

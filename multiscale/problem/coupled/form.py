@@ -16,16 +16,16 @@ import sympy as sp
 from multiscale.errors import ProblemError
 from multiscale.forces.polynomial import Term
 from multiscale.problem.canonical import Canonical, Working, canonical_form, completed, hide, working_copy
+from multiscale.problem.coupled.given_shapes import roots_given
+from multiscale.problem.coupled.mode_relations import with_mode_relations
+from multiscale.problem.coupled.modes import Choice, positive, roots_of
+from multiscale.problem.coupled.radicals import EliminatedError, Radicals
+from multiscale.problem.coupled.rows import leading_terms, linear_part, matrix
+from multiscale.problem.coupled.spectrum import DIGITS, Found, imaginary_roots, roots_at_most
 from multiscale.problem.frequencies import Bases
-from multiscale.problem.given_shapes import roots_given
 from multiscale.problem.leading import misplaced, refuse_resonant_drives
-from multiscale.problem.mode_relations import with_mode_relations
-from multiscale.problem.modes import Choice, positive, roots_of
 from multiscale.problem.preparation import Prepared
-from multiscale.problem.radicals import EliminatedError, Radicals
 from multiscale.problem.reading import Reader, decimals
-from multiscale.problem.rows import leading_terms, linear_part, matrix
-from multiscale.problem.spectrum import DIGITS, Found, imaginary_roots, roots_at_most
 from multiscale.problem.terms import Entry, Layout, show, tabulate
 
 __all__ = ["form_of"]

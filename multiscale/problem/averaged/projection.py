@@ -18,9 +18,9 @@ from dataclasses import dataclass
 
 import sympy as sp
 
-from multiscale.problem.closed_forms import AMPLITUDE, FREQUENCY, Closed, U, V, closed_form
-from multiscale.problem.guarded import Clipped, Inverse, Reciprocal, Root, guarded
-from multiscale.problem.steps import expanded, with_steps
+from multiscale.problem.averaged.closed_forms import AMPLITUDE, FREQUENCY, Closed, U, V, closed_form
+from multiscale.problem.averaged.guarded import Clipped, Inverse, Reciprocal, Root, guarded
+from multiscale.problem.averaged.steps import expanded, with_steps
 
 __all__ = ["Harmonic", "TorusMean", "amplitude_of", "complex_parts", "harmonic", "numeric_harmonic"]
 

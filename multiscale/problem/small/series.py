@@ -15,7 +15,7 @@ from typing import Any
 
 import sympy as sp
 
-from multiscale.problem.series_arithmetic import BRANCH, KINKED, UNKNOWN, NotAnalyticError, SeriesArithmetic
+from multiscale.problem.small.series_arithmetic import BRANCH, KINKED, UNKNOWN, NotAnalyticError, SeriesArithmetic
 
 __all__ = ["ROUGH", "EpsilonSeries"]
 

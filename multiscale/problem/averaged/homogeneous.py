@@ -17,8 +17,8 @@ from dataclasses import dataclass, replace
 
 import sympy as sp
 
-from multiscale.problem.closed_forms import AMPLITUDE, FREQUENCY, PowerTerm, power_coefficient
-from multiscale.problem.projection import complex_parts
+from multiscale.problem.averaged.closed_forms import AMPLITUDE, FREQUENCY, PowerTerm, power_coefficient
+from multiscale.problem.averaged.projection import complex_parts
 
 __all__ = ["DEFAULT_HARMONICS", "Degree", "coefficients", "degree_of", "roughness", "slope", "tail"]
 

@@ -13,8 +13,8 @@ from dataclasses import dataclass, replace
 
 import sympy as sp
 
+from multiscale.problem.averaged.steps import expanded
 from multiscale.problem.reading import unsupported
-from multiscale.problem.steps import expanded
 from multiscale.problem.terms import Layout
 
 __all__ = ["LAW", "Law", "at_resonance", "layout_with_laws", "separated"]

@@ -23,11 +23,11 @@ from multiscale.errors import ProblemError
 from multiscale.linear_part.general import General
 from multiscale.linear_part.general import Root as ImaginaryRoot
 from multiscale.linear_part.kernel import block_of, covectors, scaled_shapes
+from multiscale.problem.coupled.given_shapes import GivenShape
+from multiscale.problem.coupled.numeric import Kernel, defective, numeric_kernel
+from multiscale.problem.coupled.spectrum import Found
 from multiscale.problem.frequencies import Bases
-from multiscale.problem.given_shapes import GivenShape
-from multiscale.problem.numeric import Kernel, defective, numeric_kernel
 from multiscale.problem.reading import Reader
-from multiscale.problem.spectrum import Found
 
 __all__ = ["Choice", "modes_given", "numbering", "positive", "references_given", "roots_of"]
 

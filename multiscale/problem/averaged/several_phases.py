@@ -9,10 +9,10 @@ import sympy as sp
 from multiscale.algebra.polynomial import Frozen
 from multiscale.forces.polynomial import Term
 from multiscale.linear_part import Rate
+from multiscale.problem.averaged.laws import Law
+from multiscale.problem.averaged.projection import TorusMean
 from multiscale.problem.canonical import Canonical
 from multiscale.problem.lattice import saturated_basis
-from multiscale.problem.laws import Law
-from multiscale.problem.projection import TorusMean
 from multiscale.problem.reading import unsupported
 from multiscale.problem.terms import Layout
 

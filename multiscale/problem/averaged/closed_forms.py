@@ -18,7 +18,7 @@ from dataclasses import dataclass, replace
 
 import sympy as sp
 
-from multiscale.problem.steps import with_steps
+from multiscale.problem.averaged.steps import with_steps
 
 __all__ = [
     "AMPLITUDE",

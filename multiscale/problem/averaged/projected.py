@@ -17,14 +17,22 @@ import sympy as sp
 from multiscale.algebra.polynomial import Frozen
 from multiscale.clock import Modulus
 from multiscale.forces.polynomial import Term
+from multiscale.problem.averaged.closed_forms import AMPLITUDE, FREQUENCY, PowerTerm, U, V, power_terms
+from multiscale.problem.averaged.guarded import Power
+from multiscale.problem.averaged.homogeneous import (
+    DEFAULT_HARMONICS,
+    Degree,
+    coefficients,
+    degree_of,
+    roughness,
+    slope,
+    tail,
+)
+from multiscale.problem.averaged.laws import LAW, Law
+from multiscale.problem.averaged.projection import Harmonic, TorusMean, amplitude_of, harmonic, numeric_harmonic
+from multiscale.problem.averaged.several_phases import several_phases, torus_means, turning_of
 from multiscale.problem.canonical import Canonical
-from multiscale.problem.closed_forms import AMPLITUDE, FREQUENCY, PowerTerm, U, V, power_terms
-from multiscale.problem.guarded import Power
-from multiscale.problem.homogeneous import DEFAULT_HARMONICS, Degree, coefficients, degree_of, roughness, slope, tail
-from multiscale.problem.laws import LAW, Law
-from multiscale.problem.projection import Harmonic, TorusMean, amplitude_of, harmonic, numeric_harmonic
 from multiscale.problem.reading import unsupported
-from multiscale.problem.several_phases import several_phases, torus_means, turning_of
 from multiscale.problem.terms import Layout
 
 __all__ = ["with_projections"]

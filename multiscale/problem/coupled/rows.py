@@ -13,10 +13,10 @@ import sympy as sp
 from multiscale.algebra.polynomial import Frozen
 from multiscale.linear_part.general import FrozenMatrix, General, Operator
 from multiscale.problem.canonical import Working
+from multiscale.problem.coupled.spectrum import Found
 from multiscale.problem.frequencies import Bases, bases_of, denested
 from multiscale.problem.leading import is_driven
 from multiscale.problem.reading import Reader
-from multiscale.problem.spectrum import Found
 from multiscale.problem.terms import Entry, Layout, tabulate
 
 __all__ = ["leading_terms", "linear_part", "matrix"]

@@ -20,9 +20,9 @@ from multiscale.algebra.quotient import vanishes
 from multiscale.algebra.ring import Ring
 from multiscale.errors import ProblemError
 from multiscale.problem.canonical import Working
-from multiscale.problem.radicals import Radicals
+from multiscale.problem.coupled.radicals import Radicals
+from multiscale.problem.coupled.spectrum import Found
 from multiscale.problem.reading import IMAGINARY_UNIT, Reader, decimals, given_expression
-from multiscale.problem.spectrum import Found
 
 __all__ = ["GivenShape", "Shapes", "check_symbols", "given_shapes", "roots_given", "shapes_given"]
 

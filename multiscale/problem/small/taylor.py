@@ -15,8 +15,8 @@ import sympy as sp
 
 from multiscale.errors import UnsupportedTermError
 from multiscale.problem.reading import decimals, unsupported
-from multiscale.problem.series import ROUGH, EpsilonSeries
-from multiscale.problem.series_arithmetic import BRANCH, KINKED, NotAnalyticError, NotSmallError, needs_series
+from multiscale.problem.small.series import ROUGH, EpsilonSeries
+from multiscale.problem.small.series_arithmetic import BRANCH, KINKED, NotAnalyticError, NotSmallError, needs_series
 from multiscale.problem.terms import Layout
 
 __all__ = ["with_taylor_polynomials"]

@@ -21,7 +21,7 @@ import sympy as sp
 from sympy.polys.matrices import DomainMatrix
 
 from multiscale.errors import MultiscaleError, ProblemError
-from multiscale.problem.radicals import Radicals
+from multiscale.problem.coupled.radicals import Radicals
 from multiscale.problem.reading import unsupported
 
 __all__ = ["Found", "imaginary_roots", "roots_at_most"]

@@ -17,13 +17,13 @@ import sympy as sp
 
 from multiscale.errors import ProblemError
 from multiscale.problem.canonical import Working, in_double
-from multiscale.problem.critical_values import critical_value
-from multiscale.problem.modes import numbering
+from multiscale.problem.coupled.critical_values import critical_value
+from multiscale.problem.coupled.modes import numbering
+from multiscale.problem.coupled.rows import leading_terms, linear_part, matrix
+from multiscale.problem.coupled.spectrum import Found
 from multiscale.problem.preparation import Prepared
 from multiscale.problem.reading import Reader, decimals
 from multiscale.problem.relations import detuning_of
-from multiscale.problem.rows import leading_terms, linear_part, matrix
-from multiscale.problem.spectrum import Found
 from multiscale.problem.terms import Layout, tabulate
 
 __all__ = ["with_mode_relations"]

@@ -1,0 +1,1 @@
+"""Analytic forces of small unknowns by Taylor polynomials, and the states of rest they are taken about."""
