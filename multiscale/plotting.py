@@ -98,7 +98,7 @@ def plot_validity(validity: Validity, ax: Axes | None = None) -> Axes:
     ax.loglog(amplitudes, validity.promises[shown], label="promised error", **STABLE)
     ax.loglog(amplitudes, validity.residuals[shown], label="relative residual", **UNSTABLE)
     ax.axhline(validity.tolerance, **LIMIT)
-    for edge in (validity.least, validity.amplitude):
+    for edge in (validity.least, np.inf if validity.throughout else validity.amplitude):
         if 0 < edge < np.inf:
             ax.axvline(edge, **LIMIT)
     ax.set_xlabel(f"amplitude (order {validity.expansion.order})")

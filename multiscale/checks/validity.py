@@ -41,8 +41,8 @@ class Validity:
     Attributes
     ----------
     amplitude : float
-        The largest amplitude whose promise is within the tolerance, as are all smaller ones down to `least`; inf
-        where none of those looked at is too large.
+        The largest amplitude whose promise is within the tolerance, as are all smaller ones down to `least`. Where
+        none of those looked at is too large, the last of those given, or inf.
     residual : float
         At that amplitude, what the equations of motion leave over, relative to the restoring term.
     ratios : dict
@@ -68,10 +68,18 @@ class Validity:
     promises: Array
     expansion: Expansion
 
+    @property
+    def throughout(self) -> bool:
+        """Whether the tolerance is kept to the largest amplitude looked at, so that no end of the range was found."""
+        return bool(self.amplitude >= self.amplitudes[-1])
+
     def __repr__(self) -> str:
+        reach = f"amplitudes to {self.amplitude:.4g}" + (", the largest looked at," if self.throughout else "")
+        if self.amplitude == np.inf:
+            reach = "all amplitudes"
         return (
-            f"Validity: amplitudes to {self.amplitude:.4g} within {self.tolerance:.3g} over a time of "
-            f"{self.horizon:.4g}, order {self.expansion.order}"
+            f"Validity: {reach} within {self.tolerance:.3g} over a time of {self.horizon:.4g}, "
+            f"order {self.expansion.order}"
         )
 
     def plot(self, ax: Axes | None = None) -> Axes:
@@ -106,7 +114,7 @@ def validity(
         amplitudes by default. The amplitude of a state is that of its largest mode.
     amplitudes : 1-D array, optional
         Amplitudes to look at, rising and positive; those from 1e-12 to 1e12 by default. The end of the range is then
-        refined between two of them.
+        refined between two of them; where all keep the tolerance, it is the last.
 
     Returns
     -------
@@ -127,11 +135,10 @@ def validity(
 
     Notes
     -----
-    What the equations of motion leave over drives an error: its resonant part one that grows with time, the rest one
-    that does not (`multiscale.checks.error_growth`). That holds for motions that are neutrally stable or stable; where
-    the motion is unstable, errors grow faster than is promised. An error of amplitude also turns the phase, by its
-    effect on the frequency: over horizons of several 1/(a dω/da) the error of the motion may be several times the
-    tolerance, and `compare` gives it. Unknowns share one unit.
+    What the equations of motion leave over drives an error of amplitude and phase, which the linearised slow flow
+    carries along the motion, and a part that stays bounded (`multiscale.checks.error_growth`): damping, the effect of
+    amplitude on frequency and instability are taken into account. The true error is expected within a factor of
+    three of the promise as long as both are small; `compare` gives it. Unknowns share one unit.
 
     Examples
     --------
@@ -141,7 +148,7 @@ def validity(
     >>> u = sp.Function("u")(t)
     >>> problem = ms.Problem(u.diff(t, 2) + u + eps*alpha*u**3, u, small=eps)
     >>> [round(ms.validity(ms.expand(problem, n), {eps: 0.1, alpha: 1.0}, 0.01).amplitude, 2) for n in (1, 2, 4)]
-    [1.12, 1.98, 3.05]
+    [1.16, 2.14, 3.0]
     """
     motion = motion_of(expansion, parameters)
     warn_at(expansion, dict(zip(motion.flow.parameters, motion.values, strict=True)))
@@ -152,6 +159,8 @@ def validity(
     promises, residuals = promise_at(motion, direction[:, None] * scan, horizon)
     least, amplitude, looked = _range(motion, direction, horizon, tolerance, scan, promises, residuals)
     scan, promises, residuals = looked
+    if amplitude == np.inf and amplitudes is not None:
+        amplitude = float(scan[-1])
     inside = min(amplitude, float(scan[promises <= tolerance].max()))
     ratios = _ratios(motion, direction, inside)
     _warn_of_comparable_terms(expansion, inside, ratios[FLOW])

@@ -116,11 +116,46 @@ def test_true_errors_of_a_family_of_oscillators_stay_within_a_factor_of_the_prom
 
 
 def test_the_spread_of_true_errors_over_the_family():
-    """Measured: true error / promise from 0.45 to 1.1, median 0.8."""
+    """Measured: true error / promise from 0.64 to 1.17, median 0.90."""
     values = np.array([share(k) for k in range(0, len(FAMILY), 2)])
-    assert 0.6 < np.median(values) < 1
-    assert values.min() > 0.4
+    assert 0.8 < np.median(values) < 1
+    assert values.min() > 0.55
     assert values.max() < 1.3
+
+
+c = sp.Symbol("c", positive=True)
+CHANGING = {
+    "damped cubic": udd + u + eps * ud * 2 / 5 + eps * u**3,
+    "damped softening": udd + u + eps * ud - eps * u**3 / 2,
+    "damped quadratic and cubic": udd + u + eps**2 * ud / 2 + eps * u**2 / 2 + eps**2 * u**3 / 3,
+    "self-excited": udd + u + eps * (u**2 - 1) * ud,
+    "self-excited cubic": udd + u + eps * (u**2 - 1) * ud + eps * u**3 / 2,
+}
+"""Motions that change in size, so that an error of amplitude or phase is carried along: oscillators without a drive."""
+
+
+@pytest.mark.parametrize("periods", [1, 4])
+@pytest.mark.parametrize("order", [1, 2, 3, 4])
+@pytest.mark.parametrize("name", CHANGING)
+def test_true_errors_where_the_amplitude_changes(name, order, periods):
+    """Measured: true error / promise from 0.65 to 1.38, median 0.91, over horizons of 1/ε and 4/ε."""
+    e = 0.05 if order == 1 else 0.1
+    result = expansion(CHANGING[name], u, order)
+    start = np.array([0.5 if order % 2 else 1.5, 0.3])
+    promise, _ = promise_at(motion_of(result, {eps: e}), start[:, None], periods / e)
+    assert 1 / 2 < TrueError(result, {eps: e}, {})(start, periods / e) / promise[0] < 2
+
+
+@pytest.mark.parametrize("horizon", [20.0, 50.0, 200.0])
+@pytest.mark.parametrize("order", [2, 3, 4])
+@pytest.mark.parametrize("damping", [0.0, 0.02])
+def test_the_true_error_of_a_pendulum_at_the_amplitude_found(damping, order, horizon):
+    """Measured: 0.80 % to 1.10 % where 1 % is promised. Errors of the damping turn the phase by dω/da."""
+    stated = ms.Problem(udd + c * ud + sp.sin(u), u, ordering={u: 1, c: 2})
+    result = ms.expand(stated, order)
+    found = ms.validity(result, {c: damping}, 0.01, horizon=horizon)
+    error = TrueError(result, {c: damping}, {})(np.array([found.amplitude, 0.0]), horizon)
+    assert 0.6 < error / 0.01 < 1.5
 
 
 @pytest.mark.parametrize("order", [1, 2, 4])
@@ -133,12 +168,13 @@ def test_the_true_error_at_the_amplitude_found(order):
 
 
 def test_higher_orders_reach_further_and_tighter_tolerances_less():
-    reach = [ms.validity(cubic(n), NUMBERS, 0.01).amplitude for n in (1, 2, 3, 4)]
+    # At 1 % εa² is near 1 for orders 3 and 4, and another order no longer helps.
+    reach = [ms.validity(cubic(n), NUMBERS, 0.001).amplitude for n in (1, 2, 3, 4)]
     assert reach == sorted(reach)
-    reach = [ms.validity(cubic(3), NUMBERS, tolerance).amplitude for tolerance in (1e-2, 1e-4, 1e-6)]
+    reach = [ms.validity(cubic(3), NUMBERS, tolerance).amplitude for tolerance in (1e-2, 1e-6, 1e-8, 1e-10)]
     assert reach == sorted(reach, reverse=True)
-    # Error over 1/ε goes with (εa²)^4/ε at order 3.
-    assert np.diff(np.log(reach)) == pytest.approx(np.log(1e-2) / 8, rel=0.05)
+    # Error over 1/ε goes with (εa²)^4/ε at order 3, at small amplitudes.
+    assert np.diff(np.log(reach[1:])) == pytest.approx(np.log(1e-2) / 8, rel=0.03)
 
 
 @pytest.mark.parametrize("order", [1, 2, 3])
@@ -156,9 +192,9 @@ def test_promise_and_residual_of_a_linear_oscillator_by_hand(order):
     assert found.amplitude == np.inf
     assert found.least == 0
     assert np.ptp(found.promises) < 1e-6 * found.promises[0]
-    decayed = -np.expm1(5 * exponent.real) / -exponent.real
-    # Of ρ at time 0 half is at Φ and, as the motion is one harmonic, nearly nothing else.
-    assert found.promises[0] == pytest.approx(decayed * left / 2, rel=0.05)
+    # Of ρ half is at Φ and, as the motion is one harmonic, nothing else; what it makes decays with the motion.
+    expected = 5 * np.exp(5 * exponent.real) * left / (2 * exponent.imag)
+    assert found.promises[0] == pytest.approx(expected, rel=0.01)
 
 
 def driven(order: int) -> ms.Expansion:
@@ -176,20 +212,20 @@ def test_a_driven_oscillator_from_a_steady_state(order):
     assert steady.stable
     promise, _ = promise_at(motion_of(result, DRIVEN), steady.state[:, None], 20.0)
     error = TrueError(result, DRIVEN, {Om: w + eps * sigma})(steady.state, 20.0)
-    assert error < 3 * promise[0]
-    assert promise[0] < 10 * error
+    assert 1 / 3 < error / promise[0] < 3
     found = ms.validity(result, DRIVEN, 0.02, state=steady.state, horizon=20.0)
     # With the drive fixed, small states are all drive: their relative error does not vanish.
     assert found.amplitude > steady.amplitudes[0]
 
 
-def test_an_unstable_motion_breaks_the_promise():
-    """A negative control: beside a saddle errors grow exponentially, which the promise says it leaves out."""
+def test_errors_beside_a_saddle_grow_at_its_rate():
+    """Measured: true error / promise 0.90; what is left over, summed up without growth, gives less than a third."""
     result = driven(2)
     values = DRIVEN | {mu: 0.05, f: 0.4, sigma: 0.6}
     saddle = next(s for s in ms.equilibria(result, values) if s.kind == "saddle")
-    promise, _ = promise_at(motion_of(result, values), saddle.state[:, None], 400.0)
-    assert TrueError(result, values, {Om: w + eps * sigma})(saddle.state, 400.0) > 3 * promise[0]
+    early, late = (promise_at(motion_of(result, values), saddle.state[:, None], x)[0][0] for x in (200.0, 400.0))
+    assert 0.6 < TrueError(result, values, {Om: w + eps * sigma})(saddle.state, 400.0) / late < 1.5
+    assert np.log(late / early) / 200 == pytest.approx(saddle.eigenvalues.real.max(), rel=0.1)
 
 
 COUPLED = {
@@ -210,10 +246,32 @@ def test_two_modes(equations, relations, more, order):
     start = np.array([0.8, 0.0, 0.3, 0.4])
     promise, _ = promise_at(motion_of(result, values), start[:, None], 20.0)
     error = TrueError(result, values, {})(start, 20.0)
-    assert error < 3 * promise[0]
-    assert promise[0] < 10 * error
+    assert 1 / 3 < error / promise[0] < 3
     found = ms.validity(result, values, 0.02, state=start)
     assert promise_at(motion_of(result, values), start[:, None] / 0.8 * found.amplitude, found.horizon)[0][0] < 0.02
+
+
+DAMPED = [
+    udd + u + eps * ud / 5 + eps * u * v**2 + eps * u**3,
+    v.diff(t, 2) + 3 * v + eps * u**2 * v + eps * v.diff(t) / 2,
+]
+
+
+@pytest.mark.parametrize("second", [(0.0, 0.0), (0.5, 0.4)], ids=["at rest", "moving"])
+def test_two_damped_modes_followed_by_their_amplitudes(second):
+    """Measured: true error / promise from 0.75 to 0.78."""
+    result = expansion(DAMPED, [u, v], 2)
+    start = np.array([0.8, 0.2, *second])
+    promise, _ = promise_at(motion_of(result, {eps: 0.05}), start[:, None], 60.0)
+    assert 1 / 2 < TrueError(result, {eps: 0.05}, {})(start, 60.0) / promise[0] < 2
+
+
+def test_damping_that_varies_slowly():
+    """A slow flow that depends on time is followed in the frame. Measured: true error / promise 1.00."""
+    result = expansion(udd + u + eps * (2 + sp.cos(eps * t)) / 5 * ud + eps * u**3, u, 2)
+    start = np.array([0.8, 0.3])
+    promise, _ = promise_at(motion_of(result, {eps: 0.05}), start[:, None], 60.0)
+    assert 1 / 2 < TrueError(result, {eps: 0.05}, {})(start, 60.0) / promise[0] < 2
 
 
 @pytest.mark.parametrize("order", [1, 2, 3])
@@ -242,7 +300,20 @@ def test_amplitudes_may_be_given_and_the_end_is_refined():
     given = ms.validity(cubic(2), NUMBERS, 0.01, amplitudes=[0.5, 1.0, 4.0])
     assert given.amplitude == pytest.approx(free.amplitude, rel=2e-3)
     assert given.amplitudes[0] == 0.5
-    assert ms.validity(cubic(2), NUMBERS, 0.01, amplitudes=[0.1, 0.2]).amplitude == np.inf
+    assert not given.throughout
+    assert "amplitudes to 2.1" in repr(given)
+
+
+def test_a_list_that_ends_within_the_range_gives_its_last_amplitude():
+    given = ms.validity(cubic(2), NUMBERS, 0.01, amplitudes=[0.1, 0.2])
+    assert given.amplitude == 0.2
+    assert given.throughout
+    assert "amplitudes to 0.2, the largest looked at, within 0.01" in repr(given)
+    assert given.residual == given.residuals[-1]
+    everything = ms.validity(expansion(udd + u + eps * ud, u, 2), {eps: 0.1}, 0.1)
+    assert everything.amplitude == np.inf
+    assert everything.throughout
+    assert "all amplitudes within 0.1" in repr(everything)
 
 
 def test_an_ordering_needs_a_horizon():
@@ -290,15 +361,14 @@ OTHERS = {
 
 @pytest.mark.parametrize(("force", "relations", "more"), OTHERS.values(), ids=OTHERS)
 def test_true_errors_in_other_classes(force, relations, more):
-    """Measured: true error / promise from 0.49 to 1.23."""
+    """Measured: true error / promise from 0.55 to 0.98, least where the motion has no period."""
     result = expansion(udd + w**2 * u + force, u, 2, resonances=relations)
     values = {eps: 0.02, w: 1.0, mu: 0.2, alpha: 1.0, f: 0.6} | more
     values = {k: x for k, x in values.items() if k == eps or k in result.problem.parameters}
     start = np.array([0.9, 0.4])
     promise, _ = promise_at(motion_of(result, values), start[:, None], 50.0)
     error = TrueError(result, values, dict(relations))(start, 50.0)
-    assert error < 3 * promise[0]
-    assert promise[0] < 10 * error
+    assert 1 / 3 < error / promise[0] < 3
     assert ms.validity(result, values, 0.05, state=start).amplitude > 0.9
 
 
