@@ -120,7 +120,7 @@ def from_json(text: str) -> Expansion:
     """
     document = _document(text)
     expressions, polynomials = Reader(field(document, "expressions")), PolynomialReader(field(document, "generators"))
-    order = integer(field(document, "order"), "the order", 0, 1000)
+    order = integer(field(document, "order"), "the order", 0, 500)
     amplitude = field(document, "amplitude")
     if amplitude not in ("fundamental", "peak"):
         raise refuse(f"amplitude is {shown(amplitude)!r}")

@@ -1,7 +1,8 @@
 """A problem as it was stated, in references to a table of expressions.
 
     {"equations": [x, …], "unknowns": [u, …], "resonances": [[x, y], …], "small": x  or  "ordering": [[x, q], …],
-     "modes": [a, …], "references": [[a, k], …], "harmonics": n, "formal": true, "laws": [[F, [x], [y]], …]}
+     "modes": [a, …], "references": [[a, k], …], "shapes": [[w, [[x, …], …]], …], "left_shapes": the same,
+     "harmonics": n, "formal": true, "laws": [[F, [x], [y]], …]}
 
 Positions of rest are stored where `Problem` keeps them: in the equations and relations. Of force laws that are no
 formulas a table of numbers can be stored, a Python function cannot.
@@ -37,6 +38,9 @@ def written_problem(problem: Problem, into: Writer) -> dict[str, Any]:
         written["modes"] = list(problem.modes)
     if problem.references:
         written["references"] = [[a, problem.unknowns.index(u)] for a, u in sorted(problem.references.items())]
+    for name, shapes in (("shapes", problem.shapes), ("left_shapes", problem.left_shapes)):
+        if shapes:
+            written[name] = [[into.node(w), [[into.node(x) for x in v] for v in vs]] for w, vs in shapes.items()]
     if problem.harmonics is not None:
         written["harmonics"] = problem.harmonics
     if problem.formal:
@@ -81,6 +85,14 @@ def read_problem(stored: Any, expressions: Reader) -> Problem:
         options["references"] = {
             integer(a, "a mode", 0, 10_000): unknowns[integer(k, "an unknown", 0, last)] for a, k in pairs("references")
         }
+    for name in ("shapes", "left_shapes"):
+        if name in stored:
+            options[name] = {
+                expressions.scalar(w): [
+                    [expressions.scalar(x) for x in sequence(v, "a shape")] for v in sequence(vs, "shapes")
+                ]
+                for w, vs in pairs(name)
+            }
     if "harmonics" in stored:
         options["harmonics"] = integer(stored["harmonics"], "the number of harmonics", 0, 1000)
     if "formal" in stored:
