@@ -45,7 +45,7 @@ class TaylorRemainder:
     amplitude : tuple of arrays
         a_j, one entry for each unknown.
     relative : array, (equations,) + S
-        Largest remainder in each equation over the largest linear restoring force in it, max_j |K_kj| a_j.
+        Largest remainder in each equation over the largest linear restoring force in it, ``max_j |K_kj| a_j``.
     radius : tuple of float or None
         For each unknown the distance to the nearest singularity, real or complex, with the others at rest: the radius
         of convergence. Infinite for entire functions, None where it is not decided.
