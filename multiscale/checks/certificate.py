@@ -178,7 +178,7 @@ def certify(expansion: Expansion, *, seed: int = 0) -> Certificate:
     EvaluationError
         No admissible parameters were found, or an expression has no value in high precision.
     UnsupportedTermError
-        The slow flow holds averages of a force that is not polynomial, such as ``|u'|u'`` of an unknown of order 1: only
+        The slow flow holds averages of a force that is not polynomial, such as ``|u'|u'``: only
         the harmonics that meet a natural frequency are carried, so that the residual is not small. See `compare`.
 
     Examples
