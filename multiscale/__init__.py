@@ -3,6 +3,7 @@
 from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
+import multiscale.travel  # noqa: F401 - registers how functions of time are pickled
 from multiscale.codegen.numpy_function import NumpyFunction
 from multiscale.errors import (
     EvaluationError,
