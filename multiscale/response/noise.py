@@ -28,6 +28,7 @@ import sympy as sp
 
 from multiscale.errors import EvaluationError, ProblemError
 from multiscale.expansion import Expansion
+from multiscale.problem.reading import given_expression
 
 __all__ = ["NoisyFlow", "noisy_flow"]
 
@@ -156,7 +157,10 @@ def noisy_flow(expansion: Expansion, densities: Mapping[sp.Expr, Any]) -> NoisyF
         )
     intensity: dict[sp.Symbol, sp.Expr] = {}
     for k, u in enumerate(problem.unknowns):
-        density = problem.with_relations(sp.sympify(densities.get(u, 0)))
+        given = given_expression(densities.get(u, 0))
+        if given is None:
+            raise ProblemError(f"the density {densities[u]!r} of {u} is no number and no SymPy expression")
+        density = problem.with_relations(given)
         if density.has(problem.time, *problem.unknowns):
             raise ProblemError(f"the density {densities[u]} depends on time: expected that of a stationary force")
         rate = density / (2 * (_inertia(expansion, u) * problem.natural_frequencies[k]) ** 2)

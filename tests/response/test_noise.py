@@ -117,6 +117,7 @@ def test_noise_of_two_modes_is_independent():
     ("call", "kind", "words"),
     [
         (lambda d: ms.noisy_flow(d, {v: 1}), ms.ProblemError, "not an unknown"),
+        (lambda d: ms.noisy_flow(d, {u: "S"}), ms.ProblemError, "no SymPy expression"),
         (lambda d: ms.noisy_flow(d, {u: S}).intensities(VALUES), ms.EvaluationError, "missing parameter S"),
         (lambda d: ms.noisy_flow(d, {u: -1}).intensities(VALUES), ms.EvaluationError, "expected a number"),
         (lambda d: ms.noisy_flow(d, {u: 1}).covariance([0, 0], {eps: 1}), ms.EvaluationError, "missing"),

@@ -18,26 +18,38 @@ __all__ = ["Clipped", "Inverse", "Magnitude", "Power", "Reciprocal", "Root", "gu
 
 
 class Inverse(sp.Function):  # type: ignore[misc]
+    """1/x, and 0 at x = 0."""
+
     nargs = 1
 
 
 class Reciprocal(sp.Function):  # type: ignore[misc]
+    """1/x, and a huge number at x = 0."""
+
     nargs = 1
 
 
 class Root(sp.Function):  # type: ignore[misc]
+    """√x, with slope 0 at x = 0."""
+
     nargs = 1
 
 
 class Power(sp.Function):  # type: ignore[misc]
+    """x**e for x > 0, and 0 at x = 0."""
+
     nargs = 2
 
 
 class Magnitude(sp.Function):  # type: ignore[misc]
+    """|x| inside an average, with slope 0 at x = 0."""
+
     nargs = 1
 
 
 class Clipped(sp.Function):  # type: ignore[misc]
+    """x cut off to −1 … 1."""
+
     nargs = 1
 
 

@@ -30,6 +30,8 @@ SINGULAR = 1e-8
 
 @dataclass(frozen=True)
 class Kernel:
+    """The modes at one rate: bordered rows, the unknown that each is measured in, and their shapes."""
+
     rows: tuple[int, ...]
     references: tuple[int, ...]
     shapes: tuple[tuple[Frozen, ...], ...]

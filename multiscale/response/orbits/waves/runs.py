@@ -34,6 +34,8 @@ Level: TypeAlias = dict[int, Any]
 
 
 class Half(Protocol):
+    """A wave as products need it: its offset and its parts by sign."""
+
     offset: int
 
     @property
